@@ -239,7 +239,8 @@ func (f Finding) Abnormal() bool {
 
 // Health returns the nearness of the finding to its normal grade, 0 (as far as the
 // scale goes) to 1 (normal), and false where it was not tested or has no normal grade.
-// Distance is counted in grades against the longer of the two ways to be ill.
+// Distance is counted in grades against the longer of the two ways to be ill; an
+// unordered item is 1 when normal, else 0.
 func (f Finding) Health() (float64, bool) {
 	g, ok := f.Result.Grade()
 	in := f.Item.Info()
@@ -248,6 +249,9 @@ func (f Finding) Health() (float64, bool) {
 	}
 	if f.Normal() {
 		return 1, true
+	}
+	if in.Traits&Unordered != 0 {
+		return 0, true // kinds have no distance
 	}
 	far := max(in.Normal-in.First, f.Item.Last()-in.Normal)
 	d := g - in.Normal

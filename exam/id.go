@@ -90,3 +90,25 @@ func (d Date) DaysBefore(t time.Time) (float64, bool) {
 	}
 	return t.Sub(at).Hours() / 24, true
 }
+
+// span returns the first day of d and the first day after it, and false for an empty or malformed Date.
+func (d Date) span() (from, to time.Time, ok bool) {
+	if t, err := time.Parse("2006-01-02", string(d)); err == nil {
+		return t, t.AddDate(0, 0, 1), true
+	}
+	if t, err := time.Parse("2006-01", string(d)); err == nil {
+		return t, t.AddDate(0, 1, 0), true
+	}
+	if t, err := time.Parse("2006", string(d)); err == nil {
+		return t, t.AddDate(1, 0, 0), true
+	}
+	return time.Time{}, time.Time{}, false
+}
+
+// Before reports whether all of d lies before all of e. It is false where they
+// overlap (a month and a day in it) and where one of them is not known.
+func (d Date) Before(e Date) bool {
+	_, end, ok := d.span()
+	from, _, ok2 := e.span()
+	return ok && ok2 && !end.After(from)
+}

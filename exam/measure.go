@@ -214,5 +214,14 @@ func (m Measured) Validate() error {
 	default:
 		return &Invalid{"motion of " + in.Name, m.Motion, "flexion or extension"}
 	}
+	if m.Measure == RangeOfMotion && m.Joint == NoJoint {
+		return &Invalid{"joint of " + in.Name, "", "shoulder, elbow, carpus, hip, stifle, hock or digits"}
+	}
+	if m.Measure == RangeOfMotion && m.Motion == "" {
+		return &Invalid{"motion of " + in.Name, "", "flexion or extension"}
+	}
+	if math.IsNaN(m.BestEnd) || math.IsInf(m.BestEnd, 0) {
+		return &Invalid{"best end of " + in.Name, strconv.FormatFloat(m.BestEnd, 'g', -1, 64), "a number"}
+	}
 	return nil
 }

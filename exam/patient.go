@@ -122,7 +122,7 @@ func (p Patient) Validate() error {
 		return &Invalid{"name", p.Name, "a name of at least one letter"}
 	}
 	if len(p.Name) > 200 {
-		return &Invalid{"name", p.Name[:20] + "…", "at most 200 letters"}
+		return &Invalid{"name", short(p.Name), "at most 200 letters"}
 	}
 	if p.Species.String() == "unknown" {
 		return &Invalid{"species", "", "dog, cat, horse or rabbit"}
@@ -141,6 +141,11 @@ func (p Patient) Validate() error {
 			if _, _, err := ParseLevelRange(pr.Level, p.Species); err != nil {
 				return err
 			}
+		}
+	}
+	for _, on := range p.Precautions {
+		if err := on.Validate(); err != nil {
+			return err
 		}
 	}
 	return nil
@@ -168,4 +173,39 @@ func ParseLevelRange(word string, s Species) (from, to Vertebra, err error) {
 func (p Patient) AgeYears(t time.Time) (float64, bool) {
 	d, ok := p.Born.DaysBefore(t)
 	return d / 365.25, ok
+}
+
+// ProblemAt returns the problem that stood open at t, the one with the latest onset
+// (or surgery, where no onset is known) where there are several, and false where there is none.
+// A problem without dates is open at any time.
+func (p Patient) ProblemAt(t time.Time) (Problem, bool) {
+	var best Problem
+	found := false
+	day := DayOf(t)
+	start := func(pr Problem) Date {
+		if pr.Onset != "" {
+			return pr.Onset
+		}
+		return pr.Surgery
+	}
+	for _, pr := range p.Problems {
+		if pr.Resolved != "" && pr.Resolved.Before(day) || start(pr) != "" && day.Before(start(pr)) {
+			continue
+		}
+		if !found || start(best).Before(start(pr)) || start(best) == "" && start(pr) != "" {
+			best, found = pr, true
+		}
+	}
+	return best, found
+}
+
+// WeightAt returns the weight in kg last taken at or before t, and false where there is none.
+func (p Patient) WeightAt(t time.Time) (float64, bool) {
+	var best WeightPoint
+	for _, w := range p.Weights {
+		if !w.At.After(t) && (best.Kg == 0 || w.At.After(best.At)) {
+			best = w
+		}
+	}
+	return best.Kg, best.Kg > 0
 }

@@ -63,3 +63,27 @@ type PrecautionOn struct {
 	Until Date   `json:"until,omitempty"`
 	Note  string `json:"note,omitempty"`
 }
+
+// Validate checks the code, the site and the dates.
+func (p PrecautionOn) Validate() error {
+	if _, err := ParsePrecaution(p.Code); err != nil {
+		return err
+	}
+	if p.Site != "" {
+		if _, err := ParseSite(p.Site); err != nil {
+			return err
+		}
+	}
+	for _, d := range []Date{p.Since, p.Until} {
+		if _, err := ParseDate(string(d)); err != nil {
+			return err
+		}
+	}
+	return nil
+}
+
+// HoldsOn reports whether the precaution is in force on that day; without dates it always is.
+// The day it ends still counts.
+func (p PrecautionOn) HoldsOn(day Date) bool {
+	return !day.Before(p.Since) && !p.Until.Before(day)
+}

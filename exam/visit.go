@@ -191,16 +191,20 @@ func (v Visit) Find(k Key) (Finding, bool) {
 	return Finding{}, false
 }
 
-// Grade returns the grade of an item at a site, whichever digit or joint was named, the
-// lowest where there are several, and false where it was not tested.
+// Grade returns the grade of an item at a site, whichever digit or joint was named: the
+// one furthest from normal where there are several, and false where none was tested.
 func (v Visit) Grade(i Item, s Site) (int8, bool) {
-	grade, found := int8(0), false
+	grade, health, found := int8(0), 0.0, false
 	for _, f := range v.Findings {
 		if f.Item != i || f.Site != s {
 			continue
 		}
-		if g, ok := f.Result.Grade(); ok && (!found || g < grade) {
-			grade, found = g, true
+		g, ok := f.Result.Grade()
+		if !ok {
+			continue
+		}
+		if h, _ := f.Health(); !found || h < health {
+			grade, health, found = g, h, true
 		}
 	}
 	return grade, found
