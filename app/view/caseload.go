@@ -1,0 +1,353 @@
+package view
+
+import (
+	"cmp"
+	"slices"
+	"strings"
+	"time"
+	"unicode"
+	"unicode/utf8"
+
+	"github.com/sahilm/fuzzy"
+
+	"cordwalk.example/cordwalk/assets/words"
+	"cordwalk.example/cordwalk/exam"
+)
+
+// Attention is why a patient stands where it does in the caseload, most urgent first.
+type Attention uint8
+
+// The reasons, in the order of the caseload.
+const (
+	AlertNow Attention = iota
+	AlertToday
+	AlertSoon
+	Unfinished // an exam was begun and not closed
+	Overdue
+	DueToday
+	DueLater
+	NeverDue // discharged or died
+)
+
+// usualRecheck is the number of days between visits where the patient has none of its own
+// (common practice: weekly).
+const usualRecheck = 7
+
+// CaseRow is one patient of the caseload.
+type CaseRow struct {
+	Summary   Summary
+	Cross     LimbCross
+	Attention Attention
+	Days      int    // days until due, negative when overdue; meaningless where never due
+	DueWords  string // "3 days overdue", "due today", "due in 4 days", "discharged"
+	LastWords string // "2 Mar 2026 (5 days ago)", "no visit yet"
+	Change    ChangeMark
+	Alerts    []string // unanswered, in the urgency's word
+	Matches   []Match  // where the search was found
+}
+
+// Match is a place that the search was found in: a field and the rune positions in it.
+type Match struct {
+	Field CaseField
+	At    []int
+}
+
+// CaseField is a field that is searched.
+type CaseField uint8
+
+// The fields searched.
+const (
+	FieldName CaseField = iota
+	FieldOwner
+	FieldBreed
+	FieldProblem
+)
+
+// caseFields are the fields with their weight in the order of results.
+var caseFields = [...]struct {
+	field  CaseField
+	weight int
+	text   func(Summary) string
+}{
+	{FieldName, 40, func(s Summary) string { return s.Name }},
+	{FieldOwner, 20, func(s Summary) string { return s.Owner }},
+	{FieldProblem, 10, func(s Summary) string { return s.Problem }},
+	{FieldBreed, 0, func(s Summary) string { return s.Breed }},
+}
+
+// Caseload is the list of all patients: who needs me, and why.
+type Caseload struct {
+	all    []CaseRow
+	folded [len(caseFields)][]string
+	shown  []CaseRow
+	query  string
+	hide   bool // hide patients who are never due
+	today  bool // show only those who need something today
+}
+
+// NewCaseload makes the rows, sorted by what needs attention at the time now, in its zone.
+func NewCaseload(list []Summary, now time.Time) *Caseload {
+	c := &Caseload{all: make([]CaseRow, len(list))}
+	for i, s := range list {
+		c.all[i] = caseRow(s, now)
+	}
+	slices.SortStableFunc(c.all, func(a, b CaseRow) int {
+		return cmp.Or(cmp.Compare(a.Attention, b.Attention), cmp.Compare(a.Days, b.Days),
+			cmp.Compare(strings.ToLower(a.Summary.Name), strings.ToLower(b.Summary.Name)))
+	})
+	for f := range caseFields {
+		c.folded[f] = make([]string, len(c.all))
+		for i := range c.all {
+			c.folded[f][i] = fold(caseFields[f].text(c.all[i].Summary))
+		}
+	}
+	c.apply()
+	return c
+}
+
+func caseRow(s Summary, now time.Time) CaseRow {
+	r := CaseRow{Summary: s, Cross: CrossFrom(s.Motor, s.Lameness, s.TailTone), Change: MarkOf(s.Direction), Attention: NeverDue}
+	if s.Visits == 0 {
+		r.LastWords = words.T("no visit yet")
+	} else {
+		ago := DaysBetween(s.Last, now)
+		switch {
+		case ago == 0:
+			r.LastWords = words.T("today")
+		case ago < 0:
+			r.LastWords = Day(s.Last)
+		default:
+			r.LastWords = words.N(ago, "%s (%d day ago)", "%s (%d days ago)", Day(s.Last), ago)
+		}
+	}
+	for _, a := range s.Alerts {
+		if a.Answered {
+			continue
+		}
+		r.Alerts = append(r.Alerts, words.Of(a.Urgency))
+	}
+	if s.Status != exam.Active {
+		r.DueWords = words.Of(s.Status.String())
+		return r
+	}
+	r.Attention, r.Days = DueLater, dueIn(s, now)
+	switch {
+	case r.Days < 0:
+		r.Attention = Overdue
+		r.DueWords = words.N(-r.Days, "%d day overdue", "%d days overdue", -r.Days)
+	case r.Days == 0:
+		r.Attention = DueToday
+		r.DueWords = words.T("due today")
+	default:
+		r.DueWords = words.N(r.Days, "due in %d day", "due in %d days", r.Days)
+	}
+	if !s.OpenVisit.IsZero() {
+		r.Attention = Unfinished
+		r.DueWords = words.T("exam not closed")
+	}
+	for _, a := range s.Alerts {
+		if a.Answered {
+			continue
+		}
+		switch a.Urgency {
+		case "now":
+			r.Attention = min(r.Attention, AlertNow)
+		case "today":
+			r.Attention = min(r.Attention, AlertToday)
+		default:
+			r.Attention = min(r.Attention, AlertSoon)
+		}
+	}
+	return r
+}
+
+// dueIn returns the days from today until the next visit: the date agreed, or so many days
+// after the last visit; today for a patient without one.
+func dueIn(s Summary, now time.Time) int {
+	if at, ok := s.NextVisit.Time(); ok && (s.Visits == 0 || at.After(s.Last)) {
+		return DaysBetween(now, time.Date(at.Year(), at.Month(), at.Day(), 12, 0, 0, 0, now.Location()))
+	}
+	if s.Visits == 0 {
+		return 0
+	}
+	every := s.RecheckDays
+	if every == 0 {
+		every = usualRecheck
+	}
+	return DaysBetween(now, s.Last.In(now.Location()).AddDate(0, 0, every))
+}
+
+// DaysBetween returns the calendar days from one instant to another, each in its own
+// offset, negative where the second lies on an earlier day.
+func DaysBetween(from, to time.Time) int {
+	a := time.Date(from.Year(), from.Month(), from.Day(), 0, 0, 0, 0, time.UTC)
+	b := time.Date(to.Year(), to.Month(), to.Day(), 0, 0, 0, 0, time.UTC)
+	return int(b.Sub(a).Hours() / 24)
+}
+
+// Search shows only the patients whose name, owner, breed or problem fits the query, best
+// first. The empty query shows all, by attention.
+func (c *Caseload) Search(query string) {
+	c.query = strings.TrimSpace(query)
+	c.apply()
+}
+
+// Query returns the search as given.
+func (c *Caseload) Query() string { return c.query }
+
+// HideInactive leaves discharged and dead patients out.
+func (c *Caseload) HideInactive(hide bool) { c.hide = hide; c.apply() }
+
+// OnlyToday shows only those with an alert, an unfinished exam, overdue or due today.
+func (c *Caseload) OnlyToday(only bool) { c.today = only; c.apply() }
+
+// Len returns how many patients are shown.
+func (c *Caseload) Len() int { return len(c.shown) }
+
+// Total returns how many patients there are.
+func (c *Caseload) Total() int { return len(c.all) }
+
+// Row returns the i-th patient shown.
+func (c *Caseload) Row(i int) CaseRow { return c.shown[i] }
+
+// Rows returns the patients shown. Shared: do not change.
+func (c *Caseload) Rows() []CaseRow { return c.shown }
+
+// Counts says how many active patients stand in each state, for the line above the list.
+func (c *Caseload) Counts() (alerts, overdue, today int) {
+	for _, r := range c.all {
+		switch {
+		case len(r.Alerts) > 0 && r.Attention != NeverDue:
+			alerts++
+		case r.Attention == Overdue:
+			overdue++
+		case r.Attention == DueToday || r.Attention == Unfinished:
+			today++
+		}
+	}
+	return alerts, overdue, today
+}
+
+// Words is the line above the list.
+func (c *Caseload) Words() string {
+	if c.query != "" {
+		return words.N(len(c.shown), "%d patient found", "%d patients found", len(c.shown))
+	}
+	a, o, t := c.Counts()
+	return words.N(len(c.all), "%d patient", "%d patients", len(c.all)) + " · " +
+		words.N(a, "%d with an alert", "%d with an alert", a) + " · " +
+		words.T("%d overdue", o) + " · " + words.T("%d today", t)
+}
+
+func (c *Caseload) keep(r CaseRow) bool {
+	return (!c.hide || r.Attention != NeverDue) && (!c.today || r.Attention <= DueToday)
+}
+
+// texts lets the fuzzy matcher read one field of all rows.
+type texts []string
+
+func (t texts) String(i int) string { return t[i] }
+func (t texts) Len() int            { return len(t) }
+
+// apply fills shown from the query and the filters.
+func (c *Caseload) apply() {
+	c.shown = c.shown[:0:0]
+	if c.query == "" {
+		for _, r := range c.all {
+			if c.keep(r) {
+				c.shown = append(c.shown, r)
+			}
+		}
+		return
+	}
+	q := fold(c.query)
+	type hit struct {
+		row     int
+		score   int
+		matches []Match
+	}
+	hits := map[int]*hit{}
+	add := func(row, score int, m Match) {
+		h := hits[row]
+		if h == nil {
+			h = &hit{row: row, score: score}
+			hits[row] = h
+		}
+		h.score = max(h.score, score)
+		h.matches = append(h.matches, m)
+	}
+	for f := range caseFields {
+		weight := caseFields[f].weight
+		for i, text := range c.folded[f] {
+			if at := strings.Index(text, q); at >= 0 {
+				n := utf8.RuneCountInString(text[:at])
+				pos := make([]int, utf8.RuneCountInString(q))
+				for k := range pos {
+					pos[k] = n + k
+				}
+				score := 1000 + weight
+				if at == 0 {
+					score += 200
+				} else if text[at-1] == ' ' {
+					score += 100
+				}
+				add(i, score, Match{caseFields[f].field, pos})
+			}
+		}
+	}
+	// Spelling is forgiven only where nothing was found as typed: letters in order, not far apart.
+	if len(hits) == 0 && utf8.RuneCountInString(q) >= 3 {
+		for f := range caseFields {
+			for _, m := range fuzzy.FindFromNoSort(q, texts(c.folded[f])) {
+				if m.Score <= 0 {
+					continue
+				}
+				add(m.Index, m.Score+caseFields[f].weight, Match{caseFields[f].field, runePositions(c.folded[f][m.Index], m.MatchedIndexes)})
+			}
+		}
+	}
+	list := make([]*hit, 0, len(hits))
+	for _, h := range hits {
+		if c.keep(c.all[h.row]) {
+			list = append(list, h)
+		}
+	}
+	slices.SortFunc(list, func(a, b *hit) int { return cmp.Or(cmp.Compare(b.score, a.score), cmp.Compare(a.row, b.row)) })
+	for _, h := range list {
+		r := c.all[h.row]
+		r.Matches = h.matches
+		c.shown = append(c.shown, r)
+	}
+}
+
+// runePositions turns byte offsets into rune positions.
+func runePositions(s string, bytes []int) []int {
+	out := make([]int, 0, len(bytes))
+	for _, b := range bytes {
+		if b <= len(s) {
+			out = append(out, utf8.RuneCountInString(s[:b]))
+		}
+	}
+	return out
+}
+
+// fold makes text comparable: lower case, the accents of Latin letters dropped, letter by
+// letter, so that positions stay those of the text shown.
+func fold(s string) string {
+	return strings.Map(func(r rune) rune {
+		r = unicode.ToLower(r)
+		if r < 0x80 {
+			return r
+		}
+		for plain, accented := range accents {
+			if strings.ContainsRune(accented, r) {
+				return plain
+			}
+		}
+		return r
+	}, s)
+}
+
+// accents lists the accented letters that are found by their plain ones.
+var accents = map[rune]string{'a': "áàâäãåā", 'c': "çćč", 'e': "éèêëēę", 'i': "íìîïī", 'n': "ñńň", 'o': "óòôöõøō",
+	's': "śš", 'u': "úùûüū", 'y': "ýÿ", 'z': "źżž"}
