@@ -145,8 +145,8 @@ func TestGradesOfRepeats(t *testing.T) {
 	var visits []exam.Visit
 	n := 0
 	add := func(a, b exam.Finding) {
-		first := visit(n+1, n%6, noon.Add(time.Duration(n)*24*time.Hour), "A. Brook", a)
-		second := visit(n+2, n%6, noon.Add(time.Duration(n)*24*time.Hour+time.Hour), "B. Lind", b)
+		first := visit(n+1, n/2%6, noon.Add(time.Duration(n)*24*time.Hour), "A. Brook", a)
+		second := visit(n+2, n/2%6, noon.Add(time.Duration(n)*24*time.Hour+time.Hour), "B. Lind", b)
 		second.RepeatOf = first.ID
 		visits = append(visits, first, second)
 		n += 2
