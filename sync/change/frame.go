@@ -38,6 +38,8 @@ const SuiteXChaCha20Poly1305 = 1
 
 var castagnoli = crc32.MakeTable(crc32.Castagnoli)
 
+func crc(b []byte) uint32 { return crc32.Checksum(b, castagnoli) }
+
 // Hash is a SHA-256: of a frame, it covers the frame before it as well and so all of the
 // stream up to here.
 type Hash [32]byte
@@ -72,7 +74,7 @@ func (h Header) append(b []byte) []byte {
 	b = binary.BigEndian.AppendUint64(b, h.Last)
 	b = binary.BigEndian.AppendUint32(b, h.Length)
 	b = append(b, h.Prev[:]...)
-	return binary.BigEndian.AppendUint32(b, crc32.Checksum(b[start:], castagnoli))
+	return binary.BigEndian.AppendUint32(b, crc(b[start:]))
 }
 
 // ParseHeader reads the header at the beginning of b. A header of a newer major version is
@@ -84,7 +86,7 @@ func ParseHeader(b []byte) (Header, error) {
 	if !bytes.Equal(b[:8], Magic[:]) {
 		return Header{}, fmt.Errorf("%w: here begins no frame", ErrMalformed)
 	}
-	if crc32.Checksum(b[:HeaderSize-4], castagnoli) != binary.BigEndian.Uint32(b[HeaderSize-4:]) {
+	if crc(b[:HeaderSize-4]) != binary.BigEndian.Uint32(b[HeaderSize-4:]) {
 		return Header{}, fmt.Errorf("%w: the checksum of a frame's header does not fit", ErrMalformed)
 	}
 	h := Header{

@@ -281,17 +281,14 @@ func (f bagFile) open(k Secret) (Bag, error) {
 	return Bag{f.Practice, r, Device{id, ed25519.NewKeyFromSeed(b.Seed[:])}}, nil
 }
 
-const keyFilePrefix = "cordwalk-key-1-"
-
-// FormatKeyFile returns the text of a key file: one line.
-func FormatKeyFile(s Secret) []byte { return []byte(keyFilePrefix + hex.EncodeToString(s[:]) + "\n") }
+// FormatKeyFile returns the text of a key file: one line of 64 hexadecimal digits.
+func FormatKeyFile(s Secret) []byte { return []byte(hex.EncodeToString(s[:]) + "\n") }
 
 // ParseKeyFile reads what FormatKeyFile wrote; white space around it is allowed.
 func ParseKeyFile(text []byte) (Secret, error) {
-	line, ok := strings.CutPrefix(strings.TrimSpace(string(text[:min(len(text), 1<<10)])), keyFilePrefix)
-	b, err := hex.DecodeString(line)
-	if !ok || err != nil || len(b) != len(Secret{}) {
-		return Secret{}, fmt.Errorf("%w: this is no key file: want one line beginning with %s", change.ErrMalformed, keyFilePrefix)
+	b, err := hex.DecodeString(strings.TrimSpace(string(text[:min(len(text), 1<<10)])))
+	if err != nil || len(b) != len(Secret{}) {
+		return Secret{}, fmt.Errorf("%w: this is no key file: one holds 64 hexadecimal digits", change.ErrMalformed)
 	}
 	return Secret(b), nil
 }

@@ -44,10 +44,10 @@ func (s Secret) String() string { return "secret" }
 // GoString keeps secrets out of %#v.
 func (s Secret) GoString() string { return "key.Secret{…}" }
 
-// Derive returns the key for one purpose: HKDF-SHA-256 without salt, with "cordwalk/1/" and
+// Derive returns the key for one purpose: HKDF-SHA-256 without salt, with "cordwalk 1 " and
 // the purpose as info. Different purposes give unrelated keys.
 func (s Secret) Derive(purpose string) Secret {
-	k, err := hkdf.Key(sha256.New, s[:], nil, "cordwalk/1/"+purpose, len(s))
+	k, err := hkdf.Key(sha256.New, s[:], nil, "cordwalk 1 "+purpose, len(s))
 	if err != nil {
 		panic(err) // only for an impossible length
 	}
@@ -117,7 +117,7 @@ func NewRing(epochs ...Epoch) (*Ring, error) {
 		if _, twice := r.frames[e.Number]; twice || e.Number == 0 {
 			return nil, fmt.Errorf("key epoch %d: %w: it is 0 or there twice", e.Number, change.ErrMalformed)
 		}
-		r.frames[e.Number] = e.Secret.Derive("frame").AEAD()
+		r.frames[e.Number] = e.Secret.Derive("frames").AEAD()
 	}
 	if len(r.epochs) == 0 {
 		return nil, fmt.Errorf("keys: %w: the practice has no key", change.ErrMalformed)
@@ -244,7 +244,7 @@ func (v Verifier) Verify(purpose string, message []byte, s Signature) bool {
 }
 
 func signed(purpose string, message []byte) []byte {
-	b := append([]byte("cordwalk/1/"), purpose...)
+	b := append([]byte("cordwalk 1 "), purpose...)
 	b = append(b, 0)
 	return append(b, message...)
 }

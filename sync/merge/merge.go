@@ -1,7 +1,8 @@
 // Package merge turns changes into the current state of each field, the same on every device,
 // whatever the order in which the changes arrived and however often.
 //
-// A change is current (a head) while no other change supersedes it. Several heads with
+// A change is current (a head) while no other change supersedes it, and no later one of its own
+// stream sets its field. Several heads with
 // different values are a conflict: all of them stay until a person picks one, and picking is
 // itself a change. Nothing is ever dropped: the state of a field is the set of all its
 // changes, and merging two states is the union of two sets.
@@ -98,22 +99,27 @@ func Heads(vs []Version) []Version {
 	return heads(vs, func(Version) bool { return true })
 }
 
-// heads returns the versions among those that count which no other one that counts supersedes.
+// heads returns the versions among those that count which no other one that counts replaces:
+// by naming it as superseded, or by coming later in the same stream, since a device always
+// knows what it wrote itself. The second rule keeps a missing change of another device from
+// looking like a conflict of this one with itself.
 func heads(vs []Version, counts func(Version) bool) []Version {
 	if len(vs) == 1 && counts(vs[0]) {
 		return vs
 	}
 	gone := map[change.ID]bool{}
+	last := map[change.Stream]uint64{}
 	for _, v := range vs {
 		if counts(v) {
 			for _, id := range v.Supersedes {
 				gone[id] = true
 			}
+			last[v.Stream] = max(last[v.Stream], v.Seq)
 		}
 	}
 	var hs []Version
 	for _, v := range vs {
-		if counts(v) && !gone[v.ID] {
+		if counts(v) && !gone[v.ID] && v.Seq == last[v.Stream] {
 			hs = append(hs, v)
 		}
 	}
@@ -137,8 +143,8 @@ type Field struct {
 	Current []Version
 	// Late are values that arrived after closing: they do not count until they are accepted.
 	Late []Version
-	// Lost is true if a change is known to have superseded one that never arrived: the
-	// history before it has a hole. What is current is not in doubt by it.
+	// Lost is true if a change superseded one that is not here (yet): the history has a hole.
+	// Several current values may then be no conflict: the missing change may have replaced some.
 	Lost bool
 }
 
@@ -224,8 +230,8 @@ func closedHeads(vs []Version, closing Closing) (current, late []Version) {
 		if closing.seen[v.ID] {
 			reach(v.ID, byID, seen)
 		}
-		// An amendment counts. What it supersedes was settled by a person who saw it, and so
-		// is no longer late.
+		// An amendment counts. What it supersedes, and what that had superseded on its way, was
+		// settled by a person: it is neither current nor late any more.
 		if v.Act.AfterClosing() {
 			for _, id := range v.Supersedes {
 				reach(id, byID, settled)
@@ -233,7 +239,11 @@ func closedHeads(vs []Version, closing Closing) (current, late []Version) {
 		}
 	}
 	counts := func(v Version) bool { return seen[v.ID] || v.Act.AfterClosing() }
-	current = heads(vs, counts)
+	for _, v := range heads(vs, counts) {
+		if !settled[v.ID] {
+			current = append(current, v)
+		}
+	}
 	for _, v := range heads(vs, func(v Version) bool { return !counts(v) }) {
 		if !settled[v.ID] {
 			late = append(late, v)

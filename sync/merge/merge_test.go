@@ -13,12 +13,14 @@ import (
 	"cordwalk.example/cordwalk/sync/merge"
 )
 
+// Each change of these tables comes from a device of its own.
+
 // id makes a change id, small numbers before great ones.
 func id(n byte) change.ID { return change.ID{6: 0x70, 8: 0x80, 15: n} }
 
 func ver(n byte, value string, supersedes ...byte) change.Change {
 	c := change.Change{
-		Stream: change.Stream{Device: change.Incarnation{1}}, Seq: uint64(n), ID: id(n), Kind: change.KindVisit,
+		Stream: change.Stream{Device: change.Incarnation{n}}, Seq: 1, ID: id(n), Kind: change.KindVisit,
 		Time: change.HLCAt(time.Unix(int64(n), 0)), Record: exam.ID{1}, Field: "finding/patellar pelvic-left",
 		Value: []byte(value),
 	}
@@ -73,6 +75,15 @@ func TestOpenFields(t *testing.T) {
 			require.Empty(t, f.Late)
 		})
 	}
+}
+
+// A device knows what it wrote itself, also where the change between is missing.
+func TestLaterInOneStreamReplaces(t *testing.T) {
+	first, third := ver(1, "a"), ver(3, "c", 2)
+	third.Stream, third.Seq = first.Stream, 7
+	f := merge.Evaluate(merge.Apply(merge.Apply(nil, third), first), merge.Closing{})
+	require.Equal(t, ids(3), merge.IDs(f.Current))
+	require.True(t, f.Lost)
 }
 
 func TestClosedFields(t *testing.T) {
