@@ -154,9 +154,12 @@ func steps(rows []Row, cells []Cell, posture Posture, painless func(a, b exam.Si
 	}
 	add(HandsOff, nil)
 	add(Standing, nil)
+	// On each side one limb is finished before the next is taken in hand.
 	side := func(at Position, want func(Cell) bool) {
 		from := len(out)
-		add(OnRight, want)
+		for _, part := range []func(exam.Site) bool{exam.Site.IsThoracic, exam.Site.IsPelvic, func(s exam.Site) bool { return !s.IsLimb() }} {
+			add(OnRight, func(c Cell) bool { return part(c.Site) && (want == nil || want(c)) })
+		}
 		for k := from; k < len(out); k++ {
 			out[k].Position = at
 		}
