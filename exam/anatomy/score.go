@@ -63,7 +63,7 @@ func Score(s exam.Species, visit exam.Visit) []SegmentScore {
 	}
 	for i := range out {
 		if out[i].Weight > 0 {
-			out[i].Score *= 100 / out[i].Weight
+			out[i].Score = min(100*out[i].Score/out[i].Weight, 100)
 		}
 		out[i].Known = out[i].Weight >= MinimumWeight-1e-9
 	}

@@ -34,7 +34,7 @@ var dogBorders = func() []float64 {
 // in 7.1 %, S1 in 83.3 % and S2 in 9.5 % (Kot-1994), which a normal error around 27.53 with a
 // standard deviation of 0.36 reproduces.
 var catBorders = func() []float64 {
-	b := append([]float64(nil), dogBorders[:23]...)    // C1–L2, begin of L3 is index 23
+	b := append([]float64(nil), dogBorders[:23]...)  // C1–L2, begin of L3 is index 23
 	return append(b, 21.8, 22.8, 23.7, 24.35, 24.85, // L3–L7
 		25.2, 25.5, 25.75, // S1–S3
 		26, 26.3, 26.6, 26.9, 27.2, 27.53)
