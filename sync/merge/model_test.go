@@ -17,15 +17,15 @@ import (
 )
 
 // The model is a store of registers with version vectors, a different way to the same answer:
-// a write's vector is the join of the vectors of all writes its writer knew in that field, plus
-// one dot of its own; a write is current if no other vector covers its dot. It shares no code
+// a write's vv is the join of the vectors of all writes its writer knew in that field, plus
+// one dot of its own; a write is current if no other vv covers its dot. It shares no code
 // with the package.
 
-type vector map[int]int // writer → dots
+type vv map[int]int // writer → dots
 
-func (v vector) covers(d dot) bool { return v[d.writer] >= d.n }
+func (v vv) covers(d dot) bool { return v[d.writer] >= d.n }
 
-func (v vector) join(w vector) {
+func (v vv) join(w vv) {
 	for k, n := range w {
 		v[k] = max(v[k], n)
 	}
@@ -35,11 +35,11 @@ type dot struct{ writer, n int }
 
 type modelWrite struct {
 	dot   dot
-	past  vector // includes dot
+	past  vv // includes dot
 	value string
 	after bool // its writer knew of the closing
 	// seenBy holds, for a closing, what was seen of each field.
-	seenBy map[merge.Key]vector
+	seenBy map[merge.Key]vv
 }
 
 // device of the simulation. A device that is restored becomes another writer.
@@ -113,18 +113,18 @@ func (h *history) write(d *device, site int, cs ...change.Change) {
 		c := &b.Changes[i]
 		c.ID, c.Time = h.id(), d.clock.Tick()
 		k := merge.KeyOf(*c)
-		w := modelWrite{past: vector{}, value: string(c.Value), after: c.Act.AfterClosing()}
+		w := modelWrite{past: vv{}, value: string(c.Value), after: c.Act.AfterClosing()}
 		for id := range d.have[site] {
 			if h.key[id] == k {
 				w.past.join(h.model[id].past)
 			}
 			if c.Field == change.FieldClosed && h.key[id].Record == c.Record && h.key[id].Field != change.FieldClosed {
 				if w.seenBy == nil {
-					w.seenBy = map[merge.Key]vector{}
+					w.seenBy = map[merge.Key]vv{}
 				}
 				o := h.key[id]
 				if w.seenBy[o] == nil {
-					w.seenBy[o] = vector{}
+					w.seenBy[o] = vv{}
 				}
 				w.seenBy[o].join(h.model[id].past)
 			}
@@ -256,7 +256,7 @@ func (h *history) exchange(d *device, n int) {
 func (h *history) expected(have map[change.ID]bool, k merge.Key) (current, late []change.ID) {
 	var ws []change.ID
 	closed := false
-	seen := vector{}
+	seen := vv{}
 	for id := range have {
 		o := h.key[id]
 		if o == k {
