@@ -8,6 +8,7 @@ import (
 	"cordwalk.example/cordwalk/app/chart"
 	"cordwalk.example/cordwalk/assets/words"
 	"cordwalk.example/cordwalk/exam"
+	"cordwalk.example/cordwalk/exam/anatomy"
 )
 
 // SegmentValue is the function of one segment's two halves at one visit.
@@ -286,4 +287,43 @@ func (c *Course) HoverEvent(i int) Hover {
 		return Hover{}
 	}
 	return Hover{Title: c.Events[i].Word, Lines: []string{Day(c.Events[i].At)}}
+}
+
+// PlainScores is the segment score of each visit, from the findings alone: it stands beside
+// the model's value as the figure that anybody can check.
+func PlainScores(species exam.Species, visits []exam.Visit) Scores {
+	return func(i int) []SegmentValue {
+		list := anatomy.Score(species, visits[i])
+		out := make([]SegmentValue, 0, len(list)/2)
+		region := exam.Region(0)
+		for k := 0; k+1 < len(list); k += 2 {
+			l, r := list[k], list[k+1]
+			out = append(out, SegmentValue{Segment: l.Segment.String(), Major: l.Segment.Region() != region,
+				Left: plainValue(l), Right: plainValue(r),
+				LeftKeys: keysBehind(species, visits[i], l.Segment, exam.Left), RightKeys: keysBehind(species, visits[i], r.Segment, exam.Right)})
+			region = l.Segment.Region()
+		}
+		return out
+	}
+}
+
+func plainValue(s anatomy.SegmentScore) chart.Value {
+	return chart.Value{Known: s.Known, Value: s.Score, Count: s.Findings}
+}
+
+// keysBehind lists the tested findings whose arc includes a segment on a side.
+func keysBehind(species exam.Species, v exam.Visit, seg anatomy.Segment, side exam.Site) []exam.Key {
+	var out []exam.Key
+	for _, f := range v.Findings {
+		if own := f.Site.Side(); !f.Result.Tested() || own != side && own != exam.Midline {
+			continue
+		}
+		for _, w := range anatomy.ArcOfFinding(species, f) {
+			if w.Segment == seg && w.Weight > 0 {
+				out = append(out, f.Key())
+				break
+			}
+		}
+	}
+	return out
 }

@@ -151,7 +151,8 @@ func BenchmarkKey(b *testing.B) {
 		start := time.Now()
 		n := 0
 		for b.Loop() {
-			s.Press(Rune('1' + rune(n%2)))
+			s.FocusStep(n % len(s.steps))
+			s.Press(Rune('1' + rune(n/len(s.steps)%2)))
 			_ = s.Progress()
 			n++
 		}
