@@ -71,10 +71,21 @@ type FS interface {
 	SyncDir(folder string) error
 	// Lock takes the lock file, or returns *Held if another process has it.
 	Lock(name string, who Holder) (Unlocker, error)
+	// LockedBy says whether another process holds the lock file, and which. It writes nothing.
+	LockedBy(name string) (Holder, bool, error)
 }
 
 // Unlocker gives a lock back. The lock file itself stays.
-type Unlocker interface{ Unlock() error }
+type Unlocker interface {
+	// Unlock empties the lock file and lets go of it.
+	Unlock() error
+	// Keep lets go of it and leaves its words, so that the next holder knows that all did
+	// not end well.
+	Keep() error
+	// Left reports whether the holder before us went without Unlock: it crashed, was
+	// killed, or used Keep.
+	Left() bool
+}
 
 // Hooked is an optional ability of an FS: to be told of named places in the code that
 // do their input and output past it (the index is mapped into memory by bbolt), and to

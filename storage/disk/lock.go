@@ -50,7 +50,10 @@ var errBusy = errors.New("locked by another process")
 // errNoLocks is returned by lockFile where the file system knows no locks.
 var errNoLocks = errors.New("the file system knows no locks")
 
-type osLock struct{ f *os.File }
+type osLock struct {
+	f    *os.File
+	left bool
+}
 
 // takeLock takes the lock file. The file is made once, never renamed and never removed,
 // so that two processes always meet in the same file. The system's lock on it ends with
@@ -94,7 +97,7 @@ func takeLock(name string, who Holder) (Unlocker, error) {
 		return nil, err
 	}
 	ok = true
-	return &osLock{f}, nil
+	return &osLock{f, written}, nil
 }
 
 func readHolder(f *os.File) (Holder, bool) {
@@ -107,6 +110,33 @@ func readHolder(f *os.File) (Holder, bool) {
 		return Holder{}, false // torn by a power cut: nobody is left to hold it
 	}
 	return h, true
+}
+
+// Left reports whether the holder before us went without unlocking: it crashed or was killed.
+func (l *osLock) Left() bool { return l.left }
+
+// Keep lets go of the lock but leaves the words in it, as a crash would.
+func (l *osLock) Keep() error { return l.f.Close() }
+
+// lockedBy says who holds a lock file, without taking it or writing to it.
+func lockedBy(name string) (h Holder, held bool, err error) {
+	f, err := os.Open(name)
+	if errors.Is(err, os.ErrNotExist) {
+		return h, false, nil
+	}
+	if err != nil {
+		return h, false, err
+	}
+	defer f.Close()
+	lerr := lockFile(f)
+	by, written := readHolder(f)
+	switch {
+	case errors.Is(lerr, errBusy):
+		return by, true, nil
+	case lerr != nil && written && by.PID != os.Getpid() && by.Host == Self("", time.Time{}).Host && alive(by.PID):
+		return by, true, nil
+	}
+	return by, false, nil
 }
 
 // Unlock empties the lock file and lets go of it.

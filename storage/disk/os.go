@@ -86,3 +86,5 @@ func (osFS) Rename(from, to string) error                   { return rename(from
 func (osFS) Remove(name string) error                       { return os.Remove(name) }
 func (osFS) SyncDir(folder string) error                    { return syncDir(folder) }
 func (osFS) Lock(name string, who Holder) (Unlocker, error) { return takeLock(name, who) }
+
+func (osFS) LockedBy(name string) (Holder, bool, error) { return lockedBy(name) }

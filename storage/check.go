@@ -1,0 +1,105 @@
+package storage
+
+import (
+	"context"
+	"errors"
+	"io/fs"
+	"os"
+	"path/filepath"
+
+	"go.etcd.io/bbolt"
+
+	"cordwalk.example/cordwalk/storage/disk"
+)
+
+// Check reads everything in a store and reports what is wrong, by place. It changes nothing.
+// The error says that the check could not be made, for example because the store is open elsewhere.
+func Check(ctx context.Context, dir string, o Options) ([]Problem, error) {
+	o = o.withDefaults()
+	ps, err := check(ctx, dir, o)
+	return ps, explain("checking the practice in "+dir, err)
+}
+
+func check(ctx context.Context, dir string, o Options) ([]Problem, error) {
+	if err := holdsPractice(o.Files, dir); err != nil {
+		return nil, err
+	}
+	if by, held, err := o.Files.LockedBy(filepath.Join(dir, lockFile)); err != nil {
+		return nil, err
+	} else if held {
+		return nil, &disk.Held{File: filepath.Join(dir, lockFile), By: by}
+	}
+	id, ps, err := readIdentity(o.Files, dir)
+	if err != nil {
+		return nil, err
+	}
+	bag, err := id.unlock(o.Files, o.Unlock)
+	if err != nil {
+		return nil, err
+	}
+	segs, err := listSegments(o.Files, dir)
+	if err != nil {
+		return nil, err
+	}
+	var st indexState
+	for _, seg := range segs {
+		rel := journalDir + "/" + filepath.Base(seg.name)
+		err := walkSegment(o.Files, seg, 0, func(p piece) error {
+			if _, _, problem := readPiece(p, st.stream(seg.stream), bag.Ring); problem != "" {
+				ps = append(ps, Problem{File: rel, Offset: p.Offset, Length: p.Length, What: problem})
+			}
+			return ctx.Err()
+		})
+		if err != nil {
+			return nil, err
+		}
+	}
+	return append(ps, checkIndex(filepath.Join(dir, indexFile), newSeals(bag.Ring), st)...), nil
+}
+
+// checkIndex verifies every value, count and sum of the index.
+func checkIndex(path string, s *seals, journal indexState) (ps []Problem) {
+	bad := func(what string) { ps = append(ps, Problem{File: indexFile, Offset: -1, What: what}) }
+	if _, err := os.Stat(path); errors.Is(err, fs.ErrNotExist) {
+		return nil // built at the next start
+	}
+	err := guard(func() error {
+		o := boltOptions()
+		o.ReadOnly = true
+		db, err := bbolt.Open(path, 0o600, o)
+		if err != nil {
+			return err
+		}
+		x := &index{db, path, s}
+		defer x.abandon()
+		return db.View(func(tx *bbolt.Tx) error {
+			st, err := x.state(tx)
+			if err != nil {
+				return err
+			}
+			for _, b := range []struct {
+				name []byte
+				want tally
+			}{{bucketRecords, st.Records}, {bucketPatients, st.Patients}, {bucketPlaces, st.Places}, {bucketPages, st.Pages}} {
+				var have tally
+				err := tx.Bucket(b.name).ForEach(func(k, v []byte) error {
+					have.Count++
+					have.Sum = have.Sum.Add(x.mark(b.name, k, v))
+					_, err := x.open(b.name, k, v)
+					return err
+				})
+				if err != nil {
+					return err
+				}
+				if have != b.want {
+					bad("the count or sum of its " + string(b.name) + " does not fit; run rebuild")
+				}
+			}
+			return nil
+		})
+	})
+	if err != nil {
+		bad(err.Error() + "; run rebuild")
+	}
+	return ps
+}

@@ -1,0 +1,717 @@
+// Package storage keeps a practice's records so that what is called saved stays saved.
+//
+// The truth is a journal of sealed frames that only ever grows; Apply returns when the frame
+// of an action is on the disk. Beside it stands an index (bbolt) with the current state, which
+// follows within a second, is never needed for safety, and is rebuilt from the journal
+// whenever it is damaged, foreign or gone. Nothing is overwritten: each field keeps every
+// value it had, with who set it, when and on which device.
+//
+// What is damaged is reported by place and everything around it is used. What a lost
+// part of the journal may have touched is marked, and never served as certain.
+package storage
+
+import (
+	"context"
+	"errors"
+	"fmt"
+	"io/fs"
+	"path/filepath"
+	"slices"
+	"sync"
+	"time"
+
+	"go.etcd.io/bbolt"
+
+	"cordwalk.example/cordwalk/exam"
+	"cordwalk.example/cordwalk/storage/disk"
+	"cordwalk.example/cordwalk/sync/change"
+	"cordwalk.example/cordwalk/sync/key"
+	"cordwalk.example/cordwalk/sync/merge"
+)
+
+const lockFile = "lock"
+
+// The index follows the journal at most this much later.
+const (
+	flushAfter   = time.Second
+	flushChanges = 500
+)
+
+// Options say how a store is opened.
+type Options struct {
+	Unlock   Unlock
+	Program  string                               // written in the lock, told to a second process
+	Now      func() time.Time                     // nil: time.Now
+	Files    disk.FS                              // nil: the real file system
+	Progress func(what string, done, total int64) // of long work; may be nil
+	Notice   func(words string)                   // messages for people; may be nil; may come from another goroutine
+}
+
+func (o Options) withDefaults() Options {
+	if o.Now == nil {
+		o.Now = time.Now
+	}
+	if o.Files == nil {
+		o.Files = disk.OS()
+	}
+	if o.Program == "" {
+		o.Program = "another program"
+	}
+	if o.Progress == nil {
+		o.Progress = func(string, int64, int64) {}
+	}
+	if o.Notice == nil {
+		o.Notice = func(string) {}
+	}
+	return o
+}
+
+// Store is an open practice. It is safe for use by several goroutines; writes are put in a
+// row, reads do not wait for the disk of a write.
+//
+// Locks are taken in this order: follow, write, mu.
+type Store struct {
+	dir   string
+	o     Options
+	fs    disk.FS
+	id    identity
+	bag   key.Bag
+	seals *seals
+	lock  disk.Unlocker
+	clock *change.Clock
+
+	write   sync.Mutex // one frame at a time; guards the fields below
+	out     writer
+	next    uint64
+	prev    change.Hash
+	pending *pendingFrame
+
+	follow sync.Mutex // one flush or repair of the index at a time
+
+	mu       sync.RWMutex // guards the fields below; never held while a frame is written
+	idx      *index
+	state    indexState // the index's state and all that was applied since
+	overlay  map[exam.ID]map[recordKey]*record
+	changed  map[exam.ID]map[recordKey]bool // what the index does not have yet
+	lastOwn  map[exam.ID]uint64             // the last change to a patient in this device's stream
+	behind   int                            // changes that the index does not have yet
+	problems []Problem
+	shut     bool
+
+	wake chan struct{} // something is behind
+	full chan struct{} // much is behind
+	quit chan struct{}
+	done chan struct{}
+}
+
+// Create makes a new practice in a folder, which may exist if it is empty, and opens it.
+func Create(dir string, o Options) (*Store, error) {
+	o = o.withDefaults()
+	s, err := create(dir, o)
+	if err != nil {
+		return nil, explain("making the practice in "+dir, err)
+	}
+	return s, nil
+}
+
+func create(dir string, o Options) (*Store, error) {
+	if err := o.Files.MakeDir(dir); err != nil {
+		return nil, err
+	}
+	es, err := o.Files.List(dir)
+	if err != nil {
+		return nil, err
+	}
+	for _, e := range es {
+		switch e.Name {
+		case identityFile, identityBackup:
+			return nil, fmt.Errorf("there is a practice already: %w", fs.ErrExist)
+		case lockFile, journalDir, "files", disk.Temporary(identityFile), disk.Temporary(identityBackup):
+			// left by an attempt that a power cut ended before the practice had its keys
+		default:
+			return nil, fmt.Errorf("the folder is not empty (%s); choose an empty or new one", e.Name)
+		}
+	}
+	lock, err := o.Files.Lock(filepath.Join(dir, lockFile), disk.Self(o.Program, o.Now()))
+	if err != nil {
+		return nil, err
+	}
+	made := false
+	defer func() {
+		if !made {
+			_ = lock.Unlock()
+		}
+	}()
+	for _, d := range []string{journalDir, "files"} {
+		if err := o.Files.MakeDir(filepath.Join(dir, d)); err != nil {
+			return nil, err
+		}
+	}
+	id, bag, err := newIdentity(o.Files, o.Unlock, o.Now())
+	if err != nil {
+		return nil, err
+	}
+	if err := writeIdentity(o.Files, dir, id); err != nil {
+		return nil, err
+	}
+	if err := o.Files.SyncDir(filepath.Dir(dir)); err != nil {
+		return nil, err
+	}
+	s, err := start(dir, o, lock, id, bag, nil)
+	if err != nil {
+		return nil, err
+	}
+	made = true
+	return s, nil
+}
+
+// Open opens the practice in a folder. The errors *disk.Held, ErrLocked, change.ErrNewer and
+// fs.ErrNotExist can be told apart with errors.As and errors.Is.
+func Open(dir string, o Options) (*Store, error) {
+	o = o.withDefaults()
+	s, err := open(dir, o)
+	if err != nil {
+		return nil, explain("opening the practice in "+dir, err)
+	}
+	return s, nil
+}
+
+// holdsPractice reports whether the folder looks like a store, before anything is made in it.
+func holdsPractice(fsys disk.FS, dir string) error {
+	for _, n := range []string{identityFile, identityBackup, disk.Temporary(identityFile)} {
+		there, err := disk.Exists(fsys, filepath.Join(dir, n))
+		if err != nil || there {
+			return err
+		}
+	}
+	return fmt.Errorf("it holds no practice; make one there first, or name another folder: %w", fs.ErrNotExist)
+}
+
+func open(dir string, o Options) (*Store, error) {
+	if err := holdsPractice(o.Files, dir); err != nil {
+		return nil, err
+	}
+	lock, err := o.Files.Lock(filepath.Join(dir, lockFile), disk.Self(o.Program, o.Now()))
+	if err != nil {
+		return nil, err
+	}
+	opened := false
+	defer func() {
+		if !opened {
+			_ = lock.Unlock()
+		}
+	}()
+	id, damage, err := readIdentity(o.Files, dir)
+	if err != nil {
+		return nil, err
+	}
+	bag, err := id.unlock(o.Files, o.Unlock)
+	if err != nil {
+		return nil, err
+	}
+	if len(damage) > 0 { // one copy is whole: make the other one so again
+		if err := writeIdentity(o.Files, dir, id); err != nil {
+			return nil, err
+		}
+		for _, p := range damage {
+			o.Notice(p.String() + "; it was made again from the other copy")
+		}
+	}
+	s, err := start(dir, o, lock, id, bag, damage)
+	if err != nil {
+		return nil, err
+	}
+	opened = true
+	return s, nil
+}
+
+// start brings index and journal together and begins to follow.
+func start(dir string, o Options, lock disk.Unlocker, id identity, bag key.Bag, damage []Problem) (*Store, error) {
+	s := &Store{
+		dir: dir, o: o, fs: o.Files, id: id, bag: bag, seals: newSeals(bag.Ring), lock: lock,
+		overlay: map[exam.ID]map[recordKey]*record{}, changed: map[exam.ID]map[recordKey]bool{}, lastOwn: map[exam.ID]uint64{},
+		problems: damage, wake: make(chan struct{}, 1), full: make(chan struct{}, 1), quit: make(chan struct{}), done: make(chan struct{}),
+	}
+	if err := s.fs.MakeDir(filepath.Join(dir, journalDir)); err != nil {
+		return nil, err
+	}
+	if err := s.openIndex(); err != nil {
+		return nil, err
+	}
+	if err := s.catchUp(); err != nil {
+		s.idx.abandon()
+		return nil, err
+	}
+	go s.following()
+	if s.behind > 0 {
+		s.poke(s.behind)
+	}
+	return s, nil
+}
+
+// openIndex opens the index, or builds it where it cannot be used.
+func (s *Store) openIndex() error {
+	path := filepath.Join(s.dir, indexFile)
+	var err error
+	if s.lock.Left() {
+		err = probe(path)
+	}
+	if err == nil {
+		s.idx, s.state, err = openIndex(path, s.seals, s.bag.Practice)
+	}
+	switch {
+	case err == nil:
+		return nil
+	case errors.Is(err, fs.ErrNotExist):
+		if segs, lerr := listSegments(s.fs, s.dir); lerr != nil {
+			return lerr
+		} else if len(segs) > 0 {
+			s.o.Notice("the index was missing and is built anew from the journal")
+		}
+	case errors.Is(err, errForeignIndex):
+		s.o.Notice("the index is of another version of this program; it is set aside and built anew from the journal")
+	case errors.Is(err, errIndex):
+		s.o.Notice("the index is damaged; it is set aside and built anew from the journal")
+	default:
+		return err
+	}
+	return s.rebuildIndex(context.Background(), !errors.Is(err, fs.ErrNotExist))
+}
+
+// rebuildIndex sets the index aside, if there is one, builds it anew and opens it.
+func (s *Store) rebuildIndex(ctx context.Context, aside bool) error {
+	path := filepath.Join(s.dir, indexFile)
+	if aside {
+		if err := s.fs.Rename(path, disk.Aside(path, "damaged")); err != nil && !errors.Is(err, fs.ErrNotExist) {
+			return err
+		}
+	}
+	st, problems, err := build(ctx, s.fs, s.dir, s.bag, s.seals, s.o.Progress)
+	if err != nil {
+		return err
+	}
+	s.problems = append(s.problems, problems...)
+	if s.idx, _, err = openIndex(path, s.seals, s.bag.Practice); err != nil {
+		return err
+	}
+	s.state = st
+	return nil
+}
+
+// catchUp takes in what the journals hold beyond the index, and finds the place where this
+// device goes on writing.
+func (s *Store) catchUp() error {
+	segs, err := listSegments(s.fs, s.dir)
+	if err != nil {
+		return err
+	}
+	own, err := s.id.stream()
+	if err != nil {
+		return err
+	}
+	var last *segmentFile // of the own stream
+	end, tainted := int64(0), false
+	for i, seg := range segs {
+		st := s.state.stream(seg.stream)
+		mine := seg.stream == own
+		if mine {
+			last, end = &segs[i], 0
+		}
+		if seg.number < st.Segment {
+			continue
+		}
+		from := int64(0)
+		if seg.number == st.Segment {
+			from = st.Offset
+		}
+		if mine {
+			end = from
+		}
+		if from > seg.size {
+			s.problems = append(s.problems, Problem{File: s.rel(seg.name), Offset: seg.size, What: "the segment is shorter than it was; entries at its end are missing here"})
+			tainted = tainted || mine
+			continue
+		}
+		err := walkSegment(s.fs, seg, from, func(p piece) error {
+			problem := s.takeIn(p)
+			if problem != "" {
+				s.problems = append(s.problems, Problem{File: s.rel(seg.name), Offset: p.Offset, Length: p.Length, What: problem})
+				tainted = tainted || mine
+			}
+			if mine {
+				end = p.end()
+			}
+			return nil
+		})
+		if err != nil {
+			return err
+		}
+		// An earlier segment of the own stream that was left after an error may end in
+		// part of a frame, which the next segment repeats: only the last one counts.
+		if mine && i+1 < len(segs) && segs[i+1].stream == own {
+			tainted = false
+		}
+		st = s.state.stream(seg.stream)
+		st.Segment, st.Offset = seg.number, max(end, from)
+	}
+	return s.takeUp(own, last, end, tainted)
+}
+
+// takeUp decides where this device goes on writing: behind the last frame, or, if an
+// unreadable tail was found or numbers were lost, in a new incarnation.
+func (s *Store) takeUp(own change.Stream, last *segmentFile, end int64, tainted bool) error {
+	st := s.state.stream(own)
+	if len(merge.Gaps(own, st.Spans, st.Head)) > 0 {
+		tainted = true
+	}
+	if last != nil && st.Segment > last.number {
+		tainted = true // the segment that the index had taken in is gone
+	}
+	if tainted || (last == nil && st.Head > 0) {
+		s.id.Earlier = append(s.id.Earlier, s.id.Incarnation)
+		s.id.Incarnation = change.NewIncarnation().String()
+		if err := writeIdentity(s.fs, s.dir, s.id); err != nil {
+			return err
+		}
+		s.o.Notice("a part of this device's journal cannot be read; it is kept as it is, and writing goes on in a new place")
+		own, _ = s.id.stream()
+		last, st = nil, s.state.stream(own)
+	}
+	s.out = writer{fs: s.fs, dir: s.dir, stream: own}
+	s.next, s.prev = st.Head+1, st.Last
+	s.clock = change.NewClock(s.o.Now, s.state.Clock)
+	if last == nil {
+		return nil
+	}
+	return s.out.resume(*last, end)
+}
+
+func (s *Store) rel(name string) string {
+	if r, err := filepath.Rel(s.dir, name); err == nil {
+		return filepath.ToSlash(r)
+	}
+	return name
+}
+
+// stream returns the state of a stream, made if it is new.
+func (st *indexState) stream(x change.Stream) *streamState {
+	for i := range st.Streams {
+		if st.Streams[i].Stream == x {
+			return &st.Streams[i]
+		}
+	}
+	st.Streams = append(st.Streams, streamState{Stream: x})
+	return &st.Streams[len(st.Streams)-1]
+}
+
+// has reports whether all of first to last was taken in.
+func (st *streamState) has(first, last uint64) bool {
+	for _, sp := range st.Spans {
+		if sp.First <= first && last <= sp.Last {
+			return true
+		}
+	}
+	return false
+}
+
+// take notes a frame that was read.
+func (st *streamState) take(f change.Frame) {
+	st.Spans = merge.AddSpan(st.Spans, merge.Span{First: f.First, Last: f.Last})
+	if f.Last > st.Head {
+		st.Head, st.Last = f.Last, f.Hash()
+	}
+}
+
+// miss notes a frame that is there but cannot be read.
+func (st *streamState) miss(f change.Frame) {
+	if f.Last > st.Head {
+		st.Head, st.Last = f.Last, f.Hash()
+	}
+}
+
+// readPiece opens a piece of a segment. It returns the batch if it is news, and in words what is
+// wrong with the piece. st is brought up to date.
+func readPiece(p piece, st *streamState, keys change.Keys) (b change.Batch, news bool, problem string) {
+	switch {
+	case p.Blank:
+		return b, false, "there are only zeros where entries stood or a disk lost what it was told to keep"
+	case p.Damage != nil:
+		return b, false, "this is no readable entry: " + p.Damage.Error()
+	case p.Frame.Stream != p.seg.stream:
+		return b, false, "an entry of another stream stands here"
+	case st.has(p.Frame.First, p.Frame.Last):
+		return b, false, "" // written again after an error
+	}
+	b, err := change.Open(p.Frame, keys)
+	if err != nil {
+		st.miss(p.Frame)
+		return b, false, "an entry cannot be opened: " + err.Error()
+	}
+	if p.Frame.First == st.Head+1 && p.Frame.Prev != st.Last {
+		problem = "the entry does not follow the one before it: the journal was changed, or a part of it is from elsewhere"
+	}
+	st.take(p.Frame)
+	return b, true, problem
+}
+
+// takeIn merges a piece of a journal into the state that the index does not have yet. It is
+// used before the store is shared.
+func (s *Store) takeIn(p piece) (problem string) {
+	b, news, problem := readPiece(p, s.state.stream(p.seg.stream), s.bag.Ring)
+	if !news {
+		return problem
+	}
+	for _, c := range b.Changes {
+		r, err := s.baseRecord(keyOf(c))
+		if err != nil {
+			return err.Error()
+		}
+		s.install(r.with(c), c.Stream, c.Seq)
+		s.state.Clock = s.adopt(c.Time)
+	}
+	s.behind += len(b.Changes)
+	return problem
+}
+
+// adopt returns the highest reading of the clock to go on from.
+func (s *Store) adopt(t change.HLC) change.HLC {
+	if t.Ahead(s.o.Now()) {
+		return s.state.Clock
+	}
+	return max(s.state.Clock, t)
+}
+
+// install puts a record into the overlay. mu must be held, or the store not shared yet.
+func (s *Store) install(r *record, stream change.Stream, seq uint64) {
+	m := s.overlay[r.patient]
+	if m == nil {
+		m = map[recordKey]*record{}
+		s.overlay[r.patient] = m
+	}
+	m[r.key()] = r
+	d := s.changed[r.patient]
+	if d == nil {
+		d = map[recordKey]bool{}
+		s.changed[r.patient] = d
+	}
+	d[r.key()] = true
+	if seq > 0 && stream.Device.String() == s.id.Incarnation {
+		s.lastOwn[r.patient] = seq
+	}
+	if r.kind == KindEdge {
+		s.state.setEdges(r)
+	}
+}
+
+// setEdges brings the list of joined patients up to date with an edge record.
+func (st *indexState) setEdges(r *record) {
+	for _, f := range r.fields {
+		a, b, ok := merge.EdgeEnds(merge.Key{Kind: r.kind, Record: r.id, Field: f.name})
+		if !ok {
+			continue
+		}
+		e := [2]exam.ID{a, b}
+		st.Edges = slices.DeleteFunc(slices.Clone(st.Edges), func(x [2]exam.ID) bool { return x == e })
+		if merge.Joined(merge.Evaluate(f.versions, merge.Closing{})) {
+			st.Edges = append(st.Edges, e)
+		}
+	}
+}
+
+// baseRecord returns a record as it is now, empty if it is new.
+func (s *Store) baseRecord(k recordKey) (*record, error) {
+	s.mu.RLock()
+	r := s.overlay[k.patient][k]
+	s.mu.RUnlock()
+	if r != nil {
+		return r, nil
+	}
+	err := s.onIndex(func(x *index, tx *bbolt.Tx) (err error) {
+		r, err = x.record(tx, k)
+		return err
+	})
+	if err == nil && r == nil {
+		r = newRecord(k)
+	}
+	return r, err
+}
+
+// onIndex runs f on a snapshot of the index.
+func (s *Store) onIndex(f func(x *index, tx *bbolt.Tx) error) error {
+	s.mu.RLock()
+	x, shut := s.idx, s.shut
+	s.mu.RUnlock()
+	if shut {
+		return ErrShut
+	}
+	return x.view(func(tx *bbolt.Tx) error { return f(x, tx) })
+}
+
+// Close waits for the index to follow and gives the lock back. What was applied is safe
+// whatever Close returns.
+func (s *Store) Close() error {
+	s.write.Lock()
+	s.mu.Lock()
+	if s.shut {
+		s.mu.Unlock()
+		s.write.Unlock()
+		return nil
+	}
+	s.mu.Unlock()
+	close(s.quit)
+	<-s.done
+	ferr := s.flush()
+	s.mu.Lock()
+	s.shut = true
+	x := s.idx
+	s.mu.Unlock()
+	s.out.leave()
+	s.write.Unlock()
+	if ferr != nil {
+		s.o.Notice("the index could not be brought up to date; it will be at the next start: " + ferr.Error())
+	}
+	err := x.close()
+	if ferr != nil || err != nil { // leave the mark of an unclean close: the index is tried with care next time
+		return explain("closing the practice", errors.Join(err, s.lock.Keep()))
+	}
+	return explain("closing the practice", errors.Join(err, s.lock.Unlock()))
+}
+
+// Protected reports whether the store needs a passphrase or a key file.
+func (s *Store) Protected() bool { return s.id.Protected }
+
+// Device returns this device's short name.
+func (s *Store) Device() string { return s.id.Device }
+
+// Problems returns what was found wrong in the files when the store was opened.
+func (s *Store) Problems() []Problem {
+	s.mu.RLock()
+	defer s.mu.RUnlock()
+	return slices.Clone(s.problems)
+}
+
+// poke tells the follower that the index is behind, by so many changes.
+func (s *Store) poke(behind int) {
+	select {
+	case s.wake <- struct{}{}:
+	default:
+	}
+	if behind >= flushChanges {
+		select {
+		case s.full <- struct{}{}:
+		default:
+		}
+	}
+}
+
+// following brings the index up to date in the background.
+func (s *Store) following() {
+	defer close(s.done)
+	wait := flushAfter
+	for {
+		select {
+		case <-s.quit:
+			return
+		case <-s.wake:
+		}
+		t := time.NewTimer(wait)
+		select {
+		case <-s.quit:
+			t.Stop()
+			return
+		case <-s.full:
+			t.Stop()
+		case <-t.C:
+		}
+		if err := s.flush(); err != nil {
+			s.o.Notice("the index could not be brought up to date; it is tried again: " + explain("writing the index", err).Error())
+			wait = min(2*wait, time.Minute)
+			s.poke(0)
+			continue
+		}
+		wait = flushAfter
+	}
+}
+
+// flush brings the index up to date with what is applied now.
+func (s *Store) flush() error {
+	s.follow.Lock()
+	defer s.follow.Unlock()
+	s.mu.RLock()
+	x, behind := s.idx, s.behind
+	st := s.state
+	st.Streams = slices.Clone(s.state.Streams)
+	type dirty struct {
+		patient exam.ID
+		records []*record
+	}
+	var ds []dirty
+	for p, keys := range s.changed {
+		d := dirty{patient: p}
+		for k := range keys {
+			d.records = append(d.records, s.overlay[p][k])
+		}
+		ds = append(ds, d)
+	}
+	s.mu.RUnlock()
+	if len(ds) == 0 {
+		return nil
+	}
+	if err := disk.At(s.fs, "index commit", x.path); err != nil {
+		return err
+	}
+	err := guard(func() error {
+		return x.db.Update(func(tx *bbolt.Tx) error {
+			for _, d := range ds {
+				if err := x.store(tx, &st, d.patient, d.records); err != nil {
+					return err
+				}
+			}
+			return x.putState(tx, st)
+		})
+	})
+	if err != nil {
+		return err
+	}
+	_ = disk.At(s.fs, "index committed", x.path)
+	s.mu.Lock()
+	defer s.mu.Unlock()
+	s.behind -= behind
+	s.state.Records, s.state.Patients, s.state.Places, s.state.Pages = st.Records, st.Patients, st.Places, st.Pages
+	for _, d := range ds {
+		for _, r := range d.records {
+			if s.overlay[d.patient][r.key()] == r {
+				delete(s.changed[d.patient], r.key())
+			}
+		}
+		if len(s.changed[d.patient]) == 0 {
+			delete(s.changed, d.patient)
+		}
+	}
+	s.trim()
+	return nil
+}
+
+// keepRecords is how many records stay in memory after the index has them.
+const keepRecords = 64
+
+// trim lets go of records that the index has. mu must be held.
+func (s *Store) trim() {
+	n := 0
+	for p, m := range s.overlay {
+		for k := range m {
+			if s.changed[p][k] {
+				continue
+			}
+			if n++; n > keepRecords {
+				delete(m, k)
+			}
+		}
+		if len(m) == 0 {
+			delete(s.overlay, p)
+		}
+	}
+	if len(s.lastOwn) > 10000 {
+		clear(s.lastOwn)
+	}
+}
