@@ -286,7 +286,7 @@ func median(v []vg.Length) vg.Length {
 
 // unlikeMark draws the small mark of a visit that is not like the others: two slanted strokes.
 func (p pen) unlikeMark(x, y vg.Length, col color.NRGBA) {
-	s := p.st.size() * 0.22
+	s := p.st.size() * 0.18
 	p.line(x-s*1.6, y-s, x-s*0.2, y+s, 0.7, col)
 	p.line(x+s*0.2, y-s, x+s*1.6, y+s, 0.7, col)
 }

@@ -99,6 +99,7 @@ const (
 	MarkWorse
 	MarkSame
 	MarkDifferent
+	MarkPlain // tested, with nothing to compare with: no mark
 )
 
 // MarkOf returns the mark of a direction.
@@ -144,6 +145,7 @@ func Wedge(c draw.Canvas, st Style, at vg.Point, r vg.Length, m Mark, hollow boo
 		p.line(at.X-r, at.Y, at.X+r, at.Y, w*1.8, st.Palette.Ink)
 	case MarkDifferent:
 		p.strokePath(circlePath(at, r*0.85), w*1.4, st.Palette.Ink)
+	case MarkPlain:
 	default:
 		p.strokePath(circlePath(at, r*0.85), w, st.Palette.Soft, r/2, r/2)
 	}

@@ -137,6 +137,9 @@ func (b Body) label(p pen, pl bodyPlan, site exam.Site, limb BodyLimb, size vg.L
 	if !left {
 		mx, tx = x+mark, x+mark*3
 	}
+	if limb.Mark == MarkPlain {
+		tx = x
+	}
 	Wedge(p.Canvas, p.st, vg.Point{X: mx, Y: y + size*0.4}, mark, limb.Mark, limb.Hollow)
 	p.text(tx, y, word, size*1.1, true, col, ax)
 	if limb.ShowBeads {

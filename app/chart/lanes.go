@@ -21,6 +21,8 @@ type Series struct {
 	Step     bool    // whole grades: numbers stand at the beads
 	Goals    []Goal
 	Forecast []Forecast // after the last visit, drawn paler behind a break
+	LowWord  string     // stands at the lower end of the scale instead of its figure
+	HighWord string     // stands at the upper end of the scale instead of its figure
 	Noise    float64    // half-width of what is not a real change about the first value; 0: none
 }
 
@@ -111,7 +113,7 @@ func (l lanes) plan(r vg.Rectangle, st Style) lanePlan {
 		for _, s := range l.series {
 			span.Left = max(span.Left, Width(s.Label, size, false)+Width(s.Unit, size, false)+size*0.5)
 		}
-		span.Left = min(span.Left+size*2, (r.Max.X-r.Min.X)*0.45)
+		span.Left = min(span.Left+l.endWidth(size), (r.Max.X-r.Min.X)*0.45)
 	}
 	if span.Right == 0 {
 		span.Right = size * 0.5
@@ -131,6 +133,15 @@ func (l lanes) plan(r vg.Rectangle, st Style) lanePlan {
 	}
 	p.r = min(size*0.42, p.laneH*0.16)
 	return p
+}
+
+// endWidth is the room that the ends of the scales need left of the plot.
+func (l lanes) endWidth(size vg.Length) vg.Length {
+	w := size * 2
+	for _, s := range l.series {
+		w = max(w, Width(s.LowWord, size*0.85, false)+size*0.9, Width(s.HighWord, size*0.85, false)+size*0.9)
+	}
+	return w
 }
 
 // scaleY places values in a lane.
@@ -204,7 +215,7 @@ func (l lanes) draw(c draw.Canvas, st Style) {
 		if i%2 == 0 {
 			p.rect(rectOf(pl.plot.Min.X, top-pl.laneH, pl.plot.Max.X, top), pal.Faint)
 		}
-		p.laneLabels(c.Rectangle.Min.X, pl, y, s, top)
+		p.laneLabels(c.Rectangle.Min.X, pl, y, s, top, l.endWidth(size))
 	}
 	p.axis(pl.x, pl.plot.Min.Y, 0)
 	for i, s := range l.series {
@@ -214,7 +225,7 @@ func (l lanes) draw(c draw.Canvas, st Style) {
 		x := pl.x.at(v.At)
 		p.line(x, pl.plot.Min.Y, x, pl.plot.Min.Y-size*0.3, 1.2, pal.Ink)
 		if v.Unlike {
-			p.unlikeMark(x, pl.plot.Min.Y-size*0.15, pal.Ink)
+			p.unlikeMark(x, pl.plot.Min.Y, pal.Ink)
 		}
 	}
 	p.drawEvents(pl.events, pl.plot.Min.Y, pl.plot.Max.Y)
@@ -228,9 +239,9 @@ func (l lanes) draw(c draw.Canvas, st Style) {
 }
 
 // laneLabels writes the name of a lane and the ends of its scale.
-func (p pen) laneLabels(x0 vg.Length, pl lanePlan, y scaleY, s Series, top vg.Length) {
+func (p pen) laneLabels(x0 vg.Length, pl lanePlan, y scaleY, s Series, top, ends vg.Length) {
 	size, pal := p.st.size(), p.st.Palette
-	room := pl.plot.Min.X - x0 - size*1.9
+	room := pl.plot.Min.X - x0 - ends
 	label := Fit(s.Label, room, size, false)
 	mid := top - pl.laneH/2
 	if s.Unit != "" && pl.laneH > size*2.4 {
@@ -242,10 +253,16 @@ func (p pen) laneLabels(x0 vg.Length, pl lanePlan, y scaleY, s Series, top vg.Le
 		}
 		p.middle(x0, mid, label, size, false, pal.Ink, 0)
 	}
-	for _, v := range []float64{y.min, y.max} {
-		p.line(pl.plot.Min.X, y.at(v), pl.plot.Max.X, y.at(v), 0.4, pal.Line)
-		if y.y1-y.y0 > size*1.3 {
-			p.middle(pl.plot.Min.X-size*0.4, y.at(v), number(v), size*0.85, false, pal.Soft, 1)
+	for _, e := range []struct {
+		v    float64
+		word string
+	}{{y.min, s.LowWord}, {y.max, s.HighWord}} {
+		p.line(pl.plot.Min.X, y.at(e.v), pl.plot.Max.X, y.at(e.v), 0.4, pal.Line)
+		if y.y1-y.y0 > size {
+			if e.word == "" {
+				e.word = number(e.v)
+			}
+			p.middle(pl.plot.Min.X-size*0.4, y.at(e.v), e.word, size*0.85, false, pal.Soft, 1)
 		}
 	}
 }

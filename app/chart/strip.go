@@ -168,7 +168,7 @@ func (s Strip) Draw(c draw.Canvas, st Style) {
 		x := pl.x.at(v.At)
 		p.line(x, pl.plot.Min.Y, x, pl.plot.Min.Y-size*0.3, 1.2, pal.Ink)
 		if v.Unlike {
-			p.unlikeMark(x, pl.plot.Min.Y-size*0.15, pal.Ink)
+			p.unlikeMark(x, pl.plot.Min.Y, pal.Ink)
 		}
 	}
 	p.drawEvents(pl.events, pl.plot.Min.Y, pl.plot.Max.Y)

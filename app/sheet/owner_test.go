@@ -1,0 +1,334 @@
+package sheet
+
+import (
+	"bytes"
+	"errors"
+	"flag"
+	"fmt"
+	"os"
+	"os/exec"
+	"path/filepath"
+	"regexp"
+	"strings"
+	"testing"
+	"time"
+
+	"github.com/stretchr/testify/assert"
+	"github.com/stretchr/testify/require"
+
+	"cordwalk.example/cordwalk/exam"
+)
+
+var keep = flag.String("keep", "", "a folder to keep the papers of the tests in, to look at them")
+
+// id makes a fixed id for the tests.
+func id(n int) exam.ID { var x exam.ID; x[0], x[15] = 1, byte(n); x[14] = byte(n >> 8); return x }
+
+var zone = time.FixedZone("", 3600)
+
+func at(day int) time.Time {
+	return time.Date(2026, 3, 2, 10, 15, 0, 0, zone).AddDate(0, 0, day)
+}
+
+// motor makes a visit with the motor grades of the four limbs, -1 for not tested, and walking.
+func motor(n, day int, walk int8, limbs ...int8) exam.Visit {
+	v := exam.Visit{ID: id(100 + n), Patient: id(1), Examined: at(day), Zone: "Europe/Vienna", Examiner: "R. Okafor", Aid: "none", Surface: "grip", Session: "before"}
+	add := func(i exam.Item, s exam.Site, g int8) {
+		if g >= 0 {
+			v.Findings = append(v.Findings, exam.Finding{Item: i, Site: s, Result: exam.Graded(g)})
+		}
+	}
+	add(exam.Ambulation, exam.Midline, walk)
+	for i, s := range exam.Limbs() {
+		add(exam.VoluntaryMotor, s, limbs[i])
+	}
+	return v
+}
+
+func with(v exam.Visit, item exam.Item, site exam.Site, grade int8) exam.Visit {
+	v.Findings = append(v.Findings, exam.Finding{Item: item, Site: site, Result: exam.Graded(grade)})
+	return v
+}
+
+func practice() exam.Practice {
+	return exam.Practice{Name: "Riverbend Animal Rehabilitation", Zone: "Europe/Vienna", Language: "en", Paper: "A4", Demo: true,
+		Contact:    exam.Contact{Name: "Riverbend Animal Rehabilitation", Phone: "+43 1 555 0142", Email: "desk@riverbend.example", Address: "12 Mill Lane, 1090 Vienna"},
+		OutOfHours: exam.Contact{Name: "Night clinic at the Old Gate", Phone: "+43 1 555 0199"}}
+}
+
+func home() []exam.HomeExercise {
+	return []exam.HomeExercise{
+		{ID: id(501), Kind: "assisted-standing", Times: 3, DaysWeek: 7, Amount: "5 minutes", How: "Hold the hips up with a towel so that the paws stand flat.", StopFor: "the legs shake or your dog wants to lie down"},
+		{ID: id(502), Kind: "weight-shifting", Times: 2, Amount: "10 times each side", How: "Push gently at the hip and let go.", StopFor: "your dog cries or looks round"},
+		{ID: id(503), Kind: "leash-walk", Times: 1, DaysWeek: 5, Amount: "5 minutes on flat ground", How: "Walk slowly, on a short leash.", StopFor: "the toes drag"},
+	}
+}
+
+// patients are invented animals like those of the demo practice, one for each course.
+func patients() map[string]Input {
+	base := func(name string, s exam.Species, breed string) exam.Patient {
+		return exam.Patient{ID: id(1), Name: name, Species: s, Breed: breed, Sex: exam.Female, Neutered: true, Born: "2019-05", Demo: true,
+			Owner: exam.Contact{Name: "Mara Lindqvist", Phone: "+43 1 555 0107"}, Veterinarian: exam.Contact{Name: "Dr Anselm Brook, Brook Street Surgery", Phone: "+43 1 555 0123"}}
+	}
+	out := map[string]Input{}
+	put := func(key string, p exam.Patient, visits ...exam.Visit) {
+		out[key] = Input{Practice: practice(), Patient: p, Visits: visits, At: at(70).Add(3 * time.Hour)}
+	}
+
+	p := base("Bruno", exam.Dog, "Dachshund")
+	p.Problems = []exam.Problem{{ID: id(2), Diagnosis: "disc extrusion", Level: "T12-T13", Onset: "2026-02-11", Surgery: "2026-02-12"}}
+	p.Goals = []exam.Goal{{ID: id(3), Words: "Walks ten steps alone", Item: "ambulation", Target: 2, By: "2026-05-04"}, {ID: id(4), Words: "Stands for two minutes", Measure: "stand-time", Target: 120, Reached: "2026-04-13"}}
+	vs := []exam.Visit{motor(0, 0, 0, 4, 4, 0, 1), motor(1, 7, 0, 4, 4, 1, 1), motor(2, 14, 1, 4, 4, 1, 2), motor(3, 28, 1, 4, 4, 2, 2), motor(4, 42, 2, 4, 4, 2, 3), motor(5, 63, 2, 4, 4, 3, 3)}
+	vs[4] = with(with(vs[4], exam.VoluntaryUrination, exam.Midline, 1), exam.SpinalPain, exam.Thoracolumbar, 1)
+	vs[5] = with(with(vs[5], exam.VoluntaryUrination, exam.Midline, 2), exam.SpinalPain, exam.Thoracolumbar, 0)
+	vs[5].Home, vs[5].NextVisit = home(), "2026-05-11"
+	put("recovery", p, vs...)
+
+	p = base("Juniper", exam.Cat, "Domestic Shorthair")
+	vs = []exam.Visit{motor(0, 0, 2, 4, 4, 3, 3), motor(1, 14, 2, 4, 4, 3, 3)}
+	for i := range vs {
+		vs[i] = with(with(vs[i], exam.TailTone, exam.Midline, int8(i)), exam.FaecalContinence, exam.Midline, 1)
+	}
+	vs[1].Home, vs[1].NextVisit = home()[1:2], "2026-03-23"
+	put("tail-pull", p, vs...)
+
+	p = base("Odin", exam.Dog, "German Shepherd Dog")
+	vs = []exam.Visit{motor(0, 0, 2, 4, 4, 3, 3), motor(1, 28, 2, 4, 4, 3, 2), motor(2, 56, 1, 4, 4, 2, 2)}
+	vs[2].Surface, vs[2].Home = "slick", home()
+	put("going-down", p, vs...)
+
+	p = base("Pixel", exam.Dog, "Border Collie")
+	vs = []exam.Visit{motor(0, 0, 2, 1, 4, 4, 4), motor(1, 10, 2, -1, 4, 4, 4)}
+	vs[1].Home = home()[:1]
+	put("plexus", p, vs...)
+
+	p = base("Saffron", exam.Cat, "Siamese")
+	put("first-visit", p, with(motor(0, 0, 1, 4, 4, 2, 1), exam.VoluntaryUrination, exam.Midline, 0))
+
+	p = base("Bruno", exam.Dog, "Dachshund")
+	in := out["recovery"]
+	in.Visits = append(append([]exam.Visit(nil), in.Visits...), with(motor(6, 66, 0, 4, 4, 1, 1), exam.SpinalPain, exam.Thoracolumbar, 3))
+	in.Visits[6].Home = home()
+	in.Notices = []Notice{{Urgency: Now, Plain: "Bruno can no longer walk alone.", Words: "Ambulation fell from 2 to 0.", Since: at(66)}, {Urgency: Today, Plain: "There is strong pain in the back.", Since: at(66)}}
+	out["relapse"] = in
+
+	p = base("Wolfgang Amadeus Maximilian von Hohenbergen-Silberstein the Third", exam.Dog, "Petit Basset Griffon Vendéen × Nova Scotia Duck Tolling Retriever")
+	p.Veterinarian = exam.Contact{Name: "Dr Bartholomew Featherstonehaugh-Cholmondeley, Centre for Small Animal Neurology and Rehabilitation", Phone: "+43 (0)1 555 0123 ext. 4567"}
+	p.Goals = []exam.Goal{{Words: "Climbs the three steps at the front door without help and without falling over"}, {Words: "Stands"}, {Words: "Wags"}, {Words: "Swims"}, {Words: "Runs", By: "2026-09"}}
+	vs = []exam.Visit{motor(0, 0, 0, 3, 3, 0, 1), motor(1, 7, 1, 2, 4, 1, -1)}
+	for i, k := range []string{"assisted-standing", "weight-shifting", "leash-walk", "cycling", "massage", "cold-pack", "sit-to-stand", "ground-poles", "standing-on-foam", "toe-pinch-walk"} {
+		vs[1].Home = append(vs[1].Home, exam.HomeExercise{ID: id(510 + i), Kind: k, Times: 1 + i%4, Amount: "10 minutes", How: "Do this slowly and with care. Keep the back straight and the paws flat on the ground. Praise often and rest between rounds.", StopFor: "your dog cries, shakes, pants hard or wants to lie down"})
+	}
+	vs[1].NextVisit = "2026-03-16"
+	pr := practice()
+	pr.Name = "The Very Long Established Centre for Rehabilitation and Hydrotherapy of Small Animals at the Southern Riverbank"
+	pr.Contact.Address = "Building 14, Upper Courtyard, 1234 Old Riverbank Promenade and Gardens, 1090 Vienna, Austria"
+	out["long"] = Input{Practice: pr, Patient: p, Visits: vs, At: at(70), Notices: nil}
+	return out
+}
+
+// looks are the ways every patient's sheet is tried.
+func looks() map[string]Options {
+	return map[string]Options{
+		"a4": {Paper: "A4"}, "letter": {Paper: "Letter"}, "large": {Paper: "A4", Large: true}, "large-letter": {Paper: "Letter", Large: true},
+		"grey": {Paper: "A4", Grey: true}, "no-chart": {Paper: "Letter", NoChart: true},
+	}
+}
+
+// run calls a poppler tool on a PDF.
+func run(t testing.TB, pdf []byte, tool string, args ...string) string {
+	t.Helper()
+	path := filepath.Join(t.TempDir(), "paper.pdf")
+	require.NoError(t, os.WriteFile(path, pdf, 0o644))
+	for i, a := range args {
+		if a == "FILE" {
+			args[i] = path
+		}
+	}
+	out, err := exec.Command(tool, args...).CombinedOutput()
+	require.NoError(t, err, "%s (poppler-utils): %s", tool, out)
+	return string(out)
+}
+
+// textOf returns the text of a PDF with its white space evened out.
+func textOf(t testing.TB, pdf []byte) string {
+	return strings.Join(strings.Fields(run(t, pdf, "pdftotext", "-raw", "FILE", "-")), " ")
+}
+
+func keepPaper(t testing.TB, name string, pdf []byte) {
+	if *keep != "" {
+		require.NoError(t, os.MkdirAll(*keep, 0o755))
+		require.NoError(t, os.WriteFile(filepath.Join(*keep, name+".pdf"), pdf, 0o644))
+	}
+}
+
+// forbidden may never stand on an owner's sheet: a likely site, a share, a segment.
+var forbidden = regexp.MustCompile(`%|\b(likely|probab|segment|lesion|L[1-7]\b|S[1-3]\b|T1?[0-9]\b)`)
+
+func TestOwnerSheetOfEveryPatientInEveryLook(t *testing.T) {
+	for name, in := range patients() {
+		for look, opt := range looks() {
+			t.Run(name+"/"+look, func(t *testing.T) {
+				in := in
+				in.Options = opt
+				doc, err := Owner(in)
+				require.NoError(t, err)
+				keepPaper(t, name+"-"+look, doc.PDF)
+				info := run(t, doc.PDF, "pdfinfo", "FILE")
+				assert.Regexp(t, `Pages: +1\n`, info)
+				assert.Contains(t, info, "Title:")
+				if opt.Paper == "Letter" {
+					assert.Contains(t, info, "(letter)")
+				} else {
+					assert.Contains(t, info, "(A4)")
+				}
+				text := textOf(t, doc.PDF)
+				for _, want := range []string{"does not take the place of your veterinarian", "Give no medicine your veterinarian did not prescribe",
+					"human painkillers", in.Patient.Veterinarian.Phone, "+43 1 555 0199", "Call the vet at once if", "Demo", "Next visit"} {
+					assert.Contains(t, text, want)
+				}
+				for _, sign := range callSigns { // what keeps the animal safe is never cut
+					for _, w := range strings.Fields(sign) {
+						assert.Contains(t, text, w)
+					}
+				}
+				assert.NotRegexp(t, forbidden, text)
+				assert.Empty(t, doc.Warnings)
+				for _, line := range strings.Split(strings.TrimSpace(run(t, doc.PDF, "pdffonts", "FILE")), "\n")[2:] {
+					assert.Regexp(t, `Identity-H +yes (yes|no) +yes`, line)
+				}
+				assert.NotContains(t, run(t, doc.PDF, "pdfimages", "-list", "FILE"), "image ", "charts are drawn, not pictures")
+				again, err := Owner(in)
+				require.NoError(t, err)
+				assert.True(t, bytes.Equal(doc.PDF, again.PDF), "the same input gives the same bytes")
+				ease, ok := Reading("en", doc.Prose)
+				require.True(t, ok)
+				assert.GreaterOrEqual(t, ease.Score, 60.0, "reading ease; %d words, %d sentences, %d syllables", ease.Words, ease.Sentences, ease.Syllables)
+			})
+		}
+	}
+}
+
+// TestNothingLeavesThePage looks at the words' boxes: all lie inside the paper with a margin.
+func TestNothingLeavesThePage(t *testing.T) {
+	box := regexp.MustCompile(`<word xMin="([-0-9.]+)" yMin="([-0-9.]+)" xMax="([-0-9.]+)" yMax="([-0-9.]+)">`)
+	for name, in := range patients() {
+		for look, opt := range looks() {
+			in.Options = opt
+			doc, err := Owner(in)
+			require.NoError(t, err)
+			w, h := 595.28, 841.89
+			if opt.Paper == "Letter" {
+				w, h = 612, 792
+			}
+			found := box.FindAllStringSubmatch(run(t, doc.PDF, "pdftotext", "-bbox", "FILE", "-"), -1)
+			require.Greater(t, len(found), 80)
+			for _, m := range found {
+				var x0, y0, x1, y1 float64
+				fmt.Sscan(m[1], &x0)
+				fmt.Sscan(m[2], &y0)
+				fmt.Sscan(m[3], &x1)
+				fmt.Sscan(m[4], &y1)
+				if x0 < 20 || y0 < 10 || x1 > w-20 || y1 > h-10 {
+					t.Errorf("%s/%s: a word lies at %v of a page %v by %v", name, look, m[1:], w, h)
+				}
+			}
+		}
+	}
+}
+
+func TestWorseSaysTellYourVeterinarian(t *testing.T) {
+	in := patients()["going-down"]
+	doc, err := Owner(in)
+	require.NoError(t, err)
+	assert.Contains(t, textOf(t, doc.PDF), "weaker than on 30 March 2026: tell your veterinarian before more exercise")
+	assert.Contains(t, strings.Join(doc.Prose, "\n"), "right back leg: the same as on 30 March 2026.")
+}
+
+func TestUntestedIsSaidAndNeverSame(t *testing.T) {
+	doc, err := Owner(patients()["plexus"])
+	require.NoError(t, err)
+	all := strings.Join(doc.Prose, "\n")
+	assert.Contains(t, all, "Left front leg: not tested today.")
+	assert.Contains(t, all, "We did not test this today: left front leg.")
+}
+
+// TestUrgentComesFirst: open alerts stand first, and praise, goals, course and exercises give way.
+func TestUrgentComesFirst(t *testing.T) {
+	in := patients()["relapse"]
+	doc, err := Owner(in)
+	require.NoError(t, err)
+	text := textOf(t, doc.PDF)
+	assert.Contains(t, text, "Call your vet now")
+	assert.Contains(t, text, "Bruno can no longer walk alone.")
+	assert.Equal(t, 2, strings.Count(text, "No exercises until your veterinarian agrees."), "in the box and in place of the home plan")
+	assert.NotContains(t, text, "towel")
+	assert.NotContains(t, text, "keep up")
+	assert.NotContains(t, text, "Goals")
+	assert.Less(t, strings.Index(text, "Call your vet now"), strings.Index(text, "What we saw"))
+
+	in.Notices[0].Told, in.Notices[1].Told = "Dr Brook", "Dr Brook" // answered: the plan stands again
+	doc, err = Owner(in)
+	require.NoError(t, err)
+	assert.NotContains(t, textOf(t, doc.PDF), "No exercises until")
+}
+
+func TestNoSheet(t *testing.T) {
+	for _, tt := range []struct {
+		name string
+		do   func(*Input)
+		want error
+		says string
+	}{
+		{"no phone", func(in *Input) { in.Patient.Veterinarian.Phone = "ask" }, ErrNoPhone, "treating veterinarian of Bruno"},
+		{"discharged", func(in *Input) { in.Patient.Status = exam.Discharged }, ErrInactive, "discharged"},
+		{"died", func(in *Input) { in.Patient.Status = exam.Died }, ErrInactive, "died"},
+		{"no visit", func(in *Input) { in.Visits = nil }, ErrNoVisit, "no visit"},
+	} {
+		t.Run(tt.name, func(t *testing.T) {
+			in := patients()["recovery"]
+			tt.do(&in)
+			doc, err := Owner(in)
+			assert.True(t, errors.Is(err, tt.want), err)
+			assert.ErrorContains(t, err, tt.says)
+			assert.Nil(t, doc.PDF)
+		})
+	}
+}
+
+func TestSummaryOverrideAndPhrases(t *testing.T) {
+	in := patients()["recovery"]
+	in.Options.Summary = "Bruno had a good week and ate well."
+	doc, err := Owner(in)
+	require.NoError(t, err)
+	assert.Equal(t, "Bruno had a good week and ate well.", doc.Summary)
+	assert.Contains(t, textOf(t, doc.PDF), "Bruno had a good week")
+
+	in.Options.Summary = ""
+	in.Options.Phrases = map[string]string{phraseWalksAlone: "%s walks by now.", phraseBetter: "no places", textMedicine: "Give what you like."}
+	doc, err = Owner(in)
+	require.NoError(t, err)
+	text := textOf(t, doc.PDF)
+	assert.Contains(t, text, "Bruno walks by now.")
+	assert.Contains(t, text, "Better than on 13 April 2026: left back leg")
+	assert.Contains(t, text, "Give no medicine your veterinarian did not prescribe", "what keeps an animal safe cannot be reworded")
+	assert.Error(t, CheckPhrase(textMedicine, "x"))
+	assert.Error(t, CheckPhrase(phraseBetter, "no places"))
+	assert.NoError(t, CheckPhrase(phraseSame, "Nothing new since %s."))
+}
+
+// TestOtherScripts: Greek and Cyrillic are printed; what the typeface lacks is said.
+func TestOtherScripts(t *testing.T) {
+	in := patients()["recovery"]
+	in.Patient.Name = "Ξένια Łapka Ёжик"
+	doc, err := Owner(in)
+	require.NoError(t, err)
+	assert.Contains(t, textOf(t, doc.PDF), "Ξένια Łapka Ёжик")
+	assert.Empty(t, doc.Warnings)
+	in.Patient.Name = "ポチ 🐶"
+	doc, err = Owner(in)
+	require.NoError(t, err)
+	require.Len(t, doc.Warnings, 1)
+	assert.Contains(t, doc.Warnings[0], "ポ")
+	assert.Regexp(t, `^[a-z0-9._-]{1,80}$`, doc.Name)
+}

@@ -1,0 +1,147 @@
+package sheet
+
+import (
+	"fmt"
+	"slices"
+	"strings"
+
+	"cordwalk.example/cordwalk/assets/words"
+)
+
+// Phrases that a practice may put in its own words. The English text is the key; the
+// places for names and days must stay.
+const (
+	phraseWalksAlone = "Today %s walked ten steps or more alone."
+	phraseWalksHeld  = "Today %s took steps only when held up."
+	phraseNoSteps    = "Today %s could not take useful steps, even when held up."
+	phraseBetter     = "Better than on %[1]s: %[2]s."
+	phraseWeaker     = "Weaker than on %[1]s: %[2]s."
+	phraseSame       = "We saw no clear change since %s."
+	phraseFirst      = "This was the first visit. The next one will show what changes."
+	phraseMissed     = "We did not test this today: %s."
+	phraseUnlike     = "The test was not done in the same way as last time, so take the change with care."
+	phraseKeepOn     = "Please keep up the home plan."
+	phraseNoHome     = "There are no home exercises for now."
+)
+
+// Texts of the owner's sheet that stay as they are: headings, and what keeps an animal safe.
+const (
+	textTitle       = "How %s is doing"
+	textSeen        = "Seen on %s"
+	textSeenBy      = "Seen on %[1]s by %[2]s"
+	textShort       = "In short"
+	textChanges     = "What we saw"
+	textLegs        = "The legs, last time and now"
+	textCourse      = "The way so far"
+	textGoals       = "Goals"
+	textGoalBy      = "%[1]s, by %[2]s"
+	textGoalReached = "%s – reached"
+	textHome        = "Home plan"
+	textTick        = "Tick a box each time it is done."
+	textStop        = "Stop if: %s"
+	textTimes       = "%d times a day"
+	textOnce        = "once a day"
+	textDays        = "%d days a week"
+	textNextVisit   = "Next visit"
+	textNoNext      = "not set yet"
+	textCall        = "Call the vet at once if"
+	textPhoneVet    = "Your vet"
+	textPhoneNight  = "Nights and Sundays"
+	textMedicine    = "Give no medicine your veterinarian did not prescribe. Never give human painkillers."
+	textSupport     = "This sheet helps you at home. It does not take the place of your veterinarian."
+	textNowBox      = "Call your vet now"
+	textTodayBox    = "Call your vet today"
+	textUntilAgrees = "No exercises until your veterinarian agrees."
+	textTellLimb    = "weaker than on %s: tell your veterinarian before more exercise"
+	textTellOther   = "worse than on %s: tell your veterinarian before more exercise"
+	textBetterThan  = "better than on %s"
+	textSameAs      = "the same as on %s"
+	textNotTested   = "not tested today"
+	textFirstTest   = "tested for the first time"
+	textDemo        = "Demo – an invented animal"
+	textMore        = "and %d more"
+	textRest        = "Rest until %s."
+	textLegend      = "A full circle is a leg of full strength. A broken circle was not tested."
+
+	wordBetter   = "better"
+	wordSame     = "the same"
+	wordWeaker   = "weaker"
+	wordNoTest   = "not tested"
+	wordFirst    = "first test"
+	wordStrong   = "strong"
+	wordNoMove   = "no movement"
+	wordAlone    = "alone"
+	wordCannot   = "cannot"
+	wordSurgery  = "surgery"
+	wordOnset    = "first signs"
+	wordWalking  = "walking"
+	wordTail     = "tail"
+	wordBladder  = "passing urine"
+	wordBowel    = "holding stool"
+	wordPain     = "neck and back pain"
+	wordLeftFore = "left front leg"
+	wordRghtFore = "right front leg"
+	wordLeftHind = "left back leg"
+	wordRghtHind = "right back leg"
+)
+
+// callSigns are what an owner can see that must not wait, from the red flags of the
+// progression reference (section 3: sudden loss of walking, breathing, bladder, pain,
+// fits, dullness, cold limbs, wounds, choking, self-trauma). Twelve hours without urine is
+// common practice.
+var callSigns = []string{
+	"the legs get weaker, or your pet can no longer walk or stand",
+	"a leg or the tail no longer feels a touch it felt before",
+	"breathing is hard, fast or shallow, or the gums are blue or pale",
+	"no urine for 12 hours, or urine drips and the belly is tight",
+	"there is strong pain: crying out, shaking, a stiff neck or back",
+	"your pet has a fit, falls to one side, or is hard to wake",
+	"the back legs are cold and hurt",
+	"a wound opens, swells or leaks, or there is an open sore",
+	"your pet will not eat, feels hot, chokes or coughs",
+	"your pet bites or chews its own leg or tail",
+}
+
+// editable lists the phrases of the bank.
+var editable = []string{phraseWalksAlone, phraseWalksHeld, phraseNoSteps, phraseBetter, phraseWeaker, phraseSame,
+	phraseFirst, phraseMissed, phraseUnlike, phraseKeepOn, phraseNoHome}
+
+var fixedTexts = []string{textTitle, textSeen, textSeenBy, textShort, textChanges, textLegs, textCourse, textGoals, textGoalBy,
+	textGoalReached, textHome, textTick, textStop, textTimes, textOnce, textDays, textNextVisit, textNoNext, textCall,
+	textPhoneVet, textPhoneNight, textMedicine, textSupport, textNowBox, textTodayBox, textUntilAgrees, textTellLimb, textTellOther,
+	textBetterThan, textSameAs, textNotTested, textFirstTest, textDemo, textMore, textRest, textLegend,
+	wordBetter, wordSame, wordWeaker, wordNoTest, wordFirst, wordStrong, wordNoMove, wordAlone, wordCannot, wordSurgery, wordOnset,
+	wordWalking, wordTail, wordBladder, wordBowel, wordPain, wordLeftFore, wordRghtFore, wordLeftHind, wordRghtHind}
+
+// Phrases lists the texts that a practice may put in its own words, in English.
+func Phrases() []string { return slices.Clone(editable) }
+
+// Terms lists every text of the owner's sheet, in English, for the catalogue of texts.
+func Terms() []string {
+	return slices.Concat(editable, fixedTexts, callSigns)
+}
+
+// CheckPhrase returns an error if a practice's own wording cannot stand for the phrase:
+// the places for names, days and lists must be the same.
+func CheckPhrase(key, own string) error {
+	if !slices.Contains(editable, key) {
+		return fmt.Errorf("the text %q cannot be reworded; the phrases that can are listed by the phrase bank", key)
+	}
+	if verbs(own) != verbs(key) {
+		return fmt.Errorf("the wording %q does not keep the places of %q: use the same %%-marks in the same order", own, key)
+	}
+	return nil
+}
+
+// text writes a text of the tables above in the paper's language, or the practice's own
+// wording of it.
+func (in Input) text(key string, args ...any) string {
+	t := words.OfIn(in.lang(), key)
+	if own, ok := in.Options.Phrases[key]; ok && strings.TrimSpace(own) != "" && CheckPhrase(key, own) == nil {
+		t = own
+	}
+	if len(args) == 0 {
+		return t
+	}
+	return fmt.Sprintf(t, args...)
+}

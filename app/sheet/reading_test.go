@@ -1,0 +1,56 @@
+package sheet
+
+import (
+	"testing"
+
+	"github.com/stretchr/testify/assert"
+	"github.com/stretchr/testify/require"
+)
+
+// The sentences and scores are those that public descriptions of the Flesch measure print:
+// "the cat sat on the mat" 116, the sentence about a reading passage 69, the Australian
+// platypus 37.5 (13 words, 24 syllables).
+func TestFleschAgainstPrintedExamples(t *testing.T) {
+	for _, tt := range []struct {
+		text      string
+		words     int
+		syllables int
+		score     float64
+	}{
+		{"The cat sat on the mat.", 6, 6, 116.145},
+		{"This sentence, taken as a reading passage unto itself, is being used to prove a point.", 16, 23, 69},
+		{"The Australian platypus is seemingly a hybrid of a mammal and reptilian creature.", 13, 24, 37.5},
+	} {
+		e, ok := Reading("en", []string{tt.text})
+		require.True(t, ok)
+		assert.Equal(t, tt.words, e.Words, tt.text)
+		assert.Equal(t, tt.syllables, e.Syllables, tt.text)
+		assert.InDelta(t, tt.score, e.Score, 0.1, tt.text)
+	}
+}
+
+// Syllables as dictionaries hyphenate the words (common practice).
+func TestSyllables(t *testing.T) {
+	for word, want := range map[string]int{
+		"veterinarian": 6, "exercise": 3, "telephone": 3, "medicine": 3, "walk": 1, "better": 2, "weaker": 2,
+		"tested": 2, "leg": 1, "little": 2, "table": 2, "stiff": 1, "breathing": 2, "urine": 2, "hours": 1,
+		"bowel": 2, "paws": 1, "stairs": 1, "muscle": 2, "muscles": 2, "minutes": 2, "times": 1, "places": 2,
+		"before": 2, "something": 2, "painkillers": 3, "prescribed": 2, "area": 3, "trying": 2, "seizure": 2,
+		"front": 1, "agrees": 2, "police": 2, "progress": 2, "balance": 2, "moves": 1, "raised": 1, "slowly": 2,
+	} {
+		assert.Equal(t, want, syllablesEnglish(word), word)
+	}
+}
+
+func TestOtherLanguagesUseTheirOwnMeasure(t *testing.T) {
+	for lang, text := range map[string]string{
+		"de": "Der Hund geht heute besser. Rufen Sie an.", "fr": "Le chien marche mieux.", "es": "El perro anda mejor.", "nl": "De hond loopt beter.",
+	} {
+		e, ok := Reading(lang, []string{text})
+		require.True(t, ok, lang)
+		assert.Greater(t, e.Score, 60.0, lang)
+		assert.NotEqual(t, "Flesch", e.Measure)
+	}
+	_, ok := Reading("ja", []string{"歩く"})
+	assert.False(t, ok)
+}
