@@ -232,3 +232,46 @@ func Open(f Frame, keys Keys) (Batch, error) {
 	}
 	return b, nil
 }
+
+// Nonce returns the nonce of the frame's body.
+func (f Frame) Nonce() []byte {
+	return f.Raw[HeaderSize : HeaderSize+chacha20poly1305.NonceSizeX]
+}
+
+// Unseal opens a frame's body without decoding it, into the room of dst, which may be nil.
+// Errors are those of Open.
+func Unseal(dst []byte, f Frame, keys Keys) ([]byte, error) {
+	if f.Major > Major || f.Suite != SuiteXChaCha20Poly1305 {
+		return nil, ErrNewer
+	}
+	aead, ok := keys.Frames(f.Epoch)
+	if !ok {
+		return nil, ErrNoKey
+	}
+	body := f.Raw[HeaderSize:]
+	plain, err := aead.Open(dst[:0], body[:chacha20poly1305.NonceSizeX], body[chacha20poly1305.NonceSizeX:], f.Raw[:HeaderSize])
+	if err != nil {
+		return nil, ErrSealed
+	}
+	return plain, nil
+}
+
+// Reseal makes, behind dst, the very frame that was unsealed to plain: the same header fields,
+// nonce and key give the same bytes. h.Length is worked out. It returns the longer dst and
+// the frame, which shares its memory.
+func Reseal(dst []byte, h Header, nonce, plain []byte, keys Keys) ([]byte, Frame, error) {
+	aead, ok := keys.Frames(h.Epoch)
+	if !ok {
+		return dst, Frame{}, ErrNoKey
+	}
+	if len(nonce) != chacha20poly1305.NonceSizeX || len(plain)+Overhead > MaxBody {
+		return dst, Frame{}, fmt.Errorf("%w: a batch of %d bytes", ErrMalformed, len(plain))
+	}
+	h.Length = uint32(len(plain) + Overhead)
+	start := len(dst)
+	dst = h.append(dst)
+	dst = append(dst, nonce...)
+	dst = aead.Seal(dst, nonce, plain, dst[start:start+HeaderSize])
+	f, err := ParseFrame(dst[start:])
+	return dst, f, err
+}
