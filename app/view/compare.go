@@ -6,6 +6,7 @@ import (
 
 	"cordwalk.example/cordwalk/assets/words"
 	"cordwalk.example/cordwalk/exam"
+	"cordwalk.example/cordwalk/storage"
 )
 
 // Section of the comparison, in the order shown.
@@ -109,7 +110,7 @@ func NewCompare(p exam.Patient, before, after exam.Visit) *Compare {
 			c.Unlike = append(c.Unlike, c.unlikeWords(d))
 		}
 	}
-	c.Overall = MarkOf(Overall(before, after))
+	c.Overall = MarkOf(storage.Direction(before, after))
 	c.Words = c.sentence()
 	return c
 }
@@ -161,41 +162,6 @@ func weak(f exam.Finding) string {
 		return words.T("last grade was seen first")
 	}
 	return ""
-}
-
-// Overall compares two visits as a whole by the number of cells that went either way:
-// better or worse where one way has at least twice the cells of the other, different
-// where both went, same where nothing did (common practice; the serial model says more).
-func Overall(before, after exam.Visit) exam.Direction {
-	better, worse, compared, crossed := 0, 0, 0, 0
-	for _, f := range after.Findings {
-		b, ok := before.Find(f.Key())
-		if !ok {
-			continue
-		}
-		switch exam.Change(b, f) {
-		case exam.Better:
-			better++
-		case exam.Worse:
-			worse++
-		case exam.Different:
-			crossed++
-		case exam.NotComparable:
-			continue
-		}
-		compared++
-	}
-	switch {
-	case compared == 0:
-		return exam.NotComparable
-	case better == 0 && worse == 0 && crossed == 0:
-		return exam.Same
-	case better > 0 && better >= 2*worse && better >= crossed:
-		return exam.Better
-	case worse > 0 && worse >= 2*better && worse >= crossed:
-		return exam.Worse
-	}
-	return exam.Different
 }
 
 func (c *Compare) measures() {
