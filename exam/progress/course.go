@@ -1,0 +1,442 @@
+package progress
+
+import (
+	"cmp"
+	"fmt"
+	"math"
+	"slices"
+	"time"
+
+	"cordwalk.example/cordwalk/exam"
+)
+
+// A place is carried to the next visit while it holds at least leastMass of the belief; at
+// most mostPlaces are carried, the weightiest. What is dropped can come back as a new lesion.
+const (
+	leastMass  = 1e-9
+	mostPlaces = 96
+)
+
+// settled is how little a new visit may change what is known of an earlier one before the
+// pass over the past stops: total belief moved.
+const settled = 1e-7
+
+// Model is the model of a course for one species and animal: the places and the rates. It keeps
+// transition matrices; one Model may serve many courses, one at a time.
+type Model struct {
+	space  Space
+	rates  Rates
+	clock  *clock
+	reader *reader
+	first  []float64 // distribution over the states where a lesion is met first
+
+	minMass float64
+	most    int
+}
+
+// NewModel returns a model over the places of space.
+func NewModel(space Space, rates Rates) *Model {
+	return &Model{space: space, rates: rates, clock: newClock(rates), reader: newReader(space), first: rates.start(), minMass: leastMass, most: mostPlaces}
+}
+
+func (m *Model) after(hours int64) *transition { return m.clock.after(hours, m.rates.GrowPerYear) }
+
+// node is one visit with its messages. alpha and beta hold the states of the carried places.
+type node struct {
+	visit  exam.Visit
+	step   *transition // from the visit before; nil for the first and for no time between
+	sites  []int       // carried places, ascending
+	alpha  []float64   // P(place, state | exams so far), adding up to 1
+	like   []float64   // likelihood of this exam for each carried place and level, the best 1
+	beta   []float64   // later evidence for each place and state; Σ alpha·beta = 1
+	scale  float64     // what alpha was divided by
+	logP   float64     // ln P(this exam | earlier exams), up to the constant of LogLikelihoods
+	chains chains      // how readings lean, after this visit
+
+	filtered, smoothed *reading // what they say of the targets, once asked for
+}
+
+// at returns where the states of the i-th carried place begin.
+func at(i int) int { return i * states }
+
+// index returns the position of a place among the carried ones, or −1.
+func (n *node) index(site int) int {
+	if i, ok := slices.BinarySearch(n.sites, site); ok {
+		return i
+	}
+	return -1
+}
+
+// Course is the exams of one animal and what they say together. Add visits in order of time.
+// A Course is for one goroutine.
+type Course struct {
+	model *Model
+	nodes []*node
+	steps int64 // places × steps computed so far, for the figures
+}
+
+// NewCourse returns an empty course.
+func NewCourse(m *Model) *Course { return &Course{model: m} }
+
+// Len returns the number of visits.
+func (c *Course) Len() int { return len(c.nodes) }
+
+// Visit returns the i-th visit.
+func (c *Course) Visit(i int) exam.Visit { return c.nodes[i].visit }
+
+// Steps returns how many messages of a place have been passed so far, forward and backward.
+func (c *Course) Steps() int64 { return c.steps }
+
+// LogLikelihood returns the evidence of all exams, up to a constant that does not depend on the model's rates.
+func (c *Course) LogLikelihood() float64 {
+	sum := 0.0
+	for _, n := range c.nodes {
+		sum += n.logP
+	}
+	return sum
+}
+
+// Add takes in the next visit. Only what its exam changes is computed again. The error says
+// that it lies before the last one.
+func (c *Course) Add(v exam.Visit) error {
+	m := c.model
+	n := &node{visit: v}
+	var last *node
+	sites := m.space.Candidates(v)
+	if len(c.nodes) > 0 {
+		last = c.nodes[len(c.nodes)-1]
+		if v.Examined.Before(last.visit.Examined) {
+			return fmt.Errorf("the visit of %s lies before the last one of %s; add visits in order of time",
+				v.Examined.Format(time.RFC3339), last.visit.Examined.Format(time.RFC3339))
+		}
+		n.step = m.after(hoursOf(v.Examined.Sub(last.visit.Examined)))
+		n.chains = make(chains, len(last.chains))
+		for k, l := range last.chains {
+			n.chains[k] = l
+		}
+		sites = m.reach(last, n.step, sites)
+	} else {
+		n.chains = chains{}
+	}
+	log := make([]float64, len(sites)*Levels)
+	logLikelihoods(m.space, n.chains, v, sites, log)
+	best := math.Inf(-1)
+	for _, l := range log {
+		best = math.Max(best, l)
+	}
+	if math.IsInf(best, 0) || math.IsNaN(best) {
+		return fmt.Errorf("the exam of %s is impossible at every place: the model returned %v", v.Examined.Format(time.RFC3339), best)
+	}
+	for i := range log {
+		log[i] = exp(log[i] - best)
+	}
+	prior := c.predict(last, n.step, sites)
+	total := 0.0
+	for i := range sites {
+		p := prior[at(i):at(i+1)]
+		for k := range Levels {
+			l := log[i*Levels+k]
+			for q := range int(paceCount) {
+				p[k*int(paceCount)+q] *= l
+				total += p[k*int(paceCount)+q]
+			}
+		}
+	}
+	if !(total > 0) {
+		return fmt.Errorf("the exam of %s cannot be reached from the exams before it", v.Examined.Format(time.RFC3339))
+	}
+	n.logP = best + math.Log(total)
+	m.keep(n, sites, prior, log, total)
+	c.nodes = append(c.nodes, n)
+	return nil
+}
+
+// reach returns the places to weigh: the exam's own candidates, those carried so far, and
+// those that the carried ones may grow into.
+func (m *Model) reach(last *node, step *transition, sites []int) []int {
+	sites = append(slices.Clone(sites), last.sites...)
+	if step != nil && step.grow > 0 {
+		for _, s := range last.sites {
+			sites = append(sites, m.space.Neighbours(s)...)
+		}
+	}
+	slices.Sort(sites)
+	return slices.Compact(sites)
+}
+
+// predict returns the belief before an exam over the given places.
+func (c *Course) predict(last *node, step *transition, sites []int) []float64 {
+	m := c.model
+	out := make([]float64, len(sites)*states)
+	if last == nil {
+		for i, s := range sites {
+			w := m.space.Prior(s)
+			for j, f := range m.first {
+				out[at(i)+j] = float64(w * f)
+			}
+		}
+		return out
+	}
+	m.spread(last.sites, last.alpha, step, sites, out)
+	c.steps += int64(len(last.sites))
+	if step != nil {
+		for i, s := range sites {
+			w := m.space.Prior(s)
+			for j, f := range step.fresh {
+				out[at(i)+j] += float64(w * f)
+			}
+		}
+	}
+	return out
+}
+
+// spread moves belief over a stretch without new lesions, growth included.
+func (m *Model) spread(from []int, alpha []float64, step *transition, to []int, out []float64) {
+	moved := make([]float64, states)
+	for i, s := range from {
+		step.forward(moved, alpha[at(i):at(i+1)])
+		stay := 1.0
+		if step != nil && step.grow > 0 {
+			if next := m.space.Neighbours(s); len(next) > 0 {
+				stay = 1 - step.grow
+				share := step.grow / float64(len(next))
+				for _, r := range next {
+					if k, ok := slices.BinarySearch(to, r); ok {
+						for j, v := range moved {
+							out[at(k)+j] += float64(share * v)
+						}
+					}
+				}
+			}
+		}
+		if k, ok := slices.BinarySearch(to, s); ok {
+			for j, v := range moved {
+				out[at(k)+j] += float64(stay * v)
+			}
+		}
+	}
+}
+
+// keep stores the belief after an exam, without the places that hold next to nothing.
+func (m *Model) keep(n *node, sites []int, belief, like []float64, total float64) {
+	type held struct {
+		i    int
+		mass float64
+	}
+	all := make([]held, len(sites))
+	for i := range sites {
+		all[i].i = i
+		for _, v := range belief[at(i):at(i+1)] {
+			all[i].mass += v
+		}
+	}
+	slices.SortFunc(all, func(a, b held) int { return cmp.Or(cmp.Compare(b.mass, a.mass), a.i-b.i) })
+	cut := 0
+	for cut < len(all) && cut < m.most && (cut == 0 || all[cut].mass >= m.minMass*total) {
+		cut++
+	}
+	all = all[:cut]
+	slices.SortFunc(all, func(a, b held) int { return a.i - b.i })
+	sum := 0.0
+	for _, h := range all {
+		sum += h.mass
+	}
+	n.scale = sum
+	for _, h := range all {
+		n.sites = append(n.sites, sites[h.i])
+		for _, v := range belief[at(h.i):at(h.i+1)] {
+			v /= sum
+			if v < 1e-30 {
+				v = 0
+			}
+			n.alpha = append(n.alpha, v)
+		}
+		n.like = append(n.like, like[h.i*Levels:(h.i+1)*Levels]...)
+	}
+}
+
+// smooth brings the messages from later visits up to date. It goes back from the last visit and
+// stops where nothing changes any more.
+func (c *Course) smooth() {
+	last := len(c.nodes) - 1
+	if last < 0 || c.nodes[last].beta != nil {
+		return
+	}
+	n := c.nodes[last]
+	n.beta = make([]float64, len(n.alpha))
+	for i := range n.beta {
+		n.beta[i] = 1
+	}
+	n.smoothed = nil
+	for i := last - 1; i >= 0; i-- {
+		n := c.nodes[i]
+		beta := c.model.backward(n.sites, c.nodes[i+1], c.nodes[i+1].step)
+		c.steps += int64(len(c.nodes[i+1].sites))
+		total := 0.0
+		for j, a := range n.alpha {
+			total += float64(a * beta[j])
+		}
+		for j := range beta {
+			beta[j] /= total
+		}
+		if n.beta != nil {
+			moved := 0.0
+			for j, a := range n.alpha {
+				moved += float64(a * math.Abs(beta[j]-n.beta[j]))
+			}
+			if moved < settled {
+				return
+			}
+		}
+		n.beta, n.smoothed = beta, nil
+	}
+}
+
+// backward returns the later evidence for places at a time some stretch before the visit of next.
+func (m *Model) backward(sites []int, next *node, step *transition) []float64 {
+	// What each carried place of the next visit says: its exam and everything later.
+	z := make([]float64, len(next.sites)*states)
+	arise := 0.0
+	for i, s := range next.sites {
+		w := m.space.Prior(s)
+		fresh := 0.0
+		for k := range Levels {
+			l := next.like[i*Levels+k]
+			for q := range int(paceCount) {
+				j := k*int(paceCount) + q
+				v := float64(l * next.beta[at(i)+j])
+				z[at(i)+j] = v
+				if step != nil {
+					fresh += float64(step.fresh[j] * v)
+				}
+			}
+		}
+		arise += float64(w * fresh)
+	}
+	out := make([]float64, len(sites)*states)
+	mixed := make([]float64, states)
+	for i, s := range sites {
+		k := next.index(s)
+		clear(mixed)
+		stay := 1.0
+		some := false
+		if step != nil && step.grow > 0 {
+			if near := m.space.Neighbours(s); len(near) > 0 {
+				stay = 1 - step.grow
+				share := step.grow / float64(len(near))
+				for _, r := range near {
+					if q := next.index(r); q >= 0 {
+						some = true
+						for j := range mixed {
+							mixed[j] += float64(share * z[at(q)+j])
+						}
+					}
+				}
+			}
+		}
+		if k >= 0 {
+			some = true
+			for j := range mixed {
+				mixed[j] += float64(stay * z[at(k)+j])
+			}
+		}
+		if some {
+			step.backward(out[at(i):at(i+1)], mixed)
+		}
+		for j := range states {
+			out[at(i)+j] += arise
+		}
+	}
+	return out
+}
+
+// belief is a distribution over places and severities.
+type belief struct {
+	sites []int
+	level []float64 // Levels for each place
+	pace  [paceCount]float64
+	slow  float64 // probability that the severity changes by less than the plateau's rate
+}
+
+// collect sums the paces out of a distribution over states, which need not add up to 1.
+func (m *Model) collect(sites []int, p []float64) belief {
+	b := belief{sites: sites, level: make([]float64, len(sites)*Levels)}
+	total := 0.0
+	for i := range sites {
+		for k := range Levels {
+			for q := range paceCount {
+				v := p[at(i)+k*int(paceCount)+int(q)]
+				b.level[i*Levels+k] += v
+				b.pace[q] += v
+				if math.Abs(m.rates.speed(k, q))*100 < PlateauRate {
+					b.slow += v
+				}
+				total += v
+			}
+		}
+	}
+	if total > 0 {
+		for i := range b.level {
+			b.level[i] /= total
+		}
+		for i := range b.pace {
+			b.pace[i] /= total
+		}
+		b.slow /= total
+	}
+	return b
+}
+
+// PlateauRate is the rate of change, in points of function per week, below which a course
+// counts as a plateau: a tenth of a noticeable change each week.
+const PlateauRate = 1.0
+
+// filteredBelief is what was known with the i-th visit, smoothedBelief what is known of it now.
+func (c *Course) filteredBelief(i int) belief {
+	n := c.nodes[i]
+	return c.model.collect(n.sites, n.alpha)
+}
+
+func (c *Course) smoothedBelief(i int) belief {
+	c.smooth()
+	n := c.nodes[i]
+	p := make([]float64, len(n.alpha))
+	for j, a := range n.alpha {
+		p[j] = float64(a * n.beta[j])
+	}
+	return c.model.collect(n.sites, p)
+}
+
+// beliefAt is what is known now of any time: between visits, or after the last one (a forecast).
+// A time before the first visit gives the first visit.
+func (c *Course) beliefAt(t time.Time) belief {
+	i, exact := slices.BinarySearchFunc(c.nodes, t, func(n *node, t time.Time) int { return n.visit.Examined.Compare(t) })
+	if exact {
+		for i+1 < len(c.nodes) && c.nodes[i+1].visit.Examined.Equal(t) {
+			i++
+		}
+		return c.smoothedBelief(i)
+	}
+	if i == 0 {
+		return c.smoothedBelief(0)
+	}
+	m, before := c.model, c.nodes[i-1]
+	step := m.after(hoursOf(t.Sub(before.visit.Examined)))
+	if i == len(c.nodes) {
+		// New lesions may arise anywhere.
+		sites := make([]int, m.space.Sites())
+		for s := range sites {
+			sites[s] = s
+		}
+		return m.collect(sites, c.predict(before, step, sites))
+	}
+	c.smooth()
+	next := c.nodes[i]
+	sites := m.reach(before, step, next.sites)
+	alpha := c.predict(before, step, sites)
+	beta := m.backward(sites, next, m.after(hoursOf(next.visit.Examined.Sub(t))))
+	for j := range alpha {
+		alpha[j] *= beta[j]
+	}
+	return m.collect(sites, alpha)
+}
