@@ -82,7 +82,6 @@ type Compare struct {
 func NewCompare(p exam.Patient, before, after exam.Visit) *Compare {
 	c := &Compare{Patient: p, Before: before, After: after,
 		Days: after.Examined.Sub(before.Examined).Hours() / 24, BeforeCross: CrossOf(before), AfterCross: CrossOf(after)}
-	onset, known := onsetDays(p, after)
 	keys := map[exam.Key]bool{}
 	for _, f := range before.Findings {
 		keys[f.Key()] = true
@@ -96,7 +95,10 @@ func NewCompare(p exam.Patient, before, after exam.Visit) *Compare {
 		r.After, r.HasAfter = after.Find(k)
 		r.BeforeBead, r.AfterBead = BeadOf(r.Before), BeadOf(r.After)
 		r.BeforeWords, r.AfterWords = GradeWords(r.Before), GradeWords(r.After)
-		r.Mark = MarkBetween(r.Before, r.After, onset, known)
+		r.Mark = MarkBetween(r.Before, r.After)
+		if exam.Returned(exam.CellChange{Key: k, Before: r.Before, After: r.After, HadBefore: r.HadBefore, HasAfter: r.HasAfter}, p, after.Examined) {
+			r.Mark.Word = words.T("returned")
+		}
 		r.Section = sectionOf(r)
 		r.Weak = weak(r.After)
 		c.Rows = append(c.Rows, r)
@@ -113,16 +115,6 @@ func NewCompare(p exam.Patient, before, after exam.Visit) *Compare {
 	c.Overall = MarkOf(storage.Direction(before, after))
 	c.Words = c.sentence()
 	return c
-}
-
-func onsetDays(p exam.Patient, v exam.Visit) (float64, bool) {
-	best, known := 0.0, false
-	for _, pr := range p.Problems {
-		if d, ok := pr.Onset.DaysBefore(v.Examined); ok && pr.Resolved == "" && d >= 0 && (!known || d < best) {
-			best, known = d, true
-		}
-	}
-	return best, known
 }
 
 func sectionOf(r CompareRow) Section {

@@ -105,6 +105,7 @@ type Batch struct {
 	Before exam.Visit
 	After  exam.Visit
 	Reason string // of an amendment, after closing
+	Undo   bool   // takes an earlier action back
 }
 
 // Empty reports whether the action changed nothing.
@@ -130,6 +131,9 @@ type ExamInput struct {
 	Measures []exam.Measure
 	Extra    []exam.Key            // cells asked beside the protocol
 	Barred   func(exam.Key) string // the precaution that bars a cell, in words, or ""
+	// Agenda says what is asked once today's findings are known: a limb found without movement
+	// adds tests. May be nil.
+	Agenda   func(today exam.Visit) exam.Agenda
 	Posture  Posture
 	Resume   exam.Key               // the cell to start at; zero: after the last one entered
 	Segments func(exam.Item) string // the segments that an item tests, in short; may be nil
@@ -226,7 +230,7 @@ func (s *ExamSheet) layout() {
 			items = append(items, i)
 		}
 	}
-	sortByWalk(items)
+	slices.SortStableFunc(items, exam.CompareWalk)
 	s.cells, s.rows, s.index, s.mIdx = nil, nil, map[exam.Key]int{}, map[string]int{}
 	for _, m := range s.measureList() {
 		s.addMeasureRow(m)
@@ -361,67 +365,14 @@ func (s *ExamSheet) refresh() {
 		if c.IsMeasure() {
 			continue
 		}
-		c.NotAsked = s.notAsked(c.Key)
+		c.NotAsked = words.Of(exam.NotAsked(s.visit, c.Key))
 		if c.Key.Item == exam.DeepPain {
 			c.Why = ""
-			if c.NotAsked == "" && s.deepPainDue(c.Key.Site) {
+			if c.NotAsked == "" && exam.DeepPainDue(s.visit, c.Key.Site) {
 				c.Why = words.T("due: no movement, and the surface is not felt or not tested")
 			}
 		}
 	}
-}
-
-// notAsked returns why a cell is left out of the walk, "" where it is asked.
-func (s *ExamSheet) notAsked(k exam.Key) string {
-	v := &s.visit
-	switch k.Item {
-	case exam.DeepPain:
-		if k.Site.IsLimb() {
-			if g, ok := v.Grade(exam.VoluntaryMotor, k.Site); ok && g > 0 {
-				return words.T("the limb moves on purpose")
-			} else if !ok {
-				return words.T("grade the limb's movement first")
-			}
-		} else if !v.Plegic(exam.PelvicLeft) && !v.Plegic(exam.PelvicRight) {
-			return words.T("asked only where a pelvic limb has no movement")
-		}
-		if g, ok := v.Grade(exam.SuperficialPain, k.Site); ok && g > 0 {
-			return words.T("implied: the surface is felt")
-		}
-	case exam.ReflexWalking:
-		if a, ok := v.Grade(exam.DeepPain, exam.PelvicLeft); !ok || a > 0 {
-			return words.T("asked only while deep pain is absent")
-		}
-		if a, ok := v.Grade(exam.DeepPain, exam.PelvicRight); !ok || a > 0 {
-			return words.T("asked only while deep pain is absent")
-		}
-	case exam.NystagmusDirection, exam.NystagmusFastPhase:
-		if g, ok := v.Grade(exam.Nystagmus, exam.Midline); !ok || g == 0 {
-			return words.T("asked only where there is nystagmus")
-		}
-	case exam.GroundClearance:
-		if g, ok := v.Grade(exam.VoluntaryMotor, k.Site); !ok || g != 1 {
-			return words.T("asked only of a limb that swings and bears no weight")
-		}
-	case exam.AtaxiaProprioceptive, exam.AtaxiaVestibular, exam.AtaxiaCerebellar:
-		for _, l := range exam.Limbs() {
-			if g, ok := v.Grade(exam.Ataxia, l); ok && g > 0 {
-				return ""
-			}
-		}
-		return words.T("asked only where there is ataxia")
-	}
-	return ""
-}
-
-// deepPainDue reports whether deep pain must be tested at a site: no movement on purpose
-// there, and the surface not felt or not tested.
-func (s *ExamSheet) deepPainDue(site exam.Site) bool {
-	if site.IsLimb() && !s.visit.Plegic(site) {
-		return false
-	}
-	g, ok := s.visit.Grade(exam.SuperficialPain, site)
-	return !ok || g == 0
 }
 
 // active reports whether the walk stops at a step.
@@ -693,10 +644,50 @@ func (s *ExamSheet) do(b Batch, focusAfter int) {
 	s.redo = nil
 	s.apply(b)
 	s.focus = focusAfter
+	s.renew(b)
 	if s.in.Save != nil {
 		s.in.Save(b)
 	}
 	s.changed()
+}
+
+// renew asks for more where today's findings call for it. What was added stays.
+func (s *ExamSheet) renew(b Batch) {
+	if s.in.Agenda == nil {
+		return
+	}
+	matters := false
+	for _, c := range b.Cells {
+		switch c.Key.Item {
+		case exam.VoluntaryMotor, exam.SuperficialPain:
+			matters = true
+		}
+	}
+	if !matters {
+		return
+	}
+	a := s.in.Agenda(s.visit)
+	items, extra := slices.Clone(s.in.Items), slices.Clone(s.in.Extra)
+	for _, i := range a.Items {
+		if !slices.Contains(items, i) {
+			items = append(items, i)
+		}
+	}
+	for _, k := range a.Extra {
+		if !slices.Contains(extra, k) && s.index[k] == 0 && (len(s.cells) == 0 || s.cells[0].Key != k) {
+			extra = append(extra, k)
+		}
+	}
+	if len(items) == len(s.in.Items) && len(extra) == len(s.in.Extra) {
+		return
+	}
+	at := s.cells[s.steps[s.focus].Cell]
+	next := !s.open(s.focus)
+	s.in.Items, s.in.Extra = items, extra
+	s.relayout()
+	if next && at.Key.Item != exam.NoItem {
+		s.focus = s.after(s.focus, Batch{})
+	}
 }
 
 // apply makes the batch true in the visit and the cells.
@@ -789,6 +780,7 @@ func (s *ExamSheet) run(b Batch, focus int) {
 	s.apply(b)
 	s.mode, s.text = Grading, ""
 	s.focus = max(0, min(focus, len(s.steps)-1))
+	s.renew(b)
 	if s.in.Save != nil {
 		s.in.Save(b)
 	}
@@ -798,6 +790,7 @@ func (s *ExamSheet) run(b Batch, focus int) {
 // invert returns the batch that takes b back.
 func invert(b Batch) Batch {
 	out := b
+	out.Undo = true
 	out.Cells = make([]CellChange, len(b.Cells))
 	for i, c := range b.Cells {
 		out.Cells[i] = CellChange{Key: c.Key, Before: c.After, After: c.Before, Had: c.Has, Has: c.Had}

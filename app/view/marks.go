@@ -133,12 +133,11 @@ func MarkOf(d exam.Direction) ChangeMark {
 	return m
 }
 
-// MarkBetween returns the mark of a change between two findings of one cell, with the
-// days between them. A one-grade step is hollow: two readings of a stable animal differ
-// by it now and then (progression.md: two examiners disagree on about 4 % of reflexes and
-// on one gait score in eight). A reflex that is back after 0 within ten days says so,
-// since spinal shock ends then (screens.md).
-func MarkBetween(earlier, later exam.Finding, daysSinceOnset float64, onsetKnown bool) ChangeMark {
+// MarkBetween returns the mark of a change between two findings of one cell. A one-grade
+// step is hollow: two readings of a stable animal differ by it now and then
+// (progression.md: two examiners disagree on about 4 % of reflexes and on one gait score
+// in eight).
+func MarkBetween(earlier, later exam.Finding) ChangeMark {
 	m := MarkOf(exam.Change(earlier, later))
 	a, okA := earlier.Result.Grade()
 	b, okB := later.Result.Grade()
@@ -151,9 +150,6 @@ func MarkBetween(earlier, later exam.Finding, daysSinceOnset float64, onsetKnown
 	}
 	last := later.Item.Last() - later.Item.Info().First
 	m.Hollow = (m.Direction == exam.Better || m.Direction == exam.Worse) && step <= 1 && last > 1
-	if later.Item.Info().Group == exam.GroupReflex && a == 0 && b > 0 && earlier.Item.Info().Normal > 0 && onsetKnown && daysSinceOnset <= 10 {
-		m.Word = words.T("returned")
-	}
 	return m
 }
 

@@ -63,72 +63,32 @@ type Step struct {
 	Again    bool // a reflex that was absent uppermost, offered again undermost
 }
 
-// stage of an item: which position it is tested in.
+// stage of an item: which position it is tested in; what is done on each side is OnRight.
 func stage(i exam.Item) Position {
-	switch i {
-	case exam.Wound, exam.Skin, exam.Gums, exam.MuscleCondition, exam.TailMovement:
-		return Standing
-	case exam.PhantomScratching, exam.SelfTrauma, exam.Fatigue:
+	switch exam.StageOf(i) {
+	case exam.StageHandsOff:
 		return HandsOff
-	case exam.CutaneousTrunci, exam.CutaneousTrunciTwitch:
+	case exam.StageStanding:
+		return Standing
+	case exam.StageSides:
+		return OnRight
+	case exam.StageTrunk:
 		return Trunk
-	case exam.SpinalPain, exam.LumbosacralExtension, exam.TailLift:
+	case exam.StageSpine:
 		return Spine
-	case exam.JointSwelling, exam.StifleInstability, exam.FemoralPulse, exam.PawWarmth:
-		return OnRight
-	case exam.JointPain, exam.LimbPain:
-		return LastPain
-	case exam.TailTone, exam.AnalTone:
-		return OnRight
-	}
-	switch i.Info().Group {
-	case exam.GroupWhole, exam.GroupGait:
-		return HandsOff
-	case exam.GroupPostural, exam.GroupCranial, exam.GroupMass, exam.GroupBladder:
-		return Standing
-	case exam.GroupReflex:
-		return OnRight
 	}
 	return LastPain
 }
 
-// rank orders the items within a stage where the vocabulary's order is not the order of
-// work: tone before reflexes, withdrawal after them; deep pain after everything.
-func rank(i exam.Item) int {
-	switch i {
-	case exam.Tone:
-		return -20
-	case exam.Perineal:
-		return 300
-	case exam.TailTone, exam.AnalTone:
-		return 310
-	case exam.Withdrawal, exam.WithdrawalShoulder, exam.WithdrawalElbow, exam.WithdrawalCarpus,
-		exam.WithdrawalHip, exam.WithdrawalStifle, exam.WithdrawalHock, exam.WithdrawalDigits, exam.CrossedExtensor:
-		return 400 + int(i)
-	case exam.DeepPain:
-		return 900
+// PostureOf returns the posture of the usual position of a patient's exam.
+func PostureOf(p exam.Position) Posture {
+	switch p {
+	case exam.Sternal:
+		return Sternal
+	case exam.Held:
+		return Held
 	}
-	return int(i)
-}
-
-// tendon reports whether the item is a reflex that may be missing in the uppermost limb
-// and present in the undermost (anatomy.md F5, neuropetvet).
-func tendon(i exam.Item) bool {
-	switch i {
-	case exam.Biceps, exam.Triceps, exam.ExtensorCarpi, exam.Patellar, exam.CranialTibial, exam.Gastrocnemius:
-		return true
-	}
-	return false
-}
-
-// sortByWalk orders items as they are walked.
-func sortByWalk(items []exam.Item) {
-	slices.SortStableFunc(items, func(a, b exam.Item) int {
-		if sa, sb := stage(a), stage(b); sa != sb {
-			return int(sa) - int(sb)
-		}
-		return rank(a) - rank(b)
-	})
+	return Lying
 }
 
 // steps lays out the walk over rows of cells. Cells of the side stage are visited left
@@ -168,7 +128,7 @@ func steps(rows []Row, cells []Cell, posture Posture, painless func(a, b exam.Si
 	isLeft := func(c Cell) bool { return !isRight(c) }
 	again := func(at Position, right bool) {
 		for _, r := range rows {
-			if r.stage != OnRight || !tendon(r.Item) {
+			if r.stage != OnRight || !exam.TendonReflex(r.Item) {
 				continue
 			}
 			for _, c := range r.Cells {

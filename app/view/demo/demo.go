@@ -211,9 +211,9 @@ func (c course) run(n int, seed uint64, asOf time.Time, examiners []exam.Examine
 		v := exam.Visit{ID: newID(at, seed, uint64(n), 1000+uint64(k)), Patient: p.ID, Examined: at, Zone: "UTC", Examiner: who.Name,
 			State: exam.Closed, ClosedAt: at.Add(25 * time.Minute), Surface: "grip", Session: "before"}
 		full := k == 0 || k == len(c.every) || c.full > 0 && k%c.full == 0
-		v.Protocol = "weekly-recheck"
+		v.Protocol = exam.Weekly
 		if full {
-			v.Protocol = "full-spinal"
+			v.Protocol = exam.FullSpinal
 		}
 		if rng.IntN(9) == 0 {
 			v.Surface = "slick"
