@@ -1,0 +1,470 @@
+package localise
+
+import (
+	"fmt"
+	"sync"
+
+	"cordwalk.example/cordwalk/exam"
+	"cordwalk.example/cordwalk/exam/anatomy"
+)
+
+// Model holds the tables of one species. It is read only and shared by all engines.
+type Model struct {
+	species exam.Species
+	p       *Params
+	lay     *layout
+	sp      *space
+
+	hyps     int
+	prior    []int64  // stored log prior of each hypothesis
+	siteOf   []uint16 // index into sp.sites
+	damage   []uint16 // index into damages
+	acute    []bool   // lies in the first week
+	timed    []bool   // has a time at all
+	severity []uint8
+
+	damages []damage
+	classes []class
+	sets    []rowSet
+	setOf   []int // row set of each cell
+	groups  []group
+	// For serial.go.
+	once, slotOnce sync.Once
+	serial         []Site
+	serialOf       []int
+	slot           []int32
+
+	segmentName  []string
+	vertebraName []string
+}
+
+// damage is what a site at one severity does to segments, for the sums of the result.
+type damage struct {
+	site  uint16
+	parts []segmentDamage
+}
+
+// segmentDamage: cell is segment*2+side, units are 1/1024.
+type segmentDamage struct {
+	cell  uint16
+	units uint16
+}
+
+// class gathers sites for the list of sites and for what to test next: region × place × side.
+type class struct {
+	region Region
+	second Region // of a pair, else the same
+	kind   Kind
+	side   Side
+	place  string
+	words  string
+}
+
+// rowSet holds the distinct answers of an item: probabilities by row, category and point.
+type rowSet struct {
+	item   exam.Item
+	cats   int
+	p      []float64 // row*cats*points
+	margin []float64 // row*cats: summed over the points
+	find   map[rowKey]uint16
+}
+
+// group is a set of cells that share a deviation.
+type group struct {
+	cells []int      // indices into layout.cells
+	rows  [][]uint16 // for each of cells: row by signature
+	sigs  int
+	pairs []pair   // signature × class, those that occur
+	of    []uint16 // pair of each hypothesis
+}
+
+type pair struct {
+	sig   uint16
+	class uint16
+}
+
+var (
+	dogModel = sync.OnceValues(func() (*Model, error) { return newModel(exam.Dog, nil) })
+	catModel = sync.OnceValues(func() (*Model, error) { return newModel(exam.Cat, nil) })
+)
+
+// Unsupported is the error for a species that the engine has no anatomy for.
+type Unsupported struct{ Species exam.Species }
+
+func (e *Unsupported) Error() string {
+	return fmt.Sprintf("localisation covers dog and cat only: the nerves and reflex arcs of the %s are not on record in the detail it needs", e.Species)
+}
+
+// ModelOf returns the tables of a species, made at the first call and shared from then on.
+// The error is an *Unsupported for other species than dog and cat.
+func ModelOf(s exam.Species) (*Model, error) {
+	switch s {
+	case exam.Dog:
+		return dogModel()
+	case exam.Cat:
+		return catModel()
+	}
+	return nil, &Unsupported{s}
+}
+
+// newModel builds the tables from the parameters; nil means the species' own.
+func newModel(s exam.Species, p *Params) (*Model, error) {
+	if s != exam.Dog && s != exam.Cat {
+		return nil, &Unsupported{s}
+	}
+	if p == nil {
+		p = defaults(s)
+	}
+	m := &Model{species: s, p: p, lay: newLayout(), sp: newSpace(s, p)}
+	for _, seg := range anatomy.Segments(s) {
+		m.segmentName = append(m.segmentName, seg.String())
+	}
+	for _, v := range exam.Vertebrae(s) {
+		m.vertebraName = append(m.vertebraName, v.String())
+	}
+	m.classify()
+	m.tabulate()
+	return m, nil
+}
+
+// Hypotheses returns how many hypotheses the model holds.
+func (m *Model) Hypotheses() int { return m.hyps }
+
+// Bytes returns the size of the model's tables, without Go's own overhead.
+func (m *Model) Bytes() int {
+	n := m.hyps * (8 + 2 + 2 + 1 + 1 + 1)
+	for i := range m.sets {
+		n += 8 * (len(m.sets[i].p) + len(m.sets[i].margin))
+	}
+	for i := range m.groups {
+		g := &m.groups[i]
+		n += 2*len(g.of) + 4*len(g.pairs)
+		for _, r := range g.rows {
+			n += 2 * len(r)
+		}
+	}
+	for i := range m.damages {
+		n += 4 * len(m.damages[i].parts)
+	}
+	return n
+}
+
+// cordPlaces groups cord centres (in half segments) into the places that answers name.
+var cordPlaces = []struct {
+	to2  int // centre from+to up to here
+	name string
+}{{3, "C1-C2"}, {9, "C3-C5"}, {13, "C6-C7"}, {19, "C8-T2"}, {33, "T3-T9"}, {41, "T10-L1"}, {47, "L2-L3"},
+	{50, "L4-L5"}, {56, "L6-S1"}, {60, "S1-S3"}, {99, "Cd1-Cd5"}}
+
+// rootPlaces does the same for roots and sources of pain.
+var rootPlaces = []struct {
+	to   int
+	name string
+}{{1, "C1-C2"}, {4, "C3-C5"}, {6, "C6-C7"}, {9, "C8-T2"}, {16, "T3-T9"}, {21, "T10-L1"}, {23, "L2-L3"},
+	{25, "L4-L5"}, {28, "L6-S1"}, {30, "S2-S3"}, {99, "Cd1-Cd5"}}
+
+// classify puts every site into a class.
+func (m *Model) classify() {
+	index := map[class]uint16{}
+	for _, t := range m.sp.sites {
+		c := class{region: t.region, second: t.region, kind: t.kind, side: t.side.main()}
+		switch t.kind {
+		case Cord:
+			for _, p := range cordPlaces {
+				if t.from+t.to <= p.to2 {
+					c.place = p.name
+					break
+				}
+			}
+			// A long lesion counts to the region of its centre, its place must agree.
+		case PainOnly, Root:
+			for _, p := range rootPlaces {
+				if t.from <= p.to {
+					c.place = p.name
+					break
+				}
+			}
+			if t.kind == PainOnly && t.region <= C6T2 && t.from <= 9 {
+				c.side = Even
+			}
+		case Plexus:
+			c.place = map[[2]int]string{{5, 6}: "brachial plexus, cranial (C6-C7)", {7, 9}: "brachial plexus, caudal (C8-T2)", {5, 9}: "brachial plexus, complete (C6-T2)"}[[2]int{t.from, t.to}]
+		case CaudaEquina:
+			c.place = anatomy.At(m.species, t.from).String() + "-Cd5"
+		case Nerve:
+			c.place = t.nerve.name()
+			c.side = t.side
+		case NoLesion, Systemic:
+			c.place = t.kind.Words()
+		case Ischaemic:
+			c.place = "pelvic limbs"
+		case Two:
+			c.second = t.second.region
+			c.side = Even
+			c.place = t.region.String() + " and " + t.second.region.String()
+		default:
+			c.place = partWords[t.part]
+		}
+		c.words = classWords(&c)
+		i, ok := index[c]
+		if !ok {
+			i = uint16(len(m.classes))
+			index[c] = i
+			m.classes = append(m.classes, c)
+		}
+		t.class = i
+	}
+}
+
+// classWords puts a class into plain English.
+func classWords(c *class) string {
+	side := map[Side]string{LeftOnly: ", left", RightOnly: ", right"}[c.side]
+	if side == "" && c.kind != NoLesion && c.kind != Systemic && c.kind != Generalised && c.kind != Two && c.kind != PainOnly {
+		side = ", both sides"
+	}
+	switch c.kind {
+	case Cord, Root:
+		return dash(c.place) + side + ": " + c.kind.Words()
+	case PainOnly:
+		return "pain at " + dash(c.place) + side + ", no loss of function"
+	case CaudaEquina:
+		return dash(c.place) + side + ": roots of the cauda equina"
+	case Nerve:
+		return c.place + " nerve" + side
+	case Generalised:
+		return "generalised: " + c.place
+	case Ischaemic:
+		return "blood supply of the " + c.place + side
+	case Two:
+		return "two lesions: " + dash(c.place)
+	case NoLesion:
+		return "nothing found"
+	case Systemic:
+		return c.place
+	}
+	return dash(c.place) + side
+}
+
+// dash prints a range of segments with an en dash.
+func dash(s string) string {
+	out := []rune(s)
+	for i, r := range out {
+		if r == '-' && i > 0 && i+1 < len(out) && out[i-1] >= '0' && out[i-1] <= '9' && out[i+1] >= 'A' && out[i+1] <= 'Z' {
+			out[i] = '–'
+		}
+	}
+	return string(out)
+}
+
+// tabulate walks the space once and shares equal answers.
+func (m *Model) tabulate() {
+	cells := m.lay.cells
+	m.setOf = make([]int, len(cells))
+	setIndex := map[[2]int]int{}
+	for i := range cells {
+		c := &cells[i]
+		k := [2]int{int(c.item), c.girdle}
+		s, ok := setIndex[k]
+		if !ok {
+			s = len(m.sets)
+			setIndex[k] = s
+			m.sets = append(m.sets, rowSet{item: c.item, cats: c.cats, find: map[rowKey]uint16{}})
+		}
+		m.setOf[i] = s
+	}
+	m.groups = make([]group, len(m.lay.groups))
+	for i := range cells {
+		g := &m.groups[cells[i].group]
+		g.cells = append(g.cells, i)
+		g.rows = append(g.rows, nil)
+	}
+	finders := make([]*finder, len(m.sets))
+	for i := range finders {
+		finders[i] = newFinder()
+	}
+	sigs := make([]map[uint64][]uint16, len(m.groups))
+	pairs := make([]map[pair]uint16, len(m.groups))
+	for i := range sigs {
+		sigs[i], pairs[i] = map[uint64][]uint16{}, map[pair]uint16{}
+	}
+	damages := map[[3]int]uint16{}
+	var b, other body
+	var st state
+	var scratch [64]uint16
+	var out [32][points]float64
+	_, qw := m.p.quadrature()
+	m.sp.each(func(h *hypothesis) {
+		m.sp.build(h, &b, &other)
+		st.derive(&b, &m.sp.arcs[h.variant], m.p)
+		for gi := range m.groups {
+			g := &m.groups[gi]
+			hash := uint64(14695981039346656037)
+			for k, ci := range g.cells {
+				c := &cells[ci]
+				var key rowKey
+				c.row(m.sp, c, &st, &key)
+				set := &m.sets[m.setOf[ci]]
+				row, ok := finders[m.setOf[ci]].find(key)
+				if !ok {
+					row = uint16(len(set.margin) / set.cats)
+					finders[m.setOf[ci]].put(key, row)
+					m.p.rowOf(m.species, c, key, out[:set.cats])
+					for cat := range set.cats {
+						sum := 0.0
+						for q := range points {
+							set.p = append(set.p, out[cat][q])
+							sum += float64(qw[q] * out[cat][q])
+						}
+						set.margin = append(set.margin, sum)
+					}
+				}
+				scratch[k] = row
+				hash = (hash ^ uint64(row)) * 1099511628211
+				hash ^= hash >> 29
+			}
+			// The signature: the rows of all cells of the group.
+			sig, found := uint16(0), false
+			for _, s := range sigs[gi][hash] {
+				same := true
+				for k := range g.cells {
+					if g.rows[k][s] != scratch[k] {
+						same = false
+						break
+					}
+				}
+				if same {
+					sig, found = s, true
+					break
+				}
+			}
+			if !found {
+				sig = uint16(g.sigs)
+				g.sigs++
+				sigs[gi][hash] = append(sigs[gi][hash], sig)
+				for k := range g.cells {
+					g.rows[k] = append(g.rows[k], scratch[k])
+				}
+			}
+			pr := pair{sig, h.site.class}
+			pi, ok := pairs[gi][pr]
+			if !ok {
+				pi = uint16(len(g.pairs))
+				pairs[gi][pr] = pi
+				g.pairs = append(g.pairs, pr)
+			}
+			g.of = append(g.of, pi)
+		}
+		m.prior = append(m.prior, toLog(logOf(h.prior)))
+		m.siteOf = append(m.siteOf, uint16(h.index))
+		m.acute = append(m.acute, h.acute)
+		m.timed = append(m.timed, h.site.timed())
+		m.severity = append(m.severity, uint8(h.severity))
+		k := [3]int{h.index, h.severity, h.second}
+		d, ok := damages[k]
+		if !ok {
+			d = uint16(len(m.damages))
+			damages[k] = d
+			m.damages = append(m.damages, m.damageOf(h))
+		}
+		m.damage = append(m.damage, d)
+		m.hyps++
+	})
+	for i := range m.groups {
+		if len(m.groups[i].pairs) > 1<<16 || m.groups[i].sigs > 1<<16 {
+			panic("localise: too many distinct answers in group " + m.lay.groups[i])
+		}
+	}
+}
+
+// timed tells whether the first week and later are told apart for the site.
+func (t *site) timed() bool {
+	switch t.kind {
+	case NoLesion, PainOnly, Tendon, Systemic, Joint, Two:
+		return false
+	}
+	return true
+}
+
+// damageOf lists what a hypothesis does to the segments: cord damage, or the loss of their roots.
+func (m *Model) damageOf(h *hypothesis) damage {
+	var units [maxSegments][2]float64
+	put := func(t *site, sev float64) {
+		if t.from < 0 || t.kind == PainOnly || t.kind == Nerve {
+			return
+		}
+		share := t.side.shares()
+		for s := t.from; s <= t.to; s++ {
+			for side := range 2 {
+				units[s][side] = both(units[s][side], float64(sev*share[side]))
+			}
+		}
+	}
+	put(h.site, Severities[h.severity])
+	if h.site.second != nil {
+		put(h.site.second, Severities[h.second])
+	}
+	d := damage{site: uint16(h.index)}
+	for s := range m.sp.segments {
+		for side := range 2 {
+			if u := uint16(float64(units[s][side]*1024) + 0.5); u > 0 {
+				d.parts = append(d.parts, segmentDamage{uint16(s*2 + side), u})
+			}
+		}
+	}
+	return d
+}
+
+// finder is a small hash table from row keys to rows: the space asks for tens of millions of them.
+type finder struct {
+	keys []rowKey
+	rows []uint16
+	used []bool
+	n    int
+	last rowKey
+	row  uint16
+	warm bool
+}
+
+func newFinder() *finder {
+	return &finder{keys: make([]rowKey, 64), rows: make([]uint16, 64), used: make([]bool, 64)}
+}
+
+func (f *finder) slot(k rowKey) int {
+	h := uint64(uint32(k[0]))*0x9E3779B97F4A7C15 ^ uint64(uint32(k[1]))*0xC2B2AE3D27D4EB4F ^ uint64(uint32(k[2]))*0x165667B19E3779F9
+	h ^= h >> 32
+	mask := uint64(len(f.keys) - 1)
+	for i := h & mask; ; i = (i + 1) & mask {
+		if !f.used[i] || f.keys[i] == k {
+			return int(i)
+		}
+	}
+}
+
+func (f *finder) find(k rowKey) (uint16, bool) {
+	if f.warm && f.last == k {
+		return f.row, true
+	}
+	i := f.slot(k)
+	if !f.used[i] {
+		return 0, false
+	}
+	f.last, f.row, f.warm = k, f.rows[i], true
+	return f.rows[i], true
+}
+
+func (f *finder) put(k rowKey, row uint16) {
+	if 2*f.n >= len(f.keys) {
+		old := *f
+		f.keys, f.rows, f.used = make([]rowKey, 2*len(old.keys)), make([]uint16, 2*len(old.keys)), make([]bool, 2*len(old.keys))
+		for i, u := range old.used {
+			if u {
+				j := f.slot(old.keys[i])
+				f.keys[j], f.rows[j], f.used[j] = old.keys[i], old.rows[i], true
+			}
+		}
+	}
+	i := f.slot(k)
+	f.keys[i], f.rows[i], f.used[i] = k, row, true
+	f.n++
+	f.last, f.row, f.warm = k, row, true
+}

@@ -1,0 +1,202 @@
+package localise
+
+import "cordwalk.example/cordwalk/exam"
+
+// This file holds every parameter of the model. Beside each stands its source: a publication's
+// key, «from memory» (standard textbooks), «common practice», «judgement» (a choice of this
+// project), or «fitted» (set by the fitting program against the published frequencies; its
+// report is testdata/fit.txt). Damage, thresholds and gains are on one scale, 0 sound to 1 lost.
+
+// Severities is the grid of severities that every lesion is tried at. The five steps stand
+// for walking with mild signs, walking badly, moving but not walking, paralysed with deep
+// pain kept, and complete (judgement; they follow the gait grades of the Frankel scale).
+var Severities = [severities]float64{0.2, 0.4, 0.65, 0.85, 1}
+
+const severities = 5
+
+// response says how a latent value becomes a grade: the logit of being at least so far from
+// normal is slope × (value − threshold). down counts grades below the normal one, up above.
+type response struct {
+	slope float64
+	down  []float64
+	up    []float64
+	floor float64 // least probability of any grade; 0 means the general floor
+}
+
+// Params is one set of the model's parameters.
+type Params struct {
+	// Reading errors.
+	Floor3     float64 // least probability of a grade, items of up to three grades: JVIM-2024, agreement ≥ 92 %, e ≈ 0.04
+	Floor5     float64 // the same for items of four or five grades: as Floor3, shared by more grades
+	FloorFrail float64 // thoracic withdrawal, biceps, triceps, gastrocnemius: judgement on JVIM-2024 (they agreed less)
+	Careless   float64 // chance that a block filled by one key was not looked at: judgement
+	ArcSpread  float64 // spread of the deviation that tests of one arc share, in logits: judgement
+	ArcBlunder float64 // chance that a whole arc is read one way wrongly: judgement; «ten tests of one arc weigh little more than two»
+
+	// Cord.
+	FrontShare      float64 // share of white-matter loss that shows in the thoracic limbs, peripheral lesions: pelvic limbs worse (CSAIM-849); size judgement
+	CentralHind     float64 // share that shows in the pelvic limbs, central lesions (HNPE-2023: thoracic worse); size judgement
+	WhiteGrey       float64 // grey damage of a lesion mostly of white matter, as a share of its severity: judgement
+	GreyWhite       float64 // white damage of a lesion mostly of grey matter: judgement
+	ShockWithdrawal float64 // value that spinal shock adds to the pelvic withdrawal: fitted to Hodshon-2018 and Full-2016
+	ShockPatellar   float64 // the same for the patellar reflex: fitted to Hodshon-2018
+	FrontUMN        float64 // value that a loss of descending control adds to the thoracic withdrawal: fitted to Forterre-2008
+	Pseudo          float64 // how much lost sciatic antagonists raise the patellar reflex: seed table of likelihoods.md (0.3), judgement
+	ReflexUp        float64 // how much lost descending control raises a reflex: seed table (patellar exaggerated 0.3), judgement
+	Disuse          float64 // wasting by disuse at full loss of motion, after the first week: from memory
+	EarlyMass       float64 // share of neurogenic wasting that shows in the first week: vet-advisor-BPI, cynologist (5–10 days)
+	PainAcute       float64 // pain over an acute cord lesion: HNPE-2025 (85 % of disc extrusions), DPN-Br (74 %)
+	PainLater       float64 // pain over an older lesion: judgement between disc disease and degenerative myelopathy
+	TrunciWalk      float64 // chance of a cutaneous trunci cut-off while walking: seed table 0.5, judgement
+	TrunciLame      float64 // the same when not walking: GQ-2012 (80 % over all)
+	Posture         float64 // chance of Schiff–Sherrington posture, acute severe T3–L3: not found; judgement
+	ReflexSteps     float64 // chance of stepping by reflex, chronic complete T3–L3: judgement
+
+	// Share of the animals, by region and kind (likelihoods.md 9.3 flattened, for the animals of
+	// a rehabilitation practice come already diagnosed; pain only: Dachs-2024, BrCerv).
+	Mass [regionCount][kindCount]float64
+	Pair float64 // two lesions: judgement
+
+	Extent   [5]float64          // 1, 2, 3, 4 and longer: judgement
+	Sides    [sideCount]float64  // even, left, right, left-worse, right-worse: HNPE-2023, lateralised in about half
+	Severity [severities]float64 // judgement: referral series lean to the severe, rehabilitation to the mild
+	Balance  [3]float64          // grey and white alike, mostly white, mostly grey: judgement
+	Central  float64             // central cord among cervical lesions: HNPE-2023 and -2025, 16–35 %
+	Acute    float64             // within the first week, where the onset is not known: judgement
+
+	respond [exam.ItemCount]response
+}
+
+func (p *Params) clone() *Params { q := *p; return &q }
+
+// thoracicFrom is the first segment of T3–L3, shockTo the last: indices that hold for dog and cat.
+const (
+	segC6 = 5
+	segT3 = 10
+	segL4 = 24
+)
+
+// defaults returns the parameters of a species.
+func defaults(s exam.Species) *Params {
+	p := &Params{
+		Floor3: 0.03, Floor5: 0.02, FloorFrail: 0.05, Careless: 0.1, ArcSpread: 1.0, ArcBlunder: 0.02,
+		FrontShare: 0.8, CentralHind: 0.55, WhiteGrey: 0.3, GreyWhite: 0.3,
+		ShockWithdrawal: 0.2, ShockPatellar: 0.1, FrontUMN: 0.33, Pseudo: 0.5, ReflexUp: 0.5,
+		Disuse: 0.3, EarlyMass: 0.1, PainAcute: 0.55, PainLater: 0.42,
+		TrunciWalk: 0.5, TrunciLame: 0.9, Posture: 0.3, ReflexSteps: 0.3,
+		Pair:   0.03,
+		Extent: [5]float64{0.26, 0.3, 0.2, 0.12, 0.12}, Sides: [sideCount]float64{0.4, 0.1, 0.1, 0.2, 0.2},
+		Severity: [severities]float64{0.25, 0.25, 0.2, 0.18, 0.12}, Balance: [3]float64{0.4, 0.45, 0.15},
+		Central: 0.18, Acute: 0.4,
+		respond: responses(),
+	}
+	m := &p.Mass
+	m[C1C5][Cord], m[C1C5][PainOnly], m[C1C5][Root] = 0.085, 0.055, 0.01
+	m[C6T2][Cord], m[C6T2][PainOnly], m[C6T2][Root], m[C6T2][Plexus] = 0.055, 0.02, 0.015, 0.02
+	m[T3L3][Cord], m[T3L3][PainOnly], m[T3L3][Root] = 0.22, 0.035, 0.005
+	m[L4S3][Cord], m[L4S3][PainOnly], m[L4S3][Root], m[L4S3][CaudaEquina] = 0.07, 0.03, 0.025, 0.045
+	m[Peripheral][Nerve], m[Peripheral][Ischaemic] = 0.07, 0.01
+	m[GeneralisedRegion][Generalised] = 0.06
+	m[BrainRegion][Brain] = 0.085
+	m[NoRegion][Joint], m[NoRegion][Tendon], m[NoRegion][Systemic], m[NoRegion][NoLesion] = 0.03, 0.008, 0.012, 0.035
+	if s == exam.Cat {
+		// Mella-2020, MH-2010: the cervicothoracic enlargement and L4–S3 weigh more in cats
+		// than in dogs, and a clot in the aorta is a cat's disease (from memory).
+		m[C1C5][Cord], m[C1C5][PainOnly] = 0.075, 0.02
+		m[C6T2][Cord], m[T3L3][Cord], m[L4S3][Cord], m[L4S3][CaudaEquina] = 0.075, 0.18, 0.09, 0.065
+		m[Peripheral][Ischaemic] = 0.04
+	}
+	return p
+}
+
+// responses is the table of how each item answers. Thresholds are fitted where a published
+// frequency bears on them (fit.txt), else judgement: the value at which half of the animals
+// show that grade. Slopes are judgement: about ±0.15 of damage between one in five and four in five.
+func responses() (t [exam.ItemCount]response) {
+	set := func(r response, items ...exam.Item) {
+		for _, i := range items {
+			t[i] = r
+		}
+	}
+	one := func(slope float64, down ...float64) response { return response{slope: slope, down: down} }
+	up := func(slope float64, ups ...float64) response { return response{slope: slope, up: ups} }
+
+	// Gait and posture.
+	set(one(14, 0.16, 0.38, 0.55, 0.82), exam.VoluntaryMotor)
+	set(one(12, 0.5, 0.75), exam.Ambulation)
+	set(up(9, 0.25, 0.5, 0.8), exam.Ataxia)
+	set(up(8, 0.4), exam.AtaxiaProprioceptive, exam.AtaxiaVestibular, exam.AtaxiaCerebellar)
+	set(response{slope: 8, down: []float64{0.4}, up: []float64{0.55}}, exam.Stride)
+	set(up(8, 0.4), exam.Hypermetria)
+	set(one(9, 0.25, 0.5, 0.75), exam.Knuckling)
+	set(one(10, 0.5, 0.65, 0.85), exam.GroundClearance)
+	set(up(7, 0.35, 0.5, 0.68, 0.9), exam.Lameness)
+	set(up(8, 0.5), exam.RootSignature)
+	set(one(9, 0.4, 0.65), exam.Stance)
+	set(one(7, 0.45, 0.8), exam.NeckCarriage)
+	set(up(8, 0.4), exam.HeadTilt, exam.HeadTurn, exam.Circling)
+	set(up(8, 0.5), exam.SchiffSherrington, exam.ReflexWalking)
+
+	// Postural reactions.
+	set(one(10, 0.22, 0.6), exam.PawPlacement, exam.Hopping, exam.TactilePlacing, exam.ExtensorThrust, exam.Wheelbarrow)
+
+	// Whole animal.
+	set(one(8, 0.45, 0.75, 0.95), exam.Mentation)
+	set(one(8, 0.5), exam.Behaviour)
+	set(up(8, 0.6), exam.SeizureSinceLast)
+	set(one(8, 0.6, 0.9), exam.Breathing)
+	set(one(8, 0.6, 0.9), exam.Gums)
+	set(one(8, 0.45, 0.8), exam.Voice)
+	set(up(8, 0.6), exam.Regurgitation)
+	set(up(8, 0.4, 0.7), exam.Fatigue)
+	set(up(8, 0.3, 0.55, 0.8), exam.MuscleCondition)
+
+	// Head.
+	set(one(8, 0.3, 0.55), exam.Menace)
+	set(one(8, 0.35, 0.6), exam.PupillaryLight, exam.Palpebral, exam.FacialSensation, exam.Corneal, exam.Vision,
+		exam.EyeFollow, exam.Gag, exam.JawTone, exam.Tongue, exam.Swallowing)
+	set(response{slope: 8, down: []float64{0.45}, up: []float64{0.45}}, exam.PupilSize)
+	set(up(8, 0.35, 0.65), exam.FaceDroop)
+	set(up(8, 0.4, 0.7), exam.Strabismus, exam.Nystagmus)
+	set(up(8, 0.5), exam.NystagmusFastPhase)
+	set(up(8, 0.4, 0.65), exam.Horner)
+
+	// Reflexes and tone.
+	set(one(10, 0.32, 0.65), exam.Withdrawal, exam.WithdrawalShoulder, exam.WithdrawalElbow, exam.WithdrawalCarpus,
+		exam.WithdrawalHip, exam.WithdrawalStifle, exam.WithdrawalHock, exam.WithdrawalDigits)
+	set(response{slope: 9, down: []float64{0.33, 0.6}, up: []float64{0.55, 0.9}}, exam.Patellar)
+	set(response{slope: 5, down: []float64{0.3, 0.5}, up: []float64{0.7, 1.1}, floor: 0.05}, exam.Biceps, exam.Triceps, exam.Gastrocnemius)
+	set(response{slope: 6, down: []float64{0.35, 0.65}, up: []float64{0.65, 1.05}, floor: 0.03}, exam.ExtensorCarpi)
+	set(response{slope: 3, down: []float64{0.5, 0.9}, up: []float64{1, 1.5}, floor: 0.05}, exam.CranialTibial) // UFRPE-CT: persists under epidural block
+	set(up(8, 0.62), exam.CrossedExtensor)
+	set(one(10, 0.3, 0.62), exam.Perineal, exam.AnalTone)
+	set(one(8, 0.35, 0.7), exam.CutaneousTrunciTwitch)
+	set(response{slope: 9, down: []float64{0.33, 0.7}, up: []float64{0.4, 0.85}}, exam.Tone)
+	set(one(10, 0.28, 0.58), exam.TailTone)
+	set(one(9, 0.5), exam.TailMovement)
+	set(up(8, 0.6), exam.PhantomScratching)
+
+	// Muscle mass: falls steeply and late.
+	for i := exam.MassTemporalis; i <= exam.MassEpaxial; i++ {
+		set(one(9, 0.26, 0.5, 0.75), i)
+	}
+
+	// Sensation and pain.
+	set(response{slope: 10, down: []float64{0.6, 0.82}, up: []float64{0.5}}, exam.SuperficialPain)
+	set(one(22, 0.82, 0.92), exam.DeepPain)
+	for i := exam.SensationRadial; i <= exam.SensationPudendal; i++ {
+		set(response{slope: 9, down: []float64{0.4, 0.7}, up: []float64{0.5}}, i)
+	}
+	set(up(8, 0.32, 0.47, 0.72), exam.SpinalPain)
+	set(up(8, 0.32, 0.47, 0.72), exam.LumbosacralExtension, exam.TailLift)
+	set(up(7, 0.35, 0.55, 0.8), exam.JointPain, exam.JointSwelling, exam.LimbPain)
+	set(up(8, 0.5), exam.StifleInstability)
+	set(one(9, 0.4, 0.65), exam.FemoralPulse, exam.PawWarmth)
+
+	// Bladder and bowel.
+	set(one(8, 0.45, 0.75), exam.VoluntaryUrination)
+	set(up(7, 0.45, 0.8), exam.UrineLeak)
+	set(one(7, 0.5, 0.8), exam.FaecalContinence)
+	set(one(7, 0.5, 0.85), exam.Defaecation)
+	return t
+}
