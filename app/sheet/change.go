@@ -46,8 +46,8 @@ func (t topic) strength() bool {
 	return t.limb != exam.NoSite || t.word == wordWalking || t.word == wordTail
 }
 
-// change is what became of a topic since it was last tested.
-type change struct {
+// outcome is what became of a topic since it was last tested.
+type outcome struct {
 	topic  topic
 	tested bool           // today
 	known  bool           // at an earlier visit
@@ -62,11 +62,11 @@ type change struct {
 // tested it. A fall at any main cell makes the topic worse, whatever else rose: an owner's
 // sheet does not average a loss away. Supporting cells decide only where no main cell
 // moved, at least two agree and none disagrees.
-func changes(visits []exam.Visit) []change {
-	var out []change
+func changes(visits []exam.Visit) []outcome {
+	var out []outcome
 	last := visits[len(visits)-1]
 	for _, t := range topics() {
-		c := change{topic: t}
+		c := outcome{topic: t}
 		var today []exam.Finding
 		for _, k := range slices.Concat(t.main, t.support) {
 			for _, f := range last.Findings {

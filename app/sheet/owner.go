@@ -136,7 +136,7 @@ type exercise struct {
 type owner struct {
 	in       Input
 	day      string
-	changes  []change
+	changes  []outcome
 	urgent   []Notice
 	home     []exercise
 	summary  []string
