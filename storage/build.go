@@ -1,102 +1,41 @@
 package storage
 
 import (
+	"bytes"
 	"context"
+	"crypto/cipher"
+	"encoding/binary"
+	"errors"
+	"fmt"
+	"io/fs"
 	"path/filepath"
+	"runtime"
 	"slices"
+	"strings"
 
 	"go.etcd.io/bbolt"
 
 	"cordwalk.example/cordwalk/exam"
 	"cordwalk.example/cordwalk/storage/disk"
+	"cordwalk.example/cordwalk/sync/change"
 	"cordwalk.example/cordwalk/sync/key"
+	"cordwalk.example/cordwalk/sync/merge"
 )
 
-// build makes the index anew from the journals.
-func build(ctx context.Context, fsys disk.FS, dir string, bag key.Bag, s *seals, progress func(string, int64, int64)) (st indexState, problems []Problem, err error) {
-	st.Practice = bag.Practice
-	segs, err := listSegments(fsys, dir)
-	if err != nil {
-		return st, nil, err
-	}
-	var total, done int64
-	for _, seg := range segs {
-		total += seg.size
-	}
-	records := map[exam.ID]map[recordKey]*record{}
-	for _, seg := range segs {
-		rel := journalDir + "/" + filepath.Base(seg.name)
-		end := int64(0)
-		err := walkSegment(fsys, seg, 0, func(p piece) error {
-			if err := ctx.Err(); err != nil {
-				return err
-			}
-			b, news, problem := readPiece(p, st.stream(seg.stream), bag.Ring)
-			if problem != "" {
-				problems = append(problems, Problem{File: rel, Offset: p.Offset, Length: p.Length, What: problem})
-			}
-			end = p.end()
-			if !news {
-				return nil
-			}
-			for _, c := range b.Changes {
-				m := records[c.Patient]
-				if m == nil {
-					m = map[recordKey]*record{}
-					records[c.Patient] = m
-				}
-				r := m[keyOf(c)]
-				if r == nil {
-					r = newRecord(keyOf(c))
-				}
-				m[keyOf(c)] = r.with(c)
-				st.Clock = max(st.Clock, c.Time)
-			}
-			return nil
-		})
-		if err != nil {
-			return st, nil, err
-		}
-		ss := st.stream(seg.stream)
-		ss.Segment, ss.Offset = seg.number, end
-		done += seg.size
-		progress("building the index", done, total)
-	}
-	x, err := createIndex(fsys, filepath.Join(dir, indexFile), s)
-	if err != nil {
-		return st, nil, err
-	}
-	patients := make([]exam.ID, 0, len(records))
-	for p := range records {
-		patients = append(patients, p)
-	}
-	slices.SortFunc(patients, func(a, b exam.ID) int { return slices.Compare(s.patientKey(a), s.patientKey(b)) })
-	err = guard(func() error {
-		return x.db.Update(func(tx *bbolt.Tx) error {
-			for _, p := range patients {
-				var rs []*record
-				for _, r := range records[p] {
-					rs = append(rs, r)
-					if r.kind == KindEdge {
-						st.setEdges(r)
-					}
-				}
-				if err := x.store(tx, &st, p, rs); err != nil {
-					return err
-				}
-			}
-			return x.putState(tx, st)
-		})
-	})
-	if err != nil {
-		x.abandon()
-		return st, nil, err
-	}
-	return st, problems, x.finish(fsys, filepath.Join(dir, indexFile))
-}
+// The index is built in two passes. The first reads the journals in their order and deals the
+// changes out to 256 parts by their patient's key, in memory or, where they are many, in a
+// sealed file beside the index. The second takes part after part, which is the order of the
+// keys, works the records out and puts them into the new file in rising order.
+const (
+	parts       = 256
+	spillFile   = "index.spill"
+	spillAt     = 48 << 20 // bytes of changes kept in memory
+	commitAt    = 24 << 20 // bytes put in one transaction
+	fillPercent = 0.95     // the pages are filled in order; little is put between later
+)
 
-
-// Rebuild makes the index of a store anew from its journals. The old one is set aside.
+// Rebuild makes the index of a store anew from its journals and puts it in the place of the
+// old one. The store must not be open.
 func Rebuild(ctx context.Context, dir string, o Options) error {
 	o = o.withDefaults()
 	return explain("rebuilding the index in "+dir, rebuild(ctx, dir, o))
@@ -110,23 +49,417 @@ func rebuild(ctx context.Context, dir string, o Options) error {
 	if err != nil {
 		return err
 	}
+	left := lock.Left()
 	id, _, err := readIdentity(o.Files, dir)
+	var bag key.Bag
+	if err == nil {
+		bag, err = id.unlock(o.Files, o.Unlock)
+	}
+	if err == nil {
+		b := builder{ctx: ctx, fs: o.Files, dir: dir, bag: bag, seals: newSeals(bag.Ring), lives: id.lives(), o: o}
+		var problems []Problem
+		_, problems, err = b.build()
+		for _, p := range problems {
+			if !p.Minor {
+				o.Notice(p.String())
+			}
+		}
+	}
+	if err != nil && left { // the old index is still to be tried with care
+		return errors.Join(err, lock.Keep())
+	}
+	return errors.Join(err, lock.Unlock())
+}
+
+// builder makes an index anew.
+type builder struct {
+	ctx   context.Context
+	fs    disk.FS
+	dir   string
+	bag   key.Bag
+	seals *seals
+	lives []string
+	o     Options
+
+	st       indexState
+	problems []Problem
+	dealt    tables
+	heap     [parts][]byte
+	held     int
+	spill    disk.File
+	spillEnd int64
+	spilled  [parts][]stretch
+	aead     cipher.AEAD
+}
+
+// stretch is a sealed piece of one part in the spill file.
+type stretch struct{ at, n int64 }
+
+func (b *builder) build() (indexState, []Problem, error) {
+	b.st.Practice = b.bag.Practice
+	b.aead = b.bag.Ring.Index().Derive("spill").AEAD()
+	defer b.dropSpill()
+	if err := b.deal(); err != nil {
+		return b.st, nil, err
+	}
+	path := filepath.Join(b.dir, indexFile)
+	x, err := createIndex(b.fs, path, b.seals, b.lives)
 	if err != nil {
-		_ = lock.Keep()
+		return b.st, nil, err
+	}
+	if err := b.fill(x); err != nil {
+		x.abandon()
+		return b.st, nil, err
+	}
+	return b.st, b.problems, x.finish(b.fs, path)
+}
+
+// deal is the first pass.
+func (b *builder) deal() error {
+	segs, err := listSegments(b.fs, b.dir)
+	if err != nil && !errors.Is(err, fs.ErrNotExist) {
 		return err
 	}
-	bag, err := id.unlock(o.Files, o.Unlock)
-	if err != nil {
-		_ = lock.Keep()
+	var done, total int64
+	for _, s := range segs {
+		total += s.size
+	}
+	fl := follower{ctx: b.ctx, fs: b.fs, keys: b.bag.Ring, state: &b.st, each: b.dealBatch, parallel: true,
+		problem: func(p Problem) { b.problems = append(b.problems, p) },
+		read: func(n int64) {
+			before := done
+			if done += n; done>>20 != before>>20 {
+				b.o.Progress("reading the journal", min(done, total), total)
+			}
+		}}
+	if _, err = fl.all(b.dir); err != nil {
 		return err
 	}
-	_, problems, err := build(ctx, o.Files, dir, bag, newSeals(bag.Ring), o.Progress)
-	for _, p := range problems {
-		o.Notice(p.String())
+	b.o.Progress("reading the journal", total, total)
+	return nil
+}
+
+func (b *builder) dealBatch(batch change.Batch) error {
+	now := b.o.Now()
+	var patient exam.ID
+	part := -1
+	for i := range batch.Changes {
+		c := &batch.Changes[i]
+		if part < 0 || c.Patient != patient {
+			patient = c.Patient
+			part = int(b.seals.patientKey(patient)[0])
+		}
+		h := b.heap[part]
+		before := len(h)
+		h = binary.AppendUvarint(h, uint64(c.Kind))
+		h = append(h, c.Patient[:]...)
+		h = append(h, c.Record[:]...)
+		h = appendBytes(h, c.Field)
+		h = appendVersion(h, *c, 0, &b.dealt)
+		b.heap[part] = h
+		b.held += len(h) - before
+		b.st.adopt(c.Time, now)
 	}
-	if err != nil {
-		_ = lock.Keep()
+	if b.held >= spillAt {
+		return b.spillAll()
+	}
+	return nil
+}
+
+// spillAll moves what is in memory into the spill file.
+func (b *builder) spillAll() error {
+	if b.spill == nil {
+		name := filepath.Join(b.dir, spillFile)
+		if err := b.fs.Remove(name); err != nil && !errors.Is(err, fs.ErrNotExist) {
+			return err
+		}
+		var err error
+		if b.spill, err = b.fs.Create(name); err != nil {
+			return err
+		}
+	}
+	for i := range b.heap {
+		if len(b.heap[i]) == 0 {
+			continue
+		}
+		nonce := randomBytes(b.aead.NonceSize())
+		sealed := b.aead.Seal(nonce, nonce, b.heap[i], []byte{byte(i)})
+		if _, err := b.spill.WriteAt(sealed, b.spillEnd); err != nil {
+			return err
+		}
+		b.spilled[i] = append(b.spilled[i], stretch{b.spillEnd, int64(len(sealed))})
+		b.spillEnd += int64(len(sealed))
+		b.heap[i] = b.heap[i][:0]
+	}
+	b.held = 0
+	return nil
+}
+
+func (b *builder) dropSpill() {
+	if b.spill != nil {
+		_ = b.spill.Close()
+		_ = b.fs.Remove(filepath.Join(b.dir, spillFile)) // sealed, and removed at the next build if not now
+	}
+}
+
+// part returns the changes of a part, as they were dealt.
+func (b *builder) part(i int) ([]byte, error) {
+	var all []byte
+	for _, s := range b.spilled[i] {
+		sealed := make([]byte, s.n)
+		if _, err := b.spill.ReadAt(sealed, s.at); err != nil {
+			return nil, err
+		}
+		n := b.aead.NonceSize()
+		plain, err := b.aead.Open(nil, sealed[:n], sealed[n:], []byte{byte(i)})
+		if err != nil {
+			return nil, errors.New("the file of the index under way was changed while it was used")
+		}
+		all = append(all, plain...)
+	}
+	if all == nil {
+		return b.heap[i], nil
+	}
+	return append(all, b.heap[i]...), nil
+}
+
+// pair is one entry of a bucket.
+type pair struct{ key, value []byte }
+
+// filled is one part worked out.
+type filled struct {
+	records, patients, places []pair
+	rows                      []Summary
+	edges                     []*record
+	err                       error
+}
+
+// fill is the second pass.
+func (b *builder) fill(x *index) error {
+	results := make([]chan filled, parts)
+	slots := make(chan struct{}, runtime.GOMAXPROCS(0)+1)
+	stop := make(chan struct{})
+	defer close(stop)
+	for i := range results {
+		results[i] = make(chan filled, 1)
+	}
+	gaps := b.st.gaps(b.lives)
+	go func() {
+		for i := range results {
+			select {
+			case slots <- struct{}{}:
+			case <-stop:
+				return
+			}
+			go func() { results[i] <- b.workOut(i, gaps) }()
+		}
+	}()
+	l := loader{x: x}
+	defer l.rollback()
+	var places []pair
+	for i := range results {
+		var f filled
+		select {
+		case f = <-results[i]:
+			<-slots
+		case <-b.ctx.Done():
+			return b.ctx.Err()
+		}
+		if f.err != nil {
+			return f.err
+		}
+		for _, r := range f.edges {
+			b.st.setEdges(r)
+		}
+		places = append(places, f.places...)
+		if err := l.put(bucketRecords, f.records, &b.st.Records); err != nil {
+			return err
+		}
+		if err := l.put(bucketPatients, f.patients, &b.st.Patients); err != nil {
+			return err
+		}
+		if len(f.rows) > 0 {
+			k := []byte{byte(i)}
+			page := []pair{{k, x.seal(bucketPages, k, encodeRows(f.rows))}}
+			if err := l.put(bucketPages, page, &b.st.Pages); err != nil {
+				return err
+			}
+		}
+		b.o.Progress("building the index", int64(i+1), parts)
+	}
+	slices.SortFunc(places, func(a, b pair) int { return bytes.Compare(a.key, b.key) })
+	if err := l.put(bucketPlaces, places, &b.st.Places); err != nil {
 		return err
 	}
-	return lock.Unlock()
+	return l.finish(b.st)
+}
+
+// workOut turns the changes of a part into sorted entries.
+func (b *builder) workOut(i int, gaps []timedGap) (f filled) {
+	data, err := b.part(i)
+	if err != nil {
+		return filled{err: err}
+	}
+	patients, err := b.gather(data)
+	if err != nil {
+		return filled{err: err}
+	}
+	type one struct {
+		key []byte
+		id  exam.ID
+		rs  []*record
+	}
+	order := make([]one, 0, len(patients))
+	for id, rs := range patients {
+		order = append(order, one{b.seals.patientKey(id), id, rs})
+	}
+	slices.SortFunc(order, func(a, b one) int { return bytes.Compare(a.key, b.key) })
+	store := &Store{}
+	for _, o := range order {
+		m := manifest{Patient: o.id}
+		first := len(f.records)
+		for _, r := range o.rs {
+			k := b.seals.recordKey(r.key())
+			f.records = append(f.records, pair{k, b.seals.seal(bucketRecords, k, r.encode())})
+			if r.kind == KindVisit {
+				pk := k[nameSize:]
+				f.places = append(f.places, pair{pk, b.seals.seal(bucketPlaces, pk, o.id[:])})
+			}
+			if r.kind == KindEdge {
+				f.edges = append(f.edges, r)
+			}
+			for _, fd := range r.fields {
+				for _, c := range fd.versions {
+					m.note(c.Stream, c.Seq)
+				}
+			}
+		}
+		mine := f.records[first:]
+		slices.SortFunc(mine, func(a, b pair) int { return bytes.Compare(a.key, b.key) })
+		for _, p := range mine {
+			m.Records.add(b.seals.mark(bucketRecords, p.key, p.value))
+		}
+		plain, err := valueEnc.Marshal(m)
+		if err != nil {
+			return filled{err: err}
+		}
+		f.patients = append(f.patients, pair{o.key, b.seals.seal(bucketPatients, o.key, plain)})
+		if rec, ok := store.assemble(o.id, view{records: o.rs, gaps: gaps}); ok {
+			f.rows = append(f.rows, summarise(rec))
+		}
+	}
+	return f
+}
+
+// gather reads dealt changes and puts them together into records.
+func (b *builder) gather(data []byte) (map[exam.ID][]*record, error) {
+	out := map[exam.ID][]*record{}
+	byKey := map[recordKey]*record{}
+	h := head{tables: b.dealt}
+	names := map[string]string{} // one string for each field name
+	r := &reader{b: data}
+	var last *record
+	for len(r.b) > 0 && !r.bad {
+		var c change.Change
+		h.kind = Kind(r.uvarint())
+		h.patient, h.id = r.id(), r.id()
+		name := r.bytes()
+		r.version(&c, &h)
+		var ok bool
+		if c.Field, ok = names[string(name)]; !ok {
+			c.Field = string(name)
+			names[c.Field] = c.Field
+		}
+		k := keyOf(c)
+		rec := last
+		if rec == nil || rec.key() != k {
+			if rec = byKey[k]; rec == nil {
+				rec = newRecord(k)
+				byKey[k] = rec
+				out[c.Patient] = append(out[c.Patient], rec)
+			}
+		}
+		rec.fields = append(rec.fields, field{c.Field, []change.Change{c}})
+		last = rec
+	}
+	if r.bad {
+		return nil, fmt.Errorf("the index under way: %w", errRecord)
+	}
+	for _, rec := range byKey {
+		rec.settle()
+	}
+	return out, nil
+}
+
+// settle puts fields that were only collected into their form: sorted, each name once.
+func (r *record) settle() {
+	slices.SortStableFunc(r.fields, func(a, b field) int { return strings.Compare(a.name, b.name) })
+	n := 0
+	for i := range r.fields {
+		if n > 0 && r.fields[n-1].name == r.fields[i].name {
+			r.fields[n-1].versions = merge.Apply(r.fields[n-1].versions, r.fields[i].versions[0])
+			continue
+		}
+		r.fields[n] = r.fields[i]
+		n++
+	}
+	r.fields = r.fields[:n]
+}
+
+// loader puts sorted entries into a new index, in transactions of some size.
+type loader struct {
+	x    *index
+	tx   *bbolt.Tx
+	size int
+}
+
+func (l *loader) put(name []byte, ps []pair, t *tally) error {
+	return guard(func() error {
+		for _, p := range ps {
+			if l.tx == nil {
+				tx, err := l.x.db.Begin(true)
+				if err != nil {
+					return err
+				}
+				l.tx, l.size = tx, 0
+			}
+			b := l.tx.Bucket(name)
+			b.FillPercent = fillPercent
+			if err := b.Put(p.key, p.value); err != nil {
+				return err
+			}
+			t.add(l.x.mark(name, p.key, p.value))
+			if l.size += len(p.key) + len(p.value); l.size >= commitAt {
+				if err := l.commit(); err != nil {
+					return err
+				}
+			}
+		}
+		return nil
+	})
+}
+
+func (l *loader) commit() error {
+	tx := l.tx
+	l.tx = nil
+	if tx == nil {
+		return nil
+	}
+	return tx.Commit()
+}
+
+func (l *loader) rollback() {
+	if l.tx != nil {
+		_ = guard(l.tx.Rollback)
+		l.tx = nil
+	}
+}
+
+func (l *loader) finish(st indexState) error {
+	return guard(func() error {
+		if err := l.commit(); err != nil {
+			return err
+		}
+		return l.x.db.Update(func(tx *bbolt.Tx) error { return l.x.putState(tx, st) })
+	})
 }

@@ -10,6 +10,7 @@ import (
 	"go.etcd.io/bbolt"
 
 	"cordwalk.example/cordwalk/storage/disk"
+	"cordwalk.example/cordwalk/sync/change"
 )
 
 // Check reads everything in a store and reports what is wrong, by place. It changes nothing.
@@ -37,22 +38,11 @@ func check(ctx context.Context, dir string, o Options) ([]Problem, error) {
 	if err != nil {
 		return nil, err
 	}
-	segs, err := listSegments(o.Files, dir)
-	if err != nil {
-		return nil, err
-	}
 	var st indexState
-	for _, seg := range segs {
-		rel := journalDir + "/" + filepath.Base(seg.name)
-		err := walkSegment(o.Files, seg, 0, func(p piece) error {
-			if _, _, problem := readPiece(p, st.stream(seg.stream), bag.Ring); problem != "" {
-				ps = append(ps, Problem{File: rel, Offset: p.Offset, Length: p.Length, What: problem})
-			}
-			return ctx.Err()
-		})
-		if err != nil {
-			return nil, err
-		}
+	fl := follower{ctx: ctx, fs: o.Files, keys: bag.Ring, state: &st, each: func(change.Batch) error { return nil }, parallel: true,
+		problem: func(p Problem) { ps = append(ps, p) }}
+	if _, err := fl.all(dir); err != nil {
+		return nil, err
 	}
 	return append(ps, checkIndex(filepath.Join(dir, indexFile), newSeals(bag.Ring), st)...), nil
 }
@@ -70,7 +60,7 @@ func checkIndex(path string, s *seals, journal indexState) (ps []Problem) {
 		if err != nil {
 			return err
 		}
-		x := &index{db, path, s}
+		x := &index{db, path, nil, s}
 		defer x.abandon()
 		return db.View(func(tx *bbolt.Tx) error {
 			st, err := x.state(tx)
@@ -83,8 +73,7 @@ func checkIndex(path string, s *seals, journal indexState) (ps []Problem) {
 			}{{bucketRecords, st.Records}, {bucketPatients, st.Patients}, {bucketPlaces, st.Places}, {bucketPages, st.Pages}} {
 				var have tally
 				err := tx.Bucket(b.name).ForEach(func(k, v []byte) error {
-					have.Count++
-					have.Sum = have.Sum.Add(x.mark(b.name, k, v))
+					have.add(x.mark(b.name, k, v))
 					_, err := x.open(b.name, k, v)
 					return err
 				})

@@ -362,4 +362,3 @@ func (s *Store) patientOfVisit(visit exam.ID) (patient exam.ID, err error) {
 	}
 	return patient, nil
 }
-

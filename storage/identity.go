@@ -8,6 +8,7 @@ import (
 	"io/fs"
 	"os"
 	"path/filepath"
+	"slices"
 	"strings"
 	"time"
 
@@ -57,6 +58,9 @@ func (id identity) sum() (string, error) {
 func (id identity) stream() (change.Stream, error) {
 	return change.ParseStream(id.Incarnation + id.Site)
 }
+
+// lives returns this device's incarnations in their order.
+func (id identity) lives() []string { return append(slices.Clone(id.Earlier), id.Incarnation) }
 
 func parseIdentity(b []byte) (identity, error) {
 	var id identity

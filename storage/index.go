@@ -63,6 +63,10 @@ type tally struct {
 	Sum   merge.Sum `cbor:"2,keyasint"`
 }
 
+func (t *tally) add(mark [32]byte) { t.Count++; t.Sum = t.Sum.Add(mark) }
+
+func (t *tally) sub(mark [32]byte) { t.Count--; t.Sum = t.Sum.Sub(mark) }
+
 // indexState is the sealed value meta/state.
 type indexState struct {
 	Practice exam.ID       `cbor:"1,keyasint"`
@@ -73,16 +77,6 @@ type indexState struct {
 	Places   tally         `cbor:"6,keyasint"`
 	Pages    tally         `cbor:"7,keyasint"`
 	Clock    change.HLC    `cbor:"8,keyasint"` // the highest reading that this device gave or adopted
-}
-
-// streamState says what of a stream has been taken in.
-type streamState struct {
-	Stream  change.Stream `cbor:"1,keyasint"`
-	Spans   []merge.Span  `cbor:"2,keyasint"` // what is there
-	Head    uint64        `cbor:"3,keyasint"` // the highest number known to exist
-	Last    change.Hash   `cbor:"4,keyasint"` // chain hash of the last frame taken in
-	Segment uint32        `cbor:"5,keyasint"` // taken in up to here
-	Offset  int64         `cbor:"6,keyasint"`
 }
 
 // manifest is what the index knows of a patient as a whole.
@@ -181,23 +175,22 @@ func (s *seals) put(b *bbolt.Bucket, name, k, plain []byte, tallies ...*tally) e
 	if old := b.Get(k); old != nil {
 		m := s.mark(name, k, old)
 		for _, t := range tallies {
-			t.Count--
-			t.Sum = t.Sum.Sub(m)
+			t.sub(m)
 		}
 	}
 	sealed := s.seal(name, k, plain)
 	m := s.mark(name, k, sealed)
 	for _, t := range tallies {
-		t.Count++
-		t.Sum = t.Sum.Add(m)
+		t.add(m)
 	}
 	return b.Put(k, sealed)
 }
 
 // index is an open index.
 type index struct {
-	db   *bbolt.DB
-	path string
+	db    *bbolt.DB
+	path  string
+	lives []string // this device's incarnations
 	*seals
 }
 
@@ -218,7 +211,7 @@ func guard(f func() error) (err error) {
 
 // openIndex opens the index and checks that it is ours. The error is fs.ErrNotExist,
 // errForeignIndex or errIndex where it has to be built anew.
-func openIndex(path string, s *seals, practice exam.ID) (x *index, st indexState, err error) {
+func openIndex(path string, s *seals, lives []string, practice exam.ID) (x *index, st indexState, err error) {
 	if _, err := os.Stat(path); err != nil {
 		return nil, st, err
 	}
@@ -227,7 +220,7 @@ func openIndex(path string, s *seals, practice exam.ID) (x *index, st indexState
 		if err != nil {
 			return indexError(err)
 		}
-		x = &index{db, path, s}
+		x = &index{db, path, lives, s}
 		return db.View(func(tx *bbolt.Tx) error {
 			st, err = x.state(tx)
 			if err == nil && st.Practice != practice {
@@ -289,7 +282,7 @@ func (x *index) putState(tx *bbolt.Tx, st indexState) error {
 }
 
 // createIndex makes an empty index beside its place. finish gives it its name.
-func createIndex(fsys disk.FS, path string, s *seals) (*index, error) {
+func createIndex(fsys disk.FS, path string, s *seals, lives []string) (*index, error) {
 	tmp := disk.Temporary(path)
 	if err := fsys.Remove(tmp); err != nil && !errors.Is(err, fs.ErrNotExist) {
 		return nil, err
@@ -305,7 +298,7 @@ func createIndex(fsys disk.FS, path string, s *seals) (*index, error) {
 		if err != nil {
 			return err
 		}
-		x = &index{db, tmp, s}
+		x = &index{db, tmp, lives, s}
 		return db.Update(func(tx *bbolt.Tx) error {
 			for _, name := range [][]byte{bucketMeta, bucketRecords, bucketPatients, bucketPlaces, bucketPages} {
 				if _, err := tx.CreateBucket(name); err != nil {
@@ -423,8 +416,7 @@ func (x *index) records(tx *bbolt.Tx, patient exam.ID, f func(name, plain []byte
 		if err != nil {
 			return nil, err
 		}
-		have.Count++
-		have.Sum = have.Sum.Add(x.mark(bucketRecords, k, v))
+		have.add(x.mark(bucketRecords, k, v))
 		if err := f(k, plain); err != nil {
 			return nil, err
 		}

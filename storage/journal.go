@@ -203,7 +203,8 @@ func (w *writer) begin() error {
 // piece is what a walk through a segment meets.
 type piece struct {
 	change.Piece
-	seg segmentFile
+	seg    segmentFile
+	opened *opened // if it was opened ahead
 }
 
 // end returns the place behind the piece.
@@ -233,7 +234,7 @@ func walkSegment(fsys disk.FS, seg segmentFile, from int64, f func(piece) error)
 		}
 		if p.Blank {
 			if blank == nil {
-				blank = &piece{p, seg}
+				blank = &piece{Piece: p, seg: seg}
 			} else {
 				blank.Length += p.Length
 			}
@@ -245,7 +246,7 @@ func walkSegment(fsys disk.FS, seg segmentFile, from int64, f func(piece) error)
 			}
 			blank = nil
 		}
-		if err := f(piece{p, seg}); err != nil {
+		if err := f(piece{Piece: p, seg: seg}); err != nil {
 			return err
 		}
 	}

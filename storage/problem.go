@@ -25,6 +25,7 @@ type Problem struct {
 	Offset int64  // in bytes, -1 where the whole file is meant
 	Length int64  // in bytes, 0 where it is not known
 	What   string // what is wrong and what it means
+	Minor  bool   // left by a power cut or an error; nothing that was called saved is lost, nothing need be done
 }
 
 func (p Problem) String() string {

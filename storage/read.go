@@ -51,9 +51,8 @@ type Value struct {
 
 // view is one patient's records at one moment.
 type view struct {
-	records  []*record
-	manifest *manifest
-	state    indexState
+	records []*record
+	gaps    []timedGap // of all streams; hardly ever any
 }
 
 // patientView reads all records of one patient, index and overlay merged.
@@ -70,8 +69,7 @@ func (s *Store) patientView(id exam.ID) (v view, err error) {
 		for k, r := range s.overlay[id] {
 			over[k] = r
 		}
-		v = view{state: s.state}
-		v.state.Streams = slices.Clone(s.state.Streams)
+		v = view{gaps: s.state.gaps(s.id.lives())}
 		var tx *bbolt.Tx
 		err := guard(func() (err error) { tx, err = x.db.Begin(false); return err })
 		s.mu.RUnlock() // the snapshot is taken while nothing can move from overlay to index
@@ -80,7 +78,7 @@ func (s *Store) patientView(id exam.ID) (v view, err error) {
 		}
 		defer func() { _ = guard(tx.Rollback) }()
 		return guard(func() error {
-			v.manifest, err = x.records(tx, id, func(name, plain []byte) error {
+			_, err = x.records(tx, id, func(name, plain []byte) error {
 				r, err := decodeRecord(plain)
 				if err != nil {
 					return fmt.Errorf("%w: %w", errIndex, err)
@@ -200,7 +198,12 @@ func weights(vs []exam.Visit) []exam.WeightPoint {
 func (s *Store) assemble(id exam.ID, v view) (Record, bool) {
 	var out Record
 	found := false
-	a := assembler{store: s, patient: id, missing: s.gaps(id, v)}
+	a := assembler{store: s}
+	for _, g := range v.gaps {
+		if g.touches(v.records) {
+			a.gaps = append(a.gaps, g)
+		}
+	}
 	for _, r := range v.records {
 		switch r.kind {
 		case KindPatient:
@@ -211,35 +214,14 @@ func (s *Store) assemble(id exam.ID, v view) (Record, bool) {
 	}
 	sortVisits(out.Visits)
 	out.Patient.Weights = weights(out.Visits)
-	out.Conflicts, out.Missing, out.Unshown = a.conflicts, a.missing, a.unshown
+	for _, g := range a.gaps {
+		out.Missing = append(out.Missing, Gap{Device: s.deviceWord(g.Stream), First: g.First, Last: g.Last, Patient: id})
+	}
+	out.Conflicts, out.Unshown = a.conflicts, a.unshown
 	slices.SortFunc(out.Conflicts, func(x, y Conflict) int {
 		return cmp.Or(bytes.Compare(x.Record[:], y.Record[:]), strings.Compare(x.Field, y.Field))
 	})
 	return out, found
-}
-
-// gaps returns what is missing of the streams that may have touched the patient.
-func (s *Store) gaps(id exam.ID, v view) []Gap {
-	var out []Gap
-	for _, st := range v.state.Streams {
-		for _, g := range merge.Gaps(st.Stream, st.Spans, st.Head) {
-			var known []change.Change
-			for _, r := range v.records {
-				for _, f := range r.fields {
-					for _, c := range f.versions {
-						if c.Stream == st.Stream {
-							known = append(known, c)
-						}
-					}
-				}
-			}
-			slices.SortFunc(known, func(a, b change.Change) int { return cmp.Compare(a.Seq, b.Seq) })
-			if g.MayTouch(known) {
-				out = append(out, Gap{Device: s.deviceWord(st.Stream), First: g.First, Last: g.Last, Patient: id})
-			}
-		}
-	}
-	return out
 }
 
 // deviceWord names the device of a stream for people.
@@ -257,15 +239,22 @@ func (s *Store) Visit(id exam.ID) (exam.Visit, error) {
 	if err != nil {
 		return exam.Visit{}, err
 	}
-	r, err := s.baseRecord(recordKey{KindVisit, patient, id})
+	v, err := s.patientView(patient)
 	if err != nil {
 		return exam.Visit{}, explain("reading visit "+id.String(), err)
 	}
-	if len(r.fields) == 0 {
-		return exam.Visit{}, fmt.Errorf("visit %s: %w", id, ErrNotFound)
+	a := assembler{store: s}
+	for _, g := range v.gaps {
+		if g.touches(v.records) {
+			a.gaps = append(a.gaps, g)
+		}
 	}
-	a := assembler{store: s, patient: patient}
-	return a.visitOf(r), nil
+	for _, r := range v.records {
+		if r.kind == KindVisit && r.id == id {
+			return a.visitOf(r), nil
+		}
+	}
+	return exam.Visit{}, fmt.Errorf("visit %s: %w", id, ErrNotFound)
 }
 
 // Practice returns what holds for every patient of this store.
@@ -281,23 +270,55 @@ func (s *Store) Practice() (exam.Practice, error) {
 // assembler turns records into the structs of package exam and collects what does not fit in.
 type assembler struct {
 	store     *Store
-	patient   exam.ID
+	gaps      []timedGap // that may have touched the patient
 	conflicts []Conflict
-	missing   []Gap
 	unshown   []string
+}
+
+// openDuring returns the gaps that a visit was open during. What is lost there may have replaced
+// a finding or a measure of it.
+func (a *assembler) openDuring(r *record) []timedGap {
+	if len(a.gaps) == 0 || r.kind != KindVisit {
+		return nil
+	}
+	closed := endOfTime
+	for _, v := range r.versions(fieldClosed) {
+		if !v.Cleared() {
+			closed = min(closed, v.Time)
+		}
+	}
+	return slices.DeleteFunc(slices.Clone(a.gaps), func(g timedGap) bool { return closed < g.from })
+}
+
+// doubtful reports whether a value may have been replaced by one that is lost.
+func doubtful(name string, v change.Change, gaps []timedGap) bool {
+	if !strings.HasPrefix(name, fieldFinding) && !strings.HasPrefix(name, fieldMeasure) {
+		return false
+	}
+	for _, g := range gaps {
+		if v.Time <= g.to {
+			return true
+		}
+	}
+	return false
 }
 
 // each calls f with every field that has a value that counts, the newest where several do.
 func (a *assembler) each(r *record, f func(name string, v change.Change) error) {
 	closing := r.closing()
+	gaps := a.openDuring(r)
 	for _, fd := range r.fields {
 		c := closing
 		if fd.name == fieldClosed {
 			c = merge.Closing{}
 		}
 		st := merge.Evaluate(fd.versions, c)
-		if st.Conflict() || len(st.Late) > 0 {
-			a.conflict(r, fd.name, st)
+		doubt := len(gaps) > 0 && slices.ContainsFunc(st.Current, func(v change.Change) bool { return doubtful(fd.name, v, gaps) })
+		if st.Conflict() || len(st.Late) > 0 || doubt {
+			a.conflict(r, fd.name, st, gaps)
+		}
+		if doubt {
+			continue
 		}
 		for i := len(st.Current) - 1; i >= 0; i-- {
 			v := st.Current[i]
@@ -315,11 +336,11 @@ func (a *assembler) each(r *record, f func(name string, v change.Change) error) 
 	}
 }
 
-func (a *assembler) conflict(r *record, name string, st merge.Field) {
+func (a *assembler) conflict(r *record, name string, st merge.Field, gaps []timedGap) {
 	c := Conflict{Patient: r.patient, Record: r.id, Kind: r.kind, Field: name}
 	add := func(v change.Change, late bool) {
 		c.Values = append(c.Values, Value{ID: v.ID, Words: a.store.words(r.kind, name, v), Raw: v.Value, Examiner: v.Examiner,
-			Device: a.store.deviceWord(v.Stream), At: v.Time.Time(), Late: late})
+			Device: a.store.deviceWord(v.Stream), At: v.Time.Time(), Late: late, Doubtful: !late && doubtful(name, v, gaps)})
 	}
 	for _, v := range st.Current {
 		add(v, false)

@@ -257,7 +257,7 @@ func (s *Store) openIndex() error {
 		err = probe(path)
 	}
 	if err == nil {
-		s.idx, s.state, err = openIndex(path, s.seals, s.bag.Practice)
+		s.idx, s.state, err = openIndex(path, s.seals, s.id.lives(), s.bag.Practice)
 	}
 	switch {
 	case err == nil:
@@ -286,12 +286,13 @@ func (s *Store) rebuildIndex(ctx context.Context, aside bool) error {
 			return err
 		}
 	}
-	st, problems, err := build(ctx, s.fs, s.dir, s.bag, s.seals, s.o.Progress)
+	b := builder{ctx: ctx, fs: s.fs, dir: s.dir, bag: s.bag, seals: s.seals, lives: s.id.lives(), o: s.o}
+	st, problems, err := b.build()
 	if err != nil {
 		return err
 	}
 	s.problems = append(s.problems, problems...)
-	if s.idx, _, err = openIndex(path, s.seals, s.bag.Practice); err != nil {
+	if s.idx, _, err = openIndex(path, s.seals, s.id.lives(), s.bag.Practice); err != nil {
 		return err
 	}
 	s.state = st
@@ -299,186 +300,61 @@ func (s *Store) rebuildIndex(ctx context.Context, aside bool) error {
 }
 
 // catchUp takes in what the journals hold beyond the index, and finds the place where this
-// device goes on writing.
+// device goes on writing. The store is not shared yet.
 func (s *Store) catchUp() error {
-	segs, err := listSegments(s.fs, s.dir)
-	if err != nil {
-		return err
-	}
 	own, err := s.id.stream()
 	if err != nil {
 		return err
 	}
-	var last *segmentFile // of the own stream
-	end, tainted := int64(0), false
-	for i, seg := range segs {
-		st := s.state.stream(seg.stream)
-		mine := seg.stream == own
-		if mine {
-			last, end = &segs[i], 0
-		}
-		if seg.number < st.Segment {
-			continue
-		}
-		from := int64(0)
-		if seg.number == st.Segment {
-			from = st.Offset
-		}
-		if mine {
-			end = from
-		}
-		if from > seg.size {
-			s.problems = append(s.problems, Problem{File: s.rel(seg.name), Offset: seg.size, What: "the segment is shorter than it was; entries at its end are missing here"})
-			tainted = tainted || mine
-			continue
-		}
-		err := walkSegment(s.fs, seg, from, func(p piece) error {
-			problem := s.takeIn(p)
-			if problem != "" {
-				s.problems = append(s.problems, Problem{File: s.rel(seg.name), Offset: p.Offset, Length: p.Length, What: problem})
-				tainted = tainted || mine
-			}
-			if mine {
-				end = p.end()
-			}
-			return nil
-		})
-		if err != nil {
-			return err
-		}
-		// An earlier segment of the own stream that was left after an error may end in
-		// part of a frame, which the next segment repeats: only the last one counts.
-		if mine && i+1 < len(segs) && segs[i+1].stream == own {
-			tainted = false
-		}
-		st = s.state.stream(seg.stream)
-		st.Segment, st.Offset = seg.number, max(end, from)
+	known := len(s.problems)
+	fl := follower{ctx: context.Background(), fs: s.fs, keys: s.bag.Ring, state: &s.state, each: s.takeIn,
+		problem: func(p Problem) { s.problems = append(s.problems, p) }}
+	ends, err := fl.all(s.dir)
+	if err != nil {
+		return err
 	}
-	return s.takeUp(own, last, end, tainted)
-}
-
-// takeUp decides where this device goes on writing: behind the last frame, or, if an
-// unreadable tail was found or numbers were lost, in a new incarnation.
-func (s *Store) takeUp(own change.Stream, last *segmentFile, end int64, tainted bool) error {
-	st := s.state.stream(own)
-	if len(merge.Gaps(own, st.Spans, st.Head)) > 0 {
-		tainted = true
+	for _, p := range s.problems[known:] {
+		if !p.Minor {
+			s.o.Notice(p.String())
+		}
 	}
-	if last != nil && st.Segment > last.number {
-		tainted = true // the segment that the index had taken in is gone
-	}
-	if tainted || (last == nil && st.Head > 0) {
+	end := ends[own]
+	if end.tainted {
 		s.id.Earlier = append(s.id.Earlier, s.id.Incarnation)
 		s.id.Incarnation = change.NewIncarnation().String()
 		if err := writeIdentity(s.fs, s.dir, s.id); err != nil {
 			return err
 		}
-		s.o.Notice("a part of this device's journal cannot be read; it is kept as it is, and writing goes on in a new place")
-		own, _ = s.id.stream()
-		last, st = nil, s.state.stream(own)
+		if own, err = s.id.stream(); err != nil {
+			return err
+		}
+		end = streamEnd{}
+		clear(s.lastOwn)
+		s.idx.lives = s.id.lives()
 	}
+	st := s.state.stream(own)
 	s.out = writer{fs: s.fs, dir: s.dir, stream: own}
 	s.next, s.prev = st.Head+1, st.Last
 	s.clock = change.NewClock(s.o.Now, s.state.Clock)
-	if last == nil {
+	if end.seg == nil {
 		return nil
 	}
-	return s.out.resume(*last, end)
+	return s.out.resume(*end.seg, end.end)
 }
 
-func (s *Store) rel(name string) string {
-	if r, err := filepath.Rel(s.dir, name); err == nil {
-		return filepath.ToSlash(r)
-	}
-	return name
-}
-
-// stream returns the state of a stream, made if it is new.
-func (st *indexState) stream(x change.Stream) *streamState {
-	for i := range st.Streams {
-		if st.Streams[i].Stream == x {
-			return &st.Streams[i]
-		}
-	}
-	st.Streams = append(st.Streams, streamState{Stream: x})
-	return &st.Streams[len(st.Streams)-1]
-}
-
-// has reports whether all of first to last was taken in.
-func (st *streamState) has(first, last uint64) bool {
-	for _, sp := range st.Spans {
-		if sp.First <= first && last <= sp.Last {
-			return true
-		}
-	}
-	return false
-}
-
-// take notes a frame that was read.
-func (st *streamState) take(f change.Frame) {
-	st.Spans = merge.AddSpan(st.Spans, merge.Span{First: f.First, Last: f.Last})
-	if f.Last > st.Head {
-		st.Head, st.Last = f.Last, f.Hash()
-	}
-}
-
-// miss notes a frame that is there but cannot be read.
-func (st *streamState) miss(f change.Frame) {
-	if f.Last > st.Head {
-		st.Head, st.Last = f.Last, f.Hash()
-	}
-}
-
-// readPiece opens a piece of a segment. It returns the batch if it is news, and in words what is
-// wrong with the piece. st is brought up to date.
-func readPiece(p piece, st *streamState, keys change.Keys) (b change.Batch, news bool, problem string) {
-	switch {
-	case p.Blank:
-		return b, false, "there are only zeros where entries stood or a disk lost what it was told to keep"
-	case p.Damage != nil:
-		return b, false, "this is no readable entry: " + p.Damage.Error()
-	case p.Frame.Stream != p.seg.stream:
-		return b, false, "an entry of another stream stands here"
-	case st.has(p.Frame.First, p.Frame.Last):
-		return b, false, "" // written again after an error
-	}
-	b, err := change.Open(p.Frame, keys)
-	if err != nil {
-		st.miss(p.Frame)
-		return b, false, "an entry cannot be opened: " + err.Error()
-	}
-	if p.Frame.First == st.Head+1 && p.Frame.Prev != st.Last {
-		problem = "the entry does not follow the one before it: the journal was changed, or a part of it is from elsewhere"
-	}
-	st.take(p.Frame)
-	return b, true, problem
-}
-
-// takeIn merges a piece of a journal into the state that the index does not have yet. It is
-// used before the store is shared.
-func (s *Store) takeIn(p piece) (problem string) {
-	b, news, problem := readPiece(p, s.state.stream(p.seg.stream), s.bag.Ring)
-	if !news {
-		return problem
-	}
+// takeIn merges a batch from a journal into the state that the index does not have yet. The
+// store is not shared yet.
+func (s *Store) takeIn(b change.Batch) error {
 	for _, c := range b.Changes {
 		r, err := s.baseRecord(keyOf(c))
 		if err != nil {
-			return err.Error()
+			return err
 		}
 		s.install(r.with(c), c.Stream, c.Seq)
-		s.state.Clock = s.adopt(c.Time)
+		s.state.adopt(c.Time, s.o.Now())
 	}
 	s.behind += len(b.Changes)
-	return problem
-}
-
-// adopt returns the highest reading of the clock to go on from.
-func (s *Store) adopt(t change.HLC) change.HLC {
-	if t.Ahead(s.o.Now()) {
-		return s.state.Clock
-	}
-	return max(s.state.Clock, t)
+	return nil
 }
 
 // install puts a record into the overlay. mu must be held, or the store not shared yet.
@@ -639,8 +515,7 @@ func (s *Store) flush() error {
 	defer s.follow.Unlock()
 	s.mu.RLock()
 	x, behind := s.idx, s.behind
-	st := s.state
-	st.Streams = slices.Clone(s.state.Streams)
+	st := s.state.clone()
 	type dirty struct {
 		patient exam.ID
 		records []*record

@@ -150,9 +150,8 @@ func (x *index) storeRow(tx *bbolt.Tx, st *indexState, patient exam.ID) error {
 }
 
 func (x *index) row(tx *bbolt.Tx, st *indexState, patient exam.ID) (Summary, bool, error) {
-	v := view{state: *st}
-	var err error
-	v.manifest, err = x.records(tx, patient, func(_, plain []byte) error {
+	v := view{gaps: st.gaps(x.lives)}
+	_, err := x.records(tx, patient, func(_, plain []byte) error {
 		r, err := decodeRecord(plain)
 		if err != nil {
 			return fmt.Errorf("%w: %w", errIndex, err)

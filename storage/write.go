@@ -194,8 +194,8 @@ func (s *Store) commit(p *pendingFrame) error {
 		s.install(r, s.out.stream, p.frame.Last)
 	}
 	st := s.state.stream(s.out.stream)
-	st.take(p.frame)
-	st.Segment, st.Offset = segment, end
+	st.take(p.frame.Header, s.prev, p.clock, p.clock)
+	st.Segment, st.Start, st.Offset = segment, end-int64(len(p.frame.Raw)), end
 	s.state.Clock = max(s.state.Clock, p.clock)
 	s.behind += p.changes
 	s.poke(s.behind)

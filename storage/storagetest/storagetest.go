@@ -47,6 +47,8 @@ func Check(t testing.TB, dir string) {
 		t.Errorf("checking the practice: %v", err)
 	}
 	for _, p := range ps {
-		t.Errorf("checking the practice: %v", p)
+		if !p.Minor {
+			t.Errorf("checking the practice: %v", p)
+		}
 	}
 }
