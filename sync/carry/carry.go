@@ -1,0 +1,858 @@
+// Package carry exchanges journals through a folder: a stick, a network share, or a folder that
+// some other program keeps in step between computers.
+//
+// The folder is a mailbox, never the record. Each device puts what others lack into immutable
+// segments and says in one small signed head file what it holds and what it has put there. A
+// device that finds nothing new reads one head file per device, whatever the size of the
+// history. Nothing that lies in the folder is trusted: names mean nothing, contents are
+// checked; half-copied, renamed, doubled and foreign files are recognised and left alone. A folder
+// that was emptied is filled again.
+//
+// Each device writes only files of its own name, so that two devices can use a folder at once,
+// and programs that copy folders never meet two versions of one file.
+package carry
+
+import (
+	"context"
+	"errors"
+	"fmt"
+	"io"
+	"io/fs"
+	"path/filepath"
+	"slices"
+	"time"
+
+	"cordwalk.example/cordwalk/exam"
+	"cordwalk.example/cordwalk/storage/disk"
+	"cordwalk.example/cordwalk/sync/change"
+	"cordwalk.example/cordwalk/sync/key"
+	"cordwalk.example/cordwalk/sync/merge"
+	"cordwalk.example/cordwalk/sync/segment"
+)
+
+// Held says what a journal holds of a stream.
+type Held struct {
+	Stream change.Stream
+	Of     change.Stream // of the frames in it: another one only for the second branch of a fork
+	Spans  []merge.Span  // the numbers that are there, rising
+	Last   uint64        // the highest of them
+	Hash   change.Hash   // chain hash there
+	Own    bool          // this device writes it now
+}
+
+// Journal is what carrying needs of a store.
+type Journal interface {
+	// Streams returns what is held, in the order of streams.
+	Streams(ctx context.Context) ([]Held, error)
+	// Frames calls f for each frame held of the stream that ends at number from or later, in order.
+	Frames(ctx context.Context, s change.Stream, from uint64, f func(change.Frame) error) error
+	// Receive takes frames of another device in. They may be repeats, and need not follow what is
+	// held. They are safe, and seen by readers, when Commit has returned. Under as they are kept and
+	// shown: it differs from the frames' own stream for the second branch of a fork.
+	Receive(ctx context.Context, as change.Stream, b segment.Block) error
+	// Commit makes what was received of a stream durable, with the signed head that covers it.
+	Commit(ctx context.Context, as change.Stream, head segment.Signed) error
+	// At returns the chain hash at a number at which a frame of the stream ends; false if none does.
+	At(ctx context.Context, s change.Stream, last uint64) (change.Hash, bool, error)
+	// Signed returns the signed heads that came with a stream of another device, rising.
+	Signed(ctx context.Context, s change.Stream) ([]segment.Signed, error)
+	// Sums returns the hash of the merged state of each site.
+	Sums(ctx context.Context) ([]Sum, error)
+	// Renew gives this device a new incarnation: somebody wrote in its name.
+	Renew(ctx context.Context) error
+}
+
+// Members is the list of devices that belong to the practice.
+type Members interface {
+	// Signer returns the key with which a device incarnation signs; false for one that is not known.
+	Signer(change.Incarnation) (key.Verifier, bool)
+	// Statements returns all signed statements that the list is made of.
+	Statements() [][]byte
+	// Learn takes statements in, drops what it has or what is not valid, and reports whether
+	// anything is new.
+	Learn(statements [][]byte) (bool, error)
+}
+
+// Options of an exchange.
+type Options struct {
+	Bag         key.Bag
+	Incarnation func() change.Incarnation // the one that this device writes under now
+	Journal     Journal
+	Members     Members
+	Files       Attachments                          // may be nil
+	FS          disk.FS                              // nil: the real file system
+	Now         func() time.Time                     // nil: time.Now
+	Progress    func(what string, done, total int64) // may be nil
+	ReceiveOnly bool                                 // leave nothing in the folder
+}
+
+// Report tells what an exchange did and found.
+type Report struct {
+	Received int    // frames taken in
+	Sent     int    // frames put into the folder
+	Read     int    // files read, for the figures
+	Peers    []Peer // the other devices seen in the folder
+	Forks    []Fork
+	Waiting  []Waiting // what others say is here and is not, or not yet
+	Problems []string  // in words, with what to do
+	Blocked  error     // why nothing could be left in the folder; nil if all is there
+}
+
+// Peer is another device as its head in the folder shows it.
+type Peer struct {
+	Device   change.Incarnation
+	Verifier key.Verifier
+	Time     change.HLC
+	Ahead    bool // its clock runs more than a day ahead of ours
+	Lacks    uint64
+	Differs  bool // at equal streams and rules its merged state is another: an alarm
+}
+
+// Fork is a stream of which two devices hold different branches: a store was copied and both
+// copies were used.
+type Fork struct {
+	Stream change.Stream
+	At     uint64 // the first number that differs
+	Other  change.Stream
+}
+
+// Waiting is a segment that should be here.
+type Waiting struct {
+	Stream      change.Stream
+	First, Last uint64
+	Why         string
+}
+
+// Folder names inside the practice's folder.
+const (
+	headsDir   = "heads"
+	dataDir    = "data"
+	membersDir = "members"
+	filesDir   = "files"
+)
+
+// FolderName returns the name of a practice's folder inside an exchange folder.
+func FolderName(practice exam.ID) string { return "cordwalk-" + practice.String() }
+
+type exchange struct {
+	Options
+	dir    string // the practice's folder
+	report Report
+	refs   []located // every segment that a head names and whose file is there
+	mine   Head
+	had    bool     // mine was found
+	heads  []string // our own head files
+	// onto remembers which places are known to lie on which branch.
+	onto map[change.Stream]map[uint64]change.Hash
+}
+
+type located struct {
+	Ref
+	path string
+	own  bool
+}
+
+// Sync exchanges with a folder. What could be done is done even if something fails: the
+// report tells what, and Blocked why nothing could be left there. The error is that of reading the
+// folder or of this device's own journal.
+func Sync(ctx context.Context, folder string, o Options) (Report, error) {
+	if o.FS == nil {
+		o.FS = disk.OS()
+	}
+	if o.Now == nil {
+		o.Now = time.Now
+	}
+	if o.Progress == nil {
+		o.Progress = func(string, int64, int64) {}
+	}
+	if e, err := o.FS.Stat(folder); err != nil || !e.Dir {
+		if err == nil {
+			err = fmt.Errorf("it is a file: %w", fs.ErrInvalid)
+		}
+		return Report{}, fmt.Errorf("the exchange folder %s is not there (put the stick in, or connect the share): %w", folder, err)
+	}
+	x := &exchange{Options: o, dir: filepath.Join(folder, FolderName(o.Bag.Practice)), onto: map[change.Stream]map[uint64]change.Hash{}}
+	if err := x.members(); err != nil {
+		return x.report, err
+	}
+	peers, err := x.readHeads(ctx)
+	if err != nil {
+		return x.report, err
+	}
+	if err := x.locate(peers); err != nil {
+		return x.report, err
+	}
+	if err := x.take(ctx); err != nil {
+		return x.report, err
+	}
+	if err := x.takeFiles(ctx); err != nil {
+		return x.report, err
+	}
+	if err := x.leave(ctx); err != nil {
+		return x.report, err
+	}
+	return x.report, x.compare(ctx, peers)
+}
+
+type peerHead struct {
+	Head
+	verifier key.Verifier
+}
+
+func (x *exchange) problem(format string, args ...any) {
+	x.report.Problems = append(x.report.Problems, fmt.Sprintf(format, args...))
+}
+
+// list lists a folder; one that is not there is empty.
+func (x *exchange) list(name string) ([]disk.Entry, error) {
+	es, err := x.FS.List(filepath.Join(x.dir, name))
+	if errors.Is(err, fs.ErrNotExist) {
+		return nil, nil
+	}
+	return es, err
+}
+
+// members learns the statements of the folder and adds ours. Statements are few and small, and
+// named after their hash.
+func (x *exchange) members() error {
+	if x.Members == nil {
+		return errors.New("exchanging needs the practice's member list")
+	}
+	es, err := x.list(membersDir)
+	if err != nil {
+		return fmt.Errorf("reading the member list in %s: %w", x.dir, err)
+	}
+	have := map[string]bool{}
+	for _, s := range x.Members.Statements() {
+		have[statementFile(s)] = true
+	}
+	there := map[string]bool{}
+	var found [][]byte
+	for _, e := range es {
+		if e.Dir || e.Size > maxStatement || have[e.Name] {
+			there[e.Name] = true
+			continue
+		}
+		b, err := disk.ReadFile(x.FS, filepath.Join(x.dir, membersDir, e.Name), maxStatement)
+		x.report.Read++
+		if err != nil {
+			x.problem("the member list's entry %s cannot be read: %s", e.Name, err)
+			continue
+		}
+		if statementFile(b) == e.Name {
+			there[e.Name] = true
+		}
+		found = append(found, b)
+	}
+	if len(found) > 0 {
+		if _, err := x.Members.Learn(found); err != nil {
+			return fmt.Errorf("taking in the member list: %w", err)
+		}
+	}
+	if x.ReceiveOnly {
+		return nil
+	}
+	for _, s := range x.Members.Statements() {
+		if name := statementFile(s); !there[name] {
+			if err := x.put(membersDir, name, s); err != nil {
+				x.blocked(err)
+				return nil
+			}
+		}
+	}
+	return nil
+}
+
+// readHeads reads the newest head of each device.
+func (x *exchange) readHeads(ctx context.Context) (map[change.Incarnation]peerHead, error) {
+	es, err := x.list(headsDir)
+	if err != nil {
+		return nil, fmt.Errorf("reading the exchange folder %s: %w", x.dir, err)
+	}
+	// By name first. Files under other names (a copy made by some program) are looked at too:
+	// they may be all that is left.
+	named := map[change.Incarnation][]uint64{}
+	var odd []disk.Entry
+	for _, e := range es {
+		if d, n, ok := parseHeadFile(e.Name); ok && !e.Dir {
+			named[d] = append(named[d], n)
+		} else if !e.Dir && e.Size <= maxHead && e.Size > int64(len(headMagic)) && len(odd) < maxOdd && filepath.Ext(e.Name) != ".new" {
+			odd = append(odd, e)
+		}
+	}
+	out := map[change.Incarnation]peerHead{}
+	read := func(name string) error {
+		data, err := disk.ReadFile(x.FS, filepath.Join(x.dir, headsDir, name), maxHead)
+		x.report.Read++
+		if err != nil {
+			return err
+		}
+		h, v, err := ParseHead(data)
+		if err != nil {
+			return err
+		}
+		if h.Practice != x.Bag.Practice {
+			return errors.New("it belongs to another practice")
+		}
+		want, ok := x.Members.Signer(h.Device)
+		if !ok || want != v {
+			return fmt.Errorf("device %s: %w", h.Device, segment.ErrUnsigned)
+		}
+		if old, ok := out[h.Device]; !ok || old.Counter < h.Counter {
+			out[h.Device] = peerHead{h, v}
+		}
+		return nil
+	}
+	for d, counters := range named {
+		slices.Sort(counters)
+		var first error
+		for _, n := range slices.Backward(counters) {
+			name := headFile(d, n)
+			if d == x.Incarnation() {
+				x.heads = append(x.heads, name)
+			}
+			if _, ok := out[d]; ok {
+				continue
+			}
+			if err := read(name); err != nil && first == nil {
+				first = err
+			}
+		}
+		if _, ok := out[d]; !ok && first != nil {
+			x.problem("what device %s left here cannot be used: %s", d, first)
+		}
+	}
+	for _, e := range odd {
+		_ = read(e.Name) // a copy that is no good says nothing about the device
+	}
+	if h, ok := out[x.Incarnation()]; ok {
+		mine, err := x.isMine(ctx, h.Head)
+		if err != nil {
+			return nil, err
+		}
+		if mine {
+			x.mine, x.had = h.Head, true
+			delete(out, x.Incarnation())
+		}
+	}
+	return out, nil
+}
+
+// isMine reports whether a head in this device's name was left by this very store: what it says
+// of the streams that the device writes is part of what the store holds. If not, the store was copied or
+// put back to an earlier day, and the head is that of another device.
+func (x *exchange) isMine(ctx context.Context, head Head) (bool, error) {
+	held, err := x.held(ctx)
+	if err != nil {
+		return false, err
+	}
+	for _, r := range head.Streams {
+		if r.Device != head.Device {
+			continue
+		}
+		i := slices.IndexFunc(held, func(h Held) bool { return h.Stream == r.Stream() })
+		if i < 0 || held[i].Last < r.Last {
+			return false, nil
+		}
+		if held[i].Last == r.Last {
+			if held[i].Hash != r.Hash {
+				return false, nil
+			}
+			continue
+		}
+		hash, ok, err := x.Journal.At(ctx, r.Stream(), r.Last)
+		if err != nil {
+			return false, fmt.Errorf("%w: %w", errOwnSide, err)
+		}
+		if !ok || hash != r.Hash {
+			return false, nil
+		}
+	}
+	return true, nil
+}
+
+// maxOdd is how many files of strange names are looked at in one folder.
+const maxOdd = 64
+
+// locate finds the files of the segments that heads name. A segment whose file was renamed is
+// found by its trailing hash.
+func (x *exchange) locate(peers map[change.Incarnation]peerHead) error {
+	es, err := x.list(dataDir)
+	if err != nil {
+		return fmt.Errorf("reading the exchange folder %s: %w", x.dir, err)
+	}
+	sizes := map[string]int64{}
+	for _, e := range es {
+		if !e.Dir {
+			sizes[e.Name] = e.Size
+		}
+	}
+	var missing []located
+	add := func(r Ref, own bool) {
+		l := located{r, filepath.Join(x.dir, dataDir, r.File()), own}
+		if size, ok := sizes[r.File()]; ok && size == r.Size {
+			x.refs = append(x.refs, l)
+		} else {
+			missing = append(missing, l)
+		}
+	}
+	for _, r := range x.mine.Segments {
+		add(r, true)
+	}
+	named := map[string]bool{}
+	for _, p := range peers {
+		for _, r := range p.Segments {
+			add(r, false)
+		}
+	}
+	for _, r := range append(slices.Clone(x.refs), missing...) {
+		named[r.File()] = true
+	}
+	if len(missing) > 0 {
+		byTail := map[[32]byte]string{}
+		odd := 0
+		for name, size := range sizes {
+			if named[name] && sizes[name] == size && x.whole(name, size) || size < segment.HeaderSize || size > segment.MaxSize {
+				continue
+			}
+			if odd++; odd > maxOdd {
+				break
+			}
+			if tail, err := x.tail(name, size); err == nil {
+				byTail[tail] = name
+			}
+		}
+		for _, m := range missing {
+			if name, ok := byTail[m.Name]; ok && sizes[name] == m.Size {
+				m.path = filepath.Join(x.dir, dataDir, name)
+				x.refs = append(x.refs, m)
+			} else {
+				x.report.Waiting = append(x.report.Waiting, Waiting{m.Stream(), m.First, m.Last, "its file is not here, or not whole yet"})
+			}
+		}
+	}
+	slices.SortFunc(x.refs, func(a, b located) int {
+		if c := a.Stream().Compare(b.Stream()); c != 0 {
+			return c
+		}
+		if a.First != b.First {
+			return cmpUint(a.First, b.First)
+		}
+		return -cmpUint(a.Last, b.Last)
+	})
+	return nil
+}
+
+func cmpUint(a, b uint64) int {
+	switch {
+	case a < b:
+		return -1
+	case a > b:
+		return 1
+	}
+	return 0
+}
+
+// whole reports whether a file of a segment's name has the size that its head says.
+func (x *exchange) whole(name string, size int64) bool {
+	for _, r := range x.refs {
+		if filepath.Base(r.path) == name {
+			return r.Size == size
+		}
+	}
+	return false
+}
+
+// tail reads a file's last 32 bytes.
+func (x *exchange) tail(name string, size int64) (t [32]byte, err error) {
+	f, err := x.FS.Open(filepath.Join(x.dir, dataDir, name))
+	if err != nil {
+		return t, err
+	}
+	defer f.Close()
+	x.report.Read++
+	if n, err := f.ReadAt(t[:], size-32); n < 32 {
+		return t, err
+	}
+	return t, nil
+}
+
+// take reads what we lack.
+func (x *exchange) take(ctx context.Context) error {
+	held, err := x.held(ctx)
+	if err != nil {
+		return err
+	}
+	var todo []located
+	var total, done int64
+	for _, r := range x.refs {
+		ok, err := x.covered(ctx, held, r.Ref)
+		if err != nil {
+			return err
+		}
+		if !ok {
+			todo = append(todo, r)
+			total += r.Size
+		}
+	}
+	for _, r := range todo {
+		if err := ctx.Err(); err != nil {
+			return err
+		}
+		if ok, err := x.covered(ctx, held, r.Ref); ok || err != nil {
+			if err != nil {
+				return err
+			}
+			continue
+		}
+		s := r.Stream()
+		for _, h := range held {
+			if h.Stream != s || !h.Own {
+				continue
+			}
+			// Somebody wrote in this device's name: its store was copied, or put back to an
+			// earlier day. What lies here is kept; this device goes on under a new name.
+			if err := x.Journal.Renew(ctx); err != nil {
+				return fmt.Errorf("beginning anew under another name: %w", err)
+			}
+			x.problem("this device's records were also continued elsewhere (a copied or restored store); both are kept, and this device goes on under a new name")
+			// The old name's heads are no longer ours to replace.
+			x.mine, x.had, x.heads = Head{}, false, nil
+			for i := range x.refs {
+				x.refs[i].own = false
+			}
+			if held, err = x.held(ctx); err != nil {
+				return err
+			}
+			break
+		}
+		want, ok := x.Members.Signer(s.Device)
+		if !ok {
+			x.problem("a segment of a device that is not a member was left alone: %s", s.Device)
+			continue
+		}
+		if err := x.read(ctx, r, held, want); err != nil {
+			if errors.Is(err, errOwnSide) || ctx.Err() != nil {
+				return err
+			}
+			x.report.Waiting = append(x.report.Waiting, Waiting{s, r.First, r.Last, err.Error()})
+			continue
+		}
+		done += r.Size
+		x.Progress("receiving", done, total)
+		if held, err = x.held(ctx); err != nil {
+			return err
+		}
+	}
+	return nil
+}
+
+// errOwnSide marks errors of this device's own journal: to go on makes no sense.
+var errOwnSide = errors.New("this device's journal")
+
+func (x *exchange) held(ctx context.Context) ([]Held, error) {
+	held, err := x.Journal.Streams(ctx)
+	if err != nil {
+		return nil, fmt.Errorf("%w: %w", errOwnSide, err)
+	}
+	return held, nil
+}
+
+// covered reports whether we hold all of a segment, on its own branch.
+func (x *exchange) covered(ctx context.Context, held []Held, r Ref) (bool, error) {
+	for _, h := range held {
+		if h.Of != r.Stream() {
+			continue
+		}
+		if ok, err := x.holds(ctx, h, r); ok || err != nil {
+			return ok, err
+		}
+	}
+	return false, nil
+}
+
+// holds reports whether what we hold of a stream or branch contains a segment.
+func (x *exchange) holds(ctx context.Context, h Held, r Ref) (bool, error) {
+	inside := false
+	for _, sp := range h.Spans {
+		// The second branch of a fork is held from where it differs.
+		inside = inside || r.Last <= sp.Last && (sp.First <= r.First || h.Stream != h.Of && sp.First <= r.Last)
+	}
+	if !inside {
+		return false, nil
+	}
+	if r.Last == h.Last {
+		return r.Hash == h.Hash, nil
+	}
+	m := x.onto[h.Stream]
+	if m == nil {
+		m = map[uint64]change.Hash{}
+		x.onto[h.Stream] = m
+		signed, err := x.Journal.Signed(ctx, h.Stream)
+		if err != nil {
+			return false, fmt.Errorf("%w: %w", errOwnSide, err)
+		}
+		for _, s := range signed {
+			m[s.Last] = s.Hash
+		}
+		if h.Own {
+			for _, mine := range x.mine.Segments {
+				if mine.Stream() == h.Stream {
+					m[mine.Last] = mine.Hash
+				}
+			}
+		}
+	}
+	if hash, ok := m[r.Last]; ok {
+		return hash == r.Hash, nil
+	}
+	hash, ok, err := x.Journal.At(ctx, h.Stream, r.Last)
+	if err != nil {
+		return false, fmt.Errorf("%w: %w", errOwnSide, err)
+	}
+	if ok {
+		m[r.Last] = hash
+	}
+	return ok && hash == r.Hash, nil
+}
+
+// read takes one segment in.
+func (x *exchange) read(ctx context.Context, r located, held []Held, want key.Verifier) error {
+	f, err := x.FS.Open(r.path)
+	if err != nil {
+		return err
+	}
+	defer f.Close()
+	x.report.Read++
+	size, err := f.Size()
+	if err != nil {
+		return err
+	}
+	rd, err := segment.NewReader(io.NewSectionReader(f, 0, size), x.Bag.Ring)
+	if err != nil {
+		return err
+	}
+	if rd.Stream != r.Stream() || rd.First != r.First || rd.Signed.Hash != r.Hash {
+		return fmt.Errorf("%w: the segment is not the one that its device names", change.ErrMalformed)
+	}
+	if rd.Verifier != want {
+		return fmt.Errorf("the segment: %w", segment.ErrUnsigned)
+	}
+	b, err := x.branch(ctx, rd.Header, held)
+	if err != nil {
+		return err
+	}
+	received := 0
+	for {
+		block, err := rd.Next()
+		if errors.Is(err, io.EOF) {
+			break
+		}
+		if err != nil {
+			return err
+		}
+		if err := ctx.Err(); err != nil {
+			return err
+		}
+		for _, part := range b.split(block) {
+			if part.fork {
+				x.report.Forks = append(x.report.Forks, Fork{rd.Stream, part.block.Frames[0].First, part.as})
+			}
+			if err := x.Journal.Receive(ctx, part.as, part.block); err != nil {
+				return fmt.Errorf("%w: %w", errOwnSide, err)
+			}
+			received += len(part.block.Frames)
+		}
+	}
+	if err := x.Journal.Commit(ctx, b.as, rd.Signed); err != nil {
+		return fmt.Errorf("%w: %w", errOwnSide, err)
+	}
+	x.onto = map[change.Stream]map[uint64]change.Hash{}
+	x.report.Received += received
+	return nil
+}
+
+// brancher tells, frame by frame, on which branch of a stream a segment goes on.
+type brancher struct {
+	as   change.Stream
+	ours map[uint64]change.Hash // what we hold under as: hash of the frame that begins at this number
+	end  uint64                 // the highest number that we hold under as
+	head change.Hash            // there
+}
+
+// branch looks at what we hold of a segment's stream.
+func (x *exchange) branch(ctx context.Context, sh segment.Header, held []Held) (*brancher, error) {
+	b := &brancher{as: sh.Stream}
+	var main *Held
+	for i, h := range held {
+		if h.Of != sh.Stream {
+			continue
+		}
+		if h.Stream == h.Of {
+			main = &held[i]
+		} else if h.Last+1 == sh.First && h.Hash == sh.Prev {
+			b.as = h.Stream // it goes on where a second branch is
+			return b, nil
+		}
+	}
+	if main == nil {
+		return b, nil
+	}
+	b.end, b.head = main.Last, main.Hash
+	if main.Last < sh.First {
+		return b, nil
+	}
+	b.ours = map[uint64]change.Hash{}
+	err := x.Journal.Frames(ctx, main.Stream, sh.First, func(f change.Frame) error {
+		if f.First > sh.Last {
+			return errEnough
+		}
+		b.ours[f.First] = f.Hash()
+		return nil
+	})
+	if err != nil && !errors.Is(err, errEnough) {
+		return nil, fmt.Errorf("%w: %w", errOwnSide, err)
+	}
+	return b, nil
+}
+
+type part struct {
+	as    change.Stream
+	block segment.Block
+	fork  bool
+}
+
+// split leaves out of a block what we hold, and parts it where it begins to differ.
+func (b *brancher) split(block segment.Block) (parts []part) {
+	for i, f := range block.Frames {
+		fork := false
+		if b.as == f.Stream {
+			ours, have := b.ours[f.First]
+			if have && ours == f.Hash() {
+				continue
+			}
+			// It differs where we hold another frame, or where it follows another one than our last.
+			if have || f.First == b.end+1 && f.Prev != b.head && b.end > 0 {
+				b.as, fork = ForkOf(f.Stream, f.Hash()), true
+			}
+			if !fork && f.First == b.end+1 {
+				b.end, b.head = f.Last, f.Hash()
+			}
+		}
+		if len(parts) == 0 || fork {
+			parts = append(parts, part{as: b.as, fork: fork})
+		}
+		p := &parts[len(parts)-1].block
+		p.Raw = append(p.Raw, f.Raw...)
+		p.Frames = append(p.Frames, f)
+		p.Plain = append(p.Plain, block.Plain[i])
+	}
+	if len(parts) == 1 && len(parts[0].block.Frames) == len(block.Frames) {
+		parts[0].block = block
+	}
+	return parts
+}
+
+// ForkOf names the second branch of a forked stream: the first half of SHA-256 over a fixed word, the
+// stream and the hash of the branch's first frame that differs.
+func ForkOf(s change.Stream, first change.Hash) change.Stream {
+	return change.Stream{Device: change.Incarnation(hashOf("cordwalk 1 fork\x00", s.Device[:], s.Site[:], first[:])[:16]), Site: s.Site}
+}
+
+// compare says of each peer what it lacks and whether its state is ours.
+func (x *exchange) compare(ctx context.Context, peers map[change.Incarnation]peerHead) error {
+	held, err := x.Journal.Streams(ctx)
+	if err != nil {
+		return fmt.Errorf("reading this device's journal: %w", err)
+	}
+	sums, err := x.Journal.Sums(ctx)
+	if err != nil {
+		return fmt.Errorf("reading this device's state: %w", err)
+	}
+	now := x.Now()
+	for d, p := range peers {
+		peer := Peer{Device: d, Verifier: p.verifier, Time: p.Time, Ahead: p.Time.Ahead(now)}
+		reach := map[change.Stream]Reach{}
+		for _, r := range p.Streams {
+			reach[r.Stream()] = r
+		}
+		equal := map[change.Site]bool{}
+		for _, h := range held {
+			r := reach[h.Stream]
+			if h.Last > r.Last {
+				peer.Lacks += h.Last - r.Last
+			}
+			if _, ok := equal[h.Stream.Site]; !ok {
+				equal[h.Stream.Site] = true
+			}
+			if r.Last != h.Last || r.Hash != h.Hash {
+				equal[h.Stream.Site] = false
+			}
+			delete(reach, h.Stream)
+		}
+		for s := range reach {
+			equal[s.Site] = false
+		}
+		for _, mine := range sums {
+			for _, theirs := range p.Sums {
+				if theirs.Site == mine.Site && theirs.Rules == mine.Rules && equal[mine.Site] && theirs.Sum != mine.Sum {
+					peer.Differs = true
+				}
+			}
+		}
+		if peer.Differs {
+			x.problem("device %s holds the same entries as this device and yet shows something else: one of the two has a fault; run check on both", d)
+		}
+		x.report.Peers = append(x.report.Peers, peer)
+	}
+	slices.SortFunc(x.report.Peers, func(a, b Peer) int { return slices.Compare(a.Device[:], b.Device[:]) })
+	return nil
+}
+
+// blocked notes why nothing can be left in the folder.
+func (x *exchange) blocked(err error) {
+	if x.report.Blocked != nil {
+		return
+	}
+	why := "it cannot be written"
+	switch {
+	case errors.Is(err, fs.ErrPermission), isReadOnly(err):
+		why = "it is read-only; open its write protection"
+	case isFull(err):
+		why = "it is full; make room there"
+	case errors.Is(err, fs.ErrNotExist):
+		why = "it has gone away; put the stick in, or connect the share"
+	}
+	x.report.Blocked = fmt.Errorf("nothing could be left in the exchange folder: %s: %w", why, err)
+}
+
+// put writes a file in a folder of the practice's folder, making the folder if need be, and reads it back.
+func (x *exchange) put(dir, name string, data []byte) error {
+	if !disk.GoodName(name) {
+		return fmt.Errorf("%w: file name %q", fs.ErrInvalid, name)
+	}
+	if err := x.makeDirs(dir); err != nil {
+		return err
+	}
+	path := filepath.Join(x.dir, dir, name)
+	if err := disk.Replace(x.FS, path, data); err != nil {
+		_ = x.FS.Remove(disk.Temporary(path))
+		return err
+	}
+	back, err := disk.ReadFile(x.FS, path, int64(len(data)))
+	if err != nil {
+		return err
+	}
+	if !slices.Equal(back, data) {
+		_ = x.FS.Remove(path)
+		return fmt.Errorf("%s reads back differently from what was written: the stick or share is faulty", name)
+	}
+	return nil
+}
+
+func (x *exchange) makeDirs(dir string) error {
+	if err := x.FS.MakeDir(x.dir); err != nil {
+		return err
+	}
+	return x.FS.MakeDir(filepath.Join(x.dir, dir))
+}
