@@ -146,9 +146,12 @@ type owner struct {
 // plan makes the lines of the home plan.
 func (o *owner) plan(last exam.Visit) {
 	in := o.in
-	for _, h := range last.Home {
+	home, left := allowed(in, last.Home)
+	o.warnings = append(o.warnings, left...)
+	for _, h := range home {
 		e := exercise{times: min(max(h.Times, 1), 6)}
-		e.name, e.how, e.stop = plainExercise(in, h)
+		var amount string
+		e.name, amount, e.how, e.stop = plainExercise(in, h)
 		often := in.text(textOnce)
 		if h.Times > 1 {
 			often = in.text(textTimes, h.Times)
@@ -156,8 +159,8 @@ func (o *owner) plan(last exam.Visit) {
 		if h.DaysWeek > 0 && h.DaysWeek < 7 {
 			often += ", " + in.text(textDays, h.DaysWeek)
 		}
-		if h.Amount != "" {
-			often += ", " + h.Amount
+		if amount != "" {
+			often += ", " + amount
 		}
 		e.often = often
 		o.home = append(o.home, e)
@@ -711,9 +714,8 @@ func (o *owner) homePlan(p *page, f fit) {
 			p.para(x, textW, e.how, p.size*0.93, false, p.pal.Ink, f.how)
 		}
 		if e.stop != "" && !f.terse {
-			s := in.text(textStop, e.stop)
-			p.note(s)
-			p.para(x, textW, s, p.size*0.93, false, p.pal.Ink, f.how)
+			p.note(e.stop)
+			p.para(x, textW, e.stop, p.size*0.93, false, p.pal.Ink, f.how)
 		}
 		side := p.size * 0.85
 		perRow := 2

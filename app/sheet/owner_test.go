@@ -58,9 +58,9 @@ func practice() exam.Practice {
 
 func home() []exam.HomeExercise {
 	return []exam.HomeExercise{
-		{ID: id(501), Kind: "assisted-standing", Times: 3, DaysWeek: 7, Amount: "5 minutes", How: "Hold the hips up with a towel so that the paws stand flat.", StopFor: "the legs shake or your dog wants to lie down"},
-		{ID: id(502), Kind: "weight-shifting", Times: 2, Amount: "10 times each side", How: "Push gently at the hip and let go.", StopFor: "your dog cries or looks round"},
-		{ID: id(503), Kind: "leash-walk", Times: 1, DaysWeek: 5, Amount: "5 minutes on flat ground", How: "Walk slowly, on a short leash.", StopFor: "the toes drag"},
+		{ID: id(501), Kind: "help-to-stand", Times: 3, DaysWeek: 7, Amount: "5 minutes", How: "Hold the hips up with a towel so that the paws stand flat.", StopFor: "the legs shake or your dog wants to lie down"},
+		{ID: id(502), Kind: "gentle-push", Times: 2},
+		{ID: id(503), Kind: "slow-walk", Times: 1, DaysWeek: 5, Amount: "5 minutes on flat ground"},
 	}
 }
 
@@ -94,7 +94,7 @@ func patients() map[string]Input {
 
 	p = base("Odin", exam.Dog, "German Shepherd Dog")
 	vs = []exam.Visit{motor(0, 0, 2, 4, 4, 3, 3), motor(1, 28, 2, 4, 4, 3, 2), motor(2, 56, 1, 4, 4, 2, 2)}
-	vs[2].Surface, vs[2].Home = "slick", home()
+	vs[2].Surface, vs[2].Home = "slick", home()[:1]
 	put("going-down", p, vs...)
 
 	p = base("Pixel", exam.Dog, "Border Collie")
@@ -108,7 +108,7 @@ func patients() map[string]Input {
 	p = base("Bruno", exam.Dog, "Dachshund")
 	in := out["recovery"]
 	in.Visits = append(append([]exam.Visit(nil), in.Visits...), with(motor(6, 66, 0, 4, 4, 1, 1), exam.SpinalPain, exam.Thoracolumbar, 3))
-	in.Visits[6].Home = home()
+	in.Visits[6].Home = home()[:1]
 	in.Notices = []Notice{{Urgency: Now, Plain: "Bruno can no longer walk alone.", Words: "Ambulation fell from 2 to 0.", Since: at(66)}, {Urgency: Today, Plain: "There is strong pain in the back.", Since: at(66)}}
 	out["relapse"] = in
 
@@ -116,7 +116,7 @@ func patients() map[string]Input {
 	p.Veterinarian = exam.Contact{Name: "Dr Bartholomew Featherstonehaugh-Cholmondeley, Centre for Small Animal Neurology and Rehabilitation", Phone: "+43 (0)1 555 0123 ext. 4567"}
 	p.Goals = []exam.Goal{{Words: "Climbs the three steps at the front door without help and without falling over"}, {Words: "Stands"}, {Words: "Wags"}, {Words: "Swims"}, {Words: "Runs", By: "2026-09"}}
 	vs = []exam.Visit{motor(0, 0, 0, 3, 3, 0, 1), motor(1, 7, 1, 2, 4, 1, -1)}
-	for i, k := range []string{"assisted-standing", "weight-shifting", "leash-walk", "cycling", "massage", "cold-pack", "sit-to-stand", "ground-poles", "standing-on-foam", "toe-pinch-walk"} {
+	for i, k := range []string{"leg-cycling", "toe-tickle", "gentle-rubbing", "help-to-stand", "sling-walk", "treat-stretch", "turning", "skin-check", "bladder-care", "paw-brushing"} {
 		vs[1].Home = append(vs[1].Home, exam.HomeExercise{ID: id(510 + i), Kind: k, Times: 1 + i%4, Amount: "10 minutes", How: "Do this slowly and with care. Keep the back straight and the paws flat on the ground. Praise often and rest between rounds.", StopFor: "your dog cries, shakes, pants hard or wants to lie down"})
 	}
 	vs[1].NextVisit = "2026-03-16"
@@ -294,6 +294,24 @@ func TestNoSheet(t *testing.T) {
 			assert.Nil(t, doc.PDF)
 		})
 	}
+}
+
+// TestExercisesThatHarmAreLeftOff: what the table of contraindications forbids today is not
+// printed without a reason, and the caller is told.
+func TestExercisesThatHarmAreLeftOff(t *testing.T) {
+	in := patients()["going-down"]
+	in.Visits[2].Home = home() // one of them for an animal that walks alone
+	doc, err := Owner(in)
+	require.NoError(t, err)
+	require.NotEmpty(t, doc.Warnings)
+	text := textOf(t, doc.PDF)
+	assert.Contains(t, text, "Help to stand")
+	assert.NotContains(t, text, "Gentle push")
+	assert.Contains(t, doc.Warnings[0], "Gentle push from side to side is left off the home plan: does not walk alone")
+	in.Visits[2].Home[1].Override = "steadied by a second person"
+	doc, err = Owner(in)
+	require.NoError(t, err)
+	assert.Contains(t, textOf(t, doc.PDF), "Gentle push")
 }
 
 func TestSummaryOverrideAndPhrases(t *testing.T) {

@@ -82,6 +82,12 @@ func anyMeasured(t *rapid.T) exam.Measured {
 	} else {
 		m.Value = rapid.Float64Range(in.Min, in.Max).Draw(t, "value")
 	}
+	if m.Measure == exam.RangeOfMotion {
+		m.Joint, m.Motion = exam.Hock, "flexion"
+	}
+	if m.Validate() != nil { // rules of single measures: keep what all of them allow
+		m = exam.Measured{Measure: m.Measure, Site: m.Site, Value: m.Value, Note: m.Note}
+	}
 	return m
 }
 
