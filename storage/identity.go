@@ -130,14 +130,25 @@ func readIdentity(fsys disk.FS, dir string) (id identity, damage []Problem, err 
 		if main {
 			damage = append(damage, Problem{File: n, Offset: -1, What: "this copy of the practice's keys is damaged: " + plain(rerr)})
 		}
-		if first == nil {
+		if first == nil && main {
 			first = fmt.Errorf("%s: %w", n, rerr)
 		}
 	}
-	if first == nil {
+	if first == nil { // half a temporary file at most: the practice was never finished
 		return identity{}, nil, fmt.Errorf("%s holds no practice; make one there first, or name another folder: %w", dir, fs.ErrNotExist)
 	}
 	return identity{}, damage, first
+}
+
+// recoverIdentity finishes what a power cut interrupted on a disk that does not rename atomically.
+func recoverIdentity(fsys disk.FS, dir string) error {
+	good := func(b []byte) bool { _, err := parseIdentity(b); return err == nil }
+	for _, n := range []string{identityFile, identityBackup} {
+		if err := disk.Recover(fsys, filepath.Join(dir, n), good); err != nil {
+			return err
+		}
+	}
+	return nil
 }
 
 // newIdentity makes the identity of a new store with fresh keys.

@@ -114,8 +114,26 @@ func Create(dir string, o Options) (*Store, error) {
 	return s, nil
 }
 
+// makeDirs makes a folder and those above it that are missing, durably.
+func makeDirs(fsys disk.FS, dir string) error {
+	there, err := disk.Exists(fsys, dir)
+	if err != nil || there {
+		return err
+	}
+	above := filepath.Dir(dir)
+	if above != dir {
+		if err := makeDirs(fsys, above); err != nil {
+			return err
+		}
+	}
+	if err := fsys.MakeDir(dir); err != nil {
+		return err
+	}
+	return fsys.SyncDir(above)
+}
+
 func create(dir string, o Options) (*Store, error) {
-	if err := o.Files.MakeDir(dir); err != nil {
+	if err := makeDirs(o.Files, dir); err != nil {
 		return nil, err
 	}
 	es, err := o.Files.List(dir)
@@ -154,9 +172,6 @@ func create(dir string, o Options) (*Store, error) {
 	if err := writeIdentity(o.Files, dir, id); err != nil {
 		return nil, err
 	}
-	if err := o.Files.SyncDir(filepath.Dir(dir)); err != nil {
-		return nil, err
-	}
 	s, err := start(dir, o, lock, id, bag, nil)
 	if err != nil {
 		return nil, err
@@ -178,10 +193,12 @@ func Open(dir string, o Options) (*Store, error) {
 
 // holdsPractice reports whether the folder looks like a store, before anything is made in it.
 func holdsPractice(fsys disk.FS, dir string) error {
-	for _, n := range []string{identityFile, identityBackup, disk.Temporary(identityFile)} {
-		there, err := disk.Exists(fsys, filepath.Join(dir, n))
-		if err != nil || there {
-			return err
+	for _, n := range []string{identityFile, identityBackup} {
+		for _, n := range []string{n, disk.Temporary(n)} {
+			there, err := disk.Exists(fsys, filepath.Join(dir, n))
+			if err != nil || there {
+				return err
+			}
 		}
 	}
 	return fmt.Errorf("it holds no practice; make one there first, or name another folder: %w", fs.ErrNotExist)
@@ -201,6 +218,9 @@ func open(dir string, o Options) (*Store, error) {
 			_ = lock.Unlock()
 		}
 	}()
+	if err := recoverIdentity(o.Files, dir); err != nil {
+		return nil, err
+	}
 	id, damage, err := readIdentity(o.Files, dir)
 	if err != nil {
 		return nil, err

@@ -547,9 +547,6 @@ func (fl *follower) unfinished(seg segmentFile, from int64) bool {
 	for start := 0; start < need; {
 		stop := start + sector - int((from+int64(start))%sector)
 		part := b[start:min(stop, need, len(b))]
-		if stop >= need && need == change.HeaderSize && length > need {
-			break // the header's end is not the frame's
-		}
 		if len(part) > 0 && allZero(part) {
 			return true
 		}
