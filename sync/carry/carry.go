@@ -26,19 +26,11 @@ import (
 	"cordwalk.example/cordwalk/storage/disk"
 	"cordwalk.example/cordwalk/sync/change"
 	"cordwalk.example/cordwalk/sync/key"
-	"cordwalk.example/cordwalk/sync/merge"
 	"cordwalk.example/cordwalk/sync/segment"
 )
 
 // Held says what a journal holds of a stream.
-type Held struct {
-	Stream change.Stream
-	Of     change.Stream // of the frames in it: another one only for the second branch of a fork
-	Spans  []merge.Span  // the numbers that are there, rising
-	Last   uint64        // the highest of them
-	Hash   change.Hash   // chain hash there
-	Own    bool          // this device writes it now
-}
+type Held = segment.Held
 
 // Journal is what carrying needs of a store.
 type Journal interface {
@@ -47,8 +39,8 @@ type Journal interface {
 	// Frames calls f for each frame held of the stream that ends at number from or later, in order.
 	Frames(ctx context.Context, s change.Stream, from uint64, f func(change.Frame) error) error
 	// Receive takes frames of another device in. They may be repeats, and need not follow what is
-	// held. They are safe, and seen by readers, when Commit has returned. Under as they are kept and
-	// shown: it differs from the frames' own stream for the second branch of a fork.
+	// held. They are safe when Commit has returned, and readers see them soon after. Under as they are
+	// kept and shown: it differs from the frames' own stream for the second branch of a fork.
 	Receive(ctx context.Context, as change.Stream, b segment.Block) error
 	// Commit makes what was received of a stream durable, with the signed head that covers it.
 	Commit(ctx context.Context, as change.Stream, head segment.Signed) error
@@ -56,8 +48,8 @@ type Journal interface {
 	At(ctx context.Context, s change.Stream, last uint64) (change.Hash, bool, error)
 	// Signed returns the signed heads that came with a stream of another device, rising.
 	Signed(ctx context.Context, s change.Stream) ([]segment.Signed, error)
-	// Sums returns the hash of the merged state of each site.
-	Sums(ctx context.Context) ([]Sum, error)
+	// Sums returns the hash of the merged state of each site, as far as one was worked out.
+	Sums(ctx context.Context) ([]segment.Sum, error)
 	// Renew gives this device a new incarnation: somebody wrote in its name.
 	Renew(ctx context.Context) error
 }
@@ -142,6 +134,8 @@ type exchange struct {
 	mine   Head
 	had    bool     // mine was found
 	heads  []string // our own head files
+	// renewed is true once this device writes under a new name.
+	renewed bool
 	// onto remembers which places are known to lie on which branch.
 	onto map[change.Stream]map[uint64]change.Hash
 }
@@ -516,6 +510,7 @@ func (x *exchange) take(ctx context.Context) error {
 				return fmt.Errorf("beginning anew under another name: %w", err)
 			}
 			x.problem("this device's records were also continued elsewhere (a copied or restored store); both are kept, and this device goes on under a new name")
+			x.renewed = true
 			// The old name's heads are no longer ours to replace.
 			x.mine, x.had, x.heads = Head{}, false, nil
 			for i := range x.refs {
@@ -733,7 +728,7 @@ func (b *brancher) split(block segment.Block) (parts []part) {
 			}
 			// It differs where we hold another frame, or where it follows another one than our last.
 			if have || f.First == b.end+1 && f.Prev != b.head && b.end > 0 {
-				b.as, fork = ForkOf(f.Stream, f.Hash()), true
+				b.as, fork = segment.ForkOf(f.Stream, f.Hash()), true
 			}
 			if !fork && f.First == b.end+1 {
 				b.end, b.head = f.Last, f.Hash()
@@ -753,12 +748,6 @@ func (b *brancher) split(block segment.Block) (parts []part) {
 	return parts
 }
 
-// ForkOf names the second branch of a forked stream: the first half of SHA-256 over a fixed word, the
-// stream and the hash of the branch's first frame that differs.
-func ForkOf(s change.Stream, first change.Hash) change.Stream {
-	return change.Stream{Device: change.Incarnation(hashOf("cordwalk 1 fork\x00", s.Device[:], s.Site[:], first[:])[:16]), Site: s.Site}
-}
-
 // compare says of each peer what it lacks and whether its state is ours.
 func (x *exchange) compare(ctx context.Context, peers map[change.Incarnation]peerHead) error {
 	held, err := x.Journal.Streams(ctx)
@@ -772,30 +761,18 @@ func (x *exchange) compare(ctx context.Context, peers map[change.Incarnation]pee
 	now := x.Now()
 	for d, p := range peers {
 		peer := Peer{Device: d, Verifier: p.verifier, Time: p.Time, Ahead: p.Time.Ahead(now)}
-		reach := map[change.Stream]Reach{}
+		reach := map[change.Stream]uint64{}
 		for _, r := range p.Streams {
-			reach[r.Stream()] = r
+			reach[r.Stream()] = r.Last
 		}
-		equal := map[change.Site]bool{}
 		for _, h := range held {
-			r := reach[h.Stream]
-			if h.Last > r.Last {
-				peer.Lacks += h.Last - r.Last
+			if n := reach[h.Stream]; h.Last > n {
+				peer.Lacks += h.Last - n
 			}
-			if _, ok := equal[h.Stream.Site]; !ok {
-				equal[h.Stream.Site] = true
-			}
-			if r.Last != h.Last || r.Hash != h.Hash {
-				equal[h.Stream.Site] = false
-			}
-			delete(reach, h.Stream)
-		}
-		for s := range reach {
-			equal[s.Site] = false
 		}
 		for _, mine := range sums {
 			for _, theirs := range p.Sums {
-				if theirs.Site == mine.Site && theirs.Rules == mine.Rules && equal[mine.Site] && theirs.Sum != mine.Sum {
+				if theirs.Site == mine.Site && theirs.Rules == mine.Rules && theirs.At == mine.At && theirs.Sum != mine.Sum {
 					peer.Differs = true
 				}
 			}

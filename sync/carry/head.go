@@ -14,7 +14,6 @@ import (
 	"cordwalk.example/cordwalk/exam"
 	"cordwalk.example/cordwalk/sync/change"
 	"cordwalk.example/cordwalk/sync/key"
-	"cordwalk.example/cordwalk/sync/merge"
 	"cordwalk.example/cordwalk/sync/segment"
 )
 
@@ -28,7 +27,7 @@ type Head struct {
 	Time     change.HLC         `cbor:"4,keyasint"` // of the device's clock
 	Streams  []Reach            `cbor:"5,keyasint"` // what the device holds, by stream, rising
 	Segments []Ref              `cbor:"6,keyasint"` // what it has put into this folder and still lies there
-	Sums     []Sum              `cbor:"7,keyasint,omitempty"`
+	Sums     []segment.Sum      `cbor:"7,keyasint,omitempty"`
 }
 
 // Reach says how far a device holds a stream.
@@ -68,14 +67,6 @@ func (r Ref) File() string {
 type FileRef struct {
 	Name string
 	Size int64
-}
-
-// Sum is the hash of the merged state of a site. It is compared only between devices that
-// hold the same of every stream and use the same rules.
-type Sum struct {
-	Site  change.Site `cbor:"1,keyasint"`
-	Rules uint16      `cbor:"2,keyasint"`
-	Sum   merge.Sum   `cbor:"3,keyasint"`
 }
 
 const (

@@ -213,8 +213,9 @@ func (m *memory) Signed(_ context.Context, s change.Stream) ([]segment.Signed, e
 	return m.signed[s], nil
 }
 
-func (m *memory) Sums(context.Context) ([]carry.Sum, error) {
-	return []carry.Sum{{Site: m.site, Rules: merge.Rules, Sum: m.state().Hash()}}, nil
+func (m *memory) Sums(ctx context.Context) ([]segment.Sum, error) {
+	held, err := m.Streams(ctx)
+	return []segment.Sum{{Site: m.site, Rules: merge.Rules, At: segment.HashOfHeld(m.site, held), Sum: m.state().Hash()}}, err
 }
 
 func (m *memory) options() carry.Options {

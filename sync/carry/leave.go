@@ -32,19 +32,6 @@ func statementFile(b []byte) string {
 	return hex.EncodeToString(s[:20]) + ".member"
 }
 
-func hashOf(parts ...any) []byte {
-	h := sha256.New()
-	for _, p := range parts {
-		switch p := p.(type) {
-		case string:
-			h.Write([]byte(p))
-		case []byte:
-			h.Write(p)
-		}
-	}
-	return h.Sum(nil)
-}
-
 func isReadOnly(err error) bool { return errors.Is(err, syscall.EROFS) }
 func isFull(err error) bool     { return errors.Is(err, syscall.ENOSPC) }
 
@@ -52,6 +39,11 @@ func isFull(err error) bool     { return errors.Is(err, syscall.ENOSPC) }
 func (x *exchange) leave(ctx context.Context) error {
 	if x.ReceiveOnly || x.report.Blocked != nil {
 		return nil
+	}
+	if x.renewed { // the others must learn the new name
+		if err := x.members(); err != nil {
+			return err
+		}
 	}
 	held, err := x.held(ctx)
 	if err != nil {
