@@ -327,3 +327,34 @@ func keysBehind(species exam.Species, v exam.Visit, seg anatomy.Segment, side ex
 	}
 	return out
 }
+
+// OfSeries makes an animal and its visits out of exam files, which are in order of time.
+// What is known of the animal is taken from the last file that says it.
+func OfSeries(files []exam.File) (exam.Patient, []exam.Visit) {
+	var p exam.Patient
+	visits := make([]exam.Visit, len(files))
+	for i, f := range files {
+		a := f.Animal()
+		if i == 0 {
+			p = a
+		}
+		if a.Born != "" {
+			p.Born = a.Born
+		}
+		if a.Breed != "" {
+			p.Breed = a.Breed
+		}
+		if len(a.Problems) > 0 {
+			p.Problems = a.Problems
+		}
+		if i > 0 {
+			p.Weights = append(p.Weights, a.Weights...)
+		}
+		p.Precautions = a.Precautions
+		visits[i] = f.Visit(exam.ID{})
+		if visits[i].ID.IsZero() {
+			visits[i].ID[15], visits[i].ID[14] = byte(i+1), byte((i+1)>>8)
+		}
+	}
+	return p, visits
+}

@@ -28,7 +28,7 @@ func spinalItems() []exam.Item {
 		exam.BladderFill, exam.SuperficialPain, exam.DeepPain}
 }
 
-func sheet(t testing.TB, change func(*ExamInput)) (*ExamSheet, *[]Batch) {
+func newSheet(t testing.TB, change func(*ExamInput)) (*ExamSheet, *[]Batch) {
 	t.Helper()
 	var saved []Batch
 	in := ExamInput{Patient: dog(), Items: spinalItems(),
@@ -76,7 +76,7 @@ func earlier(fs ...exam.Finding) func(*ExamInput) {
 }
 
 func TestDigitGradesAndGoesOn(t *testing.T) {
-	s, saved := sheet(t, nil)
+	s, saved := newSheet(t, nil)
 	c, _ := s.Cell()
 	require.Equal(t, exam.Mentation, c.Key.Item)
 	require.True(t, press(s, "2").Handled)
@@ -91,7 +91,7 @@ func TestDigitGradesAndGoesOn(t *testing.T) {
 }
 
 func TestWalkGoesByPosition(t *testing.T) {
-	s, _ := sheet(t, nil)
+	s, _ := newSheet(t, nil)
 	var order []Position
 	var sides []exam.Site
 	for _, st := range s.steps {
@@ -133,16 +133,16 @@ func TestSpineBeginsAtThePainlessEnd(t *testing.T) {
 		}
 		return exam.NoSite
 	}
-	s, _ := sheet(t, earlier(finding(exam.SpinalPain, exam.Cervical, 2)))
+	s, _ := newSheet(t, earlier(finding(exam.SpinalPain, exam.Cervical, 2)))
 	require.Equal(t, exam.Sacrocaudal, first(s))
-	s, _ = sheet(t, earlier(finding(exam.SpinalPain, exam.Lumbosacral, 2)))
+	s, _ = newSheet(t, earlier(finding(exam.SpinalPain, exam.Lumbosacral, 2)))
 	require.Equal(t, exam.Cervical, first(s))
-	s, _ = sheet(t, func(in *ExamInput) { in.Patient.Problems = []exam.Problem{{Diagnosis: "disc", Level: "C3-C4"}} })
+	s, _ = newSheet(t, func(in *ExamInput) { in.Patient.Problems = []exam.Problem{{Diagnosis: "disc", Level: "C3-C4"}} })
 	require.Equal(t, exam.Sacrocaudal, first(s))
 }
 
 func TestHeldAndSternalPositions(t *testing.T) {
-	s, _ := sheet(t, func(in *ExamInput) { in.Posture = Held })
+	s, _ := newSheet(t, func(in *ExamInput) { in.Posture = Held })
 	for _, st := range s.steps {
 		require.NotEqual(t, OnRight, st.Position)
 		require.NotEqual(t, OnLeft, st.Position)
@@ -156,7 +156,7 @@ func TestHeldAndSternalPositions(t *testing.T) {
 }
 
 func TestReflexAbsentUppermostIsOfferedUndermost(t *testing.T) {
-	s, _ := sheet(t, nil)
+	s, _ := newSheet(t, nil)
 	at(t, s, exam.Patellar, exam.PelvicLeft)
 	before := s.Progress().Total
 	press(s, "0")
@@ -204,7 +204,7 @@ func TestBulkNeverFills(t *testing.T) {
 				for _, site := range i.Info().Sites {
 					fs = append(fs, finding(i, site, i.Info().Normal))
 				}
-				s, _ := sheet(t, func(in *ExamInput) {
+				s, _ := newSheet(t, func(in *ExamInput) {
 					in.Items = append(exam.Items()[:0:0], exam.Items()...)
 					earlier(fs...)(in)
 				})
@@ -226,7 +226,7 @@ func TestBulkNeverFills(t *testing.T) {
 }
 
 func TestRestOfLimbIsOneLook(t *testing.T) {
-	s, saved := sheet(t, nil)
+	s, saved := newSheet(t, nil)
 	at(t, s, exam.Tone, exam.PelvicLeft)
 	press(s, "1")
 	c, _ := s.Cell()
@@ -259,7 +259,7 @@ func TestRestOfLimbIsOneLook(t *testing.T) {
 }
 
 func TestSameAsLastCopiesAndSaysSo(t *testing.T) {
-	s, _ := sheet(t, earlier(finding(exam.Patellar, exam.PelvicLeft, 3)))
+	s, _ := newSheet(t, earlier(finding(exam.Patellar, exam.PelvicLeft, 3)))
 	at(t, s, exam.Patellar, exam.PelvicLeft)
 	press(s, "s")
 	f, _ := s.Visit().Find(exam.Key{Item: exam.Patellar, Site: exam.PelvicLeft})
@@ -271,7 +271,7 @@ func TestSameAsLastCopiesAndSaysSo(t *testing.T) {
 }
 
 func TestPeekIsStored(t *testing.T) {
-	s, _ := sheet(t, earlier(finding(exam.Patellar, exam.PelvicLeft, 3), finding(exam.Patellar, exam.PelvicRight, 3)))
+	s, _ := newSheet(t, earlier(finding(exam.Patellar, exam.PelvicLeft, 3), finding(exam.Patellar, exam.PelvicRight, 3)))
 	at(t, s, exam.Patellar, exam.PelvicLeft)
 	require.False(t, s.ShowLast(s.FocusIndex()), "the last grade bends the next one")
 	out := press(s, "p")
@@ -289,7 +289,7 @@ func TestPeekIsStored(t *testing.T) {
 }
 
 func TestBlindRepeatHidesEarlierGrades(t *testing.T) {
-	s, _ := sheet(t, func(in *ExamInput) {
+	s, _ := newSheet(t, func(in *ExamInput) {
 		earlier(finding(exam.Patellar, exam.PelvicLeft, 3))(in)
 		in.Visit.RepeatOf = id(7)
 	})
@@ -304,7 +304,7 @@ func TestBlindRepeatHidesEarlierGrades(t *testing.T) {
 }
 
 func TestNotTestedTakesAReason(t *testing.T) {
-	s, _ := sheet(t, nil)
+	s, _ := newSheet(t, nil)
 	at(t, s, exam.Hopping, exam.PelvicLeft)
 	press(s, "xp")
 	f, ok := s.Visit().Find(exam.Key{Item: exam.Hopping, Site: exam.PelvicLeft})
@@ -336,7 +336,7 @@ func TestCutaneousTrunciAsksForTheVertebra(t *testing.T) {
 		"default": {[]Key{Named("Enter")}, "T13"},
 	} {
 		t.Run(name, func(t *testing.T) {
-			s, _ := sheet(t, nil)
+			s, _ := newSheet(t, nil)
 			at(t, s, exam.CutaneousTrunci, exam.Left)
 			press(s, "1")
 			m, _ := s.Mode()
@@ -353,7 +353,7 @@ func TestCutaneousTrunciAsksForTheVertebra(t *testing.T) {
 }
 
 func TestDeepPainRules(t *testing.T) {
-	s, _ := sheet(t, nil)
+	s, _ := newSheet(t, nil)
 	cell := func(site exam.Site) Cell { return s.cells[s.index[exam.Key{Item: exam.DeepPain, Site: site}]] }
 	at(t, s, exam.VoluntaryMotor, exam.PelvicLeft)
 	press(s, "0")
@@ -376,7 +376,7 @@ func TestDeepPainRules(t *testing.T) {
 }
 
 func TestBarredCellsNeedAReason(t *testing.T) {
-	s, saved := sheet(t, func(in *ExamInput) {
+	s, saved := newSheet(t, func(in *ExamInput) {
 		in.Barred = func(k exam.Key) string {
 			if k.Item == exam.Hopping {
 				return "unstable spine"
@@ -403,7 +403,7 @@ func TestBarredCellsNeedAReason(t *testing.T) {
 }
 
 func TestMeasuresTakeNumbers(t *testing.T) {
-	s, _ := sheet(t, func(in *ExamInput) { in.Measures = []exam.Measure{exam.Weight, exam.Temperature} })
+	s, _ := newSheet(t, func(in *ExamInput) { in.Measures = []exam.Measure{exam.Weight, exam.Temperature} })
 	c, _ := s.Cell()
 	require.Equal(t, exam.Weight, c.Measure)
 	press(s, "9,4")
@@ -426,7 +426,7 @@ func TestMeasuresTakeNumbers(t *testing.T) {
 }
 
 func TestClosingEndsUndoAndAmendmentsNeedAReason(t *testing.T) {
-	s, saved := sheet(t, nil)
+	s, saved := newSheet(t, nil)
 	press(s, "22")
 	require.Error(t, s.Close([]string{"Deep pain is lost"}))
 	require.False(t, s.Closed())
@@ -445,15 +445,15 @@ func TestClosingEndsUndoAndAmendmentsNeedAReason(t *testing.T) {
 }
 
 func TestResumeAtTheSameCell(t *testing.T) {
-	s, _ := sheet(t, nil)
+	s, _ := newSheet(t, nil)
 	press(s, "322")
 	was, _ := s.Cell()
 	half := s.Visit()
-	s2, _ := sheet(t, func(in *ExamInput) { in.Visit = half })
+	s2, _ := newSheet(t, func(in *ExamInput) { in.Visit = half })
 	is, _ := s2.Cell()
 	require.Equal(t, was.Key, is.Key)
 	k := exam.Key{Item: exam.Patellar, Site: exam.PelvicRight}
-	s3, _ := sheet(t, func(in *ExamInput) { in.Visit, in.Resume = half, k })
+	s3, _ := newSheet(t, func(in *ExamInput) { in.Visit, in.Resume = half, k })
 	is, _ = s3.Cell()
 	require.Equal(t, k, is.Key)
 }
@@ -463,7 +463,7 @@ func TestResumeAtTheSameCell(t *testing.T) {
 func TestUndoRedoAreExact(t *testing.T) {
 	rapid.Check(t, func(rt *rapid.T) {
 		fs := []exam.Finding{finding(exam.Patellar, exam.PelvicLeft, 3), finding(exam.Tone, exam.PelvicRight, 1), finding(exam.Hopping, exam.PelvicRight, 0)}
-		s, saved := sheet(t, earlier(fs...))
+		s, saved := newSheet(t, earlier(fs...))
 		stored := map[exam.Key]exam.Finding{}
 		keys := rapid.SliceOfN(rapid.SampledFrom([]Key{Rune('0'), Rune('1'), Rune('2'), Rune('3'), Rune('n'), Rune('s'), Rune('x'), Rune('p'),
 			Rune('r'), Rune('g'), Rune('['), Rune('<'), Named("Down"), Named("Right"), Named("Tab"), Named("Backspace"), Named("Enter"), Rune('u')}), 1, 60).Draw(rt, "keys")

@@ -205,3 +205,8 @@ func measureKey(m exam.Measure) string {
 
 // MeasureName returns the measure's name on screens, in the language in use.
 func MeasureName(m exam.Measure) string { return words.Of(measureKey(m)) }
+
+// AlertTitle returns the name of an alert rule as it stands in lists.
+func AlertTitle(rule string) string {
+	return words.Of(capital(strings.ReplaceAll(rule, "-", " ")))
+}

@@ -80,7 +80,7 @@ func TestNoKeyWaitsForTheDisk(t *testing.T) {
 	var ui sync.Mutex
 	onUI := func(f func()) { ui.Lock(); defer ui.Unlock(); f() }
 	saver := NewSaver(onUI, func(SaveState) {})
-	s, _ := sheet(t, func(in *ExamInput) {
+	s, _ := newSheet(t, func(in *ExamInput) {
 		in.Save = func(b Batch) {
 			_, err := saver.Queue(func(ctx context.Context) error {
 				<-release
@@ -132,7 +132,7 @@ func TestMain(m *testing.M) { goleak.VerifyTestMain(m) }
 func BenchmarkKey(b *testing.B) {
 	run := func(b *testing.B, disk time.Duration) time.Duration {
 		saver := NewSaver(func(f func()) {}, nil)
-		s, _ := sheet(b, func(in *ExamInput) {
+		s, _ := newSheet(b, func(in *ExamInput) {
 			in.Items = exam.Items()
 			in.Save = func(Batch) {
 				_, _ = saver.Queue(func(ctx context.Context) error {

@@ -48,12 +48,12 @@ func courses() []course {
 			phases: []phase{{9, []float64{0.97}, 1.6}, {23, []float64{0.8}, 1}, {44, []float64{0.5}, 0.5}, {65, []float64{0.3}, 0}, {93, []float64{0.15}, 0}},
 			full:   4,
 			visit: func(n int, v *exam.Visit) {
-				v.Treatments = []exam.Treatment{{Kind: "assisted-standing", Minutes: 10}, {Kind: "passive-motion", Site: "pelvic limbs", Minutes: 8}}
+				v.Treatments = []exam.Treatment{{Kind: "assisted-standing", Minutes: 10}, {Kind: "passive-movement", Site: "pelvic limbs", Minutes: 8}}
 				if n > 3 {
 					v.Treatments = append(v.Treatments, exam.Treatment{Kind: "underwater-treadmill", Params: "0.8 km/h, water at the hip", Minutes: 8})
 				}
-				v.Home = program(exam.HomeExercise{Kind: "assisted-standing", Times: 3, DaysWeek: 7, Amount: "3 minutes"},
-					exam.HomeExercise{Kind: "passive-motion", Times: 2, DaysWeek: 7, Amount: "10 slow bends of each hind limb"})
+				v.Home = program(exam.HomeExercise{Kind: "help-to-stand", Times: 3, DaysWeek: 7, Amount: "3 minutes"},
+					exam.HomeExercise{Kind: "leg-cycling", Times: 2, DaysWeek: 7, Amount: "10 slow bends of each hind limb"})
 				v.Report = exam.OwnerReport{Appetite: "normal", ExercisesDone: 5 + n%3, ExercisesSet: 7}
 			},
 		},
@@ -69,7 +69,7 @@ func courses() []course {
 			full:   3,
 			visit: func(n int, v *exam.Visit) {
 				v.Treatments = []exam.Treatment{{Kind: "massage", Site: "lumbar muscles", Minutes: 10}, {Kind: "heat", Site: "lumbar muscles", Minutes: 10}}
-				v.Home = program(exam.HomeExercise{Kind: "slow-walking", Times: 3, DaysWeek: 7, Amount: "10 minutes on a level path"})
+				v.Home = program(exam.HomeExercise{Kind: "slow-walk", Times: 3, DaysWeek: 7, Amount: "10 minutes on a level path"})
 			},
 		},
 		{ // a one-sided infarct of the cervical enlargement

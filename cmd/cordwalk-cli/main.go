@@ -1,0 +1,161 @@
+// Command cordwalk-cli does at the command line what Cordwalk's desktop does: it keeps a
+// practice's records of neurological exams, compares visits, says where a lesion is likely,
+// shows recovery, and writes the sheets. It needs no display and no C library.
+//
+// It supports and never replaces a licensed veterinarian.
+//
+// Exit codes: 0 done; 1 the data or the answer says no; 2 wrong usage.
+package main
+
+import (
+	"context"
+	"errors"
+	"fmt"
+	"io"
+	"os"
+	"os/signal"
+	"syscall"
+
+	"github.com/alecthomas/kong"
+
+	"cordwalk.example/cordwalk/assets/words"
+	"cordwalk.example/cordwalk/storage"
+)
+
+// version is set by the release build.
+var version = "development"
+
+// Exit codes.
+const (
+	exitDone  = 0
+	exitNo    = 1 // the data or the answer says no
+	exitUsage = 2
+)
+
+// commands is everything that can be said on the command line.
+type commands struct {
+	Store        string           `help:"Folder of the practice." env:"CORDWALK_STORE" placeholder:"DIR"`
+	JSON         bool             `name:"json" help:"Print JSON for programs instead of text for people."`
+	KeyFile      string           `help:"File with the key that opens the practice." placeholder:"FILE"`
+	PassphraseFd int              `name:"passphrase-fd" help:"Read the passphrase from this file descriptor." default:"-1" placeholder:"N"`
+	NoPassphrase bool             `help:"A new practice is made without protection: its key lies beside the data."`
+	Lang         string           `help:"Language of what is printed and of the sheets, such as en." env:"CORDWALK_LANG" placeholder:"TAG"`
+	Version      kong.VersionFlag `help:"Print the version."`
+
+	Init     initCmd     `cmd:"" help:"Make a new practice."`
+	Demo     demoCmd     `cmd:"" help:"Fill a new practice with invented animals, to try things out."`
+	Patients patientsCmd `cmd:"" help:"List all patients, those who need attention first."`
+	Patient  struct {
+		Show patientShowCmd `cmd:"" help:"Show one patient."`
+		Add  patientAddCmd  `cmd:"" help:"Add a patient."`
+		Set  patientSetCmd  `cmd:"" help:"Change what is on file of a patient."`
+		Join patientJoinCmd `cmd:"" help:"Say that two records are one animal."`
+		Part patientPartCmd `cmd:"" help:"Take back that two records are one animal."`
+	} `cmd:"" help:"One patient."`
+	Exam struct {
+		Add    examAddCmd    `cmd:"" help:"Record an exam from a file."`
+		Show   examShowCmd   `cmd:"" help:"Show a visit."`
+		Close  examCloseCmd  `cmd:"" help:"Close a visit; later changes need a reason."`
+		Amend  examAmendCmd  `cmd:"" help:"Change findings of a closed visit, with a reason."`
+		Answer examAnswerCmd `cmd:"" help:"Say who was told of an alert."`
+		Walk   examWalkCmd   `cmd:"" help:"List what a protocol asks of a patient today, in the order of work."`
+	} `cmd:"" help:"Exams."`
+	Compare  compareCmd  `cmd:"" help:"Show what changed between two visits."`
+	Localise localiseCmd `cmd:"" help:"Say which segments, roots or nerves explain an exam file."`
+	Progress progressCmd `cmd:"" help:"Show the course of a patient, or of a file with a series of exams."`
+	Sheet    sheetCmd    `cmd:"" help:"Write the owner's progress sheet as PDF."`
+	History  historyCmd  `cmd:"" help:"Show every change of a patient: who, when, on which device."`
+	Check    checkCmd    `cmd:"" help:"Read every byte of the practice and report what is wrong; repairs nothing."`
+	Rebuild  rebuildCmd  `cmd:"" help:"Make the index anew from the journal."`
+}
+
+// env is what a command runs in.
+type env struct {
+	ctx    context.Context
+	c      *commands
+	out    io.Writer
+	errOut io.Writer
+	in     io.Reader
+}
+
+// usageError is an error of the command line, not of the data.
+type usageError struct{ error }
+
+func usage(format string, args ...any) error { return usageError{fmt.Errorf(format, args...)} }
+
+func main() {
+	storage.ChildMain()
+	ctx, stop := signal.NotifyContext(context.Background(), os.Interrupt, syscall.SIGTERM)
+	code := run(ctx, os.Args[1:], os.Stdin, os.Stdout, os.Stderr)
+	stop()
+	os.Exit(code)
+}
+
+// run is main without the process: it returns the exit code.
+func run(ctx context.Context, args []string, in io.Reader, out, errOut io.Writer) int {
+	var c commands
+	ended := -1
+	parser, err := kong.New(&c,
+		kong.Name("cordwalk-cli"),
+		kong.Description("Neurological exams of dogs and cats in rehabilitation: record, compare, localise, follow. "+
+			"Supports and never replaces a licensed veterinarian."),
+		kong.Vars{"version": version},
+		kong.Writers(out, errOut),
+		kong.Exit(func(code int) { ended = code; panic(exitNow{}) }),
+		kong.ConfigureHelp(kong.HelpOptions{Compact: true, NoExpandSubcommands: true}),
+		kong.UsageOnError(),
+	)
+	if err != nil {
+		fmt.Fprintln(errOut, "cordwalk-cli:", err)
+		return exitUsage
+	}
+	var k *kong.Context
+	err = func() (err error) {
+		defer func() {
+			if r := recover(); r != nil {
+				if _, ok := r.(exitNow); !ok {
+					panic(r)
+				}
+			}
+		}()
+		k, err = parser.Parse(args)
+		return err
+	}()
+	if ended >= 0 {
+		return ended
+	}
+	if err != nil {
+		fmt.Fprintf(errOut, "cordwalk-cli: %s\n", err)
+		fmt.Fprintln(errOut, "Try: cordwalk-cli --help")
+		return exitUsage
+	}
+	if c.Lang != "" {
+		if err := words.Use(c.Lang); err != nil {
+			fmt.Fprintf(errOut, "cordwalk-cli: %s\n", err)
+			return exitUsage
+		}
+		defer func() { _ = words.Use("en") }()
+	}
+	err = k.Run(&env{ctx: ctx, c: &c, out: out, errOut: errOut, in: in})
+	var wrong usageError
+	switch {
+	case err == nil:
+		return exitDone
+	case errors.Is(err, errSaidNo):
+		return exitNo
+	case errors.As(err, &wrong):
+		fmt.Fprintf(errOut, "cordwalk-cli: %s\n", err)
+		return exitUsage
+	case errors.Is(err, context.Canceled):
+		fmt.Fprintln(errOut, "cordwalk-cli: "+words.T("stopped"))
+		return exitNo
+	}
+	fmt.Fprintf(errOut, "cordwalk-cli: %s\n", err)
+	return exitNo
+}
+
+// exitNow unwinds out of kong when it has printed help or the version.
+type exitNow struct{}
+
+// errSaidNo ends a command with exit code 1 after it has said itself what is wrong.
+var errSaidNo = errors.New("no")
