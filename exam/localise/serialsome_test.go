@@ -1,0 +1,41 @@
+package localise
+
+import (
+	"math"
+	"testing"
+
+	"cordwalk.example/cordwalk/exam"
+	"github.com/stretchr/testify/require"
+)
+
+// Weighing some sites gives what weighing all gives, whatever was weighed before.
+func TestWeigherAgreesWithEngine(t *testing.T) {
+	m, err := ModelOf(exam.Dog)
+	require.NoError(t, err)
+	e, w := m.Engine(), m.Weigher()
+	f := func(item exam.Item, site exam.Site, grade int8, how exam.How) exam.Finding {
+		return exam.Finding{Item: item, Site: site, Result: exam.Graded(grade), How: how}
+	}
+	sites := []int{0, 3, 17, 400, len(m.Sites()) - 1}
+	for i, x := range []Exam{
+		{Species: exam.Dog, Findings: []exam.Finding{f(exam.Patellar, exam.PelvicLeft, 0, exam.Examined), f(exam.VoluntaryMotor, exam.PelvicLeft, 1, exam.Examined)}},
+		{Species: exam.Dog, OnsetDays: 3, AgeYears: 12, Findings: []exam.Finding{f(exam.Withdrawal, exam.PelvicLeft, 1, exam.Examined), f(exam.Hopping, exam.PelvicRight, 0, exam.RestNormal), f(exam.Patellar, exam.PelvicRight, 2, exam.RestNormal)}},
+		{Species: exam.Dog, Sedation: exam.SedationModerate, Findings: []exam.Finding{f(exam.Menace, exam.Left, 0, exam.Examined)}},
+		{Species: exam.Dog},
+		{Species: exam.Dog, OnsetDays: 100, Findings: []exam.Finding{f(exam.CutaneousTrunci, exam.Left, 0, exam.Examined)}},
+	} {
+		all, err := e.SiteLogLikelihoods(x, nil)
+		require.NoError(t, err)
+		some, err := w.LogLikelihoods(x, sites, nil)
+		require.NoError(t, err)
+		for k, s := range sites {
+			for g := range GridSize {
+				want, got := all[s*GridSize+g], some[k*GridSize+g]
+				require.False(t, math.IsNaN(got))
+				require.InDelta(t, want, got, 1e-9, "exam %d, site %d, step %d", i, s, g)
+			}
+		}
+	}
+	_, err = w.LogLikelihoods(Exam{Species: exam.Cat}, sites, nil)
+	require.Error(t, err)
+}
