@@ -27,6 +27,7 @@ import (
 	"cordwalk.example/cordwalk/sync/change"
 	"cordwalk.example/cordwalk/sync/key"
 	"cordwalk.example/cordwalk/sync/merge"
+	"cordwalk.example/cordwalk/sync/segment"
 )
 
 const lockFile = "lock"
@@ -69,7 +70,7 @@ func (o Options) withDefaults() Options {
 // Store is an open practice. It is safe for use by several goroutines; writes are put in a
 // row, reads do not wait for the disk of a write.
 //
-// Locks are taken in this order: follow, write, mu.
+// Locks are taken in this order: exch, absorbing, follow, write, mu.
 type Store struct {
 	dir   string
 	o     Options
@@ -97,6 +98,18 @@ type Store struct {
 	behind   int                            // changes that the index does not have yet
 	problems []Problem
 	shut     bool
+
+	absorbing sync.Mutex     // one merge of received entries at a time; taken before follow, write and mu
+	wait      sync.WaitGroup // merges in the background
+	stop      chan struct{}  // they are to end
+	stopOnce  sync.Once
+
+	exch  sync.Mutex // guards the fields below; taken before all others
+	recv  map[change.Stream]*receiver
+	heads map[change.Stream][]segment.Signed
+	sums  []segment.Sum
+
+	lateNow map[change.Stream]bool // guarded by mu: streams of which something came late
 
 	wake chan struct{} // something is behind
 	full chan struct{} // much is behind
@@ -250,7 +263,8 @@ func start(dir string, o Options, lock disk.Unlocker, id identity, bag key.Bag, 
 	s := &Store{
 		dir: dir, o: o, fs: o.Files, id: id, bag: bag, seals: newSeals(bag.Ring), lock: lock,
 		overlay: map[exam.ID]map[recordKey]*record{}, changed: map[exam.ID]map[recordKey]bool{}, lastOwn: map[exam.ID]uint64{},
-		problems: damage, wake: make(chan struct{}, 1), full: make(chan struct{}, 1), quit: make(chan struct{}), done: make(chan struct{}),
+		problems: damage, recv: map[change.Stream]*receiver{}, heads: map[change.Stream][]segment.Signed{}, lateNow: map[change.Stream]bool{}, stop: make(chan struct{}),
+		wake: make(chan struct{}, 1), full: make(chan struct{}, 1), quit: make(chan struct{}), done: make(chan struct{}),
 	}
 	if err := s.fs.MakeDir(filepath.Join(dir, journalDir)); err != nil {
 		return nil, err
@@ -446,6 +460,7 @@ func (s *Store) onIndex(f func(x *index, tx *bbolt.Tx) error) error {
 // Close waits for the index to follow and gives the lock back. What was applied is safe
 // whatever Close returns.
 func (s *Store) Close() error {
+	s.stopExchange()
 	s.write.Lock()
 	s.mu.Lock()
 	if s.shut {

@@ -15,6 +15,7 @@ import (
 	"cordwalk.example/cordwalk/storage/disk"
 	"cordwalk.example/cordwalk/sync/change"
 	"cordwalk.example/cordwalk/sync/merge"
+	"cordwalk.example/cordwalk/sync/segment"
 )
 
 // streamState says what of a stream has been taken in.
@@ -29,6 +30,8 @@ type streamState struct {
 	Began   change.HLC    `cbor:"8,keyasint"` // time of the first change that was read
 	Ended   change.HLC    `cbor:"9,keyasint"` // time of the last change that was read
 	Holes   []hole        `cbor:"10,keyasint"`
+	Of      change.Stream `cbor:"11,keyasint,omitzero"` // of the frames, where this is the second branch of a fork
+	Late    bool          `cbor:"12,keyasint,omitzero"` // some frames stand behind later ones
 }
 
 // hole says between which times the missing numbers of a stream were written.
@@ -62,6 +65,9 @@ func (st *streamState) has(first, last uint64) bool {
 
 // take notes a frame that was read and opened.
 func (st *streamState) take(h change.Header, hash change.Hash, began, ended change.HLC) {
+	if h.First <= st.Head {
+		st.Late = true
+	}
 	if h.First > st.Head+1 {
 		st.Holes = append(st.Holes, hole{st.Head + 1, h.First - 1, st.Ended, began})
 	}
@@ -338,7 +344,7 @@ func (fl *follower) piece(p piece, st *streamState) (b change.Batch, news bool, 
 			st.miss(h.Last, change.Hash{})
 		}
 		return b, false, "this is no readable entry: " + p.Damage.Error()
-	case p.Frame.Stream != p.seg.stream:
+	case p.Frame.Stream != p.seg.stream && !st.branch(p.Frame):
 		return b, false, "an entry of another stream stands here"
 	case st.has(p.Frame.First, p.Frame.Last):
 		return b, false, "" // written again after an error
@@ -361,7 +367,27 @@ func (fl *follower) piece(p piece, st *streamState) (b change.Batch, news bool, 
 		began, ended = min(began, c.Time), max(ended, c.Time)
 	}
 	st.take(p.Frame.Header, o.hash, began, ended)
+	if b.Stream != p.seg.stream { // the second branch of a fork goes under its own name
+		b.Stream = p.seg.stream
+		for i := range b.Changes {
+			b.Changes[i].Stream = p.seg.stream
+		}
+	}
 	return b, true, what
+}
+
+// branch reports whether a frame belongs to the second branch of a fork that is kept under st's
+// name. Its first frame proves it: the name is made of it. The numbers before it are those
+// that both branches share.
+func (st *streamState) branch(f change.Frame) bool {
+	if st.Of == (change.Stream{}) && len(st.Spans) == 0 && segment.ForkOf(f.Stream, f.Hash()) == st.Stream {
+		st.Of = f.Stream
+		if f.First > 1 {
+			st.Spans = []merge.Span{{First: 1, Last: f.First - 1}}
+		}
+		st.Head, st.Last = f.First-1, f.Prev
+	}
+	return st.Of == f.Stream
 }
 
 // opened is what opening a frame gave.

@@ -5,6 +5,7 @@ import (
 	"context"
 	"errors"
 	"fmt"
+	"os"
 	"path/filepath"
 	"slices"
 	"testing"
@@ -232,4 +233,11 @@ func (m *memory) sync(folder string) carry.Report {
 // inside returns a path in the practice's folder.
 func inside(folder string, parts ...string) string {
 	return filepath.Join(append([]string{folder, carry.FolderName(practice)}, parts...)...)
+}
+
+type keyVerifier = key.Verifier
+
+// copyFolder copies a store as a person or a backup program would.
+func copyFolder(t testing.TB, from, to string) {
+	require.NoError(t, os.CopyFS(to, os.DirFS(from)))
 }
