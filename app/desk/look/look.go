@@ -8,6 +8,8 @@ package look
 
 import (
 	"image/color"
+	"os"
+	"runtime"
 	"strings"
 
 	"fyne.io/fyne/v2"
@@ -103,10 +105,16 @@ func (t Theme) resolve(v fyne.ThemeVariant) Mode {
 	switch {
 	case t.Mode != System:
 		return t.Mode
-	case v == theme.VariantDark:
+	case v == theme.VariantDark && systemSays():
 		return Dark
 	}
 	return Light
+}
+
+// systemSays reports whether the desktop can say light or dark. On Linux it says so over the
+// session bus; without one the toolkit's guess is dark, and paper is light.
+func systemSays() bool {
+	return runtime.GOOS != "linux" || os.Getenv("DBUS_SESSION_BUS_ADDRESS") != "" || os.Getenv("FYNE_THEME") != ""
 }
 
 // standard maps the toolkit's colour names to tokens.
@@ -133,7 +141,7 @@ func (t Theme) Color(name fyne.ThemeColorName, v fyne.ThemeVariant) color.Color 
 		return c
 	}
 	if name == theme.ColorNameShadow {
-		return color.NRGBA{0, 0, 0, 60}
+		return color.NRGBA{0, 0, 0, 24}
 	}
 	return p[Ink]
 }
@@ -205,6 +213,8 @@ func (t Theme) Size(n fyne.ThemeSizeName) float32 {
 	case theme.SizeNameInputRadius, theme.SizeNameSelectionRadius, theme.SizeNameButtonRadius,
 		theme.SizeNamePopupRadius, theme.SizeNameMenuRadius, theme.SizeNameDialogRadius, theme.SizeNameCardRadius:
 		return 4
+	case theme.SizeNameInputBorder:
+		return 2
 	case theme.SizeNameScrollBar:
 		return 12
 	case theme.SizeNameScrollBarSmall:

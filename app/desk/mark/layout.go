@@ -30,6 +30,9 @@ func HeightFor(o fyne.CanvasObject, width float32) float32 {
 		if f, ok := c.Layout.(flowLayout); ok {
 			return f.heightFor(c.Objects, width)
 		}
+		if f, ok := c.Layout.(Flow); ok {
+			return f.HeightFor(width)
+		}
 	}
 	return o.MinSize().Height
 }
@@ -646,3 +649,9 @@ func (s *Scroll) Resize(size fyne.Size) {
 
 // CreateRenderer shows the scroll.
 func (s *Scroll) CreateRenderer() fyne.WidgetRenderer { return widget.NewSimpleRenderer(s.scroll) }
+
+// By scrolls down by a distance, up where it is negative.
+func (s *Scroll) By(d float32) {
+	most := max(0, s.inner.Size().Height-s.scroll.Size().Height)
+	s.scroll.ScrollToOffset(fyne.NewPos(0, max(0, min(most, s.scroll.Offset.Y+d))))
+}

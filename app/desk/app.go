@@ -1,0 +1,282 @@
+// Package desk is the desktop program: its windows and screens. It draws what the
+// view-models of app/view say and hands them the keys; it holds no rules of the trade.
+//
+// Everything here runs on the drawing goroutine, except what is given to App.work.
+package desk
+
+import (
+	"context"
+	"errors"
+	"fmt"
+	"sync"
+	"time"
+
+	"fyne.io/fyne/v2"
+
+	"cordwalk.example/cordwalk/app/desk/look"
+	"cordwalk.example/cordwalk/app/desk/mark"
+	"cordwalk.example/cordwalk/app/view"
+	"cordwalk.example/cordwalk/assets/words"
+	"cordwalk.example/cordwalk/exam"
+)
+
+// App is the running program.
+type App struct {
+	fyne     fyne.App
+	settings view.Settings
+	path     string // of the settings
+	now      func() time.Time
+	opener   Opener
+
+	records  Records
+	practice exam.Practice
+	saver    *view.Saver
+	examiner string
+
+	windows     []*window
+	lastPatient exam.ID
+	caseload    *view.Caseload // the newest, shown at once while a newer one is read
+
+	ctx    context.Context
+	cancel context.CancelFunc
+	busy   sync.WaitGroup
+}
+
+// Opener opens and makes stores. It is given by the program's entry, so that this package
+// knows no files.
+type Opener interface {
+	// Exists reports whether a store lies in the folder, and whether a passphrase opens it.
+	Exists(dir string) (exists, locked bool)
+	// Open opens the store; progress may be called from any goroutine.
+	Open(dir string, passphrase []byte, progress func(what string, done, total int64), notice func(string)) (Records, error)
+	// Create makes a store with a practice; an empty passphrase leaves the key in the store.
+	Create(dir string, passphrase []byte, p exam.Practice, examiner string) (Records, error)
+	// Demo makes the demo practice in a folder and opens it.
+	Demo(dir string, progress func(what string, done, total int64)) (Records, error)
+	// DefaultDir is where a practice lies unless somebody says otherwise, and DemoDir where the demo lies.
+	DefaultDir() string
+	DemoDir() string
+}
+
+// New returns the program over a Fyne app.
+func New(f fyne.App, o Opener, settings view.Settings, settingsPath string, now func() time.Time) *App {
+	if now == nil {
+		now = time.Now
+	}
+	ctx, cancel := context.WithCancel(context.Background())
+	a := &App{fyne: f, opener: o, settings: settings, path: settingsPath, now: now, ctx: ctx, cancel: cancel}
+	a.theme()
+	return a
+}
+
+func (a *App) theme() {
+	scale := float32(a.settings.TextScale) / 100
+	if scale == 0 {
+		scale = 1
+	}
+	mode := look.Mode(a.settings.Theme)
+	a.fyne.Settings().SetTheme(look.New(mode, scale))
+}
+
+// Start opens the first window: the store named, the one opened last, or the first start.
+func (a *App) Start(dir string) {
+	w := newWindow(a)
+	a.windows = append(a.windows, w)
+	if dir == "" {
+		dir = a.settings.Store
+	}
+	if dir == "" {
+		dir = a.opener.DefaultDir()
+	}
+	exists, locked := a.opener.Exists(dir)
+	switch {
+	case !exists:
+		w.bare(newFirstRunPage(w, dir))
+	case locked:
+		w.bare(newUnlockPage(w, dir))
+	default:
+		a.open(w, dir, nil)
+	}
+	w.win.Show()
+}
+
+// StartDemo opens the first window on the demo practice, made in the folder if it is not there;
+// the empty folder is the usual place of the demo.
+func (a *App) StartDemo(dir string) {
+	if dir == "" {
+		dir = a.opener.DemoDir()
+	}
+	w := newWindow(a)
+	a.windows = append(a.windows, w)
+	a.demo(w, dir, func(err error) { w.bare(newFailedPage(w, dir, err)) })
+	w.win.Show()
+}
+
+// demo makes or opens the demo practice off the drawing goroutine.
+func (a *App) demo(w *window, dir string, failed func(error)) {
+	o := newOpeningPage(words.T("Making the demo practice"))
+	w.bare(o)
+	a.work(func(context.Context) (func(), error) {
+		r, err := a.opener.Demo(dir, o.progress)
+		if err != nil {
+			return nil, err
+		}
+		practice, err := r.Practice()
+		if err != nil {
+			return nil, errors.Join(err, r.Close())
+		}
+		return func() { a.use(w, r, practice, dir) }, nil
+	}, failed)
+}
+
+// Run draws until the last window is closed.
+func (a *App) Run() { a.fyne.Run() }
+
+// open opens a store off the drawing goroutine and shows the caseload.
+func (a *App) open(w *window, dir string, passphrase []byte) {
+	p := newOpeningPage(words.T("Opening the practice in %s", dir))
+	w.bare(p)
+	a.work(func(context.Context) (func(), error) {
+		r, err := a.opener.Open(dir, passphrase, p.progress, func(s string) { fyne.Do(func() { w.foot.say(s) }) })
+		if err != nil {
+			return nil, err
+		}
+		practice, err := r.Practice()
+		if err != nil {
+			return nil, errors.Join(err, r.Close())
+		}
+		return func() { a.use(w, r, practice, dir) }, nil
+	}, func(err error) {
+		_, locked := a.opener.Exists(dir)
+		if locked {
+			u := newUnlockPage(w, dir)
+			w.bare(u)
+			u.wrong(err)
+			return
+		}
+		w.bare(newFailedPage(w, dir, err))
+	})
+}
+
+// use goes on with an open store.
+func (a *App) use(w *window, r Records, p exam.Practice, dir string) {
+	a.records, a.practice = r, p
+	a.settings.Store = dir
+	a.examiner = ""
+	for _, e := range p.Examiners {
+		if e.Name == a.settings.Examiner {
+			a.examiner = e.Name
+		}
+	}
+	if a.examiner == "" && len(p.Examiners) > 0 {
+		a.examiner = p.Examiners[0].Name
+	}
+	a.saver = view.NewSaver(fyne.Do, func(s view.SaveState) {
+		for _, w := range a.windows {
+			w.saved(s)
+		}
+	})
+	a.keepSettings()
+	w.dressed()
+	if route, err := view.ParseRoute(a.settings.Route); err == nil {
+		a.lastPatient = route.Patient
+	}
+	w.goTo(view.Route{Screen: view.ScreenCaseload})
+}
+
+// work runs something slow on its own goroutine and hands what it returns back to the
+// drawing goroutine; an error goes to failed.
+func (a *App) work(do func(ctx context.Context) (func(), error), failed func(error)) {
+	a.busy.Add(1)
+	go func() {
+		defer a.busy.Done()
+		then, err := do(a.ctx)
+		fyne.Do(func() {
+			if err != nil {
+				failed(err)
+				return
+			}
+			if then != nil {
+				then()
+			}
+		})
+	}()
+}
+
+// save queues one write; errors of the disk are shown where the screen says saved.
+func (a *App) save(w *window, write view.Write) {
+	if _, err := a.saver.Queue(write); err != nil {
+		w.fail(words.T("This entry was not taken."), err)
+	}
+}
+
+// another opens a second window on a route.
+func (a *App) another(r view.Route) {
+	if a.records == nil {
+		return
+	}
+	w := newWindow(a)
+	a.windows = append(a.windows, w)
+	w.dressed()
+	w.win.Show()
+	w.goTo(r)
+}
+
+// closed lets go of a window; the last one ends the program.
+func (a *App) closed(w *window) {
+	for i, x := range a.windows {
+		if x == w {
+			a.windows = append(a.windows[:i], a.windows[i+1:]...)
+			break
+		}
+	}
+	if len(a.windows) == 0 {
+		a.keepSettings()
+		if a.saver != nil {
+			ctx, end := context.WithTimeout(context.Background(), closeWait)
+			_ = a.saver.Close(ctx)
+			end()
+		}
+		a.cancel()
+	}
+	mark.ForgetTips(w.win.Canvas())
+	w.win.SetCloseIntercept(nil)
+	w.win.Close()
+}
+
+// Done waits for work under way and closes the store; it is called after the windows are gone.
+func (a *App) Done() error {
+	a.cancel()
+	a.busy.Wait()
+	if a.records == nil {
+		return nil
+	}
+	if err := a.records.Close(); err != nil {
+		return fmt.Errorf("closing the practice: %w", err)
+	}
+	return nil
+}
+
+func (a *App) windowSize() fyne.Size {
+	if a.settings.Width >= 600 && a.settings.Height >= 400 {
+		return fyne.NewSize(float32(a.settings.Width), float32(a.settings.Height))
+	}
+	return fyne.NewSize(1280, 800)
+}
+
+func (a *App) rememberWindow(w *window) {
+	s := w.win.Canvas().Size()
+	a.settings.Width, a.settings.Height = int(s.Width), int(s.Height)
+	a.settings.Route = w.here().String()
+	a.keepSettings()
+}
+
+// keepSettings writes the settings; a failure is told, nothing of the record depends on it.
+func (a *App) keepSettings() {
+	if a.path == "" {
+		return
+	}
+	if err := a.settings.Save(a.path); err != nil && len(a.windows) > 0 {
+		a.windows[0].fail(words.T("The settings could not be kept."), err)
+	}
+}

@@ -1,0 +1,377 @@
+package desk
+
+import (
+	"bytes"
+	"context"
+	"image/png"
+	"os"
+	"path/filepath"
+	"strings"
+	"time"
+
+	"fyne.io/fyne/v2"
+	"gonum.org/v1/plot/vg"
+	vgdraw "gonum.org/v1/plot/vg/draw"
+	"gonum.org/v1/plot/vg/vgsvg"
+
+	"cordwalk.example/cordwalk/app/chart"
+	"cordwalk.example/cordwalk/app/desk/look"
+	"cordwalk.example/cordwalk/app/desk/mark"
+	"cordwalk.example/cordwalk/app/view"
+	"cordwalk.example/cordwalk/assets/words"
+)
+
+// coursePage answers: is it getting better, and where?
+type coursePage struct {
+	win    *window
+	file   File
+	course *view.Course
+	root   fyne.CanvasObject
+	body   *mark.Scroll
+	weeks  int // 0: all
+	back   int // weeks between the right end and the last visit
+	at     int // visit shown on the body drawing
+	stop   chan struct{}
+	strip  *chartHost
+	limbs  *chartHost
+	meas   *chartHost
+	animal *mark.LimbCross
+	day    *mark.Text
+	zooms  []*mark.Button
+}
+
+func newCoursePage(w *window) *coursePage {
+	p := &coursePage{win: w, file: w.file}
+	p.course = view.NewCourse(p.file.Patient, p.file.Visits, view.PlainScores(p.file.Patient.Species, p.file.Visits), false)
+	p.at = len(p.course.Visits) - 1
+	p.build()
+	return p
+}
+
+func (p *coursePage) content() fyne.CanvasObject { return p.root }
+func (p *coursePage) shown()                     { p.win.win.Canvas().Unfocus() }
+func (p *coursePage) left()                      { p.halt() }
+
+func (p *coursePage) help() []view.KeyHelp {
+	return []view.KeyHelp{
+		{Keys: "+ −", Does: words.T("nearer in time, farther")},
+		{Keys: words.T("Left, Right"), Does: words.T("earlier, later")},
+		{Keys: "0", Does: words.T("the whole course")},
+		{Keys: words.T("space"), Does: words.T("play the visits on the drawing")},
+		{Keys: "[ ]", Does: words.T("the visit before, the visit after")},
+	}
+}
+
+func (p *coursePage) build() {
+	if len(p.course.Visits) == 0 {
+		p.root = mark.Pad(look.Unit*3, look.Unit*3, mark.Column(look.Unit*2, mark.Title(words.T("Course")).AtLeast(80),
+			mark.NewPara(words.T("There is no visit yet. Each exam adds a column here.")),
+			mark.Left(mark.NewButton(words.T("Start exam"), "exam", func() { p.win.to(view.ScreenExam) }).As(mark.Main))))
+		return
+	}
+	zoom := func(word string, weeks int) *mark.Button {
+		b := mark.NewButton(word, "", func() { p.weeks, p.back = weeks, 0; p.span() })
+		p.zooms = append(p.zooms, b)
+		return b
+	}
+	bar := mark.Row(look.Unit, []float32{1}, mark.Title(words.T("Course")).AtLeast(80),
+		zoom(words.T("All"), 0), zoom(words.T("12 weeks"), 12), zoom(words.T("4 weeks"), 4),
+		mark.NewButton("", "left", func() { p.pan(1) }).WithTip(words.T("Earlier")),
+		mark.NewButton("", "right", func() { p.pan(-1) }).WithTip(words.T("Later")),
+		mark.NewButton(words.T("Save picture"), "save", p.askSave))
+	p.strip = newChartHost(p.course.Strip, fyne.NewSize(400, 460*max(1, look.Scale())))
+	p.strip.hover = func(x, y, w, h vg.Length, st chart.Style) string {
+		hit, ok := p.course.Strip.Hit(w, h, x, y, st)
+		if !ok {
+			return ""
+		}
+		if hit.Event >= 0 {
+			return hoverWords(p.course.HoverEvent(hit.Event))
+		}
+		return hoverWords(p.course.HoverSegment(hit.Row, hit.Visit, hit.Side))
+	}
+	p.limbs = newChartHost(p.course.Limbs, fyne.NewSize(400, 330*max(1, look.Scale())))
+	p.limbs.hover = func(x, y, w, h vg.Length, st chart.Style) string {
+		hit, ok := p.course.Limbs.Hit(w, h, x, y, st)
+		if !ok {
+			return ""
+		}
+		if hit.Event >= 0 {
+			return hoverWords(p.course.HoverEvent(hit.Event))
+		}
+		return hoverWords(p.course.HoverLimb(hit.Series, hit.Visit))
+	}
+	lines := []fyne.CanvasObject{
+		mark.Heading(words.T("Segments: the share of normal in what was tested")).AtLeast(80),
+		mark.NewPara(words.T("Each segment has a line for its left and its right half. The shade is the mean health of the tested findings whose arc runs through it; where too little was tested it is left empty.")).In(look.InkSoft),
+		p.strip,
+		mark.Heading(words.T("Limbs: voluntary movement")).AtLeast(80), p.limbs,
+	}
+	if n := len(p.course.Measure.Series); n > 0 {
+		p.meas = newChartHost(p.course.Measure, fyne.NewSize(400, (float32(n)*84+50)*max(1, look.Scale())))
+		p.meas.hover = func(x, y, w, h vg.Length, st chart.Style) string {
+			hit, ok := p.course.Measure.Hit(w, h, x, y, st)
+			if !ok || hit.Visit < 0 || hit.Series < 0 || hit.Series >= len(p.course.Measure.Series) {
+				return ""
+			}
+			s := p.course.Measure.Series[hit.Series]
+			if hit.Visit >= len(s.Values) || !s.Values[hit.Visit].Known {
+				return ""
+			}
+			return s.Label + ", " + view.Day(p.course.Visits[hit.Visit].Examined) + "\n" + strings.TrimSpace(plainNumber(s.Values[hit.Visit].Value)+" "+s.Unit)
+		}
+		lines = append(lines, mark.Heading(words.T("Measures")).AtLeast(80), p.meas)
+	}
+	p.body = mark.NewScroll(mark.Column(look.Unit, lines...))
+	p.animal = mark.NewBody(view.CrossOf(p.course.Visits[p.at]), p.file.Patient.Species, 300)
+	p.day = mark.Bold("").Centred().AtLeast(60)
+	play := mark.NewButton(words.T("Play"), "play", p.play)
+	side := mark.Column(look.Unit, center(p.animal), p.day,
+		mark.Row(look.Unit, []float32{1, 0, 1}, mark.NewButton("", "left", func() { p.step(-1) }), play, mark.NewButton("", "right", func() { p.step(1) })),
+		mark.Space(1, look.Unit))
+	for _, g := range p.file.Patient.Goals {
+		side.Add(mark.NewPara(words.T("Goal: %s", g.Words)))
+	}
+	for _, m := range p.file.Missing {
+		side.Add(cautionLine(words.Of(m)))
+	}
+	split := mark.RowTop(look.Unit*2, []float32{1, 0}, p.body, mark.Sized(196, 10, mark.NewScroll(side)))
+	p.root = mark.Pad(look.Unit*1.5, look.Unit*2, mark.ColumnGrow(look.Unit, 1, bar, split))
+	p.span()
+	p.step(0)
+}
+
+func hoverWords(h view.Hover) string {
+	return strings.Join(append([]string{h.Title}, h.Lines...), "\n")
+}
+
+func (p *coursePage) typedRune(r rune) bool {
+	switch r {
+	case '+', '=':
+		switch {
+		case p.weeks == 0:
+			p.weeks = 12
+		case p.weeks > 2:
+			p.weeks = max(2, p.weeks/2)
+		}
+		p.span()
+	case '-', '−':
+		if p.weeks > 0 {
+			p.weeks *= 2
+		}
+		if p.weeks > 104 {
+			p.weeks = 0
+		}
+		p.span()
+	case '0':
+		p.weeks, p.back = 0, 0
+		p.span()
+	case ' ':
+		p.play()
+	case '[':
+		p.step(-1)
+	case ']':
+		p.step(1)
+	default:
+		return false
+	}
+	return true
+}
+
+func (p *coursePage) typedKey(k fyne.KeyName) bool {
+	if p.body == nil {
+		return false
+	}
+	switch k {
+	case fyne.KeyLeft:
+		p.pan(1)
+	case fyne.KeyRight:
+		p.pan(-1)
+	case fyne.KeyDown:
+		p.body.By(80)
+	case fyne.KeyUp:
+		p.body.By(-80)
+	case fyne.KeyPageDown:
+		p.body.By(400)
+	case fyne.KeyPageUp:
+		p.body.By(-400)
+	default:
+		return false
+	}
+	return true
+}
+
+func (p *coursePage) pan(d int) {
+	if p.weeks == 0 {
+		return
+	}
+	p.back = max(0, p.back+d*max(1, p.weeks/4))
+	p.span()
+}
+
+// span shows a stretch of time on every chart.
+func (p *coursePage) span() {
+	if len(p.course.Visits) == 0 {
+		return
+	}
+	s := p.course.Span
+	if p.weeks > 0 {
+		end := p.course.Visits[len(p.course.Visits)-1].Examined.AddDate(0, 0, 2-7*p.back)
+		s.From, s.To = end.AddDate(0, 0, -7*p.weeks), end
+	}
+	strip, limbs, meas := p.course.Strip, p.course.Limbs, p.course.Measure
+	strip.Span, limbs.Span, meas.Span = s, s, s
+	p.strip.set(strip)
+	p.limbs.set(limbs)
+	if p.meas != nil {
+		p.meas.set(meas)
+	}
+	for i, b := range p.zooms {
+		b.SetChosen([]int{0, 12, 4}[i] == p.weeks)
+	}
+}
+
+// step shows another visit on the drawing.
+func (p *coursePage) step(d int) {
+	p.at = max(0, min(len(p.course.Visits)-1, p.at+d))
+	v := p.course.Visits[p.at]
+	p.animal.Set(view.CrossOf(v))
+	p.day.Set(view.Day(v.Examined))
+}
+
+// play shows the visits one after another on the drawing.
+func (p *coursePage) play() {
+	if p.stop != nil {
+		p.halt()
+		return
+	}
+	stop := make(chan struct{})
+	p.stop = stop
+	p.at = 0
+	p.step(0)
+	go func() {
+		tick := time.NewTicker(700 * time.Millisecond)
+		defer tick.Stop()
+		for {
+			select {
+			case <-stop:
+				return
+			case <-p.win.app.ctx.Done():
+				return
+			case <-tick.C:
+				fyne.Do(func() {
+					if p.stop != stop {
+						return
+					}
+					if p.at+1 >= len(p.course.Visits) {
+						p.halt()
+						return
+					}
+					p.step(1)
+				})
+			}
+		}
+	}()
+}
+
+func (p *coursePage) halt() {
+	if p.stop != nil {
+		close(p.stop)
+		p.stop = nil
+	}
+}
+
+// askSave asks where a picture of the course goes: PNG, SVG or PDF by its ending.
+func (p *coursePage) askSave() {
+	name := fileWord(p.file.Patient.Name) + "-course.png"
+	p.win.askFile(words.T("Save the picture of the course"), name, words.T("The ending says how: .png, .svg or .pdf"), func(path string) error {
+		return saveCourse(path, p.course.Strip, p.course.Limbs)
+	})
+}
+
+// saveCourse writes the strip and the limbs, one above the other, as ink on white paper.
+func saveCourse(path string, strip chart.Strip, limbs chart.Limbs) error {
+	st := chart.Screen(chart.Print())
+	const w, h1, h2 = 1000, 560, 380
+	both := stackedCharts{strip, limbs, h2}
+	switch strings.ToLower(filepath.Ext(path)) {
+	case ".svg":
+		c := vgsvg.New(w, h1+h2)
+		both.Draw(vgdraw.New(c), st)
+		var b bytes.Buffer
+		if _, err := c.WriteTo(&b); err != nil {
+			return err
+		}
+		return os.WriteFile(path, b.Bytes(), 0o600)
+	case ".pdf":
+		return savePDF(path, w, h1+h2, both, st)
+	}
+	var b bytes.Buffer
+	if err := png.Encode(&b, renderChart(both, st, w*2, (h1+h2)*2, 2)); err != nil {
+		return err
+	}
+	return os.WriteFile(path, b.Bytes(), 0o600)
+}
+
+// stackedCharts draws one chart above another.
+type stackedCharts struct {
+	upper, lower drawable
+	low          vg.Length
+}
+
+// Draw draws both.
+func (s stackedCharts) Draw(c vgdraw.Canvas, st chart.Style) {
+	up, down := c, c
+	up.Rectangle.Min.Y += s.low
+	down.Rectangle.Max.Y = down.Rectangle.Min.Y + s.low
+	s.upper.Draw(up, st)
+	s.lower.Draw(down, st)
+}
+
+// fileWord makes a name fit for a file.
+func fileWord(name string) string {
+	var b strings.Builder
+	for _, r := range strings.ToLower(name) {
+		switch {
+		case r >= 'a' && r <= 'z', r >= '0' && r <= '9':
+			b.WriteRune(r)
+		case b.Len() > 0 && !strings.HasSuffix(b.String(), "-"):
+			b.WriteByte('-')
+		}
+	}
+	s := strings.Trim(b.String(), "-")
+	if s == "" {
+		s = "animal"
+	}
+	return s
+}
+
+// askFile asks for the place of a file and writes it off the drawing goroutine.
+func (w *window) askFile(title, name, hint string, write func(path string) error) {
+	dir, err := os.UserHomeDir()
+	if err == nil {
+		if d := filepath.Join(dir, "Documents"); isDir(d) {
+			dir = d
+		}
+	}
+	f := mark.NewField(filepath.Join(dir, name), nil)
+	wrong := mark.NewPara("").In(look.Worse)
+	do := func() {
+		path := strings.TrimSpace(f.Text)
+		if path == "" {
+			return
+		}
+		w.app.work(func(context.Context) (func(), error) {
+			return func() { w.hideSheet(); w.foot.say(words.T("Saved as %s", path)) }, write(path)
+		}, func(err error) { wrong.Set(words.T("It could not be written: %s", err.Error())) })
+	}
+	f.OnSubmitted = func(string) { do() }
+	w.showSheet(title, mark.Column(look.Unit, mark.NewLabelled(words.T("File"), f), mark.NewPara(hint).In(look.InkSoft), wrong), 640,
+		mark.NewButton(words.T("Save"), "save", do).As(mark.Main))
+	w.win.Canvas().Focus(f)
+}
+
+func isDir(path string) bool {
+	s, err := os.Stat(path)
+	return err == nil && s.IsDir()
+}

@@ -1,0 +1,359 @@
+package desk
+
+import (
+	"context"
+	"errors"
+	"math"
+	"strconv"
+
+	"fyne.io/fyne/v2"
+	"fyne.io/fyne/v2/canvas"
+	"fyne.io/fyne/v2/widget"
+	"gonum.org/v1/plot/vg"
+
+	"cordwalk.example/cordwalk/app/chart"
+	"cordwalk.example/cordwalk/app/desk/look"
+	"cordwalk.example/cordwalk/app/desk/mark"
+	"cordwalk.example/cordwalk/app/view"
+	"cordwalk.example/cordwalk/assets/drawing"
+	"cordwalk.example/cordwalk/assets/words"
+	"cordwalk.example/cordwalk/exam"
+	"cordwalk.example/cordwalk/exam/anatomy"
+	"cordwalk.example/cordwalk/exam/localise"
+)
+
+// examSide is the right part of the exam: alerts, the cord map, the likely site with what
+// speaks for and against it, and the next test.
+type examSide struct {
+	widget.BaseWidget
+	page *examPage
+
+	alerts *fyne.Container
+	head   *mark.Button
+	host   *chartHost
+	note   *mark.Para
+	likely *mark.Para
+	pro    *mark.Para
+	con    *mark.Para
+	nextB  *mark.Button
+	warn   *mark.Para
+	box    *fyne.Container
+	lines  *fyne.Container
+
+	ask    *view.Newest[localise.Exam, *localise.Result]
+	result *localise.Result
+	opened bool // somebody asked for the map
+	shut   bool // somebody closed it again
+	kg     float64
+}
+
+func newExamSide(p *examPage) *examSide {
+	s := &examSide{page: p, alerts: mark.Column(look.Unit), likely: mark.NewPara("").Strong(), pro: mark.NewPara(""), con: mark.NewPara(""), warn: mark.NewPara("").In(look.InkSoft).As(look.Small)}
+	s.head = mark.NewButton(words.T("Cord map"), "down", s.toggle).As(mark.Quiet).WithTip(words.T("Key m"))
+	s.head.Side = true
+	s.host = newChartHost(nil, fyne.NewSize(200, 200))
+	s.host.hover = s.hover
+	s.note = mark.NewPara("").In(look.InkSoft)
+	s.nextB = mark.NewButton("", "right", p.goNext)
+	s.nextB.Side = true
+	s.lines = mark.Column(6, s.likely, s.pro, s.con, s.nextB, s.warn)
+	s.box = mark.ColumnGrow(look.Unit, 3, s.alerts, s.head, s.note, s.host, s.lines)
+	for _, w := range p.file.Patient.Weights {
+		s.kg = w.Kg
+	}
+	if m, ok := p.sheet.Visit().Measured(exam.Weight, exam.NoSite); ok {
+		s.kg = m.Value
+	}
+	var engine *localise.Engine
+	species := p.file.Patient.Species
+	s.ask = view.NewNewest(fyne.Do, func(_ context.Context, x localise.Exam) (*localise.Result, error) {
+		if engine == nil {
+			e, err := localise.New(species)
+			if err != nil {
+				return nil, err
+			}
+			engine = e
+		}
+		r, err := engine.Compute(x)
+		if err != nil {
+			return nil, err
+		}
+		return r.Clone(), nil
+	}, s.answered)
+	s.ExtendBaseWidget(s)
+	return s
+}
+
+func (s *examSide) CreateRenderer() fyne.WidgetRenderer {
+	return widget.NewSimpleRenderer(mark.Pad(look.Unit, look.Unit*2, s.box))
+}
+
+// close ends the reckoning.
+func (s *examSide) close() { go s.ask.Close() }
+
+func (s *examSide) open() bool {
+	return !s.shut && (s.opened || s.page.sheet.MapOpen() || s.page.sheet.Closed())
+}
+
+// toggle opens or closes the map on request.
+func (s *examSide) toggle() {
+	if s.open() {
+		s.shut, s.opened = true, false
+	} else {
+		s.shut, s.opened = false, true
+	}
+	s.update()
+}
+
+// update asks for the likely site of what is entered now.
+func (s *examSide) update() {
+	sheet := s.page.sheet
+	s.ask.Ask(localise.OfVisit(sheet.Patient(), sheet.Visit()))
+	s.show()
+}
+
+func (s *examSide) answered(r *localise.Result, err error) {
+	if err != nil {
+		var no *localise.Unsupported
+		if errors.As(err, &no) {
+			s.note.Words = words.T("There are no published data to localise in this species.")
+		} else {
+			s.note.Words = err.Error()
+		}
+		s.result = nil
+		s.show()
+		return
+	}
+	s.result = r
+	s.show()
+}
+
+func (s *examSide) show() {
+	open := s.open()
+	s.head.IconName = "down"
+	if open {
+		s.head.IconName = "up"
+	}
+	s.head.Refresh()
+	s.showAlerts()
+	if !open {
+		s.host.Hide()
+		s.lines.Hide()
+		s.note.Words = words.T("Closed until half of the walk is done: a map seen early bends what is found late. Key m opens it.")
+		s.note.Show()
+		s.box.Refresh()
+		return
+	}
+	s.lines.Show()
+	r := s.result
+	if r == nil {
+		s.host.Hide()
+		s.note.Show()
+		if s.note.Words == "" {
+			s.note.Words = words.T("Working out the likely site…")
+		}
+		s.likely.Words, s.pro.Words, s.con.Words, s.warn.Words = "", "", "", ""
+		s.nextB.Hide()
+		s.box.Refresh()
+		return
+	}
+	s.note.Hide()
+	s.host.Show()
+	s.host.set(cordMapOf(s.page.file.Patient.Species, s.kg, r))
+	s.likely.Words = words.Of(r.Summary)
+	s.pro.Words, s.con.Words = "", ""
+	if f, ok := strongest(r, 1); ok {
+		s.pro.Words = words.T("For: %s", f)
+	}
+	if f, ok := strongest(r, -1); ok {
+		s.con.Words = words.T("Against: %s", f)
+	}
+	s.warn.Words = ""
+	for _, w := range r.Warnings {
+		if s.warn.Words != "" {
+			s.warn.Words += "\n"
+		}
+		s.warn.Words += words.Of(w)
+	}
+	s.nextB.Hide()
+	if k, ok := s.next(); ok {
+		s.nextB.Words = words.T("Next: %s", view.CellName(k))
+		s.nextB.Tip = words.T("The test that would tell most. Key Enter")
+		s.nextB.Show()
+	}
+	s.box.Refresh()
+	s.Refresh()
+}
+
+// strongest returns the finding that speaks most for (sign 1) or against (sign -1) the leading site.
+func strongest(r *localise.Result, sign float64) (string, bool) {
+	best := localise.Evidence{}
+	for _, e := range r.Evidence {
+		if e.Decibans*sign > best.Decibans*sign && e.Decibans*sign > 0.5 {
+			best = e
+		}
+	}
+	if best.Item == "" {
+		return "", false
+	}
+	return evidenceWords(best), true
+}
+
+func evidenceWords(e localise.Evidence) string {
+	f := exam.Finding{Result: exam.Graded(int8(e.Grade))}
+	f.Item, _ = exam.ParseItem(e.Item)
+	f.Site, _ = exam.ParseSite(e.Site)
+	f.Digit, _ = exam.ParseDigit(e.Digit)
+	f.Joint, _ = exam.ParseJoint(e.Joint)
+	f.Level, _ = exam.ParseVertebra(e.Level, 0)
+	return view.CellName(f.Key()) + ": " + view.GradeWords(f)
+}
+
+// next returns the cell of the test that would tell most.
+func (s *examSide) next() (exam.Key, bool) {
+	if s.result == nil {
+		return exam.Key{}, false
+	}
+	for _, n := range s.result.Next {
+		i, err1 := exam.ParseItem(n.Item)
+		site, err2 := exam.ParseSite(n.Site)
+		if err1 == nil && err2 == nil {
+			return exam.Key{Item: i, Site: site}, true
+		}
+	}
+	return exam.Key{}, false
+}
+
+// showAlerts shows what asks for the veterinarian, at once and where it belongs.
+func (s *examSide) showAlerts() {
+	var out []fyne.CanvasObject
+	for _, a := range s.page.alerts() {
+		alert := a
+		icon := canvas.NewImageFromResource(look.Icon("phone", look.Call))
+		icon.FillMode = canvas.ImageFillContain
+		icon.SetMinSize(fyne.NewSize(22, 22))
+		lines := mark.Column(2, mark.NewPara(alert.Title).Strong().In(look.Call), mark.NewPara(alert.Why))
+		if alert.Answered != "" {
+			lines.Add(mark.NewPara(alert.Answered).In(look.InkSoft))
+		} else {
+			lines.Add(mark.Left(mark.NewButton(words.T("Who was told?"), "phone", func() { s.page.answer(alert) })))
+		}
+		out = append(out, mark.On(look.CallBed, false, mark.Pad(look.Unit, look.Unit, mark.RowTop(look.Unit, []float32{0, 1}, mark.Column(0, icon), lines))))
+	}
+	s.alerts.Objects = out
+	if len(out) == 0 {
+		s.alerts.Hide()
+	} else {
+		s.alerts.Show()
+	}
+	s.alerts.Refresh()
+}
+
+// unanswered lists the alerts that must be answered before the visit can be closed.
+func (s *examSide) unanswered() []string {
+	var out []string
+	for _, a := range s.page.alerts() {
+		if a.Must && a.Answered == "" {
+			out = append(out, a.Title)
+		}
+	}
+	return out
+}
+
+// cordMapOf lays the probabilities over the column of a species at a weight in kg.
+func cordMapOf(sp exam.Species, kg float64, r *localise.Result) chart.CordMap {
+	var m chart.CordMap
+	column := drawing.Column(sp)
+	for _, b := range column {
+		m.Vertebrae = append(m.Vertebrae, chart.CordBlock{Name: b.Vertebra.String(), Major: b.Vertebra.Number() == 1, From: b.Start, To: b.End})
+	}
+	along := func(v float64) float64 {
+		i := int(math.Floor(v))
+		if i < 0 {
+			return 0
+		}
+		if i >= len(column) {
+			return 1
+		}
+		b := column[i]
+		return b.Start + (b.End-b.Start)*(v-float64(i))
+	}
+	index := map[string]int{}
+	for _, seg := range anatomy.Segments(sp) {
+		from, to, err := anatomy.Place(sp, kg, seg)
+		if err != nil {
+			continue
+		}
+		index[seg.String()] = len(m.Segments)
+		m.Segments = append(m.Segments, chart.CordSegment{Name: seg.String(), From: along(from), To: along(to)})
+	}
+	for _, d := range r.Segments {
+		i, ok := index[d.Segment]
+		if !ok {
+			continue
+		}
+		m.Segments[i].Known = true
+		if d.Side == "left" {
+			m.Segments[i].Left = d.Damaged
+		} else {
+			m.Segments[i].Right = d.Damaged
+		}
+	}
+	bracket := func(label, a, b string) {
+		i, ok1 := index[a]
+		j, ok2 := index[b]
+		if ok1 && ok2 {
+			m.Brackets = append(m.Brackets, chart.CordBracket{Label: label, From: m.Segments[i].From, To: m.Segments[j].To})
+		}
+	}
+	bracket(words.T("cervical enlargement"), "C6", "T2")
+	bracket(words.T("lumbar enlargement"), "L4", "S3")
+	return m
+}
+
+// hover explains a place of the map: the segment, what it serves, what was found there.
+func (s *examSide) hover(x, y, w, h vg.Length, st chart.Style) string {
+	m, ok := s.host.chart.(chart.CordMap)
+	if !ok || s.result == nil {
+		return ""
+	}
+	hit, ok := m.Hit(w, h, x, y, st)
+	if !ok {
+		return ""
+	}
+	if hit.Segment < 0 {
+		if hit.Vertebra >= 0 {
+			return words.T("Vertebra %s", m.Vertebrae[hit.Vertebra].Name)
+		}
+		return ""
+	}
+	seg := m.Segments[hit.Segment]
+	p := seg.Left
+	if hit.Side == exam.Right {
+		p = seg.Right
+	}
+	out := words.T("Segment %s, %s: damaged with a probability of %s %%", seg.Name, view.SiteName(hit.Side), strconv.Itoa(int(p*100+0.5)))
+	id, err := anatomy.ParseSegment(seg.Name, s.page.file.Patient.Species)
+	if err != nil {
+		return out
+	}
+	n := 0
+	sp := s.page.file.Patient.Species
+	for _, f := range s.page.sheet.Visit().Findings {
+		side := f.Site.Side()
+		if !f.Result.Tested() || n >= 8 || side != hit.Side && side != exam.Midline {
+			continue
+		}
+		for _, wgt := range anatomy.ArcOfFinding(sp, f) {
+			if wgt.Segment == id && wgt.Weight > 0.2 {
+				out += "\n" + view.CellName(f.Key()) + ": " + view.GradeWords(f)
+				n++
+				break
+			}
+		}
+	}
+	if n == 0 {
+		out += "\n" + words.T("nothing tested here that it serves")
+	}
+	return out
+}

@@ -1,0 +1,224 @@
+package desk
+
+import (
+	"context"
+	"image"
+	"net/url"
+	"os"
+	"path/filepath"
+
+	"fyne.io/fyne/v2"
+	"fyne.io/fyne/v2/canvas"
+	"gonum.org/v1/plot/vg"
+
+	"codeberg.org/go-pdf/fpdf"
+
+	"cordwalk.example/cordwalk/app/chart"
+	"cordwalk.example/cordwalk/app/desk/look"
+	"cordwalk.example/cordwalk/app/desk/mark"
+	"cordwalk.example/cordwalk/app/desk/paper"
+	"cordwalk.example/cordwalk/app/sheet"
+	"cordwalk.example/cordwalk/app/view"
+	"cordwalk.example/cordwalk/assets/words"
+)
+
+// sheetPage answers: what do I hand over?
+type sheetPage struct {
+	win     *window
+	file    File
+	options sheet.Options
+	kind    string // "owner"
+	doc     sheet.Document
+	turn    int
+
+	root    fyne.CanvasObject
+	preview *mark.Scroll
+	notes   *fyne.Container
+	save    *mark.Button
+	print   *mark.Button
+}
+
+func newSheetPage(w *window) *sheetPage {
+	p := &sheetPage{win: w, file: w.file, kind: "owner", notes: mark.Column(look.Unit)}
+	p.preview = mark.NewScroll(mark.Column(0))
+	tick := func(word string, set func(bool)) fyne.CanvasObject {
+		return mark.Tick(word, false, func(on bool) { set(on); p.make() })
+	}
+	p.save = mark.NewButton(words.T("Save as PDF"), "save", p.askSave).As(mark.Main)
+	p.print = mark.NewButton(words.T("Open and print"), "print", p.open)
+	summary := mark.NewArea("", 4, nil).Hint(words.T("Instead of the sentences on the sheet"))
+	summary.OnLeave = func() {
+		if p.options.Summary != summary.Text {
+			p.options.Summary = summary.Text
+			p.make()
+		}
+	}
+	side := mark.Column(look.Unit,
+		mark.Title(words.T("Owner's sheet")).AtLeast(80),
+		mark.NewPara(words.T("One page in everyday words: how the animal is doing, what to do at home, and when to call the veterinarian.")).In(look.InkSoft),
+		p.save, p.print, mark.Space(1, look.Unit),
+		tick(words.T("Large print"), func(on bool) { p.options.Large = on }),
+		tick(words.T("For a printer without colours"), func(on bool) { p.options.Grey = on }),
+		tick(words.T("Leave the course chart out"), func(on bool) { p.options.NoChart = on }),
+		mark.NewLabelled(words.T("Paper"), mark.Choice([]string{"A4", "Letter"}, []string{"A4", "Letter"}, w.app.practice.Paper, func(s string) { p.options.Paper = s; p.make() })),
+		mark.NewLabelled(words.T("How it is doing, in your words"), summary),
+		p.notes)
+	p.root = mark.Pad(look.Unit*1.5, look.Unit*2, mark.RowTop(look.Unit*2, []float32{1, 0}, mark.On(look.Sunk, false, p.preview), mark.Sized(320, 10, mark.NewScroll(side))))
+	p.make()
+	return p
+}
+
+func (p *sheetPage) content() fyne.CanvasObject { return p.root }
+func (p *sheetPage) shown()                     { p.win.win.Canvas().Unfocus() }
+func (p *sheetPage) left()                      {}
+
+func (p *sheetPage) help() []view.KeyHelp {
+	return []view.KeyHelp{
+		{Keys: "s", Does: words.T("save as PDF")},
+		{Keys: "p", Does: words.T("open with the system's program, to print")},
+		{Keys: words.T("Up, Down"), Does: words.T("scroll the page")},
+	}
+}
+
+func (p *sheetPage) typedRune(r rune) bool {
+	switch r {
+	case 's':
+		p.askSave()
+	case 'p':
+		p.open()
+	default:
+		return false
+	}
+	return true
+}
+
+func (p *sheetPage) typedKey(k fyne.KeyName) bool {
+	switch k {
+	case fyne.KeyDown:
+		p.preview.By(80)
+	case fyne.KeyUp:
+		p.preview.By(-80)
+	default:
+		return false
+	}
+	return true
+}
+
+// make writes the sheet and its preview off the drawing goroutine.
+func (p *sheetPage) make() {
+	p.turn++
+	turn := p.turn
+	a := p.win.app
+	in := sheet.Input{Practice: a.practice, Patient: p.file.Patient, Visits: p.file.Visits, Notices: noticesOf(p.file), At: a.now(), Options: p.options}
+	p.save.Disable()
+	p.print.Disable()
+	a.work(func(context.Context) (func(), error) {
+		doc, err := sheet.Owner(in)
+		if err != nil {
+			return nil, err
+		}
+		pages, err := paper.Pages(doc.PDF, 1.9)
+		if err != nil {
+			return nil, err
+		}
+		return func() {
+			if turn == p.turn {
+				p.show(doc, pages)
+			}
+		}, nil
+	}, func(err error) {
+		if turn == p.turn {
+			p.refuse(err)
+		}
+	})
+}
+
+func (p *sheetPage) show(doc sheet.Document, pages []image.Image) {
+	p.doc = doc
+	p.save.Enable()
+	p.print.Enable()
+	var out []fyne.CanvasObject
+	for _, page := range pages {
+		out = append(out, newSheetImage(page))
+	}
+	p.preview.SetContent(mark.Pad(look.Unit*2, look.Unit*2, mark.Column(look.Unit*2, out...)))
+	p.notes.Objects = nil
+	for _, w := range doc.Warnings {
+		p.notes.Add(cautionLine(words.Of(w)))
+	}
+	p.notes.Refresh()
+}
+
+func (p *sheetPage) refuse(err error) {
+	edit := mark.NewButton(words.T("Edit the patient's page"), "edit", func() { p.win.to(view.ScreenPatient) })
+	p.preview.SetContent(mark.Pad(look.Unit*3, look.Unit*3, mark.Column(look.Unit*2, mark.Heading(words.T("No sheet can be made yet")).AtLeast(80), mark.NewPara(err.Error()), mark.Left(edit))))
+}
+
+func (p *sheetPage) askSave() {
+	if len(p.doc.PDF) == 0 {
+		return
+	}
+	data := p.doc.PDF
+	p.win.askFile(words.T("Save the owner's sheet"), p.doc.Name, words.T("The sheet is not protected once it has left the practice's store."), func(path string) error {
+		return os.WriteFile(path, data, 0o600)
+	})
+}
+
+// open hands the sheet to the system's own program, which prints it.
+func (p *sheetPage) open() {
+	if len(p.doc.PDF) == 0 {
+		return
+	}
+	data, name := p.doc.PDF, p.doc.Name
+	p.win.app.work(func(context.Context) (func(), error) {
+		dir, err := os.MkdirTemp("", "cordwalk-sheet-")
+		if err != nil {
+			return nil, err
+		}
+		path := filepath.Join(dir, name)
+		if err := os.WriteFile(path, data, 0o600); err != nil {
+			return nil, err
+		}
+		return func() {
+			u := &url.URL{Scheme: "file", Path: filepath.ToSlash(path)}
+			if err := p.win.app.fyne.OpenURL(u); err != nil {
+				p.win.fail(words.T("This system has no program that opens PDF files; save the sheet instead."), err)
+				return
+			}
+			p.win.foot.say(words.T("Opened with the system's program for PDF files"))
+		}, nil
+	}, func(err error) { p.win.fail(words.T("The sheet could not be handed over."), err) })
+}
+
+// newSheetImage is a page of paper as wide as there is room.
+func newSheetImage(page image.Image) fyne.CanvasObject {
+	img := canvas.NewImageFromImage(page)
+	img.FillMode = canvas.ImageFillContain
+	img.ScaleMode = canvas.ImageScaleSmooth
+	b := page.Bounds()
+	return &fyne.Container{Layout: &pageLayout{float32(b.Dy()) / float32(max(1, b.Dx()))}, Objects: []fyne.CanvasObject{img}}
+}
+
+// pageLayout keeps the page's proportion, at most 900 px wide.
+type pageLayout struct{ ratio float32 }
+
+func (l *pageLayout) width(w float32) float32 { return min(w, 900) }
+
+func (l *pageLayout) HeightFor(width float32) float32 { return l.width(width) * l.ratio }
+func (l *pageLayout) MinSize([]fyne.CanvasObject) fyne.Size {
+	return fyne.NewSize(200, 200*l.ratio)
+}
+func (l *pageLayout) Layout(o []fyne.CanvasObject, s fyne.Size) {
+	w := l.width(s.Width)
+	o[0].Move(fyne.NewPos((s.Width-w)/2, 0))
+	o[0].Resize(fyne.NewSize(w, w*l.ratio))
+}
+
+// savePDF writes a chart as a PDF page of its own.
+func savePDF(path string, w, h float64, c drawable, st chart.Style) error {
+	doc := fpdf.NewCustom(&fpdf.InitType{UnitStr: "pt", Size: fpdf.SizeType{Wd: w, Ht: h}})
+	chart.AddFonts(doc)
+	doc.AddPage()
+	c.Draw(chart.OnPDF(doc, 0, 0, vg.Length(w), vg.Length(h)), st)
+	return doc.OutputFileAndClose(path)
+}

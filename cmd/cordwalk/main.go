@@ -1,0 +1,78 @@
+// Command cordwalk is the desktop program: a therapist records a weekly neurological exam of
+// a dog or cat, sees what changed since last week, and prints the owner's sheet.
+package main
+
+import (
+	"errors"
+	"fmt"
+	"os"
+	"runtime"
+
+	"fyne.io/fyne/v2/app"
+	"github.com/alecthomas/kong"
+
+	"cordwalk.example/cordwalk/app/desk"
+	"cordwalk.example/cordwalk/app/view"
+	"cordwalk.example/cordwalk/assets/words"
+	"cordwalk.example/cordwalk/storage"
+)
+
+// version is set when a release is built.
+var version = "development"
+
+type options struct {
+	Store   string           `help:"Folder of the practice. Without it: the one opened last, or the user's data folder." placeholder:"DIR"`
+	KeyFile string           `help:"File with the key of the practice." placeholder:"FILE"`
+	Demo    bool             `help:"Open the demo practice, whose animals are invented."`
+	Version kong.VersionFlag `help:"Say the version and end."`
+}
+
+func main() {
+	// A store that was not closed cleanly tries its index in a child of this program first.
+	storage.ChildMain()
+	os.Exit(run())
+}
+
+func run() int {
+	var o options
+	kong.Parse(&o, kong.Name("cordwalk"), kong.Description("Records and compares neurological exams of dogs and cats. It supports and never replaces a licensed veterinarian."), kong.Vars{"version": version})
+	if err := display(); err != nil {
+		fmt.Fprintln(os.Stderr, err)
+		return 2
+	}
+	path, err := view.SettingsPath()
+	if err != nil {
+		fmt.Fprintln(os.Stderr, err)
+	}
+	settings, err := view.LoadSettings(path)
+	if err != nil {
+		fmt.Fprintln(os.Stderr, err)
+	}
+	if settings.Language != "" {
+		if err := words.Use(settings.Language); err != nil {
+			fmt.Fprintln(os.Stderr, err)
+		}
+	}
+	keeper := &desk.Keeper{KeyFile: o.KeyFile}
+	program := desk.New(app.NewWithID("example.cordwalk"), keeper, settings, path, nil)
+	if o.Demo {
+		program.StartDemo(o.Store)
+	} else {
+		program.Start(o.Store)
+	}
+	program.Run()
+	if err := program.Done(); err != nil {
+		fmt.Fprintln(os.Stderr, err)
+		return 1
+	}
+	return 0
+}
+
+// display says in a sentence that there is no screen to draw on, where that can be known before
+// the window is asked for.
+func display() error {
+	if runtime.GOOS == "linux" && os.Getenv("DISPLAY") == "" && os.Getenv("WAYLAND_DISPLAY") == "" {
+		return errors.New(words.T("There is no display to open a window on. “make demo” shows Cordwalk at work without one; cordwalk-cli does everything the window does."))
+	}
+	return nil
+}
