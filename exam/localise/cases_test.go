@@ -119,7 +119,9 @@ func TestSharedCases(t *testing.T) {
 			}
 			engines[x.Species] = e
 		}
-		_ = unstated
+		for _, i := range unstated {
+			x.presence = append(x.presence, x.Findings[i].Key())
+		}
 		r, err := e.Compute(x)
 		if err != nil {
 			t.Fatal(err)

@@ -281,18 +281,14 @@ func (p *Params) ordinal(c *cell, y float64, out [][points]float64) {
 	r := &p.respond[c.item]
 	n := c.cats
 	normal := int(c.item.Info().Normal - c.item.Info().First)
-	floor := r.floor
-	if floor == 0 {
-		switch {
-		case n > 3:
-			floor = p.Floor5
-		default:
-			floor = p.Floor3
-		}
+	slip := r.slip
+	if slip == 0 {
+		slip = p.Slip
 	}
 	if c.girdle == thoracic && (c.item == exam.Withdrawal || c.item >= exam.WithdrawalShoulder && c.item <= exam.WithdrawalCarpus) {
-		floor = p.FloorFrail
+		slip = p.SlipFrail
 	}
+	miss := [6]float64{0, slip, float64(0.3 * slip), float64(0.08 * slip), float64(0.03 * slip), float64(0.03 * slip)}
 	devs, _ := p.quadrature()
 	upOnly := len(r.down) == 0
 	for q, u := range devs {
@@ -320,9 +316,15 @@ func (p *Params) ordinal(c *cell, y float64, out [][points]float64) {
 			prev = t
 		}
 		at[normal] = max(beyond-prev, 0)
-		scale := 1 - float64(float64(n)*floor)
+		// Plain mistakes: the grade next to the true one, seldom one further off.
 		for g := range n {
-			out[g][q] = floor + float64(scale*at[g])
+			kept := at[g]
+			for t := range n {
+				if d := max(t-g, g-t); d > 0 {
+					kept += float64(miss[d] * (at[t] - at[g]))
+				}
+			}
+			out[g][q] = kept
 		}
 	}
 }

@@ -15,14 +15,15 @@ type Engine struct {
 	m *Model
 	x Exam // the last exam; Findings is the caller's slice
 
-	obs, was   []int16 // category of each cell, -1 not tested
-	bulk       []bool  // filled in a block
-	wasBulk    []bool
-	found      []found // what the cell's finding was, for the evidence
-	ctx        []context
-	bent       []bool
-	ctxAge     float64
-	ctxSedated exam.Sedation
+	obs, was    []int16 // category of each cell, -1 not tested
+	upTo, wasTo []int16 // last category where only presence is known, else obs
+	bulk        []bool  // filled in a block
+	wasBulk     []bool
+	found       []found // what the cell's finding was, for the evidence
+	ctx         []context
+	bent        []bool
+	ctxAge      float64
+	ctxSedated  exam.Sedation
 
 	state        []groupState
 	full         []int64 // sum of the groups' log-likelihoods
@@ -85,7 +86,7 @@ func New(s exam.Species) (*Engine, error) {
 func (m *Model) Engine() *Engine {
 	n := len(m.lay.cells)
 	e := &Engine{
-		m: m, obs: make([]int16, n), was: make([]int16, n), bulk: make([]bool, n), wasBulk: make([]bool, n),
+		m: m, obs: make([]int16, n), was: make([]int16, n), upTo: make([]int16, n), wasTo: make([]int16, n), bulk: make([]bool, n), wasBulk: make([]bool, n),
 		found: make([]found, n), ctx: make([]context, n), bent: make([]bool, n), barred: make([]bool, n),
 		state: make([]groupState, len(m.groups)), full: make([]int64, m.hyps), looked: make([]int64, m.hyps),
 		label: make([]int64, len(m.sp.sites)), weightFull: make([]uint64, m.hyps), weightLooked: make([]uint64, m.hyps),
@@ -101,7 +102,7 @@ func (m *Model) Engine() *Engine {
 	e.histFull, e.histLook = make([]uint64, most), make([]uint64, most)
 	e.sigMass = make([]uint64, sigs)
 	for i := range n {
-		e.obs[i], e.was[i] = -1, -1
+		e.obs[i], e.was[i], e.upTo[i], e.wasTo[i] = -1, -1, -1, -1
 		e.ctx[i].keep = 1
 	}
 	e.x.Species = m.species
@@ -183,7 +184,7 @@ func (e *Engine) answer() *Result {
 }
 
 func (e *Engine) clear(i int) {
-	e.obs[i], e.bulk[i], e.found[i] = -1, false, found{}
+	e.obs[i], e.upTo[i], e.bulk[i], e.found[i] = -1, -1, false, found{}
 }
 
 // put enters a finding. Of two findings of one cell the lower category stays, whatever their order.
@@ -211,7 +212,25 @@ func (e *Engine) put(f exam.Finding) {
 		}
 		bulk = bulk && (e.bulk[i] || cat < e.obs[i])
 	}
-	e.obs[i], e.bulk[i], e.found[i] = cat, bulk, found{g, f.Level}
+	e.obs[i], e.upTo[i], e.bulk[i], e.found[i] = cat, cat, bulk, found{g, f.Level}
+}
+
+// widen makes the grade in a cell stand for every grade as far from normal or further, and
+// for every lesser one on the same side of normal: only that it is ill is known.
+func (e *Engine) widen(k exam.Key) {
+	i, ok := e.m.lay.byKey[k]
+	if !ok || e.obs[i] < 0 || e.m.lay.cells[i].item == exam.CutaneousTrunci {
+		return
+	}
+	in := k.Item.Info()
+	normal := int16(in.Normal - in.First)
+	switch {
+	case in.Normal < 0 || in.Traits&exam.Unordered != 0 || e.obs[i] == normal:
+	case e.obs[i] < normal:
+		e.obs[i], e.upTo[i] = 0, normal-1
+	default:
+		e.obs[i], e.upTo[i] = normal+1, int16(e.m.lay.cells[i].cats-1)
+	}
 }
 
 // set enters a whole exam.
@@ -221,6 +240,9 @@ func (e *Engine) set(x Exam) {
 	}
 	for _, f := range x.Findings {
 		e.put(f)
+	}
+	for _, k := range x.presence {
+		e.widen(k)
 	}
 	// What is known of the animal bends the answers of some cells.
 	if x.AgeYears != e.ctxAge || x.Sedation != e.ctxSedated {
@@ -255,9 +277,9 @@ func (e *Engine) set(x Exam) {
 func (e *Engine) markDirty() {
 	e.blocks = 0
 	for i := range e.obs {
-		if e.obs[i] != e.was[i] || e.bulk[i] != e.wasBulk[i] {
+		if e.obs[i] != e.was[i] || e.upTo[i] != e.wasTo[i] || e.bulk[i] != e.wasBulk[i] {
 			e.state[e.m.lay.cells[i].group].dirty = true
-			e.was[i], e.wasBulk[i] = e.obs[i], e.bulk[i]
+			e.was[i], e.wasTo[i], e.wasBulk[i] = e.obs[i], e.upTo[i], e.bulk[i]
 		}
 		if e.bulk[i] {
 			e.blocks++
@@ -321,6 +343,7 @@ func (e *Engine) groupLog(g *group, qw *[points]float64, out []uint64, skipBulk 
 	var tables [64][]float64
 	var stride, offset [64]int
 	var keep, add [64]float64
+	var more [64]int
 	n := 0
 	for k, ci := range g.cells {
 		if e.obs[ci] < 0 || skipBulk && e.bulk[ci] {
@@ -331,8 +354,9 @@ func (e *Engine) groupLog(g *group, qw *[points]float64, out []uint64, skipBulk 
 		stride[n], offset[n] = set.cats*points, int(e.obs[ci])*points
 		keep[n], add[n] = 1, 0
 		if e.bent[ci] {
-			keep[n], add[n] = e.ctx[ci].keep, e.ctx[ci].add[e.obs[ci]]
+			keep[n], add[n] = e.ctx[ci].keep, e.ctx[ci].sum(e.obs[ci], e.upTo[ci])
 		}
+		more[n] = int(e.upTo[ci] - e.obs[ci])
 		n++
 	}
 	if n == 0 {
@@ -344,6 +368,13 @@ func (e *Engine) groupLog(g *group, qw *[points]float64, out []uint64, skipBulk 
 		for k := range n {
 			at := int(rows[k][s])*stride[k] + offset[k]
 			p := tables[k][at : at+points : at+points]
+			if more[k] > 0 {
+				var sum [points]float64
+				for j := range (more[k] + 1) * points {
+					sum[j%points] += tables[k][at+j]
+				}
+				p = sum[:]
+			}
 			if keep[k] == 1 {
 				for q := range acc {
 					acc[q] = float64(acc[q] * p[q])

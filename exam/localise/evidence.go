@@ -194,10 +194,17 @@ func (e *Engine) likelihood(g *group, k, ci, sig int) (out [points]float64) {
 	set := &e.m.sets[e.m.setOf[ci]]
 	at := (int(g.rows[k][sig])*set.cats + int(e.obs[ci])) * points
 	copy(out[:], set.p[at:at+points])
+	for more := int(e.upTo[ci] - e.obs[ci]); more > 0; more-- {
+		at += points
+		for q := range out {
+			out[q] += set.p[at+q]
+		}
+	}
 	if e.bent[ci] {
 		c := &e.ctx[ci]
+		add := c.sum(e.obs[ci], e.upTo[ci])
 		for q := range out {
-			out[q] = float64(c.keep*out[q]) + c.add[e.obs[ci]]
+			out[q] = float64(c.keep*out[q]) + add
 		}
 	}
 	return out

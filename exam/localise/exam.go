@@ -22,6 +22,8 @@ type Exam struct {
 	Sedation    exam.Sedation
 	Precautions []exam.PrecautionOn
 	Day         exam.Date // of the exam: precautions that end before it bar nothing
+
+	presence []exam.Key // cells of which only presence is known, not the degree
 }
 
 // OfFile returns the exam of an exam file.
@@ -233,6 +235,15 @@ func (m *Model) segmentsAt(x *Exam, near *[maxSegments]float64) bool {
 type context struct {
 	keep float64
 	add  [8]float64
+}
+
+// sum adds up what the context adds to a range of categories.
+func (c *context) sum(from, to int16) float64 {
+	s := c.add[from]
+	for g := from + 1; g <= to; g++ {
+		s += c.add[g]
+	}
+	return s
 }
 
 // bend returns the context of a cell, and false where nothing bends it.

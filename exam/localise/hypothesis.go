@@ -116,6 +116,16 @@ func regionAt(seg int) Region {
 	return L4S3
 }
 
+// regionOf returns the region of a lesion by its centre. A lesion centred on the border of an
+// enlargement counts to the enlargement, whose signs it shows.
+func regionOf(from, to int) Region {
+	a, b := regionAt((from+to)/2), regionAt((from+to+1)/2)
+	if b == C6T2 || b == L4S3 {
+		return b
+	}
+	return a
+}
+
 func (sp *space) add(t site) *site {
 	t.vertebra = -1
 	if t.from >= 0 && t.kind != Nerve {
@@ -133,7 +143,7 @@ const longExtent = 8
 // thoracolumbar discs within three spaces of the junction (clinic page, low grade); flattened
 // to a factor of two and a half, for other causes fall anywhere.
 func discWeight(s exam.Species, centre2 int) float64 {
-	if s == exam.Dog && centre2 >= 2*18 && centre2 <= 2*23 {
+	if s == exam.Dog && centre2 >= 2*18 && centre2 <= 2*22 {
 		return 2.5
 	}
 	return 1
@@ -151,7 +161,7 @@ func (sp *space) enumerate() {
 		for from := 0; from+length <= sp.segments; from += step {
 			to := from + length - 1
 			for _, side := range all {
-				sp.add(site{kind: Cord, from: from, to: to, side: side, extent: extent, region: regionAt((from + to) / 2),
+				sp.add(site{kind: Cord, from: from, to: to, side: side, extent: extent, region: regionOf(from, to),
 					weight: float64(float64(p.Extent[extent]*p.Sides[side]) * discWeight(sp.species, from+to) * float64(step))})
 			}
 		}
@@ -180,7 +190,7 @@ func (sp *space) enumerate() {
 	for _, torn := range [...]struct {
 		from, to int
 		weight   float64
-	}{{5, 6, 0.1}, {7, 9, 0.5}, {5, 9, 0.4}} { // cranial, caudal, complete: caudal commonest, cranial rare (cynologist, vet-advisor-BPI)
+	}{{5, 6, 0.15}, {7, 9, 0.47}, {5, 9, 0.38}} { // cranial, caudal, complete: caudal commonest, cranial rare (cynologist, vet-advisor-BPI)
 		for _, side := range plain {
 			w := torn.weight
 			if side == Even {
@@ -190,7 +200,7 @@ func (sp *space) enumerate() {
 		}
 	}
 	for from := segL4 + 2; from <= 31; from++ {
-		weight := [...]float64{0.08, 0.24, 0.24, 0.14, 0.1, 0.2}[from-segL4-2]
+		weight := [...]float64{0.08, 0.22, 0.22, 0.13, 0.1, 0.25}[from-segL4-2]
 		for _, side := range all {
 			sp.add(site{kind: CaudaEquina, from: from, to: sp.segments - 1, side: side, region: L4S3,
 				weight: float64(weight * [...]float64{0.5, 0.08, 0.08, 0.17, 0.17}[side])})
@@ -216,7 +226,7 @@ func (sp *space) enumerate() {
 		sides []Side
 		w     float64
 	}{{partForebrain, plain[:], 0.3}, {partBrainstem, plain[:], 0.1}, {partCerebellum, plain[:], 0.12},
-		{partVestibularCentral, plain[1:], 0.13}, {partVestibularPeripheral, plain[:], 0.35}} {
+		{partVestibularCentral, plain[1:], 0.2}, {partVestibularPeripheral, plain[:], 0.3}} {
 		for _, side := range g.sides {
 			w := float64(g.w * 0.4)
 			if side == Even {
@@ -276,17 +286,19 @@ func nerveWeight(n nerveID) float64 {
 	case of(anatomy.Suprascapular), of(anatomy.Median), of(anatomy.Ulnar), of(anatomy.Musculocutaneous):
 		return 0.15
 	case nerveFacial:
-		return 0.6
+		return 0.7
 	case nerveTrigeminal:
-		return 0.3
+		return 0.6
 	case nerveSympathetic:
 		return 0.6 // isolated Horner: 28 % idiopathic, imaging finds a cause in 3 % (Horner-img)
 	case nerveVagus:
 		return 0.2
-	case nerveOptic, nerveOculomotor, of(anatomy.Pudendal), of(anatomy.CaudalNerves):
+	case nerveOptic, nerveOculomotor, of(anatomy.Pudendal):
 		return 0.1
+	case of(anatomy.CaudalNerves):
+		return 0.05
 	}
-	return 0.03
+	return 0.015
 }
 
 // coarse sites that pairs are made of. Cord places are stood for by one range each.
@@ -303,7 +315,7 @@ func (sp *space) pairs() {
 	for _, c := range coarseCord {
 		var row []*site
 		for _, side := range plain {
-			row = append(row, &site{kind: Cord, from: c[0], to: c[1], side: side, extent: 1, region: regionAt((c[0] + c[1]) / 2), vertebra: sp.vertebra[(c[0]+c[1])/2]})
+			row = append(row, &site{kind: Cord, from: c[0], to: c[1], side: side, extent: 1, region: regionOf(c[0], c[1]), vertebra: sp.vertebra[(c[0]+c[1])/2]})
 		}
 		cords = append(cords, row)
 	}
@@ -398,7 +410,11 @@ func (sp *space) each(yield func(h *hypothesis)) {
 			}
 		case Generalised, Nerve, Root, CaudaEquina, Plexus, Ischaemic:
 			sev = [severities]float64{0.12, 0.2, 0.26, 0.22, 0.2}
+			if t.kind == Nerve {
+				sev = [severities]float64{0.05, 0.15, 0.27, 0.28, 0.25}
+			}
 			if t.kind == Generalised {
+				sev = [severities]float64{0.15, 0.28, 0.3, 0.17, 0.1}
 				companies = [2]float64{0.6, 0.4}
 			}
 		case Brain:
@@ -508,7 +524,7 @@ func (sp *space) put(b *body, t *site, h *hypothesis, sev float64) {
 		if reach, limb := rootReach(t); reach {
 			for side := range 2 {
 				// A disc under the plexus carries pain into the limb now and then.
-				b.rootPain[limb*2+side] = float64(0.3 * share[side])
+				b.rootPain[limb*2+side] = float64(0.2 * share[side])
 			}
 		}
 	case PainOnly:
@@ -547,7 +563,7 @@ func (sp *space) put(b *body, t *site, h *hypothesis, sev float64) {
 			b.nerve[t.nerve][side] = float64(sev * share[side])
 			g, limb := nerveLimb(t.nerve)
 			if limb {
-				b.limbPain[g*2+side] = float64(0.2 * share[side])
+				b.limbPain[g*2+side] = float64(0.4 * share[side])
 			}
 		}
 	case Generalised:
@@ -681,7 +697,7 @@ func (sp *space) putBrain(b *body, t *site, sev float64, share [2]float64, h *hy
 			}
 		}
 	}
-	b.pain[painCervical] = float64(0.15 * sev)
+	b.pain[painCervical] = float64(0.08 * sev) // deStrobel: 2.2 % of sore necks
 }
 
 // ache spreads a source of pain over the places where it may be palpated: fully at its own

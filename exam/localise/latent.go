@@ -463,8 +463,8 @@ func (st *state) placing(l, side, g int) float64 {
 	v = both(v, float64(0.85*st.fore[1-side]))
 	v = both(v, float64(0.8*st.stem[side]))
 	v = both(v, float64(0.55*st.vestC[side]))
-	v = both(v, float64(0.25*st.lower[l]))
-	v = both(v, float64(0.12*st.weak[l]))
+	v = both(v, float64(0.12*st.lower[l]))
+	v = both(v, float64(0.08*st.weak[l]))
 	foot := arcExtensor
 	if g == pelvic {
 		foot = arcTibialis

@@ -153,7 +153,7 @@ func (m *Model) Bytes() int {
 var cordPlaces = []struct {
 	to2  int // centre from+to up to here
 	name string
-}{{3, "C1-C2"}, {9, "C3-C5"}, {13, "C6-C7"}, {19, "C8-T2"}, {33, "T3-T9"}, {41, "T10-L1"}, {47, "L2-L3"},
+}{{2, "C1-C2"}, {8, "C3-C5"}, {12, "C6-C7"}, {19, "C8-T2"}, {32, "T3-T9"}, {42, "T10-L1"}, {46, "L2-L3"},
 	{50, "L4-L5"}, {56, "L6-S1"}, {60, "S1-S3"}, {99, "Cd1-Cd5"}}
 
 // rootPlaces does the same for roots and sources of pain.
@@ -282,15 +282,21 @@ func (m *Model) tabulate() {
 	for i := range finders {
 		finders[i] = newFinder()
 	}
-	sigs := make([]map[uint64][]uint16, len(m.groups))
-	pairs := make([]map[pair]uint16, len(m.groups))
+	sigs, pairs := make([]*intern, len(m.groups)), make([]*intern, len(m.groups))
 	for i := range sigs {
-		sigs[i], pairs[i] = map[uint64][]uint16{}, map[pair]uint16{}
+		sigs[i], pairs[i] = newIntern(), newIntern()
 	}
 	damages := map[[3]int]uint16{}
 	var b, other body
 	var st state
+	var key rowKey
 	var scratch [64]uint16
+	last := make([]struct {
+		hash uint64
+		pair pair
+		of   uint16
+		warm bool
+	}, len(m.groups))
 	var out [32][points]float64
 	_, qw := m.p.quadrature()
 	m.sp.each(func(h *hypothesis) {
@@ -301,7 +307,6 @@ func (m *Model) tabulate() {
 			hash := uint64(14695981039346656037)
 			for k, ci := range g.cells {
 				c := &cells[ci]
-				var key rowKey
 				c.row(m.sp, c, &st, &key)
 				set := &m.sets[m.setOf[ci]]
 				row, ok := finders[m.setOf[ci]].find(key)
@@ -322,37 +327,43 @@ func (m *Model) tabulate() {
 				hash = (hash ^ uint64(row)) * 1099511628211
 				hash ^= hash >> 29
 			}
-			// The signature: the rows of all cells of the group.
-			sig, found := uint16(0), false
-			for _, s := range sigs[gi][hash] {
+			lt := &last[gi]
+			if lt.warm && lt.hash == hash && lt.pair.class == h.site.class {
 				same := true
 				for k := range g.cells {
-					if g.rows[k][s] != scratch[k] {
+					if g.rows[k][lt.pair.sig] != scratch[k] {
 						same = false
 						break
 					}
 				}
 				if same {
-					sig, found = s, true
-					break
+					g.of = append(g.of, lt.of)
+					continue
 				}
 			}
+			// The signature: the rows of all cells of the group.
+			sig, found := sigs[gi].find(hash, func(s uint16) bool {
+				for k := range g.cells {
+					if g.rows[k][s] != scratch[k] {
+						return false
+					}
+				}
+				return true
+			})
 			if !found {
-				sig = uint16(g.sigs)
 				g.sigs++
-				sigs[gi][hash] = append(sigs[gi][hash], sig)
 				for k := range g.cells {
 					g.rows[k] = append(g.rows[k], scratch[k])
 				}
 			}
-			pr := pair{sig, h.site.class}
-			pi, ok := pairs[gi][pr]
-			if !ok {
-				pi = uint16(len(g.pairs))
-				pairs[gi][pr] = pi
-				g.pairs = append(g.pairs, pr)
+			pi, found := pairs[gi].find(uint64(sig)<<16|uint64(h.site.class), func(p uint16) bool {
+				return g.pairs[p] == pair{sig, h.site.class}
+			})
+			if !found {
+				g.pairs = append(g.pairs, pair{sig, h.site.class})
 			}
 			g.of = append(g.of, pi)
+			lt.hash, lt.pair, lt.of, lt.warm = hash, pair{sig, h.site.class}, pi, true
 		}
 		m.prior = append(m.prior, toLog(logOf(h.prior)))
 		m.siteOf = append(m.siteOf, uint16(h.index))
@@ -467,4 +478,52 @@ func (f *finder) put(k rowKey, row uint16) {
 	f.keys[i], f.rows[i], f.used[i] = k, row, true
 	f.n++
 	f.last, f.row, f.warm = k, row, true
+}
+
+// intern numbers distinct things by a hash of them.
+type intern struct {
+	hash []uint64
+	at   []int32 // number + 1, 0 free
+	n    int
+}
+
+func newIntern() *intern { return &intern{hash: make([]uint64, 256), at: make([]int32, 256)} }
+
+// find returns the number of the thing with that hash for which same holds, and true; or the
+// next free number, which is now its own, and false.
+func (t *intern) find(hash uint64, same func(uint16) bool) (uint16, bool) {
+	if 2*t.n >= len(t.at) {
+		old := *t
+		t.hash, t.at = make([]uint64, 2*len(old.at)), make([]int32, 2*len(old.at))
+		for i, a := range old.at {
+			if a > 0 {
+				j := t.free(old.hash[i])
+				t.hash[j], t.at[j] = old.hash[i], a
+			}
+		}
+	}
+	mask := uint64(len(t.at) - 1)
+	i := mix(hash) & mask
+	for ; t.at[i] > 0; i = (i + 1) & mask {
+		if t.hash[i] == hash && same(uint16(t.at[i]-1)) {
+			return uint16(t.at[i] - 1), true
+		}
+	}
+	t.n++
+	t.hash[i], t.at[i] = hash, int32(t.n)
+	return uint16(t.n - 1), false
+}
+
+func (t *intern) free(hash uint64) uint64 {
+	mask := uint64(len(t.at) - 1)
+	i := mix(hash) & mask
+	for t.at[i] > 0 {
+		i = (i + 1) & mask
+	}
+	return i
+}
+
+func mix(h uint64) uint64 {
+	h *= 0x9E3779B97F4A7C15
+	return h ^ h>>29
 }

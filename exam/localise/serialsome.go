@@ -11,14 +11,12 @@ import (
 
 // Weigher weighs the exams of a course at chosen sites. It is for one goroutine at a time.
 type Weigher struct {
-	e     *Engine // its own: nothing else may use it
-	t     *someTable
-	group [][]int64 // by group: log-likelihood of each pair of signature and class
-	look  [][]int64 // the same without cells filled in a block
-	sigs  []uint64
-	used  []int   // groups with a tested cell
-	full  []int64 // of the hypotheses of one site
-	lk    []int64
+	e    *Engine // its own: nothing else may use it
+	t    *someTable
+	logs []sigLogs // by group
+	used []int     // groups with a tested cell
+	full []int64   // of the hypotheses of one site
+	lk   []int64
 }
 
 // someTable holds what is fixed: hypotheses of site i of Model.Sites are first[i] … last[i]−1.
@@ -32,7 +30,7 @@ var someTables sync.Map // *Model → *someTable
 // Weigher returns a new weigher on the model's tables.
 func (m *Model) Weigher() *Weigher {
 	e := m.Engine()
-	return &Weigher{e: e, t: m.some(), group: make([][]int64, len(m.groups)), look: make([][]int64, len(m.groups)), sigs: make([]uint64, len(e.pred))}
+	return &Weigher{e: e, t: m.some(), logs: make([]sigLogs, len(m.groups))}
 }
 
 func (m *Model) some() *someTable {
@@ -91,35 +89,25 @@ func (s *Weigher) LogLikelihoods(x Exam, sites []int, dst []float64) ([]float64,
 		e.put(f)
 	}
 	e.bendFor(&x)
-	// Each tested group's log-likelihood, by pair of signature and class.
+	// What each tested group needs to answer for a signature; the logarithms are taken when a
+	// hypothesis first asks for them, and kept while the group's findings stay the same.
 	_, qw := m.p.quadrature()
 	s.used = s.used[:0]
 	blocks := false
 	for gi := range m.groups {
-		g := &m.groups[gi]
-		tested, bulk := false, false
-		for _, ci := range g.cells {
+		g, l := &m.groups[gi], &s.logs[gi]
+		tested, same := false, len(l.obs) == len(g.cells)
+		for k, ci := range g.cells {
 			tested = tested || e.obs[ci] >= 0
-			bulk = bulk || e.obs[ci] >= 0 && e.bulk[ci]
+			blocks = blocks || e.obs[ci] >= 0 && e.bulk[ci]
+			same = same && l.obs[k] == e.obs[ci] && l.bulk[k] == e.bulk[ci] && !e.bent[ci] && !l.bent
 		}
 		if !tested {
 			continue
 		}
 		s.used = append(s.used, gi)
-		if s.group[gi] == nil {
-			s.group[gi], s.look[gi] = make([]int64, len(g.pairs)), make([]int64, len(g.pairs))
-		}
-		logs := s.sigs[:g.sigs]
-		e.groupLog(g, &qw, logs, false)
-		for p := range g.pairs {
-			s.group[gi][p] = int64(logs[g.pairs[p].sig])
-		}
-		if bulk {
-			blocks = true
-			e.groupLog(g, &qw, logs, true)
-		}
-		for p := range g.pairs {
-			s.look[gi][p] = int64(logs[g.pairs[p].sig])
+		if !same {
+			l.reset(e, g)
 		}
 	}
 	var early, late int64
@@ -158,14 +146,14 @@ func (s *Weigher) LogLikelihoods(x Exam, sites []int, dst []float64) ([]float64,
 			mass = *prior
 		}
 		for _, gi := range s.used {
-			of, logs := m.groups[gi].of[from:to], s.group[gi]
-			for i, p := range of {
-				full[i] += logs[p]
-			}
-			if blocks {
-				for i, p := range of {
-					looked[i] += s.look[gi][p]
+			g, l := &m.groups[gi], &s.logs[gi]
+			for i, p := range g.of[from:to] {
+				sig := g.pairs[p].sig
+				if !l.known[sig] {
+					l.learn(int(sig), &qw)
 				}
+				full[i] += l.full[sig]
+				looked[i] += l.look[sig]
 			}
 		}
 		var best [GridSize]int64
@@ -217,6 +205,78 @@ func (s *Weigher) LogLikelihoods(x Exam, sites []int, dst []float64) ([]float64,
 		out[0] = sound
 	}
 	return dst, nil
+}
+
+// sigLogs answers for the signatures of one group, as far as they were asked for.
+type sigLogs struct {
+	obs   []int16 // of the group's cells
+	bulk  []bool
+	bent  bool
+	parts []sigPart
+	known []bool
+	full  []int64
+	look  []int64
+}
+
+// sigPart is one tested cell of a group.
+type sigPart struct {
+	rows           []uint16
+	table          []float64
+	stride, offset int
+	more           int // further categories that the finding may stand for
+	keep, add      float64
+	bulk           bool
+}
+
+// reset takes in the group's findings and forgets the answers.
+func (l *sigLogs) reset(e *Engine, g *group) {
+	if l.known == nil {
+		l.known, l.full, l.look = make([]bool, g.sigs), make([]int64, g.sigs), make([]int64, g.sigs)
+		l.obs, l.bulk = make([]int16, len(g.cells)), make([]bool, len(g.cells))
+	}
+	clear(l.known)
+	l.parts, l.bent = l.parts[:0], false
+	for k, ci := range g.cells {
+		l.obs[k], l.bulk[k] = e.obs[ci], e.bulk[ci]
+		if e.obs[ci] < 0 {
+			continue
+		}
+		set := &e.m.sets[e.m.setOf[ci]]
+		p := sigPart{rows: g.rows[k], table: set.p, stride: set.cats * points, offset: int(e.obs[ci]) * points,
+			more: int(e.upTo[ci] - e.obs[ci]), keep: 1, bulk: e.bulk[ci]}
+		if e.bent[ci] {
+			l.bent = true
+			p.keep, p.add = e.ctx[ci].keep, e.ctx[ci].sum(e.obs[ci], e.upTo[ci])
+		}
+		l.parts = append(l.parts, p)
+	}
+}
+
+// learn works a signature's logarithms out, as Engine.groupLog does for all.
+func (l *sigLogs) learn(sig int, qw *[points]float64) {
+	full, look := *qw, *qw
+	for k := range l.parts {
+		c := &l.parts[k]
+		at := int(c.rows[sig])*c.stride + c.offset
+		var p [points]float64
+		copy(p[:], c.table[at:at+points])
+		for j := points; j < (c.more+1)*points; j++ {
+			p[j%points] += c.table[at+j]
+		}
+		for q := range p {
+			v := p[q]
+			if c.keep != 1 {
+				v = float64(c.keep*v) + c.add
+			}
+			full[q] = float64(full[q] * v)
+			if !c.bulk {
+				look[q] = float64(look[q] * v)
+			}
+		}
+	}
+	l.known[sig] = true
+	l.full[sig] = toLog(logOf(full[0] + full[1] + full[2] + full[3] + full[4]))
+	l.look[sig] = toLog(logOf(look[0] + look[1] + look[2] + look[3] + look[4]))
 }
 
 // bendFor brings what age and sedation do to the answers up to date.
