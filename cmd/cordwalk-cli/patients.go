@@ -305,13 +305,9 @@ func (c *patientAddCmd) Run(e *env) error {
 			}
 			return e.added("patient", p.ID, false)
 		}
-		who := c.Examiner
-		if who == "" {
-			if w, err := examiner(s, ""); err == nil {
-				who = w
-			} else {
-				who = "cordwalk-cli"
-			}
+		who, err := examiner(s, c.Examiner)
+		if err != nil {
+			return err
 		}
 		if _, err := s.Apply(e.ctx, who, storage.PatientEdits(exam.Patient{}, p)...); err != nil {
 			return err
