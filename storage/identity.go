@@ -1,6 +1,7 @@
 package storage
 
 import (
+	"bytes"
 	"encoding/json"
 	"errors"
 	"fmt"
@@ -76,7 +77,15 @@ func parseIdentity(b []byte) (identity, error) {
 	if _, err := id.stream(); err != nil {
 		return id, err
 	}
+	if again, err := id.encode(); err != nil || !bytes.Equal(again, b) {
+		return id, errors.New("it is not as it was written")
+	}
 	return id, nil
+}
+
+func (id identity) encode() ([]byte, error) {
+	b, err := json.MarshalIndent(id, "", "  ")
+	return append(b, '\n'), err
 }
 
 // writeIdentity replaces both copies, the spare one last, so that one of them is whole at any time.
@@ -86,11 +95,10 @@ func writeIdentity(fsys disk.FS, dir string, id identity) error {
 		return err
 	}
 	id.Sum = sum
-	b, err := json.MarshalIndent(id, "", "  ")
+	b, err := id.encode()
 	if err != nil {
 		return err
 	}
-	b = append(b, '\n')
 	if err := disk.Replace(fsys, filepath.Join(dir, identityFile), b); err != nil {
 		return err
 	}
@@ -124,7 +132,7 @@ func readIdentity(fsys disk.FS, dir string) (id identity, damage []Problem, err 
 			}
 			return found, damage, nil
 		}
-		if errors.Is(rerr, change.ErrNewer) || errors.Is(rerr, fs.ErrPermission) {
+		if errors.Is(rerr, fs.ErrPermission) {
 			return id, nil, rerr
 		}
 		if main {

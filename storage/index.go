@@ -9,6 +9,7 @@ import (
 	"os"
 	"path/filepath"
 	"runtime/debug"
+	"syscall"
 	"time"
 
 	"github.com/fxamacker/cbor/v2"
@@ -238,12 +239,12 @@ func openIndex(path string, s *seals, lives []string, practice exam.ID) (x *inde
 
 // indexError tells damage from what the system says.
 func indexError(err error) error {
-	for _, d := range []error{bolterrors.ErrInvalid, bolterrors.ErrVersionMismatch, bolterrors.ErrChecksum} {
-		if errors.Is(err, d) {
-			return fmt.Errorf("%w: %w", errIndex, err)
-		}
+	var path *fs.PathError
+	var errno syscall.Errno
+	if errors.As(err, &path) || errors.As(err, &errno) || errors.Is(err, bolterrors.ErrTimeout) {
+		return err
 	}
-	return err
+	return fmt.Errorf("%w: %w", errIndex, err)
 }
 
 func (x *index) state(tx *bbolt.Tx) (st indexState, err error) {

@@ -296,7 +296,7 @@ func doubtful(name string, v change.Change, gaps []timedGap) bool {
 		return false
 	}
 	for _, g := range gaps {
-		if v.Time <= g.to {
+		if v.Time < g.to {
 			return true
 		}
 	}

@@ -98,6 +98,7 @@ type Store struct {
 	behind   int                            // changes that the index does not have yet
 	problems []Problem
 	shut     bool
+	covered  bool // at the start the index held all that had been written
 
 	absorbing sync.Mutex     // one merge of received entries at a time; taken before follow, write and mu
 	wait      sync.WaitGroup // merges in the background
@@ -154,9 +155,12 @@ func create(dir string, o Options) (*Store, error) {
 		return nil, err
 	}
 	for _, e := range es {
-		switch e.Name {
-		case identityFile, identityBackup:
+		if e.Name == identityFile || e.Name == identityBackup {
 			return nil, fmt.Errorf("there is a practice already: %w", fs.ErrExist)
+		}
+	}
+	for _, e := range es {
+		switch e.Name {
 		case lockFile, journalDir, "files", disk.Temporary(identityFile), disk.Temporary(identityBackup):
 			// left by an attempt that a power cut ended before the practice had its keys
 		default:
@@ -295,6 +299,7 @@ func (s *Store) openIndex() error {
 	}
 	switch {
 	case err == nil:
+		s.covered = !s.lock.Left()
 		return nil
 	case errors.Is(err, fs.ErrNotExist):
 		if segs, lerr := listSegments(s.fs, s.dir); lerr != nil {
@@ -341,7 +346,7 @@ func (s *Store) catchUp() error {
 		return err
 	}
 	known := len(s.problems)
-	fl := follower{ctx: context.Background(), fs: s.fs, keys: s.bag.Ring, state: &s.state, each: s.takeIn,
+	fl := follower{ctx: context.Background(), fs: s.fs, keys: s.bag.Ring, state: &s.state, each: s.takeIn, covered: s.covered,
 		problem: func(p Problem) { s.problems = append(s.problems, p) }}
 	ends, err := fl.all(s.dir)
 	if err != nil {

@@ -13,11 +13,6 @@ import (
 	"cordwalk.example/cordwalk/storage/storagetest"
 )
 
-func TestMain(m *testing.M) {
-	storage.ChildMain()
-	os.Exit(m.Run())
-}
-
 var ctx = context.Background()
 
 func at(s string) time.Time {

@@ -126,7 +126,7 @@ func (st indexState) clone() indexState {
 // timedGap is a gap with the times between which its changes were made.
 type timedGap struct {
 	merge.Gap
-	from, to change.HLC
+	from, to change.HLC // not before from, and before to
 }
 
 const endOfTime = ^change.HLC(0)
@@ -183,7 +183,7 @@ func (g timedGap) touches(records []*record) bool {
 	for _, r := range records {
 		for _, f := range r.fields {
 			for _, c := range f.versions {
-				older = older || c.Time <= g.to
+				older = older || c.Time < g.to
 				if c.Stream == g.Stream {
 					known = append(known, c)
 				}
@@ -223,6 +223,7 @@ type follower struct {
 	read    func(bytes int64) // progress; may be nil
 
 	parallel bool // open frames ahead on all processors
+	covered  bool // the state is known to hold all that was ever written: the store was closed in order
 }
 
 func relative(seg segmentFile) string { return journalDir + "/" + filepath.Base(seg.name) }
@@ -256,6 +257,11 @@ func (fl *follower) stream(x change.Stream, segs []segmentFile) (streamEnd, erro
 				fl.problem(Problem{File: relative(seg), Offset: st.Start, What: what})
 				end.tainted = true
 			}
+			if from > seg.size {
+				fl.problem(Problem{File: relative(seg), Offset: seg.size, What: "the segment is shorter than it was; entries at its end are gone from the journal"})
+				end.tainted, end.end = true, seg.size
+				continue
+			}
 		}
 		tail, at, err := fl.segment(seg, from, st, func(first uint64) {
 			// What stands at the end of the segment before was left after an error. If
@@ -272,7 +278,7 @@ func (fl *follower) stream(x change.Stream, segs []segmentFile) (streamEnd, erro
 		if err != nil {
 			return end, err
 		}
-		end.end = max(at, min(from, seg.size))
+		end.end = max(at, from)
 		left = append(left, tail...)
 		st.Segment, st.Offset = seg.number, end.end
 	}
@@ -283,7 +289,9 @@ func (fl *follower) stream(x change.Stream, segs []segmentFile) (streamEnd, erro
 	if seg := *end.seg; seg.size%sector != 0 {
 		end.tainted = true
 		fl.problem(Problem{File: relative(seg), Offset: seg.size, What: "the segment is shorter than it was made; entries at its end may be missing"})
-		st.missEnd()
+		if !fl.covered {
+			st.missEnd()
+		}
 	}
 	if len(merge.Gaps(x, st.Spans, st.Head)) > 0 {
 		end.tainted = true
@@ -295,9 +303,6 @@ func (fl *follower) stream(x change.Stream, segs []segmentFile) (streamEnd, erro
 // frame ends. goesOn is called at the first frame.
 func (fl *follower) segment(seg segmentFile, from int64, st *streamState, goesOn func(first uint64)) (tail []Problem, at int64, err error) {
 	at = from
-	if from > seg.size {
-		return []Problem{{File: relative(seg), Offset: seg.size, What: "the segment is shorter than it was; entries at its end are gone from the journal"}}, seg.size, nil
-	}
 	walk := walkSegment
 	if fl.parallel {
 		walk = fl.walkAhead
@@ -553,7 +558,7 @@ func (fl *follower) judgeTail(seg segmentFile, end int64, st *streamState, tail 
 // which whole sectors have never been written.
 func (fl *follower) unfinished(seg segmentFile, from int64) bool {
 	b, err := readAt(fl.fs, seg.name, from, int(min(max(seg.size-from, 0), change.MaxFrame+sector)))
-	if err != nil || len(b) == 0 {
+	if err != nil || len(b) == 0 || seg.size%sector != 0 {
 		return false
 	}
 	length := len(b)
@@ -570,10 +575,10 @@ func (fl *follower) unfinished(seg segmentFile, from int64) bool {
 		}
 	}
 	// The parts that sectors cut the frame into.
-	for start := 0; start < need; {
+	for start := 0; start < min(need, len(b)); {
 		stop := start + sector - int((from+int64(start))%sector)
 		part := b[start:min(stop, need, len(b))]
-		if len(part) > 0 && allZero(part) {
+		if allZero(part) {
 			return true
 		}
 		start = stop
