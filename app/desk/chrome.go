@@ -206,7 +206,7 @@ func (r *railItemRenderer) Refresh() {
 	i.text.TextSize, i.text.Color, i.text.TextStyle = look.Px(look.Small), look.C(ink), fyne.TextStyle{Bold: i.chosen}
 	r.Layout(i.BaseWidget.Size())
 	for _, o := range r.Objects() {
-		canvas.Refresh(o)
+		o.Refresh()
 	}
 }
 
@@ -388,7 +388,7 @@ func (r *savedRenderer) Refresh() {
 	side := 18 * look.Scale()
 	r.m.icon.SetMinSize(fyne.NewSize(side, side))
 	r.m.icon.Resource = look.Icon(icon, r.m.text.Token)
-	canvas.Refresh(r.m.icon)
+	r.m.icon.Refresh()
 	r.m.text.Refresh()
 	r.box.Refresh()
 }
@@ -442,6 +442,7 @@ func (f *foot) fail(sentence string, err error) {
 	f.text.Token, f.text.Words = look.Worse, sentence
 	f.icon.Resource = look.Icon("caution", look.Worse)
 	f.icon.Show()
+	f.icon.Refresh()
 	if err != nil {
 		f.more.Show()
 	}

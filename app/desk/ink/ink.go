@@ -28,6 +28,9 @@ func New(w, h int, scale float64) *Pen {
 // Picture returns what was drawn.
 func (p *Pen) Picture() *image.RGBA { return p.img }
 
+// Scale returns how many pixels one unit of the caller is.
+func (p *Pen) Scale() float64 { return p.scale }
+
 // Point is a place in the caller's units.
 type Point = drawing.Point
 
@@ -36,6 +39,20 @@ func (p *Pen) Fill(c color.Color, outlines ...[]Point) {
 	z := p.raster()
 	for _, o := range outlines {
 		p.trace(z, o)
+	}
+	p.paint(z, c)
+}
+
+// FillTurned fills outlines as they turn: an inner outline that turns the other way is a hole,
+// as in letters.
+func (p *Pen) FillTurned(c color.Color, outlines ...[]Point) {
+	z := p.raster()
+	for _, o := range outlines {
+		out := make([]Point, len(o))
+		for i, q := range o {
+			out[i] = Point{X: q.X * p.scale, Y: q.Y * p.scale}
+		}
+		z.outlines = append(z.outlines, out)
 	}
 	p.paint(z, c)
 }

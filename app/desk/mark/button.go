@@ -183,7 +183,7 @@ func (r *buttonRenderer) Refresh() {
 	}
 	r.Layout(b.BaseWidgetSize())
 	for _, o := range r.Objects() {
-		canvas.Refresh(o)
+		o.Refresh()
 	}
 }
 
