@@ -1,0 +1,422 @@
+package main
+
+import (
+	"bytes"
+	"encoding/json"
+	"errors"
+	"fmt"
+	"io"
+	"iter"
+	"os"
+	"path/filepath"
+	"slices"
+	"strings"
+	"time"
+
+	"cordwalk.example/cordwalk/app/sheet"
+	"cordwalk.example/cordwalk/app/view"
+	"cordwalk.example/cordwalk/assets/words"
+	"cordwalk.example/cordwalk/exam"
+	"cordwalk.example/cordwalk/storage"
+)
+
+// exportCmd writes records out.
+type exportCmd struct {
+	JSON exportJSONCmd `cmd:"" name:"json" help:"Everything, to be read back in."`
+	CSV  exportCSVCmd  `cmd:"" name:"csv" help:"Tables for analysis: one fact a row."`
+	XLSX exportXLSXCmd `cmd:"" name:"xlsx" help:"The same tables as a workbook, with a codebook."`
+	FHIR exportFHIRCmd `cmd:"" name:"fhir" help:"An HL7 FHIR R4 Bundle."`
+	ICS  exportICSCmd  `cmd:"" name:"ics" help:"The next visits, for a calendar."`
+}
+
+// outFlag is where an export goes.
+type outFlag struct {
+	Output string `short:"o" required:"" help:"File to write; - is standard output." placeholder:"FILE"`
+}
+
+// write lets a function write the output, whole or not at all.
+func (c *outFlag) write(e *env, f func(io.Writer) error) error {
+	if c.Output == "-" {
+		return f(e.out)
+	}
+	return writeWhole(c.Output, f)
+}
+
+func (c *outFlag) said(e *env, text string) {
+	if c.Output != "-" {
+		e.say("%s", text)
+	}
+}
+
+// animals gives the patients one at a time, all of them or those named.
+func (e *env) animals(s *storage.Store, names []string) (iter.Seq2[sheet.Animal, error], int, error) {
+	var ids []exam.ID
+	if len(names) > 0 {
+		for _, n := range names {
+			r, err := e.patient(s, n)
+			if err != nil {
+				return nil, 0, err
+			}
+			if !slices.Contains(ids, r.Patient.ID) {
+				ids = append(ids, r.Patient.ID)
+			}
+		}
+	} else {
+		list, err := s.Caseload(e.ctx)
+		if err != nil {
+			return nil, 0, err
+		}
+		for _, p := range list {
+			ids = append(ids, p.ID)
+		}
+		slices.SortFunc(ids, func(a, b exam.ID) int { return bytes.Compare(a[:], b[:]) })
+	}
+	return func(yield func(sheet.Animal, error) bool) {
+		for _, id := range ids {
+			if err := e.ctx.Err(); err != nil {
+				yield(sheet.Animal{}, err)
+				return
+			}
+			r, err := s.Patient(id)
+			if !yield(sheet.Animal{Patient: r.Patient, Visits: r.Visits}, err) || err != nil {
+				return
+			}
+		}
+	}, len(ids), nil
+}
+
+// collect gathers the records of the patients named.
+func (e *env) collect(s *storage.Store, names []string) (sheet.Records, error) {
+	pr, err := s.Practice()
+	if err != nil {
+		return sheet.Records{}, err
+	}
+	for i := range pr.Examiners {
+		pr.Examiners[i].PINHash = ""
+	}
+	seq, n, err := e.animals(s, names)
+	if err != nil {
+		return sheet.Records{}, err
+	}
+	out := sheet.Records{Practice: pr, Made: time.Now().Truncate(time.Second)}
+	bar := e.progress()
+	for a, err := range seq {
+		if err != nil {
+			return sheet.Records{}, err
+		}
+		out.Animals = append(out.Animals, a)
+		if bar != nil {
+			bar(words.T("reading"), int64(len(out.Animals)), int64(n))
+		}
+	}
+	return out, nil
+}
+
+type exportJSONCmd struct {
+	Patients []string `arg:"" optional:"" name:"patient" help:"Ids or names; all where none is given."`
+	outFlag
+}
+
+func (c *exportJSONCmd) Run(e *env) error {
+	return e.with(func(s *storage.Store) error {
+		r, err := e.collect(s, c.Patients)
+		if err != nil {
+			return err
+		}
+		if err := c.write(e, func(w io.Writer) error { return sheet.EncodeRecords(w, r) }); err != nil {
+			return err
+		}
+		c.said(e, words.N(len(r.Animals), "%d animal written", "%d animals written", len(r.Animals)))
+		return nil
+	})
+}
+
+// pseudonymFlags leave names out of tables.
+type pseudonymFlags struct {
+	Pseudonyms bool   `help:"Leave names, addresses, free texts and days of birth out; ids become pseudonyms."`
+	SecretFile string `help:"File of at least 16 bytes that the pseudonyms are made from; keep it to get the same ones again." placeholder:"FILE"`
+}
+
+func (c *pseudonymFlags) options(e *env, s *storage.Store, names []string) (sheet.TableOptions, error) {
+	o := sheet.TableOptions{Pseudonyms: c.Pseudonyms}
+	if c.Pseudonyms {
+		if c.SecretFile == "" {
+			return o, usage("%s", words.T("--pseudonyms needs --secret-file FILE"))
+		}
+		secret, err := os.ReadFile(c.SecretFile)
+		if err != nil {
+			return o, err
+		}
+		if len(secret) < 16 {
+			return o, fmt.Errorf("%s: %w", c.SecretFile, sheet.ErrNoSecret)
+		}
+		o.Secret = secret
+	}
+	seq, n, err := e.animals(s, names)
+	if err != nil {
+		return o, err
+	}
+	o.Animals = seq
+	if bar := e.progress(); bar != nil {
+		o.Progress = func(done int) { bar(words.T("writing"), int64(done), int64(n)) }
+	}
+	return o, nil
+}
+
+type exportCSVCmd struct {
+	Patients []string `arg:"" optional:"" name:"patient" help:"Ids or names; all where none is given."`
+	Table    string   `help:"findings, measures, visits, patients or codebook; with all, the output is a folder." default:"findings"`
+	outFlag
+	pseudonymFlags
+}
+
+func (c *exportCSVCmd) Run(e *env) error {
+	var tables []sheet.Table
+	if c.Table == "all" {
+		tables = sheet.Tables()
+		if c.Output == "-" {
+			return usage("%s", words.T("several tables need a folder: -o DIR"))
+		}
+	} else {
+		t, err := sheet.ParseTable(c.Table)
+		if err != nil {
+			return usageError{err}
+		}
+		tables = []sheet.Table{t}
+	}
+	return e.with(func(s *storage.Store) error {
+		if c.Table == "all" {
+			if err := os.MkdirAll(c.Output, 0o755); err != nil {
+				return err
+			}
+		}
+		for _, t := range tables {
+			o, err := c.options(e, s, c.Patients)
+			if err != nil {
+				return err
+			}
+			out := c.outFlag
+			if c.Table == "all" {
+				out.Output = filepath.Join(c.Output, t.String()+".csv")
+			}
+			rows := 0
+			err = out.write(e, func(w io.Writer) (err error) {
+				rows, err = sheet.CSV(e.ctx, w, t, o)
+				return err
+			})
+			if err != nil {
+				return err
+			}
+			out.said(e, words.N(rows, "%s: %d row", "%s: %d rows", t.String(), rows))
+		}
+		return nil
+	})
+}
+
+type exportXLSXCmd struct {
+	Patients []string `arg:"" optional:"" name:"patient" help:"Ids or names; all where none is given."`
+	outFlag
+	pseudonymFlags
+}
+
+func (c *exportXLSXCmd) Run(e *env) error {
+	return e.with(func(s *storage.Store) error {
+		o, err := c.options(e, s, c.Patients)
+		if err != nil {
+			return err
+		}
+		if err := c.write(e, func(w io.Writer) error { return sheet.XLSX(e.ctx, w, o) }); err != nil {
+			return err
+		}
+		c.said(e, words.T("%s written", c.Output))
+		return nil
+	})
+}
+
+type exportFHIRCmd struct {
+	Patients []string `arg:"" optional:"" name:"patient" help:"Ids or names; all where none is given."`
+	Sheets   bool     `help:"Put the owner's progress sheet of each animal's last visit in."`
+	outFlag
+}
+
+func (c *exportFHIRCmd) Run(e *env) error {
+	return e.with(func(s *storage.Store) error {
+		r, err := e.collect(s, c.Patients)
+		if err != nil {
+			return err
+		}
+		var reports []sheet.Report
+		if c.Sheets {
+			for _, a := range r.Animals {
+				if len(a.Visits) == 0 {
+					continue
+				}
+				d, err := sheet.Owner(view.SheetInput(r.Practice, a.Patient, a.Visits, r.Made, sheet.Options{Lang: e.c.Lang}))
+				if err != nil {
+					e.warn(err.Error())
+					continue
+				}
+				reports = append(reports, sheet.Report{Visit: a.Visits[len(a.Visits)-1].ID, Title: sheet.SheetTitle(e.c.Lang), PDF: d.PDF})
+			}
+		}
+		if err := c.write(e, func(w io.Writer) error { return sheet.EncodeFHIR(w, r, reports) }); err != nil {
+			return err
+		}
+		c.said(e, words.N(len(r.Animals), "%d animal written", "%d animals written", len(r.Animals)))
+		return nil
+	})
+}
+
+type exportICSCmd struct {
+	outFlag
+}
+
+func (c *exportICSCmd) Run(e *env) error {
+	return e.with(func(s *storage.Store) error {
+		seq, _, err := e.animals(s, nil)
+		if err != nil {
+			return err
+		}
+		n := 0
+		err = c.write(e, func(w io.Writer) (err error) {
+			n, err = sheet.Calendar(w, seq, time.Now(), e.c.Lang)
+			return err
+		})
+		if err != nil {
+			return err
+		}
+		c.said(e, words.N(n, "%d visit written", "%d visits written", n))
+		return nil
+	})
+}
+
+// importCmd reads records in.
+type importCmd struct {
+	File     string `arg:"" help:"Records file or FHIR Bundle; - is standard input."`
+	DryRun   bool   `help:"Say what would be added, and add nothing."`
+	Examiner string `help:"Who brings the records in." placeholder:"NAME"`
+}
+
+// importMax bounds an import file.
+const importMax = 1 << 30
+
+// decode reads a records file or a Bundle, whichever it is.
+func (c *importCmd) decode(data []byte) (sheet.Records, []string, error) {
+	var head struct {
+		ResourceType string `json:"resourceType"`
+	}
+	if err := json.Unmarshal(data, &head); err == nil && head.ResourceType != "" {
+		return sheet.DecodeFHIR(bytes.NewReader(data))
+	}
+	return sheet.DecodeRecords(bytes.NewReader(data))
+}
+
+func (c *importCmd) Run(e *env) error {
+	data, err := e.readInput(c.File, importMax)
+	if err != nil {
+		return err
+	}
+	in, warnings, err := c.decode(data)
+	for _, w := range warnings {
+		e.warn(c.File + ": " + w)
+	}
+	if err != nil {
+		return fmt.Errorf("%s: %w", c.File, err)
+	}
+	// Everything is looked at before anything is written.
+	for _, a := range in.Animals {
+		if err := a.Patient.Validate(); err != nil {
+			return fmt.Errorf("%s: %s: %w", c.File, a.Patient.Name, err)
+		}
+		for _, v := range a.Visits {
+			if err := v.Validate(a.Patient.Species); err != nil {
+				return fmt.Errorf("%s: %s, %s: %w", c.File, a.Patient.Name, v.Examined.Format("2006-01-02"), err)
+			}
+		}
+	}
+	s, err := e.openOrCreate()
+	if err != nil {
+		return err
+	}
+	return closing(s, func(s *storage.Store) error { return c.take(e, s, in) })
+}
+
+// take adds what the store does not have yet. What it has stays as it is.
+func (c *importCmd) take(e *env, s *storage.Store, in sheet.Records) error {
+	who := strings.TrimSpace(c.Examiner)
+	patients, visits, there := 0, 0, 0
+	total := 0
+	for _, a := range in.Animals {
+		total += 1 + len(a.Visits)
+	}
+	pr, err := s.Practice()
+	if err != nil {
+		return err
+	}
+	if pr.Name == "" && in.Practice.Name != "" && !c.DryRun {
+		if _, err := s.Apply(e.ctx, orElse(who, "import"), storage.PracticeEdits(pr, in.Practice)...); err != nil {
+			return err
+		}
+	}
+	bar, done := e.progress(), 0
+	tick := func() {
+		if done++; bar != nil {
+			bar(words.T("importing"), int64(done), int64(total))
+		}
+	}
+	for _, a := range in.Animals {
+		if err := e.ctx.Err(); err != nil {
+			return err
+		}
+		old, err := s.Patient(a.Patient.ID)
+		switch {
+		case errors.Is(err, storage.ErrNotFound):
+			patients++
+			if !c.DryRun {
+				if _, err := s.Apply(e.ctx, orElse(who, "import"), storage.PatientEdits(exam.Patient{}, a.Patient)...); err != nil {
+					return err
+				}
+			}
+		case err != nil:
+			return err
+		case old.Patient.Species != a.Patient.Species:
+			return fmt.Errorf("%s", words.T("the id %s is that of %s already, of another species; nothing of it was changed", a.Patient.ID, old.Patient.Name))
+		default:
+			there++
+		}
+		tick()
+		for _, v := range a.Visits {
+			tick()
+			if _, err := s.Visit(v.ID); err == nil {
+				there++
+				continue
+			} else if !errors.Is(err, storage.ErrNotFound) {
+				return err
+			}
+			visits++
+			if c.DryRun {
+				continue
+			}
+			v.Patient = a.Patient.ID
+			if _, err := s.Apply(e.ctx, orElse(who, v.Examiner), storage.VisitEdits(exam.Visit{}, v)...); err != nil {
+				return err
+			}
+		}
+	}
+	if e.c.JSON {
+		return e.printJSON(map[string]any{"patients": patients, "visits": visits, "there_already": there, "dry_run": c.DryRun})
+	}
+	said := words.T("%d patients and %d visits added; %d records were there already", patients, visits, there)
+	if c.DryRun {
+		said = words.T("%d patients and %d visits would be added; %d records are there already", patients, visits, there)
+	}
+	e.say("%s", said)
+	return nil
+}
+
+func orElse(a, b string) string {
+	if a != "" {
+		return a
+	}
+	return b
+}
