@@ -42,7 +42,7 @@ type Rates struct {
 	SlowWeeks     float64 // time constant of slow recovery. Khan-2024, Olby-2001: weeks to three months; so 12
 	LeastRecovery float64 // recovery does not slow below the pace at this severity, until it stops: judgement
 	WorsePerWeek  float64 // severity per week when getting worse. Kathmann-2006, DM-book: walking is lost in 6–12 months; so 0.02
-	WobbleDays    float64 // days after which a steady severity has moved by one grid step (5 %), up or down: judgement
+	WobbleDays    float64 // days after which a steady severity has moved by 5 %, up or down: judgement
 	FastEnds      float64 // per week: fast recovery turns slow
 	FastStops     float64 // per week: fast recovery stops
 	SlowStops     float64 // per week: slow recovery stops
@@ -55,16 +55,18 @@ type Rates struct {
 	NewPerYear    float64 // a lesion at another place. Aikawa-2012: 10 % recurring signs and 2.3 % operated in 45 months; so 0.03
 	GrowPerYear   float64 // the lesion grows by a segment. Castel-2019: 2 % of extrusions become myelomalacia; DM over months: judgement 0.05
 
+	DayPoints float64 // standard deviation of good and bad days, in points of function: judgement, no figure found
+
 	Start [paceCount]float64 // share of each pace at the first visit: judgement, rehabilitation patients mostly recover
 }
 
 // DefaultRates returns the rates in use.
 func DefaultRates() Rates {
 	return Rates{
-		FastWeeks: 3, SlowWeeks: 12, LeastRecovery: 0.1, WorsePerWeek: 0.02, WobbleDays: 250,
-		FastEnds: 0.15, FastStops: 0.1, SlowStops: 0.08, SteadyGains: 0.02, SteadyLoses: 0.01,
+		FastWeeks: 3, SlowWeeks: 12, LeastRecovery: 0.1, WorsePerWeek: 0.02, WobbleDays: 1000,
+		FastEnds: 0.15, FastStops: 0.1, SlowStops: 0.08, SteadyGains: 0.015, SteadyLoses: 0.008,
 		WorseStops: 0.05, WorseTurns: 0.02, RecoveryTurns: 0.01,
-		JumpPerYear: 0.15, NewPerYear: 0.03, GrowPerYear: 0.05,
+		JumpPerYear: 0.15, NewPerYear: 0.03, GrowPerYear: 0.05, DayPoints: 2.2,
 		Start: [paceCount]float64{0.3, 0.3, 0.25, 0.15},
 	}
 }
@@ -108,7 +110,7 @@ func (r Rates) generator() *mat.Dense {
 			} else if drift > 0 {
 				add(from, at(k+1, p), drift)
 			}
-			wobble := 0.5 / r.WobbleDays
+			wobble := 0.5 / r.WobbleDays * 0.05 * 0.05 / spacing / spacing
 			if k > 0 {
 				add(from, at(k-1, p), wobble)
 			}
@@ -143,14 +145,18 @@ func (r Rates) start() []float64 {
 	return out
 }
 
-// clock gives transition matrices for stretches of whole hours. A stretch is the product of
-// its powers of two, so that a course of irregular visits needs few matrix exponentials.
+// unit is the grain of time: stretches are counted in quarters of a day from the first
+// visit on, so that the rounding never adds up and courses share their transition matrices.
+const unit = 6 * time.Hour
+
+// clock gives transition matrices for stretches of whole units. A stretch is the product of
+// its powers of two, so that a course of irregular visits needs one matrix exponential.
 // It is safe for concurrent use.
 type clock struct {
 	mu      sync.Mutex
 	q       *mat.Dense
-	powers  []*mat.Dense          // powers[j]: 2ʲ hours
-	stretch map[int64]*transition // by hours
+	powers  []*mat.Dense          // powers[j]: 2ʲ units
+	stretch map[int64]*transition // by units
 }
 
 // transition says how a place's states move over a stretch of time in which no lesion
@@ -179,31 +185,38 @@ func newClock(r Rates) *clock {
 	return &clock{q: q, stretch: map[int64]*transition{}}
 }
 
-// hoursOf rounds a stretch to whole hours; negative stretches are none.
-func hoursOf(d time.Duration) int64 { return max(0, int64(math.Round(d.Hours()))) }
+// units returns the whole units from one time to another.
+func units(from, to time.Time) int64 { return int64(math.Round(float64(to.Sub(from)) / float64(unit))) }
+
+func days(units int64) float64 { return float64(units) * unit.Hours() / 24 }
 
 // keepStretches bounds the memory of a clock: 115 kB each.
 const keepStretches = 400
 
-// after returns the transition over some hours, nil for none.
-func (c *clock) after(hours int64, growPerYear float64) *transition {
-	if hours <= 0 {
+// after returns the transition over some units, nil for none.
+func (c *clock) after(n int64, growPerYear float64) *transition {
+	if n <= 0 {
 		return nil
 	}
 	c.mu.Lock()
 	defer c.mu.Unlock()
-	if t, ok := c.stretch[hours]; ok {
+	if t, ok := c.stretch[n]; ok {
 		return t
 	}
 	var p *mat.Dense
-	for j := 0; hours>>j > 0; j++ {
+	for j := 0; n>>j > 0; j++ {
 		if len(c.powers) == j {
-			var scaled, power mat.Dense
-			scaled.Scale(math.Ldexp(1, j)/24, c.q)
-			power.Exp(&scaled)
+			var power mat.Dense
+			if j == 0 {
+				var scaled mat.Dense
+				scaled.Scale(days(1), c.q)
+				power.Exp(&scaled)
+			} else {
+				power.Mul(c.powers[j-1], c.powers[j-1])
+			}
 			c.powers = append(c.powers, &power)
 		}
-		if hours>>j&1 == 0 {
+		if n>>j&1 == 0 {
 			continue
 		}
 		if p == nil {
@@ -214,7 +227,7 @@ func (c *clock) after(hours int64, growPerYear float64) *transition {
 			p = &next
 		}
 	}
-	t := &transition{grow: 1 - math.Exp(-growPerYear*float64(hours)/24/365.25)}
+	t := &transition{grow: 1 - math.Exp(-growPerYear*days(n)/365.25)}
 	for j := range states {
 		t.fresh[j] = quantum(p.At(states, j))
 	}
@@ -237,13 +250,35 @@ func (c *clock) after(hours int64, growPerYear float64) *transition {
 	if len(c.stretch) >= keepStretches {
 		clear(c.stretch)
 	}
-	c.stretch[hours] = t
+	c.stretch[n] = t
 	return t
 }
 
 // quantum rounds a probability to whole multiples of 2⁻⁴⁶: what the matrix kernels of
 // different processors round differently is rounded away, so that a course reads the same everywhere.
 func quantum(v float64) float64 { return math.Max(0, math.Round(v*(1<<46))) / (1 << 46) }
+
+// daily spreads a likelihood over good and bad days: kernel[k][j] is the chance that an animal
+// whose lesion stands at level k shows level j today. Nothing and everything do not vary.
+func (r Rates) daily() [Levels][Levels]float64 {
+	var kernel [Levels][Levels]float64
+	for k := range Levels {
+		if k == 0 || k == Levels-1 || !(r.DayPoints > 0) {
+			kernel[k][k] = 1
+			continue
+		}
+		sum := 0.0
+		for j := range Levels {
+			z := float64(j-k) * spacing * 100 / r.DayPoints
+			kernel[k][j] = exp(-z * z / 2)
+			sum += kernel[k][j]
+		}
+		for j := range Levels {
+			kernel[k][j] /= sum
+		}
+	}
+	return kernel
+}
 
 // forward puts from × t into dst.
 func (t *transition) forward(dst, from []float64) {

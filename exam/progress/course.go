@@ -8,14 +8,21 @@ import (
 	"time"
 
 	"cordwalk.example/cordwalk/exam"
+	"cordwalk.example/cordwalk/exam/anatomy"
 )
 
 // A place is carried to the next visit while it holds at least leastMass of the belief; at
-// most mostPlaces are carried, the weightiest. What is dropped can come back as a new lesion.
+// most mostPlaces are carried, the weightiest, and widePlaces from the first visits, when little
+// is known. What is dropped can come back as a new lesion.
 const (
-	leastMass  = 1e-9
+	leastMass  = 1e-7
 	mostPlaces = 96
+	wideVisits = 3
+	widePlaces = 400
 )
+
+// leastState is the belief below which a single state of a place counts as impossible.
+const leastState = 1e-13
 
 // settled is how little a new visit may change what is known of an earlier one before the
 // pass over the past stops: total belief moved.
@@ -28,18 +35,19 @@ type Model struct {
 	rates  Rates
 	clock  *clock
 	reader *reader
+	daily  [Levels][Levels]float64
 	first  []float64 // distribution over the states where a lesion is met first
 
-	minMass float64
-	most    int
+	minMass, minState float64
+	most              int
 }
 
 // NewModel returns a model over the places of space.
 func NewModel(space Space, rates Rates) *Model {
-	return &Model{space: space, rates: rates, clock: newClock(rates), reader: newReader(space), first: rates.start(), minMass: leastMass, most: mostPlaces}
+	return &Model{space: space, rates: rates, clock: newClock(rates), reader: newReader(space), daily: rates.daily(), first: rates.start(), minMass: leastMass, minState: leastState, most: mostPlaces}
 }
 
-func (m *Model) after(hours int64) *transition { return m.clock.after(hours, m.rates.GrowPerYear) }
+func (m *Model) after(units int64) *transition { return m.clock.after(units, m.rates.GrowPerYear) }
 
 // node is one visit with its messages. alpha and beta hold the states of the carried places.
 type node struct {
@@ -47,12 +55,16 @@ type node struct {
 	step   *transition // from the visit before; nil for the first and for no time between
 	sites  []int       // carried places, ascending
 	alpha  []float64   // P(place, state | exams so far), adding up to 1
-	like   []float64   // likelihood of this exam for each carried place and level, the best 1
+	like   []float64   // likelihood of this exam for each carried place and level
+	day    []float64   // ln likelihood of all exams of this day, before good and bad days are summed out
+	wide   bool        // one of the first visits
+	when   int64       // units since the first visit
 	beta   []float64   // later evidence for each place and state; Σ alpha·beta = 1
 	scale  float64     // what alpha was divided by
 	logP   float64     // ln P(this exam | earlier exams), up to the constant of LogLikelihoods
 	chains chains      // how readings lean, after this visit
 
+	scores             []anatomy.SegmentScore
 	filtered, smoothed *reading // what they say of the targets, once asked for
 }
 
@@ -100,16 +112,17 @@ func (c *Course) LogLikelihood() float64 {
 // that it lies before the last one.
 func (c *Course) Add(v exam.Visit) error {
 	m := c.model
-	n := &node{visit: v}
+	n := &node{visit: v, wide: len(c.nodes) < wideVisits}
 	var last *node
-	sites := m.space.Candidates(v)
+	sites := m.space.Candidates(v, len(c.nodes) < wideVisits)
 	if len(c.nodes) > 0 {
 		last = c.nodes[len(c.nodes)-1]
 		if v.Examined.Before(last.visit.Examined) {
 			return fmt.Errorf("the visit of %s lies before the last one of %s; add visits in order of time",
 				v.Examined.Format(time.RFC3339), last.visit.Examined.Format(time.RFC3339))
 		}
-		n.step = m.after(hoursOf(v.Examined.Sub(last.visit.Examined)))
+		n.when = units(c.nodes[0].visit.Examined, v.Examined)
+		n.step = m.after(n.when - last.when)
 		n.chains = make(chains, len(last.chains))
 		for k, l := range last.chains {
 			n.chains[k] = l
@@ -120,22 +133,16 @@ func (c *Course) Add(v exam.Visit) error {
 	}
 	log := make([]float64, len(sites)*Levels)
 	logLikelihoods(m.space, n.chains, v, sites, log)
-	best := math.Inf(-1)
-	for _, l := range log {
-		best = math.Max(best, l)
-	}
+	like, best := m.overDays(last, v, sites, log)
 	if math.IsInf(best, 0) || math.IsNaN(best) {
 		return fmt.Errorf("the exam of %s is impossible at every place: the model returned %v", v.Examined.Format(time.RFC3339), best)
-	}
-	for i := range log {
-		log[i] = exp(log[i] - best)
 	}
 	prior := c.predict(last, n.step, sites)
 	total := 0.0
 	for i := range sites {
 		p := prior[at(i):at(i+1)]
 		for k := range Levels {
-			l := log[i*Levels+k]
+			l := like[i*Levels+k]
 			for q := range int(paceCount) {
 				p[k*int(paceCount)+q] *= l
 				total += p[k*int(paceCount)+q]
@@ -146,9 +153,67 @@ func (c *Course) Add(v exam.Visit) error {
 		return fmt.Errorf("the exam of %s cannot be reached from the exams before it", v.Examined.Format(time.RFC3339))
 	}
 	n.logP = best + math.Log(total)
-	m.keep(n, sites, prior, log, total)
+	m.keep(n, sites, prior, like, log, total)
 	c.nodes = append(c.nodes, n)
 	return nil
+}
+
+// overDays sums good and bad days out of an exam's log-likelihoods; ln of the scale is returned.
+// Exams of one day share the day: the second says what it adds to the first, and log becomes
+// the sum of both.
+func (m *Model) overDays(last *node, v exam.Visit, sites []int, log []float64) (like []float64, scale float64) {
+	sum := func(log []float64, best float64, out []float64) {
+		var e [Levels]float64
+		for k := range e {
+			e[k] = exp(log[k] - best)
+		}
+		for k := range out {
+			row := &m.daily[k]
+			t := 0.0
+			for j, w := range row {
+				t += float64(w * e[j])
+			}
+			out[k] = t
+		}
+	}
+	sameDay := last != nil && exam.DayOf(last.visit.Examined) == exam.DayOf(v.Examined)
+	before := 0.0
+	if sameDay {
+		before = slices.Max(last.day)
+		for i, s := range sites {
+			if k := last.index(s); k >= 0 {
+				for l := range Levels {
+					log[i*Levels+l] += last.day[k*Levels+l]
+				}
+			} else {
+				for l := range Levels {
+					log[i*Levels+l] += before
+				}
+			}
+		}
+	}
+	best := slices.Max(log)
+	if math.IsInf(best, 0) || math.IsNaN(best) {
+		return nil, best
+	}
+	like = make([]float64, len(log))
+	var once [Levels]float64
+	for i, s := range sites {
+		out := like[i*Levels : (i+1)*Levels]
+		sum(log[i*Levels:(i+1)*Levels], best, out)
+		if !sameDay {
+			continue
+		}
+		if k := last.index(s); k >= 0 {
+			sum(last.day[k*Levels:(k+1)*Levels], before, once[:])
+			for l := range out {
+				if once[l] > 0 {
+					out[l] /= once[l]
+				}
+			}
+		}
+	}
+	return like, best - before
 }
 
 // reach returns the places to weigh: the exam's own candidates, those carried so far, and
@@ -218,7 +283,7 @@ func (m *Model) spread(from []int, alpha []float64, step *transition, to []int, 
 }
 
 // keep stores the belief after an exam, without the places that hold next to nothing.
-func (m *Model) keep(n *node, sites []int, belief, like []float64, total float64) {
+func (m *Model) keep(n *node, sites []int, belief, like, day []float64, total float64) {
 	type held struct {
 		i    int
 		mass float64
@@ -231,8 +296,12 @@ func (m *Model) keep(n *node, sites []int, belief, like []float64, total float64
 		}
 	}
 	slices.SortFunc(all, func(a, b held) int { return cmp.Or(cmp.Compare(b.mass, a.mass), a.i-b.i) })
+	most := m.most
+	if n.wide {
+		most = max(most, widePlaces)
+	}
 	cut := 0
-	for cut < len(all) && cut < m.most && (cut == 0 || all[cut].mass >= m.minMass*total) {
+	for cut < len(all) && cut < most && (cut == 0 || all[cut].mass >= m.minMass*total) {
 		cut++
 	}
 	all = all[:cut]
@@ -246,12 +315,13 @@ func (m *Model) keep(n *node, sites []int, belief, like []float64, total float64
 		n.sites = append(n.sites, sites[h.i])
 		for _, v := range belief[at(h.i):at(h.i+1)] {
 			v /= sum
-			if v < 1e-30 {
+			if v < m.minState {
 				v = 0
 			}
 			n.alpha = append(n.alpha, v)
 		}
 		n.like = append(n.like, like[h.i*Levels:(h.i+1)*Levels]...)
+		n.day = append(n.day, day[h.i*Levels:(h.i+1)*Levels]...)
 	}
 }
 
@@ -304,6 +374,9 @@ func (m *Model) backward(sites []int, next *node, step *transition) []float64 {
 			l := next.like[i*Levels+k]
 			for q := range int(paceCount) {
 				j := k*int(paceCount) + q
+				if next.alpha[at(i)+j] == 0 {
+					continue // dropped there: no path leads through it
+				}
 				v := float64(l * next.beta[at(i)+j])
 				z[at(i)+j] = v
 				if step != nil {
@@ -389,7 +462,7 @@ func (m *Model) collect(sites []int, p []float64) belief {
 
 // PlateauRate is the rate of change, in points of function per week, below which a course
 // counts as a plateau: a tenth of a noticeable change each week.
-const PlateauRate = 1.0
+const PlateauRate = 2.5
 
 // filteredBelief is what was known with the i-th visit, smoothedBelief what is known of it now.
 func (c *Course) filteredBelief(i int) belief {
@@ -421,7 +494,8 @@ func (c *Course) beliefAt(t time.Time) belief {
 		return c.smoothedBelief(0)
 	}
 	m, before := c.model, c.nodes[i-1]
-	step := m.after(hoursOf(t.Sub(before.visit.Examined)))
+	now := units(c.nodes[0].visit.Examined, t)
+	step := m.after(now - before.when)
 	if i == len(c.nodes) {
 		// New lesions may arise anywhere.
 		sites := make([]int, m.space.Sites())
@@ -434,7 +508,7 @@ func (c *Course) beliefAt(t time.Time) belief {
 	next := c.nodes[i]
 	sites := m.reach(before, step, next.sites)
 	alpha := c.predict(before, step, sites)
-	beta := m.backward(sites, next, m.after(hoursOf(next.visit.Examined.Sub(t))))
+	beta := m.backward(sites, next, m.after(next.when-now))
 	for j := range alpha {
 		alpha[j] *= beta[j]
 	}

@@ -22,15 +22,15 @@ func exact(growth bool) (*bench, *Model) {
 	r := DefaultRates()
 	r.NewPerYear, r.GrowPerYear = 2, 3 // large, so that a mistake would show
 	m := NewModel(b, r)
-	m.minMass, m.most = 0, 1<<20
+	m.minMass, m.minState, m.most = 0, 0, 1<<20
 	return b, m
 }
 
 // dense is the same chain written out over all places × states.
-func dense(m *Model, b *bench, hours int64) *mat.Dense {
+func dense(m *Model, b *bench, stretch int64) *mat.Dense {
 	n := b.Sites() * states
 	p := mat.NewDense(n, n, nil)
-	t := m.after(hours)
+	t := m.after(stretch)
 	for s := range b.Sites() {
 		for i := range states {
 			row := s*states + i
@@ -57,14 +57,17 @@ func dense(m *Model, b *bench, hours int64) *mat.Dense {
 	return p
 }
 
-func likelihoods(b *bench, v exam.Visit) []float64 {
-	sites := b.Candidates(v)
+// likelihoods of an exam, good and bad days summed out.
+func likelihoods(m *Model, b *bench, v exam.Visit) []float64 {
+	sites := b.Candidates(v, true)
 	log := make([]float64, len(sites)*Levels)
 	b.LogLikelihoods(v, sites, log)
 	out := make([]float64, len(sites)*states)
 	for i := range sites {
 		for j := range states {
-			out[i*states+j] = math.Exp(log[i*Levels+j/int(paceCount)])
+			for shown, w := range m.daily[j/int(paceCount)] {
+				out[i*states+j] += w * math.Exp(log[i*Levels+shown])
+			}
 		}
 	}
 	return out
@@ -85,7 +88,7 @@ func someVisits(b *bench, r *rand.Rand, n int) []exam.Visit {
 	w := 0.0
 	for range n {
 		out = append(out, b.draw(r, r.IntN(2), r.Float64(), week(w), 4))
-		w += []float64{0, 0.3, 1, 1, 2.7, 9}[r.IntN(6)]
+		w += []float64{0.2, 0.3, 1, 1, 2.7, 9}[r.IntN(6)]
 	}
 	return out
 }
@@ -101,10 +104,10 @@ func TestStretches(t *testing.T) {
 	g, err := stat.NewGenerator(rows)
 	require.NoError(t, err, "the rates must form a generator")
 	c := newClock(r)
-	for _, hours := range []int64{1, 24, 168, 170, 2000, 9000} {
-		p := g.After(float64(hours) / 24)
-		got := c.after(hours, 0)
-		keep := math.Exp(-r.NewPerYear / 365.25 * float64(hours) / 24)
+	for _, n := range []int64{1, 4, 28, 29, 400, 1500} {
+		p := g.After(float64(n) / 4)
+		got := c.after(n, 0)
+		keep := math.Exp(-r.NewPerYear / 365.25 * float64(n) / 4)
 		worst, sum := 0.0, 0.0
 		for i := range states {
 			for j := range states {
@@ -114,7 +117,7 @@ func TestStretches(t *testing.T) {
 		for _, v := range got.fresh {
 			sum += v
 		}
-		require.Less(t, worst, 1e-9, "%d hours", hours)
+		require.Less(t, worst, 1e-9, "%d quarters of a day", n)
 		require.InDelta(t, 1-keep, sum, 1e-9)
 	}
 }
@@ -132,9 +135,9 @@ func TestAgainstDenseChain(t *testing.T) {
 			var like [][]float64
 			for i, v := range visits {
 				require.NoError(t, c.Add(v))
-				like = append(like, likelihoods(b, v))
+				like = append(like, likelihoods(m, b, v))
 				if i > 0 {
-					chain.Transitions = append(chain.Transitions, dense(m, b, hoursOf(v.Examined.Sub(visits[i-1].Examined))))
+					chain.Transitions = append(chain.Transitions, dense(m, b, units(visits[0].Examined, v.Examined)-units(visits[0].Examined, visits[i-1].Examined)))
 				}
 			}
 			want, err := chain.Smooth(like)
@@ -163,10 +166,10 @@ func TestAgainstAllPaths(t *testing.T) {
 	var like [][]float64
 	for _, v := range visits {
 		require.NoError(t, c.Add(v))
-		like = append(like, likelihoods(b, v))
+		like = append(like, likelihoods(m, b, v))
 	}
-	p1 := dense(m, b, hoursOf(visits[1].Examined.Sub(visits[0].Examined)))
-	p2 := dense(m, b, hoursOf(visits[2].Examined.Sub(visits[1].Examined)))
+	p1 := dense(m, b, units(visits[0].Examined, visits[1].Examined))
+	p2 := dense(m, b, units(visits[1].Examined, visits[2].Examined))
 	first := initial(m, b)
 	n := len(first)
 	total := 0.0
@@ -204,7 +207,7 @@ func TestChangeAgainstAllPaths(t *testing.T) {
 	rates := DefaultRates()
 	rates.NewPerYear = 0
 	m := NewModel(b, rates)
-	m.minMass, m.most = 0, 1<<20
+	m.minMass, m.minState, m.most = 0, 0, 1<<20
 	r := rand.New(rand.NewPCG(12, 3))
 	visits := someVisits(b, r, 3)
 	visits[1].Examined, visits[2].Examined = week(2), week(3)
@@ -212,9 +215,9 @@ func TestChangeAgainstAllPaths(t *testing.T) {
 	var like [][]float64
 	for _, v := range visits {
 		require.NoError(t, c.Add(v))
-		like = append(like, likelihoods(b, v))
+		like = append(like, likelihoods(m, b, v))
 	}
-	p1, p2 := dense(m, b, 14*24), dense(m, b, 7*24)
+	p1, p2 := dense(m, b, 14*4), dense(m, b, 7*4)
 	first := initial(m, b)
 	total, better := 0.0, 0.0
 	for x := range first {
@@ -263,7 +266,7 @@ func TestSplitVisits(t *testing.T) {
 		require.NoError(t, plain.Add(v))
 		require.NoError(t, gaps.Add(v))
 		if i+1 < len(visits) {
-			empty := exam.Visit{Examined: v.Examined.Add(visits[i+1].Examined.Sub(v.Examined) / 3).Truncate(3600e9)}
+			empty := exam.Visit{Examined: v.Examined.Add((visits[i+1].Examined.Sub(v.Examined) / 3).Truncate(unit))}
 			if empty.Examined.After(v.Examined) {
 				require.NoError(t, gaps.Add(empty))
 			} else {
@@ -284,7 +287,7 @@ func TestSplitVisits(t *testing.T) {
 func TestDroppingAndStoppingAreHarmless(t *testing.T) {
 	b := newBench()
 	full := NewModel(b, DefaultRates())
-	full.minMass, full.most = 0, 1<<20
+	full.minMass, full.minState, full.most = 0, 0, 1<<20
 	lean := NewModel(b, DefaultRates())
 	r := rand.New(rand.NewPCG(9, 9))
 	all, some := NewCourse(full), NewCourse(lean)

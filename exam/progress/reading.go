@@ -81,9 +81,15 @@ func newReader(s Space) *reader {
 		r.whole = append(r.whole, newProfile(r.targets, worst))
 		r.region = append(r.region, s.Region(i))
 	}
+	return r.share()
+}
+
+// share returns a reader with the same tables and scratch memory of its own.
+func (r *reader) share() *reader {
+	c := *r
 	n := r.targets + 1
-	r.used, r.bins, r.point, r.touch, r.sum = make([]bool, n), make([][bins]float64, n), make([]float64, n), make([]float64, n), make([]float64, n)
-	return r
+	c.used, c.bins, c.point, c.touch, c.sum = make([]bool, n), make([][bins]float64, n), make([]float64, n), make([]float64, n), make([]float64, n)
+	return &c
 }
 
 func (r *reader) add(p *profile, level []float64) {
@@ -140,7 +146,9 @@ func (r *reader) band(t int) Band {
 		}
 		return 1
 	}
-	return Band{100 * (1 - r.sum[t]), 100 * (1 - quantile(0.95)), 100 * (1 - quantile(0.05))}
+	// A mean that a few unlikely places pull out of the band widens it.
+	mean := 100 * (1 - r.sum[t])
+	return Band{mean, math.Min(mean, 100*(1-quantile(0.95))), math.Max(mean, 100*(1-quantile(0.05)))}
 }
 
 func (r *reader) read(b belief) *reading {

@@ -9,6 +9,7 @@ import (
 	"time"
 
 	"github.com/stretchr/testify/require"
+	"gonum.org/v1/gonum/stat/distuv"
 
 	"cordwalk.example/cordwalk/exam"
 )
@@ -77,6 +78,7 @@ type simulated struct {
 	site   int
 	weeks  []float64
 	truth  func(float64) float64
+	smooth func(float64) float64 // without good and bad days
 	still  float64
 	visits []exam.Visit
 }
@@ -84,6 +86,10 @@ type simulated struct {
 func simulate(b *bench, r *rand.Rand, s shape, visits, findings int) simulated {
 	out := simulated{site: r.IntN(len(b.sites) - 1)}
 	out.truth, out.still = s.draw(r)
+	pace, smooth := fitsAndStarts(r), out.truth
+	out.smooth = func(w float64) float64 { return smooth(pace(w)) }
+	day := goodAndBadDays(r)
+	out.truth = func(w float64) float64 { return math.Max(0, math.Min(1, out.smooth(w)+day(w))) }
 	w := 0.0
 	for range visits {
 		out.weeks = append(out.weeks, w)
@@ -94,6 +100,33 @@ func simulate(b *bench, r *rand.Rand, s shape, visits, findings int) simulated {
 		}
 	}
 	return out
+}
+
+// goodAndBadDays adds what every therapist knows: an animal is not the same each day. The
+// standard deviation is 2.5 points, independent from day to day beyond a few days (judgement).
+func goodAndBadDays(r *rand.Rand) func(float64) float64 {
+	amount := map[int]float64{}
+	return func(w float64) float64 {
+		d := int(math.Floor(w * 7))
+		if _, ok := amount[d]; !ok {
+			amount[d] = 0.025 * r.NormFloat64()
+		}
+		return amount[d]
+	}
+}
+
+// fitsAndStarts bends time: each week's progress is a gamma variate of mean 1 and standard deviation
+// 0.4, for recovery does not run on rails (judgement).
+func fitsAndStarts(r *rand.Rand) func(float64) float64 {
+	g := distuv.Gamma{Alpha: 1 / (0.4 * 0.4), Beta: 1 / (0.4 * 0.4), Src: r}
+	at := []float64{0}
+	return func(w float64) float64 {
+		i := int(w)
+		for len(at) < i+2 {
+			at = append(at, at[len(at)-1]+g.Rand())
+		}
+		return at[i] + (w-float64(i))*(at[i+1]-at[i])
+	}
 }
 
 type tally struct{ in, all int }
@@ -134,7 +167,7 @@ func TestCalibration(t *testing.T) {
 			c := NewCourse(m)
 			for k, v := range sim.visits {
 				require.NoError(t, c.Add(v))
-				truth := 100 * (1 - sim.truth(sim.weeks[k]))
+				truth := 100 * (1 - sim.smooth(sim.weeks[k]))
 				whole := c.filtered(k).whole
 				filtered[i].add(inside(whole, truth))
 				filtered[6].add(inside(whole, truth))
@@ -142,13 +175,13 @@ func TestCalibration(t *testing.T) {
 					for weeks, tl := range forecast {
 						w := sim.weeks[k] + float64(weeks)
 						band := m.reader.read(c.beliefAt(week(w))).whole
-						tl.add(inside(band, 100*(1-sim.truth(w))))
+						tl.add(inside(band, 100*(1-sim.smooth(w))))
 						fwidth[weeks] += band.High - band.Low
 					}
 				}
 			}
 			for k := range sim.visits {
-				truth := sim.truth(sim.weeks[k])
+				truth := sim.smooth(sim.weeks[k])
 				sm := c.smoothed(k)
 				smoothed[i].add(inside(sm.whole, 100*(1-truth)))
 				smoothed[6].add(inside(sm.whole, 100*(1-truth)))
@@ -159,13 +192,13 @@ func TestCalibration(t *testing.T) {
 				}
 				if k > 0 {
 					w := (sim.weeks[k-1] + sim.weeks[k]) / 2
-					between[6].add(inside(m.reader.read(c.beliefAt(week(w))).whole, 100*(1-sim.truth(w))))
+					between[6].add(inside(m.reader.read(c.beliefAt(week(w))).whole, 100*(1-sim.smooth(w))))
 				}
 			}
 			last := len(sim.visits) - 1
 			for _, from := range []int{0, 5, 10, 15, 18} {
 				ch := c.Change(from, last)
-				moved := 100 * (sim.truth(sim.weeks[from]) - sim.truth(sim.weeks[last]))
+				moved := 100 * (sim.smooth(sim.weeks[from]) - sim.smooth(sim.weeks[last]))
 				// What moved by nearly the margin is neither: half counts each way.
 				for d, p := range map[int]float64{1: ch.Better, 0: ch.Same, -1: ch.Worse} {
 					bin := int(p * 10)

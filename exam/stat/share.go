@@ -71,6 +71,10 @@ func SignTest(better, worse int) (twoSided, greater float64) {
 	tail := func(from int) float64 {
 		sum := 0.0
 		for k := n; k >= from; k-- {
+			if n <= 60 { // whole numbers, exact
+				sum += math.Ldexp(float64(combin.Binomial(n, k)), -n)
+				continue
+			}
 			sum += math.Exp(combin.LogGeneralizedBinomial(float64(n), float64(k)) - float64(n)*math.Ln2)
 		}
 		return math.Min(1, sum)

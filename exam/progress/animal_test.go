@@ -1,0 +1,142 @@
+package progress
+
+import (
+	"math"
+	"math/rand/v2"
+	"time"
+
+	"cordwalk.example/cordwalk/exam"
+	"cordwalk.example/cordwalk/exam/localise"
+)
+
+// animal draws exams from the localisation model's own predictions: a dog with a lesion at one
+// place, each finding drawn by itself.
+type animal struct {
+	model *localise.Model
+	site  int
+	cells []exam.Key
+	p     [][][]float64 // [cell][step of the grid][grade − first]
+}
+
+func newAnimal(site func(localise.Site) bool, cells []exam.Key) *animal {
+	m, err := localise.ModelOf(exam.Dog)
+	if err != nil {
+		panic(err)
+	}
+	a := &animal{model: m, site: -1, cells: cells}
+	for i, s := range m.Sites() {
+		if site(s) {
+			a.site = i
+			break
+		}
+	}
+	w := m.Weigher()
+	for _, c := range cells {
+		in := c.Item.Info()
+		p := make([][]float64, localise.GridSize)
+		for g := range in.Grades {
+			ll, err := w.LogLikelihoods(localise.Exam{Species: exam.Dog, OnsetDays: 30, Findings: []exam.Finding{{Item: c.Item, Site: c.Site, Result: exam.Graded(in.First + int8(g))}}}, []int{a.site}, nil)
+			if err != nil {
+				panic(err)
+			}
+			for k, l := range ll {
+				p[k] = append(p[k], math.Exp(l))
+			}
+		}
+		a.p = append(a.p, p)
+	}
+	return a
+}
+
+func (a *animal) draw(r *rand.Rand, severity float64, at time.Time) exam.Visit {
+	grid := localise.Grid()
+	k := 0
+	for k+2 < len(grid) && severity > grid[k+1] {
+		k++
+	}
+	w := math.Max(0, math.Min(1, (severity-grid[k])/(grid[k+1]-grid[k])))
+	v := exam.Visit{Examined: at, Examiner: "A. Brook"}
+	for i, c := range a.cells {
+		total := 0.0
+		for g := range a.p[i][k] {
+			total += (1-w)*a.p[i][k][g] + w*a.p[i][k+1][g]
+		}
+		u, g := r.Float64()*total, 0
+		for ; g < len(a.p[i][k])-1; g++ {
+			if u -= (1-w)*a.p[i][k][g] + w*a.p[i][k+1][g]; u < 0 {
+				break
+			}
+		}
+		v.Findings = append(v.Findings, exam.Finding{Item: c.Item, Site: c.Site, Result: exam.Graded(c.Item.Info().First + int8(g))})
+	}
+	exam.SortFindings(v.Findings)
+	return v
+}
+
+// allCells is every cell of the vocabulary whose grades are steps, up to n of them.
+func allCells(n int) []exam.Key {
+	var out []exam.Key
+	for _, item := range exam.Items() {
+		in := item.Info()
+		if item.Has(exam.Unordered) || in.Normal < 0 || item == exam.CutaneousTrunci || in.Group == exam.GroupWhole || item.Has(exam.TakesJoint) {
+			continue
+		}
+		for _, s := range in.Sites {
+			if len(out) < n {
+				out = append(out, exam.Key{Item: item, Site: s})
+			}
+		}
+	}
+	return out
+}
+
+// motorCells is what a weekly exam of a spinal dog looks at.
+func motorCells() []exam.Key {
+	var out []exam.Key
+	for _, i := range []exam.Item{exam.VoluntaryMotor, exam.Ataxia, exam.Knuckling, exam.PawPlacement, exam.Hopping, exam.Withdrawal, exam.Tone} {
+		for _, s := range exam.Limbs() {
+			out = append(out, exam.Key{Item: i, Site: s})
+		}
+	}
+	for _, i := range []exam.Item{exam.Patellar, exam.SuperficialPain} {
+		for _, s := range []exam.Site{exam.PelvicLeft, exam.PelvicRight} {
+			out = append(out, exam.Key{Item: i, Site: s})
+		}
+	}
+	for _, i := range []exam.Item{exam.Perineal, exam.MassQuadriceps, exam.MassHamstrings} {
+		for _, s := range []exam.Site{exam.Left, exam.Right} {
+			out = append(out, exam.Key{Item: i, Site: s})
+		}
+	}
+	for _, i := range []exam.Item{exam.Ambulation, exam.TailTone, exam.AnalTone} {
+		out = append(out, exam.Key{Item: i, Site: exam.Midline})
+	}
+	return out
+}
+
+var dog = exam.Patient{Name: "Bramble", Species: exam.Dog, Born: "2019", Problems: []exam.Problem{{Diagnosis: "disc extrusion", Onset: "2025-12-20"}}}
+
+func cordAt(from, to string, side localise.Side) func(localise.Site) bool {
+	return func(s localise.Site) bool {
+		return s.Kind == localise.Cord && s.From.String() == from && s.To.String() == to && s.Side == side
+	}
+}
+
+// dogYears is one dog over years of weekly visits: recovery, a plateau, a relapse, recovery.
+func dogYears(visits int, cells []exam.Key) []exam.Visit {
+	r := rand.New(rand.NewPCG(4, 4))
+	a := newAnimal(cordAt("T13", "L1", localise.LeftWorse), cells)
+	var out []exam.Visit
+	s, w := 0.8, 0.0
+	for i := range visits {
+		switch {
+		case i%130 == 90:
+			s = math.Min(1, s+0.4)
+		case s > 0.2:
+			s -= 0.02
+		}
+		out = append(out, a.draw(r, s, week(w)))
+		w += between(r, 0.8, 1.2)
+	}
+	return out
+}
