@@ -21,6 +21,9 @@ type Bag struct {
 	Practice exam.ID
 	Ring     *Ring
 	Device   Device
+
+	key   Secret // of the file that the bag came from or went into
+	locks []lock
 }
 
 // NewBag makes the keys of a new practice and of its first device.
@@ -30,7 +33,7 @@ func NewBag(practice exam.ID) (Bag, error) {
 		return Bag{}, err
 	}
 	r, err := NewRing(Epoch{1, NewSecret()})
-	return Bag{practice, r, d}, err
+	return Bag{Practice: practice, Ring: r, Device: d}, err
 }
 
 // ErrLocked means that the bag has a lock of the kind that was tried, and it did not open.
@@ -129,17 +132,12 @@ func init() {
 }
 
 // Lock returns the bag sealed, to be opened by any one of the openers.
-func (b Bag) Lock(s Stretch, openers ...Opener) ([]byte, error) {
+func (b *Bag) Lock(s Stretch, openers ...Opener) ([]byte, error) {
 	if len(openers) == 0 {
 		return nil, errors.New("locking the practice's keys: no way to open them was given")
 	}
-	body, err := enc.Marshal(bagBody{b.Ring.epochs, b.Device.identity.String(), Secret(b.Device.sign.Seed())})
-	if err != nil {
-		return nil, err
-	}
 	k := NewSecret()
-	f := bagFile{Format: bagFormat, Practice: b.Practice}
-	f.Sealed = k.Seal(body, f.context())
+	var locks []lock
 	for _, o := range openers {
 		l := lock{Kind: o.kind}
 		switch o.kind {
@@ -151,18 +149,43 @@ func (b Bag) Lock(s Stretch, openers ...Opener) ([]byte, error) {
 			}
 			salt := NewSecret()
 			l.Salt, l.Time, l.Memory, l.Threads = salt[:16], s.Time, s.Memory, s.Threads
-			l.Key = s.key(o.secret, l.Salt).Seal(k[:], l.context(f.Practice))
+			l.Key = s.key(o.secret, l.Salt).Seal(k[:], l.context(b.Practice))
 		case kindSecret, kindKeyring:
-			l.Key = Secret(o.secret).Derive("bag").Seal(k[:], l.context(f.Practice))
+			l.Key = Secret(o.secret).Derive("bag").Seal(k[:], l.context(b.Practice))
 		}
-		f.Locks = append(f.Locks, l)
+		locks = append(locks, l)
 	}
-	data, err := enc.Marshal(f)
+	sealed := *b
+	sealed.key, sealed.locks = k, locks
+	data, err := sealed.Reseal()
 	if err != nil {
 		return nil, err
 	}
 	if _, err := Unlock(data, openers[0]); err != nil {
 		return nil, fmt.Errorf("the keys did not open again right after they were locked: %w", err)
+	}
+	*b = sealed
+	return data, nil
+}
+
+// Reseal returns the bag sealed under the locks that it has, after its ring has changed. The bag
+// must have been locked or unlocked before.
+func (b *Bag) Reseal() ([]byte, error) {
+	if len(b.locks) == 0 {
+		return nil, errors.New("sealing the practice's keys: they have no lock yet")
+	}
+	body, err := enc.Marshal(bagBody{b.Ring.epochs, b.Device.identity.String(), Secret(b.Device.sign.Seed())})
+	if err != nil {
+		return nil, err
+	}
+	f := bagFile{Format: bagFormat, Practice: b.Practice, Locks: b.locks}
+	f.Sealed = b.key.Seal(body, f.context())
+	data, err := enc.Marshal(f)
+	if err != nil {
+		return nil, err
+	}
+	if _, err := f.open(b.key); err != nil {
+		return nil, fmt.Errorf("the keys did not open again right after they were sealed: %w", err)
 	}
 	return data, nil
 }
@@ -278,7 +301,7 @@ func (f bagFile) open(k Secret) (Bag, error) {
 	if err != nil {
 		return Bag{}, fmt.Errorf("the file of keys: %w: the device's identity does not parse", change.ErrMalformed)
 	}
-	return Bag{f.Practice, r, Device{id, ed25519.NewKeyFromSeed(b.Seed[:])}}, nil
+	return Bag{Practice: f.Practice, Ring: r, Device: Device{id, ed25519.NewKeyFromSeed(b.Seed[:])}, key: k, locks: f.Locks}, nil
 }
 
 // FormatKeyFile returns the text of a key file: one line of 64 hexadecimal digits.

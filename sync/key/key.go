@@ -144,13 +144,32 @@ func (r *Ring) Secret(epoch uint32) (Secret, bool) {
 	return Secret{}, false
 }
 
-// Next returns a ring with one epoch more.
+// Next returns a ring with one epoch more. The upper half of an epoch's number counts; the lower
+// half is random, so that two devices that begin one at the same time do not use the same number.
 func (r *Ring) Next() *Ring {
-	n, err := NewRing(append(r.Epochs(), Epoch{r.Current() + 1, NewSecret()})...)
+	var low [2]byte
+	_, _ = rand.Read(low[:])
+	n, err := r.With(Epoch{(r.Current()>>16+1)<<16 | uint32(binary.BigEndian.Uint16(low[:])), NewSecret()})
 	if err != nil {
 		panic(err) // the numbers of r are valid and the new one is higher
 	}
 	return n
+}
+
+// With returns a ring that holds these epochs too. An epoch that is there already must have the
+// same secret.
+func (r *Ring) With(epochs ...Epoch) (*Ring, error) {
+	all := r.Epochs()
+	for _, e := range epochs {
+		have, ok := r.Secret(e.Number)
+		switch {
+		case !ok:
+			all = append(all, e)
+		case have != e.Secret:
+			return nil, fmt.Errorf("key epoch %d: %w: two secrets bear its number", e.Number, change.ErrMalformed)
+		}
+	}
+	return NewRing(all...)
 }
 
 // Index returns the key under which a device's index seals its values. The index is this
