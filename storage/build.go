@@ -56,7 +56,7 @@ func rebuild(ctx context.Context, dir string, o Options) error {
 		bag, err = id.unlock(o.Files, o.Unlock)
 	}
 	if err == nil {
-		b := builder{ctx: ctx, fs: o.Files, dir: dir, bag: bag, seals: newSeals(bag.Ring), lives: id.lives(), o: o}
+		b := builder{ctx: ctx, fs: o.Files, dir: dir, bag: bag, seals: newSeals(bag.Ring), lives: id.lives(), limits: id.Limits, o: o}
 		var problems []Problem
 		_, problems, err = b.build()
 		for _, p := range problems {
@@ -73,13 +73,14 @@ func rebuild(ctx context.Context, dir string, o Options) error {
 
 // builder makes an index anew.
 type builder struct {
-	ctx   context.Context
-	fs    disk.FS
-	dir   string
-	bag   key.Bag
-	seals *seals
-	lives []string
-	o     Options
+	ctx    context.Context
+	fs     disk.FS
+	dir    string
+	bag    key.Bag
+	seals  *seals
+	lives  []string
+	limits map[string]uint64
+	o      Options
 
 	st       indexState
 	problems []Problem
@@ -124,7 +125,7 @@ func (b *builder) deal() error {
 	for _, s := range segs {
 		total += s.size
 	}
-	fl := follower{ctx: b.ctx, fs: b.fs, keys: b.bag.Ring, state: &b.st, each: b.dealBatch, parallel: true,
+	fl := follower{ctx: b.ctx, fs: b.fs, keys: b.bag.Ring, state: &b.st, each: b.dealBatch, parallel: true, limits: b.limits,
 		problem: func(p Problem) { b.problems = append(b.problems, p) },
 		read: func(n int64) {
 			before := done

@@ -39,7 +39,7 @@ func check(ctx context.Context, dir string, o Options) ([]Problem, error) {
 		return nil, err
 	}
 	var st indexState
-	fl := follower{ctx: ctx, fs: o.Files, keys: bag.Ring, state: &st, each: func(change.Batch) error { return nil }, parallel: true,
+	fl := follower{ctx: ctx, fs: o.Files, keys: bag.Ring, state: &st, each: func(change.Batch) error { return nil }, parallel: true, limits: id.Limits,
 		problem: func(p Problem) { ps = append(ps, p) }}
 	if _, err := fl.all(dir); err != nil {
 		return nil, err

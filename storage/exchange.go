@@ -6,6 +6,7 @@ import (
 	"errors"
 	"fmt"
 	"io/fs"
+	"maps"
 	"path/filepath"
 	"slices"
 
@@ -475,7 +476,7 @@ func (s *Store) absorb(ctx context.Context, x change.Stream) error {
 	}
 	segs = slices.DeleteFunc(segs, func(g segmentFile) bool { return g.stream != x })
 	s.mu.RLock()
-	ring := s.bag.Ring
+	ring, limits := s.bag.Ring, s.id.Limits
 	private := indexState{Streams: []streamState{{Stream: x}}}
 	for _, st := range s.state.Streams {
 		if st.Stream == x {
@@ -493,7 +494,7 @@ func (s *Store) absorb(ctx context.Context, x change.Stream) error {
 		some, n = some[:0], 0
 		return err
 	}
-	fl := follower{ctx: ctx, fs: s.fs, keys: ring, state: &private,
+	fl := follower{ctx: ctx, fs: s.fs, keys: ring, state: &private, limits: limits,
 		each: func(b change.Batch) error {
 			some, n = append(some, b), n+len(b.Changes)
 			if n < absorbSome {
@@ -690,29 +691,132 @@ func (s *Store) Renew(context.Context) error {
 
 // SetKeys keeps the practice's keys with the epochs of another ring, which must hold those at
 // hand. New entries are sealed in its newest epoch.
-func (s *Store) SetKeys(ring *key.Ring, relock func(key.Bag) ([]byte, error)) error {
-	for _, e := range s.Bag().Ring.Epochs() {
+func (s *Store) SetKeys(ring *key.Ring) error {
+	s.write.Lock()
+	defer s.write.Unlock()
+	s.follow.Lock()
+	defer s.follow.Unlock()
+	s.mu.Lock()
+	defer s.mu.Unlock()
+	for _, e := range s.bag.Ring.Epochs() {
 		if have, ok := ring.Secret(e.Number); !ok || have != e.Secret {
 			return errors.New("the new keys do not hold the keys of the practice")
 		}
 	}
-	s.follow.Lock()
-	defer s.follow.Unlock()
-	s.write.Lock()
-	defer s.write.Unlock()
-	s.mu.Lock()
-	defer s.mu.Unlock()
-	bag := s.bag
-	bag.Ring = ring
-	locked, err := relock(bag)
-	if err != nil {
-		return explain("locking the practice's keys", err)
+	if len(ring.Epochs()) == len(s.bag.Ring.Epochs()) {
+		return nil
 	}
-	id := s.id
-	id.Keys = locked
+	bag, id := s.bag, s.id
+	bag.Ring = ring
+	var err error
+	if id.Keys, err = bag.Reseal(); err != nil {
+		return explain("keeping the practice's keys", err)
+	}
 	if err := writeIdentity(s.fs, s.dir, id); err != nil {
 		return explain("keeping the practice's keys", err)
 	}
 	s.id, s.bag = id, bag
 	return nil
+}
+
+// SetLimits says, for streams of devices that were removed, up to which number their entries
+// count. What lies beyond is kept in the journal and shown by Quarantined. Where that changes what
+// counts, the index is built anew.
+func (s *Store) SetLimits(ctx context.Context, limits map[change.Stream]uint64) error {
+	s.absorbing.Lock()
+	defer s.absorbing.Unlock()
+	s.write.Lock()
+	defer s.write.Unlock()
+	s.follow.Lock()
+	defer s.follow.Unlock()
+	s.mu.Lock()
+	defer s.mu.Unlock()
+	if s.shut {
+		return ErrShut
+	}
+	id := s.id
+	id.Limits = map[string]uint64{}
+	touched := false
+	for x, n := range limits {
+		id.Limits[x.Name()] = n
+	}
+	for _, st := range s.state.Streams {
+		name := st.Stream.Name()
+		was, had := s.id.Limits[name]
+		now, has := id.Limits[name]
+		if (was != now || had != has) && (has && st.Head > now || had && st.Head > was) {
+			touched = true
+		}
+	}
+	if maps.Equal(id.Limits, s.id.Limits) {
+		return nil
+	}
+	if err := writeIdentity(s.fs, s.dir, id); err != nil {
+		return explain("keeping which devices were removed", err)
+	}
+	s.id = id
+	if !touched {
+		return nil
+	}
+	s.o.Notice("entries that a removed device made later no longer count; the index is built anew without them")
+	s.idx.abandon()
+	clear(s.overlay)
+	clear(s.changed)
+	clear(s.lastOwn)
+	s.behind = 0
+	return explain("building the index anew", s.rebuildIndex(ctx, true))
+}
+
+// Quarantined returns the changes that removed devices made beyond what counts of them.
+func (s *Store) Quarantined(ctx context.Context) ([]change.Change, error) {
+	s.mu.RLock()
+	limits, ring := maps.Clone(s.id.Limits), s.bag.Ring
+	s.mu.RUnlock()
+	var out []change.Change
+	for _, name := range slices.Sorted(maps.Keys(limits)) {
+		x, err := change.ParseStream(name)
+		if err != nil {
+			return nil, explain("reading what is in quarantine", err)
+		}
+		err = s.Frames(ctx, x, limits[name]+1, func(f change.Frame) error {
+			b, err := change.Open(f, ring)
+			if err != nil {
+				return nil // what cannot be read is named by check
+			}
+			for _, c := range b.Changes {
+				if c.Seq > limits[name] {
+					out = append(out, c)
+				}
+			}
+			return nil
+		})
+		if err != nil {
+			return nil, err
+		}
+	}
+	return out, nil
+}
+
+// Admit returns the edit by which a person takes a quarantined change into the record.
+func Admit(c change.Change, reason string) Edit {
+	return Edit{Patient: c.Patient, Record: c.Record, Kind: c.Kind, Field: c.Field, Value: c.Value, act: change.Admit, reason: reason}
+}
+
+// CreateJoined makes the store of a device that was let into a practice, for a site of it, and opens
+// it. What the others wrote comes with the first exchange.
+func CreateJoined(dir string, o Options, bag key.Bag, site change.Site, inc change.Incarnation) (*Store, error) {
+	o = o.withDefaults()
+	o.join = &joined{bag, site, inc}
+	s, err := create(dir, o)
+	if err != nil {
+		return nil, explain("making the practice in "+dir, err)
+	}
+	return s, nil
+}
+
+// joined is what a device brings that was let into a practice.
+type joined struct {
+	bag  key.Bag
+	site change.Site
+	inc  change.Incarnation
 }

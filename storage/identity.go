@@ -47,7 +47,9 @@ type identity struct {
 	Made        time.Time `json:"made"`
 	Protected   bool      `json:"protected"`
 	Keys        []byte    `json:"keys"` // see package key
-	Sum         string    `json:"sum"`  // CRC-32C of all the rest
+	// Limits holds, by stream, the last number that counts of a device that was removed.
+	Limits map[string]uint64 `json:"limits,omitempty"`
+	Sum    string            `json:"sum"` // CRC-32C of all the rest
 }
 
 func (id identity) sum() (string, error) {
@@ -160,11 +162,14 @@ func recoverIdentity(fsys disk.FS, dir string) error {
 }
 
 // newIdentity makes the identity of a new store with fresh keys.
-func newIdentity(fsys disk.FS, u Unlock, now time.Time) (identity, key.Bag, error) {
+func newIdentity(fsys disk.FS, u Unlock, now time.Time, join *joined) (identity, key.Bag, error) {
 	id := identity{Format: storeFormat, Site: change.NewSite().String(), Device: deviceName(),
 		Incarnation: change.NewIncarnation().String(), Made: now.UTC().Truncate(time.Second)}
-	bag, err := key.NewBag(NewID())
-	if err != nil {
+	var bag key.Bag
+	var err error
+	if join != nil {
+		bag, id.Site, id.Incarnation = join.bag, join.site.String(), join.inc.String()
+	} else if bag, err = key.NewBag(NewID()); err != nil {
 		return id, bag, err
 	}
 	id.Protected = true

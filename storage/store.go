@@ -46,6 +46,8 @@ type Options struct {
 	Files    disk.FS                              // nil: the real file system
 	Progress func(what string, done, total int64) // of long work; may be nil
 	Notice   func(words string)                   // messages for people; may be nil; may come from another goroutine
+
+	join *joined // see CreateJoined
 }
 
 func (o Options) withDefaults() Options {
@@ -182,7 +184,7 @@ func create(dir string, o Options) (*Store, error) {
 			return nil, err
 		}
 	}
-	id, bag, err := newIdentity(o.Files, o.Unlock, o.Now())
+	id, bag, err := newIdentity(o.Files, o.Unlock, o.Now(), o.join)
 	if err != nil {
 		return nil, err
 	}
@@ -325,7 +327,7 @@ func (s *Store) rebuildIndex(ctx context.Context, aside bool) error {
 			return err
 		}
 	}
-	b := builder{ctx: ctx, fs: s.fs, dir: s.dir, bag: s.bag, seals: s.seals, lives: s.id.lives(), o: s.o}
+	b := builder{ctx: ctx, fs: s.fs, dir: s.dir, bag: s.bag, seals: s.seals, lives: s.id.lives(), limits: s.id.Limits, o: s.o}
 	st, problems, err := b.build()
 	if err != nil {
 		return err
@@ -346,7 +348,7 @@ func (s *Store) catchUp() error {
 		return err
 	}
 	known := len(s.problems)
-	fl := follower{ctx: context.Background(), fs: s.fs, keys: s.bag.Ring, state: &s.state, each: s.takeIn, covered: s.covered,
+	fl := follower{ctx: context.Background(), fs: s.fs, keys: s.bag.Ring, state: &s.state, limits: s.id.Limits, each: s.takeIn, covered: s.covered,
 		problem: func(p Problem) { s.problems = append(s.problems, p) }}
 	ends, err := fl.all(s.dir)
 	if err != nil {

@@ -221,6 +221,7 @@ type follower struct {
 	each    func(b change.Batch) error // each batch that is news
 	problem func(Problem)
 	read    func(bytes int64) // progress; may be nil
+	limits  map[string]uint64 // see identity
 
 	parallel bool // open frames ahead on all processors
 	covered  bool // the state is known to hold all that was ever written: the store was closed in order
@@ -364,6 +365,15 @@ func (fl *follower) piece(p piece, st *streamState) (b change.Batch, news bool, 
 		return b, false, "an entry cannot be opened: " + o.err.Error()
 	}
 	b = o.batch
+	if limit, ok := fl.limits[p.seg.stream.Name()]; ok && b.Last() > limit {
+		// It came after the device was removed: it is kept, and counts once a person admits it.
+		st.take(p.Frame.Header, o.hash, b.Changes[0].Time, b.Changes[0].Time)
+		if b.First > limit {
+			return b, false, ""
+		}
+		b.Changes = b.Changes[:limit-b.First+1]
+		return b, true, ""
+	}
 	if p.Frame.First == st.Head+1 && p.Frame.Prev != st.Last && st.Last != (change.Hash{}) {
 		what = "the entry does not follow the one before it: the journal was changed, or a part of it is from elsewhere"
 	}
