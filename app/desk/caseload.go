@@ -72,6 +72,11 @@ func (l caseBody) MinSize([]fyne.CanvasObject) fyne.Size { return fyne.NewSize(6
 func (l caseBody) Layout(o []fyne.CanvasObject, s fyne.Size) {
 	side := min(s.Width*0.34, 320*max(1, look.Scale()*0.85))
 	left := s.Width - side - look.Unit*2
+	alone := s.Width < 800*look.Scale() // no room for both: the list alone
+	o[3].(*mark.Ground).Hidden, o[4].(*mark.Scroll).Hidden = alone, alone
+	if alone {
+		left = s.Width
+	}
 	head := o[0].MinSize().Height
 	o[0].Move(fyne.NewPos(0, 0))
 	o[0].Resize(fyne.NewSize(left, head))
@@ -303,11 +308,18 @@ func (l *caseList) TypedKey(e *fyne.KeyEvent) {
 	}
 }
 
+// stackedCase reports whether a line is too short for a column of problems; then the problem
+// stands below the animal.
+func stackedCase(width float32) bool { return width < 660*look.Scale() }
+
 // caseColumns are the widths of a line: the cross, the animal, its problem, when, how, alert.
 func caseColumns(width float32) (x, w [6]float32) {
 	s := max(1, look.Scale()*0.9)
 	fixed := [6]float32{52, 0, 0, 0, 116 * s, 84 * s}
 	share := [6]float32{0, 0.34, 0.33, 0.33, 0, 0}
+	if stackedCase(width) {
+		share = [6]float32{0, 0.6, 0, 0.4, 0, 0}
+	}
 	if width < 640*s {
 		fixed[4], fixed[5] = 40, 44
 	}
@@ -355,6 +367,7 @@ func (l caseHeadLayout) Layout(o []fyne.CanvasObject, s fyne.Size) {
 	o[0].Move(fyne.NewPos(0, s.Height-1))
 	o[0].Resize(fyne.NewSize(s.Width, 1))
 	for i, t := range l.h.texts {
+		t.Hidden = w[i] < 60
 		t.Move(fyne.NewPos(x[i], 0))
 		t.Resize(fyne.NewSize(w[i], s.Height-4))
 	}
@@ -391,7 +404,11 @@ func newCaseLine(p *caseloadPage) *caseLine {
 
 func (l *caseLine) MinSize() fyne.Size {
 	l.ExtendBaseWidget(l)
-	return fyne.NewSize(400, max(56, l.name.MinSize().Height+l.sub.MinSize().Height+look.Unit*1.5))
+	h := l.name.MinSize().Height + l.sub.MinSize().Height + look.Unit*1.5
+	if look.Scale() > 1.15 {
+		h += l.prob.MinSize().Height
+	}
+	return fyne.NewSize(400, max(56, h))
 }
 
 func (l *caseLine) set(r view.CaseRow) {
@@ -467,8 +484,16 @@ func (r *caseLineRenderer) Layout(s fyne.Size) {
 		put(a, x, top, w, ha)
 		put(b, x, top+ha, w, hb)
 	}
-	two(l.name, l.sub, x[1], w[1])
-	put(l.prob, x[2], (s.Height-l.prob.MinSize().Height)/2, w[2], l.prob.MinSize().Height)
+	if ph := l.prob.MinSize().Height; stackedCase(s.Width) && l.MinSize().Height > 56+ph/2 {
+		ha, hb := l.name.MinSize().Height, l.sub.MinSize().Height
+		top := (s.Height - ha - hb - ph) / 2
+		put(l.name, x[1], top, w[1], ha)
+		put(l.sub, x[1], top+ha, w[1], hb)
+		put(l.prob, x[1], top+ha+hb, w[1], ph)
+	} else {
+		two(l.name, l.sub, x[1], w[1])
+		put(l.prob, x[2], (s.Height-ph)/2, w[2], ph)
+	}
 	two(l.due, l.last, x[3], w[3])
 	put(l.change, x[4], (s.Height-20)/2, 20, 20)
 	h := l.word.MinSize().Height

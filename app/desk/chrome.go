@@ -245,21 +245,24 @@ func (i *railItem) MouseOut()                      { i.hover = false; i.Refresh(
 // the day, whether everything is saved and shared.
 type strip struct {
 	widget.BaseWidget
-	win  *window
-	box  *fyne.Container
-	save *savedMark
+	win   *window
+	box   *fyne.Container
+	outer *fyne.Container
+	save  *savedMark
 }
 
 func newStrip(w *window) *strip {
 	s := &strip{win: w, save: newSavedMark()}
 	s.box = mark.Column(0)
+	s.outer = mark.Column(0, mark.Pad(look.Unit, look.Unit*2, s.box), mark.Rule())
 	s.ExtendBaseWidget(s)
 	return s
 }
 
-func (s *strip) CreateRenderer() fyne.WidgetRenderer {
-	return widget.NewSimpleRenderer(mark.Column(0, mark.Pad(look.Unit, look.Unit*2, s.box), mark.Rule()))
-}
+func (s *strip) CreateRenderer() fyne.WidgetRenderer { return widget.NewSimpleRenderer(s.outer) }
+
+// HeightFor returns the height of the strip at a width.
+func (s *strip) HeightFor(width float32) float32 { return mark.HeightFor(s.outer, width) }
 
 // badge is a word in a frame: DEMO, NOT PROTECTED.
 func badge(word, tip string) fyne.CanvasObject {
@@ -281,15 +284,20 @@ func (s *strip) update() {
 	if !a.records.Protected() {
 		badges = append(badges, badge(words.T("not protected"), words.T("The key lies beside the data: whoever has this folder can read it.")))
 	}
-	right := []fyne.CanvasObject{mark.Line(st.Date)}
-	line2 := append(badges, s.save)
-	rightBox := mark.Column(2, alignRight(right...), alignRight(line2...))
+	large := look.Scale() > 1.3
+	rightBox := mark.Column(2, alignRight(mark.Line(st.Date)), alignRight(append(badges, s.save)...))
+	if large {
+		rightBox = mark.Column(2, alignRight(mark.Line(st.Date)), alignRight(s.save))
+		for _, b := range badges {
+			rightBox.Add(alignRight(b))
+		}
+	}
 	if f.Patient.ID.IsZero() {
 		name := a.practice.Name
 		if name == "" {
 			name = words.T("Practice without a name")
 		}
-		left := mark.Column(0, mark.Heading(name).AtLeast(120), mark.Soft(words.T("examining: %s", a.examiner)).AtLeast(120))
+		left := mark.Column(0, mark.NewPara(name).As(look.Head).Strong(), mark.NewPara(words.T("examining: %s", a.examiner)).In(look.InkSoft))
 		s.box.Objects = []fyne.CanvasObject{mark.Row(look.Unit*2, []float32{1, 0}, left, rightBox)}
 		s.box.Refresh()
 		s.Refresh()
@@ -299,30 +307,23 @@ func (s *strip) update() {
 	if problem == "" {
 		problem = words.T("no problem on file")
 	}
-	caution := words.T("no precautions")
-	cautionText := mark.Soft(caution).AtLeast(80)
-	second := []fyne.CanvasObject{mark.Line(problem).AtLeast(100)}
-	weights := []float32{1}
-	var list []string
-	list = append(list, st.Precautions...)
+	list := append([]string(nil), st.Precautions...)
 	if st.Limits != "" {
 		list = append(list, st.Limits)
 	}
+	// Precautions are never shortened: they take as many lines as they need.
+	var caution fyne.CanvasObject = mark.NewPara(words.T("no precautions")).In(look.InkSoft)
 	if len(list) > 0 {
-		icon := canvas.NewImageFromResource(look.Icon("caution", look.Worse))
-		icon.FillMode = canvas.ImageFillContain
-		side := 20 * look.Scale()
-		icon.SetMinSize(fyne.NewSize(side, side))
-		cautionText = mark.Bold(strings.Join(list, " · ")).AtLeast(100)
-		second = append(second, mark.Row(6, []float32{0, 1}, icon, cautionText))
-	} else {
-		second = append(second, cautionText)
+		caution = mark.Row(6, []float32{0, 1}, iconImage("caution", look.Worse, 20), mark.NewPara(strings.Join(list, " · ")).Strong())
 	}
-	weights = append(weights, 1)
 	name := mark.Heading(st.Name).AtLeast(80)
-	left := mark.Column(0,
-		mark.Row(look.Unit*1.5, []float32{0, 1}, fitted(name, 420), mark.Soft(st.Signalment).AtLeast(60)),
-		mark.Row(look.Unit*2, weights, second...))
+	left := mark.Column(0, mark.Row(look.Unit*1.5, []float32{0, 1}, fitted(name, 420), mark.Soft(st.Signalment).AtLeast(60)))
+	if large {
+		left.Add(mark.NewPara(problem))
+		left.Add(caution)
+	} else {
+		left.Add(mark.Row(look.Unit*2, []float32{1, 1.2}, mark.Line(problem).AtLeast(100), caution))
+	}
 	s.box.Objects = []fyne.CanvasObject{mark.Row(look.Unit*1.5, []float32{0, 1, 0}, mark.NewSpecies(f.Patient.Species, 52*max(1, look.Scale()*0.8)), left, rightBox)}
 	s.box.Refresh()
 	s.Refresh()

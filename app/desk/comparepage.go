@@ -143,8 +143,11 @@ func (p *comparePage) build() {
 	}
 	first := mark.NewButton(words.T("First and last"), "", func() { p.typedRune('f') }).WithTip(words.T("Key f"))
 	last := mark.NewButton(words.T("Last two"), "", func() { p.typedRune('l') }).WithTip(words.T("Key l"))
-	picks := mark.Row(look.Unit, []float32{1, 0, 1, 0, 0}, pick(p.before, func(id exam.ID) { p.set(id, p.after) }), mark.NewChange(c.Overall, 24),
-		pick(p.after, func(id exam.ID) { p.set(p.before, id) }), last, first)
+	picks := mark.Column(look.Unit, mark.Row(look.Unit, []float32{1, 0, 1}, pick(p.before, func(id exam.ID) { p.set(id, p.after) }), mark.NewChange(c.Overall, 24),
+		pick(p.after, func(id exam.ID) { p.set(p.before, id) })), mark.Wrapped(look.Unit, last, first))
+	if look.Scale() <= 1.3 {
+		picks = mark.Row(look.Unit, []float32{1, 0, 0}, picks.Objects[0], last, first)
+	}
 	sentence := mark.NewPara(c.Words).As(look.Head).Strong()
 	text := []fyne.CanvasObject{sentence}
 	if c.Overall.Word != "" {
@@ -212,17 +215,17 @@ func newCompareLine(r view.CompareRow) fyne.CanvasObject {
 		if !had {
 			b, w = view.Bead{}, words.T("not tested")
 		}
-		return mark.Row(look.Unit, []float32{0, 1}, mark.NewBead(b, 18), mark.Line(w).AtLeast(30))
+		return mark.Row(look.Unit, []float32{0, 1}, mark.NewBead(b, 18), mark.NewPara(w))
 	}
-	word := mark.Line(r.Mark.Word).In(mark.ChangeToken(r.Mark.Shape)).AtLeast(20)
+	word := mark.NewPara(r.Mark.Word).In(mark.ChangeToken(r.Mark.Shape))
 	if r.Mark.Shape == view.NoShape {
 		word.Token = look.InkSoft
 	}
 	var end fyne.CanvasObject = word
 	if r.Weak != "" {
-		end = mark.Column(0, word, mark.Note(r.Weak).AtLeast(20))
+		end = mark.Column(0, word, mark.NewPara(r.Weak).In(look.InkSoft).As(look.Small))
 	}
-	line := mark.Row(look.Unit*1.5, []float32{1.3, 1.2, 1.2, 0, 0.9}, mark.Line(r.Name).AtLeast(40),
+	line := mark.Row(look.Unit*1.5, []float32{1.3, 1.2, 1.2, 0, 0.9}, mark.NewPara(r.Name),
 		day(r.BeforeBead, r.BeforeWords, r.HadBefore), day(r.AfterBead, r.AfterWords, r.HasAfter), mark.NewChange(r.Mark, 20), end)
 	return mark.Column(0, mark.Pad(5, look.Unit/2, line), mark.Rule())
 }
@@ -230,14 +233,14 @@ func newCompareLine(r view.CompareRow) fyne.CanvasObject {
 func measureLine(m view.MeasureRow) fyne.CanvasObject {
 	value := func(x exam.Measured, had bool) fyne.CanvasObject {
 		if !had {
-			return mark.Soft(words.T("not measured")).AtLeast(30)
+			return mark.NewPara(words.T("not measured")).In(look.InkSoft)
 		}
-		return mark.Line(valueWords(x)).AtLeast(30)
+		return mark.NewPara(valueWords(x))
 	}
 	note := m.ChangeWords
 	if m.Unlike != "" {
 		note = m.Unlike
 	}
-	line := mark.Row(look.Unit*1.5, []float32{1.3, 1.2, 1.2, 0, 0.9}, mark.Line(m.Name).AtLeast(40), value(m.Before, m.HadBefore), value(m.After, m.HasAfter), mark.Space(20, 1), mark.Line(note).AtLeast(20))
+	line := mark.Row(look.Unit*1.5, []float32{1.3, 1.2, 1.2, 0, 0.9}, mark.NewPara(m.Name), value(m.Before, m.HadBefore), value(m.After, m.HasAfter), mark.Space(20, 1), mark.NewPara(note))
 	return mark.Column(0, mark.Pad(5, look.Unit/2, line), mark.Rule())
 }

@@ -74,7 +74,7 @@ func (p *coursePage) build() {
 		p.zooms = append(p.zooms, b)
 		return b
 	}
-	bar := mark.Row(look.Unit, []float32{1}, mark.Title(words.T("Course")).AtLeast(80),
+	bar := mark.Bar(look.Unit, mark.Title(words.T("Course")).AtLeast(80),
 		zoom(words.T("All"), 0), zoom(words.T("12 weeks"), 12), zoom(words.T("4 weeks"), 4),
 		mark.NewButton("", "left", func() { p.pan(1) }).WithTip(words.T("Earlier")),
 		mark.NewButton("", "right", func() { p.pan(-1) }).WithTip(words.T("Later")),

@@ -98,8 +98,8 @@ func editorBody(s *view.ExamSheet, focus int, done func(error)) []fyne.CanvasObj
 		return nil
 	}
 	c := s.Cells()[focus]
-	name := mark.Bold(c.Name()).AtLeast(120)
-	side := mark.Note("").AtLeast(80).Right()
+	name := mark.NewPara(c.Name()).Strong()
+	side := mark.NewPara("").In(look.InkSoft)
 	switch {
 	case c.Barred != "" && c.Override == "":
 		side.Set(words.T("not safe: %s", c.Barred))
@@ -111,7 +111,10 @@ func editorBody(s *view.ExamSheet, focus int, done func(error)) []fyne.CanvasObj
 	if st, ok := s.Step(); ok && st.Again {
 		side.Set(words.T("absent uppermost: test it again undermost"))
 	}
-	head := mark.Row(look.Unit*2, []float32{1, 1}, name, side)
+	head := mark.Column(2, name)
+	if side.Words != "" {
+		head.Add(side)
+	}
 	mode, text := s.Mode()
 	switch {
 	case s.Closed() && !isAmending(s):

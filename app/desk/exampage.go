@@ -188,6 +188,9 @@ func (p *examPage) foot() fyne.CanvasObject {
 	if p.sheet == nil {
 		return mark.Space(1, 1)
 	}
+	if look.Scale() > 1.3 {
+		return mark.Row(look.Unit, nil, p.where, p.undoB, p.closed)
+	}
 	return mark.Row(look.Unit, nil, p.where, mark.Sized(120, 8, p.walk), p.undoB, p.closed)
 }
 
@@ -216,6 +219,9 @@ func (p *examPage) changed() {
 	}
 	pr := p.sheet.Progress()
 	p.where.Words = pr.Words
+	if look.Scale() > 1.3 {
+		p.where.Words = words.T("%d of %d", pr.Done, pr.Total)
+	}
 	p.where.Refresh()
 	p.walk.set(float64(pr.Done) / float64(max(1, pr.Total)))
 	if p.sheet.CanUndo() {

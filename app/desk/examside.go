@@ -22,6 +22,16 @@ import (
 	"cordwalk.example/cordwalk/exam/localise"
 )
 
+// sideQuestion is today's visit as entered so far.
+type sideQuestion struct{ visit exam.Visit }
+
+// sideAnswer is what it means: alerts, and the likely site or why there is none.
+type sideAnswer struct {
+	alerts []alertLine
+	result *localise.Result
+	err    error
+}
+
 // examSide is the right part of the exam: alerts, the cord map, the likely site with what
 // speaks for and against it, and the next test.
 type examSide struct {
@@ -40,8 +50,10 @@ type examSide struct {
 	box    *fyne.Container
 	lines  *fyne.Container
 
-	ask    *view.Newest[localise.Exam, *localise.Result]
+	ask    *view.Newest[sideQuestion, sideAnswer]
 	result *localise.Result
+	found  []alertLine
+	failed error
 	opened bool // somebody asked for the map
 	shut   bool // somebody closed it again
 	kg     float64
@@ -66,19 +78,24 @@ func newExamSide(p *examPage) *examSide {
 	}
 	var engine *localise.Engine
 	species := p.file.Patient.Species
-	s.ask = view.NewNewest(fyne.Do, func(_ context.Context, x localise.Exam) (*localise.Result, error) {
+	patient, others := p.file.Patient, p.file.Visits
+	s.ask = view.NewNewest(fyne.Do, func(_ context.Context, q sideQuestion) (sideAnswer, error) {
+		out := sideAnswer{alerts: alertsOf(patient, others, q.visit)}
 		if engine == nil {
 			e, err := localise.New(species)
 			if err != nil {
-				return nil, err
+				out.err = err
+				return out, nil
 			}
 			engine = e
 		}
-		r, err := engine.Compute(x)
+		r, err := engine.Compute(localise.OfVisit(patient, q.visit))
 		if err != nil {
-			return nil, err
+			out.err = err
+			return out, nil
 		}
-		return r.Clone(), nil
+		out.result = r.Clone()
+		return out, nil
 	}, s.answered)
 	s.ExtendBaseWidget(s)
 	return s
@@ -108,23 +125,12 @@ func (s *examSide) toggle() {
 // update asks for the likely site of what is entered now.
 func (s *examSide) update() {
 	sheet := s.page.sheet
-	s.ask.Ask(localise.OfVisit(sheet.Patient(), sheet.Visit()))
+	s.ask.Ask(sideQuestion{sheet.Visit()})
 	s.show()
 }
 
-func (s *examSide) answered(r *localise.Result, err error) {
-	if err != nil {
-		var no *localise.Unsupported
-		if errors.As(err, &no) {
-			s.note.Words = words.T("There are no published data to localise in this species.")
-		} else {
-			s.note.Words = err.Error()
-		}
-		s.result = nil
-		s.show()
-		return
-	}
-	s.result = r
+func (s *examSide) answered(a sideAnswer, _ error) {
+	s.found, s.result, s.failed = a.alerts, a.result, a.err
 	s.show()
 }
 
@@ -149,7 +155,13 @@ func (s *examSide) show() {
 	if r == nil {
 		s.host.Hide()
 		s.note.Show()
-		if s.note.Words == "" {
+		var no *localise.Unsupported
+		switch {
+		case errors.As(s.failed, &no):
+			s.note.Words = words.T("There are no published data to localise in this species.")
+		case s.failed != nil:
+			s.note.Words = s.failed.Error()
+		default:
 			s.note.Words = words.T("Working out the likely site…")
 		}
 		s.likely.Words, s.pro.Words, s.con.Words, s.warn.Words = "", "", "", ""
@@ -227,7 +239,7 @@ func (s *examSide) next() (exam.Key, bool) {
 // showAlerts shows what asks for the veterinarian, at once and where it belongs.
 func (s *examSide) showAlerts() {
 	var out []fyne.CanvasObject
-	for _, a := range s.page.alerts() {
+	for _, a := range s.found {
 		alert := a
 		icon := canvas.NewImageFromResource(look.Icon("phone", look.Call))
 		icon.FillMode = canvas.ImageFillContain
@@ -252,7 +264,7 @@ func (s *examSide) showAlerts() {
 // unanswered lists the alerts that must be answered before the visit can be closed.
 func (s *examSide) unanswered() []string {
 	var out []string
-	for _, a := range s.page.alerts() {
+	for _, a := range s.found {
 		if a.Must && a.Answered == "" {
 			out = append(out, a.Title)
 		}

@@ -137,7 +137,7 @@ func (l *gridLayout) place(width float32, move bool) float32 {
 			}
 			put(h, headHeight())
 		}
-		put(r, r.height())
+		put(r, r.height(width))
 		if i == l.g.open {
 			put(l.g.editor, l.g.editor.HeightFor(width))
 		}
@@ -285,12 +285,20 @@ func (l headLayout) Layout(_ []fyne.CanvasObject, s fyne.Size) {
 	h.title.Move(fyne.NewPos(0, s.Height-m.Height-3))
 	h.title.Resize(fyne.NewSize(title, m.Height))
 	for i, c := range h.cols {
+		c.Hidden = narrow(s.Width)
 		cm := c.MinSize()
 		c.Move(fyne.NewPos(x0+w*float32(i)/4, s.Height-cm.Height-4))
 		c.Resize(fyne.NewSize(w/4, cm.Height))
 	}
 	h.rule.Move(fyne.NewPos(0, s.Height-1))
 	h.rule.Resize(fyne.NewSize(s.Width, 1))
+}
+
+// narrow reports whether four cells side by side would be too small to read; then two stand
+// on a line and each says its limb.
+func narrow(width float32) bool {
+	_, w := cellArea(width)
+	return w/4 < 84*look.Scale()
 }
 
 // cellArea returns where the cells of a row begin and how wide they are together.
@@ -308,7 +316,6 @@ type gridRow struct {
 	segments *mark.Text
 	cells    []*gridCell
 	spans    []cellSpan
-	lines    int
 	rule     *mark.Ground
 }
 
@@ -353,16 +360,34 @@ func newGridRow(g *examGrid, row int, r view.Row) *gridRow {
 		if j := cells[i].Key.Joint; j != exam.NoJoint {
 			w.cells[k].caption = words.Of(j.String())
 		}
-		w.lines = max(w.lines, w.spans[k].line+1)
 	}
-	w.lines = max(w.lines, 1)
 	w.ExtendBaseWidget(w)
 	return w
 }
 
-func lineHeight() float32 { return look.Target * max(1, look.Scale()) }
+func lineHeight() float32 {
+	return max(look.Target, look.Target*look.Scale())
+}
 
-func (r *gridRow) height() float32 { return float32(r.lines)*lineHeight() + 1 }
+func (r *gridRow) height(width float32) float32 {
+	n := 0
+	for _, s := range r.spans {
+		n = max(n, s.in(narrow(width)).line+1)
+	}
+	return float32(max(1, n))*lineHeight() + 1
+}
+
+// in returns the span in a wide or a narrow grid.
+func (s cellSpan) in(narrow bool) cellSpan {
+	if !narrow {
+		return s
+	}
+	if s.to-s.from > 1 {
+		return cellSpan{2*s.line + s.from/4, s.from, s.to}
+	}
+	at := s.from % 2 * 2
+	return cellSpan{2*s.line + s.from/2, at, at + 2}
+}
 
 func (r *gridRow) CreateRenderer() fyne.WidgetRenderer {
 	objects := []fyne.CanvasObject{r.name, r.segments, r.rule}
@@ -374,7 +399,9 @@ func (r *gridRow) CreateRenderer() fyne.WidgetRenderer {
 
 type rowLayout struct{ r *gridRow }
 
-func (l rowLayout) MinSize([]fyne.CanvasObject) fyne.Size { return fyne.NewSize(100, l.r.height()) }
+func (l rowLayout) MinSize([]fyne.CanvasObject) fyne.Size {
+	return fyne.NewSize(100, l.r.height(l.r.Size().Width))
+}
 func (l rowLayout) Layout(_ []fyne.CanvasObject, s fyne.Size) {
 	r := l.r
 	x0, w := cellArea(s.Width)
@@ -388,8 +415,10 @@ func (l rowLayout) Layout(_ []fyne.CanvasObject, s fyne.Size) {
 	r.name.Resize(fyne.NewSize(x0-look.Unit, n))
 	r.segments.Move(fyne.NewPos(0, top+n))
 	r.segments.Resize(fyne.NewSize(x0-look.Unit, max(m, 1)))
+	small := narrow(s.Width)
 	for k, c := range r.cells {
-		sp := r.spans[k]
+		sp := r.spans[k].in(small)
+		c.setShort(small)
 		c.Move(fyne.NewPos(x0+w*float32(sp.from)/4, float32(sp.line)*line))
 		c.Resize(fyne.NewSize(w*float32(sp.to-sp.from)/4, line))
 	}
@@ -417,9 +446,11 @@ type gridCell struct {
 	widget.BaseWidget
 	grid    *examGrid
 	index   int
-	caption string
+	caption string // always shown
+	limb    string // shown where the columns have no heading
 	face    cellFace
 	hover   bool
+	short   bool
 
 	bed   *canvas.Rectangle
 	marks *canvas.Raster
@@ -430,8 +461,30 @@ type gridCell struct {
 
 func newGridCell(g *examGrid, index int) *gridCell {
 	c := &gridCell{grid: g, index: index}
+	if s := g.sheet.Cells()[index].Site; s.IsLimb() {
+		c.limb = view.SiteName(s)
+	}
 	c.ExtendBaseWidget(c)
 	return c
+}
+
+// setShort says whether the columns have no heading, so that each cell names its limb.
+func (c *gridCell) setShort(on bool) {
+	if c.short != on {
+		c.short = on
+		c.Refresh()
+	}
+}
+
+// title is the small line above the marks.
+func (c *gridCell) title() string {
+	switch {
+	case !c.short || c.limb == "":
+		return c.caption
+	case c.caption == "":
+		return c.limb
+	}
+	return c.limb + ", " + c.caption
 }
 
 // faceOf reads a cell's face from the sheet.
@@ -512,7 +565,7 @@ func beadSide() float32 { return 18 * max(1, look.Scale()*0.9) }
 // plan places the marks in a cell: today's bead, and at the right last visit's with the change.
 func (c *gridCell) plan(s fyne.Size) (bead, last, change fyne.Position, y float32) {
 	y = s.Height / 2
-	if c.caption != "" {
+	if c.title() != "" {
 		y = s.Height - beadSide()/2 - 6
 	}
 	side := beadSide()
@@ -572,7 +625,7 @@ func (r *cellRenderer) place(s fyne.Size) {
 	if f.showLast {
 		end = last.X - beadSide()/2 - 4
 	}
-	c.head.Text, _ = mark.Fit(c.caption, s.Width-2*look.Unit, c.head.TextSize, c.head.TextStyle)
+	c.head.Text, _ = mark.Fit(c.title(), s.Width-2*look.Unit, c.head.TextSize, c.head.TextStyle)
 	c.head.Move(fyne.NewPos(look.Unit, 3))
 	c.head.Resize(c.head.MinSize())
 	x := look.Unit

@@ -124,7 +124,7 @@ func (p *patientPage) build() {
 	exam1 := mark.NewButton(words.T("Keep and start exam"), "exam", func() { p.keepThen(view.ScreenExam) })
 	cancel := mark.NewButton(words.T("Back without keeping"), "", p.back).As(mark.Quiet)
 	p.root = mark.Pad(look.Unit*1.5, look.Unit*2, mark.ColumnGrow(look.Unit, 2,
-		mark.Row(look.Unit, []float32{1}, mark.Title(title).AtLeast(100), cancel, exam1, keep), p.miss, p.body))
+		mark.Bar(look.Unit, mark.Title(title).AtLeast(100), cancel, exam1, keep), p.miss, p.body))
 }
 
 func (p *patientPage) missing() {
@@ -224,7 +224,7 @@ func (p *patientPage) drawLists() {
 	}
 	group := func(title, add string, lines []fyne.CanvasObject, more func()) fyne.CanvasObject {
 		b := mark.NewButton(add, "add", func() { more(); p.drawLists() })
-		return mark.Column(look.Unit/2, append(append([]fyne.CanvasObject{mark.Row(look.Unit, []float32{1}, mark.Heading(title).AtLeast(60), b), mark.Rule()}, lines...), mark.Space(1, 1))...)
+		return mark.Column(look.Unit/2, append(append([]fyne.CanvasObject{mark.Bar(look.Unit, mark.Heading(title).AtLeast(60), b), mark.Rule()}, lines...), mark.Space(1, 1))...)
 	}
 	p.lists.Objects = []fyne.CanvasObject{
 		group(words.T("Problems"), words.T("Add a problem"), problems, func() { f.Problems = append(f.Problems, exam.Problem{ID: id()}) }),

@@ -147,7 +147,7 @@ func (p *settingsPage) drawLists() {
 		p.drawLists()
 	})
 	head := func(title string, b fyne.CanvasObject) fyne.CanvasObject {
-		return mark.Row(look.Unit, []float32{1}, mark.Heading(title).AtLeast(60), b)
+		return mark.Bar(look.Unit, mark.Heading(title).AtLeast(60), b)
 	}
 	if len(own) == 0 {
 		own = append(own, mark.NewPara(words.T("Full spinal exam, weekly recheck and thoracic limb come with the program. A protocol of your own holds the tests you choose.")).In(look.InkSoft))

@@ -109,7 +109,7 @@ func (p *sheetPage) make() {
 	p.turn++
 	turn := p.turn
 	a := p.win.app
-	in := sheet.Input{Practice: a.practice, Patient: p.file.Patient, Visits: p.file.Visits, Notices: noticesOf(p.file), At: a.now(), Options: p.options}
+	in := view.SheetInput(a.practice, p.file.Patient, p.file.Visits, a.now(), p.options)
 	p.save.Disable()
 	p.print.Disable()
 	a.work(func(context.Context) (func(), error) {

@@ -13,15 +13,6 @@ import (
 	"cordwalk.example/cordwalk/exam"
 )
 
-// alertLine is one alert of the visit as the screen shows it.
-type alertLine struct {
-	Rule     string
-	Title    string
-	Why      string
-	Answered string // who was told and when, empty where nobody was
-	Must     bool   // has to be answered before the visit can be closed
-}
-
 // edit changes the visit around the exam and says what went wrong.
 func (p *examPage) edit(do func(*exam.Visit)) {
 	if err := p.sheet.EditHead(do); err != nil {
@@ -445,9 +436,6 @@ func (p *examPage) exerciseLine(e exam.HomeExercise) fyne.CanvasObject {
 		func(v *exam.Visit, s string) { at(v).Override = s })...)
 	return mark.Column(look.Unit, append(rows, mark.Rule())...)
 }
-
-// alerts returns the alerts that today's visit raises.
-func (p *examPage) alerts() []alertLine { return alertsOf(p.file, p.sheet.Visit()) }
 
 // answer asks who was told of an alert.
 func (p *examPage) answer(a alertLine) {

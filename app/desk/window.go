@@ -80,7 +80,7 @@ func (l windowLayout) Layout(o []fyne.CanvasObject, s fyne.Size) {
 		w.rail.Move(fyne.NewPos(0, 0))
 	}
 	if w.strip.Visible() {
-		top = w.strip.MinSize().Height
+		top = w.strip.HeightFor(s.Width - rail)
 		w.strip.Move(fyne.NewPos(rail, 0))
 		w.strip.Resize(fyne.NewSize(s.Width-rail, top))
 	}

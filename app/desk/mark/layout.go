@@ -286,6 +286,73 @@ func (l *wrapped) Layout(objects []fyne.CanvasObject, size fyne.Size) {
 	})
 }
 
+// Bar sets a title at the left and buttons at the right; where they do not fit beside each
+// other, the buttons stand below, on as many lines as they need.
+func Bar(gap float32, title fyne.CanvasObject, buttons ...fyne.CanvasObject) *fyne.Container {
+	return container.New(&bar{wrapped{gap: gap}}, append([]fyne.CanvasObject{title}, buttons...)...)
+}
+
+type bar struct{ wrapped }
+
+// room returns the width of the buttons in one line, and of the title as it would like to be.
+func (l *bar) room(o []fyne.CanvasObject) (buttons, title float32) {
+	for i, b := range o[1:] {
+		if i > 0 {
+			buttons += l.gap
+		}
+		buttons += b.MinSize().Width
+	}
+	title = o[0].MinSize().Width
+	if t, ok := o[0].(*Text); ok {
+		title = t.measure(t.Words).Width
+	}
+	return buttons, title
+}
+
+func (l *bar) heightFor(o []fyne.CanvasObject, width float32) float32 {
+	b, t := l.room(o)
+	if b+t+l.gap*2 <= width {
+		h := HeightFor(o[0], t)
+		for _, x := range o[1:] {
+			h = max(h, x.MinSize().Height)
+		}
+		return h
+	}
+	return HeightFor(o[0], width) + l.gap + l.place(o[1:], width, nil)
+}
+
+func (l *bar) MinSize(o []fyne.CanvasObject) fyne.Size {
+	var w float32
+	for _, x := range o {
+		w = max(w, x.MinSize().Width)
+	}
+	return fyne.NewSize(w, l.heightFor(o, max(l.last, w)))
+}
+
+func (l *bar) Layout(o []fyne.CanvasObject, s fyne.Size) {
+	l.last = s.Width
+	b, t := l.room(o)
+	if b+t+l.gap*2 <= s.Width {
+		x := s.Width - b
+		o[0].Move(fyne.NewPos(0, (s.Height-HeightFor(o[0], t))/2))
+		o[0].Resize(fyne.NewSize(x-l.gap, HeightFor(o[0], t)))
+		for _, c := range o[1:] {
+			m := c.MinSize()
+			c.Move(fyne.NewPos(x, (s.Height-m.Height)/2))
+			c.Resize(m)
+			x += m.Width + l.gap
+		}
+		return
+	}
+	h := HeightFor(o[0], s.Width)
+	o[0].Move(fyne.NewPos(0, 0))
+	o[0].Resize(fyne.NewSize(s.Width, h))
+	l.place(o[1:], s.Width, func(c fyne.CanvasObject, x, y, w, ht float32) {
+		c.Move(fyne.NewPos(x, h+l.gap+y))
+		c.Resize(fyne.NewSize(w, ht))
+	})
+}
+
 // Pad puts room around an object: above and below, left and right.
 func Pad(v, h float32, o fyne.CanvasObject) *fyne.Container {
 	return container.New(&padding{v, h}, o)
