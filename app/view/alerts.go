@@ -1,27 +1,115 @@
 package view
 
 import (
+	"strings"
 	"time"
 
+	"cordwalk.example/cordwalk/assets/words"
 	"cordwalk.example/cordwalk/exam"
+	"cordwalk.example/cordwalk/exam/alert"
 )
 
-// Alert is a red flag that the last of a row of visits raises, in words.
+// Alert is a red flag in words.
 type Alert struct {
 	Rule     string    `json:"rule"`
+	Seen     string    `json:"seen"`
 	Urgency  string    `json:"urgency"` // "now", "today" or "soon"
 	Title    string    `json:"title"`
-	Seen     string    `json:"seen"`  // what was seen
-	Since    time.Time `json:"since"` // between which day and the last visit
 	Words    string    `json:"words"` // what was seen, why it matters, what to do
 	Plain    string    `json:"plain"` // for the owner
 	Source   string    `json:"source"`
+	Visit    exam.ID   `json:"visit"` // the visit that raised it
+	Since    time.Time `json:"since"` // the visit it is compared with, else the visit that raised it
 	Answered bool      `json:"answered"`
 	Told     string    `json:"told,omitempty"`
 }
 
 // Line says the alert in one line.
-func (a Alert) Line() string { return a.Title + ": " + a.Words }
+func (a Alert) Line() string { return UrgencyWords(a.Urgency) + " " + a.Title + ". " + a.Words }
 
-// AlertsOf returns what the last of the visits (oldest first) raises, most urgent first.
-func AlertsOf(p exam.Patient, visits []exam.Visit) []Alert { return nil }
+// UrgencyWords says how soon the veterinarian must hear of it.
+func UrgencyWords(urgency string) string {
+	switch urgency {
+	case "now":
+		return words.T("Call the veterinarian now:")
+	case "today":
+		return words.T("Call the veterinarian today:")
+	}
+	return words.T("Tell the veterinarian on the next working day:")
+}
+
+// AlertsOf returns what the last of the visits raises, and what those of the two weeks
+// before it raised and nobody has answered; most urgent first.
+func AlertsOf(p exam.Patient, visits []exam.Visit) []Alert {
+	var last time.Time
+	for _, v := range visits {
+		if v.Examined.After(last) {
+			last = v.Examined
+		}
+	}
+	var out []Alert
+	for _, f := range alert.Scan(p, visits, last) {
+		a := Alert{Rule: f.Rule, Seen: f.Seen, Urgency: f.Urgency.String(), Title: AlertTitle(f.Rule), Words: f.Words(),
+			Plain: plainAlert(f), Source: f.Source, Visit: f.Visit, Since: f.From, Answered: !f.Open()}
+		if a.Since.IsZero() {
+			a.Since = f.To
+		}
+		if f.Answered != nil {
+			a.Told = f.Answered.Told
+		}
+		out = append(out, a)
+	}
+	return out
+}
+
+// AlertTitle returns the name of an alert rule.
+func AlertTitle(rule string) string {
+	for _, r := range alert.Rules() {
+		if r.Key == rule {
+			return words.Of(r.Name)
+		}
+	}
+	if rule == "decline" {
+		return words.T("Decline over several exams")
+	}
+	return words.Of(capital(strings.ReplaceAll(rule, "-", " ")))
+}
+
+// plainAlerts say each rule to the owner, in everyday words.
+var plainAlerts = map[string]string{
+	"deep-pain-lost":  "Your pet no longer feels a firm pinch of the paw.",
+	"trunci-rises":    "The numb part of the back has moved up towards the head.",
+	"reflexes-lost":   "The legs have become limp.",
+	"ascending":       "The weakness is moving up to the front legs.",
+	"breathing":       "Your pet does not breathe as it should.",
+	"drop":            "Your pet has become much weaker since last time.",
+	"spinal-pain":     "The back or neck hurts.",
+	"relapse":         "Your pet was getting better and is now weaker again.",
+	"urine-held":      "The bladder does not empty.",
+	"incontinence":    "Your pet has begun to lose urine or stools.",
+	"urine-infected":  "The urine looks bloody, cloudy or smells bad.",
+	"fever":           "Your pet is hot, dull or does not eat.",
+	"aspiration":      "Your pet coughs or has trouble with swallowing.",
+	"skin":            "The skin is sore.",
+	"wound":           "The wound is swollen or open.",
+	"brain":           "Your pet is not as awake as it should be, or had a fit.",
+	"self-trauma":     "Your pet chews or licks itself sore.",
+	"no-pulse":        "A leg is cold and has no pulse.",
+	"not-as-expected": "Your pet does not get better as we hoped.",
+	"no-return":       "Feeling in the paws has not come back in two weeks.",
+	"after-neck":      "The front legs are weaker since the neck was treated.",
+	"overflow":        "The bladder is too full and leaks.",
+	"decline":         "Over the last visits your pet has become weaker.",
+}
+
+func plainAlert(f alert.Flag) string {
+	s, ok := plainAlerts[f.Rule]
+	if !ok {
+		s = "We saw something that your veterinarian must know of."
+	}
+	s = words.Of(s)
+	if f.CannotRuleOut {
+		s += " " + words.T("We could not test this today.")
+	}
+	return s
+}

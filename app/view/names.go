@@ -5,6 +5,7 @@ import (
 
 	"cordwalk.example/cordwalk/assets/words"
 	"cordwalk.example/cordwalk/exam"
+	"cordwalk.example/cordwalk/exam/alert"
 )
 
 // itemTitles are the names of items on screens, where the vocabulary's word with its
@@ -177,6 +178,13 @@ func Terms() []string {
 	for _, m := range exam.Measures() {
 		out = append(out, measureKey(m))
 	}
+	for _, r := range alert.Rules() {
+		out = append(out, r.Name)
+	}
+	for _, s := range plainAlerts {
+		out = append(out, s)
+	}
+	out = append(out, "We saw something that your veterinarian must know of.", "now", "today", "soon")
 	out = append(out, months[:]...)
 	out = append(out, "medial digit", "lateral digit", "female", "male", "unknown", "active", "discharged", "died",
 		"sedation", "aid", "surface", "session", "medicines", "none", "mild", "moderate", "deep")
@@ -205,8 +213,3 @@ func measureKey(m exam.Measure) string {
 
 // MeasureName returns the measure's name on screens, in the language in use.
 func MeasureName(m exam.Measure) string { return words.Of(measureKey(m)) }
-
-// AlertTitle returns the name of an alert rule as it stands in lists.
-func AlertTitle(rule string) string {
-	return words.Of(capital(strings.ReplaceAll(rule, "-", " ")))
-}
