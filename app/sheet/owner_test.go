@@ -209,30 +209,36 @@ func TestOwnerSheetOfEveryPatientInEveryLook(t *testing.T) {
 	}
 }
 
-// TestNothingLeavesThePage looks at the words' boxes: all lie inside the paper with a margin.
+var wordBox = regexp.MustCompile(`<word xMin="([-0-9.]+)" yMin="([-0-9.]+)" xMax="([-0-9.]+)" yMax="([-0-9.]+)">`)
+
+// insidePage looks at the boxes of all words: they lie on the paper with a margin.
+func insidePage(t *testing.T, name string, pdf []byte, letter bool) {
+	t.Helper()
+	w, h := 595.28, 841.89
+	if letter {
+		w, h = 612, 792
+	}
+	found := wordBox.FindAllStringSubmatch(run(t, pdf, "pdftotext", "-bbox", "FILE", "-"), -1)
+	require.Greater(t, len(found), 80)
+	for _, m := range found {
+		var x0, y0, x1, y1 float64
+		for i, v := range []*float64{&x0, &y0, &x1, &y1} {
+			_, err := fmt.Sscan(m[i+1], v)
+			require.NoError(t, err)
+		}
+		if x0 < 20 || y0 < 10 || x1 > w-20 || y1 > h-10 {
+			t.Errorf("%s: a word lies at %v of a page %v by %v", name, m[1:], w, h)
+		}
+	}
+}
+
 func TestNothingLeavesThePage(t *testing.T) {
-	box := regexp.MustCompile(`<word xMin="([-0-9.]+)" yMin="([-0-9.]+)" xMax="([-0-9.]+)" yMax="([-0-9.]+)">`)
 	for name, in := range patients() {
 		for look, opt := range looks() {
 			in.Options = opt
 			doc, err := Owner(in)
 			require.NoError(t, err)
-			w, h := 595.28, 841.89
-			if opt.Paper == "Letter" {
-				w, h = 612, 792
-			}
-			found := box.FindAllStringSubmatch(run(t, doc.PDF, "pdftotext", "-bbox", "FILE", "-"), -1)
-			require.Greater(t, len(found), 80)
-			for _, m := range found {
-				var x0, y0, x1, y1 float64
-				fmt.Sscan(m[1], &x0)
-				fmt.Sscan(m[2], &y0)
-				fmt.Sscan(m[3], &x1)
-				fmt.Sscan(m[4], &y1)
-				if x0 < 20 || y0 < 10 || x1 > w-20 || y1 > h-10 {
-					t.Errorf("%s/%s: a word lies at %v of a page %v by %v", name, look, m[1:], w, h)
-				}
-			}
+			insidePage(t, name+"/"+look, doc.PDF, opt.Paper == "Letter")
 		}
 	}
 }

@@ -1,0 +1,121 @@
+package sheet
+
+import (
+	"bytes"
+	"strings"
+	"testing"
+
+	"github.com/stretchr/testify/assert"
+	"github.com/stretchr/testify/require"
+
+	"cordwalk.example/cordwalk/exam"
+)
+
+// TestOwnerSheetOfTheDemoPractice: every demo patient under treatment, in every look, has a
+// one-page sheet at a reading ease of 60 or more, with nothing of a likely site on it.
+func TestOwnerSheetOfTheDemoPractice(t *testing.T) {
+	for name, in := range demoInputs() {
+		for look, opt := range looks() {
+			t.Run(name+"/"+look, func(t *testing.T) {
+				in.Options = opt
+				doc, err := Owner(in)
+				if in.Patient.Status != exam.Active {
+					assert.ErrorIs(t, err, ErrInactive)
+					return
+				}
+				require.NoError(t, err)
+				keepPaper(t, "demo-"+name+"-"+look, doc.PDF)
+				assert.Equal(t, 1, doc.Pages)
+				assert.Regexp(t, `Pages: +1\n`, run(t, doc.PDF, "pdfinfo", "FILE"))
+				text := textOf(t, doc.PDF)
+				assert.Contains(t, text, in.Patient.Veterinarian.Phone)
+				assert.Contains(t, text, "Demo")
+				assert.NotRegexp(t, forbidden, text)
+				ease, ok := Reading("en", doc.Prose)
+				require.True(t, ok)
+				assert.GreaterOrEqual(t, ease.Score, 60.0, "%d words, %d sentences, %d syllables\n%s", ease.Words, ease.Sentences, ease.Syllables, strings.Join(doc.Prose, "\n"))
+			})
+		}
+	}
+}
+
+func TestClinicalSummaryOfTheDemoPractice(t *testing.T) {
+	for name, in := range demoInputs() {
+		for _, paper := range []string{"A4", "Letter"} {
+			t.Run(name+"/"+paper, func(t *testing.T) {
+				in.Options = Options{Paper: paper}
+				in.Notices = []Notice{{Urgency: Today, Words: "Voluntary urination fell from 2 to 1.", Plain: "p", Since: in.Visits[0].Examined, Told: "Dr Brook"}, {Urgency: Now, Words: "Ambulation fell from 2 to 0.", Plain: "p"}}
+				doc, err := Clinical(in, nil)
+				require.NoError(t, err)
+				keepPaper(t, "clinical-"+name+"-"+paper, doc.PDF)
+				assert.Equal(t, 2, doc.Pages)
+				assert.Empty(t, doc.Warnings)
+				text := textOf(t, doc.PDF)
+				for _, want := range []string{in.Patient.Name, "Clinical summary", "Likely site", "Findings", "told: Dr Brook", "nobody told yet", "Voluntary motor", "page 2 of 2", "does not replace", "Next visit", in.last().Examiner, "Demo"} {
+					assert.Contains(t, text, want)
+				}
+				again, err := Clinical(in, nil)
+				require.NoError(t, err)
+				assert.True(t, bytes.Equal(doc.PDF, again.PDF))
+				insidePage(t, name, doc.PDF, paper == "Letter")
+			})
+		}
+	}
+}
+
+func TestReferralLetter(t *testing.T) {
+	for name, in := range demoInputs() {
+		_, err := Letter(in)
+		require.ErrorIs(t, err, ErrNoAlert)
+		in.Notices = []Notice{{Urgency: Now, Words: "Ambulation fell from 2 to 0.", Plain: "p", Since: in.Visits[0].Examined}, {Urgency: NextWorkingDay, Words: "The urine is cloudy.", Plain: "p"}}
+		doc, err := Letter(in)
+		require.NoError(t, err)
+		keepPaper(t, "letter-"+name, doc.PDF)
+		assert.Equal(t, 1, doc.Pages)
+		assert.Empty(t, doc.Warnings)
+		text := textOf(t, doc.PDF)
+		for _, want := range []string{"Referral of " + in.Patient.Name, "How urgent: please see " + in.Patient.Name + " now.", "Ambulation fell from 2 to 0.", "Compared with", "no diagnosis", in.Patient.Veterinarian.Phone} {
+			assert.Contains(t, text, want)
+		}
+		insidePage(t, name, doc.PDF, false)
+	}
+}
+
+// TestClinicalWithoutAModel: for a species whose cord is not on record the paper says so.
+func TestClinicalWithoutAModel(t *testing.T) {
+	in := patients()["recovery"]
+	in.Patient.Species, in.Patient.Problems = exam.Horse, nil
+	doc, err := Clinical(in, nil)
+	require.NoError(t, err)
+	assert.Contains(t, strings.ToLower(textOf(t, doc.PDF)), "horse")
+	in.Visits = nil
+	_, err = Clinical(in, nil)
+	assert.ErrorIs(t, err, ErrNoVisit)
+}
+
+// TestGridShowsThreeDays compares the grid's cells with the visits.
+func TestGridShowsThreeDays(t *testing.T) {
+	in := patients()["recovery"]
+	rows := grid("en", in.Visits[0], in.Visits[4], in.Visits[5])
+	found := false
+	for _, r := range rows {
+		for _, c := range r.cells {
+			if r.label == "Voluntary motor" && c.site == "PL" {
+				found = true
+				assert.Equal(t, gridCell{site: "PL", first: "0", last: "2", now: "3", nowBad: true, different: true}, c)
+			}
+			if r.label == "Voluntary urination" {
+				assert.Equal(t, "–", c.first, "not tested is a dash, never a grade")
+			}
+		}
+	}
+	assert.True(t, found)
+	seen := map[string]bool{}
+	normal := false
+	for _, r := range rows {
+		assert.False(t, seen[r.label], "one row an item")
+		seen[r.label] = true
+		normal = normal || r.rank == 2
+		assert.False(t, normal && r.rank < 2, "abnormal rows first")
+	}
+}
