@@ -16,6 +16,7 @@ import (
 	"cordwalk.example/cordwalk/app/desk/look"
 	"cordwalk.example/cordwalk/app/desk/mark"
 	"cordwalk.example/cordwalk/app/view"
+	"cordwalk.example/cordwalk/assets/icons"
 	"cordwalk.example/cordwalk/assets/words"
 	"cordwalk.example/cordwalk/exam"
 )
@@ -37,6 +38,7 @@ type App struct {
 	lastPatient exam.ID
 	caseload    *view.Caseload // the newest, shown at once while a newer one is read
 
+	onUI   view.OnUI // runs on the drawing goroutine; tests pass their own
 	ctx    context.Context
 	cancel context.CancelFunc
 	busy   sync.WaitGroup
@@ -64,7 +66,8 @@ func New(f fyne.App, o Opener, settings view.Settings, settingsPath string, now 
 		now = time.Now
 	}
 	ctx, cancel := context.WithCancel(context.Background())
-	a := &App{fyne: f, opener: o, settings: settings, path: settingsPath, now: now, ctx: ctx, cancel: cancel}
+	a := &App{fyne: f, opener: o, settings: settings, path: settingsPath, now: now, onUI: fyne.Do, ctx: ctx, cancel: cancel}
+	f.SetIcon(fyne.NewStaticResource("cordwalk.png", icons.App))
 	a.theme()
 	return a
 }
@@ -114,7 +117,7 @@ func (a *App) StartDemo(dir string) {
 
 // demo makes or opens the demo practice off the drawing goroutine.
 func (a *App) demo(w *window, dir string, failed func(error)) {
-	o := newOpeningPage(words.T("Making the demo practice"))
+	o := newOpeningPage(a, words.T("Making the demo practice"))
 	w.bare(o)
 	a.work(func(context.Context) (func(), error) {
 		r, err := a.opener.Demo(dir, o.progress)
@@ -134,10 +137,10 @@ func (a *App) Run() { a.fyne.Run() }
 
 // open opens a store off the drawing goroutine and shows the caseload.
 func (a *App) open(w *window, dir string, passphrase []byte) {
-	p := newOpeningPage(words.T("Opening the practice in %s", dir))
+	p := newOpeningPage(a, words.T("Opening the practice in %s", dir))
 	w.bare(p)
 	a.work(func(context.Context) (func(), error) {
-		r, err := a.opener.Open(dir, passphrase, p.progress, func(s string) { fyne.Do(func() { w.foot.say(s) }) })
+		r, err := a.opener.Open(dir, passphrase, p.progress, func(s string) { a.onUI(func() { w.foot.say(s) }) })
 		if err != nil {
 			return nil, err
 		}
@@ -171,7 +174,7 @@ func (a *App) use(w *window, r Records, p exam.Practice, dir string) {
 	if a.examiner == "" && len(p.Examiners) > 0 {
 		a.examiner = p.Examiners[0].Name
 	}
-	a.saver = view.NewSaver(fyne.Do, func(s view.SaveState) {
+	a.saver = view.NewSaver(a.onUI, func(s view.SaveState) {
 		for _, w := range a.windows {
 			w.saved(s)
 		}
@@ -191,7 +194,7 @@ func (a *App) work(do func(ctx context.Context) (func(), error), failed func(err
 	go func() {
 		defer a.busy.Done()
 		then, err := do(a.ctx)
-		fyne.Do(func() {
+		a.onUI(func() {
 			if err != nil {
 				failed(err)
 				return

@@ -259,7 +259,7 @@ func (p *coursePage) play() {
 			case <-p.win.app.ctx.Done():
 				return
 			case <-tick.C:
-				fyne.Do(func() {
+				p.win.app.onUI(func() {
 					if p.stop != stop {
 						return
 					}

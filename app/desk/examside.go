@@ -79,7 +79,7 @@ func newExamSide(p *examPage) *examSide {
 	var engine *localise.Engine
 	species := p.file.Patient.Species
 	patient, others := p.file.Patient, p.file.Visits
-	s.ask = view.NewNewest(fyne.Do, func(_ context.Context, q sideQuestion) (sideAnswer, error) {
+	s.ask = view.NewNewest(p.win.app.onUI, func(_ context.Context, q sideQuestion) (sideAnswer, error) {
 		out := sideAnswer{alerts: alertsOf(patient, others, q.visit)}
 		if engine == nil {
 			e, err := localise.New(species)

@@ -155,13 +155,14 @@ func (p *unlockPage) wrong(err error)            { p.box.Wrong(err.Error()) }
 
 // openingPage shows that something long is under way.
 type openingPage struct {
+	app  *App
 	root fyne.CanvasObject
 	bar  *widget.ProgressBar
 	what *mark.Para
 }
 
-func newOpeningPage(title string) *openingPage {
-	p := &openingPage{bar: widget.NewProgressBar(), what: mark.NewPara(" ").In(look.InkSoft)}
+func newOpeningPage(a *App, title string) *openingPage {
+	p := &openingPage{app: a, bar: widget.NewProgressBar(), what: mark.NewPara(" ").In(look.InkSoft)}
 	p.bar.Hide()
 	p.root = bareFrame(title, p.what, p.bar)
 	return p
@@ -173,7 +174,7 @@ func (p *openingPage) left()                      {}
 
 // progress may be called from any goroutine.
 func (p *openingPage) progress(what string, done, total int64) {
-	fyne.Do(func() {
+	p.app.onUI(func() {
 		if total > 0 {
 			p.bar.Show()
 			p.bar.SetValue(float64(done) / float64(total))

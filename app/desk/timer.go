@@ -47,7 +47,7 @@ func newTimerRow(p *examPage) fyne.CanvasObject {
 				case <-p.win.app.ctx.Done():
 					return
 				case <-tick.C:
-					fyne.Do(func() {
+					p.win.app.onUI(func() {
 						if stop == end {
 							shown.Set(seconds(time.Since(began).Seconds()))
 						}

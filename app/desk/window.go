@@ -99,6 +99,7 @@ func (w *window) show(p page) {
 		w.page.left()
 	}
 	w.page = p
+	w.win.SetTitle(w.title())
 	w.center.Objects = []fyne.CanvasObject{p.content()}
 	w.center.Refresh()
 	w.strip.update()
@@ -108,6 +109,21 @@ func (w *window) show(p page) {
 		root.Layout.Layout(root.Objects, root.Size())
 	}
 	p.shown()
+}
+
+// title names the window by what it shows: the screen, and the animal.
+func (w *window) title() string {
+	if w.app.records == nil {
+		return "Cordwalk"
+	}
+	s := screenTitle(w.here().Screen)
+	if w.here().Screen == view.ScreenPatient {
+		s = words.T("Patient")
+	}
+	if n := w.file.Patient.Name; n != "" {
+		s = words.T("%s: %s", s, n)
+	}
+	return words.T("%s – Cordwalk", s)
 }
 
 func (w *window) root() *fyne.Container {

@@ -14,6 +14,11 @@ import (
 //go:embed *.svg
 var files embed.FS
 
+// App is the program's own icon as PNG, 512 pixels wide.
+//
+//go:embed cordwalk.png
+var App []byte
+
 // Names lists every icon, in alphabetical order.
 func Names() []string {
 	found, err := fs.Glob(files, "*.svg")
