@@ -1,0 +1,450 @@
+// Package share brings a store and its practice together: it keeps the list of devices beside the
+// store, hands new keys and limits to it, and runs exchanges.
+//
+// Everything that joins, leaves or exports is written into the record as an audit entry by the
+// examiner who did it.
+package share
+
+import (
+	"context"
+	"encoding/hex"
+	"errors"
+	"fmt"
+	"io/fs"
+	"path/filepath"
+	"strings"
+	"sync"
+	"time"
+
+	"filippo.io/age"
+
+	"cordwalk.example/cordwalk/storage"
+	"cordwalk.example/cordwalk/storage/disk"
+	"cordwalk.example/cordwalk/sync/audit"
+	"cordwalk.example/cordwalk/sync/carry"
+	"cordwalk.example/cordwalk/sync/change"
+	"cordwalk.example/cordwalk/sync/key"
+	"cordwalk.example/cordwalk/sync/member"
+)
+
+const (
+	membersDir = "members"
+	rootFile   = "root"
+	invitesDir = "invites"
+)
+
+// Share is an open store with the list of the practice's devices.
+type Share struct {
+	*storage.Store
+	List *member.List
+
+	fs  disk.FS
+	now func() time.Time
+	mu  sync.Mutex // one exchange, join or removal at a time
+}
+
+// Options of a Share.
+type Options struct {
+	FS  disk.FS          // nil: the real file system
+	Now func() time.Time // nil: time.Now
+}
+
+func (o Options) withDefaults() Options {
+	if o.FS == nil {
+		o.FS = disk.OS()
+	}
+	if o.Now == nil {
+		o.Now = time.Now
+	}
+	return o
+}
+
+// Open reads the list of devices that lies beside a store. The first time it founds the practice
+// with this device; then recovery is what belongs on the recovery sheet and is kept nowhere else.
+// It is nil otherwise.
+func Open(ctx context.Context, s *storage.Store, o Options) (sh *Share, recovery *age.X25519Identity, err error) {
+	o = o.withDefaults()
+	sh = &Share{Store: s, fs: o.FS, now: o.Now}
+	root, err := disk.ReadFile(o.FS, sh.path(rootFile), 128)
+	switch {
+	case errors.Is(err, fs.ErrNotExist):
+		if sh.List, recovery, err = member.Establish(s.Bag(), s.Device(), s.Incarnation(), sh.clock()); err != nil {
+			return nil, nil, err
+		}
+		if err := sh.keep(sh.List); err != nil {
+			return nil, nil, err
+		}
+	case err != nil:
+		return nil, nil, fmt.Errorf("reading the list of devices: %w", err)
+	default:
+		id, derr := hex.DecodeString(strings.TrimSpace(string(root)))
+		if derr != nil || len(id) != len(member.ID{}) {
+			return nil, nil, fmt.Errorf("reading the list of devices: %s is damaged; restore it from a backup", sh.path(rootFile))
+		}
+		sh.List = member.NewList(member.ID(id))
+		if err := sh.load(); err != nil {
+			return nil, nil, err
+		}
+	}
+	sh.List.OnLearn(sh.save)
+	return sh, recovery, sh.refresh(ctx)
+}
+
+func (sh *Share) path(names ...string) string {
+	return filepath.Join(append([]string{sh.Dir(), membersDir}, names...)...)
+}
+
+func (sh *Share) clock() change.HLC { return change.HLCAt(sh.now()) }
+
+// keep writes a whole list beside the store, the root last.
+func (sh *Share) keep(l *member.List) error {
+	for _, raw := range l.Statements() {
+		if err := sh.save(raw); err != nil {
+			return err
+		}
+	}
+	id := l.Root()
+	if err := disk.Replace(sh.fs, sh.path(rootFile), []byte(hex.EncodeToString(id[:])+"\n")); err != nil {
+		return fmt.Errorf("keeping the list of devices: %w", err)
+	}
+	return nil
+}
+
+// save keeps one statement.
+func (sh *Share) save(raw []byte) error {
+	s, err := member.Parse(raw)
+	if err != nil {
+		return err
+	}
+	if err := sh.fs.MakeDir(sh.path()); err != nil {
+		return fmt.Errorf("keeping the list of devices: %w", err)
+	}
+	id := s.ID()
+	if err := disk.Replace(sh.fs, sh.path(hex.EncodeToString(id[:20])+".member"), raw); err != nil {
+		return fmt.Errorf("keeping the list of devices: %w", err)
+	}
+	return nil
+}
+
+func (sh *Share) load() error {
+	es, err := sh.fs.List(sh.path())
+	if err != nil {
+		return fmt.Errorf("reading the list of devices: %w", err)
+	}
+	var raws [][]byte
+	for _, e := range es {
+		if e.Dir || e.Size > member.MaxStatement || !strings.HasSuffix(e.Name, ".member") {
+			continue
+		}
+		b, err := disk.ReadFile(sh.fs, sh.path(e.Name), member.MaxStatement)
+		if err != nil {
+			return fmt.Errorf("reading the list of devices: %w", err)
+		}
+		raws = append(raws, b)
+	}
+	_, err = sh.List.Learn(raws)
+	return err
+}
+
+// Signer implements carry.Members.
+func (sh *Share) Signer(i change.Incarnation) (key.Verifier, bool) { return sh.List.Signer(i) }
+
+// Statements implements carry.Members.
+func (sh *Share) Statements() [][]byte { return sh.List.Statements() }
+
+// Learn implements carry.Members: what is new is kept, and keys and limits follow at once.
+func (sh *Share) Learn(raws [][]byte) (bool, error) {
+	fresh, err := sh.List.Learn(raws)
+	if err != nil || !fresh {
+		return fresh, err
+	}
+	return true, sh.refresh(context.Background())
+}
+
+// refresh hands what the list says to the store: keys of new epochs, the limits of devices that were
+// removed; and says under which name this device writes.
+func (sh *Share) refresh(ctx context.Context) error {
+	bag := sh.Bag()
+	ring, err := sh.List.Ring(bag.Device.Identity(), bag.Ring)
+	if err != nil {
+		return err
+	}
+	if err := sh.SetKeys(ring); err != nil {
+		return err
+	}
+	held, err := sh.Streams(ctx)
+	if err != nil {
+		return err
+	}
+	limits := map[change.Stream]uint64{}
+	for _, h := range held {
+		if _, limited := sh.List.Limit(h.Of); limited {
+			// The second branch of a fork counts if the removal names it.
+			limits[h.Stream], _ = sh.limit(h.Of, h.Stream)
+		}
+	}
+	for _, d := range sh.List.Devices() {
+		for _, r := range d.Removals {
+			for x := range r.Accepted {
+				if n, limited := sh.List.Limit(x); limited {
+					if _, there := limits[x]; !there {
+						limits[x] = n
+					}
+				}
+			}
+		}
+	}
+	if err := sh.SetLimits(ctx, limits); err != nil {
+		return err
+	}
+	return sh.announce()
+}
+
+// limit returns up to where a stream or branch counts.
+func (sh *Share) limit(of, x change.Stream) (uint64, bool) {
+	if of == x {
+		return sh.List.Limit(x)
+	}
+	v, ok := sh.List.Signer(of.Device)
+	if !ok {
+		return 0, true
+	}
+	d, _ := sh.List.Device(v)
+	n := ^uint64(0)
+	for _, r := range d.Removals {
+		n = min(n, r.Accepted[x])
+	}
+	return n, true
+}
+
+// announce tells the others under which names this device writes. A device that was removed cannot;
+// what it writes is kept by the others in quarantine.
+func (sh *Share) announce() error {
+	for _, i := range sh.Lives() {
+		if err := sh.List.Announce(sh.Bag(), i, sh.clock()); err != nil && !errors.Is(err, member.ErrNotMember) {
+			return err
+		}
+	}
+	return nil
+}
+
+// Renew implements carry.Journal and tells the others the new name.
+func (sh *Share) Renew(ctx context.Context) error {
+	if err := sh.Store.Renew(ctx); err != nil {
+		return err
+	}
+	return sh.announce()
+}
+
+// Member reports whether this device still belongs to the practice.
+func (sh *Share) Member() bool {
+	d, ok := sh.List.Device(sh.Bag().Device.Verifier())
+	return ok && d.Member()
+}
+
+// Folder exchanges with a folder.
+func (sh *Share) Folder(ctx context.Context, folder string, progress func(what string, done, total int64)) (carry.Report, error) {
+	sh.mu.Lock()
+	defer sh.mu.Unlock()
+	r, err := carry.Sync(ctx, folder, carry.Options{Bag: sh.Bag(), Incarnation: sh.Incarnation, Journal: sh, Members: sh, FS: sh.fs, Now: sh.now, Progress: progress})
+	if err == nil && r.Received > 0 {
+		err = sh.refresh(ctx) // streams that are new to us may be limited
+	}
+	return r, err
+}
+
+// Invite makes an invitation and leaves it in a folder. The code is told to the other person by
+// voice; it is shown once.
+func (sh *Share) Invite(ctx context.Context, examiner, folder string, valid time.Duration) (code string, err error) {
+	sh.mu.Lock()
+	defer sh.mu.Unlock()
+	inv, code, err := member.NewInvite(sh.List, sh.Bag(), sh.Site(), sh.Device(), sh.now().Add(valid))
+	if err != nil {
+		return "", err
+	}
+	if err := sh.keepInvite(inv); err != nil {
+		return "", err
+	}
+	if err := carry.LeaveLetter(sh.fs, folder, carry.Letter{Practice: sh.Bag().Practice, Name: inv.FileName(), Data: inv.File()}); err != nil {
+		return "", err
+	}
+	return code, audit.Write(ctx, sh.Store, examiner, audit.Invited, "until "+inv.Expires().UTC().Format(time.RFC3339))
+}
+
+// An open invitation is kept sealed, so that the answer can be taken after a restart.
+func (sh *Share) keepInvite(i *member.Invite) error {
+	if err := sh.fs.MakeDir(sh.path()); err != nil {
+		return fmt.Errorf("keeping the invitation: %w", err)
+	}
+	if err := sh.fs.MakeDir(sh.path(invitesDir)); err != nil {
+		return fmt.Errorf("keeping the invitation: %w", err)
+	}
+	k := sh.Bag().Ring.Index().Derive("invitations")
+	if err := disk.Replace(sh.fs, sh.path(invitesDir, i.FileName()), k.Seal(i.Secret(), []byte(i.FileName()))); err != nil {
+		return fmt.Errorf("keeping the invitation: %w", err)
+	}
+	return nil
+}
+
+// Asked is a request to join that fits an open invitation of this device.
+type Asked struct {
+	member.Joiner
+	letter carry.Letter
+	invite string
+}
+
+// Requests looks in a folder for requests that fit this device's open invitations. For each
+// invitation the first valid request counts and uses it up. Compare the check words before Admit.
+func (sh *Share) Requests(ctx context.Context, folder string) ([]Asked, []string, error) {
+	sh.mu.Lock()
+	defer sh.mu.Unlock()
+	letters, err := carry.Letters(sh.fs, folder, ".request")
+	if err != nil {
+		return nil, nil, err
+	}
+	es, err := sh.fs.List(sh.path(invitesDir))
+	if errors.Is(err, fs.ErrNotExist) {
+		return nil, nil, nil
+	}
+	if err != nil {
+		return nil, nil, fmt.Errorf("reading the open invitations: %w", err)
+	}
+	k := sh.Bag().Ring.Index().Derive("invitations")
+	var out []Asked
+	var refused []string
+	for _, e := range es {
+		sealed, err := disk.ReadFile(sh.fs, sh.path(invitesDir, e.Name), 64<<10)
+		if err != nil {
+			return nil, nil, fmt.Errorf("reading the open invitations: %w", err)
+		}
+		plain, err := k.Open(sealed, []byte(e.Name))
+		if err != nil {
+			continue
+		}
+		inv, err := member.ResumeInvite(plain)
+		if err != nil {
+			continue
+		}
+		id := strings.TrimSuffix(inv.FileName(), ".invite")
+		for _, l := range letters {
+			if !strings.HasPrefix(l.Name, id) || l.Practice != sh.Bag().Practice {
+				continue
+			}
+			j, err := inv.Take(l.Data, sh.now())
+			if err != nil {
+				refused = append(refused, fmt.Sprintf("a request to join (%s) was refused: %s", l.Name, err))
+				continue
+			}
+			out = append(out, Asked{j, l, e.Name})
+		}
+	}
+	return out, refused, nil
+}
+
+// Admit lets a device in after a person compared the check words. Its answer is in the folder after
+// the next exchange.
+func (sh *Share) Admit(ctx context.Context, examiner, folder string, a Asked) error {
+	sh.mu.Lock()
+	defer sh.mu.Unlock()
+	if err := sh.dropInvite(a.invite); err != nil {
+		return err
+	}
+	if err := sh.List.AdmitJoiner(sh.Bag(), a.Joiner, sh.clock()); err != nil {
+		return err
+	}
+	_ = carry.TakeAway(sh.fs, folder, a.letter)
+	_ = carry.TakeAway(sh.fs, folder, carry.Letter{Practice: a.letter.Practice, Name: a.invite})
+	return audit.Write(ctx, sh.Store, examiner, audit.Joined, a.Name)
+}
+
+// Refuse uses an invitation up without letting anybody in: the check words differed.
+func (sh *Share) Refuse(ctx context.Context, examiner, folder string, a Asked) error {
+	sh.mu.Lock()
+	defer sh.mu.Unlock()
+	if err := sh.dropInvite(a.invite); err != nil {
+		return err
+	}
+	_ = carry.TakeAway(sh.fs, folder, a.letter)
+	_ = carry.TakeAway(sh.fs, folder, carry.Letter{Practice: a.letter.Practice, Name: a.invite})
+	return audit.Write(ctx, sh.Store, examiner, audit.Refused, a.Name)
+}
+
+func (sh *Share) dropInvite(name string) error {
+	if err := sh.fs.Remove(sh.path(invitesDir, name)); err != nil && !errors.Is(err, fs.ErrNotExist) {
+		return fmt.Errorf("using up the invitation: %w", err)
+	}
+	return sh.fs.SyncDir(sh.path(invitesDir))
+}
+
+// Remove takes a device out of the practice. What this device holds of it now still counts; what
+// it writes later is kept apart on every device, and from now on the practice uses a new key.
+func (sh *Share) Remove(ctx context.Context, examiner string, device key.Verifier, reason string) error {
+	sh.mu.Lock()
+	defer sh.mu.Unlock()
+	held, err := sh.Streams(ctx)
+	if err != nil {
+		return err
+	}
+	var accepted []member.Accepted
+	for _, h := range held {
+		if v, ok := sh.List.Signer(h.Of.Device); ok && v == device && len(h.Spans) > 0 {
+			accepted = append(accepted, member.Accepted{Device: h.Stream.Device, Site: h.Stream.Site, Last: h.Last})
+		}
+	}
+	d, _ := sh.List.Device(device)
+	ring, err := sh.List.Remove(sh.Bag(), device, reason, accepted, sh.clock())
+	if err != nil {
+		return err
+	}
+	if err := sh.SetKeys(ring); err != nil {
+		return err
+	}
+	if err := sh.refresh(ctx); err != nil {
+		return err
+	}
+	return audit.Write(ctx, sh.Store, examiner, audit.Removed, d.Name+": "+reason)
+}
+
+// Confirm settles removals that contradict each other.
+func (sh *Share) Confirm(ctx context.Context, examiner string, removal member.ID) error {
+	sh.mu.Lock()
+	defer sh.mu.Unlock()
+	ring, err := sh.List.Confirm(sh.Bag(), removal, sh.clock())
+	if err != nil {
+		return err
+	}
+	if err := sh.SetKeys(ring); err != nil {
+		return err
+	}
+	if err := sh.refresh(ctx); err != nil {
+		return err
+	}
+	return audit.Write(ctx, sh.Store, examiner, audit.Confirmed, removal.String())
+}
+
+// Join makes a new store in dir for a device that asked to join and was let in. It fails with
+// change.ErrNoKey while no answer lies in the folder.
+func Join(ctx context.Context, dir, folder string, j *member.Joining, inc change.Incarnation, so storage.Options, o Options) (*Share, error) {
+	o = o.withDefaults()
+	statements, err := carry.Statements(o.FS, folder, j.Practice())
+	if err != nil {
+		return nil, err
+	}
+	bag, list, err := j.Complete(statements)
+	if err != nil {
+		return nil, err
+	}
+	s, err := storage.CreateJoined(dir, so, bag, j.Site(), inc)
+	if err != nil {
+		return nil, err
+	}
+	sh := &Share{Store: s, List: list, fs: o.FS, now: o.Now}
+	if err := sh.keep(list); err != nil {
+		return nil, errors.Join(err, s.Close())
+	}
+	list.OnLearn(sh.save)
+	if _, err := sh.Folder(ctx, folder, nil); err != nil {
+		return nil, errors.Join(err, s.Close())
+	}
+	return sh, nil
+}
