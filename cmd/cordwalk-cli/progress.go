@@ -2,12 +2,15 @@ package main
 
 import (
 	"fmt"
+	"strconv"
 	"strings"
 	"time"
 
 	"cordwalk.example/cordwalk/app/view"
 	"cordwalk.example/cordwalk/assets/words"
 	"cordwalk.example/cordwalk/exam"
+	"cordwalk.example/cordwalk/exam/alert"
+	"cordwalk.example/cordwalk/exam/progress"
 	"cordwalk.example/cordwalk/storage"
 )
 
@@ -119,58 +122,100 @@ func (e *env) scoreTable(p exam.Patient, visits []exam.Visit) {
 	}
 }
 
-// progressJSON is the course in JSON.
-type progressJSON struct {
-	Segments []segmentJSON `json:"segments"`
-	Alerts   []view.Alert  `json:"alerts"`
-	Warnings []string      `json:"warnings"`
-}
-
-type segmentJSON struct {
-	Segment string      `json:"segment"`
-	Side    string      `json:"side"`
-	Points  []pointJSON `json:"points"`
-}
-
-type pointJSON struct {
-	Examined time.Time `json:"examined"`
-	Score    *float64  `json:"score"` // the plain segment score; null: too little tested
-	Findings int       `json:"findings"`
-}
-
 // progressOf prints the course of an animal.
 func (e *env) progressOf(p exam.Patient, visits []exam.Visit, since exam.Date, warnings []string) error {
-	alerts := view.AlertsOf(p, visits)
-	if !e.c.JSON {
-		for _, w := range warnings {
-			e.say("%s", w)
-		}
-		for _, a := range alerts {
-			e.say("%s", a.Line())
-		}
-		e.scoreTable(p, visits)
-		return nil
+	var o progress.Options
+	if t, ok := since.Time(); ok {
+		o.Since = time.Date(t.Year(), t.Month(), t.Day(), 0, 0, 0, 0, visits[len(visits)-1].Examined.Location())
 	}
-	out := progressJSON{Segments: []segmentJSON{}, Alerts: some(alerts), Warnings: some(warnings)}
-	scores := view.PlainScores(p.Species, visits)
-	for i, v := range visits {
-		for k, row := range scores(i) {
-			for s, side := range []string{"left", "right"} {
-				at := 2*k + s
-				if i == 0 {
-					out.Segments = append(out.Segments, segmentJSON{Segment: row.Segment, Side: side})
-				}
-				val := row.Left
-				if s == 1 {
-					val = row.Right
-				}
-				pt := pointJSON{Examined: v.Examined, Findings: val.Count}
-				if val.Known {
-					pt.Score = &val.Value
-				}
-				out.Segments[at].Points = append(out.Segments[at].Points, pt)
+	res, err := progress.Analyse(progress.Series{Patient: p, Visits: visits}, o)
+	if err != nil {
+		return err
+	}
+	alerts := view.AlertsOf(p, visits)
+	for _, a := range alerts {
+		if !a.Answered {
+			res.Alerts = append(res.Alerts, progress.Alert{Rule: a.Rule, Seen: a.Seen, Urgency: a.Urgency, Words: a.Words, Source: a.Source})
+		}
+	}
+	if res.Change != nil {
+		first := visits[0]
+		for _, v := range visits {
+			if v.Examined.Equal(res.Change.Since) {
+				first = v
 			}
 		}
+		if f, ok := alert.Decline(res.Change.Worse, first, visits[len(visits)-1]); ok && f.Open() {
+			res.Alerts = append(res.Alerts, progress.Alert{Rule: f.Rule, Seen: f.Seen, Urgency: f.Urgency.String(), Words: f.Words(), Source: f.Source})
+		}
 	}
-	return e.printJSON(out)
+	res.Notes = append(res.Notes, warnings...)
+	if e.c.JSON {
+		return e.printJSON(res)
+	}
+	for _, n := range res.Notes {
+		e.say("%s", words.T("Note: %s", n))
+	}
+	for _, a := range res.Alerts {
+		e.say("%s %s", view.UrgencyWords(a.Urgency), a.Words)
+	}
+	if res.Change != nil {
+		e.say("%s", res.Change.Words)
+	}
+	for _, l := range res.Limbs {
+		if l.Change != nil {
+			e.say("  %s", l.Change.Words)
+		}
+	}
+	if res.Plateau != nil && res.Plateau.Named {
+		e.say("%s", res.Plateau.Words)
+	}
+	if res.Relapse != nil && res.Relapse.Probability > 0.5 {
+		e.say("%s", res.Relapse.Words)
+	}
+	for _, g := range res.Goals {
+		chance := g.Why
+		if g.Probability != nil {
+			chance = percent(*g.Probability)
+		}
+		e.say("  %s", words.T("Goal %q, by %s: %s", g.Words, view.DateWords(exam.Date(g.By)), chance))
+	}
+	if n := len(res.Whole.Forecast); n > 0 {
+		f := res.Whole.Forecast[n-1]
+		e.say("%s", words.T("Forecast for %s: function %.0f %% (%.0f to %.0f)", view.Day(f.On), f.Function, f.Low, f.High))
+	}
+	e.say("")
+	e.functionTable(res)
+	e.say("")
+	e.scoreTable(p, visits)
+	for _, s := range res.Scales {
+		if len(s.Points) == 0 {
+			continue
+		}
+		last := s.Points[len(s.Points)-1]
+		switch {
+		case last.Value != nil:
+			e.say("%s", words.T("%s: %s", s.Name, strconv.FormatFloat(*last.Value, 'g', -1, 64)))
+		case last.Low != nil && last.High != nil:
+			e.say("%s", words.T("%s: %s to %s, missing: %s", s.Name, strconv.FormatFloat(*last.Low, 'g', -1, 64), strconv.FormatFloat(*last.High, 'g', -1, 64), strings.Join(last.Missing, ", ")))
+		}
+	}
+	e.say("%s", words.T("This supports and never replaces the veterinarian."))
+	return nil
+}
+
+// functionTable prints the model's function of the limbs over the visits, with today's band.
+func (e *env) functionTable(r progress.Result) {
+	if len(r.Limbs) == 0 {
+		return
+	}
+	e.say("%s", words.T("Function of the limbs by the model in percent, today's with its 90-percent band:"))
+	for _, l := range r.Limbs {
+		var b strings.Builder
+		for _, pt := range l.Points {
+			b.WriteString(bars(pt.Function))
+		}
+		last := l.Points[len(l.Points)-1]
+		e.say("  %-15s %s  %3.0f (%.0f–%.0f)", l.Limb, b.String(), last.Function, last.Low, last.High)
+	}
 }

@@ -15,6 +15,7 @@ import (
 	"time"
 
 	"cordwalk.example/cordwalk/exam"
+	"cordwalk.example/cordwalk/exam/alert"
 	"cordwalk.example/cordwalk/storage"
 )
 
@@ -103,22 +104,23 @@ type phase struct {
 
 // course is one invented animal.
 type course struct {
-	patient  exam.Patient
-	age      float64 // years at the first visit
-	kg       float64
-	onset    int // days before the first visit
-	surgery  int // days after onset, -1 for none
-	last     int // days between the last visit and today
-	every    []int
-	lesions  []lesion
-	phases   []phase // days counted from onset
-	painAt   exam.Site
-	truth    string
-	full     int                        // every n-th visit is a full exam, the others are rechecks
-	visit    func(n int, v *exam.Visit) // what else is in a visit
-	stop     string                     // set for the one that is discharged
-	temper   float64                    // share of tests that the animal does not allow
-	thoracic bool                       // the thoracic limbs are the matter
+	patient    exam.Patient
+	age        float64 // years at the first visit
+	kg         float64
+	onset      int // days before the first visit
+	surgery    int // days after onset, -1 for none
+	last       int // days between the last visit and today
+	every      []int
+	lesions    []lesion
+	phases     []phase // days counted from onset
+	painAt     exam.Site
+	truth      string
+	full       int                        // every n-th visit is a full exam, the others are rechecks
+	visit      func(n int, v *exam.Visit) // what else is in a visit
+	stop       string                     // set for the one that is discharged
+	unanswered bool                       // the red flags of the last visit still wait for an answer
+	temper     float64                    // share of tests that the animal does not allow
+	thoracic   bool                       // the thoracic limbs are the matter
 }
 
 func (c course) state(day int) ([]float64, float64) {
@@ -238,11 +240,30 @@ func (c course) run(n int, seed uint64, asOf time.Time, examiners []exam.Examine
 			v.NextVisit = exam.DayOf(at.AddDate(0, 0, 7))
 		}
 		slices.SortFunc(v.Findings, func(a, b exam.Finding) int { return compare(a.Key(), b.Key()) })
+		answer(p, out.Visits, &v, c.unanswered && k == len(c.every))
 		out.Visits = append(out.Visits, v)
 		before = &out.Visits[len(out.Visits)-1]
 	}
 	out.Patient = p
 	return out
+}
+
+// answer says of each red flag of a visit that the treating veterinarian was told. A visit
+// whose flags nobody has answered yet stays open where one of them cannot wait.
+func answer(p exam.Patient, earlier []exam.Visit, v *exam.Visit, leave bool) {
+	for _, f := range alert.Scan(p, append(slices.Clone(earlier), *v), v.Examined) {
+		if f.Visit != v.ID || !f.Open() {
+			continue
+		}
+		if leave {
+			if f.Urgency == alert.Now {
+				v.State, v.ClosedAt, v.NextVisit = exam.Open, time.Time{}, ""
+			}
+			continue
+		}
+		v.Answers = append(v.Answers, exam.Acknowledgement{Rule: f.Rule, Told: p.Veterinarian.Name, Note: "told by telephone",
+			Examiner: v.Examiner, At: v.Examined.Add(20 * time.Minute)})
+	}
 }
 
 func compare(a, b exam.Key) int {
