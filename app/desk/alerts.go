@@ -1,20 +1,27 @@
 package desk
 
 import (
-	"strings"
+	"fyne.io/fyne/v2"
 
+	"cordwalk.example/cordwalk/app/desk/look"
+	"cordwalk.example/cordwalk/app/desk/mark"
 	"cordwalk.example/cordwalk/app/view"
 	"cordwalk.example/cordwalk/assets/words"
 	"cordwalk.example/cordwalk/exam"
+	"cordwalk.example/cordwalk/exam/alert"
 )
 
 // alertLine is one alert of the visit as the screen shows it.
 type alertLine struct {
 	Rule     string
 	Title    string // how soon, and what it is
-	Why      string
+	Name     string // what it is
+	Seen     string // what was seen
+	Why      string // why it matters and what to do
+	Source   string
 	Answered string // who was told, empty where nobody was
 	Must     bool   // has to be answered before the visit can be closed
+	Unlooked bool   // abnormal before and not tested yet: cannot be ruled out
 }
 
 // alertsOf returns the alerts that a visit raises with those before it, the most urgent first.
@@ -25,16 +32,34 @@ func alertsOf(p exam.Patient, others []exam.Visit, today exam.Visit) []alertLine
 			visits = append(visits, v)
 		}
 	}
+	flags := alert.Scan(p, append(visits, today), today.Examined)
+	_, blocking := alert.MayClose(flags, today.ID)
+	must := map[string]bool{}
+	for _, f := range blocking {
+		must[f.Rule+f.Seen] = true
+	}
 	var out []alertLine
-	for _, a := range view.AlertsOf(p, append(visits, today)) {
-		l := alertLine{Rule: a.Rule, Title: words.T("%s: %s", urgencyWords(a.Urgency), a.Title), Why: a.Words, Must: a.Urgency == "now"}
-		if a.Answered {
-			l.Answered = words.T("told: %s", a.Told)
+	for _, f := range flags {
+		name := view.AlertTitle(f.Rule)
+		l := alertLine{Rule: f.Rule, Name: name, Title: view.UrgencyWords(f.Urgency.String()) + " " + name, Seen: words.Of(f.Seen), Why: words.Of(f.Why) + " " + words.Of(f.Do),
+			Source: f.Source, Must: must[f.Rule+f.Seen], Unlooked: f.CannotRuleOut}
+		if f.Answered != nil {
+			l.Answered = words.T("told: %s", f.Answered.Told)
 		}
 		out = append(out, l)
 	}
 	return out
 }
 
-// alertTitle says a rule in words.
-func alertTitle(rule string) string { return words.Of(strings.ReplaceAll(rule, "-", " ")) }
+// alertBox shows one alert: how soon, what was seen, and what can be done.
+func alertBox(a alertLine, answer, why func()) fyne.CanvasObject {
+	lines := mark.Column(2, mark.NewPara(a.Title).Strong().In(look.Call), mark.NewPara(a.Seen))
+	buttons := []fyne.CanvasObject{mark.NewButton(words.T("Why, and what to do"), "", why).As(mark.Quiet)}
+	if a.Answered != "" {
+		lines.Add(mark.NewPara(a.Answered).In(look.InkSoft))
+	} else {
+		buttons = append([]fyne.CanvasObject{mark.NewButton(words.T("Who was told?"), "phone", answer)}, buttons...)
+	}
+	lines.Add(mark.Wrapped(look.Unit/2, buttons...))
+	return mark.On(look.CallBed, false, mark.Pad(look.Unit, look.Unit, mark.RowTop(look.Unit, []float32{0, 1}, mark.Column(0, iconImage("phone", look.Call, 22)), lines)))
+}

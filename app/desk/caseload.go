@@ -206,17 +206,6 @@ func (p *caseloadPage) detailOf() {
 	p.detail.Refresh()
 }
 
-// urgencyWords says an alert's urgency.
-func urgencyWords(u string) string {
-	switch u {
-	case "now":
-		return words.T("Call the veterinarian now")
-	case "today":
-		return words.T("Call the veterinarian today")
-	}
-	return words.T("Tell the veterinarian")
-}
-
 func (p *caseloadPage) detailLines(r view.CaseRow) []fyne.CanvasObject {
 	w, s := p.win, r.Summary
 	route := func(sc view.Screen) func() {
@@ -240,7 +229,7 @@ func (p *caseloadPage) detailLines(r view.CaseRow) []fyne.CanvasObject {
 		icon := canvas.NewImageFromResource(look.Icon("phone", look.Call))
 		icon.FillMode = canvas.ImageFillContain
 		icon.SetMinSize(fyne.NewSize(20, 20))
-		line := mark.Column(0, mark.NewPara(urgencyWords(a.Urgency)).Strong().In(look.Call), mark.NewPara(alertTitle(a.Rule)))
+		line := mark.NewPara(view.UrgencyWords(a.Urgency) + " " + view.AlertTitle(a.Rule)).In(look.Call)
 		out = append(out, mark.On(look.CallBed, false, mark.Pad(look.Unit, look.Unit, mark.Row(look.Unit, []float32{0, 1}, icon, line))))
 	}
 	out = append(out, mark.Row(6, []float32{0, 1}, mark.NewChange(r.Change, 20), mark.NewPara(changeWords(r))))
@@ -315,7 +304,7 @@ func stackedCase(width float32) bool { return width < 660*look.Scale() }
 // caseColumns are the widths of a line: the cross, the animal, its problem, when, how, alert.
 func caseColumns(width float32) (x, w [6]float32) {
 	s := max(1, look.Scale()*0.9)
-	fixed := [6]float32{52, 0, 0, 0, 116 * s, 84 * s}
+	fixed := [6]float32{52, 0, 0, 0, 116 * s, 98 * s}
 	share := [6]float32{0, 0.34, 0.33, 0.33, 0, 0}
 	if stackedCase(width) {
 		share = [6]float32{0, 0.6, 0, 0.4, 0, 0}

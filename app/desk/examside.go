@@ -4,10 +4,11 @@ import (
 	"context"
 	"errors"
 	"math"
+	"slices"
 	"strconv"
+	"strings"
 
 	"fyne.io/fyne/v2"
-	"fyne.io/fyne/v2/canvas"
 	"fyne.io/fyne/v2/widget"
 	"gonum.org/v1/plot/vg"
 
@@ -49,6 +50,7 @@ type examSide struct {
 	warn   *mark.Para
 	box    *fyne.Container
 	lines  *fyne.Container
+	scroll *mark.Scroll
 
 	ask    *view.Newest[sideQuestion, sideAnswer]
 	result *localise.Result
@@ -63,13 +65,14 @@ func newExamSide(p *examPage) *examSide {
 	s := &examSide{page: p, alerts: mark.Column(look.Unit), likely: mark.NewPara("").Strong(), pro: mark.NewPara(""), con: mark.NewPara(""), warn: mark.NewPara("").In(look.InkSoft).As(look.Small)}
 	s.head = mark.NewButton(words.T("Cord map"), "down", s.toggle).As(mark.Quiet).WithTip(words.T("Key m"))
 	s.head.Side = true
-	s.host = newChartHost(nil, fyne.NewSize(200, 200))
+	s.host = newChartHost(nil, fyne.NewSize(200, 260))
 	s.host.hover = s.hover
 	s.note = mark.NewPara("").In(look.InkSoft)
 	s.nextB = mark.NewButton("", "right", p.goNext)
 	s.nextB.Side = true
 	s.lines = mark.Column(6, s.likely, s.pro, s.con, s.nextB, s.warn)
 	s.box = mark.ColumnGrow(look.Unit, 3, s.alerts, s.head, s.note, s.host, s.lines)
+	s.scroll = mark.NewScroll(s.box)
 	for _, w := range p.file.Patient.Weights {
 		s.kg = w.Kg
 	}
@@ -102,7 +105,7 @@ func newExamSide(p *examPage) *examSide {
 }
 
 func (s *examSide) CreateRenderer() fyne.WidgetRenderer {
-	return widget.NewSimpleRenderer(mark.Pad(look.Unit, look.Unit*2, s.box))
+	return widget.NewSimpleRenderer(mark.Pad(look.Unit, look.Unit*2, s.scroll))
 }
 
 // close ends the reckoning.
@@ -147,7 +150,7 @@ func (s *examSide) show() {
 		s.lines.Hide()
 		s.note.Words = words.T("Closed until half of the walk is done: a map seen early bends what is found late. Key m opens it.")
 		s.note.Show()
-		s.box.Refresh()
+		s.scroll.Reflow()
 		return
 	}
 	s.lines.Show()
@@ -166,7 +169,7 @@ func (s *examSide) show() {
 		}
 		s.likely.Words, s.pro.Words, s.con.Words, s.warn.Words = "", "", "", ""
 		s.nextB.Hide()
-		s.box.Refresh()
+		s.scroll.Reflow()
 		return
 	}
 	s.note.Hide()
@@ -193,7 +196,7 @@ func (s *examSide) show() {
 		s.nextB.Tip = words.T("The test that would tell most. Key Enter")
 		s.nextB.Show()
 	}
-	s.box.Refresh()
+	s.scroll.Reflow()
 	s.Refresh()
 }
 
@@ -236,21 +239,23 @@ func (s *examSide) next() (exam.Key, bool) {
 	return exam.Key{}, false
 }
 
-// showAlerts shows what asks for the veterinarian, at once and where it belongs.
+// showAlerts shows what asks for the veterinarian, at once and where it belongs. What was
+// abnormal before and is not tested yet stands in one line while the walk goes on.
 func (s *examSide) showAlerts() {
 	var out []fyne.CanvasObject
+	var still []string
 	for _, a := range s.found {
 		alert := a
-		icon := canvas.NewImageFromResource(look.Icon("phone", look.Call))
-		icon.FillMode = canvas.ImageFillContain
-		icon.SetMinSize(fyne.NewSize(22, 22))
-		lines := mark.Column(2, mark.NewPara(alert.Title).Strong().In(look.Call), mark.NewPara(alert.Why))
-		if alert.Answered != "" {
-			lines.Add(mark.NewPara(alert.Answered).In(look.InkSoft))
-		} else {
-			lines.Add(mark.Left(mark.NewButton(words.T("Who was told?"), "phone", func() { s.page.answer(alert) })))
+		if alert.Unlooked && alert.Answered == "" && !s.page.sheet.Closed() {
+			if !slices.Contains(still, alert.Name) {
+				still = append(still, alert.Name)
+			}
+			continue
 		}
-		out = append(out, mark.On(look.CallBed, false, mark.Pad(look.Unit, look.Unit, mark.RowTop(look.Unit, []float32{0, 1}, mark.Column(0, icon), lines))))
+		out = append(out, alertBox(alert, func() { s.page.answer(alert) }, func() { s.page.explain(alert) }))
+	}
+	if len(still) > 0 {
+		out = append(out, newTapped(cautionLine(words.T("Still to rule out: %s", strings.ToLower(strings.Join(still, ", ")))), s.explainStill))
 	}
 	s.alerts.Objects = out
 	if len(out) == 0 {
@@ -259,6 +264,18 @@ func (s *examSide) showAlerts() {
 		s.alerts.Show()
 	}
 	s.alerts.Refresh()
+}
+
+// explainStill lists what was abnormal before and is not tested yet.
+func (s *examSide) explainStill() {
+	var lines []fyne.CanvasObject
+	for _, a := range s.found {
+		alert := a
+		if alert.Unlooked && alert.Answered == "" {
+			lines = append(lines, alertBox(alert, func() { s.page.answer(alert) }, func() { s.page.explain(alert) }))
+		}
+	}
+	s.page.win.showSheet(words.T("Still to rule out"), mark.Column(look.Unit, lines...), 700)
 }
 
 // unanswered lists the alerts that must be answered before the visit can be closed.

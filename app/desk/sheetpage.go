@@ -30,6 +30,7 @@ type sheetPage struct {
 	kind    string // "owner"
 	doc     sheet.Document
 	turn    int
+	refused error // why there is no sheet
 
 	root    fyne.CanvasObject
 	preview *mark.Scroll
@@ -134,7 +135,7 @@ func (p *sheetPage) make() {
 }
 
 func (p *sheetPage) show(doc sheet.Document, pages []image.Image) {
-	p.doc = doc
+	p.doc, p.refused = doc, nil
 	p.save.Enable()
 	p.print.Enable()
 	var out []fyne.CanvasObject
@@ -150,6 +151,7 @@ func (p *sheetPage) show(doc sheet.Document, pages []image.Image) {
 }
 
 func (p *sheetPage) refuse(err error) {
+	p.refused = err
 	edit := mark.NewButton(words.T("Edit the patient's page"), "edit", func() { p.win.to(view.ScreenPatient) })
 	p.preview.SetContent(mark.Pad(look.Unit*3, look.Unit*3, mark.Column(look.Unit*2, mark.Heading(words.T("No sheet can be made yet")).AtLeast(80), mark.NewPara(err.Error()), mark.Left(edit))))
 }

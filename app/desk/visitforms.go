@@ -437,6 +437,12 @@ func (p *examPage) exerciseLine(e exam.HomeExercise) fyne.CanvasObject {
 	return mark.Column(look.Unit, append(rows, mark.Rule())...)
 }
 
+// explain says why an alert matters, what to do, and on what grounds.
+func (p *examPage) explain(a alertLine) {
+	p.win.showSheet(words.T("Why, and what to do"), mark.Column(look.Unit, mark.NewPara(a.Title).Strong().In(look.Call), mark.NewPara(a.Seen), mark.NewPara(a.Why),
+		mark.NewPara(words.T("Source: %s", a.Source)).In(look.InkSoft).As(look.Small)), 640)
+}
+
 // answer asks who was told of an alert.
 func (p *examPage) answer(a alertLine) {
 	told := mark.NewField(p.file.Patient.Veterinarian.Name, nil)
@@ -464,7 +470,7 @@ func (p *examPage) answer(a alertLine) {
 		p.win.hideSheet()
 	}
 	told.OnSubmitted = func(string) { do() }
-	body := []fyne.CanvasObject{mark.NewPara(a.Title).Strong().In(look.Call), mark.NewPara(a.Why)}
+	body := []fyne.CanvasObject{mark.NewPara(a.Title).Strong().In(look.Call), mark.NewPara(a.Seen), mark.NewPara(a.Why)}
 	body = append(body, phones...)
 	body = append(body, mark.NewLabelled(words.T("Who was told"), told), mark.NewLabelled(words.T("What was agreed"), note), wrong)
 	p.win.showSheet(words.T("Call the veterinarian"), mark.Column(look.Unit, body...), 600, mark.NewButton(words.T("Keep"), "tick", do).As(mark.Main))

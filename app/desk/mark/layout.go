@@ -589,7 +589,7 @@ func (p *Para) MinSize() fyne.Size {
 	if width <= 0 {
 		width = max(w, 240)
 	}
-	return fyne.NewSize(w, p.HeightFor(width))
+	return fyne.NewSize(min(w, 180*look.Scale()), p.HeightFor(width))
 }
 
 // CreateRenderer draws the lines.

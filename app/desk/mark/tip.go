@@ -142,11 +142,25 @@ func (t *Tips) draw(at fyne.Position) {
 	t.layer.Refresh()
 }
 
-// Wrap breaks words into lines no wider than a width; a single word that is wider stands alone.
+// Wrap breaks words into lines no wider than a width; a single word that is wider, such as the
+// name of a folder, is broken where the width ends.
 func Wrap(words string, width, size float32, style fyne.TextStyle) []string {
 	var out []string
 	line := ""
 	for _, w := range strings.Fields(words) {
+		for width > 4*size && fyne.MeasureText(w, size, style).Width > width {
+			if line != "" {
+				out = append(out, line)
+				line = ""
+			}
+			r := []rune(w)
+			n := len(r) - 1
+			for n > 1 && fyne.MeasureText(string(r[:n]), size, style).Width > width {
+				n--
+			}
+			out = append(out, string(r[:n]))
+			w = string(r[n:])
+		}
 		try := w
 		if line != "" {
 			try = line + " " + w

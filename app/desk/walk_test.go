@@ -1,0 +1,230 @@
+package desk
+
+import (
+	"fmt"
+	"testing"
+
+	"fyne.io/fyne/v2"
+	"fyne.io/fyne/v2/canvas"
+	"fyne.io/fyne/v2/container"
+	"fyne.io/fyne/v2/test"
+	"fyne.io/fyne/v2/widget"
+
+	"cordwalk.example/cordwalk/app/desk/look"
+	"cordwalk.example/cordwalk/app/desk/mark"
+	"cordwalk.example/cordwalk/app/view"
+)
+
+// box is a rectangle on the window.
+type box struct{ x0, y0, x1, y1 float32 }
+
+func (b box) cut(c box) box {
+	return box{max(b.x0, c.x0), max(b.y0, c.y0), min(b.x1, c.x1), min(b.y1, c.y1)}
+}
+func (b box) empty() bool { return b.x1 <= b.x0 || b.y1 <= b.y0 }
+
+// seen is a text as it stands on the window.
+type seen struct {
+	words string
+	at    box // of the letters
+	clip  box // of what scrolls around them
+	entry bool
+	pane  fyne.CanvasObject // the scroll it lies in
+}
+
+// texts walks the tree of what is drawn and returns every text.
+func texts(root fyne.CanvasObject, size fyne.Size) []seen {
+	var out []seen
+	var walk func(o fyne.CanvasObject, at fyne.Position, clip box, entry bool, pane fyne.CanvasObject)
+	walk = func(o fyne.CanvasObject, at fyne.Position, clip box, entry bool, pane fyne.CanvasObject) {
+		if o == nil || !o.Visible() {
+			return
+		}
+		at = at.Add(o.Position())
+		s := o.Size()
+		switch x := o.(type) {
+		case *canvas.Text:
+			if x.Text == "" {
+				return
+			}
+			m := x.MinSize()
+			left := at.X
+			switch x.Alignment {
+			case fyne.TextAlignCenter:
+				left += (s.Width - m.Width) / 2
+			case fyne.TextAlignTrailing:
+				left += s.Width - m.Width
+			}
+			out = append(out, seen{x.Text, box{left, at.Y, left + m.Width, at.Y + m.Height}, clip, entry, pane})
+		case *fyne.Container:
+			for _, c := range x.Objects {
+				walk(c, at, clip, entry, pane)
+			}
+		case fyne.Widget:
+			if _, ok := x.(*mark.Field); ok {
+				entry = true
+			}
+			if _, ok := x.(*widget.Entry); ok {
+				entry = true
+			}
+			if sc, ok := x.(*container.Scroll); ok {
+				clip = clip.cut(box{at.X, at.Y, at.X + s.Width, at.Y + s.Height})
+				if sc.Content != nil {
+					pane = sc
+				}
+			}
+			for _, c := range test.WidgetRenderer(x).Objects() {
+				walk(c, at, clip, entry, pane)
+			}
+		}
+	}
+	walk(root, fyne.NewPos(0, 0), box{0, 0, size.Width, size.Height}, false, nil)
+	return out
+}
+
+// faults says which texts are cut off at a side or lie over one another. What scrolls may leave
+// its pane above and below; what is typed into a field may be longer than the field.
+func faults(root fyne.CanvasObject, size fyne.Size) []string {
+	var out []string
+	list := texts(root, size)
+	const slack = 1.5
+	for _, t := range list {
+		if t.entry {
+			continue
+		}
+		if t.at.y1 <= t.clip.y0 || t.at.y0 >= t.clip.y1 {
+			continue // scrolled away
+		}
+		if t.at.x0 < t.clip.x0-slack || t.at.x1 > t.clip.x1+slack {
+			out = append(out, fmt.Sprintf("%q runs from %.0f to %.0f, but is seen from %.0f to %.0f", t.words, t.at.x0, t.at.x1, t.clip.x0, t.clip.x1))
+		}
+		if t.pane == nil && (t.at.y0 < t.clip.y0-slack || t.at.y1 > t.clip.y1+slack) {
+			out = append(out, fmt.Sprintf("%q stands at %.0f to %.0f, outside %.0f to %.0f", t.words, t.at.y0, t.at.y1, t.clip.y0, t.clip.y1))
+		}
+	}
+	for i, a := range list {
+		av := a.at.cut(a.clip)
+		if a.entry || av.empty() {
+			continue
+		}
+		for _, b := range list[i+1:] {
+			bv := b.at.cut(b.clip)
+			if b.entry || bv.empty() {
+				continue
+			}
+			o := av.cut(bv)
+			// The box of a line holds the room for accents and descenders; letters meet only where more than a fifth is shared.
+			high := min(av.y1-av.y0, bv.y1-bv.y0) * 0.2
+			if o.x1-o.x0 > 2 && o.y1-o.y0 > max(3, high) {
+				out = append(out, fmt.Sprintf("%q lies over %q", a.words, b.words))
+			}
+		}
+	}
+	return out
+}
+
+func TestFaultsAreFound(t *testing.T) {
+	test.NewTempApp(t).Settings().SetTheme(look.New(look.Light, 1))
+	long := mark.Line("a line that is far too long for the room it is given here")
+	long.Resize(fyne.NewSize(900, 24))
+	clash := container.NewWithoutLayout(mark.Line("one"), mark.Line("two"))
+	for _, o := range clash.Objects {
+		o.Resize(fyne.NewSize(60, 24))
+	}
+	for name, o := range map[string]fyne.CanvasObject{"cut off": container.NewWithoutLayout(long), "overlap": clash} {
+		w := test.NewTempWindow(t, o)
+		w.Resize(fyne.NewSize(200, 100))
+		if len(faults(o, fyne.NewSize(200, 100))) == 0 {
+			t.Errorf("%s: nothing was found", name)
+		}
+	}
+}
+
+// screens are all screens of the program with what is done on them before they are looked at.
+func screens(s *stage) map[string]func() {
+	bramble := s.id("Bramble")
+	return map[string]func(){
+		"caseload": func() { s.show(view.ScreenCaseload, bramble) },
+		"search": func() {
+			s.show(view.ScreenCaseload, bramble)
+			s.keys("nobody at all")
+		},
+		"exam":  func() { s.show(view.ScreenExam, bramble); s.keys("m") },
+		"visit": func() { s.show(view.ScreenExam, bramble); s.exam().choose(tabVisit) },
+		"measures": func() {
+			s.show(view.ScreenExam, bramble)
+			s.exam().choose(tabMeasures)
+		},
+		"treatments": func() { s.show(view.ScreenExam, bramble); s.exam().choose(tabTreatments) },
+		"home":       func() { s.show(view.ScreenExam, bramble); s.exam().choose(tabHome) },
+		"one": func() {
+			s.show(view.ScreenExam, bramble)
+			s.app.settings.OneByOne = true
+			s.exam().choose(tabExam)
+		},
+		"compare":  func() { s.show(view.ScreenCompare, bramble) },
+		"course":   func() { s.show(view.ScreenCourse, bramble) },
+		"sheet":    func() { s.show(view.ScreenSheet, bramble) },
+		"devices":  func() { s.show(view.ScreenDevices, bramble) },
+		"settings": func() { s.show(view.ScreenSettings, bramble) },
+		"patient":  func() { s.show(view.ScreenPatient, bramble) },
+		"help":     func() { s.show(view.ScreenExam, bramble); s.win().showHelp() },
+	}
+}
+
+func (s *stage) exam() *examPage {
+	s.t.Helper()
+	p, ok := s.win().page.(*examPage)
+	if !ok {
+		s.t.Fatalf("the page is %T, not the exam", s.win().page)
+	}
+	return p
+}
+
+// No text is cut off or lies over another: every screen, at the sizes and scales that are promised.
+func TestNoTextIsCutOffOnAnyScreen(t *testing.T) {
+	for _, c := range []struct {
+		w, h    float32
+		mode    look.Mode
+		percent int
+	}{
+		{1366, 768, look.Light, 100}, {1920, 1080, look.Dark, 100}, {1100, 700, look.Contrast, 80},
+		{1366, 768, look.Light, 150}, {1920, 1080, look.Light, 200}, {1100, 700, look.Dark, 200},
+	} {
+		t.Run(fmt.Sprintf("%.0fx%.0f_%s_%d", c.w, c.h, c.mode, c.percent), func(t *testing.T) {
+			s := newStage(t, view.Settings{Theme: string(c.mode), TextScale: c.percent})
+			w := s.demo()
+			w.win.Resize(fyne.NewSize(c.w, c.h))
+			for name, open := range screens(s) {
+				s.app.settings.OneByOne = false
+				open()
+				s.settle()
+				root := w.win.Content()
+				if len(w.layer.Objects) > 0 {
+					root = w.layer // what lies below a sheet is meant to be covered
+				}
+				for _, f := range faults(root, w.win.Canvas().Size()) {
+					t.Errorf("%s: %s", name, f)
+				}
+				w.hideSheet()
+			}
+		})
+	}
+}
+
+// The first start and the unlocking screen, too.
+func TestNoTextIsCutOffBeforeAPracticeIsOpen(t *testing.T) {
+	for _, percent := range []int{80, 100, 200} {
+		s := newStage(t, view.Settings{TextScale: percent})
+		s.app.Start("")
+		w := s.win()
+		w.win.Resize(fyne.NewSize(1100, 700))
+		for _, f := range faults(w.win.Content(), w.win.Canvas().Size()) {
+			t.Errorf("first start at %d %%: %s", percent, f)
+		}
+		w.bare(newUnlockPage(w, "/somewhere/practice"))
+		for _, f := range faults(w.win.Content(), w.win.Canvas().Size()) {
+			t.Errorf("unlocking at %d %%: %s", percent, f)
+		}
+	}
+}
