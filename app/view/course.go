@@ -40,6 +40,9 @@ type Course struct {
 	Strip   chart.Strip
 	Limbs   chart.Limbs
 	Measure chart.Measures
+	// Function is the limbs' and the whole animal's function by the serial model, with bands and
+	// forecast; empty where the course is the plain one.
+	Function chart.Limbs
 	// MeasureKeys names the measures of Measure.Series, in order.
 	MeasureKeys []string
 	segments    [][]SegmentValue // by visit
@@ -48,8 +51,7 @@ type Course struct {
 // NewCourse lays out the course of a patient. model says that the scores are a model's,
 // whose values are shown with their bands only.
 func NewCourse(p exam.Patient, visits []exam.Visit, scores Scores, model bool) *Course {
-	c := &Course{Patient: p, Visits: slices.Clone(visits)}
-	slices.SortStableFunc(c.Visits, func(a, b exam.Visit) int { return a.Examined.Compare(b.Examined) })
+	c := &Course{Patient: p, Visits: sortedVisits(visits)}
 	cols := make([]chart.Visit, len(c.Visits))
 	for i, v := range c.Visits {
 		cols[i] = chart.Visit{At: v.Examined}
@@ -117,6 +119,13 @@ func NewCourse(p exam.Patient, visits []exam.Visit, scores Scores, model bool) *
 	}
 	c.measures(cols, events, goals)
 	return c
+}
+
+// sortedVisits returns the visits oldest first.
+func sortedVisits(visits []exam.Visit) []exam.Visit {
+	out := slices.Clone(visits)
+	slices.SortStableFunc(out, func(a, b exam.Visit) int { return a.Examined.Compare(b.Examined) })
+	return out
 }
 
 type goalAt struct {

@@ -64,6 +64,8 @@ type commands struct {
 	Localise localiseCmd `cmd:"" help:"Say which segments, roots or nerves explain an exam file."`
 	Progress progressCmd `cmd:"" help:"Show the course of a patient, or of a file with a series of exams."`
 	Sheet    sheetCmd    `cmd:"" help:"Write the owner's progress sheet as PDF."`
+	Summary  summaryCmd  `cmd:"" help:"Write the clinical summary for the veterinarian as PDF."`
+	Letter   letterCmd   `cmd:"" help:"Write a referral letter about an alert as PDF."`
 	Export   exportCmd   `cmd:"" help:"Write records out: json, csv, xlsx, fhir or ics."`
 	Import   importCmd   `cmd:"" help:"Read records in, from what export wrote."`
 	History  historyCmd  `cmd:"" help:"Show every change of a patient: who, when, on which device."`

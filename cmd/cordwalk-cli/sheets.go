@@ -91,3 +91,41 @@ func (c *sheetCmd) Run(e *env) error {
 		return c.finish(e, d)
 	})
 }
+
+// summaryCmd writes the clinical summary.
+type summaryCmd struct{ paperFlags }
+
+func (c *summaryCmd) Run(e *env) error {
+	return e.with(func(s *storage.Store) error {
+		in, err := c.input(e, s)
+		if err != nil {
+			return err
+		}
+		course, err := view.ClinicalCourse(in.Patient, in.Visits)
+		if err != nil {
+			return err
+		}
+		d, err := sheet.Clinical(in, course)
+		if err != nil {
+			return err
+		}
+		return c.finish(e, d)
+	})
+}
+
+// letterCmd writes a referral letter.
+type letterCmd struct{ paperFlags }
+
+func (c *letterCmd) Run(e *env) error {
+	return e.with(func(s *storage.Store) error {
+		in, err := c.input(e, s)
+		if err != nil {
+			return err
+		}
+		d, err := sheet.Letter(in)
+		if err != nil {
+			return err
+		}
+		return c.finish(e, d)
+	})
+}
