@@ -36,7 +36,7 @@ type Records struct {
 	Made     time.Time
 	Practice exam.Practice // PINs are not exported
 	Animals  []Animal
-	Changes  []change.Change // in the order of change.Change.Compare; without audit
+	Changes  []change.Change // of the animals, in the order of their history; of Stream only Device counts
 }
 
 type recordsJSON struct {
@@ -167,11 +167,11 @@ type answerJSON struct {
 }
 
 // changeJSON is one change. Value is the bytes as they are kept, in base64; times of the
-// history are whole numbers as the hybrid logical clock counts them.
+// history are whole numbers as the hybrid logical clock counts them. Where a change stood in
+// a device's journal is no part of it: an import makes a journal of its own.
 type changeJSON struct {
 	ID         string   `json:"id"`
-	Stream     string   `json:"stream"`
-	Seq        uint64   `json:"seq"`
+	Device     string   `json:"device"`
 	Time       string   `json:"time"`
 	Examiner   string   `json:"examiner,omitempty"`
 	Kind       uint16   `json:"kind"`
@@ -183,7 +183,6 @@ type changeJSON struct {
 	Act        uint8    `json:"act,omitempty"`
 	Reason     string   `json:"reason,omitempty"`
 	Seen       []string `json:"seen,omitempty"`
-	Before     uint64   `json:"before,omitempty"`
 	Extra      string   `json:"extra,omitempty"`
 }
 
@@ -217,7 +216,7 @@ func EncodeRecords(w io.Writer, r Records) error {
 		out.Animals = append(out.Animals, animalOut(a))
 	}
 	for _, c := range r.Changes {
-		if c.Kind == change.KindAudit || c.Kind == change.KindView {
+		if !exported(c.Kind) {
 			continue
 		}
 		out.Changes = append(out.Changes, changeOut(c))
@@ -229,6 +228,16 @@ func EncodeRecords(w io.Writer, r Records) error {
 		return fmt.Errorf("writing records: %w", err)
 	}
 	return nil
+}
+
+// exported reports whether changes of a kind leave in a records file. Audit and who looked at
+// what stay; so do the practice's settings and devices, which are not the animals'.
+func exported(k change.Kind) bool {
+	switch k {
+	case change.KindPatient, change.KindVisit, change.KindEdge, change.KindOwner, change.KindAttachment:
+		return true
+	}
+	return false
 }
 
 func animalOut(a Animal) animalJSON {
@@ -299,9 +308,9 @@ func changeOut(c change.Change) changeJSON {
 		}
 		return out
 	}
-	return changeJSON{ID: c.ID.String(), Stream: c.Stream.Name(), Seq: c.Seq, Time: strconv.FormatUint(uint64(c.Time), 10), Examiner: c.Examiner,
+	return changeJSON{ID: c.ID.String(), Device: c.Stream.Device.String(), Time: strconv.FormatUint(uint64(c.Time), 10), Examiner: c.Examiner,
 		Kind: uint16(c.Kind), Patient: c.Patient, Record: c.Record, Field: c.Field, Value: base64.StdEncoding.EncodeToString(c.Value),
-		Supersedes: ids(c.Supersedes), Act: uint8(c.Act), Reason: c.Reason, Seen: ids(c.Seen), Before: c.Before,
+		Supersedes: ids(c.Supersedes), Act: uint8(c.Act), Reason: c.Reason, Seen: ids(c.Seen),
 		Extra: base64.StdEncoding.EncodeToString(c.Extra)}
 }
 
@@ -614,9 +623,12 @@ func changeIn(p *place, j changeJSON) change.Change {
 		b, err := base64.StdEncoding.DecodeString(s)
 		return parsed(p, b, err)
 	}
-	c := change.Change{ID: id(j.ID), Seq: j.Seq, Examiner: j.Examiner, Kind: change.Kind(j.Kind), Patient: j.Patient, Record: j.Record, Field: j.Field,
-		Value: raw(j.Value), Supersedes: ids(j.Supersedes), Act: change.Act(j.Act), Reason: j.Reason, Seen: ids(j.Seen), Before: j.Before, Extra: raw(j.Extra)}
-	st, err := change.ParseStream(j.Stream)
+	c := change.Change{ID: id(j.ID), Examiner: j.Examiner, Kind: change.Kind(j.Kind), Patient: j.Patient, Record: j.Record, Field: j.Field,
+		Value: raw(j.Value), Supersedes: ids(j.Supersedes), Act: change.Act(j.Act), Reason: j.Reason, Seen: ids(j.Seen), Extra: raw(j.Extra)}
+	st, err := change.ParseStream(j.Device + strings.Repeat("0", 32))
+	if err != nil {
+		err = &exam.Invalid{Field: "device", Value: j.Device, Allowed: "32 hexadecimal digits"}
+	}
 	c.Stream = parsed(p, st, err)
 	t, err := strconv.ParseUint(j.Time, 10, 64)
 	c.Time = change.HLC(parsed(p, t, err))
