@@ -231,6 +231,16 @@ func NewDevice() (Device, error) {
 	return Device{id, ed25519.NewKeyFromSeed(seed[:])}, nil
 }
 
+// DeviceFrom returns the keys that hang on an age identity alone: what a recovery sheet can hold.
+// It signs with an ed25519 key whose seed is HKDF-SHA-256 of the identity's text.
+func DeviceFrom(id *age.X25519Identity) Device {
+	seed, err := hkdf.Key(sha256.New, []byte(id.String()), nil, "cordwalk 1 recovery signer", ed25519.SeedSize)
+	if err != nil {
+		panic(err) // only for an impossible length
+	}
+	return Device{id, ed25519.NewKeyFromSeed(seed)}
+}
+
 // Identity returns the key that unwraps what others wrap to this device.
 func (d Device) Identity() *age.X25519Identity { return d.identity }
 

@@ -72,7 +72,7 @@ func Establish(b key.Bag, name string, inc change.Incarnation, now change.HLC) (
 	if err != nil {
 		return nil, nil, fmt.Errorf("making the recovery key: %w", err)
 	}
-	s, err := sign(Statement{Kind: Found, Practice: b.Practice, Time: now, Recipient: b.Device.Recipient(), Name: clip(name), Incarnation: inc, Recovery: recovery.Recipient().String()}, b.Device)
+	s, err := sign(Statement{Kind: Found, Practice: b.Practice, Time: now, Recipient: b.Device.Recipient(), Name: clip(name), Incarnation: inc, Recovery: recovery.Recipient().String(), Recoverer: key.DeviceFrom(recovery).Verifier()}, b.Device)
 	if err != nil {
 		return nil, nil, err
 	}
@@ -185,9 +185,19 @@ func (l *List) wasMember(s *Statement) bool {
 	if s.Kind == Found {
 		return s.id == l.root
 	}
+	if l.recovers(s.Signer) {
+		return true
+	}
 	w := l.world(l.past(s))
 	d := w.devices[s.Signer]
 	return d != nil && d.Member()
+}
+
+// recovers reports whether a signature is the recovery sheet's. Whoever holds the sheet can let a
+// device in and confirm a removal when every device is lost or disputed.
+func (l *List) recovers(v key.Verifier) bool {
+	root := l.all[l.root]
+	return root != nil && root.Recoverer == v
 }
 
 // world is what a set of statements says.
@@ -440,7 +450,10 @@ var ErrNotMember = errors.New("this device is not a member of the practice")
 
 // state adds a statement of this device to the list.
 func (l *List) state(d key.Device, s Statement) (*Statement, error) {
-	if me, ok := l.Device(d.Verifier()); !ok || !me.Member() {
+	l.mu.RLock()
+	sheet := l.recovers(d.Verifier())
+	l.mu.RUnlock()
+	if me, ok := l.Device(d.Verifier()); !sheet && (!ok || !me.Member()) {
 		return nil, ErrNotMember
 	}
 	s.After = l.heads()
@@ -513,7 +526,7 @@ func (l *List) Ring(id *age.X25519Identity, have *key.Ring) (*key.Ring, error) {
 		if s.Kind != Keys {
 			continue
 		}
-		if d := l.devices[s.Signer]; d == nil || d.Disputed {
+		if d := l.devices[s.Signer]; !l.recovers(s.Signer) && (d == nil || d.Disputed) {
 			continue
 		}
 		for _, w := range s.Wraps {
@@ -590,4 +603,29 @@ func (l *List) Practice() exam.ID {
 		return root.Practice
 	}
 	return exam.ID{}
+}
+
+// Recover lets a new device in with the recovery sheet, where every other device is lost. It returns
+// the device's keys with all of the practice's epochs.
+func (l *List) Recover(sheet *age.X25519Identity, d key.Device, name string, inc change.Incarnation, now change.HLC) (key.Bag, error) {
+	signer := key.DeviceFrom(sheet)
+	l.mu.RLock()
+	ok := l.recovers(signer.Verifier())
+	l.mu.RUnlock()
+	if !ok {
+		return key.Bag{}, errors.New("this recovery sheet is that of another practice")
+	}
+	ring, err := l.Ring(sheet, nil)
+	if err != nil {
+		return key.Bag{}, err
+	}
+	b := key.Bag{Practice: l.Practice(), Ring: ring, Device: signer}
+	if _, err := l.state(signer, Statement{Kind: Admit, Practice: b.Practice, Time: now, Subject: d.Verifier(), Recipient: d.Recipient(), Name: clip(name), Incarnation: inc}); err != nil {
+		return key.Bag{}, err
+	}
+	if err := l.hand(b, now, []string{d.Recipient()}); err != nil {
+		return key.Bag{}, err
+	}
+	b.Device = d
+	return b, nil
 }

@@ -252,6 +252,30 @@ func TestRemoval(t *testing.T) {
 	require.Equal(t, a.bag.Ring.Current(), b.bag.Ring.Current())
 }
 
+func TestRecoverySheetLetsADeviceInWhenAllAreLost(t *testing.T) {
+	a, sheet := found(t, "a")
+	b := join(a, "b")
+	meet(a, b)
+	ring, err := a.list.Remove(a.bag, b.v(), "", nil, a.now())
+	require.NoError(t, err)
+	l := member.NewList(a.list.Root())
+	_, err = l.Learn(a.list.Statements())
+	require.NoError(t, err)
+	d, err := key.NewDevice()
+	require.NoError(t, err)
+	bag, err := l.Recover(sheet, d, "new laptop", change.NewIncarnation(), a.now())
+	require.NoError(t, err)
+	require.Equal(t, ring.Epochs(), bag.Ring.Epochs())
+	_, err = a.list.Learn(l.Statements())
+	require.NoError(t, err)
+	require.Equal(t, []string{"a", "new laptop"}, members(a))
+
+	other, err := age.GenerateX25519Identity()
+	require.NoError(t, err)
+	_, err = l.Recover(other, d, "x", change.NewIncarnation(), a.now())
+	require.ErrorContains(t, err, "another practice")
+}
+
 func TestARemovedDeviceCannotLetAnotherIn(t *testing.T) {
 	a, _ := found(t, "a")
 	b := join(a, "b")

@@ -83,6 +83,7 @@ type Statement struct {
 	Removal     ID                 `cbor:"12,keyasint,omitzero"`  // of Confirm
 	Recovery    string             `cbor:"13,keyasint,omitempty"` // of Found: the recovery sheet's recipient
 	Reason      string             `cbor:"14,keyasint,omitempty"` // of Remove, in words
+	Recoverer   key.Verifier       `cbor:"15,keyasint,omitzero"`  // of Found: with it the recovery sheet signs
 
 	id  ID
 	raw []byte
@@ -185,7 +186,7 @@ func (s *Statement) check() error {
 	var none key.Verifier
 	switch s.Kind {
 	case Found:
-		if s.Recipient == "" || s.Incarnation.IsZero() || s.Recovery == "" {
+		if s.Recipient == "" || s.Incarnation.IsZero() || s.Recovery == "" || s.Recoverer == none {
 			return errors.New("the founding lacks a key")
 		}
 	case Admit:

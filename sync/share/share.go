@@ -38,6 +38,7 @@ type Share struct {
 	*storage.Store
 	List *member.List
 
+	at  string // the store's folder
 	fs  disk.FS
 	now func() time.Time
 	mu  sync.Mutex // one exchange, join or removal at a time
@@ -64,7 +65,7 @@ func (o Options) withDefaults() Options {
 // It is nil otherwise.
 func Open(ctx context.Context, s *storage.Store, o Options) (sh *Share, recovery *age.X25519Identity, err error) {
 	o = o.withDefaults()
-	sh = &Share{Store: s, fs: o.FS, now: o.Now}
+	sh = &Share{Store: s, at: s.Dir(), fs: o.FS, now: o.Now}
 	root, err := disk.ReadFile(o.FS, sh.path(rootFile), 128)
 	switch {
 	case errors.Is(err, fs.ErrNotExist):
@@ -90,8 +91,11 @@ func Open(ctx context.Context, s *storage.Store, o Options) (sh *Share, recovery
 	return sh, recovery, sh.refresh(ctx)
 }
 
-func (sh *Share) path(names ...string) string {
-	return filepath.Join(append([]string{sh.Dir(), membersDir}, names...)...)
+func (sh *Share) path(names ...string) string { return folder(sh.at, names...) }
+
+// folder returns a path in the folder of the list of devices.
+func folder(dir string, names ...string) string {
+	return filepath.Join(append([]string{dir, membersDir}, names...)...)
 }
 
 func (sh *Share) clock() change.HLC { return change.HLCAt(sh.now()) }
@@ -243,10 +247,10 @@ func (sh *Share) Member() bool {
 }
 
 // Folder exchanges with a folder.
-func (sh *Share) Folder(ctx context.Context, folder string, progress func(what string, done, total int64)) (carry.Report, error) {
+func (sh *Share) Folder(ctx context.Context, place string, progress func(what string, done, total int64)) (carry.Report, error) {
 	sh.mu.Lock()
 	defer sh.mu.Unlock()
-	r, err := carry.Sync(ctx, folder, carry.Options{Bag: sh.Bag(), Incarnation: sh.Incarnation, Journal: sh, Members: sh, FS: sh.fs, Now: sh.now, Progress: progress})
+	r, err := carry.Sync(ctx, place, carry.Options{Bag: sh.Bag(), Incarnation: sh.Incarnation, Journal: sh, Members: sh, FS: sh.fs, Now: sh.now, Progress: progress})
 	if err == nil && r.Received > 0 {
 		err = sh.refresh(ctx) // streams that are new to us may be limited
 	}
@@ -438,7 +442,7 @@ func Join(ctx context.Context, dir, folder string, j *member.Joining, inc change
 	if err != nil {
 		return nil, err
 	}
-	sh := &Share{Store: s, List: list, fs: o.FS, now: o.Now}
+	sh := &Share{Store: s, at: s.Dir(), List: list, fs: o.FS, now: o.Now}
 	if err := sh.keep(list); err != nil {
 		return nil, errors.Join(err, s.Close())
 	}
