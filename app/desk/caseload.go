@@ -216,14 +216,20 @@ func (p *caseloadPage) detailLines(r view.CaseRow) []fyne.CanvasObject {
 		start = words.T("Go on with the exam")
 	}
 	out := []fyne.CanvasObject{
-		center(mark.NewBody(r.Cross, s.Species, 190)),
+		center(mark.NewBody(r.Cross, s.Species, 150)),
 		mark.Heading(s.Name).Centred().AtLeast(80),
 	}
 	if s.Problem != "" {
 		out = append(out, mark.NewPara(s.Problem))
 	}
+	const most = 2 // more would push what can be done out of sight
+	shown, hidden := 0, 0
 	for _, a := range s.Alerts {
 		if a.Answered {
+			continue
+		}
+		if shown++; shown > most {
+			hidden++
 			continue
 		}
 		icon := canvas.NewImageFromResource(look.Icon("phone", look.Call))
@@ -231,6 +237,9 @@ func (p *caseloadPage) detailLines(r view.CaseRow) []fyne.CanvasObject {
 		icon.SetMinSize(fyne.NewSize(20, 20))
 		line := mark.NewPara(view.UrgencyWords(a.Urgency) + " " + view.AlertTitle(a.Rule)).In(look.Call)
 		out = append(out, mark.On(look.CallBed, false, mark.Pad(look.Unit, look.Unit, mark.Row(look.Unit, []float32{0, 1}, icon, line))))
+	}
+	if hidden > 0 {
+		out = append(out, mark.NewPara(words.N(hidden, "and %d more alert", "and %d more alerts", hidden)).In(look.Call))
 	}
 	out = append(out, mark.Row(6, []float32{0, 1}, mark.NewChange(r.Change, 20), mark.NewPara(changeWords(r))))
 	out = append(out, mark.NewPara(words.T("Last visit: %s", r.LastWords)).In(look.InkSoft), mark.NewPara(r.DueWords).In(dueToken(r)))

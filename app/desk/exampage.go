@@ -180,6 +180,7 @@ func (p *examPage) help() []view.KeyHelp {
 	return append(view.ExamKeys(),
 		view.KeyHelp{Keys: "o", Does: words.T("one test at a time, or the grid")},
 		view.KeyHelp{Keys: "m", Does: words.T("open or close the cord map")},
+		view.KeyHelp{Keys: words.T("Ctrl+Enter"), Does: words.T("close the visit")},
 		view.KeyHelp{Keys: "Escape", Does: words.T("give the keys to the buttons beside the grid")})
 }
 

@@ -349,7 +349,7 @@ func newGridRow(g *examGrid, row int, r view.Row) *gridRow {
 			w.spans[k] = cellSpan{line + n/4, n % 4, n%4 + 1}
 		}
 		w.cells[k].caption = view.SiteName(cells[r.Cells[k]].Site)
-		if len(elsewhere) == 1 && !limbs {
+		if cells[r.Cells[k]].Site.Side() == exam.Midline && len(elsewhere) == 1 && !limbs {
 			w.cells[k].caption = ""
 		}
 	}

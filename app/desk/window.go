@@ -29,6 +29,7 @@ type (
 	reloader   interface{ reload(f File) }
 	helper     interface{ help() []view.KeyHelp }
 	undoer     interface{ undo(redo bool) }
+	closer     interface{ close() }
 	footWriter interface{ foot() fyne.CanvasObject }
 )
 
@@ -249,7 +250,14 @@ func (w *window) keys() {
 	})
 	ctrl(fyne.KeyComma, func() { w.goTo(view.Route{Screen: view.ScreenSettings}) })
 	ctrl(fyne.KeyT, func() { w.app.another(w.here()) })
-	ctrl(fyne.KeyQ, func() { w.close() })
+	c.AddShortcut(&desktop.CustomShortcut{KeyName: fyne.KeyQ, Modifier: fyne.KeyModifierControl}, func(fyne.Shortcut) { w.close() })
+	for _, enter := range []fyne.KeyName{fyne.KeyReturn, fyne.KeyEnter} {
+		ctrl(enter, func() {
+			if p, ok := w.page.(closer); ok {
+				p.close()
+			}
+		})
+	}
 	step := func(k fyne.KeyName, move func() (view.Route, bool)) {
 		c.AddShortcut(&desktop.CustomShortcut{KeyName: k, Modifier: fyne.KeyModifierAlt}, func(fyne.Shortcut) {
 			if r, ok := move(); ok {
