@@ -186,6 +186,9 @@ func Terms() []string {
 	}
 	out = append(out, "We saw something that your veterinarian must know of.", "now", "today", "soon")
 	out = append(out, months[:]...)
+	out = append(out, outcomeTerms()...)
+	out = append(out, positionTitles[:]...)
+	out = append(out, sectionTitles[:]...)
 	out = append(out, "medial digit", "lateral digit", "female", "male", "unknown", "active", "discharged", "died",
 		"sedation", "aid", "surface", "session", "medicines", "none", "mild", "moderate", "deep")
 	out = append(out, exam.AidWords()...)
