@@ -60,17 +60,21 @@ type commands struct {
 		Answer examAnswerCmd `cmd:"" help:"Say who was told of an alert."`
 		Walk   examWalkCmd   `cmd:"" help:"List what a protocol asks of a patient today, in the order of work."`
 	} `cmd:"" help:"Exams."`
-	Compare  compareCmd  `cmd:"" help:"Show what changed between two visits."`
-	Localise localiseCmd `cmd:"" help:"Say which segments, roots or nerves explain an exam file."`
-	Progress progressCmd `cmd:"" help:"Show the course of a patient, or of a file with a series of exams."`
-	Sheet    sheetCmd    `cmd:"" help:"Write the owner's progress sheet as PDF."`
-	Summary  summaryCmd  `cmd:"" help:"Write the clinical summary for the veterinarian as PDF."`
-	Letter   letterCmd   `cmd:"" help:"Write a referral letter about an alert as PDF."`
-	Export   exportCmd   `cmd:"" help:"Write records out: json, csv, xlsx, fhir or ics."`
-	Import   importCmd   `cmd:"" help:"Read records in, from what export wrote."`
-	History  historyCmd  `cmd:"" help:"Show every change of a patient: who, when, on which device."`
-	Check    checkCmd    `cmd:"" help:"Read every byte of the practice and report what is wrong; repairs nothing."`
-	Rebuild  rebuildCmd  `cmd:"" help:"Make the index anew from the journal."`
+	Compare   compareCmd   `cmd:"" help:"Show what changed between two visits."`
+	Localise  localiseCmd  `cmd:"" help:"Say which segments, roots or nerves explain an exam file."`
+	Progress  progressCmd  `cmd:"" help:"Show the course of a patient, or of a file with a series of exams."`
+	Sheet     sheetCmd     `cmd:"" help:"Write the owner's progress sheet as PDF."`
+	Summary   summaryCmd   `cmd:"" help:"Write the clinical summary for the veterinarian as PDF."`
+	Letter    letterCmd    `cmd:"" help:"Write a referral letter about an alert as PDF."`
+	Export    exportCmd    `cmd:"" help:"Write records out: json, csv, xlsx, fhir or ics."`
+	Import    importCmd    `cmd:"" help:"Read records in, from what export wrote."`
+	Outcomes  outcomesCmd  `cmd:"" help:"Show time to walking by problem and presenting grade, beside published figures."`
+	Repeat    repeatCmd    `cmd:"" help:"Show how well the practice's own repeat exams agree."`
+	Conflicts conflictsCmd `cmd:"" help:"List fields with several values that nobody has chosen between."`
+	Resolve   resolveCmd   `cmd:"" help:"Choose one of several values."`
+	History   historyCmd   `cmd:"" help:"Show every change of a patient: who, when, on which device."`
+	Check     checkCmd     `cmd:"" help:"Read every byte of the practice and report what is wrong; repairs nothing."`
+	Rebuild   rebuildCmd   `cmd:"" help:"Make the index anew from the journal."`
 }
 
 // env is what a command runs in.
