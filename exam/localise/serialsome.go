@@ -1,83 +1,168 @@
 package localise
 
 import (
-	"sync"
+	"cmp"
+	"slices"
 
 	"cordwalk.example/cordwalk/exam"
 )
 
-// A course of hundreds of visits is soon certain of most sites: weighing only those that are
-// still open costs a fraction of weighing all. What is computed is the same.
+// A course of hundreds of visits weighs the same sites again and again, and from one week to
+// the next most findings stay as they were. A Weigher keeps its sums from exam to exam and
+// changes only what changed. What it computes is what Engine.SiteLogLikelihoods computes.
+
+// keepPatterns is how many patterns of findings a group remembers its answers for.
+const keepPatterns = 24
 
 // Weigher weighs the exams of a course at chosen sites. It is for one goroutine at a time.
 type Weigher struct {
-	e    *Engine // its own: nothing else may use it
-	t    *someTable
-	logs []sigLogs // by group
-	used []int     // groups with a tested cell
-	full []int64   // of the hypotheses of one site
-	lk   []int64
+	e     *Engine // its own: nothing else may use it
+	sites []int   // of Model.Sites
+
+	// Hypotheses of the chosen sites lie site by site, the sound animal last; within a site those
+	// of later weeks come first, by severity, then those of the first week, by severity.
+	prior    []int64   // by hypothesis
+	from     []int32   // by site and slot: hypotheses from[s*slots+k] … from[s*slots+k+1]−1
+	mass     []float64 // by site and slot: their prior
+	timed    []bool    // by site
+	groups   []weighed
+	full     []int64 // sums by hypothesis
+	extra    []int64 // what a sum gains without the cells filled in a block
+	lateAt   []int   // by site: the exam that the sums of later weeks stand at
+	acuteAt  []int   // by site: the same for the first week
+	exam     int     // exams entered so far that differ from the one before
+	blocks   bool
+	changed  []int // groups that the last exam changed
+	occupied []int // groups with a tested cell
 }
 
-// someTable holds what is fixed: hypotheses of site i of Model.Sites are first[i] … last[i]−1.
-type someTable struct {
-	first, last []int32
-	prior       [][GridSize]float64 // of site and step, where the onset is not known
+// slots of a site: the severities in later weeks, then those in the first.
+const slots = 2 * severities
+
+// weighed is one group of cells, as far as the chosen hypotheses tell signatures apart.
+type weighed struct {
+	sig       []uint16 // signatures in use
+	of        []uint16 // by hypothesis: index into sig
+	now, last *answers // of this exam and of the one before
+	known     map[string]*answers
+	key       []byte
+	delta     []int64 // now minus last, by signature, where stamp says so
+	stamp     []int
 }
 
-var someTables sync.Map // *Model → *someTable
-
-// Weigher returns a new weigher on the model's tables.
-func (m *Model) Weigher() *Weigher {
-	e := m.Engine()
-	return &Weigher{e: e, t: m.some(), logs: make([]sigLogs, len(m.groups))}
+// answers is the log-likelihood of a pattern of findings for each signature in use, worked out
+// when first asked for.
+type answers struct {
+	full  []int64
+	extra []int64 // nil where no cell is filled in a block
+	cells []testedCell
 }
 
-func (m *Model) some() *someTable {
-	if t, ok := someTables.Load(m); ok {
-		return t.(*someTable)
+// unknown marks an answer that nobody has asked for.
+const unknown = -1 << 63
+
+// testedCell is one tested cell of a group.
+type testedCell struct {
+	rows           []uint16
+	table          []float64
+	stride, offset int
+	more           int // further categories that the finding may stand for
+	keep, add      float64
+	bulk           bool
+}
+
+// Weigher returns a weigher for some of Model.Sites.
+func (m *Model) Weigher(sites []int) *Weigher {
+	w := &Weigher{e: m.Engine(), sites: slices.Clone(sites)}
+	all := m.Sites()
+	index := make([]int, len(m.sp.sites)) // of a site among the chosen, −1 where it is not wanted
+	for i := range index {
+		index[i] = -1
 	}
-	sites := m.Sites()
-	t := &someTable{first: make([]int32, len(sites)), last: make([]int32, len(sites)), prior: make([][GridSize]float64, len(sites))}
-	of := make([]int, len(m.sp.sites))
-	for i := range of {
-		of[i] = -1
+	for i, s := range sites {
+		if s >= 0 && s < len(all) {
+			index[m.serialOf[s]] = i
+		}
 	}
-	for k, i := range m.serialOf {
-		of[i] = k
-		t.first[k] = -1
+	n := len(sites) + 1
+	w.mass, w.timed = make([]float64, n*slots), make([]bool, n)
+	type entry struct {
+		h    int32
+		slot int
 	}
-	sound := 0.0
+	var list []entry
 	for h := range m.hyps {
-		site := int(m.siteOf[h])
-		p := exp(fromLog(m.prior[h]))
+		site, severity := int(m.siteOf[h]), int(m.severity[h])
+		at := index[site]
 		if m.sp.sites[site].kind == NoLesion {
-			sound += p
+			at = n - 1
+		} else if at < 0 {
+			continue
 		}
-		if k := of[site]; k >= 0 {
-			if t.first[k] < 0 {
-				t.first[k] = int32(h)
+		slot := at*slots + severity
+		if m.timed[h] {
+			w.timed[at] = true
+			if m.acute[h] {
+				slot += severities
 			}
-			t.last[k] = int32(h) + 1
-			t.prior[k][int(m.severity[h])+1] += p
 		}
+		list = append(list, entry{int32(h), slot})
+		w.mass[slot] += exp(fromLog(m.prior[h]))
 	}
-	for k := range t.prior {
-		t.prior[k][0] = sound
+	slices.SortStableFunc(list, func(a, b entry) int { return cmp.Or(a.slot-b.slot, int(a.h-b.h)) })
+	w.from = make([]int32, n*slots+1)
+	for _, x := range list {
+		w.prior = append(w.prior, m.prior[x.h])
+		w.from[x.slot+1]++
 	}
-	got, _ := someTables.LoadOrStore(m, t)
-	return got.(*someTable)
+	for s := range n * slots {
+		w.from[s+1] += w.from[s]
+	}
+	w.full, w.extra = make([]int64, len(list)), make([]int64, len(list))
+	w.lateAt, w.acuteAt = make([]int, n), make([]int, n)
+	w.groups = make([]weighed, len(m.groups))
+	for gi := range m.groups {
+		g, x := &m.groups[gi], &w.groups[gi]
+		in := make([]int32, g.sigs)
+		for i := range in {
+			in[i] = -1
+		}
+		x.of = make([]uint16, len(list))
+		for i, l := range list {
+			s := g.pairs[g.of[l.h]].sig
+			if in[s] < 0 {
+				in[s] = int32(len(x.sig))
+				x.sig = append(x.sig, s)
+			}
+			x.of[i] = uint16(in[s])
+		}
+		x.known = map[string]*answers{}
+		x.now = &answers{full: make([]int64, len(x.sig))}
+		x.delta, x.stamp = make([]int64, len(x.sig)), make([]int, len(x.sig))
+	}
+	w.exam = 2 // no site stands at it, nor at the one before
+	return w
 }
 
-// LogLikelihoods is Engine.SiteLogLikelihoods for the given sites of Model.Sites alone:
-// dst[i*GridSize+step] belongs to sites[i].
-func (s *Weigher) LogLikelihoods(x Exam, sites []int, dst []float64) ([]float64, error) {
-	e := s.e
+// LogLikelihoods is Engine.SiteLogLikelihoods for the weigher's sites: dst[i*GridSize+step]
+// belongs to the i-th of them.
+func (w *Weigher) LogLikelihoods(x Exam, dst []float64) ([]float64, error) {
+	all := make([]int, len(w.sites))
+	for i := range all {
+		all[i] = i
+	}
+	return w.Some(x, all, dst)
+}
+
+// Some is LogLikelihoods for some of the weigher's sites, named by their position among them:
+// dst[i*GridSize+step] belongs to which[i].
+func (w *Weigher) Some(x Exam, which []int, dst []float64) ([]float64, error) {
+	e := w.e
 	if x.Species != e.m.species {
 		return nil, &exam.Invalid{Field: "species", Value: x.Species.String(), Allowed: e.m.species.String() + " for this engine"}
 	}
-	m, t := e.m, s.t
-	if need := len(sites) * GridSize; cap(dst) < need {
+	m := e.m
+	if need := len(which) * GridSize; cap(dst) < need {
 		dst = make([]float64, need)
 	} else {
 		dst = dst[:need]
@@ -89,194 +174,240 @@ func (s *Weigher) LogLikelihoods(x Exam, sites []int, dst []float64) ([]float64,
 		e.put(f)
 	}
 	e.bendFor(&x)
-	// What each tested group needs to answer for a signature; the logarithms are taken when a
-	// hypothesis first asks for them, and kept while the group's findings stay the same.
-	_, qw := m.p.quadrature()
-	s.used = s.used[:0]
-	blocks := false
-	for gi := range m.groups {
-		g, l := &m.groups[gi], &s.logs[gi]
-		tested, same := false, len(l.obs) == len(g.cells)
-		for k, ci := range g.cells {
-			tested = tested || e.obs[ci] >= 0
-			blocks = blocks || e.obs[ci] >= 0 && e.bulk[ci]
-			same = same && l.obs[k] == e.obs[ci] && l.bulk[k] == e.bulk[ci] && !e.bent[ci] && !l.bent
-		}
-		if !tested {
-			continue
-		}
-		s.used = append(s.used, gi)
-		if !same {
-			l.reset(e, g)
-		}
+	w.enter()
+
+	acute := m.p.Acute
+	if x.OnsetDays > 0 {
+		acute = x.timing(m.p.Acute)
 	}
-	var early, late int64
-	onset := x.OnsetDays > 0
-	if onset {
-		k := x.timing(m.p.Acute)
-		early = toLog(logOf(k / m.p.Acute))
-		late = toLog(logOf((1 - k) / (1 - m.p.Acute)))
-	}
+	withAcute := acute > 1e-4
+	late, early := (1-acute)/(1-m.p.Acute), acute/m.p.Acute
+	lateLog, earlyLog := toLog(logOf(late)), toLog(logOf(early))
 	lookedAt, careless := toLog(logOf(1-m.p.Careless)), toLog(logOf(m.p.Careless))
-	sums := func(from, to int32, step func(h int32) int, out []float64, prior *[GridSize]float64) {
-		n := int(to - from)
-		if cap(s.full) < n {
-			s.full, s.lk = make([]int64, n), make([]int64, n)
+	value := func(site, severity int) float64 {
+		const none = -1 << 62
+		slot := site*slots + severity
+		mass, shift := w.mass[slot], int64(0)
+		if w.timed[site] {
+			mass *= late
+			shift = lateLog
 		}
-		full, looked := s.full[:n], s.lk[:n]
-		for i := range full {
-			h := from + int32(i)
-			l := m.prior[h]
-			if onset && m.timed[h] {
-				if m.acute[h] {
-					l += early
-				} else {
-					l += late
+		if withAcute {
+			mass += w.mass[slot+severities] * early
+		}
+		best, total := int64(none), uint64(0)
+		for pass := range 2 {
+			for part := range 2 {
+				s, shift := slot, shift
+				if part == 1 {
+					if !withAcute {
+						break
+					}
+					s, shift = slot+severities, earlyLog
+				}
+				for i := w.from[s]; i < w.from[s+1]; i++ {
+					l := w.prior[i] + w.full[i] + shift
+					if !w.blocks {
+						if pass == 0 {
+							best = max(best, l)
+						} else {
+							total += weight(l - best)
+						}
+						continue
+					}
+					looked, not := l+lookedAt, l+w.extra[i]+careless
+					if pass == 0 {
+						best = max(best, looked, not)
+					} else {
+						total += weight(looked-best) + weight(not-best)
+					}
 				}
 			}
-			full[i] = l
 		}
-		copy(looked, full)
-		var mass [GridSize]float64
-		if onset {
-			for i, l := range full {
-				mass[step(from+int32(i))] += exp(fromLog(l))
-			}
-		} else {
-			mass = *prior
-		}
-		for _, gi := range s.used {
-			g, l := &m.groups[gi], &s.logs[gi]
-			for i, p := range g.of[from:to] {
-				sig := g.pairs[p].sig
-				if !l.known[sig] {
-					l.learn(int(sig), &qw)
-				}
-				full[i] += l.full[sig]
-				looked[i] += l.look[sig]
-			}
-		}
-		var best [GridSize]int64
-		var total [GridSize]uint64
-		for k := range best {
-			best[k] = -1 << 62
-		}
-		if blocks {
-			for i := range full {
-				full[i] += lookedAt
-				looked[i] += careless
-			}
-		}
-		for i, l := range full {
-			k := step(from + int32(i))
-			best[k] = max(best[k], l)
-			if blocks {
-				best[k] = max(best[k], looked[i])
-			}
-		}
-		for i, l := range full {
-			k := step(from + int32(i))
-			total[k] += weight(l - best[k])
-			if blocks {
-				total[k] += weight(looked[i] - best[k])
-			}
+		if total == 0 || mass <= 0 {
+			return -700
 		}
 		const unit = float64(1 << weightBits)
-		for k := range out {
-			if total[k] > 0 {
-				out[k] = fromLog(best[k]) + logOf(float64(total[k])/unit) - logOf(mass[k])
-			}
-		}
+		return fromLog(best) + logOf(float64(total)/unit) - logOf(mass)
 	}
-	sound := 0.0
-	for h := range m.hyps {
-		if m.sp.sites[m.siteOf[h]].kind == NoLesion {
-			var out [1]float64
-			var prior [GridSize]float64
-			prior[0] = exp(fromLog(m.prior[h]))
-			sums(int32(h), int32(h)+1, func(int32) int { return 0 }, out[:], &prior)
-			sound = out[0]
-			break
+	w.bring(len(w.sites), withAcute)
+	sound := value(len(w.sites), 0)
+	for i, s := range which {
+		w.bring(s, withAcute)
+		dst[i*GridSize] = sound
+		for k := range severities {
+			dst[i*GridSize+k+1] = value(s, k)
 		}
-	}
-	for i, site := range sites {
-		out := dst[i*GridSize : (i+1)*GridSize]
-		sums(t.first[site], t.last[site], func(h int32) int { return int(m.severity[h]) + 1 }, out, &t.prior[site])
-		out[0] = sound
 	}
 	return dst, nil
 }
 
-// sigLogs answers for the signatures of one group, as far as they were asked for.
-type sigLogs struct {
-	obs   []int16 // of the group's cells
-	bulk  []bool
-	bent  bool
-	parts []sigPart
-	known []bool
-	full  []int64
-	look  []int64
-}
-
-// sigPart is one tested cell of a group.
-type sigPart struct {
-	rows           []uint16
-	table          []float64
-	stride, offset int
-	more           int // further categories that the finding may stand for
-	keep, add      float64
-	bulk           bool
-}
-
-// reset takes in the group's findings and forgets the answers.
-func (l *sigLogs) reset(e *Engine, g *group) {
-	if l.known == nil {
-		l.known, l.full, l.look = make([]bool, g.sigs), make([]int64, g.sigs), make([]int64, g.sigs)
-		l.obs, l.bulk = make([]int16, len(g.cells)), make([]bool, len(g.cells))
+// enter takes the engine's findings in, group by group.
+func (w *Weigher) enter() {
+	e := w.e
+	w.blocks = false
+	w.occupied = w.occupied[:0]
+	first := true
+	for gi := range w.groups {
+		g, x := &e.m.groups[gi], &w.groups[gi]
+		x.key = x.key[:0]
+		bent, tested := false, false
+		for _, ci := range g.cells {
+			b := byte(e.obs[ci]+1) << 1
+			if e.obs[ci] >= 0 {
+				tested = true
+				bent = bent || e.bent[ci]
+				if e.bulk[ci] {
+					b |= 1
+					w.blocks = true
+				}
+			}
+			x.key = append(x.key, b, byte(e.upTo[ci]-e.obs[ci]))
+		}
+		next, ok := x.known[string(x.key)]
+		if !ok || bent {
+			next = w.answer(gi)
+			if !bent {
+				if len(x.known) >= keepPatterns {
+					clear(x.known)
+				}
+				x.known[string(x.key)] = next
+			}
+		}
+		if tested {
+			w.occupied = append(w.occupied, gi)
+		}
+		if next != x.now {
+			if first { // the same findings again are the same exam
+				first = false
+				w.exam++
+				w.changed = w.changed[:0]
+			}
+			x.last, x.now = x.now, next
+			w.changed = append(w.changed, gi)
+		}
 	}
-	clear(l.known)
-	l.parts, l.bent = l.parts[:0], false
+}
+
+// bring brings a site's sums up to this exam: by what changed where they stood at the exam
+// before, afresh where they did not.
+func (w *Weigher) bring(site int, withAcute bool) {
+	one := func(at *int, from, to int32) {
+		switch *at {
+		case w.exam:
+			return
+		case w.exam - 1:
+			for _, gi := range w.changed {
+				x := &w.groups[gi]
+				sums := w.full[from:to]
+				for i, k := range x.of[from:to] {
+					if x.stamp[k] != w.exam {
+						x.stamp[k] = w.exam
+						x.delta[k] = x.now.at(w, gi, k) - x.last.at(w, gi, k)
+					}
+					sums[i] += x.delta[k]
+				}
+				if x.now.extra != nil || x.last.extra != nil {
+					for i := from; i < to; i++ {
+						k := x.of[i]
+						if x.now.extra != nil {
+							w.extra[i] += x.now.extra[k]
+						}
+						if x.last.extra != nil {
+							w.extra[i] -= x.last.extra[k]
+						}
+					}
+				}
+			}
+		default:
+			clear(w.full[from:to])
+			clear(w.extra[from:to])
+			for _, gi := range w.occupied {
+				x := &w.groups[gi]
+				for i := from; i < to; i++ {
+					w.full[i] += x.now.at(w, gi, x.of[i])
+				}
+				if x.now.extra != nil {
+					for i := from; i < to; i++ {
+						w.extra[i] += x.now.extra[x.of[i]]
+					}
+				}
+			}
+		}
+		*at = w.exam
+	}
+	f := w.from[site*slots:]
+	one(&w.lateAt[site], f[0], f[severities])
+	if withAcute {
+		one(&w.acuteAt[site], f[severities], f[slots])
+	}
+}
+
+// answer prepares a group's answers to the engine's findings.
+func (w *Weigher) answer(gi int) *answers {
+	e := w.e
+	g, x := &e.m.groups[gi], &w.groups[gi]
+	a := &answers{full: make([]int64, len(x.sig))}
 	for k, ci := range g.cells {
-		l.obs[k], l.bulk[k] = e.obs[ci], e.bulk[ci]
 		if e.obs[ci] < 0 {
 			continue
 		}
 		set := &e.m.sets[e.m.setOf[ci]]
-		p := sigPart{rows: g.rows[k], table: set.p, stride: set.cats * points, offset: int(e.obs[ci]) * points,
+		c := testedCell{rows: g.rows[k], table: set.p, stride: set.cats * points, offset: int(e.obs[ci]) * points,
 			more: int(e.upTo[ci] - e.obs[ci]), keep: 1, bulk: e.bulk[ci]}
 		if e.bent[ci] {
-			l.bent = true
-			p.keep, p.add = e.ctx[ci].keep, e.ctx[ci].sum(e.obs[ci], e.upTo[ci])
+			c.keep, c.add = e.ctx[ci].keep, e.ctx[ci].sum(e.obs[ci], e.upTo[ci])
 		}
-		l.parts = append(l.parts, p)
+		if c.bulk && a.extra == nil {
+			a.extra = make([]int64, len(x.sig))
+		}
+		a.cells = append(a.cells, c)
 	}
+	if len(a.cells) > 0 {
+		for i := range a.full {
+			a.full[i] = unknown
+		}
+	}
+	return a
 }
 
-// learn works a signature's logarithms out, as Engine.groupLog does for all.
-func (l *sigLogs) learn(sig int, qw *[points]float64) {
-	full, look := *qw, *qw
-	for k := range l.parts {
-		c := &l.parts[k]
+func (a *answers) at(w *Weigher, gi int, k uint16) int64 {
+	if a.full[k] == unknown {
+		a.learn(w, gi, k)
+	}
+	return a.full[k]
+}
+
+// learn works one signature out, as Engine.groupLog does for all.
+func (a *answers) learn(w *Weigher, gi int, k uint16) {
+	_, full := w.e.m.p.quadrature()
+	look := full
+	sig := w.groups[gi].sig[k]
+	for i := range a.cells {
+		c := &a.cells[i]
 		at := int(c.rows[sig])*c.stride + c.offset
-		var p [points]float64
-		copy(p[:], c.table[at:at+points])
+		p := [points]float64(c.table[at : at+points])
 		for j := points; j < (c.more+1)*points; j++ {
 			p[j%points] += c.table[at+j]
 		}
-		for q := range p {
-			v := p[q]
-			if c.keep != 1 {
-				v = float64(c.keep*v) + c.add
+		if c.keep != 1 {
+			for q := range p {
+				p[q] = float64(c.keep*p[q]) + c.add
 			}
-			full[q] = float64(full[q] * v)
-			if !c.bulk {
-				look[q] = float64(look[q] * v)
+		}
+		for q := range p {
+			full[q] = float64(full[q] * p[q])
+		}
+		if a.extra != nil && !c.bulk {
+			for q := range p {
+				look[q] = float64(look[q] * p[q])
 			}
 		}
 	}
-	l.known[sig] = true
-	l.full[sig] = toLog(logOf(full[0] + full[1] + full[2] + full[3] + full[4]))
-	l.look[sig] = toLog(logOf(look[0] + look[1] + look[2] + look[3] + look[4]))
+	a.full[k] = toLog(logOf(full[0] + full[1] + full[2] + full[3] + full[4]))
+	if a.extra != nil {
+		a.extra[k] = toLog(logOf(look[0]+look[1]+look[2]+look[3]+look[4])) - a.full[k]
+	}
 }
 
 // bendFor brings what age and sedation do to the answers up to date.

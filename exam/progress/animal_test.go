@@ -30,12 +30,12 @@ func newAnimal(site func(localise.Site) bool, cells []exam.Key) *animal {
 			break
 		}
 	}
-	w := m.Weigher()
+	w := m.Weigher([]int{a.site})
 	for _, c := range cells {
 		in := c.Item.Info()
 		p := make([][]float64, localise.GridSize)
 		for g := range in.Grades {
-			ll, err := w.LogLikelihoods(localise.Exam{Species: exam.Dog, OnsetDays: 30, Findings: []exam.Finding{{Item: c.Item, Site: c.Site, Result: exam.Graded(in.First + int8(g))}}}, []int{a.site}, nil)
+			ll, err := w.LogLikelihoods(localise.Exam{Species: exam.Dog, OnsetDays: 30, Findings: []exam.Finding{{Item: c.Item, Site: c.Site, Result: exam.Graded(in.First + int8(g))}}}, nil)
 			if err != nil {
 				panic(err)
 			}

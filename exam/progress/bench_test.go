@@ -161,7 +161,7 @@ func (b *bench) Region(site int) int       { return b.sites[site].region }
 func (b *bench) Shares(site int) []Share   { return b.sites[site].shares }
 func (b *bench) Neighbours(site int) []int { return b.sites[site].near }
 
-func (b *bench) Candidates(exam.Visit, bool) []int {
+func (b *bench) Candidates(exam.Visit, []int, bool) []int {
 	all := make([]int, len(b.sites))
 	for i := range all {
 		all[i] = i

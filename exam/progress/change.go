@@ -2,6 +2,7 @@ package progress
 
 import (
 	"math"
+	"slices"
 	"time"
 )
 
@@ -45,77 +46,149 @@ type pairs struct {
 	left  float64
 }
 
-// joint follows the belief of visit a, severity by severity, through to visit b.
-func (c *Course) joint(a, b int) pairs {
-	const least = 1e-6
-	c.smooth()
-	out := pairs{a: c.smoothedBelief(a), b: c.smoothedBelief(b), left: 1}
-	first, last := c.nodes[a], c.nodes[b]
-	move := make([]float64, states)
-	for i, s := range last.sites {
-		mass := 0.0
-		for _, v := range out.b.level[i*Levels : (i+1)*Levels] {
-			mass += v
+// follow carries the belief of one visit, severity by severity, along one place to a later visit.
+type follow struct {
+	site   int
+	rows   [][]float64 // joint with the levels that share the row
+	levels [][]int
+	shares [Levels]float64 // of each level within its row
+}
+
+// following is how far the belief of one visit has been carried. It is kept, so that a new visit
+// costs one step.
+type following struct {
+	from, to int
+	node     *node // of from: the course may have been read afresh
+	places   []*follow
+}
+
+// keepFollowing is how many visits' beliefs are kept on their way: the first visit's, the best one's.
+const keepFollowing = 4
+
+// leastFollowed is the belief below which a place is not followed on its own.
+const leastFollowed = 1e-4
+
+// followTo carries the belief of visit a to visit b.
+func (c *Course) followTo(a, b int, mass []float64) *following {
+	last := c.nodes[b]
+	var f *following
+	for i, old := range c.kept {
+		if old.from == a && old.to <= b && old.node == c.nodes[a] {
+			f = old
+			c.kept = slices.Delete(c.kept, i, i+1)
+			break
 		}
-		from := first.index(s)
-		if mass < least || from < 0 {
-			continue
+	}
+	if f != nil {
+		// A place that has become likely since must have been followed from the start.
+		missing := 0.0
+		for i, s := range last.sites {
+			if mass[i] >= leastFollowed && c.nodes[a].index(s) >= 0 && !slices.ContainsFunc(f.places, func(p *follow) bool { return p.site == s }) {
+				missing += mass[i]
+			}
 		}
-		var rows [][]float64 // rows[k]: joint with level k at visit a, nil where next to nothing
-		var levels [][]int   // which levels share a row
-		for k := range Levels {
-			if out.a.level[from*Levels+k] < least*1e-2 {
+		if missing > 0.01 {
+			f = nil
+		}
+	}
+	if f == nil {
+		f = &following{from: a, to: a, node: c.nodes[a]}
+		first := c.nodes[a]
+		for i, s := range last.sites {
+			at0 := first.index(s)
+			if mass[i] < leastFollowed || at0 < 0 {
 				continue
 			}
-			row := make([]float64, states)
-			copy(row[k*int(paceCount):(k+1)*int(paceCount)], first.alpha[at(from)+k*int(paceCount):at(from)+(k+1)*int(paceCount)])
-			rows, levels = append(rows, row), append(levels, []int{k})
-		}
-		shares := make([]float64, Levels) // of each level within its row
-		for k := range shares {
-			shares[k] = 1
-		}
-		alive := true
-		for t := a + 1; t <= b && alive; t++ {
-			n := c.nodes[t]
-			pos := n.index(s)
-			if pos < 0 {
-				alive = false
-				break
+			p := &follow{site: s}
+			for k := range Levels {
+				p.shares[k] = 1
+				row := make([]float64, states)
+				from, to := k*int(paceCount), (k+1)*int(paceCount)
+				held := 0.0
+				for j := from; j < to; j++ {
+					row[j] = first.alpha[at(at0)+j]
+					held += row[j]
+				}
+				if held > 0 {
+					p.rows, p.levels = append(p.rows, row), append(p.levels, []int{k})
+				}
 			}
+			f.places = append(f.places, p)
+		}
+	}
+	move := make([]float64, states)
+	for t := f.to + 1; t <= b; t++ {
+		n := c.nodes[t]
+		kept := f.places[:0]
+		for _, p := range f.places {
+			pos := n.index(p.site)
+			if pos < 0 {
+				continue
+			}
+			kept = append(kept, p)
 			stay := 1.0
-			if n.step != nil && n.step.grow > 0 && len(c.model.space.Neighbours(s)) > 0 {
+			if n.step != nil && n.step.grow > 0 && len(c.model.space.Neighbours(p.site)) > 0 {
 				stay = 1 - n.step.grow
 			}
-			for _, row := range rows {
+			alpha := n.alpha[at(pos):at(pos+1)]
+			for _, row := range p.rows {
 				n.step.forward(move, row)
 				c.steps++
 				for k := range Levels {
 					l := n.like[pos*Levels+k] * stay / n.scale
 					for q := range int(paceCount) {
-						row[k*int(paceCount)+q] = float64(move[k*int(paceCount)+q] * l)
-					}
-				}
-			}
-			if (t-a)%6 == 0 && len(rows) > 1 {
-				rows, levels = merge(rows, levels, shares)
-			}
-		}
-		if !alive {
-			continue
-		}
-		j := make([]float64, Levels*Levels)
-		for r, row := range rows {
-			for _, ka := range levels[r] {
-				for k := range Levels {
-					for q := range int(paceCount) {
 						x := k*int(paceCount) + q
-						j[ka*Levels+k] += float64(row[x] * last.beta[at(i)+x] * shares[ka])
+						if alpha[x] == 0 {
+							row[x] = 0 // dropped there
+							continue
+						}
+						row[x] = float64(move[x] * l)
 					}
 				}
 			}
+			if t%4 == 0 && len(p.rows) > 1 {
+				p.merge()
+			}
 		}
-		out.sites, out.joint = append(out.sites, s), append(out.joint, j)
+		f.places = kept
+	}
+	f.to = b
+	c.kept = append(c.kept, f)
+	if len(c.kept) > keepFollowing {
+		c.kept = slices.Delete(c.kept, 0, 1)
+	}
+	return f
+}
+
+// joint is the belief over the severities at visits a and b together.
+func (c *Course) joint(a, b int) pairs {
+	c.smooth()
+	out := pairs{a: c.smoothedBelief(a), b: c.smoothedBelief(b), left: 1}
+	first, last := c.nodes[a], c.nodes[b]
+	mass := make([]float64, len(last.sites))
+	for i := range last.sites {
+		for _, v := range out.b.level[i*Levels : (i+1)*Levels] {
+			mass[i] += v
+		}
+	}
+	for _, p := range c.followTo(a, b, mass).places {
+		i, from := last.index(p.site), first.index(p.site)
+		j := make([]float64, Levels*Levels)
+		for r, row := range p.rows {
+			var end [Levels]float64
+			for k := range Levels {
+				for q := range int(paceCount) {
+					x := k*int(paceCount) + q
+					end[k] += float64(row[x] * last.beta[at(i)+x])
+				}
+			}
+			for _, ka := range p.levels[r] {
+				for k, v := range end {
+					j[ka*Levels+k] += float64(v * p.shares[ka])
+				}
+			}
+		}
+		out.sites, out.joint = append(out.sites, p.site), append(out.joint, j)
 		for ka := range Levels {
 			for kb := range Levels {
 				v := j[ka*Levels+kb]
@@ -129,38 +202,56 @@ func (c *Course) joint(a, b int) pairs {
 	return out
 }
 
-// merge joins rows once they differ only by a factor: the chain has forgotten where it was.
-func merge(rows [][]float64, levels [][]int, shares []float64) ([][]float64, [][]int) {
-	total := make([]float64, len(rows))
-	for r, row := range rows {
+// forgotten is how nearly proportional rows must be for the chain to count as having forgotten
+// where it was.
+const forgotten = 1e-7
+
+// merge joins rows that differ only by a factor.
+func (p *follow) merge() {
+	total := make([]float64, len(p.rows))
+	whole, heavy := 0.0, 0
+	for r, row := range p.rows {
 		for _, v := range row {
 			total[r] += v
 		}
-	}
-	whole := 0.0
-	for r := range rows {
-		if !(total[r] > 0) {
-			return rows, levels
-		}
 		whole += total[r]
-		for x := range rows[r] {
-			if math.Abs(rows[r][x]/total[r]-rows[0][x]/total[0]) > 1e-10 {
-				return rows, levels
+		if total[r] > total[heavy] {
+			heavy = r
+		}
+	}
+	if !(whole > 0) {
+		return
+	}
+	var rows [][]float64
+	var levels [][]int
+	one, joined, sum := make([]float64, states), []int(nil), 0.0
+	var in []int
+	for r, row := range p.rows {
+		near := total[r] > 0
+		for x := range row {
+			if !near || math.Abs(row[x]/total[r]-p.rows[heavy][x]/total[heavy]) > forgotten {
+				near = false
+				break
 			}
 		}
+		switch {
+		case near:
+			in = append(in, r)
+			sum += total[r]
+		case total[r] > 1e-12*whole:
+			rows, levels = append(rows, row), append(levels, p.levels[r])
+		}
 	}
-	one := make([]float64, len(rows[0]))
-	var all []int
-	for r, row := range rows {
-		for x, v := range row {
+	for _, r := range in {
+		for x, v := range p.rows[r] {
 			one[x] += v
 		}
-		for _, k := range levels[r] {
-			shares[k] *= total[r] / whole
-			all = append(all, k)
+		for _, k := range p.levels[r] {
+			p.shares[k] *= total[r] / sum
+			joined = append(joined, k)
 		}
 	}
-	return [][]float64{one}, [][]int{all}
+	p.rows, p.levels = append(rows, one), append(levels, joined)
 }
 
 // changeOf classifies the joint belief by the function of one target; target −1 is the whole animal.

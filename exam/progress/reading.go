@@ -17,6 +17,10 @@ type reading struct {
 	slow    float64
 }
 
+// leastRead is the belief below which a place is left out of a reading: it could move a
+// function by 0.001 points.
+const leastRead = 1e-5
+
 // bins of the damage axis on which bands are read.
 const bins = 200
 
@@ -162,7 +166,7 @@ func (r *reader) read(b belief) *reading {
 		if g := r.region[s]; g >= 0 && g < len(out.region) {
 			out.region[g] += mass
 		}
-		if mass < 1e-9 {
+		if mass < leastRead {
 			continue
 		}
 		for k := range r.sites[s] {

@@ -45,9 +45,10 @@ type Space interface {
 	Shares(site int) []Share
 	// Neighbours returns the places that a lesion may turn into by growing a segment.
 	Neighbours(site int) []int
-	// Candidates returns the places that are worth weighing for this exam, in ascending order.
-	// wide asks for all that may matter at all: it is set at the first visits.
-	Candidates(v exam.Visit, wide bool) []int
+	// Candidates returns the places that are worth weighing for this exam beside those carried
+	// from the visit before, in ascending order. wide asks for all that may matter at all: it is
+	// set at the first visits and now and then.
+	Candidates(v exam.Visit, carried []int, wide bool) []int
 	// LogLikelihoods puts ln P(the findings of v | place, severity) into dst, Levels values
 	// for each of the places. A constant for all places and severities may be left out.
 	LogLikelihoods(v exam.Visit, sites []int, dst []float64)
