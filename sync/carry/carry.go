@@ -633,39 +633,53 @@ func (x *exchange) read(ctx context.Context, r located, held []Held, want key.Ve
 	if rd.Verifier != want {
 		return fmt.Errorf("the segment: %w", segment.ErrUnsigned)
 	}
-	b, err := x.branch(ctx, rd.Header, held)
-	if err != nil {
-		return err
+	received, forks, err := TakeSegment(ctx, x.Journal, rd, held)
+	if err == nil {
+		x.report.Received += received
 	}
-	received := 0
+	x.report.Forks = append(x.report.Forks, forks...)
+	x.onto = map[change.Stream]map[uint64]change.Hash{}
+	return err
+}
+
+// TakeSegment takes in of a segment what the journal does not hold. held is what it holds now. That the
+// segment's signer may sign for its stream, and that the stream is not the one this device writes,
+// is for the caller to see to. An error that wraps none of the journal's leaves what came before it, which
+// is true and follows what was held.
+func TakeSegment(ctx context.Context, j Journal, rd *segment.Reader, held []Held) (received int, forks []Fork, err error) {
+	b, err := branch(ctx, j, rd.Header, held)
+	if err != nil {
+		return 0, nil, err
+	}
 	for {
 		block, err := rd.Next()
 		if errors.Is(err, io.EOF) {
 			break
 		}
 		if err != nil {
-			return err
+			return received, forks, err
 		}
 		if err := ctx.Err(); err != nil {
-			return err
+			return received, forks, err
 		}
 		for _, part := range b.split(block) {
 			if part.fork {
-				x.report.Forks = append(x.report.Forks, Fork{rd.Stream, part.block.Frames[0].First, part.as})
+				forks = append(forks, Fork{rd.Stream, part.block.Frames[0].First, part.as})
 			}
-			if err := x.Journal.Receive(ctx, part.as, part.block); err != nil {
-				return fmt.Errorf("%w: %w", errOwnSide, err)
+			if err := j.Receive(ctx, part.as, part.block); err != nil {
+				return received, forks, fmt.Errorf("%w: %w", errOwnSide, err)
 			}
 			received += len(part.block.Frames)
 		}
 	}
-	if err := x.Journal.Commit(ctx, b.as, rd.Signed); err != nil {
-		return fmt.Errorf("%w: %w", errOwnSide, err)
+	if err := j.Commit(ctx, b.as, rd.Signed); err != nil {
+		return received, forks, fmt.Errorf("%w: %w", errOwnSide, err)
 	}
-	x.onto = map[change.Stream]map[uint64]change.Hash{}
-	x.report.Received += received
-	return nil
+	return received, forks, nil
 }
+
+// OwnSide reports whether an error is that of this device's own journal.
+func OwnSide(err error) bool { return errors.Is(err, errOwnSide) }
 
 // brancher tells, frame by frame, on which branch of a stream a segment goes on.
 type brancher struct {
@@ -676,7 +690,7 @@ type brancher struct {
 }
 
 // branch looks at what we hold of a segment's stream.
-func (x *exchange) branch(ctx context.Context, sh segment.Header, held []Held) (*brancher, error) {
+func branch(ctx context.Context, j Journal, sh segment.Header, held []Held) (*brancher, error) {
 	b := &brancher{as: sh.Stream}
 	var main *Held
 	for i, h := range held {
@@ -698,7 +712,7 @@ func (x *exchange) branch(ctx context.Context, sh segment.Header, held []Held) (
 		return b, nil
 	}
 	b.ours = map[uint64]change.Hash{}
-	err := x.Journal.Frames(ctx, main.Stream, sh.First, func(f change.Frame) error {
+	err := j.Frames(ctx, main.Stream, sh.First, func(f change.Frame) error {
 		if f.First > sh.Last {
 			return errEnough
 		}

@@ -12,6 +12,7 @@ import (
 	"syscall"
 
 	"cordwalk.example/cordwalk/sync/change"
+	"cordwalk.example/cordwalk/sync/key"
 	"cordwalk.example/cordwalk/sync/merge"
 	"cordwalk.example/cordwalk/sync/segment"
 )
@@ -224,22 +225,35 @@ func (x *exchange) condense(ctx context.Context, h Held, small []Ref) (added, go
 
 var errEnough = errors.New("enough")
 
-// write makes segments of a stream from number first to last. A segment ends where its device
-// signed: in a stream of this device anywhere, in another's only at a head that came with it.
+// write makes segments of a stream from number first to last.
 func (x *exchange) write(ctx context.Context, h Held, first, last uint64) (added []Ref, err error) {
 	signer, _ := x.Members.Signer(h.Of.Device)
-	own := signer == x.Bag.Device.Verifier()
+	err = BuildSegments(ctx, x.Journal, x.Bag, signer == x.Bag.Device.Verifier(), h, first, last, targetRaw, func(b *segment.Builder, s segment.Signed) error {
+		r, err := x.finish(b, s)
+		if err == nil {
+			added = append(added, r)
+		}
+		return err
+	})
+	return added, err
+}
+
+// BuildSegments makes segments of about target bytes of frames from what the journal holds of a stream
+// between two numbers, and gives each to emit, which finishes it with the signed head. A segment
+// ends where its device signed: in a stream of this device (own) anywhere, in another's only at a
+// head that came with it; what lies behind the last such head is left out.
+func BuildSegments(ctx context.Context, j Journal, bag key.Bag, own bool, h Held, first, last uint64, target int, emit func(*segment.Builder, segment.Signed) error) error {
 	ends := map[segment.Head]segment.Signed{}
 	if !own {
-		signed, err := x.Journal.Signed(ctx, h.Stream)
+		signed, err := j.Signed(ctx, h.Stream)
 		if err != nil {
-			return nil, fmt.Errorf("%w: %w", errOwnSide, err)
+			return fmt.Errorf("%w: %w", errOwnSide, err)
 		}
 		for _, s := range signed {
 			ends[s.Head] = s
 		}
 	}
-	b := segment.NewBuilder(x.Bag.Ring)
+	b := segment.NewBuilder(bag.Ring)
 	var signed *segment.Signed // for what b holds
 	var pending []change.Frame // behind that, up to the next signed head
 	finish := func() error {
@@ -247,15 +261,14 @@ func (x *exchange) write(ctx context.Context, h Held, first, last uint64) (added
 			return nil
 		}
 		if own {
-			s := segment.Sign(b.Head(), x.Bag.Device)
+			s := segment.Sign(b.Head(), bag.Device)
 			signed = &s
 		}
-		r, err := x.finish(b, *signed)
-		if err == nil {
-			added = append(added, r)
-			b, signed = segment.NewBuilder(x.Bag.Ring), nil
+		if err := emit(b, *signed); err != nil {
+			return err
 		}
-		return err
+		b, signed = segment.NewBuilder(bag.Ring), nil
+		return nil
 	}
 	add := func(f change.Frame) error {
 		if b.Frames() > 0 && (b.Full(len(f.Raw)) || f.First != b.Head().Last+1 || f.Prev != b.Head().Hash) {
@@ -265,7 +278,7 @@ func (x *exchange) write(ctx context.Context, h Held, first, last uint64) (added
 		}
 		return b.Add(f)
 	}
-	err = x.Journal.Frames(ctx, h.Stream, first, func(f change.Frame) error {
+	err := j.Frames(ctx, h.Stream, first, func(f change.Frame) error {
 		if err := ctx.Err(); err != nil {
 			return err
 		}
@@ -276,7 +289,7 @@ func (x *exchange) write(ctx context.Context, h Held, first, last uint64) (added
 			return nil
 		}
 		if own {
-			if b.Raw() >= targetRaw {
+			if b.Raw() >= target {
 				if err := finish(); err != nil {
 					return err
 				}
@@ -295,7 +308,7 @@ func (x *exchange) write(ctx context.Context, h Held, first, last uint64) (added
 		for _, p := range pending {
 			raw += len(p.Raw)
 		}
-		if b.Frames() > 0 && b.Raw()+raw > targetRaw {
+		if b.Frames() > 0 && b.Raw()+raw > target {
 			if err := finish(); err != nil {
 				return err
 			}
@@ -309,9 +322,9 @@ func (x *exchange) write(ctx context.Context, h Held, first, last uint64) (added
 		return nil
 	})
 	if err != nil && !errors.Is(err, errEnough) {
-		return added, err
+		return err
 	}
-	return added, finish()
+	return finish()
 }
 
 // finish writes a segment's file and reads it back.
