@@ -345,7 +345,11 @@ func (b *builder) workOut(i int, gaps []timedGap) (f filled) {
 			return filled{err: err}
 		}
 		f.patients = append(f.patients, pair{o.key, b.seals.seal(bucketPatients, o.key, plain)})
-		if rec, ok := store.assemble(o.id, view{records: o.rs, gaps: gaps}); ok {
+		rec, ok, err := store.assemble(o.id, view{records: o.rs, gaps: gaps})
+		if err != nil {
+			return filled{err: err}
+		}
+		if ok {
 			f.rows = append(f.rows, summarise(rec))
 		}
 	}

@@ -54,7 +54,7 @@ func (s *Store) History(id exam.ID) ([]Entry, error) {
 	}
 	var lines []line
 	for _, p := range patients {
-		v, err := s.patientView(p)
+		v, err := s.wholeView(p)
 		if err != nil {
 			return nil, explain("reading the history of "+id.String(), err)
 		}

@@ -412,6 +412,7 @@ func (x *index) records(tx *bbolt.Tx, patient exam.ID, f func(name, plain []byte
 	var have tally
 	prefix := x.patientKey(patient)
 	c := tx.Bucket(bucketRecords).Cursor()
+	x.readAhead(c, prefix)
 	for k, v := c.Seek(prefix); k != nil && bytes.HasPrefix(k, prefix); k, v = c.Next() {
 		plain, err := x.open(bucketRecords, k, v)
 		if err != nil {
@@ -432,6 +433,30 @@ func (x *index) records(tx *bbolt.Tx, patient exam.ID, f func(name, plain []byte
 		return nil, fmt.Errorf("%w: it has %d records of a patient where there were %d, or older ones", errIndex, have.Count, m.Records.Count)
 	}
 	return m, nil
+}
+
+// readAhead tells the system that all values under a prefix are about to be read, where they
+// lie together as they do after a rebuild. bbolt asks for its file not to be read ahead.
+func (x *index) readAhead(c *bbolt.Cursor, prefix []byte) {
+	k, first := c.Seek(prefix)
+	if k == nil || !bytes.HasPrefix(k, prefix) || len(first) == 0 {
+		return
+	}
+	after := bytes.Clone(prefix)
+	for i := len(after) - 1; i >= 0; i-- {
+		if after[i]++; after[i] != 0 {
+			break
+		}
+	}
+	if k, _ = c.Seek(after); k == nil {
+		k, _ = c.Last()
+	} else {
+		k, _ = c.Prev()
+	}
+	if k == nil || !bytes.HasPrefix(k, prefix) {
+		return
+	}
+	willNeed(first, k)
 }
 
 // indexDec reads what this device wrote and sealed itself; its limits only bound damage.

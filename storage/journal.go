@@ -128,7 +128,7 @@ func (w *writer) write(raw []byte) (number uint32, end int64, err error) {
 func (w *writer) try(raw []byte) error {
 	if need := w.end + int64(len(raw)); need > w.size {
 		room := min(max(w.size, firstRoom), mostRoom)
-		size := max(need, min(w.size+room, maxSegment))
+		size := (max(need, min(w.size+room, maxSegment)) + sector - 1) / sector * sector
 		if err := w.file.Preallocate(size); err != nil {
 			return err
 		}

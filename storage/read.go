@@ -52,7 +52,21 @@ type Value struct {
 // view is one patient's records at one moment.
 type view struct {
 	records []*record
+	plain   [][]byte   // encoded visits that nobody has looked into yet
 	gaps    []timedGap // of all streams; hardly ever any
+}
+
+// unfold decodes what is still encoded.
+func (v *view) unfold() error {
+	for _, b := range v.plain {
+		r, err := decodeRecord(b)
+		if err != nil {
+			return err
+		}
+		v.records = append(v.records, r)
+	}
+	v.plain = nil
+	return nil
 }
 
 // patientView reads all records of one patient, index and overlay merged.
@@ -79,15 +93,13 @@ func (s *Store) patientView(id exam.ID) (v view, err error) {
 		defer func() { _ = guard(tx.Rollback) }()
 		return guard(func() error {
 			_, err = x.records(tx, id, func(name, plain []byte) error {
-				r, err := decodeRecord(plain)
+				k, err := peekKey(plain)
 				if err != nil {
 					return fmt.Errorf("%w: %w", errIndex, err)
 				}
-				if o := over[r.key()]; o != nil {
-					r = o
-					delete(over, r.key())
+				if over[k] == nil { // the overlay's is newer
+					v.plain = append(v.plain, plain)
 				}
-				v.records = append(v.records, r)
 				return nil
 			})
 			return err
@@ -100,6 +112,15 @@ func (s *Store) patientView(id exam.ID) (v view, err error) {
 		v.records = append(v.records, r)
 	}
 	return v, nil
+}
+
+// wholeView is patientView with all records decoded.
+func (s *Store) wholeView(id exam.ID) (view, error) {
+	v, err := s.patientView(id)
+	if err == nil {
+		err = v.unfold()
+	}
+	return v, err
 }
 
 // repairing runs a read and, where the index turns out to be damaged, builds it anew and runs
@@ -151,7 +172,10 @@ func (s *Store) Patient(id exam.ID) (Record, error) {
 		if err != nil {
 			return Record{}, explain("reading patient "+id.String(), err)
 		}
-		one, ok := s.assemble(m, v)
+		one, ok, err := s.assemble(m, v)
+		if err != nil {
+			return Record{}, explain("reading patient "+id.String(), err)
+		}
 		if !ok {
 			continue
 		}
@@ -195,22 +219,46 @@ func weights(vs []exam.Visit) []exam.WeightPoint {
 }
 
 // assemble makes a Record from a patient's records; false if there is no patient among them.
-func (s *Store) assemble(id exam.ID, v view) (Record, bool) {
+func (s *Store) assemble(id exam.ID, v view) (Record, bool, error) {
 	var out Record
 	found := false
 	a := assembler{store: s}
+	if len(v.gaps) > 0 {
+		if err := v.unfold(); err != nil {
+			return out, false, err
+		}
+	}
 	for _, g := range v.gaps {
 		if g.touches(v.records) {
 			a.gaps = append(a.gaps, g)
 		}
 	}
-	for _, r := range v.records {
+	out.Visits = make([]exam.Visit, 0, len(v.plain)+len(v.records))
+	take := func(r *record) {
 		switch r.kind {
 		case KindPatient:
 			out.Patient, found = a.patientOf(r), true
 		case KindVisit:
 			out.Visits = append(out.Visits, a.visitOf(r))
 		}
+	}
+	for _, b := range v.plain {
+		visit, ok, err := a.quickVisit(b)
+		if err != nil {
+			return out, false, err
+		}
+		if ok {
+			out.Visits = append(out.Visits, visit)
+			continue
+		}
+		r, err := decodeRecord(b)
+		if err != nil {
+			return out, false, err
+		}
+		take(r)
+	}
+	for _, r := range v.records {
+		take(r)
 	}
 	sortVisits(out.Visits)
 	out.Patient.Weights = weights(out.Visits)
@@ -221,7 +269,7 @@ func (s *Store) assemble(id exam.ID, v view) (Record, bool) {
 	slices.SortFunc(out.Conflicts, func(x, y Conflict) int {
 		return cmp.Or(bytes.Compare(x.Record[:], y.Record[:]), strings.Compare(x.Field, y.Field))
 	})
-	return out, found
+	return out, found, nil
 }
 
 // deviceWord names the device of a stream for people.
@@ -239,7 +287,7 @@ func (s *Store) Visit(id exam.ID) (exam.Visit, error) {
 	if err != nil {
 		return exam.Visit{}, err
 	}
-	v, err := s.patientView(patient)
+	v, err := s.wholeView(patient)
 	if err != nil {
 		return exam.Visit{}, explain("reading visit "+id.String(), err)
 	}
@@ -483,28 +531,39 @@ func (a *assembler) visitOf(r *record) exam.Visit {
 			}
 		}
 	}
+	settleVisit(&v)
+	return v
+}
+
+// settleVisit puts the lists of a visit into their order.
+func settleVisit(v *exam.Visit) {
 	slices.SortFunc(v.Amendments, func(x, y exam.Amendment) int {
 		return cmp.Or(x.At.Compare(y.At), strings.Compare(x.Field, y.Field))
 	})
-	slices.SortFunc(v.Findings, compareCells)
+	if !slices.IsSortedFunc(v.Findings, compareCells) {
+		slices.SortFunc(v.Findings, compareCells)
+	}
 	slices.SortFunc(v.Measures, func(x, y exam.Measured) int {
 		return cmp.Or(cmp.Compare(x.Measure, y.Measure), cmp.Compare(x.Site, y.Site), strings.Compare(x.Key(), y.Key()))
 	})
 	slices.SortFunc(v.Answers, func(x, y exam.Acknowledgement) int {
 		return cmp.Or(x.At.Compare(y.At), strings.Compare(x.Rule, y.Rule))
 	})
-	return v
 }
 
 // compareCells puts findings into the order of the vocabulary.
 func compareCells(x, y exam.Finding) int {
-	return cmp.Or(cmp.Compare(x.Item, y.Item), cmp.Compare(x.Site, y.Site), cmp.Compare(x.Digit, y.Digit), cmp.Compare(x.Joint, y.Joint))
+	return cmp.Compare(cellOrder(x), cellOrder(y))
+}
+
+func cellOrder(f exam.Finding) uint32 {
+	return uint32(f.Item)<<24 | uint32(f.Site)<<16 | uint32(f.Digit)<<8 | uint32(f.Joint)
 }
 
 // setVisit reads one field of a visit.
 func setVisit(v *exam.Visit, name string, b []byte) error {
 	if cell, ok := strings.CutPrefix(name, fieldFinding); ok {
-		k, err := exam.ParseKey(cell)
+		k, err := parseCell(cell)
 		if err != nil {
 			return err
 		}

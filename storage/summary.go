@@ -152,17 +152,16 @@ func (x *index) storeRow(tx *bbolt.Tx, st *indexState, patient exam.ID) error {
 func (x *index) row(tx *bbolt.Tx, st *indexState, patient exam.ID) (Summary, bool, error) {
 	v := view{gaps: st.gaps(x.lives)}
 	_, err := x.records(tx, patient, func(_, plain []byte) error {
-		r, err := decodeRecord(plain)
-		if err != nil {
-			return fmt.Errorf("%w: %w", errIndex, err)
-		}
-		v.records = append(v.records, r)
+		v.plain = append(v.plain, plain)
 		return nil
 	})
 	if err != nil {
 		return Summary{}, false, err
 	}
-	r, ok := (&Store{}).assemble(patient, v)
+	r, ok, err := (&Store{}).assemble(patient, v)
+	if err != nil {
+		return Summary{}, false, fmt.Errorf("%w: %w", errIndex, err)
+	}
 	if !ok {
 		return Summary{}, false, nil
 	}

@@ -356,14 +356,22 @@ const (
 	findingReason = 2 // text
 	findingLevel  = 3 // text
 	findingSide   = 4 // text
-	findingHow    = 5 // 1 same, 2 rest-normal; absent: examined
+	findingHow    = 5 // see howNumber and howOf; absent: examined
 	findingSeen   = 6 // true
 	findingBlock  = 7 // text
 	findingNote   = 8 // text
 )
 
-// how numbers are written down here, so that package exam may order them anew.
-var howNumbers = map[exam.How]uint8{exam.SameAsLast: 1, exam.RestNormal: 2}
+// howNumber is written down here, so that package exam may order its constants anew.
+func howNumber(h exam.How) byte {
+	switch h {
+	case exam.SameAsLast:
+		return 1
+	case exam.RestNormal:
+		return 2
+	}
+	return 0
+}
 
 func encodeFinding(f exam.Finding) []byte {
 	b := make([]byte, 2, 16)
@@ -391,7 +399,7 @@ func encodeFinding(f exam.Finding) []byte {
 	}
 	text(findingLevel, f.Level.String())
 	text(findingSide, f.Side.String())
-	if n := howNumbers[f.How]; n != 0 {
+	if n := howNumber(f.How); n != 0 {
 		pairs++
 		b = append(b, findingHow, n)
 	}
@@ -517,10 +525,11 @@ func finish(f exam.Finding, grade int8, tested bool, reason exam.Reason) exam.Fi
 }
 
 func howOf(n uint64) exam.How {
-	for h, x := range howNumbers {
-		if uint64(x) == n {
-			return h
-		}
+	switch n {
+	case 1:
+		return exam.SameAsLast
+	case 2:
+		return exam.RestNormal
 	}
 	return exam.Examined
 }

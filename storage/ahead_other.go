@@ -1,0 +1,6 @@
+//go:build !linux && !darwin
+
+package storage
+
+// willNeed is a hint that this system is not given.
+func willNeed(_, _ []byte) {}
