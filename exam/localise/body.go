@@ -85,6 +85,7 @@ type body struct {
 	vestP  [2]float64
 	midEar [2]float64 // sympathetic fibres in the middle ear
 
+	shock  float64 // spinal shock of the pelvic limbs
 	ctAt   int     // vertebra over the point of greatest damage, -1 for none
 	acute  bool    // within the first week
 	cord   bool    // has a cord lesion (for posture and stepping by reflex)
@@ -145,5 +146,6 @@ func (b *body) join(c *body) {
 		b.ctAt = c.ctAt
 	}
 	b.cord = b.cord || c.cord
+	b.shock = max(b.shock, c.shock)
 	b.origin = max(b.origin, c.origin)
 }

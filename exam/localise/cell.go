@@ -31,7 +31,10 @@ type rowKey [3]int32
 
 // quantum is the step of latent values: equal values must be told apart from values that
 // differ by rounding only.
-const quantum = 1 << 20
+const quantum = 1 << 28
+
+// value is the inverse of quantise.
+func value(k int32) float64 { return float64(float64(k) / quantum) }
 
 func quantise(x float64) int32 { return int32(math.Round(float64(x * quantum))) }
 
@@ -270,7 +273,7 @@ func (p *Params) rowOf(s exam.Species, c *cell, k rowKey, out [][points]float64)
 	case exam.NystagmusDirection:
 		directionProbabilities(k, out)
 	default:
-		p.ordinal(c, float64(k[0])/quantum, out)
+		p.ordinal(c, value(k[0]), out)
 		return
 	}
 }
@@ -358,7 +361,7 @@ func trunciRow(sp *space, c *cell, st *state, out *rowKey) {
 
 func trunciProbabilities(s exam.Species, k rowKey, out [][points]float64) {
 	const levels = trunciCats - trunciLevels
-	absent, cut := float64(k[0])/quantum, float64(k[1])/quantum
+	absent, cut := value(k[0]), value(k[1])
 	// MC-2011: elicited in all of 155 dogs, a cut-off cranial to L5 in 1.3 %; Tsai-cats: a
 	// clinician obtained it in 60 % of sound cats.
 	missed, false1 := 0.03, 0.013
@@ -369,7 +372,7 @@ func trunciProbabilities(s exam.Species, k rowKey, out [][points]float64) {
 	var p [trunciCats]float64
 	present := 1 - absent
 	for i := range levels {
-		p[trunciLevels+i] = float64(float64(present*(1-cut)) * float64(false1/levels))
+		p[trunciLevels+i] = float64(float64(present*float64(1-cut)) * float64(false1/levels))
 	}
 	p[trunciNormal] = float64(float64(present*(1-cut)) * (1 - false1))
 	if cut > 0 {
@@ -413,7 +416,7 @@ func bladderRow(_ *space, c *cell, st *state, out *rowKey) {
 }
 
 func (p *Params) bladder(item exam.Item, k rowKey, out [][points]float64) {
-	u, l := float64(k[0])/quantum, float64(k[1])/quantum
+	u, l := value(k[0]), value(k[1])
 	devs, _ := p.quadrature()
 	sum := u + l + 0.02
 	for q, dev := range devs {
@@ -445,7 +448,7 @@ func tremorRow(_ *space, _ *cell, st *state, out *rowKey) {
 }
 
 func tremorProbabilities(k rowKey, out [][points]float64) {
-	c, w := float64(k[0])/quantum, float64(k[1])/quantum
+	c, w := value(k[0]), value(k[1])
 	intent, rest := float64(0.6*c), float64(0.12*w)
 	for q := range points {
 		out[2][q] = 0.03 + float64(0.91*intent)
@@ -462,7 +465,7 @@ func directionRow(_ *space, _ *cell, st *state, out *rowKey) {
 // directionProbabilities: horizontal and rotary in peripheral disease; any, vertical and changing
 // in central disease (anatomy.md G3, from memory; sizes judgement).
 func directionProbabilities(k rowKey, out [][points]float64) {
-	p, c := float64(k[0])/quantum, float64(k[1])/quantum
+	p, c := value(k[0]), value(k[1])
 	peripheral := [4]float64{0.6, 0.32, 0.04, 0.04}
 	central := [4]float64{0.32, 0.2, 0.24, 0.24}
 	neither := [4]float64{0.5, 0.2, 0.15, 0.15}

@@ -39,13 +39,21 @@ type Engine struct {
 	weightFull   []uint64
 	weightLooked []uint64
 	live         []uint32
+	liveFull     []uint64
+	liveLook     []uint64
+	livePairs    []livePair
+	liveSigs     []uint16
+	sigKnown     []bool
+	ratioFull    []uint64
+	ratioLook    []uint64
+	open         []bool
+	gentle       bool
 	total        uint64
 
 	damageSum []uint64
 	classSum  []uint64
 	histFull  []uint64
 	histLook  []uint64
-	sigMass   []uint64
 
 	res         Result
 	alone       Alone
@@ -93,14 +101,19 @@ func (m *Model) Engine() *Engine {
 		live: make([]uint32, 0, m.hyps), damageSum: make([]uint64, len(m.damages)), classSum: make([]uint64, len(m.classes)),
 		notes: map[uint64]string{},
 	}
-	most, sigs := 0, 0
+	most, sigs, ratios := 0, 0, 0
 	for i := range m.groups {
 		g := &m.groups[i]
-		most, sigs = max(most, len(g.pairs)), max(sigs, g.sigs)
+		most, sigs, ratios = max(most, len(g.pairs)), max(sigs, g.sigs), max(ratios, g.sigs*len(g.cells))
 		e.state[i] = groupState{full: make([]int64, g.sigs), looked: make([]int64, g.sigs), delta: make([]int64, len(g.pairs))}
 	}
 	e.histFull, e.histLook = make([]uint64, most), make([]uint64, most)
-	e.sigMass = make([]uint64, sigs)
+	e.ratioFull, e.ratioLook = make([]uint64, ratios), make([]uint64, ratios)
+	e.sigKnown = make([]bool, sigs)
+	e.livePairs = make([]livePair, 0, most)
+	e.liveSigs = make([]uint16, 0, sigs)
+	e.liveFull, e.liveLook = make([]uint64, 0, m.hyps), make([]uint64, 0, m.hyps)
+	e.open = make([]bool, n)
 	for i := range n {
 		e.obs[i], e.was[i], e.upTo[i], e.wasTo[i] = -1, -1, -1, -1
 		e.ctx[i].keep = 1
@@ -177,8 +190,7 @@ func (e *Engine) Leading() *Result {
 
 func (e *Engine) answer() *Result {
 	e.posterior()
-	e.evidence()
-	e.next()
+	e.analyse()
 	e.warn()
 	return &e.res
 }
@@ -432,8 +444,6 @@ func (e *Engine) weigh(labelled bool) {
 	}
 	clear(e.damageSum)
 	e.total = 0
-	e.live = e.live[:0]
-	const dim = 1 << (weightBits - 30) // too little to matter for evidence and next tests
 	for h := range m.hyps {
 		p := prior(h)
 		w := weight(p + e.full[h] + lookedAt - best)
@@ -448,8 +458,26 @@ func (e *Engine) weigh(labelled bool) {
 		}
 		e.damageSum[m.damage[h]] += w
 		e.total += w
-		if w >= dim {
-			e.live = append(e.live, uint32(h))
+	}
+}
+
+// gatherLive lists the hypotheses that evidence and next tests are worked out from: each at
+// least a millionth of the whole. What is left out is under a hundredth even where nothing is tested.
+func (e *Engine) gatherLive() {
+	e.live, e.liveFull, e.liveLook = e.live[:0], e.liveFull[:0], e.liveLook[:0]
+	least := e.total >> 20
+	for h, w := range e.weightFull {
+		var l uint64
+		if e.blocks > 0 {
+			l = e.weightLooked[h]
+		}
+		if w+l <= least {
+			continue
+		}
+		e.live = append(e.live, uint32(h))
+		e.liveFull = append(e.liveFull, w)
+		if e.blocks > 0 {
+			e.liveLook = append(e.liveLook, l)
 		}
 	}
 }

@@ -9,24 +9,43 @@ import (
 	"cordwalk.example/cordwalk/exam"
 )
 
-// histogram adds up the live weights by pair of a group, with and without the cells that
-// were filled in a block.
-func (e *Engine) histogram(g *group) (full, looked []uint64) {
-	full, looked = e.histFull[:len(g.pairs)], e.histLook[:len(g.pairs)]
+// gather adds up the live weights by pair of a group, with and without the cells that were
+// filled in a block, and lists the pairs that weigh anything.
+func (e *Engine) gather(g *group) {
+	full := e.histFull[:len(g.pairs)]
 	clear(full)
 	of := g.of
+	weights := e.liveFull[:len(e.live)]
+	for i, h := range e.live {
+		full[of[h]] += weights[i]
+	}
+	e.livePairs = e.livePairs[:0]
 	if e.blocks == 0 {
-		for _, h := range e.live {
-			full[of[h]] += e.weightFull[h]
+		for i, w := range full {
+			if w > 0 {
+				e.livePairs = append(e.livePairs, livePair{int32(i), g.pairs[i], w, 0})
+			}
 		}
-		return full, looked
+		return
 	}
+	looked := e.histLook[:len(g.pairs)]
 	clear(looked)
-	for _, h := range e.live {
-		full[of[h]] += e.weightFull[h]
-		looked[of[h]] += e.weightLooked[h]
+	weights = e.liveLook[:len(e.live)]
+	for i, h := range e.live {
+		looked[of[h]] += weights[i]
 	}
-	return full, looked
+	for i, w := range full {
+		if w > 0 || looked[i] > 0 {
+			e.livePairs = append(e.livePairs, livePair{int32(i), g.pairs[i], w, looked[i]})
+		}
+	}
+}
+
+// livePair is a pair of a group with its weight, as all findings have it and without blocks.
+type livePair struct {
+	at int32
+	pair
+	full, looked uint64
 }
 
 // sum128 adds up products of weights and ratios exactly.
@@ -47,7 +66,7 @@ func (s *sum128) float() float64 {
 const ratioBits = 40
 
 func toRatio(x float64) uint64 {
-	return uint64(math.Round(float64(min(x, 1<<22) * (1 << ratioBits))))
+	return uint64(float64(min(x, 1<<22) * (1 << ratioBits)))
 }
 
 // leaders returns the leading region and the runner-up.
@@ -65,115 +84,125 @@ func regionByName(name string) Region {
 	return NoRegion
 }
 
-// evidence says for each finding how far it moved the leading region against the runner-up:
-// the odds with it over the odds without it, everything else as it is.
-func (e *Engine) evidence() {
-	m := e.m
+// analyse fills evidence and next tests: both go through the groups and their weights.
+func (e *Engine) analyse() {
 	e.res.Evidence = e.res.Evidence[:0]
+	e.gatherLive()
+	e.beginNext()
 	lead, second := e.leaders()
-	_, qw := m.p.quadrature()
-	for gi := range m.groups {
-		g := &m.groups[gi]
-		var seen [64]int
-		n := 0
-		for k, ci := range g.cells {
-			if e.obs[ci] >= 0 {
-				seen[n] = k
-				n++
-			}
+	for gi := range e.m.groups {
+		g := &e.m.groups[gi]
+		seen, open := false, false
+		for _, ci := range g.cells {
+			seen = seen || e.obs[ci] >= 0
+			open = open || e.open[ci]
 		}
-		if n == 0 {
+		if !seen && !open {
 			continue
 		}
-		full, looked := e.histogram(g)
-		mass := e.sigMass[:g.sigs]
-		clear(mass)
-		for i, p := range g.pairs {
-			c := &m.classes[p.class]
-			if c.region == lead || c.second == lead || c.region == second || c.second == second {
-				mass[p.sig] += full[i]
-				if e.blocks > 0 {
-					mass[p.sig] += looked[i]
-				}
-			}
+		e.gather(g)
+		if seen {
+			e.evidence(g, lead, second)
 		}
-		// For each signature, the ratio without the finding to with it.
-		ratioFull, ratioLook := e.pred[:g.sigs], e.pred[g.sigs:2*g.sigs]
-		for i := range n {
-			ci := g.cells[seen[i]]
-			bulk := e.bulk[ci]
-			for s, w := range mass {
-				if w == 0 {
-					continue
-				}
-				with, without := qw, qw
-				withL, withoutL := qw, qw
-				for j := range n {
-					cj := g.cells[seen[j]]
-					p := e.likelihood(g, seen[j], cj, s)
-					for q := range p {
-						with[q] = float64(with[q] * p[q])
-						if j != i {
-							without[q] = float64(without[q] * p[q])
-						}
-						if !e.bulk[cj] {
-							withL[q] = float64(withL[q] * p[q])
-							if j != i {
-								withoutL[q] = float64(withoutL[q] * p[q])
-							}
-						}
-					}
-				}
-				ratioFull[s] = toRatio(total(&without) / total(&with))
-				if e.blocks > 0 {
-					if bulk {
-						ratioLook[s] = 1 << ratioBits
-					} else {
-						ratioLook[s] = toRatio(total(&withoutL) / total(&withL))
-					}
-				}
-			}
-			var a, b, a1, b1 sum128
-			for k, p := range g.pairs {
-				if full[k] == 0 && (e.blocks == 0 || looked[k] == 0) {
-					continue
-				}
-				c := &m.classes[p.class]
-				for half, r := range [2]Region{c.region, c.second} {
-					if r != lead && r != second || half == 1 && r == c.region {
-						continue
-					}
-					w, wl := full[k], uint64(0)
-					if e.blocks > 0 {
-						wl = looked[k]
-					}
-					if c.region != c.second {
-						w, wl = w/2, wl/2
-					}
-					x, x1 := &a, &a1
-					if r == second {
-						x, x1 = &b, &b1
-					}
-					x.add(w+wl, 1<<ratioBits)
-					x1.add(w, ratioFull[p.sig])
-					if wl > 0 {
-						x1.add(wl, ratioLook[p.sig])
-					}
-				}
-			}
-			db := 0.0
-			if a.float() > 0 && b.float() > 0 && a1.float() > 0 && b1.float() > 0 {
-				db = float64(10 / 2.302585092994045684 * (logOf(a.float()/b.float()) - logOf(a1.float()/b1.float())))
-				db = math.Round(float64(db*1e6)) / 1e6
-			}
-			c := &m.lay.cells[ci]
-			e.res.Evidence = append(e.res.Evidence, Evidence{Item: c.item.String(), Site: c.site.String(),
-				Digit: c.digit.String(), Joint: c.joint.String(), Grade: int(e.found[ci].grade), Level: e.levelName(e.found[ci].level), Decibans: db})
+		if open {
+			e.worth(g, seen)
 		}
 	}
 	slices.SortStableFunc(e.res.Evidence, func(a, b Evidence) int {
 		return cmp.Or(cmp.Compare(math.Abs(b.Decibans), math.Abs(a.Decibans)), cmp.Compare(a.Item, b.Item), cmp.Compare(a.Site, b.Site))
 	})
+	e.endNext()
+}
+
+// evidence says for each finding of a group how far it moved the leading region against the
+// runner-up: the odds with it over the odds without it, everything else as it is.
+func (e *Engine) evidence(g *group, lead, second Region) {
+	m := e.m
+	_, qw := m.p.quadrature()
+	var seen [64]int
+	n := 0
+	for k, ci := range g.cells {
+		if e.obs[ci] >= 0 {
+			seen[n] = k
+			n++
+		}
+	}
+	// The odds with all findings, and for each finding without it. Signatures come in pairs
+	// with classes; a signature's ratios are worked out when a pair first asks for them.
+	var all [2]sum128
+	var without [2][64]sum128
+	clear(e.sigKnown[:g.sigs])
+	for i := range e.livePairs {
+		p := &e.livePairs[i]
+		c := &m.classes[p.class]
+		inLead, inSecond := c.region == lead || c.second == lead, c.region == second || c.second == second
+		if !inLead && !inSecond {
+			continue
+		}
+		full, looked := p.full, p.looked
+		if c.region != c.second {
+			full, looked = full/2, looked/2
+		}
+		at := int(p.sig) * n
+		if !e.sigKnown[p.sig] {
+			e.sigKnown[p.sig] = true
+			e.ratios(g, seen[:n], int(p.sig), &qw, e.ratioFull[at:at+n], e.ratioLook[at:at+n])
+		}
+		for side, in := range [2]bool{inLead, inSecond} {
+			if !in {
+				continue
+			}
+			all[side].add(full+looked, 1<<ratioBits)
+			for k := range n {
+				without[side][k].add(full, e.ratioFull[at+k])
+				if looked > 0 {
+					without[side][k].add(looked, e.ratioLook[at+k])
+				}
+			}
+		}
+	}
+	for k := range n {
+		ci := g.cells[seen[k]]
+		db := 0.0
+		a, b, a1, b1 := all[0].float(), all[1].float(), without[0][k].float(), without[1][k].float()
+		if a > 0 && b > 0 && a1 > 0 && b1 > 0 {
+			db = float64(10 / 2.302585092994045684 * (logOf(a/b) - logOf(a1/b1)))
+			db = math.Round(float64(db*1e6)) / 1e6
+		}
+		c := &m.lay.cells[ci]
+		e.res.Evidence = append(e.res.Evidence, Evidence{Item: c.item.String(), Site: c.site.String(),
+			Digit: c.digit.String(), Joint: c.joint.String(), Grade: int(e.found[ci].grade), Level: e.levelName(e.found[ci].level), Decibans: db})
+	}
+}
+
+// ratios writes, for each finding of a group, the group's likelihood without it over that with
+// it under a signature: of all findings, and of those that were not filled in a block.
+func (e *Engine) ratios(g *group, seen []int, sig int, qw *[points]float64, full, looked []uint64) {
+	var p [64][points]float64
+	with, withL := *qw, *qw
+	for i, k := range seen {
+		ci := g.cells[k]
+		p[i] = e.likelihood(g, k, ci, sig)
+		for q := range with {
+			with[q] = float64(with[q] * p[i][q])
+			if !e.bulk[ci] {
+				withL[q] = float64(withL[q] * p[i][q])
+			}
+		}
+	}
+	sum, sumL := total(&with), total(&withL)
+	for i, k := range seen {
+		var out, outL float64
+		for q := range with {
+			out += with[q] / p[i][q]
+			outL += withL[q] / p[i][q]
+		}
+		full[i] = toRatio(out / sum)
+		looked[i] = 1 << ratioBits
+		if !e.bulk[g.cells[k]] {
+			looked[i] = toRatio(outL / sumL)
+		}
+	}
 }
 
 // levelName returns a vertebra's name without making a new string each time.

@@ -69,6 +69,7 @@ type space struct {
 	p        *Params
 	segments int
 	vertebra []int // vertebra index that each segment lies in
+	begins   []int // place where each segment begins, rounded up to a whole vertebra
 	variants [2][3]float64
 	arcs     [3][arcCount]arc
 	sites    []*site
@@ -79,6 +80,7 @@ func newSpace(s exam.Species, p *Params) *space {
 	sp.vertebra = make([]int, sp.segments)
 	for i := range sp.vertebra {
 		sp.vertebra[i] = vertebraOver(s, i)
+		sp.begins = append(sp.begins, beginOf(s, i))
 	}
 	for g, plexus := range [2]anatomy.Plexus{anatomy.Brachial, anatomy.Lumbosacral} {
 		vs, err := anatomy.Variants(s, plexus)
@@ -143,10 +145,39 @@ const longExtent = 8
 // thoracolumbar discs within three spaces of the junction (clinic page, low grade); flattened
 // to a factor of two and a half, for other causes fall anywhere.
 func discWeight(s exam.Species, centre2 int) float64 {
+	if centre2 > 2*30 {
+		return 0.25 // the tail's segments: hardly a place of cord disease
+	}
 	if s == exam.Dog && centre2 >= 2*18 && centre2 <= 2*22 {
 		return 2.5
 	}
 	return 1
+}
+
+// painWeight: how often a level is the painful one. Discs of the neck, the thoracolumbar
+// junction and the lumbosacral joint; hardly the ribs' and the tail's levels. Judgement.
+func painWeight(v int) float64 {
+	switch {
+	case v >= vertT1+1 && v <= vertT1+8:
+		return 0.4
+	case v == vertL7:
+		return 3
+	case v >= vertT1+10 && v <= vertL1+2:
+		return 2
+	case v > vertL7:
+		return 0.4
+	}
+	return 1
+}
+
+// segmentOver returns the segment that lies at a place of the column, the last one caudal of the cord.
+func (sp *space) segmentOver(v int) int {
+	for s := sp.segments - 1; s > 0; s-- {
+		if sp.begins[s] <= v {
+			return s
+		}
+	}
+	return 0
 }
 
 func (sp *space) enumerate() {
@@ -166,13 +197,20 @@ func (sp *space) enumerate() {
 			}
 		}
 	}
-	for seg := range sp.segments {
+	// Sources of pain lie at the level caudal to a vertebra, from C2 to Cd3, not at segments:
+	// caudal of L6 there is hardly any cord. They count to the region of the segments there.
+	for v := 1; v <= vertCd1+2; v++ {
+		if v > vertS1 && v < vertCd1-1 {
+			continue // within the sacrum
+		}
+		seg := sp.segmentOver(v + 1)
 		for _, side := range plain {
 			w := 0.5
 			if side != Even {
 				w = 0.25
 			}
-			sp.add(site{kind: PainOnly, from: seg, to: seg, side: side, region: regionAt(seg), weight: float64(w * discWeight(sp.species, 2*seg))})
+			t := sp.add(site{kind: PainOnly, from: seg, to: seg, side: side, region: regionAt(seg), weight: float64(w * painWeight(v))})
+			t.vertebra = v
 		}
 	}
 	for seg := 1; seg < sp.segments; seg++ {
@@ -209,6 +247,9 @@ func (sp *space) enumerate() {
 	for n := nerveID(1); n < nerveCount; n++ {
 		for _, side := range plain {
 			w := nerveWeight(n)
+			if n == nerveSympathetic {
+				w = p.Sympathetic
+			}
 			if side == Even {
 				w = float64(w * 0.15)
 			}
@@ -289,8 +330,6 @@ func nerveWeight(n nerveID) float64 {
 		return 0.7
 	case nerveTrigeminal:
 		return 0.6
-	case nerveSympathetic:
-		return 0.6 // isolated Horner: 28 % idiopathic, imaging finds a cause in 3 % (Horner-img)
 	case nerveVagus:
 		return 0.2
 	case nerveOptic, nerveOculomotor, of(anatomy.Pudendal):
@@ -396,6 +435,9 @@ func (sp *space) each(yield func(h *hypothesis)) {
 			if _, ok := t.touchesPlexus(); !ok {
 				balances = [3]float64{0.5, 0.5, 0}
 			}
+			if t.from >= segT3 && t.from < segL4 {
+				companies = [2]float64{1 - p.Shock, p.Shock}
+			}
 			if t.from <= 9 && (t.side == Even || t.side == LeftWorse || t.side == RightWorse) {
 				centrals = [2]float64{1 - p.Central, p.Central}
 			}
@@ -441,6 +483,15 @@ func (sp *space) each(yield func(h *hypothesis)) {
 					for ac, wa := range acutes {
 						for v, wv := range variants {
 							for co, wco := range companies {
+								if t.kind == Cord && companies[1] > 0 { // spinal shock: acute and severe only
+									switch {
+									case ac == 1 && Severities[s] >= 0.8:
+									case co == 0:
+										wco = 1
+									default:
+										continue
+									}
+								}
 								w := float64(float64(float64(sev[s]*wb)*float64(wc*wa)) * float64(wv*wco))
 								if w == 0 {
 									continue
@@ -465,7 +516,7 @@ func rootSignatureShare(t *site) float64 {
 		return 0.15
 	case t.from >= segC6 && t.from < segT3:
 		return 0.3
-	case t.from >= segL4 && t.from <= 30:
+	case t.from >= segL4:
 		return 0.3
 	}
 	return 0
@@ -485,7 +536,7 @@ func (sp *space) build(h *hypothesis, b *body, other *body) {
 
 func (sp *space) put(b *body, t *site, h *hypothesis, sev float64) {
 	p := sp.p
-	share := t.side.shares()
+	share := t.side.shares(sev)
 	kind := t.kind
 	if kind == Two {
 		kind = Cord
@@ -514,6 +565,9 @@ func (sp *space) put(b *body, t *site, h *hypothesis, sev float64) {
 		b.tracts[b.nt] = tr
 		b.nt++
 		b.cord = true
+		if h.company {
+			b.shock = 1
+		}
 		b.origin = max(b.origin, float64(float64(0.5*(tr.loss[left]+tr.loss[right]))))
 		b.ctAt = t.vertebra
 		hurts := p.PainLater
@@ -524,7 +578,7 @@ func (sp *space) put(b *body, t *site, h *hypothesis, sev float64) {
 		if reach, limb := rootReach(t); reach {
 			for side := range 2 {
 				// A disc under the plexus carries pain into the limb now and then.
-				b.rootPain[limb*2+side] = float64(0.2 * share[side])
+				b.rootPain[limb*2+side] = float64(p.CordRoot * share[side])
 			}
 		}
 	case PainOnly:
@@ -555,7 +609,7 @@ func (sp *space) put(b *body, t *site, h *hypothesis, sev float64) {
 			}
 		}
 		if t.kind == CaudaEquina {
-			b.lsStress = 0.62 // DS-1999: 97.7 % in lumbosacral stenosis; less in other causes
+			b.lsStress = p.Stenosis
 			b.tailPain = 0.5
 		}
 	case Nerve:
@@ -704,6 +758,9 @@ func (sp *space) putBrain(b *body, t *site, sev float64, share [2]float64, h *hy
 // place, less at those near by (judgement; pain is hard to place to a segment).
 func (sp *space) ache(b *body, t *site, strength float64) {
 	lo, hi := sp.vertebra[t.from], sp.vertebra[t.to]
+	if t.kind == PainOnly {
+		lo, hi = t.vertebra, t.vertebra
+	}
 	if t.kind == CaudaEquina {
 		lo = min(lo, vertL7)
 		hi = max(vertL7+1, lo)
@@ -721,19 +778,21 @@ func (sp *space) ache(b *body, t *site, strength float64) {
 		}
 		near := 1.0
 		if gap > 0 {
-			near = max(0, 0.75-float64(0.15*float64(gap)))
+			near = max(0, 0.6-float64(0.15*float64(gap)))
 		}
 		b.pain[i] = both(b.pain[i], float64(strength*near))
 	}
-	b.lsStress = max(b.lsStress, float64(0.8*b.pain[painLumbosacral]))
+	b.lsStress = max(b.lsStress, float64(1.05*b.pain[painLumbosacral]))
 	b.tailPain = max(b.tailPain, max(float64(0.6*b.pain[painLumbosacral]), float64(0.8*b.pain[painSacrocaudal])))
 }
 
 // Vertebrae by index for dog and cat: C1 is 0, T1 7, L1 20, S1 27, Cd1 30.
 const (
-	vertT1 = 7
-	vertL1 = 20
-	vertL7 = 26
+	vertT1  = 7
+	vertL1  = 20
+	vertL7  = 26
+	vertS1  = 27
+	vertCd1 = 30
 )
 
 // rootReach tells whether pain from the site's segments is carried into a limb, and which girdle.
@@ -742,7 +801,7 @@ func rootReach(t *site) (bool, int) {
 	switch {
 	case mid >= 1 && mid < segT3:
 		return true, thoracic
-	case mid >= segL4 && mid <= 28:
+	case mid >= segL4 && (mid <= 28 || t.kind == PainOnly && t.vertebra <= vertL7):
 		return true, pelvic
 	}
 	return false, 0

@@ -123,17 +123,19 @@ func (s Side) main() Side {
 }
 
 // shares returns how much of the severity reaches the left and the right half. The lesser
-// half of a one-worse lesion takes half: a choice, from memory.
-func (s Side) shares() [2]float64 {
+// half of a lesion that is worse on one side takes 0.5 of a slight lesion and 0.9 of a
+// complete one: severe lesions reach both halves (judgement).
+func (s Side) shares(severity float64) [2]float64 {
+	lesser := 0.4 + float64(0.5*severity)
 	switch s {
 	case LeftOnly:
 		return [2]float64{1, 0}
 	case RightOnly:
 		return [2]float64{0, 1}
 	case LeftWorse:
-		return [2]float64{1, 0.5}
+		return [2]float64{1, lesser}
 	case RightWorse:
-		return [2]float64{0.5, 1}
+		return [2]float64{lesser, 1}
 	}
 	return [2]float64{1, 1}
 }

@@ -46,7 +46,7 @@ func (st *state) latent(c *cell) float64 {
 		return v
 	case exam.Ataxia:
 		v := st.path[l]
-		v = both(v, float64(0.3*max(0, st.arcLoss[arcHindSense][side]-0.3))*boolTo(g == pelvic))
+		v = both(v, float64(float64(0.3*max(0, st.arcLoss[arcHindSense][side]-0.3))*boolTo(g == pelvic)))
 		v = both(v, float64(0.85*max(st.cereb[side], float64(0.8*st.cereb[other]))))
 		v = both(v, float64(0.6*any2(st.vestP)))
 		v = both(v, float64(0.75*max(st.vestC[side], float64(0.8*st.vestC[other]))))
@@ -104,6 +104,7 @@ func (st *state) latent(c *cell) float64 {
 			return both(limbArc(arcForearm, 0.3), st.tendon[l])
 		}
 		v := both(limbArc(arcGastroc, 0.85), st.tendon[l])
+		v = both(v, float64(st.p.SunkHock*st.arcLoss[arcTibialis][side]))
 		v = both(v, float64(0.4*st.weak[l]))
 		return both(v, float64(0.3*st.up[l]))
 	case exam.NeckCarriage:
@@ -423,7 +424,7 @@ func (st *state) latent(c *cell) float64 {
 
 	// Bladder and bowel.
 	case exam.VoluntaryUrination:
-		v := both(float64(0.85*st.upTail), st.mean(arcPelvic))
+		v := both(float64(0.85*st.upTail), min(1, float64(st.p.Voiding*st.mean(arcPelvic))))
 		v = both(v, float64(0.35*st.mean(arcPudendal)))
 		return both(v, float64(0.15*any2(st.stem)))
 	case exam.UrineLeak:
@@ -549,9 +550,9 @@ func (st *state) feeling(c *cell) float64 {
 	own := 0.0
 	switch c.site {
 	case exam.TailBase, exam.TailTip:
-		own = st.mean(arcTailSkin)
+		own = min(1, float64(1.25*st.mean(arcTailSkin)))
 	case exam.Perineum:
-		own = st.mean(arcPudendalSkin)
+		own = min(1, float64(1.25*st.mean(arcPudendalSkin)))
 	default:
 		l := c.girdle*2 + c.side
 		if c.digit == exam.AnyDigit {

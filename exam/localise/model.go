@@ -156,7 +156,7 @@ var cordPlaces = []struct {
 }{{2, "C1-C2"}, {8, "C3-C5"}, {12, "C6-C7"}, {19, "C8-T2"}, {32, "T3-T9"}, {42, "T10-L1"}, {46, "L2-L3"},
 	{50, "L4-L5"}, {56, "L6-S1"}, {60, "S1-S3"}, {99, "Cd1-Cd5"}}
 
-// rootPlaces does the same for roots and sources of pain.
+// rootPlaces does the same for roots.
 var rootPlaces = []struct {
 	to   int
 	name string
@@ -177,15 +177,18 @@ func (m *Model) classify() {
 				}
 			}
 			// A long lesion counts to the region of its centre, its place must agree.
-		case PainOnly, Root:
+		case Root:
 			for _, p := range rootPlaces {
 				if t.from <= p.to {
 					c.place = p.name
 					break
 				}
 			}
-			if t.kind == PainOnly && t.region <= C6T2 && t.from <= 9 {
-				c.side = Even
+		case PainOnly:
+			for i, r := range painRange {
+				if t.vertebra >= r[0] && t.vertebra <= r[1] {
+					c.place = painSites[i].String()
+				}
 			}
 		case Plexus:
 			c.place = map[[2]int]string{{5, 6}: "brachial plexus, cranial (C6-C7)", {7, 9}: "brachial plexus, caudal (C8-T2)", {5, 9}: "brachial plexus, complete (C6-T2)"}[[2]int{t.from, t.to}]
@@ -226,7 +229,11 @@ func classWords(c *class) string {
 	case Cord, Root:
 		return dash(c.place) + side + ": " + c.kind.Words()
 	case PainOnly:
-		return "pain at " + dash(c.place) + side + ", no loss of function"
+		words := c.place + " pain" + side + ", no loss of function"
+		if c.place == "cervical" { // the level of a sore neck is not clear from palpation
+			words += " (at " + dash(c.region.String()) + ")"
+		}
+		return words
 	case CaudaEquina:
 		return dash(c.place) + side + ": roots of the cauda equina"
 	case Nerve:
@@ -403,7 +410,7 @@ func (m *Model) damageOf(h *hypothesis) damage {
 		if t.from < 0 || t.kind == PainOnly || t.kind == Nerve {
 			return
 		}
-		share := t.side.shares()
+		share := t.side.shares(sev)
 		for s := t.from; s <= t.to; s++ {
 			for side := range 2 {
 				units[s][side] = both(units[s][side], float64(sev*share[side]))

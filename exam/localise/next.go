@@ -107,61 +107,60 @@ func effort(c *cell) (seconds int, hurts bool) {
 	return int(s), hurts
 }
 
-// next ranks the untested cells.
-func (e *Engine) next() {
-	m := e.m
+// beginNext notes which cells may be suggested.
+func (e *Engine) beginNext() {
+	for ci := range e.open {
+		e.open[ci] = e.candidate(ci)
+	}
 	e.rank = e.rank[:0]
-	gentle := false
-	for gi := range m.groups {
-		g := &m.groups[gi]
-		any := false
-		for _, ci := range g.cells {
-			if e.candidate(ci) {
-				any = true
-				break
-			}
-		}
-		if !any {
-			continue
-		}
-		full, looked := e.histogram(g)
-		if e.blocks > 0 {
-			for i := range full {
-				full[i] += looked[i]
-			}
-		}
-		seen := false
-		for _, ci := range g.cells {
-			if e.obs[ci] >= 0 {
-				seen = true
-			}
-		}
-		mass := e.sigMass[:g.sigs]
-		clear(mass)
-		for i, p := range g.pairs {
-			mass[p.sig] += full[i]
-		}
-		if seen {
-			e.spread(g, mass)
-		}
-		for k, ci := range g.cells {
-			if !e.candidate(ci) {
-				continue
-			}
-			c := &m.lay.cells[ci]
-			secs, hurts := effort(c)
-			b := e.information(g, k, ci, full, mass, seen)
-			noxious := c.item.Has(exam.Noxious)
-			if !noxious && b >= gentleWorth {
-				gentle = true
-			}
-			cost := float64(secs) + 10
-			if hurts {
-				cost += hurtSeconds
-			}
-			e.rank = append(e.rank, rankedTest{ci, b, b / cost, secs, hurts, false})
+	e.gentle = false
+}
+
+// worth weighs the untested cells of a group.
+func (e *Engine) worth(g *group, seen bool) {
+	m := e.m
+	// What weighs less than a millionth of all moves no information that anybody could read.
+	least := e.total >> 20
+	kept := e.livePairs[:0]
+	for _, p := range e.livePairs {
+		p.full += p.looked
+		if p.full > least {
+			kept = append(kept, p)
 		}
 	}
+	e.livePairs = kept
+	clear(e.sigKnown[:g.sigs])
+	e.liveSigs = e.liveSigs[:0]
+	for i := range kept {
+		if s := kept[i].sig; !e.sigKnown[s] {
+			e.sigKnown[s] = true
+			e.liveSigs = append(e.liveSigs, s)
+		}
+	}
+	if seen {
+		e.spread(g)
+	}
+	for k, ci := range g.cells {
+		if !e.open[ci] {
+			continue
+		}
+		c := &m.lay.cells[ci]
+		secs, hurts := effort(c)
+		b := e.information(g, k, ci, seen)
+		if !c.item.Has(exam.Noxious) && b >= gentleWorth {
+			e.gentle = true
+		}
+		cost := float64(secs) + 10
+		if hurts {
+			cost += hurtSeconds
+		}
+		e.rank = append(e.rank, rankedTest{ci, b, b / cost, secs, hurts, false})
+	}
+}
+
+// endNext ranks what was weighed.
+func (e *Engine) endNext() {
+	m := e.m
 	slices.SortStableFunc(e.rank, func(a, b rankedTest) int { return cmp.Or(cmp.Compare(b.worth, a.worth), cmp.Compare(a.cell, b.cell)) })
 	e.res.Next = e.res.Next[:0]
 	// Deep pain that is due stands first: it is owed, not suggested.
@@ -190,7 +189,7 @@ func (e *Engine) next() {
 		if len(e.res.Next) >= maxNext {
 			break
 		}
-		if r.bits < leastWorth || c.item == exam.DeepPain || gentle && c.item.Has(exam.Noxious) {
+		if r.bits < leastWorth || c.item == exam.DeepPain || e.gentle && c.item.Has(exam.Noxious) {
 			continue
 		}
 		e.res.Next = append(e.res.Next, NextTest{c.item.String(), c.site.String(), r.bits, r.secs, r.hurts, false})
@@ -198,113 +197,113 @@ func (e *Engine) next() {
 }
 
 // spread writes, for each live signature of a group with findings, the weights of the
-// quadrature points given those findings into e.points.
-func (e *Engine) spread(g *group, mass []uint64) {
+// quadrature points given those findings into e.point.
+func (e *Engine) spread(g *group) {
 	_, qw := e.m.p.quadrature()
-	for s, w := range mass {
-		if w == 0 {
-			continue
-		}
+	for _, s := range e.liveSigs {
 		acc := qw
 		for k, ci := range g.cells {
 			if e.obs[ci] < 0 {
 				continue
 			}
-			p := e.likelihood(g, k, ci, s)
+			p := e.likelihood(g, k, ci, int(s))
 			for q := range acc {
 				acc[q] = float64(acc[q] * p[q])
 			}
 		}
 		sum := total(&acc)
 		for q := range acc {
-			e.point[s*points+q] = acc[q] / sum
+			e.point[int(s)*points+q] = acc[q] / sum
 		}
 	}
 }
 
 // information returns the mutual information between a cell's grade and the class, in bits.
-func (e *Engine) information(g *group, k, ci int, full, mass []uint64, seen bool) float64 {
+// Every sum is one of whole numbers.
+func (e *Engine) information(g *group, k, ci int, seen bool) float64 {
 	m := e.m
 	c := &m.lay.cells[ci]
 	set := &m.sets[m.setOf[ci]]
 	cats := c.cats
 	pred := e.pred[:g.sigs*cats]
-	for s, w := range mass {
-		if w == 0 {
-			continue
-		}
-		row := int(g.rows[k][s])
-		for cat := range cats {
+	rows := g.rows[k]
+	for _, s := range e.liveSigs {
+		row := int(rows[s])
+		at := pred[int(s)*cats : int(s)*cats+cats]
+		for cat := range at {
 			v := set.margin[row*cats+cat]
 			if seen {
-				p := set.p[(row*cats+cat)*points:]
-				v = 0
-				for q := range points {
-					v += float64(e.point[s*points+q] * p[q])
-				}
+				p := set.p[(row*cats+cat)*points : (row*cats+cat)*points+points]
+				w := e.point[int(s)*points : int(s)*points+points]
+				v = float64(w[0]*p[0]) + float64(w[1]*p[1]) + float64(w[2]*p[2]) + float64(w[3]*p[3]) + float64(w[4]*p[4])
 			}
 			if e.bent[ci] {
 				v = float64(e.ctx[ci].keep*v) + e.ctx[ci].add[cat]
 			}
-			if c.item == exam.CutaneousTrunci && cat == trunciSomewhere {
-				v = 0 // the levels stand for it
-			}
-			pred[s*cats+cat] = uint64(math.Round(float64(v * (1 << 62))))
+			at[cat] = uint64(float64(v * (1 << 62)))
+		}
+		if c.item == exam.CutaneousTrunci {
+			at[trunciSomewhere] = 0 // the levels stand for it
 		}
 	}
 	table := e.table[:len(m.classes)*cats]
 	clear(table)
-	for i, p := range g.pairs {
-		w := full[i]
-		if w == 0 {
-			continue
-		}
-		row, at := table[int(p.class)*cats:], int(p.sig)*cats
-		for cat := range cats {
-			h, _ := bits.Mul64(w, pred[at+cat])
+	for i := range e.livePairs {
+		p := &e.livePairs[i]
+		row := table[int(p.class)*cats : int(p.class)*cats+cats]
+		at := pred[int(p.sig)*cats : int(p.sig)*cats+cats]
+		for cat := range row {
+			h, _ := bits.Mul64(p.full, at[cat])
 			row[cat] += h
 		}
 	}
+	// I = log N − Σ column·log column/N − Σ row·log row/N + Σ cell·log cell/N, logarithms to base 2.
 	var byCat [trunciCats]uint64
+	var plus, minus sum128
 	var all uint64
 	for cl := range m.classes {
-		for cat := range cats {
-			byCat[cat] += table[cl*cats+cat]
+		var sum uint64
+		for cat, w := range table[cl*cats : cl*cats+cats] {
+			if w > 0 {
+				sum += w
+				byCat[cat] += w
+				plus.add(w, log2Fixed(w))
+			}
 		}
-	}
-	for cat := range cats {
-		all += byCat[cat]
+		if sum > 0 {
+			all += sum
+			minus.add(sum, log2Fixed(sum))
+		}
 	}
 	if all == 0 {
 		return 0
 	}
-	// I = H(cat) − H(cat | class); every term is rounded to a whole number before it is summed.
-	const unit = 1 << 50
-	entropy := func(w, of uint64) int64 {
-		if w == 0 || w == of {
-			return 0
+	for _, w := range byCat[:cats] {
+		if w > 0 {
+			minus.add(w, log2Fixed(w))
 		}
-		p := float64(w) / float64(of)
-		return int64(math.Round(float64(float64(-p*logOf(p)) * unit)))
 	}
-	var before, after int64
-	for cat := range cats {
-		before += entropy(byCat[cat], all)
+	plus.add(all, log2Fixed(all))
+	gain := (plus.float() - minus.float()) / float64(all) / (1 << log2Bits)
+	return math.Round(float64(max(gain, 0)*1e6)) / 1e6
+}
+
+const log2Bits = 40
+
+// log2Table holds log2(1 + i/4096) in units of 2⁻⁴⁰.
+var log2Table = func() (t [4097]uint64) {
+	for i := range t {
+		t[i] = uint64(math.Round(float64(logOf(1+float64(float64(i)/4096)) / ln2 * (1 << log2Bits))))
 	}
-	for cl := range m.classes {
-		var sum uint64
-		for cat := range cats {
-			sum += table[cl*cats+cat]
-		}
-		if sum < all>>24 {
-			continue
-		}
-		var h int64
-		for cat := range cats {
-			h += entropy(table[cl*cats+cat], sum)
-		}
-		after += int64(math.Round(float64(float64(h) * (float64(sum) / float64(all)))))
-	}
-	gain := float64(before-after) / unit / ln2
-	return math.Round(float64(max(gain, 0)*1e9)) / 1e9
+	return t
+}()
+
+// log2Fixed returns log2(w) for w > 0 in units of 2⁻⁴⁰, by whole numbers, to about 1e-8.
+func log2Fixed(w uint64) uint64 {
+	n := bits.Len64(w) - 1
+	frac := w << (63 - n) << 1 // the bits after the leading one
+	i := frac >> 52
+	rest := frac << 12 >> 32 // the next 32 bits
+	a, b := log2Table[i], log2Table[i+1]
+	return uint64(n)<<log2Bits + a + (b-a)*rest>>32
 }

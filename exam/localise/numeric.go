@@ -75,7 +75,7 @@ func logOf(x float64) float64 {
 func toLog(nats float64) int64 { return int64(math.Round(float64(nats * logScale))) }
 
 // fromLog turns stored units into nats.
-func fromLog(l int64) float64 { return float64(l) / logScale }
+func fromLog(l int64) float64 { return float64(float64(l) / logScale) }
 
 // logistic returns 1/(1+e⁻ˣ).
 func logistic(x float64) float64 {

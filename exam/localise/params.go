@@ -40,8 +40,12 @@ type Params struct {
 	CentralHind     float64 // share that shows in the pelvic limbs, central lesions (HNPE-2023: thoracic worse); size judgement
 	WhiteGrey       float64 // grey damage of a lesion mostly of white matter, as a share of its severity: judgement
 	GreyWhite       float64 // white damage of a lesion mostly of grey matter: judgement
-	ShockWithdrawal float64 // value that spinal shock adds to the pelvic withdrawal: fitted to Hodshon-2018 and Full-2016
-	ShockPatellar   float64 // the same for the patellar reflex: fitted to Hodshon-2018
+	Shock           float64 // chance of spinal shock, acute and severe T3–L3: fitted to Hodshon-2018 (26 % of paraplegic dogs) and Full-2016 (6.5 % of all)
+	ShockWithdrawal float64 // what shock takes from the pelvic withdrawal: fitted to Hodshon-2018
+	ShockPatellar   float64 // the same for the patellar reflex: fitted to Hodshon-2018 (2 of the 9)
+	SunkHock        float64 // how far the loss of the fibular field sinks the hock: Dayer-2017, DellApa (cats yes, dogs rarely)
+	Voiding         float64 // how much more voiding depends on the pelvic nerve than its share: fitted to Couper-2020
+	Stenosis        float64 // pain on lumbosacral extension, cauda equina: fitted to DS-1999
 	FrontUMN        float64 // value that a loss of descending control adds to the thoracic withdrawal: fitted to Forterre-2008
 	Pseudo          float64 // how much lost sciatic antagonists raise the patellar reflex: seed table of likelihoods.md (0.3), judgement
 	ReflexUp        float64 // how much lost descending control raises a reflex: seed table (patellar exaggerated 0.3), judgement
@@ -49,6 +53,8 @@ type Params struct {
 	EarlyMass       float64 // share of neurogenic wasting that shows in the first week: vet-advisor-BPI, cynologist (5–10 days)
 	PainAcute       float64 // pain over an acute cord lesion: HNPE-2025 (85 % of disc extrusions), DPN-Br (74 %)
 	PainLater       float64 // pain over an older lesion: judgement between disc disease and degenerative myelopathy
+	CordRoot        float64 // pain that a cord lesion carries into a limb: fitted to Dachs-2024
+	Sympathetic     float64 // weight of the sympathetic trunk among the nerves: fitted to Horner-img (an isolated Horner has a cause in 3 %)
 	TrunciWalk      float64 // chance of a cutaneous trunci cut-off while walking: seed table 0.5, judgement
 	TrunciLame      float64 // the same when not walking: GQ-2012 (80 % over all)
 	Posture         float64 // chance of Schiff–Sherrington posture, acute severe T3–L3: not found; judgement
@@ -83,13 +89,13 @@ func defaults(s exam.Species) *Params {
 	p := &Params{
 		Slip: 0.03, SlipFrail: 0.06, Careless: 0.1, ArcSpread: 1.0, ArcBlunder: 0.005,
 		FrontShare: 0.8, CentralHind: 0.55, WhiteGrey: 0.3, GreyWhite: 0.3,
-		ShockWithdrawal: 0.2, ShockPatellar: 0.1, FrontUMN: 0.33, Pseudo: 0.5, ReflexUp: 0.5,
+		Shock: 0.2, ShockWithdrawal: 0.45, ShockPatellar: 0.12, SunkHock: 0.1, Voiding: 1.3, Stenosis: 0.75, CordRoot: 0.2, Sympathetic: 1.2, FrontUMN: 0.33, Pseudo: 0.5, ReflexUp: 0.5,
 		Disuse: 0.3, EarlyMass: 0.1, PainAcute: 0.55, PainLater: 0.42,
 		TrunciWalk: 0.5, TrunciLame: 0.9, Posture: 0.3, ReflexSteps: 0.3,
 		Pair:   0.03,
-		Extent: [5]float64{0.26, 0.3, 0.2, 0.12, 0.12}, Sides: [sideCount]float64{0.4, 0.1, 0.1, 0.2, 0.2},
+		Extent: [5]float64{0.26, 0.3, 0.2, 0.12, 0.12}, Sides: [sideCount]float64{0.46, 0.09, 0.09, 0.18, 0.18},
 		Severity: [severities]float64{0.25, 0.25, 0.2, 0.18, 0.12}, Balance: [3]float64{0.4, 0.45, 0.15},
-		Central: 0.18, Acute: 0.4,
+		Central: 0.26, Acute: 0.4,
 		respond: responses(),
 	}
 	m := &p.Mass
@@ -102,6 +108,7 @@ func defaults(s exam.Species) *Params {
 	m[BrainRegion][Brain] = 0.085
 	m[NoRegion][Joint], m[NoRegion][Tendon], m[NoRegion][Systemic], m[NoRegion][NoLesion] = 0.03, 0.008, 0.012, 0.035
 	if s == exam.Cat {
+		p.SunkHock = 0.6
 		// Mella-2020, MH-2010: the cervicothoracic enlargement and L4–S3 weigh more in cats
 		// than in dogs, and a clot in the aorta is a cat's disease (from memory).
 		m[C1C5][Cord], m[C1C5][PainOnly] = 0.075, 0.02
@@ -136,7 +143,7 @@ func responses() (t [exam.ItemCount]response) {
 	set(up(8, 0.5), exam.RootSignature)
 	set(one(9, 0.4, 0.65), exam.Stance)
 	set(one(7, 0.45, 0.8), exam.NeckCarriage)
-	set(response{slope: 10, up: []float64{0.4}, slip: 0.012}, exam.HeadTilt, exam.HeadTurn, exam.Circling) // hardly seen where there is none: judgement
+	set(response{slope: 13, up: []float64{0.4}, slip: 0.006}, exam.HeadTilt, exam.HeadTurn, exam.Circling) // hardly seen where there is none: judgement
 	set(up(8, 0.5), exam.SchiffSherrington, exam.ReflexWalking)
 
 	// Postural reactions.
@@ -159,9 +166,9 @@ func responses() (t [exam.ItemCount]response) {
 		exam.EyeFollow, exam.Gag, exam.JawTone, exam.Tongue, exam.Swallowing)
 	set(response{slope: 8, down: []float64{0.45}, up: []float64{0.45}}, exam.PupilSize)
 	set(up(8, 0.35, 0.65), exam.FaceDroop)
-	set(response{slope: 10, up: []float64{0.4, 0.7}, slip: 0.012}, exam.Strabismus, exam.Nystagmus)
+	set(response{slope: 13, up: []float64{0.4, 0.7}, slip: 0.006}, exam.Strabismus, exam.Nystagmus)
 	set(up(8, 0.5), exam.NystagmusFastPhase)
-	set(response{slope: 10, up: []float64{0.4, 0.65}, slip: 0.012}, exam.Horner)
+	set(response{slope: 14, up: []float64{0.4, 0.65}, slip: 0.004}, exam.Horner)
 
 	// Reflexes and tone.
 	set(one(12, 0.32, 0.65), exam.Withdrawal, exam.WithdrawalShoulder, exam.WithdrawalElbow, exam.WithdrawalCarpus,
@@ -187,7 +194,7 @@ func responses() (t [exam.ItemCount]response) {
 	set(response{slope: 10, down: []float64{0.68, 0.88}, up: []float64{0.5}}, exam.SuperficialPain)
 	set(one(36, 0.93, 0.97), exam.DeepPain)
 	for i := exam.SensationRadial; i <= exam.SensationPudendal; i++ {
-		set(response{slope: 9, down: []float64{0.4, 0.7}, up: []float64{0.5}}, i)
+		set(response{slope: 10, down: []float64{0.55, 0.8}, up: []float64{0.5}}, i)
 	}
 	set(up(10, 0.34, 0.47, 0.7), exam.SpinalPain)
 	set(up(10, 0.34, 0.47, 0.7), exam.LumbosacralExtension, exam.TailLift)
@@ -196,9 +203,9 @@ func responses() (t [exam.ItemCount]response) {
 	set(one(9, 0.4, 0.65), exam.FemoralPulse, exam.PawWarmth)
 
 	// Bladder and bowel.
-	set(one(8, 0.45, 0.75), exam.VoluntaryUrination)
+	set(one(9, 0.5, 0.72), exam.VoluntaryUrination)
 	set(up(7, 0.45, 0.8), exam.UrineLeak)
-	set(one(7, 0.5, 0.8), exam.FaecalContinence)
+	set(one(8, 0.42, 0.75), exam.FaecalContinence)
 	set(one(7, 0.5, 0.85), exam.Defaecation)
 	return t
 }

@@ -59,7 +59,7 @@ func (m *Model) SiteDamage(site, step int) [][2]float64 {
 	if t.from < 0 || t.kind == PainOnly {
 		return out
 	}
-	share := t.side.shares()
+	share := t.side.shares(Severities[step-1])
 	for s := t.from; s <= t.to; s++ {
 		for side := range 2 {
 			out[s][side] = float64(Severities[step-1] * share[side])
@@ -129,15 +129,15 @@ func (e *Engine) SiteLogLikelihoods(x Exam, dst []float64) ([]float64, error) {
 			e.serialPrior[slot] += exp(fromLog(prior(h)))
 		}
 	}
-	value := func(slot int) float64 {
+	likely := func(slot int) float64 {
 		const unit = float64(1 << weightBits)
-		return fromLog(e.serialMax[slot]) + logOf(float64(e.serialSum[slot])/unit) - logOf(e.serialPrior[slot])
+		return fromLog(e.serialMax[slot]) + logOf(float64(float64(e.serialSum[slot])/unit)) - logOf(e.serialPrior[slot])
 	}
-	sound := value(n - 1)
+	sound := likely(n - 1)
 	for s := range sites {
 		dst[s*GridSize] = sound
 		for k := 1; k < GridSize; k++ {
-			dst[s*GridSize+k] = value(s*severities + k - 1)
+			dst[s*GridSize+k] = likely(s*severities + k - 1)
 		}
 	}
 	return dst, nil

@@ -193,7 +193,7 @@ func (w *Weigher) Some(x Exam, which []int, dst []float64) ([]float64, error) {
 			shift = lateLog
 		}
 		if withAcute {
-			mass += w.mass[slot+severities] * early
+			mass += float64(w.mass[slot+severities] * early)
 		}
 		best, total := int64(none), uint64(0)
 		for pass := range 2 {

@@ -80,7 +80,6 @@ type state struct {
 	motor   [4]float64           // loss of motion on purpose
 	deep    [4]float64           // loss of deep pain
 	light   [4]float64           // loss of superficial pain
-	shock   float64              // spinal shock of the pelvic limbs
 	upTail  float64              // U of tail and bladder: needs both sides
 	upLow   [2]float64           // U of the sacral segments by side
 }
@@ -152,12 +151,6 @@ func (st *state) derive(b *body, arcs *[arcCount]arc, p *Params) {
 	}
 	st.nociception()
 	st.low(arcs)
-	if b.acute && b.cord && b.nt > 0 {
-		t := &b.tracts[0]
-		if t.from >= segT3 && t.from < segL4 {
-			st.shock = clip(float64((b.origin-0.7)*(1/0.3)), 0, 1)
-		}
-	}
 }
 
 // nociception fills the loss of superficial and deep pain. Pain runs in paths of both sides, so
@@ -166,8 +159,7 @@ func (st *state) derive(b *body, arcs *[arcCount]arc, p *Params) {
 func (st *state) nociception() {
 	for g := range 2 {
 		l, r := g*2+left, g*2+right
-		worst, least := max(st.path[l], st.path[r]), min(st.path[l], st.path[r])
-		_ = worst
+		least := min(st.path[l], st.path[r])
 		for side := range 2 {
 			k := g*2 + side
 			own := st.path[k]
