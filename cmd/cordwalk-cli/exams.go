@@ -43,7 +43,7 @@ func (c *examAddCmd) Run(e *env) error {
 	if strings.TrimSpace(f.Examiner) == "" {
 		return fmt.Errorf("%s: %w", c.File, &exam.Invalid{Field: "examiner", Allowed: "the examiner's name"})
 	}
-	return e.with(func(s *storage.Store) error {
+	return e.change(func(s *storage.Store) error {
 		r, err := e.patient(s, c.Patient)
 		if err != nil {
 			return err
@@ -207,6 +207,7 @@ func (c *examShowCmd) Run(e *env) error {
 		if err != nil {
 			return err
 		}
+		e.looked(s, v.Patient)
 		if c.File {
 			data, err := exam.EncodeFile(exam.FileOf(r.Patient, v))
 			if err != nil {
@@ -304,7 +305,7 @@ type examCloseCmd struct {
 }
 
 func (c *examCloseCmd) Run(e *env) error {
-	return e.with(func(s *storage.Store) error {
+	return e.change(func(s *storage.Store) error {
 		v, err := e.visit(s, c.Visit)
 		if err != nil {
 			return err
@@ -354,7 +355,7 @@ func (c *examAmendCmd) Run(e *env) error {
 	if strings.TrimSpace(c.Reason) == "" {
 		return usage("%s", words.T("give a reason to amend a closed visit"))
 	}
-	return e.with(func(s *storage.Store) error {
+	return e.change(func(s *storage.Store) error {
 		v, err := e.visit(s, c.Visit)
 		if err != nil {
 			return err
@@ -404,7 +405,7 @@ type examAnswerCmd struct {
 }
 
 func (c *examAnswerCmd) Run(e *env) error {
-	return e.with(func(s *storage.Store) error {
+	return e.change(func(s *storage.Store) error {
 		v, err := e.visit(s, c.Visit)
 		if err != nil {
 			return err

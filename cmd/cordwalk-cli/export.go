@@ -18,6 +18,7 @@ import (
 	"cordwalk.example/cordwalk/assets/words"
 	"cordwalk.example/cordwalk/exam"
 	"cordwalk.example/cordwalk/storage"
+	"cordwalk.example/cordwalk/sync/audit"
 )
 
 // exportCmd writes records out.
@@ -113,13 +114,22 @@ func (e *env) collect(s *storage.Store, names []string) (sheet.Records, error) {
 }
 
 type exportJSONCmd struct {
-	Patients []string `arg:"" optional:"" name:"patient" help:"Ids or names; all where none is given."`
+	Patients  []string `arg:"" optional:"" name:"patient" help:"Ids or names; all where none is given."`
+	NoHistory bool     `help:"Leave the history out: only what is true now."`
 	outFlag
 }
 
 func (c *exportJSONCmd) Run(e *env) error {
-	return e.with(func(s *storage.Store) error {
-		r, err := e.collect(s, c.Patients)
+	return e.change(func(s *storage.Store) error {
+		var ids []exam.ID
+		for _, n := range c.Patients {
+			r, err := e.patient(s, n)
+			if err != nil {
+				return err
+			}
+			ids = append(ids, r.Patient.ID)
+		}
+		r, err := sheet.ReadRecords(e.ctx, s, time.Now().Truncate(time.Second), !c.NoHistory, ids...)
 		if err != nil {
 			return err
 		}
@@ -127,7 +137,7 @@ func (c *exportJSONCmd) Run(e *env) error {
 			return err
 		}
 		c.said(e, words.N(len(r.Animals), "%d animal written", "%d animals written", len(r.Animals)))
-		return nil
+		return e.audited(s, audit.Exported, fmt.Sprintf("%d animals as records", len(r.Animals)))
 	})
 }
 
@@ -184,7 +194,7 @@ func (c *exportCSVCmd) Run(e *env) error {
 		}
 		tables = []sheet.Table{t}
 	}
-	return e.with(func(s *storage.Store) error {
+	return e.change(func(s *storage.Store) error {
 		if c.Table == "all" {
 			if err := os.MkdirAll(c.Output, 0o755); err != nil {
 				return err
@@ -209,7 +219,7 @@ func (c *exportCSVCmd) Run(e *env) error {
 			}
 			out.said(e, words.N(rows, "%s: %d row", "%s: %d rows", t.String(), rows))
 		}
-		return nil
+		return e.audited(s, audit.Exported, "CSV, "+c.Table)
 	})
 }
 
@@ -220,7 +230,7 @@ type exportXLSXCmd struct {
 }
 
 func (c *exportXLSXCmd) Run(e *env) error {
-	return e.with(func(s *storage.Store) error {
+	return e.change(func(s *storage.Store) error {
 		o, err := c.options(e, s, c.Patients)
 		if err != nil {
 			return err
@@ -229,7 +239,7 @@ func (c *exportXLSXCmd) Run(e *env) error {
 			return err
 		}
 		c.said(e, words.T("%s written", c.Output))
-		return nil
+		return e.audited(s, audit.Exported, "XLSX")
 	})
 }
 
@@ -240,7 +250,7 @@ type exportFHIRCmd struct {
 }
 
 func (c *exportFHIRCmd) Run(e *env) error {
-	return e.with(func(s *storage.Store) error {
+	return e.change(func(s *storage.Store) error {
 		r, err := e.collect(s, c.Patients)
 		if err != nil {
 			return err
@@ -263,7 +273,7 @@ func (c *exportFHIRCmd) Run(e *env) error {
 			return err
 		}
 		c.said(e, words.N(len(r.Animals), "%d animal written", "%d animals written", len(r.Animals)))
-		return nil
+		return e.audited(s, audit.Exported, fmt.Sprintf("%d animals as FHIR", len(r.Animals)))
 	})
 }
 
@@ -272,7 +282,7 @@ type exportICSCmd struct {
 }
 
 func (c *exportICSCmd) Run(e *env) error {
-	return e.with(func(s *storage.Store) error {
+	return e.change(func(s *storage.Store) error {
 		seq, _, err := e.animals(s, nil)
 		if err != nil {
 			return err
@@ -286,7 +296,7 @@ func (c *exportICSCmd) Run(e *env) error {
 			return err
 		}
 		c.said(e, words.N(n, "%d visit written", "%d visits written", n))
-		return nil
+		return e.audited(s, audit.Exported, "iCalendar")
 	})
 }
 
@@ -338,79 +348,64 @@ func (c *importCmd) Run(e *env) error {
 	if err != nil {
 		return err
 	}
-	return closing(s, func(s *storage.Store) error { return c.take(e, s, in) })
+	return closing(s, func(s *storage.Store) error {
+		e.token(s)
+		return c.take(e, s, in)
+	})
 }
 
 // take adds what the store does not have yet. What it has stays as it is.
 func (c *importCmd) take(e *env, s *storage.Store, in sheet.Records) error {
-	who := strings.TrimSpace(c.Examiner)
-	patients, visits, there := 0, 0, 0
-	total := 0
-	for _, a := range in.Animals {
-		total += 1 + len(a.Visits)
+	if c.DryRun {
+		return c.preview(e, s, in)
 	}
-	pr, err := s.Practice()
+	var tick func(done, total int)
+	if bar := e.progress(); bar != nil {
+		tick = func(done, total int) { bar(words.T("importing"), int64(done), int64(total)) }
+	}
+	added, err := sheet.AddRecords(e.ctx, s, orElse(strings.TrimSpace(c.Examiner), "import"), in, tick)
 	if err != nil {
 		return err
 	}
-	if pr.Name == "" && in.Practice.Name != "" && !c.DryRun {
-		if _, err := s.Apply(e.ctx, orElse(who, "import"), storage.PracticeEdits(pr, in.Practice)...); err != nil {
-			return err
-		}
+	for _, w := range added.Warnings {
+		e.warn(w)
 	}
-	bar, done := e.progress(), 0
-	tick := func() {
-		if done++; bar != nil {
-			bar(words.T("importing"), int64(done), int64(total))
-		}
+	if e.c.JSON {
+		return e.printJSON(map[string]any{"patients": added.Patients, "visits": added.Visits, "changes": added.Changes, "there_already": added.Known, "history": added.History, "dry_run": false})
 	}
+	said := words.T("%d patients and %d visits added; %d were there already", added.Patients, added.Visits, added.Known)
+	if added.History {
+		said = words.T("%d patients and %d visits added with their history of %d changes", added.Patients, added.Visits, added.Changes)
+	}
+	e.say("%s", said)
+	return nil
+}
+
+// preview counts what would be added.
+func (c *importCmd) preview(e *env, s *storage.Store, in sheet.Records) error {
+	patients, visits, there := 0, 0, 0
 	for _, a := range in.Animals {
-		if err := e.ctx.Err(); err != nil {
-			return err
-		}
 		old, err := s.Patient(a.Patient.ID)
 		switch {
 		case errors.Is(err, storage.ErrNotFound):
 			patients++
-			if !c.DryRun {
-				if _, err := s.Apply(e.ctx, orElse(who, "import"), storage.PatientEdits(exam.Patient{}, a.Patient)...); err != nil {
-					return err
-				}
-			}
+			visits += len(a.Visits)
+			continue
 		case err != nil:
 			return err
-		case old.Patient.Species != a.Patient.Species:
-			return fmt.Errorf("%s", words.T("the id %s is that of %s already, of another species; nothing of it was changed", a.Patient.ID, old.Patient.Name))
-		default:
-			there++
 		}
-		tick()
 		for _, v := range a.Visits {
-			tick()
-			if _, err := s.Visit(v.ID); err == nil {
+			if slices.ContainsFunc(old.Visits, func(x exam.Visit) bool { return x.ID == v.ID }) {
 				there++
-				continue
-			} else if !errors.Is(err, storage.ErrNotFound) {
-				return err
-			}
-			visits++
-			if c.DryRun {
-				continue
-			}
-			v.Patient = a.Patient.ID
-			if _, err := s.Apply(e.ctx, orElse(who, v.Examiner), storage.VisitEdits(exam.Visit{}, v)...); err != nil {
-				return err
+			} else {
+				visits++
 			}
 		}
 	}
 	if e.c.JSON {
-		return e.printJSON(map[string]any{"patients": patients, "visits": visits, "there_already": there, "dry_run": c.DryRun})
+		return e.printJSON(map[string]any{"patients": patients, "visits": visits, "there_already": there, "dry_run": true})
 	}
-	said := words.T("%d patients and %d visits added; %d records were there already", patients, visits, there)
-	if c.DryRun {
-		said = words.T("%d patients and %d visits would be added; %d records are there already", patients, visits, there)
-	}
-	e.say("%s", said)
+	e.say("%s", words.T("%d patients and %d visits would be added; %d are there already", patients, visits, there))
 	return nil
 }
 

@@ -73,6 +73,15 @@ type commands struct {
 	Conflicts conflictsCmd `cmd:"" help:"List fields with several values that nobody has chosen between."`
 	Resolve   resolveCmd   `cmd:"" help:"Choose one of several values."`
 	History   historyCmd   `cmd:"" help:"Show every change of a patient: who, when, on which device."`
+	Audit     auditCmd     `cmd:"" help:"Show who made, amended, exported, joined or looked at what."`
+	Backup    backupCmd    `cmd:"" help:"Make a backup that is read back before it counts."`
+	Restore   restoreCmd   `cmd:"" help:"Make a practice out of a backup."`
+	Sync      syncCmd      `cmd:"" help:"Exchange with the practice's other devices by a folder."`
+	Devices   devicesCmd   `cmd:"" help:"List the practice's devices."`
+	Invite    inviteCmd    `cmd:"" help:"Invite a device into the practice."`
+	Join      joinCmd      `cmd:"" help:"Join a practice with a new folder on this device."`
+	Admit     admitCmd     `cmd:"" help:"Let a device in whose check words are the same."`
+	Remove    removeCmd    `cmd:"" help:"Take a device out of the practice."`
 	Check     checkCmd     `cmd:"" help:"Read every byte of the practice and report what is wrong; repairs nothing."`
 	Rebuild   rebuildCmd   `cmd:"" help:"Make the index anew from the journal."`
 }

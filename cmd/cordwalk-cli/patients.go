@@ -337,7 +337,7 @@ type patientSetCmd struct {
 }
 
 func (c *patientSetCmd) Run(e *env) error {
-	return e.with(func(s *storage.Store) error {
+	return e.change(func(s *storage.Store) error {
 		r, err := e.patient(s, c.Patient)
 		if err != nil {
 			return err
@@ -443,6 +443,7 @@ func (c *patientShowCmd) Run(e *env) error {
 		if err != nil {
 			return err
 		}
+		e.looked(s, r.Patient.ID)
 		p := r.Patient
 		if e.c.JSON {
 			out := patientJSON{ID: p.ID, Name: p.Name, Species: p.Species.String(), Breed: p.Breed, Sex: p.Sex.String(), Neutered: p.Neutered,
@@ -551,7 +552,7 @@ type patientPartCmd struct {
 }
 
 func (c *patientPartCmd) Run(e *env) error {
-	return e.with(func(s *storage.Store) error {
+	return e.change(func(s *storage.Store) error {
 		a, err := exam.ParseID(strings.ToLower(c.A))
 		if err != nil {
 			return err
@@ -580,7 +581,7 @@ func (c *patientPartCmd) Run(e *env) error {
 }
 
 func (e *env) edge(a, b, who string, edits func(a, b storage.Record) ([]storage.Edit, error)) error {
-	return e.with(func(s *storage.Store) error {
+	return e.change(func(s *storage.Store) error {
 		x, err := e.patient(s, a)
 		if err != nil {
 			return err

@@ -322,7 +322,7 @@ type resolveCmd struct {
 }
 
 func (c *resolveCmd) Run(e *env) error {
-	return e.with(func(s *storage.Store) error {
+	return e.change(func(s *storage.Store) error {
 		r, err := e.patient(s, c.Patient)
 		if err != nil {
 			return err

@@ -9,6 +9,7 @@ import (
 	"strconv"
 	"strings"
 	"testing"
+	"time"
 
 	"github.com/rogpeppe/go-internal/testscript"
 
@@ -23,6 +24,7 @@ func TestMain(m *testing.M) {
 // TestScripts runs every script of testdata. Beside the usual words they know
 //
 //	exitcode N args…     runs cordwalk-cli and wants that exit code
+//	until args…          runs cordwalk-cli until it ends with 0, ten seconds at most
 //	jsonget VAR PATH     puts a value out of the JSON last printed into a variable
 //	flip FILE OFFSET     turns one bit of a file; a negative offset counts from its end
 func TestScripts(t *testing.T) {
@@ -48,6 +50,20 @@ func TestScripts(t *testing.T) {
 				}
 				if got != want {
 					ts.Fatalf("exit code %d, want %d", got, want)
+				}
+			},
+			// until runs cordwalk-cli again and again, ten seconds at most, until it says 0.
+			"until": func(ts *testscript.TestScript, neg bool, args []string) {
+				end := time.Now().Add(10 * time.Second)
+				for {
+					err := ts.Exec("cordwalk-cli", args...)
+					if err == nil {
+						return
+					}
+					if time.Now().After(end) {
+						ts.Fatalf("still %v", err)
+					}
+					time.Sleep(50 * time.Millisecond)
 				}
 			},
 			"jsonget": func(ts *testscript.TestScript, neg bool, args []string) {

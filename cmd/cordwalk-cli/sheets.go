@@ -8,6 +8,7 @@ import (
 	"cordwalk.example/cordwalk/assets/words"
 	"cordwalk.example/cordwalk/exam"
 	"cordwalk.example/cordwalk/storage"
+	"cordwalk.example/cordwalk/sync/audit"
 )
 
 // paperFlags are common to everything that is printed.
@@ -78,7 +79,7 @@ type sheetCmd struct {
 }
 
 func (c *sheetCmd) Run(e *env) error {
-	return e.with(func(s *storage.Store) error {
+	return e.change(func(s *storage.Store) error {
 		in, err := c.input(e, s)
 		if err != nil {
 			return err
@@ -88,7 +89,10 @@ func (c *sheetCmd) Run(e *env) error {
 		if err != nil {
 			return err
 		}
-		return c.finish(e, d)
+		if err := c.finish(e, d); err != nil {
+			return err
+		}
+		return e.audited(s, audit.Printed, in.Patient.Name+": "+d.Name)
 	})
 }
 
@@ -96,7 +100,7 @@ func (c *sheetCmd) Run(e *env) error {
 type summaryCmd struct{ paperFlags }
 
 func (c *summaryCmd) Run(e *env) error {
-	return e.with(func(s *storage.Store) error {
+	return e.change(func(s *storage.Store) error {
 		in, err := c.input(e, s)
 		if err != nil {
 			return err
@@ -109,7 +113,10 @@ func (c *summaryCmd) Run(e *env) error {
 		if err != nil {
 			return err
 		}
-		return c.finish(e, d)
+		if err := c.finish(e, d); err != nil {
+			return err
+		}
+		return e.audited(s, audit.Printed, in.Patient.Name+": "+d.Name)
 	})
 }
 
@@ -117,7 +124,7 @@ func (c *summaryCmd) Run(e *env) error {
 type letterCmd struct{ paperFlags }
 
 func (c *letterCmd) Run(e *env) error {
-	return e.with(func(s *storage.Store) error {
+	return e.change(func(s *storage.Store) error {
 		in, err := c.input(e, s)
 		if err != nil {
 			return err
@@ -126,6 +133,9 @@ func (c *letterCmd) Run(e *env) error {
 		if err != nil {
 			return err
 		}
-		return c.finish(e, d)
+		if err := c.finish(e, d); err != nil {
+			return err
+		}
+		return e.audited(s, audit.Printed, in.Patient.Name+": "+d.Name)
 	})
 }

@@ -19,6 +19,8 @@ import (
 	"cordwalk.example/cordwalk/assets/words"
 	"cordwalk.example/cordwalk/exam"
 	"cordwalk.example/cordwalk/storage"
+	"cordwalk.example/cordwalk/sync/audit"
+	"cordwalk.example/cordwalk/sync/share"
 )
 
 // passphraseFile is the variable that names a file with the passphrase.
@@ -157,6 +159,65 @@ func (e *env) with(f func(*storage.Store) error) error {
 		return err
 	}
 	return closing(s, f)
+}
+
+// change is with for commands that write: it first finds out whether the store was copied
+// behind the program's back, and then goes on under a new name, so that no number of the
+// journal is used twice.
+func (e *env) change(f func(*storage.Store) error) error {
+	s, err := e.open()
+	if err != nil {
+		return err
+	}
+	return closing(s, func(s *storage.Store) error {
+		e.token(s)
+		return f(s)
+	})
+}
+
+// token compares the store's token with the one in the user's configuration. A machine
+// without a folder for configurations is told so and goes on.
+func (e *env) token(s *storage.Store) {
+	dir, err := configDir()
+	if err == nil {
+		var renewed bool
+		if renewed, err = share.CheckToken(e.ctx, s, nil, dir); renewed {
+			e.warn(words.T("This practice was copied, restored or last opened elsewhere: it goes on under a new device number."))
+		}
+	}
+	if err != nil {
+		e.warn(words.T("Note: %s", err.Error()))
+	}
+}
+
+// audited writes that something left the practice, once it has.
+func (e *env) audited(s *storage.Store, did audit.Did, what string) error {
+	who, err := examiner(s, "")
+	if err != nil {
+		return err
+	}
+	return audit.Write(e.ctx, s, who, did, what)
+}
+
+// looked notes that a patient was looked at, once for each day. A practice that cannot be
+// written to is read all the same.
+func (e *env) looked(s *storage.Store, patient exam.ID) {
+	who, err := examiner(s, "")
+	if err != nil {
+		return
+	}
+	if v, err := audit.OpenViews(s, nil); err == nil {
+		_ = v.Note(who, patient, time.Now())
+	}
+}
+
+// configDir is the program's folder in the user's configuration.
+func configDir() (string, error) {
+	dir, err := os.UserConfigDir()
+	if err != nil {
+		return "", err
+	}
+	return filepath.Join(dir, "cordwalk"), nil
 }
 
 func closing(s *storage.Store, f func(*storage.Store) error) error {
