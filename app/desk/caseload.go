@@ -218,6 +218,7 @@ func (p *caseloadPage) detailLines(r view.CaseRow) []fyne.CanvasObject {
 	out := []fyne.CanvasObject{
 		center(mark.NewBody(r.Cross, s.Species, 150)),
 		mark.Heading(s.Name).Centred().AtLeast(80),
+		mark.NewButton(start, "exam", route(view.ScreenExam)).As(mark.Main),
 	}
 	if s.Problem != "" {
 		out = append(out, mark.NewPara(s.Problem))
@@ -243,8 +244,7 @@ func (p *caseloadPage) detailLines(r view.CaseRow) []fyne.CanvasObject {
 	}
 	out = append(out, mark.Row(6, []float32{0, 1}, mark.NewChange(r.Change, 20), mark.NewPara(changeWords(r))))
 	out = append(out, mark.NewPara(words.T("Last visit: %s", r.LastWords)).In(look.InkSoft), mark.NewPara(r.DueWords).In(dueToken(r)))
-	begin := mark.NewButton(start, "exam", route(view.ScreenExam)).As(mark.Main)
-	out = append(out, mark.Space(1, look.Unit), begin,
+	out = append(out, mark.Space(1, look.Unit),
 		mark.RowTop(look.Unit, []float32{1, 1}, sideButton(words.T("Compare"), "compare", route(view.ScreenCompare)), sideButton(words.T("Course"), "course", route(view.ScreenCourse))),
 		mark.RowTop(look.Unit, []float32{1, 1}, sideButton(words.T("Sheet"), "sheet", route(view.ScreenSheet)), sideButton(words.T("Edit"), "edit", route(view.ScreenPatient))))
 	return out

@@ -322,7 +322,7 @@ func (s *strip) update() {
 		left.Add(mark.NewPara(problem))
 		left.Add(caution)
 	} else {
-		left.Add(mark.Row(look.Unit*2, []float32{1, 1.2}, mark.Line(problem).AtLeast(100), caution))
+		left.Add(mark.RowTop(look.Unit*2, []float32{1, 1.2}, mark.Column(0, mark.Line(problem).AtLeast(100)), caution))
 	}
 	s.box.Objects = []fyne.CanvasObject{mark.Row(look.Unit*1.5, []float32{0, 1, 0}, mark.NewSpecies(f.Patient.Species, 52*max(1, look.Scale()*0.8)), left, rightBox)}
 	s.box.Refresh()
