@@ -8,6 +8,7 @@ import (
 	"github.com/stretchr/testify/assert"
 	"github.com/stretchr/testify/require"
 
+	"cordwalk.example/cordwalk/assets/words"
 	"cordwalk.example/cordwalk/exam"
 )
 
@@ -16,27 +17,75 @@ import (
 func TestOwnerSheetOfTheDemoPractice(t *testing.T) {
 	for name, in := range demoInputs() {
 		for look, opt := range looks() {
-			t.Run(name+"/"+look, func(t *testing.T) {
-				in.Options = opt
-				doc, err := Owner(in)
-				if in.Patient.Status != exam.Active {
-					assert.ErrorIs(t, err, ErrInactive)
-					return
-				}
-				require.NoError(t, err)
-				keepPaper(t, "demo-"+name+"-"+look, doc.PDF)
-				assert.Equal(t, 1, doc.Pages)
-				assert.Regexp(t, `Pages: +1\n`, run(t, doc.PDF, "pdfinfo", "FILE"))
-				text := textOf(t, doc.PDF)
-				assert.Contains(t, text, in.Patient.Veterinarian.Phone)
-				assert.Contains(t, text, "Demo")
-				assert.NotRegexp(t, forbidden, text)
-				ease, ok := Reading("en", doc.Prose)
-				require.True(t, ok)
-				assert.GreaterOrEqual(t, ease.Score, 60.0, "%d words, %d sentences, %d syllables\n%s", ease.Words, ease.Sentences, ease.Syllables, strings.Join(doc.Prose, "\n"))
-			})
+			for _, tag := range words.Tags() {
+				ownerSheetOfTheDemo(t, name, look, tag, in, opt)
+			}
 		}
 	}
+}
+
+func ownerSheetOfTheDemo(t *testing.T, name, look, tag string, in Input, opt Options) {
+	t.Run(name+"/"+look+"/"+tag, func(t *testing.T) {
+		in.Options = opt
+		in.Options.Lang = tag
+		doc, err := Owner(in)
+		if in.Patient.Status != exam.Active {
+			assert.ErrorIs(t, err, ErrInactive)
+			return
+		}
+		require.NoError(t, err)
+		keepPaper(t, "demo-"+name+"-"+look+"-"+tag, doc.PDF)
+		assert.Equal(t, 1, doc.Pages)
+		assert.Regexp(t, `Pages: +1\n`, run(t, doc.PDF, "pdfinfo", "FILE"))
+		text := textOf(t, doc.PDF)
+		assert.Contains(t, text, in.Patient.Veterinarian.Phone)
+		assert.NotContains(t, text, "%")
+		if tag == "en" {
+			assert.Contains(t, text, "Demo")
+			assert.NotRegexp(t, forbidden, text)
+		}
+		insidePage(t, name, doc.PDF, opt.Paper == "Letter")
+		if ease, ok := Reading(tag, doc.Prose); ok {
+			assert.GreaterOrEqual(t, ease.Score, 60.0, "%s: %d words, %d sentences, %d syllables\n%s", ease.Measure, ease.Words, ease.Sentences, ease.Syllables, strings.Join(doc.Prose, "\n"))
+		}
+	})
+}
+
+// TestTheSheetClaimsNoMoreThanTheModel: with the model's trends the sheet says what is sure,
+// and where a better grade may be noise it says so and hollows the mark.
+func TestTheSheetClaimsNoMoreThanTheModel(t *testing.T) {
+	in := demoInputs()["Bramble"] // a steady recovery
+	in, err := WithTrends(in)
+	require.NoError(t, err)
+	require.NotNil(t, in.Whole)
+	assert.InDelta(t, 1, in.Whole.Better+in.Whole.Same+in.Whole.Worse, 1e-6)
+	require.Greater(t, in.Whole.Better, sureTrend)
+	for i := range in.Limbs {
+		require.NotNil(t, in.Limbs[i])
+	}
+	doc, err := Owner(in)
+	require.NoError(t, err)
+	assert.Contains(t, doc.Summary, "Since the first visit on 13 August 2026, Bramble has grown stronger.")
+
+	in = patients()["recovery"]
+	in.Limbs[2] = &Trend{Better: 0.3, Same: 0.69, Worse: 0.01}
+	in.Whole = &Trend{Since: at(0), Better: 0.6, Same: 0.3, Worse: 0.1}
+	doc, err = Owner(in)
+	require.NoError(t, err)
+	assert.Contains(t, doc.Summary, "A little better in the tests than on 13 April 2026: left back leg. We will see if it lasts.")
+	assert.Contains(t, doc.Summary, "Better than on 13 April 2026: passing urine, neck and back pain.")
+	assert.Contains(t, doc.Summary, "It is too soon to say where this will lead.")
+	assert.NotContains(t, textOf(t, doc.PDF), "%")
+
+	in.Whole = &Trend{Since: at(0), Worse: 0.95, Same: 0.05}
+	doc, err = Owner(in)
+	require.NoError(t, err)
+	assert.Contains(t, doc.Summary, "has grown weaker")
+
+	in = patients()["first-visit"]
+	same, err := WithTrends(in)
+	require.NoError(t, err)
+	assert.Nil(t, same.Whole)
 }
 
 func TestClinicalSummaryOfTheDemoPractice(t *testing.T) {

@@ -189,7 +189,7 @@ func (o *owner) sentences() []string {
 	if len(in.Visits) == 1 {
 		return append(out, in.text(phraseFirst))
 	}
-	var better, worse, missed []string
+	var better, maybe, worse, missed []string
 	var since time.Time
 	unlike := false
 	for _, c := range o.changes {
@@ -197,6 +197,8 @@ func (o *owner) sentences() []string {
 		switch {
 		case !c.tested:
 			missed = append(missed, word)
+		case c.dir == exam.Better && o.unsure(c):
+			maybe = append(maybe, word)
 		case c.dir == exam.Better:
 			better = append(better, word)
 		case c.dir == exam.Worse:
@@ -214,11 +216,26 @@ func (o *owner) sentences() []string {
 	if len(better) > 0 {
 		out = append(out, in.text(phraseBetter, when, list(better)))
 	}
-	if len(worse)+len(better) == 0 && !since.IsZero() {
+	if len(maybe) > 0 {
+		out = append(out, in.text(phraseMaybe, when, list(maybe)))
+	}
+	if len(worse)+len(better)+len(maybe) == 0 && !since.IsZero() {
 		out = append(out, in.text(phraseSame, when))
 	}
 	if unlike {
 		out = append(out, in.text(phraseUnlike))
+	}
+	if t := in.Whole; t != nil && len(in.Visits) > 2 {
+		switch from := dayWords(in.lang(), t.Since); {
+		case t.Better > sureTrend:
+			out = append(out, in.text(phraseGained, from, name))
+		case t.Worse > sureTrend:
+			out = append(out, in.text(phraseLost, from, name))
+		case t.Same > sureTrend:
+			out = append(out, in.text(phraseKept, from, name))
+		default:
+			out = append(out, in.text(phraseUnsure))
+		}
 	}
 	if len(missed) > 0 {
 		out = append(out, in.text(phraseMissed, list(missed)))
@@ -227,6 +244,17 @@ func (o *owner) sentences() []string {
 		out = append(out, in.text(phraseKeepOn))
 	}
 	return out
+}
+
+// unsure reports whether the serial model takes a limb's better grade for exam noise rather
+// than for a change.
+func (o *owner) unsure(c outcome) bool {
+	for i, l := range exam.Limbs() {
+		if c.topic.limb == l && o.in.Limbs[i] != nil {
+			return o.in.Limbs[i].Better < 0.5
+		}
+	}
+	return false
 }
 
 // write lays the sheet out and returns the height that was used.
@@ -411,7 +439,7 @@ func (o *owner) picture(p *page, f fit) {
 			case !c.known:
 				limb.Mark, limb.Word = chart.MarkPlain, in.text(wordFirst)
 			case c.dir == exam.Better:
-				limb.Mark, limb.Word = chart.MarkBetter, in.text(wordBetter)
+				limb.Mark, limb.Word, limb.Hollow = chart.MarkBetter, in.text(wordBetter), o.unsure(c)
 			case c.dir == exam.Worse:
 				limb.Mark, limb.Word = chart.MarkWorse, in.text(wordWeaker)
 			default:

@@ -6,6 +6,9 @@ import (
 	"strings"
 
 	"cordwalk.example/cordwalk/assets/words"
+	"cordwalk.example/cordwalk/exam"
+	"cordwalk.example/cordwalk/exam/progress/repeat"
+	"cordwalk.example/cordwalk/exam/scale"
 )
 
 // Phrases that a practice may put in its own words. The English text is the key; the
@@ -20,6 +23,11 @@ const (
 	phraseFirst      = "This was the first visit. The next one will show what changes."
 	phraseMissed     = "We did not test this today: %s."
 	phraseUnlike     = "The test was not done in the same way as last time, so take the change with care."
+	phraseMaybe      = "A little better in the tests than on %[1]s: %[2]s. We will see if it lasts."
+	phraseGained     = "Since the first visit on %[1]s, %[2]s has grown stronger."
+	phraseLost       = "Since the first visit on %[1]s, %[2]s has grown weaker."
+	phraseKept       = "Since the first visit on %[1]s, %[2]s has stayed about the same."
+	phraseUnsure     = "It is too soon to say where this will lead."
 	phraseKeepOn     = "Please keep up the home plan."
 	phraseNoHome     = "There are no home exercises for now."
 )
@@ -104,7 +112,7 @@ var callSigns = []string{
 
 // editable lists the phrases of the bank.
 var editable = []string{phraseWalksAlone, phraseWalksHeld, phraseNoSteps, phraseBetter, phraseWeaker, phraseSame,
-	phraseFirst, phraseMissed, phraseUnlike, phraseKeepOn, phraseNoHome}
+	phraseFirst, phraseMissed, phraseUnlike, phraseMaybe, phraseGained, phraseLost, phraseKept, phraseUnsure, phraseKeepOn, phraseNoHome}
 
 var fixedTexts = []string{textTitle, textSeen, textSeenBy, textShort, textChanges, textLegs, textCourse, textGoals, textGoalBy,
 	textGoalReached, textHome, textTick, textStop, textTimes, textOnce, textDays, textNextVisit, textNoNext, textCall,
@@ -116,9 +124,37 @@ var fixedTexts = []string{textTitle, textSeen, textSeenBy, textShort, textChange
 // Phrases lists the texts that a practice may put in its own words, in English.
 func Phrases() []string { return slices.Clone(editable) }
 
-// Terms lists every text of the owner's sheet, in English, for the catalogue of texts.
+// Terms lists every text of the papers that stands in a table, in English, for the
+// catalogue of texts.
 func Terms() []string {
-	return slices.Concat(editable, fixedTexts, callSigns)
+	out := slices.Concat(editable, fixedTexts, callSigns)
+	open := func(s string) string { return strings.ReplaceAll(s, "-", " ") }
+	for _, i := range exam.Items() {
+		out = append(out, upperFirst(open(i.String())))
+		out = append(out, i.Info().Grades...)
+		for _, s := range i.Info().Sites {
+			out = append(out, open(s.String()))
+		}
+	}
+	for _, m := range exam.Measures() {
+		out = append(out, upperFirst(open(m.String())))
+	}
+	for _, p := range exam.Precautions() {
+		out = append(out, open(p.String()))
+	}
+	for _, k := range exam.TreatmentKinds() {
+		out = append(out, k.Name)
+	}
+	for _, k := range exam.ExerciseKinds() {
+		out = append(out, k.Name, k.How, k.Amount, k.Stop)
+	}
+	for _, s := range scale.Scales() {
+		out = append(out, s.Info().Name)
+	}
+	for v := repeat.Verdict(0); v <= repeat.Likely; v++ {
+		out = append(out, v.String())
+	}
+	return append(out, "medial", "lateral", "flexion", "extension")
 }
 
 // CheckPhrase returns an error if a practice's own wording cannot stand for the phrase:

@@ -45,12 +45,24 @@ type Notice struct {
 	Told    string // who was told, empty where nobody was
 }
 
+// Trend is what the serial model says of a change: how probably something is better, the
+// same or worse than at an earlier visit. The three add up to 1.
+type Trend struct {
+	Since               time.Time
+	Better, Same, Worse float64
+}
+
+// sureTrend is how probable a trend must be before a sheet states it.
+const sureTrend = 0.9
+
 // Input is what the sheets are made from.
 type Input struct {
 	Practice exam.Practice
 	Patient  exam.Patient
 	Visits   []exam.Visit // oldest first; the last one is the sheet's
 	Notices  []Notice     // alerts of the last visit that are not answered, and for the clinical papers the answered ones too
+	Whole    *Trend       // the whole animal since the first visit; nil: not worked out. See WithTrends
+	Limbs    [4]*Trend    // each limb since the last visit, in exam.Limbs order; nil: not worked out
 	At       time.Time    // when the paper is made
 	Options  Options
 }

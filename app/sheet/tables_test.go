@@ -10,6 +10,7 @@ import (
 	"os"
 	"os/exec"
 	"path/filepath"
+	"runtime"
 	"strconv"
 	"strings"
 	"testing"
@@ -387,4 +388,25 @@ func BenchmarkCSV(b *testing.B) {
 	}
 	b.ReportMetric(standard.Seconds()/own.Seconds(), "rate/standard")
 	b.ReportMetric(float64(len(all)*b.N)/own.Seconds(), "rows/s")
+}
+
+// BenchmarkCSVWholePractice exports 20,000 animals of ten visits with forty findings each and
+// reports rows a second and the most memory in use (asked for: under 200 MiB).
+func BenchmarkCSVWholePractice(b *testing.B) {
+	var rows, peak int
+	for b.Loop() {
+		var m runtime.MemStats
+		n, err := CSV(context.Background(), io.Discard, FindingsTable, TableOptions{Animals: bigPractice(20_000), Progress: func(n int) {
+			if n%1000 == 0 {
+				runtime.ReadMemStats(&m)
+				peak = max(peak, int(m.HeapInuse))
+			}
+		}})
+		if err != nil {
+			b.Fatal(err)
+		}
+		rows += n
+	}
+	b.ReportMetric(float64(rows)/b.Elapsed().Seconds(), "rows/s")
+	b.ReportMetric(float64(peak)/(1<<20), "MiB-in-use")
 }
