@@ -90,8 +90,8 @@ func must[T any](v T, err error) T {
 	return v
 }
 
-// encode returns the head's file: magic, verifier, signature, length, CBOR.
-func (h Head) encode(d key.Device) ([]byte, error) {
+// Encode returns the head's file: magic, verifier, signature, length, CBOR.
+func (h Head) Encode(d key.Device) ([]byte, error) {
 	body, err := enc.Marshal(h)
 	if err != nil {
 		return nil, err

@@ -102,7 +102,7 @@ func (x *exchange) leave(ctx context.Context) error {
 		}
 	}
 	next.Counter++
-	data, err := next.encode(x.Bag.Device)
+	data, err := next.Encode(x.Bag.Device)
 	if err != nil {
 		return err
 	}

@@ -1,0 +1,179 @@
+// Package hub exchanges journals over a network, through NATS JetStream: one small server for a clinic (see
+// mailbox), or an existing cluster for a group of clinics.
+//
+// The hub is a mailbox, never the record. It sees sealed segments and their streams, numbers and sizes. JetStream
+// may lose what it acknowledged, and forgets repeats after two minutes; so a device keeps every
+// journal of its sites, drops repeats itself, compares what it holds with what the others say they
+// hold, asks for what it lacks, and fills the hub again.
+//
+// Subjects, in two streams of messages:
+//
+//	cw.seg.SITE.DEVICE          segments of a device's own stream (stream CW)
+//	cw.fill.WHO.SITE.DEVICE     segments that somebody sends again (stream CW)
+//	cw.head.WHO                 the newest head of a device (stream CWH, one message for each)
+//	cw.member                   statements of the member list (stream CWM, kept)
+//	cw.want.SITE.DEVICE         somebody lacks numbers of a stream (not stored)
+//
+// SITE, DEVICE and WHO are hexadecimal; WHO is the first half of a device's public key.
+package hub
+
+import (
+	"context"
+	"crypto/sha256"
+	"crypto/tls"
+	"crypto/x509"
+	"encoding/hex"
+	"errors"
+	"fmt"
+	"net"
+	"strings"
+	"time"
+
+	"github.com/nats-io/nats.go"
+	"github.com/nats-io/nats.go/jetstream"
+	"github.com/nats-io/nkeys"
+
+	"cordwalk.example/cordwalk/sync/change"
+	"cordwalk.example/cordwalk/sync/key"
+)
+
+// The streams of messages.
+const (
+	Segments = "CW"
+	Heads    = "CWH"
+	Members  = "CWM"
+)
+
+// MaxMessage is the size of the largest message. Segments for the hub stay well below it.
+const MaxMessage = 1 << 20
+
+const targetRaw = 256 << 10 // bytes of frames in one message
+
+// Limits of the mailbox.
+type Limits struct {
+	Age      time.Duration // how long a message is kept; 0: 90 days
+	Bytes    int64         // of all segments; 0: 8 GiB
+	Replicas int           // 0: 1; 3 for a cluster
+}
+
+// Configs returns the streams of messages that a hub needs.
+func (l Limits) Configs() []jetstream.StreamConfig {
+	if l.Age == 0 {
+		l.Age = 90 * 24 * time.Hour
+	}
+	if l.Bytes == 0 {
+		l.Bytes = 8 << 30
+	}
+	l.Replicas = max(l.Replicas, 1)
+	return []jetstream.StreamConfig{
+		{Name: Segments, Subjects: []string{"cw.seg.>", "cw.fill.>"}, MaxAge: l.Age, MaxBytes: l.Bytes, MaxMsgSize: MaxMessage, Storage: jetstream.FileStorage, Replicas: l.Replicas, Discard: jetstream.DiscardOld, AllowDirect: true, Duplicates: 2 * time.Minute},
+		{Name: Heads, Subjects: []string{"cw.head.*"}, MaxAge: l.Age, MaxMsgsPerSubject: 1, MaxBytes: 256 << 20, MaxMsgSize: MaxMessage, Storage: jetstream.FileStorage, Replicas: l.Replicas, AllowDirect: true},
+		{Name: Members, Subjects: []string{"cw.member"}, MaxMsgs: 1 << 15, MaxBytes: 1 << 30, MaxMsgSize: 64<<10 + 1024, Storage: jetstream.FileStorage, Replicas: l.Replicas, AllowDirect: true},
+	}
+}
+
+// Ensure makes the streams of messages on a server, for those who run a cluster of their own.
+func Ensure(ctx context.Context, js jetstream.JetStream, l Limits) error {
+	for _, c := range l.Configs() {
+		if _, err := js.CreateOrUpdateStream(ctx, c); err != nil {
+			return fmt.Errorf("making the stream %s on the hub: %w", c.Name, err)
+		}
+	}
+	return nil
+}
+
+// Who returns the part of a subject that names a device's key.
+func Who(v key.Verifier) string { return hex.EncodeToString(v[:16]) }
+
+func segSubject(s change.Stream) string { return "cw.seg." + s.Site.String() + "." + s.Device.String() }
+
+func fillSubject(who string, s change.Stream) string {
+	return "cw.fill." + who + "." + s.Site.String() + "." + s.Device.String()
+}
+
+func wantSubject(s change.Stream) string {
+	return "cw.want." + s.Site.String() + "." + s.Device.String()
+}
+
+// PublicKey returns a device's name as a NATS user.
+func PublicKey(v key.Verifier) (string, error) {
+	b, err := nkeys.Encode(nkeys.PrefixByteUser, v[:])
+	return string(b), err
+}
+
+// keyPair returns a device's key as a NATS user.
+func keyPair(d key.Device) (nkeys.KeyPair, error) {
+	return nkeys.FromRawSeed(nkeys.PrefixByteUser, d.Signer().Seed())
+}
+
+// Address is where a hub is found: "host:port", and behind a "#" the SHA-256 of its certificate in
+// hexadecimal digits. Without it the certificate must be one that this computer trusts.
+type Address struct {
+	Host        string // host:port
+	Fingerprint string
+}
+
+// ParseAddress reads an address; a missing port is 4222.
+func ParseAddress(text string) (Address, error) {
+	host, print, _ := strings.Cut(strings.TrimSpace(text), "#")
+	if _, _, err := net.SplitHostPort(host); err != nil {
+		host = net.JoinHostPort(strings.Trim(host, "[]"), "4222")
+	}
+	h, port, err := net.SplitHostPort(host)
+	if err != nil || h == "" || port == "" {
+		return Address{}, fmt.Errorf("%q is no address of a hub: want a host, or host:port", text)
+	}
+	if print != "" {
+		if b, err := hex.DecodeString(print); err != nil || len(b) != sha256.Size {
+			return Address{}, fmt.Errorf("the fingerprint behind # in %q should have 64 hexadecimal digits", text)
+		}
+	}
+	return Address{host, strings.ToLower(print)}, nil
+}
+
+// String is the inverse of ParseAddress.
+func (a Address) String() string {
+	if a.Fingerprint == "" {
+		return a.Host
+	}
+	return a.Host + "#" + a.Fingerprint
+}
+
+// tls returns TLS 1.3 with the pinned certificate.
+func (a Address) tls() *tls.Config {
+	c := &tls.Config{MinVersion: tls.VersionTLS13}
+	if a.Fingerprint == "" {
+		return c
+	}
+	// The certificate is the hub's own; what makes it the right one is its fingerprint.
+	c.InsecureSkipVerify = true
+	c.VerifyPeerCertificate = func(raw [][]byte, _ [][]*x509.Certificate) error {
+		if len(raw) == 0 {
+			return errors.New("the hub showed no certificate")
+		}
+		sum := sha256.Sum256(raw[0])
+		if hex.EncodeToString(sum[:]) != a.Fingerprint {
+			return errors.New("this is not the hub that was set up: its certificate is another one; ask whoever runs it before going on")
+		}
+		return nil
+	}
+	return c
+}
+
+// connect opens a connection that comes back by itself.
+func connect(a Address, d key.Device, name string, more ...nats.Option) (*nats.Conn, error) {
+	kp, err := keyPair(d)
+	if err != nil {
+		return nil, err
+	}
+	pub, err := kp.PublicKey()
+	if err != nil {
+		return nil, err
+	}
+	o := append([]nats.Option{
+		nats.Name(name), nats.Secure(a.tls()), nats.Nkey(pub, kp.Sign), nats.MaxReconnects(-1), nats.ReconnectWait(500 * time.Millisecond),
+		nats.Timeout(5 * time.Second), nats.PingInterval(20 * time.Second), nats.NoEcho(),
+		nats.ReconnectBufSize(-1), // nothing is called sent that is not
+	}, more...)
+	return nats.Connect("tls://"+a.Host, o...)
+}
