@@ -60,7 +60,7 @@ func DecodeFile(data []byte) (File, []string, error) {
 		return File{}, nil, &Invalid{"exam file", strconv.Itoa(len(data)) + " bytes", "at most 8 MiB"}
 	}
 	r := &fileReader{unknown: map[string]int{}}
-	f := r.file("", data)
+	f := r.file("", bytes.TrimPrefix(data, []byte("\ufeff"))) // some editors put a mark before the text
 	return f, r.warnings(), r.err
 }
 

@@ -3,6 +3,7 @@ package exam
 import (
 	"os"
 	"path/filepath"
+	"strconv"
 	"strings"
 	"testing"
 
@@ -232,4 +233,21 @@ func FuzzDecodeFile(f *testing.F) {
 			t.Fatalf("writing twice differs:\n%s\n%s", out, again)
 		}
 	})
+}
+
+// An exam file of each version is read for ever.
+func TestFileOfEachVersion(t *testing.T) {
+	for v := 1; v <= FileVersion; v++ {
+		data, err := os.ReadFile(filepath.Join("testdata", "versions", "exam-v"+strconv.Itoa(v)+".json"))
+		require.NoError(t, err, "a file of version %d must be kept", v)
+		f, warn, err := DecodeFile(data)
+		require.NoError(t, err)
+		require.Empty(t, warn)
+		require.Len(t, f.Findings, 6)
+		require.Len(t, f.Measures, 2)
+		require.Equal(t, "R. Okafor", f.Examiner)
+		marked, _, err := DecodeFile(append([]byte("\ufeff"), data...))
+		require.NoError(t, err)
+		require.Equal(t, f, marked)
+	}
 }

@@ -545,3 +545,9 @@ func BenchmarkHistory(b *testing.B) {
 		History(dog(disc), vs)
 	}
 }
+
+func TestRulesAreSourced(t *testing.T) {
+	for _, r := range Rules() {
+		require.True(t, len(exam.SourcesIn(r.Source)) > 0 || strings.Contains(r.Source, "from memory"), "%s: %s", r.Key, r.Source)
+	}
+}

@@ -804,3 +804,36 @@ func TestErrorsOfVertebrae(t *testing.T) {
 	require.Error(t, err)
 	require.Equal(t, Segment(0), RootAtDisc(exam.Dog, v(exam.RegionCd, 12)))
 }
+
+// Every row names a publication that is on record, or says that it is from memory or from teaching notes.
+func TestRowsAreSourced(t *testing.T) {
+	check := func(source, row string) {
+		plain := false
+		for _, w := range []string{"from memory", "teaching notes", "student notes", "no count of", "common practice"} {
+			plain = plain || strings.Contains(source, w)
+		}
+		require.True(t, plain || len(exam.SourcesIn(source)) > 0, "%s: %q", row, source)
+	}
+	for _, s := range exam.AllSpecies() {
+		for _, n := range Nerves() {
+			if info, err := InfoOf(s, n); err == nil {
+				check(info.Source, info.Name)
+			}
+		}
+		as, _ := Arcs(s)
+		for _, a := range as {
+			check(a.Source, a.Item.String())
+		}
+		if _, source, err := CordEnd(s, 10); err == nil {
+			check(source, "cord end")
+		}
+		for _, p := range []Plexus{Brachial, Lumbosacral} {
+			vs, _ := Variants(s, p)
+			for _, x := range vs {
+				check(x.Source, p.String())
+			}
+		}
+		check(ShiftSource(s), "places")
+		check(SegmentSource(s), "segments")
+	}
+}

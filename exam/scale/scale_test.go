@@ -518,3 +518,9 @@ func BenchmarkAllUnknown(b *testing.B) {
 		All(v)
 	}
 }
+
+func TestScalesAreSourced(t *testing.T) {
+	for _, s := range Scales() {
+		require.NotEmpty(t, exam.SourcesIn(s.Info().Source), "%s: %s", s, s.Info().Source)
+	}
+}

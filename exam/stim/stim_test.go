@@ -6,6 +6,7 @@ import (
 	"math/rand/v2"
 	"os"
 	"slices"
+	"strings"
 	"testing"
 	"time"
 
@@ -378,5 +379,20 @@ func BenchmarkDo(b *testing.B) {
 		if _, err := Do(ps, Weiss); err != nil {
 			b.Fatal(err)
 		}
+	}
+}
+
+func TestAimsAndQuestionsAreSourced(t *testing.T) {
+	known := func(s string) bool {
+		return len(exam.SourcesIn(s)) > 0 || strings.Contains(s, "from memory") || strings.Contains(s, "common practice")
+	}
+	for _, a := range Aims() {
+		require.True(t, known(a.Source), a.Key)
+	}
+	for _, q := range Questions() {
+		require.True(t, known(q.Source), q.Key)
+	}
+	for _, l := range Laws() {
+		require.True(t, known(l.Source()), l.String())
 	}
 }
