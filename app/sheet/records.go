@@ -632,6 +632,9 @@ func changeIn(p *place, j changeJSON) change.Change {
 	c.Stream = parsed(p, st, err)
 	t, err := strconv.ParseUint(j.Time, 10, 64)
 	c.Time = change.HLC(parsed(p, t, err))
+	if p.err == nil && !exported(c.Kind) {
+		p.fail(&exam.Invalid{Field: "kind", Value: strconv.Itoa(int(c.Kind)), Allowed: "a kind that belongs to animals: 2, 3, 4, 7 or 8"})
+	}
 	if p.err == nil {
 		p.fail(c.Validate())
 	}

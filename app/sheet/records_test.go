@@ -240,6 +240,15 @@ func TestRecordsLeaveAuditOut(t *testing.T) {
 	assert.NotContains(t, buf.String(), "looked")
 }
 
+// TestRecordsCannotChangeThePractice: a file cannot bring in changes of settings or devices.
+func TestRecordsCannotChangeThePractice(t *testing.T) {
+	for _, kind := range []string{"1", "5", "6", "9"} {
+		_, _, err := DecodeRecords(strings.NewReader(`{"format":"cordwalk-records","version":1,"animals":[],"changes":[{"id":"01936c1e-5d2a-7c41-9a40-6f1f2b7c9d10","device":"00112233445566778899aabbccddeeff","time":"1","kind":` + kind +
+			`,"patient":"00000000-0000-0000-0000-000000000000","record":"00000000-0000-0000-0000-000000000000","field":"name","value":"AQ=="}]}`))
+		assert.ErrorContains(t, err, "changes[0]: kind", kind)
+	}
+}
+
 func TestRecordsThatAreWrong(t *testing.T) {
 	var good bytes.Buffer
 	in := patients()["recovery"]

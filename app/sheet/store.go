@@ -1,6 +1,7 @@
 package sheet
 
 import (
+	"bytes"
 	"cmp"
 	"context"
 	"errors"
@@ -150,6 +151,13 @@ func AddRecords(ctx context.Context, s *storage.Store, who string, r Records, pr
 		for _, a := range r.Animals {
 			out.Visits += len(a.Visits)
 		}
+		same, err := says(ctx, s, r.Animals)
+		if err != nil {
+			return out, err
+		}
+		if !same {
+			out.Warnings = append(out.Warnings, "the animals as the file lists them are not what its history says; the history was taken")
+		}
 		return out, nil
 	}
 	if len(r.Changes) > 0 {
@@ -205,6 +213,34 @@ func AddRecords(ctx context.Context, s *storage.Store, who string, r Records, pr
 		}
 	}
 	return out, nil
+}
+
+// says reports whether the store shows the animals as listed.
+func says(ctx context.Context, s *storage.Store, list []Animal) (bool, error) {
+	now, err := ReadRecords(ctx, s, time.Time{}, false)
+	if err != nil {
+		return false, err
+	}
+	listed := make(map[exam.ID]Animal, len(list))
+	for _, a := range list {
+		listed[a.Patient.ID] = a
+	}
+	if len(now.Animals) != len(listed) {
+		return false, nil
+	}
+	for _, a := range now.Animals {
+		var x, y bytes.Buffer
+		if err := EncodeRecords(&x, Records{Animals: []Animal{a}}); err != nil {
+			return false, err
+		}
+		if err := EncodeRecords(&y, Records{Animals: []Animal{listed[a.Patient.ID]}}); err != nil {
+			return false, err
+		}
+		if !bytes.Equal(x.Bytes(), y.Bytes()) {
+			return false, nil
+		}
+	}
+	return true, nil
 }
 
 // addPractice sets the practice's data where the store has none.

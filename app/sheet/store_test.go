@@ -81,6 +81,7 @@ func TestExportImportExport(t *testing.T) {
 	added, err := AddRecords(ctx, middle, "A. Moor", records, nil)
 	require.NoError(t, err)
 	assert.True(t, added.History)
+	assert.Len(t, added.Warnings, 1, "the file's list of animals is from before the rival entry")
 	assert.Equal(t, len(records.Changes), added.Changes)
 	got, err := middle.Patient(base.Patient)
 	require.NoError(t, err)
@@ -103,8 +104,9 @@ func TestExportImportExport(t *testing.T) {
 	again, _, err := DecodeRecords(bytes.NewReader(second))
 	require.NoError(t, err)
 	last := storagetest.Open(t)
-	_, err = AddRecords(ctx, last, "A. Moor", again, nil)
+	added, err = AddRecords(ctx, last, "A. Moor", again, nil)
 	require.NoError(t, err)
+	assert.Empty(t, added.Warnings)
 	assert.Equal(t, string(second), string(exportOf(t, last, true)), "export, import, export: the same bytes")
 }
 
