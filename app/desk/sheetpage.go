@@ -27,7 +27,10 @@ type sheetPage struct {
 	win     *window
 	file    File
 	options sheet.Options
-	kind    string // "owner"
+	kind    paperKind
+	kinds   []*mark.Button
+	title   *mark.Text
+	about   *mark.Para
 	doc     sheet.Document
 	turn    int
 	refused error // why there is no sheet
@@ -40,7 +43,14 @@ type sheetPage struct {
 }
 
 func newSheetPage(w *window) *sheetPage {
-	p := &sheetPage{win: w, file: w.file, kind: "owner", notes: mark.Column(look.Unit)}
+	p := &sheetPage{win: w, file: w.file, notes: mark.Column(look.Unit), title: mark.Title("").AtLeast(80), about: mark.NewPara("").In(look.InkSoft)}
+	choose := mark.Row(0, nil)
+	for k, n := range []string{words.T("Owner"), words.T("Clinical"), words.T("Letter")} {
+		kind := paperKind(k)
+		b := mark.NewButton(n, "", func() { p.kind = kind; p.make() })
+		p.kinds = append(p.kinds, b)
+		choose.Add(b)
+	}
 	p.preview = mark.NewScroll(mark.Column(0))
 	tick := func(word string, set func(bool)) fyne.CanvasObject {
 		return mark.Tick(word, false, func(on bool) { set(on); p.make() })
@@ -55,8 +65,7 @@ func newSheetPage(w *window) *sheetPage {
 		}
 	}
 	side := mark.Column(look.Unit,
-		mark.Title(words.T("Owner's sheet")).AtLeast(80),
-		mark.NewPara(words.T("One page in everyday words: how the animal is doing, what to do at home, and when to call the veterinarian.")).In(look.InkSoft),
+		mark.Wrapped(4, choose.Objects...), p.title, p.about,
 		p.save, p.print, mark.Space(1, look.Unit),
 		tick(words.T("Large print"), func(on bool) { p.options.Large = on }),
 		tick(words.T("For a printer without colours"), func(on bool) { p.options.Grey = on }),
@@ -105,16 +114,64 @@ func (p *sheetPage) typedKey(k fyne.KeyName) bool {
 	return true
 }
 
+// paperKind is which paper is handed over.
+type paperKind uint8
+
+const (
+	ownersSheet paperKind = iota
+	clinicalSummary
+	referralLetter
+)
+
+// words are the paper's title and what it is for.
+func (k paperKind) words() (title, about string) {
+	switch k {
+	case clinicalSummary:
+		return words.T("Clinical summary"), words.T("For the veterinarian: every day's grades, how sure each change is, the likely site and the course.")
+	case referralLetter:
+		return words.T("Referral letter"), words.T("One page for the treating veterinarian: what an alert saw, since when, and how soon it must be looked at.")
+	}
+	return words.T("Owner's sheet"), words.T("One page in everyday words: how the animal is doing, what to do at home, and when to call the veterinarian.")
+}
+
+// write makes the paper.
+func (k paperKind) write(in sheet.Input) (sheet.Document, error) {
+	switch k {
+	case clinicalSummary:
+		course, err := view.ClinicalCourse(in.Patient, in.Visits)
+		if err != nil {
+			return sheet.Document{}, err
+		}
+		return sheet.Clinical(in, course)
+	case referralLetter:
+		return sheet.Letter(in)
+	}
+	in, err := sheet.WithTrends(in)
+	if err != nil {
+		return sheet.Document{}, err
+	}
+	return sheet.Owner(in)
+}
+
 // make writes the sheet and its preview off the drawing goroutine.
 func (p *sheetPage) make() {
 	p.turn++
 	turn := p.turn
 	a := p.win.app
+	for k, b := range p.kinds {
+		b.SetChosen(paperKind(k) == p.kind)
+	}
+	p.title.Words, p.about.Words = p.kind.words()
+	p.title.Refresh()
+	p.about.Refresh()
+	p.doc = sheet.Document{}
+	p.refused = nil
+	kind := p.kind
 	in := view.SheetInput(a.practice, p.file.Patient, p.file.Visits, a.now(), p.options)
 	p.save.Disable()
 	p.print.Disable()
 	a.work(func(context.Context) (func(), error) {
-		doc, err := sheet.Owner(in)
+		doc, err := kind.write(in)
 		if err != nil {
 			return nil, err
 		}
@@ -153,7 +210,7 @@ func (p *sheetPage) show(doc sheet.Document, pages []image.Image) {
 func (p *sheetPage) refuse(err error) {
 	p.refused = err
 	edit := mark.NewButton(words.T("Edit the patient's page"), "edit", func() { p.win.to(view.ScreenPatient) })
-	p.preview.SetContent(mark.Pad(look.Unit*3, look.Unit*3, mark.Column(look.Unit*2, mark.Heading(words.T("No sheet can be made yet")).AtLeast(80), mark.NewPara(err.Error()), mark.Left(edit))))
+	p.preview.SetContent(mark.Pad(look.Unit*3, look.Unit*3, mark.Column(look.Unit*2, mark.Heading(words.T("This paper cannot be made yet")).AtLeast(80), mark.NewPara(err.Error()), mark.Left(edit))))
 }
 
 func (p *sheetPage) askSave() {
@@ -161,7 +218,8 @@ func (p *sheetPage) askSave() {
 		return
 	}
 	data := p.doc.PDF
-	p.win.askFile(words.T("Save the owner's sheet"), p.doc.Name, words.T("The sheet is not protected once it has left the practice's store."), func(path string) error {
+	title, _ := p.kind.words()
+	p.win.askFile(words.T("Save as PDF: %s", title), p.doc.Name, words.T("The sheet is not protected once it has left the practice's store."), func(path string) error {
 		return os.WriteFile(path, data, 0o600)
 	})
 }

@@ -85,6 +85,9 @@ func (c *sheetCmd) Run(e *env) error {
 			return err
 		}
 		in.Options.NoChart, in.Options.Summary = c.NoChart, c.Words
+		if in, err = sheet.WithTrends(in); err != nil {
+			return err
+		}
 		d, err := sheet.Owner(in)
 		if err != nil {
 			return err
