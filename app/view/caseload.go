@@ -87,6 +87,7 @@ type Caseload struct {
 
 // NewCaseload makes the rows, sorted by what needs attention at the time now, in its zone.
 func NewCaseload(list []Summary, now time.Time) *Caseload {
+	list = Present(list)
 	c := &Caseload{all: make([]CaseRow, len(list))}
 	for i, s := range list {
 		c.all[i] = caseRow(s, now)
@@ -103,6 +104,16 @@ func NewCaseload(list []Summary, now time.Time) *Caseload {
 	}
 	c.apply()
 	return c
+}
+
+// Present leaves out the records of which everything was taken back, such as those of an
+// import that was undone: their history is kept, there is nothing to show.
+func Present(list []Summary) []Summary {
+	gone := func(s Summary) bool { return s.Name == "" && s.Species == 0 && s.Visits == 0 }
+	if !slices.ContainsFunc(list, gone) {
+		return list
+	}
+	return slices.DeleteFunc(slices.Clone(list), gone)
 }
 
 func caseRow(s Summary, now time.Time) CaseRow {

@@ -67,7 +67,7 @@ func (e *env) animals(s *storage.Store, names []string) (iter.Seq2[sheet.Animal,
 		if err != nil {
 			return nil, 0, err
 		}
-		for _, p := range list {
+		for _, p := range view.Present(list) {
 			ids = append(ids, p.ID)
 		}
 		slices.SortFunc(ids, func(a, b exam.ID) int { return bytes.Compare(a[:], b[:]) })
@@ -302,7 +302,7 @@ func (c *exportICSCmd) Run(e *env) error {
 
 // importCmd reads records in.
 type importCmd struct {
-	File     string `arg:"" help:"Records file or FHIR Bundle; - is standard input."`
+	File     string `arg:"" help:"Records file, FHIR Bundle, or a table of patients as CSV or XLSX; - is standard input."`
 	DryRun   bool   `help:"Say what would be added, and add nothing."`
 	Examiner string `help:"Who brings the records in." placeholder:"NAME"`
 }
@@ -325,6 +325,9 @@ func (c *importCmd) Run(e *env) error {
 	data, err := e.readInput(c.File, importMax)
 	if err != nil {
 		return err
+	}
+	if isTable(c.File, data) {
+		return c.table(e, data)
 	}
 	in, warnings, err := c.decode(data)
 	for _, w := range warnings {
@@ -379,6 +382,79 @@ func (c *importCmd) take(e *env, s *storage.Store, in sheet.Records) error {
 	}
 	e.say("%s", said)
 	return nil
+}
+
+// isTable reports whether a file is a table of patients: CSV or a workbook.
+func isTable(name string, data []byte) bool {
+	switch strings.ToLower(filepath.Ext(name)) {
+	case ".csv", ".tsv", ".xlsx":
+		return true
+	case ".json":
+		return false
+	}
+	return bytes.HasPrefix(data, []byte("PK\x03\x04"))
+}
+
+// table takes patients in from a table, or says what would be.
+func (c *importCmd) table(e *env, data []byte) error {
+	t, err := view.ReadTable(data)
+	if err != nil {
+		return fmt.Errorf("%s: %w", c.File, err)
+	}
+	s, err := e.openOrCreate()
+	if err != nil {
+		return err
+	}
+	return closing(s, func(s *storage.Store) error {
+		e.token(s)
+		there, err := s.Caseload(e.ctx)
+		if err != nil {
+			return err
+		}
+		plan := view.NewImportPlan(t, there)
+		if !e.c.JSON {
+			for i, f := range plan.Columns {
+				to := string(f)
+				if f == view.IgnoreColumn {
+					to = words.T("left out")
+				}
+				e.say("%s", words.T("column %q: %s", t.Headings[i], to))
+			}
+			for _, r := range plan.Rows {
+				switch {
+				case r.Problems.Any():
+					e.say("%s", words.T("line %d: %s", r.Line, complain(r.Problems)))
+				case r.Duplicate != "":
+					e.say("%s", words.T("line %d: %s", r.Line, r.Duplicate))
+				}
+			}
+		}
+		take, duplicates, problems := plan.Counts()
+		if !c.DryRun {
+			who, err := examiner(s, c.Examiner)
+			if err != nil {
+				return err
+			}
+			bar := e.progress()
+			_, err = plan.Apply(e.ctx, s, who, storage.NewID, func(done, total int) {
+				if bar != nil {
+					bar(words.T("importing"), int64(done), int64(total))
+				}
+			})
+			if err != nil {
+				return err
+			}
+		}
+		if e.c.JSON {
+			return e.printJSON(map[string]any{"patients": take, "duplicates": duplicates, "problems": problems, "dry_run": c.DryRun})
+		}
+		if c.DryRun {
+			e.say("%s", plan.Words())
+		} else {
+			e.say("%s", words.N(take, "%d animal added", "%d animals added", take))
+		}
+		return nil
+	})
 }
 
 // preview counts what would be added.
