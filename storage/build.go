@@ -86,6 +86,8 @@ type builder struct {
 	problems []Problem
 	dealt    tables
 	heap     [parts][]byte
+	patient  exam.ID // whose part is known
+	part0    int
 	held     int
 	spill    disk.File
 	spillEnd int64
@@ -97,7 +99,7 @@ type builder struct {
 type stretch struct{ at, n int64 }
 
 func (b *builder) build() (indexState, []Problem, error) {
-	b.st.Practice = b.bag.Practice
+	b.st.Practice, b.part0 = b.bag.Practice, -1
 	b.aead = b.bag.Ring.Index().Derive("spill").AEAD()
 	defer b.dropSpill()
 	if err := b.deal(); err != nil {
@@ -142,14 +144,12 @@ func (b *builder) deal() error {
 
 func (b *builder) dealBatch(batch change.Batch) error {
 	now := b.o.Now()
-	var patient exam.ID
-	part := -1
 	for i := range batch.Changes {
 		c := &batch.Changes[i]
-		if part < 0 || c.Patient != patient {
-			patient = c.Patient
-			part = int(b.seals.patientKey(patient)[0])
+		if b.part0 < 0 || c.Patient != b.patient {
+			b.patient, b.part0 = c.Patient, int(b.seals.patientKey(c.Patient)[0])
 		}
+		part := b.part0
 		h := b.heap[part]
 		before := len(h)
 		h = binary.AppendUvarint(h, uint64(c.Kind))
