@@ -22,7 +22,6 @@ type caseloadPage struct {
 	list   *caseList
 	count  *mark.Text
 	today  *mark.Button
-	all    *mark.Button
 	gone   *mark.Button
 	detail *fyne.Container
 	empty  *fyne.Container

@@ -20,7 +20,6 @@ type rail struct {
 	widget.BaseWidget
 	win   *window
 	items []*railItem
-	box   *fyne.Container
 }
 
 // screenTitles are the words of the rail.

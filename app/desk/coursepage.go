@@ -10,6 +10,7 @@ import (
 	"time"
 
 	"fyne.io/fyne/v2"
+	"fyne.io/fyne/v2/container"
 	"gonum.org/v1/plot/vg"
 	vgdraw "gonum.org/v1/plot/vg/draw"
 	"gonum.org/v1/plot/vg/vgsvg"
@@ -19,6 +20,7 @@ import (
 	"cordwalk.example/cordwalk/app/desk/mark"
 	"cordwalk.example/cordwalk/app/view"
 	"cordwalk.example/cordwalk/assets/words"
+	"cordwalk.example/cordwalk/exam/progress"
 )
 
 // coursePage answers: is it getting better, and where?
@@ -26,13 +28,19 @@ type coursePage struct {
 	win    *window
 	file   File
 	course *view.Course
-	root   fyne.CanvasObject
+	root   *fyne.Container
 	body   *mark.Scroll
 	weeks  int // 0: all
 	back   int // weeks between the right end and the last visit
 	at     int // visit shown on the body drawing
 	stop   chan struct{}
+	plain  *view.Course     // the share of normal in what was tested
+	model  *view.Course     // the serial model's; nil until it is worked out, or where there is none
+	result *progress.Result // what the model says
+	said   string           // why there is no model
+	gone   bool             // another page has come
 	strip  *chartHost
+	fn     *chartHost
 	limbs  *chartHost
 	meas   *chartHost
 	animal *mark.LimbCross
@@ -42,21 +50,63 @@ type coursePage struct {
 
 func newCoursePage(w *window) *coursePage {
 	p := &coursePage{win: w, file: w.file}
-	p.course = view.NewCourse(p.file.Patient, p.file.Visits, view.PlainScores(p.file.Patient.Species, p.file.Visits), false)
+	p.plain = view.NewCourse(p.file.Patient, p.file.Visits, view.PlainScores(p.file.Patient.Species, p.file.Visits), false)
+	p.course = p.plain
 	p.at = len(p.course.Visits) - 1
+	p.root = container.NewStack()
 	p.build()
+	p.analyse()
 	return p
+}
+
+// analyse works the course out by the serial model, off the drawing goroutine; until then the
+// plain scores are shown.
+func (p *coursePage) analyse() {
+	if len(p.file.Visits) == 0 {
+		return
+	}
+	patient, visits, now := p.file.Patient, p.file.Visits, p.win.app.now()
+	p.win.app.work(func(context.Context) (func(), error) {
+		c, r, err := view.ModelCourse(patient, visits, progress.Options{Now: now})
+		if err != nil {
+			return nil, err
+		}
+		return func() {
+			if p.gone {
+				return
+			}
+			p.result = &r
+			if len(r.Segments) > 0 {
+				p.model, p.course = c, c
+			}
+			p.build()
+		}, nil
+	}, func(err error) {
+		if !p.gone {
+			p.said = words.T("The course could not be worked out: %s", err.Error())
+			p.build()
+		}
+	})
+}
+
+// switchTo shows the model's function, or the plain share of normal in what was tested.
+func (p *coursePage) switchTo(c *view.Course) {
+	if c != nil && c != p.course {
+		p.course = c
+		p.build()
+	}
 }
 
 func (p *coursePage) content() fyne.CanvasObject { return p.root }
 func (p *coursePage) shown()                     { p.win.win.Canvas().Unfocus() }
-func (p *coursePage) left()                      { p.halt() }
+func (p *coursePage) left()                      { p.halt(); p.gone = true }
 
 func (p *coursePage) help() []view.KeyHelp {
 	return []view.KeyHelp{
 		{Keys: "+ −", Does: words.T("nearer in time, farther")},
 		{Keys: words.T("Left, Right"), Does: words.T("earlier, later")},
 		{Keys: "0", Does: words.T("the whole course")},
+		{Keys: "m", Does: words.T("the whole series, or each visit by itself")},
 		{Keys: words.T("space"), Does: words.T("play the visits on the drawing")},
 		{Keys: "[ ]", Does: words.T("the visit before, the visit after")},
 	}
@@ -64,9 +114,9 @@ func (p *coursePage) help() []view.KeyHelp {
 
 func (p *coursePage) build() {
 	if len(p.course.Visits) == 0 {
-		p.root = mark.Pad(look.Unit*3, look.Unit*3, mark.Column(look.Unit*2, mark.Title(words.T("Course")).AtLeast(80),
+		p.put(mark.Pad(look.Unit*3, look.Unit*3, mark.Column(look.Unit*2, mark.Title(words.T("Course")).AtLeast(80),
 			mark.NewPara(words.T("There is no visit yet. Each exam adds a column here.")),
-			mark.Left(mark.NewButton(words.T("Start exam"), "exam", func() { p.win.to(view.ScreenExam) }).As(mark.Main))))
+			mark.Left(mark.NewButton(words.T("Start exam"), "exam", func() { p.win.to(view.ScreenExam) }).As(mark.Main)))))
 		return
 	}
 	zoom := func(word string, weeks int) *mark.Button {
@@ -74,11 +124,19 @@ func (p *coursePage) build() {
 		p.zooms = append(p.zooms, b)
 		return b
 	}
-	bar := mark.Bar(look.Unit, mark.Title(words.T("Course")).AtLeast(80),
+	p.zooms = nil
+	var kinds []fyne.CanvasObject
+	if p.model != nil {
+		series := mark.NewButton(words.T("Whole series"), "", func() { p.switchTo(p.model) }).WithTip(words.T("Function as all visits together make it likely. Key m"))
+		each := mark.NewButton(words.T("Each visit"), "", func() { p.switchTo(p.plain) }).WithTip(words.T("The share of normal in what was tested that day. Key m"))
+		series.Chosen, each.Chosen = p.course == p.model, p.course == p.plain
+		kinds = append(kinds, series, each)
+	}
+	bar := mark.Bar(look.Unit, mark.Title(words.T("Course")).AtLeast(80), append(kinds,
 		zoom(words.T("All"), 0), zoom(words.T("12 weeks"), 12), zoom(words.T("4 weeks"), 4),
 		mark.NewButton("", "left", func() { p.pan(1) }).WithTip(words.T("Earlier")),
 		mark.NewButton("", "right", func() { p.pan(-1) }).WithTip(words.T("Later")),
-		mark.NewButton(words.T("Save picture"), "save", p.askSave))
+		mark.NewButton(words.T("Save picture"), "save", p.askSave))...)
 	p.strip = newChartHost(p.course.Strip, fyne.NewSize(400, 460*max(1, look.Scale())))
 	p.strip.hover = func(x, y, w, h vg.Length, st chart.Style) string {
 		hit, ok := p.course.Strip.Hit(w, h, x, y, st)
@@ -101,12 +159,35 @@ func (p *coursePage) build() {
 		}
 		return hoverWords(p.course.HoverLimb(hit.Series, hit.Visit))
 	}
-	lines := []fyne.CanvasObject{
-		mark.Heading(words.T("Segments: the share of normal in what was tested")).AtLeast(80),
-		mark.NewPara(words.T("Each segment has a line for its left and its right half. The shade is the mean health of the tested findings whose arc runs through it; where too little was tested it is left empty.")).In(look.InkSoft),
-		p.strip,
-		mark.Heading(words.T("Limbs: voluntary movement")).AtLeast(80), p.limbs,
+	title := words.T("Segments: the share of normal in what was tested")
+	how := words.T("Each segment has a line for its left and its right half. The shade is the mean health of the tested findings whose arc runs through it; where too little was tested it is left empty.")
+	if p.course == p.model {
+		title = words.T("Segments: function as the whole series shows it")
+		how = words.T("Each segment has a line for its left and its right half. The shade is the function that all visits together make likely; a thin line is uncertain.")
 	}
+	lines := append(p.verdict(), mark.Heading(title).AtLeast(80), mark.NewPara(how).In(look.InkSoft), p.strip)
+	if n := len(p.course.Function.Limbs); n > 0 {
+		fn := p.course.Function
+		p.fn = newChartHost(fn, fyne.NewSize(400, (float32(n)*74+50)*max(1, look.Scale())))
+		p.fn.hover = func(x, y, w, h vg.Length, st chart.Style) string {
+			hit, ok := p.course.Function.Hit(w, h, x, y, st)
+			if !ok || hit.Series < 0 || hit.Series >= len(fn.Limbs) {
+				return ""
+			}
+			s := fn.Limbs[hit.Series]
+			if hit.Visit >= 0 && hit.Visit < len(s.Values) && s.Values[hit.Visit].Known {
+				v := s.Values[hit.Visit]
+				return words.T("%s, %s\nfunction %d %% (%d to %d)", s.Label, view.Day(p.course.Visits[hit.Visit].Examined), int(v.Value+0.5), int(v.Low+0.5), int(v.High+0.5))
+			}
+			if hit.Forecast >= 0 && hit.Forecast < len(s.Forecast) {
+				f := s.Forecast[hit.Forecast]
+				return words.T("%s, expected on %s\nfunction %d %% (%d to %d)", s.Label, view.Day(f.At), int(f.Value+0.5), int(f.Low+0.5), int(f.High+0.5))
+			}
+			return ""
+		}
+		lines = append(lines, mark.Heading(words.T("Function with its band, and what is expected")).AtLeast(80), p.fn)
+	}
+	lines = append(lines, mark.Heading(words.T("Limbs: voluntary movement as graded")).AtLeast(80), p.limbs)
 	if n := len(p.course.Measure.Series); n > 0 {
 		p.meas = newChartHost(p.course.Measure, fyne.NewSize(400, (float32(n)*84+50)*max(1, look.Scale())))
 		p.meas.hover = func(x, y, w, h vg.Length, st chart.Style) string {
@@ -130,15 +211,74 @@ func (p *coursePage) build() {
 		mark.Row(look.Unit, []float32{1, 0, 1}, mark.NewButton("", "left", func() { p.step(-1) }), play, mark.NewButton("", "right", func() { p.step(1) })),
 		mark.Space(1, look.Unit))
 	for _, g := range p.file.Patient.Goals {
-		side.Add(mark.NewPara(words.T("Goal: %s", g.Words)))
+		line := words.T("Goal: %s", g.Words)
+		if p.result != nil {
+			for _, c := range p.result.Goals {
+				if c.Goal != g.ID.String() && c.Words != g.Words {
+					continue
+				}
+				if c.Probability != nil {
+					line = words.T("%s. Reached in time: %d %%, %s", line, int(*c.Probability*100+0.5), chanceWord(*c.Probability))
+				} else if c.Why != "" {
+					line += ". " + words.Of(c.Why)
+				}
+				break
+			}
+		}
+		side.Add(mark.NewPara(line))
 	}
 	for _, m := range p.file.Missing {
 		side.Add(cautionLine(words.Of(m)))
 	}
 	split := mark.RowTop(look.Unit*2, []float32{1, 0}, p.body, mark.Sized(196, 10, mark.NewScroll(side)))
-	p.root = mark.Pad(look.Unit*1.5, look.Unit*2, mark.ColumnGrow(look.Unit, 1, bar, split))
+	p.put(mark.Pad(look.Unit*1.5, look.Unit*2, mark.ColumnGrow(look.Unit, 1, bar, split)))
 	p.span()
 	p.step(0)
+}
+
+// put shows what was built.
+func (p *coursePage) put(o fyne.CanvasObject) {
+	p.root.Objects = []fyne.CanvasObject{o}
+	p.root.Refresh()
+}
+
+// verdict is what the course says in words: the sentence with its probability, and what must be
+// known to read it.
+func (p *coursePage) verdict() []fyne.CanvasObject {
+	var out []fyne.CanvasObject
+	switch r := p.result; {
+	case r == nil && p.said == "":
+		out = append(out, mark.NewPara(words.T("Working out the course…")).In(look.InkSoft))
+	case r == nil:
+		out = append(out, cautionLine(p.said))
+	default:
+		if s := view.Sentence(*r); s != "" {
+			out = append(out, mark.NewPara(s).As(look.Head).Strong())
+		} else {
+			out = append(out, mark.NewPara(words.T("One visit says where the animal stands; the next one says where it goes.")))
+		}
+		if r.Plateau != nil && r.Plateau.Named {
+			out = append(out, mark.NewPara(words.Of(r.Plateau.Words)))
+		}
+		if r.Relapse != nil && r.Relapse.Probability > 0.5 {
+			out = append(out, cautionLine(words.Of(r.Relapse.Words)))
+		}
+		for _, n := range r.Notes {
+			out = append(out, mark.NewPara(words.Of(n)).In(look.InkSoft).As(look.Small))
+		}
+	}
+	return out
+}
+
+// chanceWord says a probability in a word.
+func chanceWord(p float64) string {
+	switch {
+	case p >= 0.8:
+		return words.T("likely")
+	case p <= 0.2:
+		return words.T("unlikely")
+	}
+	return words.T("not clear")
 }
 
 func hoverWords(h view.Hover) string {
@@ -168,6 +308,12 @@ func (p *coursePage) typedRune(r rune) bool {
 		p.span()
 	case ' ':
 		p.play()
+	case 'm':
+		if p.course == p.model {
+			p.switchTo(p.plain)
+		} else {
+			p.switchTo(p.model)
+		}
 	case '[':
 		p.step(-1)
 	case ']':
@@ -223,6 +369,13 @@ func (p *coursePage) span() {
 	strip.Span, limbs.Span, meas.Span = s, s, s
 	p.strip.set(strip)
 	p.limbs.set(limbs)
+	if p.fn != nil && len(p.course.Function.Limbs) > 0 {
+		fn := p.course.Function
+		if p.weeks > 0 {
+			fn.Span = s
+		}
+		p.fn.set(fn)
+	}
 	if p.meas != nil {
 		p.meas.set(meas)
 	}

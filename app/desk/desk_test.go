@@ -516,7 +516,7 @@ func TestTabGoesRoundOnEveryScreen(t *testing.T) {
 		s.show(sc, s.id("Bramble"))
 		seen := map[fyne.Focusable]bool{}
 		for range 200 {
-			test.FocusNext(w.win.Canvas())
+			w.win.Canvas().FocusNext()
 			f := w.win.Canvas().Focused()
 			if f == nil {
 				continue

@@ -160,7 +160,7 @@ func (s *stage) key(names ...fyne.KeyName) {
 		e := &fyne.KeyEvent{Name: n}
 		if f := c.Focused(); f != nil {
 			if tab, ok := f.(fyne.Tabbable); n == fyne.KeyTab && !(ok && tab.AcceptsTab()) {
-				test.FocusNext(c)
+				c.FocusNext()
 			} else {
 				f.TypedKey(e)
 			}

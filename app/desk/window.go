@@ -26,7 +26,6 @@ type page interface {
 type (
 	runeTaker  interface{ typedRune(r rune) bool }
 	keyTaker   interface{ typedKey(name fyne.KeyName) bool }
-	reloader   interface{ reload(f File) }
 	helper     interface{ help() []view.KeyHelp }
 	undoer     interface{ undo(redo bool) }
 	closer     interface{ close() }
