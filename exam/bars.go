@@ -68,7 +68,8 @@ var barRules = [precautionCount]barRule{
 		measures: outdoors, positions: []Position{LyingRight, LyingLeft, Held}},
 	Bites: {words: "bites", why: "hands stay away from the mouth",
 		items: slices.Concat(mouth, []Item{Corneal, FacialSensation}), positions: []Position{Held}},
-	Seizures: {words: "seizures", why: "flicker, noise and excitement may bring on a seizure"},
+	Seizures: {words: "seizures", why: "it may fall from hands or table",
+		items: []Item{TactilePlacing, ExtensorThrust}, positions: []Position{Held}},
 	RestUntil: {words: "strict rest", why: "rest was ordered",
 		items: slices.Concat(carrying), measures: outdoors},
 	OpenWound: {words: "open wound", why: "the wound is not pressed on"},
@@ -165,7 +166,10 @@ func (b BarList) WhyMeasure(m Measure, at Site) string {
 func (b BarList) WhyPosition(pos Position) string {
 	for _, p := range b.on {
 		code, _ := ParsePrecaution(p.Code)
-		if slices.Contains(barRules[code].positions, pos) {
+		site, _ := ParseSite(p.Site)
+		under := code == Fracture && site.IsLimb() && // a broken limb is not lain upon
+			(pos == LyingLeft && site.Side() == Left || pos == LyingRight && site.Side() == Right)
+		if under || slices.Contains(barRules[code].positions, pos) {
 			return p.Words() + ": " + barRules[code].why
 		}
 	}

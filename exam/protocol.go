@@ -450,6 +450,9 @@ func Walk(s Species, protocol Protocol, p Patient, last *Visit, today Visit) []S
 			st.Position = usual
 			if (usual == LyingRight || usual == LyingLeft) && k.Site.Side() == Right {
 				st.Position = LyingLeft
+				if bars.WhyPosition(LyingLeft) != "" {
+					st.Position = Sternal
+				}
 			}
 		default:
 			st.Position = Sternal

@@ -268,7 +268,7 @@ func TestPrecautionsBar(t *testing.T) {
 		RestUntil:        {[]Key{{Item: Hopping, Site: PelvicLeft}}, nil},
 		Pregnant:         {[]Key{{Item: BladderFill, Site: Midline}}, nil},
 		OpenWound:        {nil, nil},
-		Seizures:         {nil, nil},
+		Seizures:         {[]Key{{Item: TactilePlacing, Site: PelvicLeft}}, []Position{Held}},
 		Pacemaker:        {nil, nil},
 		Tumour:           {nil, nil},
 	}
@@ -335,6 +335,25 @@ func TestPrecautionsAtASite(t *testing.T) {
 	require.Empty(t, b.WhyMeasure(RangeOfMotion, Left))
 	require.NotEmpty(t, b.WhyMeasure(WalkDistance, NoSite))
 	require.Empty(t, b.WhyMeasure(Temperature, NoSite))
+}
+
+// A broken limb is not lain upon: its other side is tested on the chest.
+func TestFractureBarsItsSide(t *testing.T) {
+	for _, tt := range []struct {
+		site        string
+		left, right Position
+	}{{"pelvic-left", LyingRight, Sternal}, {"thoracic-right", Sternal, Sternal}, {"lumbar", LyingRight, LyingLeft}} {
+		p := Patient{Species: Dog, Precautions: []PrecautionOn{{Code: "fracture", Site: tt.site}}}
+		for _, st := range Walk(Dog, protocolNamed(t, FullSpinal), p, nil, Visit{Examined: noon}) {
+			if st.Key.Item == Patellar {
+				want := tt.left
+				if st.Key.Site.Side() == Right {
+					want = tt.right
+				}
+				require.Equal(t, want, st.Position, "%s, %s", tt.site, st.Key)
+			}
+		}
+	}
 }
 
 func TestPositionsAndStages(t *testing.T) {

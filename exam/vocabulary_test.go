@@ -338,3 +338,32 @@ func TestGradeOfACellWithDigits(t *testing.T) {
 	_, ok = v.Find(Key{Item: Hopping, Site: PelvicRight})
 	require.False(t, ok)
 }
+
+// The measures and units as designed; the steps of the functional battery and the scores entered by hand
+// have the unit 1.
+func TestMeasuresAreTheDesignedOnes(t *testing.T) {
+	units := map[string]string{"weight": "kg", "temperature": "°C", "respiratory-rate": "/min", "heart-rate": "/min", "body-condition": "1",
+		"hours-since-urination": "h", "residual-volume": "mL/kg", "thigh-girth": "cm", "brachium-girth": "cm", "antebrachium-girth": "cm", "crus-girth": "cm",
+		"range-of-motion": "°", "weight-bearing": "%", "stand-time": "s", "walk-distance": "m", "walk-time": "s", "steps-scored": "1",
+		"steps-weight-bearing": "1", "steps-with-mistake": "1", "joints-moving": "1", "clonus": "s", "spasm": "s", "pain-at-rest": "1", "pain-on-movement": "1"}
+	ranges := map[string][2]float64{"body-condition": {1, 9}, "joints-moving": {0, 3}, "pain-at-rest": {0, 10}, "pain-on-movement": {0, 10}}
+	tasks := 0
+	for _, m := range Measures() {
+		in := m.Info()
+		switch {
+		case strings.HasPrefix(in.Name, "task-"):
+			tasks++
+			require.Equal(t, [2]float64{0, 4}, [2]float64{in.Min, in.Max})
+		case strings.HasPrefix(in.Name, "scale-"):
+			require.Equal(t, "1", in.Unit)
+		default:
+			require.Equal(t, units[in.Name], in.Unit, in.Name)
+			delete(units, in.Name)
+			if want, ok := ranges[in.Name]; ok {
+				require.Equal(t, want, [2]float64{in.Min, in.Max})
+			}
+		}
+	}
+	require.Empty(t, units)
+	require.Equal(t, 11, tasks, "FINFUN2018 has eleven tasks")
+}
