@@ -21,10 +21,13 @@ import (
 // soak reports whether long tests run in full.
 func soak() bool { return os.Getenv("CORDWALK_SOAK") == "1" }
 
-// times returns n in a soak run and a twentieth of it otherwise.
+// times returns n in a soak run, a twentieth of it otherwise, and less still with -short.
 func times(n int) int {
-	if soak() {
+	switch {
+	case soak():
 		return n
+	case testing.Short():
+		return max(1, n/200)
 	}
 	return max(1, n/20)
 }
@@ -172,10 +175,7 @@ func testPowerCut(t *testing.T, exfat bool) {
 	sc := &script{dir: filepath.Join(root, "practice")}
 	sc.run(t, d, 24, rng)
 	states, again := 0, 0
-	each := 6
-	if soak() {
-		each = 200
-	}
+	each := max(2, times(120))
 	err := d.Crashes(0, each, rng, func(c disktest.Crash) error {
 		states++
 		dir := filepath.Join(t.TempDir(), "x")

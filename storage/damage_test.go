@@ -50,6 +50,20 @@ func sums(t testing.TB, dir string) map[string][32]byte {
 	return m
 }
 
+// contents reads all files of a store.
+func contents(t testing.TB, dir string) map[string][]byte {
+	t.Helper()
+	m := map[string][]byte{}
+	require.NoError(t, filepath.WalkDir(dir, func(p string, e fs.DirEntry, err error) error {
+		if err != nil || e.IsDir() {
+			return err
+		}
+		m[filepath.Base(p)], err = os.ReadFile(p)
+		return err
+	}))
+	return m
+}
+
 // used returns the length of a file without the zeros at its end.
 func used(b []byte) int {
 	n := len(b)
