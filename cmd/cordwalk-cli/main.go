@@ -77,6 +77,8 @@ type commands struct {
 	Backup    backupCmd    `cmd:"" help:"Make a backup that is read back before it counts."`
 	Restore   restoreCmd   `cmd:"" help:"Make a practice out of a backup."`
 	Sync      syncCmd      `cmd:"" help:"Exchange with the practice's other devices by a folder."`
+	Hub       hubCmd       `cmd:"" help:"Run the hub of a clinic: a mailbox that sees sealed entries only."`
+	Stim      stimCmd      `cmd:"" help:"Fit a strength–duration test of a muscle."`
 	Devices   devicesCmd   `cmd:"" help:"List the practice's devices."`
 	Invite    inviteCmd    `cmd:"" help:"Invite a device into the practice."`
 	Join      joinCmd      `cmd:"" help:"Join a practice with a new folder on this device."`

@@ -90,7 +90,9 @@ func readSheet(name string) (*age.X25519Identity, error) {
 
 // syncCmd exchanges with a folder.
 type syncCmd struct {
-	Folder string `arg:"" help:"A stick, a network share or a folder that some other program synchronises."`
+	Folder string `arg:"" optional:"" help:"A stick, a network share or a folder that some other program synchronises."`
+	Hub    string `help:"Address of a hub instead, as the hub prints it." placeholder:"HOST:PORT#CERTIFICATE"`
+	Stay   bool   `help:"With --hub: go on exchanging until stopped."`
 	sheetFlag
 }
 
@@ -105,7 +107,17 @@ type syncJSON struct {
 }
 
 func (c *syncCmd) Run(e *env) error {
+	if (c.Folder == "") == (c.Hub == "") {
+		return usage("%s", words.T("name a folder, or a hub with --hub ADDRESS"))
+	}
 	return e.shared(c.sheetFlag, func(sh *share.Share) error {
+		if c.Hub != "" {
+			out, err := e.byHub(sh, c.Hub, c.Stay)
+			if err != nil {
+				return err
+			}
+			return e.synced(out, out.Forks > 0)
+		}
 		r, err := sh.Folder(e.ctx, c.Folder, e.progress())
 		if err != nil {
 			return err
@@ -127,24 +139,32 @@ func (c *syncCmd) Run(e *env) error {
 		if r.Blocked != nil {
 			out.Blocked = r.Blocked.Error()
 		}
-		if e.c.JSON {
-			if err := e.printJSON(out); err != nil {
-				return err
-			}
-		} else {
-			e.say("%s", words.T("%d taken in, %d left in the folder", out.Received, out.Sent))
-			for _, p := range out.Problems {
-				e.say("%s", p)
-			}
-			if out.Blocked != "" {
-				e.say("%s", words.T("Nothing could be left there: %s", out.Blocked))
-			}
-		}
-		if r.Blocked != nil || len(r.Forks) > 0 {
-			return errSaidNo
-		}
-		return nil
+		return e.synced(out, r.Blocked != nil || len(r.Forks) > 0)
 	})
+}
+
+// synced prints what an exchange did.
+func (e *env) synced(out syncJSON, wrong bool) error {
+	if e.c.JSON {
+		if err := e.printJSON(out); err != nil {
+			return err
+		}
+	} else {
+		e.say("%s", words.T("%d taken in, %d handed over", out.Received, out.Sent))
+		for _, p := range out.Problems {
+			e.say("%s", p)
+		}
+		if out.Forks > 0 {
+			e.say("%s", words.N(out.Forks, "%d device was copied and both copies were used; both branches are kept", "%d devices were copied and both copies were used; both branches are kept", out.Forks))
+		}
+		if out.Blocked != "" {
+			e.say("%s", words.T("Nothing could be left there: %s", out.Blocked))
+		}
+	}
+	if wrong {
+		return errSaidNo
+	}
+	return nil
 }
 
 // devicesCmd lists the practice's devices.
