@@ -159,6 +159,9 @@ func TestEachFlagFiresAndNearlyFires(t *testing.T) {
 		{"relapse", "worse without a gain is no relapse", dog(), []exam.Visit{on(0, f(exam.PawPlacement, 0)), on(7, f(exam.PawPlacement, 1)), on(14, f(exam.PawPlacement, 1)), on(21, f(exam.PawPlacement, 0))}, Today,
 			[]exam.Visit{on(0, f(exam.PawPlacement, 2)), on(7, f(exam.PawPlacement, 1)), on(14, f(exam.PawPlacement, 0))}, nil},
 
+		{"relapse", "a slow slide", dog(), []exam.Visit{on(0, f(exam.VoluntaryMotor, 2, pl, pr)), on(7, f(exam.VoluntaryMotor, 4, pl, pr)), on(14, f(exam.VoluntaryMotor, 4, pl), f(exam.VoluntaryMotor, 3, pr)), on(21, f(exam.VoluntaryMotor, 3, pl, pr))}, Today,
+			[]exam.Visit{on(0, f(exam.VoluntaryMotor, 1, pl, pr)), on(7, f(exam.VoluntaryMotor, 4, pl, pr)), on(14, f(exam.VoluntaryMotor, 2, pl, pr)), on(21, f(exam.VoluntaryMotor, 3, pl, pr))}, nil},
+
 		{"urine-held", "voiding falls", dog(), []exam.Visit{on(0, f(exam.VoluntaryUrination, 2)), on(1, f(exam.VoluntaryUrination, 1))}, Today,
 			[]exam.Visit{on(0, f(exam.VoluntaryUrination, 0)), on(1, f(exam.VoluntaryUrination, 0))}, nil},
 		{"urine-held", "large and hard", dog(), []exam.Visit{on(0, f(exam.BladderFill, 1), f(exam.BladderOutflow, 1))}, Today,

@@ -385,8 +385,10 @@ func (a gait) net(b gait) (net, worse int) {
 }
 
 // relapse needs a gain and a loss of at least two cells net, so that one wavering cell is no relapse.
+// An animal that has relapsed and is not worse than at its last visit has raised its flag before.
 func relapse(c *scene) []hit {
 	today := gaitOf(c.today)
+	latest := c.latest()
 	gaits := make([]gait, len(c.earlier))
 	for k, v := range c.earlier {
 		gaits[k] = gaitOf(v)
@@ -395,6 +397,9 @@ func relapse(c *scene) []hit {
 		net, worse := gaits[peak].net(today)
 		if net > -2 {
 			continue
+		}
+		if since, _ := gaits[latest].net(today); since >= 0 {
+			return nil
 		}
 		for first := peak - 1; first >= 0; first-- {
 			if gain, _ := gaits[first].net(gaits[peak]); gain < 2 {
