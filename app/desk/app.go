@@ -38,6 +38,8 @@ type App struct {
 	lastPatient exam.ID
 	caseload    *view.Caseload // the newest, shown at once while a newer one is read
 
+	drafts map[exam.ID]*view.PatientForm // pages of animals that were left with something typed on them
+
 	onUI   view.OnUI // runs on the drawing goroutine; tests pass their own
 	ctx    context.Context
 	cancel context.CancelFunc
@@ -66,7 +68,7 @@ func New(f fyne.App, o Opener, settings view.Settings, settingsPath string, now 
 		now = time.Now
 	}
 	ctx, cancel := context.WithCancel(context.Background())
-	a := &App{fyne: f, opener: o, settings: settings, path: settingsPath, now: now, onUI: fyne.Do, ctx: ctx, cancel: cancel}
+	a := &App{fyne: f, opener: o, settings: settings, path: settingsPath, now: now, onUI: fyne.Do, drafts: map[exam.ID]*view.PatientForm{}, ctx: ctx, cancel: cancel}
 	f.SetIcon(fyne.NewStaticResource("cordwalk.png", icons.App))
 	a.theme()
 	return a

@@ -6,6 +6,7 @@ import (
 	"image/png"
 	"os"
 	"path/filepath"
+	"strconv"
 	"strings"
 	"time"
 
@@ -46,6 +47,7 @@ type coursePage struct {
 	animal *mark.LimbCross
 	day    *mark.Text
 	zooms  []*mark.Button
+	rows   [2]int // the segments shown: the first and the one behind the last; zero: all
 }
 
 func newCoursePage(w *window) *coursePage {
@@ -139,14 +141,18 @@ func (p *coursePage) build() {
 		mark.NewButton(words.T("Save picture"), "save", p.askSave))...)
 	p.strip = newChartHost(p.course.Strip, fyne.NewSize(400, 460*max(1, look.Scale())))
 	p.strip.hover = func(x, y, w, h vg.Length, st chart.Style) string {
-		hit, ok := p.course.Strip.Hit(w, h, x, y, st)
+		strip, ok := p.strip.chart.(chart.Strip)
+		if !ok {
+			return ""
+		}
+		hit, ok := strip.Hit(w, h, x, y, st)
 		if !ok {
 			return ""
 		}
 		if hit.Event >= 0 {
 			return hoverWords(p.course.HoverEvent(hit.Event))
 		}
-		return hoverWords(p.course.HoverSegment(hit.Row, hit.Visit, hit.Side))
+		return hoverWords(p.course.HoverSegment(hit.Row+p.rows[0], hit.Visit, hit.Side))
 	}
 	p.limbs = newChartHost(p.course.Limbs, fyne.NewSize(400, 330*max(1, look.Scale())))
 	p.limbs.hover = func(x, y, w, h vg.Length, st chart.Style) string {
@@ -165,7 +171,7 @@ func (p *coursePage) build() {
 		title = words.T("Segments: function as the whole series shows it")
 		how = words.T("Each segment has a line for its left and its right half. The shade is the function that all visits together make likely; a thin line is uncertain.")
 	}
-	lines := append(p.verdict(), mark.Heading(title).AtLeast(80), mark.NewPara(how).In(look.InkSoft), p.strip)
+	lines := append(p.verdict(), mark.Bar(look.Unit, mark.Heading(title).AtLeast(80), mark.Sized(200, look.Target, p.regions())), mark.NewPara(how).In(look.InkSoft), p.strip)
 	if n := len(p.course.Function.Limbs); n > 0 {
 		fn := p.course.Function
 		p.fn = newChartHost(fn, fyne.NewSize(400, (float32(n)*74+50)*max(1, look.Scale())))
@@ -218,7 +224,7 @@ func (p *coursePage) build() {
 					continue
 				}
 				if c.Probability != nil {
-					line = words.T("%s. Reached in time: %d %%, %s", line, int(*c.Probability*100+0.5), chanceWord(*c.Probability))
+					line = words.T("%s. Reached in time: %s, %s", line, percent(*c.Probability), chanceWord(*c.Probability))
 				} else if c.Why != "" {
 					line += ". " + words.Of(c.Why)
 				}
@@ -234,6 +240,33 @@ func (p *coursePage) build() {
 	p.put(mark.Pad(look.Unit*1.5, look.Unit*2, mark.ColumnGrow(look.Unit, 1, bar, split)))
 	p.span()
 	p.step(0)
+}
+
+// regions chooses which stretch of the cord the strip shows.
+func (p *coursePage) regions() fyne.CanvasObject {
+	at := func(name string) int {
+		for i, r := range p.course.Strip.Rows {
+			if r.Label == name {
+				return i
+			}
+		}
+		return -1
+	}
+	shown := []string{words.T("All segments")}
+	values := []string{"0/0"}
+	now := strconv.Itoa(p.rows[0]) + "/" + strconv.Itoa(p.rows[1])
+	for _, r := range [][3]string{{words.T("Neck, C1 to C5"), "C1", "C5"}, {words.T("Thoracic limbs, C6 to T2"), "C6", "T2"}, {words.T("Trunk, T3 to L3"), "T3", "L3"},
+		{words.T("Pelvic limbs, L4 to S1"), "L4", "S1"}, {words.T("Bladder and tail, S1 to Cd5"), "S1", "Cd5"}} {
+		if a, b := at(r[1]), at(r[2]); a >= 0 && b >= a {
+			shown, values = append(shown, r[0]), append(values, strconv.Itoa(a)+"/"+strconv.Itoa(b+1))
+		}
+	}
+	return mark.Choice(shown, values, now, func(s string) {
+		a, b, _ := strings.Cut(s, "/")
+		p.rows[0], _ = strconv.Atoi(a)
+		p.rows[1], _ = strconv.Atoi(b)
+		p.span()
+	})
 }
 
 // put shows what was built.
@@ -258,16 +291,37 @@ func (p *coursePage) verdict() []fyne.CanvasObject {
 			out = append(out, mark.NewPara(words.T("One visit says where the animal stands; the next one says where it goes.")))
 		}
 		if r.Plateau != nil && r.Plateau.Named {
-			out = append(out, mark.NewPara(words.Of(r.Plateau.Words)))
+			out = append(out, mark.NewPara(sentence(words.Of(r.Plateau.Words))))
 		}
 		if r.Relapse != nil && r.Relapse.Probability > 0.5 {
-			out = append(out, cautionLine(words.Of(r.Relapse.Words)))
+			out = append(out, cautionLine(sentence(words.Of(r.Relapse.Words))))
 		}
 		for _, n := range r.Notes {
 			out = append(out, mark.NewPara(words.Of(n)).In(look.InkSoft).As(look.Small))
 		}
 	}
 	return out
+}
+
+// percent writes a probability; near its ends it says so and not 0 or 100.
+func percent(p float64) string {
+	switch n := int(p*100 + 0.5); {
+	case n >= 100:
+		return words.T("more than %d %%", 99)
+	case n <= 0:
+		return words.T("less than %d %%", 1)
+	default:
+		return words.T("%d %%", n)
+	}
+}
+
+// sentence begins with a capital letter and ends with a full stop.
+func sentence(s string) string {
+	r := []rune(strings.TrimSuffix(s, "."))
+	if len(r) == 0 {
+		return ""
+	}
+	return strings.ToUpper(string(r[0])) + string(r[1:]) + "."
 }
 
 // chanceWord says a probability in a word.
@@ -367,6 +421,9 @@ func (p *coursePage) span() {
 	}
 	strip, limbs, meas := p.course.Strip, p.course.Limbs, p.course.Measure
 	strip.Span, limbs.Span, meas.Span = s, s, s
+	if p.rows[1] > 0 && p.rows[1] <= len(strip.Rows) {
+		strip.Rows = strip.Rows[p.rows[0]:p.rows[1]]
+	}
 	p.strip.set(strip)
 	p.limbs.set(limbs)
 	if p.fn != nil && len(p.course.Function.Limbs) > 0 {

@@ -119,7 +119,7 @@ func (p *examPage) build(v exam.Visit) {
 	posSel := mark.Choice([]string{words.T("Lying on its side"), words.T("Lying on its chest"), words.T("Held in the arms")},
 		[]string{"lying", "sternal", "held"}, in.Posture.String(), p.setPosture)
 	p.bar = mark.Row(4, []float32{1}, mark.Wrapped(0, tabs...), one)
-	second := mark.Row(look.Unit, []float32{1, 1}, proSel, posSel)
+	second := mark.Row(look.Unit, []float32{1, 1, 1}, p.visitPick(v), proSel, posSel)
 	p.where = mark.Line("")
 	p.walk = newWalkBar()
 	p.undoB = mark.NewButton(words.T("Undo"), "undo", func() { p.undo(false) }).As(mark.Quiet).WithTip("u, Ctrl+Z")
@@ -131,6 +131,36 @@ func (p *examPage) build(v exam.Visit) {
 	if p.saved.ID.IsZero() {
 		sheet.FillBarred()
 	}
+}
+
+// visitPick names the visit shown and offers the earlier ones, to be read or amended.
+func (p *examPage) visitPick(v exam.Visit) fyne.CanvasObject {
+	shown, ids := []string{}, []string{}
+	known := false
+	for i := len(p.file.Visits) - 1; i >= 0; i-- {
+		x := p.file.Visits[i]
+		word := view.Day(x.Examined)
+		if x.State == exam.Open {
+			word = words.T("%s, not closed", word)
+		}
+		shown, ids = append(shown, word), append(ids, x.ID.String())
+		known = known || x.ID == v.ID
+	}
+	if !known {
+		shown, ids = append([]string{words.T("Today, new")}, shown...), append([]string{v.ID.String()}, ids...)
+	} else if _, open := p.file.open(); !open {
+		shown, ids = append([]string{words.T("A new visit")}, shown...), append([]string{""}, ids...)
+	}
+	return mark.Choice(shown, ids, v.ID.String(), func(s string) {
+		if s == v.ID.String() {
+			return
+		}
+		id, err := exam.ParseID(s)
+		if err != nil {
+			id = exam.ID{}
+		}
+		p.win.goTo(view.Route{Screen: view.ScreenExam, Patient: p.file.Patient.ID, Visit: id})
+	})
 }
 
 // examLayout gives the grid 62 % and the map 38 % of the width.

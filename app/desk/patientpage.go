@@ -2,6 +2,7 @@ package desk
 
 import (
 	"context"
+	"reflect"
 	"strconv"
 	"strings"
 
@@ -16,27 +17,44 @@ import (
 
 // patientPage is the page of one animal: a new one, or one to be edited.
 type patientPage struct {
-	win    *window
-	before exam.Patient
-	form   *view.PatientForm
-	fields map[string]*mark.Labelled
-	first  *mark.Field
-	lists  *fyne.Container
-	body   *mark.Scroll
-	miss   *fyne.Container
-	root   fyne.CanvasObject
-	done   bool
+	win      *window
+	before   exam.Patient
+	form     *view.PatientForm
+	fields   map[string]*mark.Labelled
+	first    *mark.Field
+	lists    *fyne.Container
+	body     *mark.Scroll
+	miss     *fyne.Container
+	root     fyne.CanvasObject
+	done     bool
+	restored bool // the page was left with something typed on it, which is here again
 }
 
 func newPatientPage(w *window, before exam.Patient) *patientPage {
 	p := &patientPage{win: w, before: before, form: view.NewPatientForm(before), fields: map[string]*mark.Labelled{}}
+	if d := w.app.drafts[before.ID]; d != nil {
+		p.form, p.restored = d, true
+	}
 	p.build()
 	return p
 }
 
 func (p *patientPage) content() fyne.CanvasObject { return p.root }
-func (p *patientPage) shown()                     { p.win.win.Canvas().Focus(p.first) }
-func (p *patientPage) left()                      {}
+
+func (p *patientPage) shown() {
+	p.win.win.Canvas().Focus(p.first)
+	if p.restored {
+		p.win.foot.say(words.T("What was typed here before is here again; it is not kept yet."))
+	}
+}
+
+// left remembers what was typed and not kept, so that no other screen costs it.
+func (p *patientPage) left() {
+	delete(p.win.app.drafts, p.before.ID)
+	if !p.done && !reflect.DeepEqual(p.form, view.NewPatientForm(p.before)) {
+		p.win.app.drafts[p.before.ID] = p.form
+	}
+}
 
 func (p *patientPage) help() []view.KeyHelp {
 	return []view.KeyHelp{
@@ -55,6 +73,7 @@ func (p *patientPage) typedKey(k fyne.KeyName) bool {
 }
 
 func (p *patientPage) back() {
+	p.done = true
 	if p.before.ID.IsZero() {
 		p.win.goTo(view.Route{Screen: view.ScreenCaseload})
 		return
