@@ -500,10 +500,7 @@ func (x *exchange) take(ctx context.Context) error {
 			continue
 		}
 		s := r.Stream()
-		for _, h := range held {
-			if h.Stream != s || !h.Own {
-				continue
-			}
+		if s.Device == x.Incarnation() {
 			// Somebody wrote in this device's name: its store was copied, or put back to an
 			// earlier day. What lies here is kept; this device goes on under a new name.
 			if err := x.Journal.Renew(ctx); err != nil {
@@ -519,7 +516,6 @@ func (x *exchange) take(ctx context.Context) error {
 			if held, err = x.held(ctx); err != nil {
 				return err
 			}
-			break
 		}
 		want, ok := x.Members.Signer(s.Device)
 		if !ok {
