@@ -34,10 +34,16 @@ type bodyPlan struct {
 	box    vg.Rectangle
 }
 
-func (b Body) plan(r vg.Rectangle) bodyPlan {
+func (b Body) plan(r vg.Rectangle, st Style) bodyPlan {
 	fig := drawing.FromAbove(b.Species)
 	w, h := r.Max.X-r.Min.X, r.Max.Y-r.Min.Y
-	scale := min(h/vg.Length(fig.Height), w*0.5/vg.Length(fig.Width))
+	// The words beside the animal come first; it keeps a quarter of the width at least.
+	size, words := st.size(), vg.Length(0)
+	for _, l := range b.Limbs {
+		words = max(words, Width(l.Name, size, false), Width(l.Word, size*1.1, true)+size*1.43)
+	}
+	room := max(w-2*(words+size*0.7), w*0.25)
+	scale := min(h/vg.Length(fig.Height), w*0.5/vg.Length(fig.Width), room/vg.Length(fig.Width))
 	fw, fh := scale*vg.Length(fig.Width), scale*vg.Length(fig.Height)
 	o := vg.Point{X: (r.Min.X + r.Max.X - fw) / 2, Y: (r.Min.Y+r.Max.Y)/2 + fh/2}
 	return bodyPlan{fig, scale, o, r}
@@ -66,7 +72,7 @@ func (p bodyPlan) path(d drawing.Path) vg.Path {
 func (b Body) Draw(c draw.Canvas, st Style) {
 	p := newPen(c, st)
 	pal, size := st.Palette, st.size()
-	pl := b.plan(c.Rectangle)
+	pl := b.plan(c.Rectangle, st)
 	limbs := exam.Limbs()
 	marks := map[string]BodyLimb{}
 	for i, l := range limbs {
@@ -163,8 +169,8 @@ func (b Body) label(p pen, pl bodyPlan, site exam.Site, limb BodyLimb, size vg.L
 
 // Hit returns the index of the limb at a point of a body drawn w by h points large, x to
 // the right and y down, and false where there is none.
-func (b Body) Hit(w, h, x, y vg.Length) (int, bool) {
-	pl := b.plan(area(w, h))
+func (b Body) Hit(w, h, x, y vg.Length, st Style) (int, bool) {
+	pl := b.plan(area(w, h), st)
 	if pl.scale <= 0 {
 		return 0, false
 	}

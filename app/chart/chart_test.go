@@ -405,7 +405,7 @@ func TestCordHitAndNumbers(t *testing.T) {
 
 func TestBodyHit(t *testing.T) {
 	b := testBody(exam.Dog)
-	pl := b.plan(area(420, 340))
+	pl := b.plan(area(420, 340), Screen(Light()))
 	for i, l := range exam.Limbs() {
 		centre, ok := pl.fig.Centre(l.String())
 		require.True(t, ok)
@@ -413,7 +413,7 @@ func TestBodyHit(t *testing.T) {
 		found := false
 		for dx := -8.0; dx <= 8 && !found; dx++ {
 			q := pl.pt(drawing.Point{X: centre.X + dx, Y: centre.Y})
-			got, ok := b.Hit(420, 340, q.X, 340-q.Y)
+			got, ok := b.Hit(420, 340, q.X, 340-q.Y, Screen(Light()))
 			found = ok && got == i
 		}
 		assert.True(t, found, l.String())
@@ -483,6 +483,6 @@ func TestEmptyChartsDoNotFail(t *testing.T) {
 		Strip{}.Hit(size[0], size[1], 0, 0, st)
 		Limbs{}.Hit(size[0], size[1], 0, 0, st)
 		CordMap{}.Hit(size[0], size[1], 0, 0, st)
-		Body{}.Hit(size[0], size[1], 0, 0)
+		Body{}.Hit(size[0], size[1], 0, 0, st)
 	}
 }

@@ -429,7 +429,7 @@ func (c *clinical) alerts(p *page, x, w float64) {
 			s += " – " + words.In(p.lang, "nobody told yet")
 		}
 		p.note(s)
-		p.para(x, w, s, p.size, n.Told == "", p.pal.Call, 2)
+		p.para(x, w, s, p.size, n.Told == "", p.pal.Call, 4)
 	}
 }
 
@@ -1005,7 +1005,7 @@ func (c *clinical) letter(p *page) {
 			s += " " + words.In(lang, "Told: %s.", n.Told)
 		}
 		p.note(s)
-		p.para(x, w, "• "+s, p.size, false, p.pal.Ink, 3)
+		p.para(x, w, "• "+s, p.size, false, p.pal.Ink, 6)
 		p.y += p.size * 0.2
 	}
 	p.heading(x, w, words.In(lang, "Main findings, last visit %[1]s › today %[2]s", c.prev.Examined.Format("2006-01-02"), c.now.Examined.Format("2006-01-02")))

@@ -38,14 +38,15 @@ type fit struct {
 // fits lists the ways for normal or large print, most comfortable first. Running text is
 // never smaller than 8.4 points, or 11.5 in large print.
 func fits(large bool, exercises int) []fit {
-	sizes := []float64{10.4, 10, 9.6, 9.2, 8.8, 8.4}
+	sizes := []float64{12, 11.2, 10.4, 10, 9.6, 9.2, 8.8, 8.4}
 	if large {
 		sizes = []float64{14, 13.5, 13, 12.5, 12, 11.5}
 	}
 	var out []fit
 	for i, s := range sizes {
 		for _, c := range [][2]float64{{150, 190}, {125, 170}, {104, 150}, {84, 132}} {
-			if i == 0 || c[0] <= 125 {
+			// Large text before a large chart, but no small chart while there is text to spare.
+			if c[0] >= 104 || i >= 2 {
 				out = append(out, fit{size: s, chart: c[0], body: c[1]})
 			}
 		}
@@ -410,9 +411,9 @@ func (o *owner) urgentBox(p *page, f fit) {
 
 func phoneLine(c exam.Contact) string {
 	if c.Name == "" {
-		return c.Phone
+		return unbroken(c.Phone)
 	}
-	return c.Name + ", " + c.Phone
+	return c.Name + ", " + unbroken(c.Phone)
 }
 
 // picture writes the drawing of the animal beside what was seen.

@@ -15,6 +15,7 @@ import (
 
 	"github.com/stretchr/testify/assert"
 	"github.com/stretchr/testify/require"
+	"pgregory.net/rapid"
 
 	"cordwalk.example/cordwalk/exam"
 )
@@ -355,4 +356,47 @@ func TestOtherScripts(t *testing.T) {
 	require.Len(t, doc.Warnings, 1)
 	assert.Contains(t, doc.Warnings[0], "ポ")
 	assert.Regexp(t, `^[a-z0-9._-]{1,80}$`, doc.Name)
+}
+
+// TestAlwaysOnePage: whatever is entered, in any look, there is a sheet of one page, and what
+// keeps the animal safe is on it in full.
+func TestAlwaysOnePage(t *testing.T) {
+	long := func(t *rapid.T, label string, most int) string {
+		return strings.Repeat(rapid.SampledFrom([]string{"word ", "Donaudampfschifffahrtsgesellschaft", "längere Wörter und Sätze. ", "x", "Ελληνικά ", "\xff\xc3(\x00", "🐶ポ"}).Draw(t, label), rapid.IntRange(1, most).Draw(t, label+" times"))
+	}
+	rapid.Check(t, func(t *rapid.T) {
+		in := patients()[rapid.SampledFrom([]string{"recovery", "plexus", "going-down", "first-visit"}).Draw(t, "who")]
+		in.Options = Options{Paper: rapid.SampledFrom([]string{"A4", "Letter"}).Draw(t, "paper"), Large: rapid.Bool().Draw(t, "large"), Grey: rapid.Bool().Draw(t, "grey")}
+		in.Patient.Name, in.Patient.Breed = "A"+long(t, "name", 5), long(t, "breed", 6)
+		in.Practice.Name, in.Practice.Contact.Address = long(t, "practice", 8), long(t, "address", 12)
+		in.Patient.Veterinarian.Name = long(t, "vet", 10)
+		if rapid.Bool().Draw(t, "summary") {
+			in.Options.Summary = long(t, "own words", 120)
+		}
+		for range rapid.IntRange(0, 12).Draw(t, "goals") {
+			in.Patient.Goals = append(in.Patient.Goals, exam.Goal{Words: long(t, "goal", 12), By: "2026-09"})
+		}
+		for range rapid.IntRange(0, 8).Draw(t, "alerts") {
+			in.Notices = append(in.Notices, Notice{Urgency: Urgency(rapid.IntRange(1, 3).Draw(t, "urgency")), Plain: long(t, "alert", 40)})
+		}
+		v := &in.Visits[len(in.Visits)-1]
+		v.Home = nil
+		for range rapid.IntRange(0, 40).Draw(t, "exercises") {
+			v.Home = append(v.Home, exam.HomeExercise{Kind: rapid.SampledFrom(exam.ExerciseKinds()).Draw(t, "kind").Key, Times: rapid.IntRange(0, 9).Draw(t, "times"), DaysWeek: rapid.IntRange(0, 7).Draw(t, "days"),
+				Amount: long(t, "amount", 4), How: long(t, "how", 30), StopFor: long(t, "stop", 20), Override: "agreed"})
+		}
+		doc, err := Owner(in)
+		if err != nil {
+			t.Fatal(err)
+		}
+		if doc.Pages != 1 {
+			t.Fatal(doc.Pages)
+		}
+		all := strings.Join(doc.Prose, "\n")
+		for _, want := range append([]string{textMedicine, textSupport}, callSigns...) {
+			if !strings.Contains(strings.ToLower(all), strings.ToLower(want)) {
+				t.Fatalf("%q is missing", want)
+			}
+		}
+	})
 }

@@ -8,6 +8,7 @@ import (
 	"sync"
 	"time"
 	"unicode"
+	"unicode/utf8"
 
 	"codeberg.org/go-pdf/fpdf"
 	"golang.org/x/image/font/sfnt"
@@ -30,6 +31,8 @@ type page struct {
 	dry    bool
 	prose  *[]string
 	lost   map[string]bool // letters the typeface lacks
+
+	cleaned map[string]string // what clean made of a text: pages are laid out many times
 }
 
 // newDoc opens a document with fixed dates and sorted objects, so that the same input gives
@@ -121,11 +124,12 @@ func (p *page) tall(w float64, s string, size float64, bold bool, most int) floa
 // With most > 0 the last line ends in an ellipsis where text was left out.
 func wrap(s string, w, size float64, bold bool, most int) []string {
 	var out []string
-	line := ""
+	space := width(" ", size, bold)
+	line, used := "", 0.0
 	flush := func() {
 		if line != "" {
 			out = append(out, line)
-			line = ""
+			line, used = "", 0
 		}
 	}
 	for _, part := range strings.Split(s, "\n") {
@@ -133,30 +137,33 @@ func wrap(s string, w, size float64, bold bool, most int) []string {
 			if word == "" {
 				continue
 			}
-			next := word
-			if line != "" {
-				next = line + " " + word
+			if most > 0 && len(out) > most {
+				break // what follows is not shown
 			}
-			if width(next, size, bold) <= w {
-				line = next
+			ww := width(word, size, bold)
+			if line != "" && used+space+ww <= w {
+				line, used = line+" "+word, used+space+ww
 				continue
 			}
 			flush()
-			for width(word, size, bold) > w {
-				cut := len(word)
-				for cut > 0 && width(word[:cut], size, bold) > w {
-					cut--
-					for cut > 0 && !isStart(word[cut]) {
-						cut--
+			for ww > w {
+				// Widths add up, so the longest beginning that fits is found in one go.
+				cut, at := 0, 0.0
+				for i, r := range word {
+					at += width(string(r), size, bold)
+					if at > w {
+						break
 					}
+					cut = i + utf8.RuneLen(r)
 				}
 				if cut == 0 {
 					break // not even one letter fits
 				}
 				out = append(out, word[:cut])
 				word = word[cut:]
+				ww = width(word, size, bold)
 			}
-			line = word
+			line, used = word, ww
 		}
 		flush()
 	}
@@ -170,9 +177,6 @@ func wrap(s string, w, size float64, bold bool, most int) []string {
 	}
 	return out
 }
-
-// isStart reports whether a byte begins a letter in UTF-8.
-func isStart(b byte) bool { return b&0xC0 != 0x80 }
 
 // rule draws a thin line across and moves down.
 func (p *page) rule(x, w float64) {
@@ -250,6 +254,18 @@ func printable(r rune) bool {
 // clean makes a text fit to be written on one line: controls become spaces, letters that
 // the typeface lacks become a question mark and are remembered.
 func (p *page) clean(s string) string {
+	if out, ok := p.cleaned[s]; ok {
+		return out
+	}
+	out := p.cleanOnce(strings.ToValidUTF8(s, "?"))
+	if p.cleaned == nil {
+		p.cleaned = map[string]string{}
+	}
+	p.cleaned[s] = out
+	return out
+}
+
+func (p *page) cleanOnce(s string) string {
 	ok := true
 	for _, r := range s {
 		if r != '\n' && (unicode.IsControl(r) || !printable(r)) {
