@@ -1,6 +1,8 @@
 package desk
 
 import (
+	"strings"
+
 	"fyne.io/fyne/v2"
 
 	"cordwalk.example/cordwalk/app/desk/look"
@@ -53,7 +55,7 @@ func alertsOf(p exam.Patient, others []exam.Visit, today exam.Visit) []alertLine
 
 // alertBox shows one alert: how soon, what was seen, and what can be done.
 func alertBox(a alertLine, answer, why func()) fyne.CanvasObject {
-	lines := mark.Column(2, mark.NewPara(a.Title).Strong().In(look.Call), mark.NewPara(a.Seen))
+	lines := mark.Column(2, mark.NewPara(a.Title).Strong().In(look.Call), mark.NewPara(inShort(a.Seen)))
 	buttons := []fyne.CanvasObject{mark.NewButton(words.T("Why, and what to do"), "", why).As(mark.Quiet)}
 	if a.Answered != "" {
 		lines.Add(mark.NewPara(a.Answered).In(look.InkSoft))
@@ -62,4 +64,18 @@ func alertBox(a alertLine, answer, why func()) fyne.CanvasObject {
 	}
 	lines.Add(mark.Wrapped(look.Unit/2, buttons...))
 	return mark.On(look.CallBed, false, mark.Pad(look.Unit, look.Unit, mark.RowTop(look.Unit, []float32{0, 1}, mark.Column(0, iconImage("phone", look.Call, 22)), lines)))
+}
+
+// inShort keeps the first things that were seen; the rest is one press away.
+func inShort(seen string) string {
+	const most = 120
+	parts := strings.Split(seen, "; ")
+	out := parts[0]
+	for i, p := range parts[1:] {
+		if len(out)+len(p) > most {
+			return words.N(len(parts)-1-i, "%s; and %d more", "%s; and %d more", out, len(parts)-1-i)
+		}
+		out += "; " + p
+	}
+	return out
 }

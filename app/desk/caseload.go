@@ -176,6 +176,10 @@ func (p *caseloadPage) refresh() {
 	if p.at() < 0 && p.cases.Len() > 0 {
 		p.chosen = p.cases.Row(0).Summary.ID
 	}
+	if p.win.app.lastPatient != p.chosen {
+		p.win.app.lastPatient = p.chosen
+		p.win.rail.update()
+	}
 	p.count.Set(p.cases.Words())
 	p.list.Refresh()
 	if i := p.at(); i >= 0 {

@@ -176,6 +176,9 @@ func (s *examSide) show() {
 	s.host.Show()
 	s.host.set(cordMapOf(s.page.file.Patient.Species, s.kg, r))
 	s.likely.Words = words.Of(r.Summary)
+	if r.Enough && len(r.Sites) > 0 {
+		s.likely.Words = words.T("%s: %s", words.Of(r.Summary), chanceWord(r.Sites[0].Probability))
+	}
 	s.pro.Words, s.con.Words = "", ""
 	if f, ok := strongest(r, 1); ok {
 		s.pro.Words = words.T("For: %s", f)
