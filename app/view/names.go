@@ -185,6 +185,21 @@ func Terms() []string {
 		out = append(out, s)
 	}
 	out = append(out, "We saw something that your veterinarian must know of.", "now", "today", "soon")
+	for _, i := range exam.Items() {
+		out = append(out, exam.HowTo(i))
+	}
+	for st := exam.StageHandsOff; st <= exam.StagePain; st++ {
+		out = append(out, st.String())
+	}
+	for p := exam.HandsOff; p <= exam.Held; p++ {
+		out = append(out, p.String())
+	}
+	for _, c := range exam.Conditions() {
+		out = append(out, c.String())
+	}
+	for _, k := range exam.TreatmentKinds() {
+		out = append(out, k.Name, k.Params)
+	}
 	out = append(out, months[:]...)
 	out = append(out, outcomeTerms()...)
 	out = append(out, positionTitles[:]...)

@@ -19,6 +19,8 @@ import (
 
 	"cordwalk.example/cordwalk/app/sheet"
 	"cordwalk.example/cordwalk/app/view"
+	"cordwalk.example/cordwalk/exam/stim"
+	"cordwalk.example/cordwalk/sync/audit"
 )
 
 var update = flag.Bool("update", false, "write the catalogue of English texts anew")
@@ -115,10 +117,43 @@ func collect(t *testing.T) catalogue {
 	if err != nil {
 		t.Fatal(err)
 	}
-	for _, w := range append(view.Terms(), sheet.Terms()...) {
+	terms := slices.Concat(view.Terms(), sheet.Terms(), returned(t, filepath.Join(root, "exam", "protocol.go"), "NotAsked"))
+	for _, d := range []audit.Did{audit.Exported, audit.Printed, audit.BackedUp, audit.Restored, audit.Invited, audit.Joined, audit.Refused, audit.Removed,
+		audit.Confirmed, audit.Erased, audit.Admitted, audit.Made, audit.Amended, audit.Closed, audit.United, audit.Parted, audit.Looked} {
+		terms = append(terms, string(d))
+	}
+	for _, l := range []stim.Label{stim.Uncertain, stim.NerveLike, stim.MuscleLike} {
+		terms = append(terms, l.String())
+	}
+	for _, w := range terms {
 		if w != "" {
 			out.Texts[w] = w
 		}
+	}
+	return out
+}
+
+// returned lists the constant texts that a function returns.
+func returned(t *testing.T, file, function string) []string {
+	t.Helper()
+	f, err := parser.ParseFile(token.NewFileSet(), file, nil, 0)
+	if err != nil {
+		t.Fatal(err)
+	}
+	var out []string
+	ast.Inspect(f, func(n ast.Node) bool {
+		if d, ok := n.(*ast.FuncDecl); ok && d.Name.Name != function {
+			return false
+		}
+		if r, ok := n.(*ast.ReturnStmt); ok && len(r.Results) == 1 {
+			if s, ok := literal(r.Results[0]); ok {
+				out = append(out, s)
+			}
+		}
+		return true
+	})
+	if len(out) == 0 {
+		t.Errorf("%s returns no text", function)
 	}
 	return out
 }
@@ -195,10 +230,10 @@ func compareKeys(t *testing.T, what string, want, got []string) {
 		}
 	}
 	if len(missing) > 0 {
-		t.Errorf("%s: %d texts are missing, the first %.10q", what, len(missing), missing[:min(10, len(missing))])
+		t.Errorf("%s: %d texts are missing, the first %q", what, len(missing), missing[:min(10, len(missing))])
 	}
 	if len(unused) > 0 {
-		t.Errorf("%s: %d texts are not used, the first %.10q", what, len(unused), unused[:min(10, len(unused))])
+		t.Errorf("%s: %d texts are not used, the first %q", what, len(unused), unused[:min(10, len(unused))])
 	}
 }
 
