@@ -2,12 +2,16 @@ package carry
 
 import (
 	"context"
+	"errors"
 	"fmt"
 	"io"
 	"path/filepath"
 
 	"cordwalk.example/cordwalk/storage/disk"
 )
+
+// ErrUnwanted means that a file must not be kept: its owner's data were erased. It is removed from the folder.
+var ErrUnwanted = errors.New("its owner's data were erased on request")
 
 // Attachments is the store's folder of sealed attachments: films, photos, documents. A file's
 // name is an HMAC and never changes its content.
@@ -140,6 +144,15 @@ func (x *exchange) takeFiles(ctx context.Context) error {
 		x.report.Read++
 		err = x.Files.Take(ctx, e.Name, e.Size, io.NewSectionReader(f, 0, e.Size))
 		f.Close()
+		if errors.Is(err, ErrUnwanted) {
+			if !x.ReceiveOnly {
+				_ = x.FS.Remove(filepath.Join(x.dir, filesDir, e.Name)) // tried again at the next exchange
+			}
+			continue
+		}
+		if ctx.Err() != nil {
+			return ctx.Err()
+		}
 		if err != nil {
 			x.problem("the attachment %s is not whole here (it may still be on its way): %s", e.Name, err)
 		}

@@ -170,8 +170,12 @@ func parseHeadFile(name string) (d change.Incarnation, counter uint64, ok bool) 
 	return d, n, headFile(d, n) == name
 }
 
-// goodFileName reports whether a name is that of an attachment: 32 hexadecimal digits and ".att".
+// goodFileName reports whether a name is that of an attachment or an owner's key: 32 hexadecimal digits and
+// ".att" or ".owner".
 func goodFileName(name string) bool {
 	base, ok := strings.CutSuffix(name, ".att")
+	if !ok {
+		base, ok = strings.CutSuffix(name, ".owner")
+	}
 	return ok && len(base) == 32 && strings.Trim(base, "0123456789abcdef") == ""
 }

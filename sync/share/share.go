@@ -37,6 +37,8 @@ const (
 type Share struct {
 	*storage.Store
 	List *member.List
+	// Files are exchanged with the records where they are set; see package attach.
+	Files carry.Attachments
 
 	at  string // the store's folder
 	fs  disk.FS
@@ -250,7 +252,7 @@ func (sh *Share) Member() bool {
 func (sh *Share) Folder(ctx context.Context, place string, progress func(what string, done, total int64)) (carry.Report, error) {
 	sh.mu.Lock()
 	defer sh.mu.Unlock()
-	r, err := carry.Sync(ctx, place, carry.Options{Bag: sh.Bag(), Incarnation: sh.Incarnation, Journal: sh, Members: sh, FS: sh.fs, Now: sh.now, Progress: progress})
+	r, err := carry.Sync(ctx, place, carry.Options{Bag: sh.Bag(), Incarnation: sh.Incarnation, Journal: sh, Members: sh, Files: sh.Files, FS: sh.fs, Now: sh.now, Progress: progress})
 	if err == nil && r.Received > 0 {
 		err = sh.refresh(ctx) // streams that are new to us may be limited
 	}

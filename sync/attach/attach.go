@@ -1,0 +1,603 @@
+// Package attach keeps what is sealed under a key per owner: photos, films and documents, and an owner's contact
+// data.
+//
+// A file is an age file (age-encryption.org/v1: the payload in chunks of 64 KiB) whose file key is sealed with
+// the owner's key. Its name is an HMAC of its bytes, so that every device of the practice can tell that it is
+// whole without opening it, and nobody else learns what two files have in common. Files never change.
+//
+// An owner's key is random and lies outside the journal, in owners/. To erase an owner's data on request
+// the key is destroyed, on every device at its next contact; what was sealed with it cannot be read by anybody
+// any more. That it was erased, by whom and when, stays in the record.
+package attach
+
+import (
+	"bytes"
+	"context"
+	"crypto/sha256"
+	"encoding/binary"
+	"encoding/hex"
+	"errors"
+	"fmt"
+	"io"
+	"io/fs"
+	"path/filepath"
+	"strings"
+	"sync"
+
+	"filippo.io/age"
+
+	"cordwalk.example/cordwalk/exam"
+	"cordwalk.example/cordwalk/storage"
+	"cordwalk.example/cordwalk/storage/disk"
+	"cordwalk.example/cordwalk/sync/audit"
+	"cordwalk.example/cordwalk/sync/carry"
+	"cordwalk.example/cordwalk/sync/change"
+	"cordwalk.example/cordwalk/sync/key"
+)
+
+const (
+	filesDir  = "files"
+	ownersDir = "owners"
+	attExt    = ".att"
+	ownerExt  = ".owner"
+	stanza    = "cordwalk-owner"
+	maxOwner  = 1 << 10
+	// MaxFile is the size of the largest attachment in bytes, sealed.
+	MaxFile = 8 << 30
+)
+
+// ErrErased means that the owner's data were erased on request.
+var ErrErased = errors.New("this owner's data were erased on request")
+
+// ErrNoKey means that the owner's key has not come to this device yet.
+var ErrNoKey = errors.New("the key of this owner has not come to this device yet; exchange with the others first")
+
+// Files is the part of a store that is sealed by owner. It is safe for use by several goroutines.
+type Files struct {
+	s  *storage.Store
+	fs disk.FS
+
+	mu     sync.Mutex
+	keys   map[exam.ID][]ownerKey
+	erased map[exam.ID]bool
+}
+
+type ownerKey struct {
+	name string // of its file
+	key  key.OwnerKey
+}
+
+// Open reads the keys of owners beside a store, and destroys those of owners whose data were erased.
+func Open(ctx context.Context, s *storage.Store, fsys disk.FS) (*Files, error) {
+	if fsys == nil {
+		fsys = disk.OS()
+	}
+	f := &Files{s: s, fs: fsys, keys: map[exam.ID][]ownerKey{}, erased: map[exam.ID]bool{}}
+	for _, d := range []string{filesDir, ownersDir} {
+		if err := fsys.MakeDir(filepath.Join(s.Dir(), d)); err != nil {
+			return nil, fmt.Errorf("opening the attachments: %w", err)
+		}
+	}
+	es, err := fsys.List(filepath.Join(s.Dir(), ownersDir))
+	if err != nil {
+		return nil, fmt.Errorf("opening the attachments: %w", err)
+	}
+	for _, e := range es {
+		if e.Dir || e.Size > maxOwner || !strings.HasSuffix(e.Name, ownerExt) {
+			continue
+		}
+		b, err := disk.ReadFile(fsys, f.ownerFile(e.Name), maxOwner)
+		if err != nil {
+			return nil, fmt.Errorf("opening the attachments: %w", err)
+		}
+		if owner, k, err := f.parseOwner(e.Name, b); err == nil {
+			f.keys[owner] = append(f.keys[owner], ownerKey{e.Name, k})
+		}
+	}
+	return f, f.Obey(ctx)
+}
+
+func (f *Files) ownerFile(name string) string { return filepath.Join(f.s.Dir(), ownersDir, name) }
+func (f *Files) file(name string) string      { return filepath.Join(f.s.Dir(), filesDir, name) }
+
+// nameOf makes the name of a file out of the SHA-256 of its bytes.
+func (f *Files) nameOf(kind string, sum []byte) string {
+	m := f.s.Bag().Ring.Names().MAC([]byte(kind), sum)
+	return hex.EncodeToString(m[:16]) + kind
+}
+
+// tag names an owner in a file's header.
+func (f *Files) tag(owner exam.ID) string {
+	m := f.s.Bag().Ring.Names().MAC([]byte("owner"), owner[:])
+	return hex.EncodeToString(m[:16])
+}
+
+// An owner's file: 4 bytes of epoch, then owner and key sealed with that epoch's wrapping key.
+func (f *Files) sealOwner(owner exam.ID, k key.OwnerKey) []byte {
+	ring := f.s.Bag().Ring
+	w, _ := ring.Wrap(ring.Current())
+	return append(binary.BigEndian.AppendUint32(nil, ring.Current()), w.Seal(append(owner[:], k[:]...), []byte(ownersDir))...)
+}
+
+func (f *Files) parseOwner(name string, b []byte) (owner exam.ID, k key.OwnerKey, err error) {
+	sum := sha256.Sum256(b)
+	if f.nameOf(ownerExt, sum[:]) != name || len(b) < 4 {
+		return owner, k, fmt.Errorf("an owner's key: %w", change.ErrMalformed)
+	}
+	w, ok := f.s.Bag().Ring.Wrap(binary.BigEndian.Uint32(b))
+	if !ok {
+		return owner, k, fmt.Errorf("an owner's key: %w", change.ErrNoKey)
+	}
+	plain, err := w.Open(b[4:], []byte(ownersDir))
+	if err != nil || len(plain) != len(owner)+len(k) {
+		return owner, k, fmt.Errorf("an owner's key: %w", change.ErrSealed)
+	}
+	return exam.ID(plain[:16]), key.OwnerKey(plain[16:]), nil
+}
+
+// ownerKeys returns the keys of an owner, and makes the first one if it is wanted.
+func (f *Files) ownerKeys(owner exam.ID, make bool) ([]ownerKey, error) {
+	f.mu.Lock()
+	defer f.mu.Unlock()
+	if f.erased[owner] {
+		return nil, ErrErased
+	}
+	if ks := f.keys[owner]; len(ks) > 0 || !make {
+		if len(ks) == 0 {
+			return nil, ErrNoKey
+		}
+		return ks, nil
+	}
+	k := key.NewSecret()
+	b := f.sealOwner(owner, k)
+	sum := sha256.Sum256(b)
+	name := f.nameOf(ownerExt, sum[:])
+	if err := disk.Replace(f.fs, f.ownerFile(name), b); err != nil {
+		return nil, fmt.Errorf("keeping the owner's key: %w", err)
+	}
+	f.keys[owner] = append(f.keys[owner], ownerKey{name, k})
+	return f.keys[owner], nil
+}
+
+// recipient seals an age file key with an owner's key.
+type recipient struct {
+	tag string
+	key key.OwnerKey
+}
+
+func (r recipient) Wrap(fileKey []byte) ([]*age.Stanza, error) {
+	return []*age.Stanza{{Type: stanza, Args: []string{r.tag}, Body: r.key.Derive("attachment").Seal(fileKey, []byte(r.tag))}}, nil
+}
+
+// identity opens it with any of the owner's keys.
+type identity struct {
+	tag  string
+	keys []ownerKey
+}
+
+func (i identity) Unwrap(ss []*age.Stanza) ([]byte, error) {
+	for _, s := range ss {
+		if s.Type != stanza || len(s.Args) != 1 || s.Args[0] != i.tag {
+			continue
+		}
+		for _, k := range i.keys {
+			if fileKey, err := k.key.Derive("attachment").Open(s.Body, []byte(i.tag)); err == nil {
+				return fileKey, nil
+			}
+		}
+	}
+	return nil, age.ErrIncorrectIdentity
+}
+
+// SealContact seals an owner's contact data, to be kept as the value of a field. The first time it makes the
+// owner's key.
+func (f *Files) SealContact(owner exam.ID, plain []byte) ([]byte, error) {
+	ks, err := f.ownerKeys(owner, true)
+	if err != nil {
+		return nil, err
+	}
+	return ks[0].key.Derive("contact").Seal(plain, owner[:]), nil
+}
+
+// OpenContact is the inverse of SealContact. The error is ErrErased, ErrNoKey or change.ErrSealed.
+func (f *Files) OpenContact(owner exam.ID, sealed []byte) ([]byte, error) {
+	ks, err := f.ownerKeys(owner, false)
+	if err != nil {
+		return nil, err
+	}
+	for _, k := range ks {
+		if plain, err := k.key.Derive("contact").Open(sealed, owner[:]); err == nil {
+			return plain, nil
+		}
+	}
+	return nil, change.ErrSealed
+}
+
+// Add seals a file and keeps it. It is durable when Add returns its name.
+func (f *Files) Add(ctx context.Context, owner exam.ID, r io.Reader) (name string, err error) {
+	defer func() {
+		if err != nil {
+			err = fmt.Errorf("keeping the attachment: %w", err)
+		}
+	}()
+	ks, err := f.ownerKeys(owner, true)
+	if err != nil {
+		return "", err
+	}
+	var x [8]byte
+	fresh := key.NewSecret()
+	copy(x[:], fresh[:])
+	return f.take(ctx, "adding-"+hex.EncodeToString(x[:])+disk.Temporary(""), func(w io.Writer) error {
+		sealed, err := age.Encrypt(w, recipient{f.tag(owner), ks[0].key})
+		if err != nil {
+			return err
+		}
+		if _, err := io.Copy(sealed, r); err != nil {
+			return err
+		}
+		return sealed.Close()
+	}, "")
+}
+
+// take writes a file under a passing name, then gives it the name that its bytes have. Where want is given,
+// another name is an error.
+func (f *Files) take(ctx context.Context, tmp string, write func(io.Writer) error, want string) (name string, err error) {
+	path := f.file(tmp)
+	if err := f.fs.Remove(path); err != nil && !errors.Is(err, fs.ErrNotExist) {
+		return "", err
+	}
+	out, err := f.fs.Create(path)
+	if err != nil {
+		return "", err
+	}
+	defer func() {
+		if err != nil {
+			_ = f.fs.Remove(path)
+		}
+	}()
+	sum := sha256.New()
+	w := &writer{ctx: ctx, f: out}
+	err = write(io.MultiWriter(w, sum))
+	if err == nil {
+		err = out.Sync()
+	}
+	if err = errors.Join(err, out.Close()); err != nil {
+		return "", err
+	}
+	// Read back: a disk that kept something else is found out now, not when the photo is missed.
+	back, err := f.sumOf(ctx, path)
+	if err != nil {
+		return "", err
+	}
+	if !bytes.Equal(back, sum.Sum(nil)) {
+		return "", errors.New("it reads back differently from what was written: the disk or this computer is faulty")
+	}
+	name = f.nameOf(attExt, back)
+	if want != "" && name != want {
+		return "", fmt.Errorf("%w: its bytes are not those that its name stands for", change.ErrMalformed)
+	}
+	if err = f.fs.Rename(path, f.file(name)); err != nil {
+		return "", err
+	}
+	return name, f.fs.SyncDir(filepath.Join(f.s.Dir(), filesDir))
+}
+
+type writer struct {
+	ctx context.Context
+	f   disk.File
+	at  int64
+}
+
+func (w *writer) Write(b []byte) (int, error) {
+	if err := w.ctx.Err(); err != nil {
+		return 0, err
+	}
+	if w.at+int64(len(b)) > MaxFile {
+		return 0, fmt.Errorf("it is larger than %d GiB", MaxFile>>30)
+	}
+	n, err := w.f.WriteAt(b, w.at)
+	w.at += int64(n)
+	return n, err
+}
+
+func (f *Files) sumOf(ctx context.Context, path string) ([]byte, error) {
+	in, err := f.fs.Open(path)
+	if err != nil {
+		return nil, err
+	}
+	defer in.Close()
+	size, err := in.Size()
+	if err != nil {
+		return nil, err
+	}
+	sum := sha256.New()
+	r := io.NewSectionReader(in, 0, size)
+	for buf := make([]byte, 256<<10); ; {
+		if err := ctx.Err(); err != nil {
+			return nil, err
+		}
+		n, err := r.Read(buf)
+		sum.Write(buf[:n])
+		if errors.Is(err, io.EOF) {
+			return sum.Sum(nil), nil
+		}
+		if err != nil {
+			return nil, err
+		}
+	}
+}
+
+type reader struct {
+	io.Reader
+	io.Closer
+}
+
+// Read opens a file of an owner. Close it. A damaged file fails at the damaged chunk, before anything of
+// that chunk is given out.
+func (f *Files) Read(owner exam.ID, name string) (io.ReadCloser, error) {
+	if !goodName(name) {
+		return nil, fmt.Errorf("reading the attachment %.80q: %w", name, fs.ErrInvalid)
+	}
+	ks, err := f.ownerKeys(owner, false)
+	if err != nil {
+		return nil, err
+	}
+	in, err := f.fs.Open(f.file(name))
+	if err != nil {
+		return nil, fmt.Errorf("reading the attachment: %w", err)
+	}
+	size, err := in.Size()
+	if err == nil {
+		var r io.Reader
+		if r, err = age.Decrypt(io.NewSectionReader(in, 0, size), identity{f.tag(owner), ks}); err == nil {
+			return reader{r, in}, nil
+		}
+	}
+	in.Close()
+	var none *age.NoIdentityMatchError
+	if errors.As(err, &none) {
+		err = change.ErrSealed
+	}
+	return nil, fmt.Errorf("reading the attachment: %w", err)
+}
+
+func goodName(name string) bool {
+	base, ok := strings.CutSuffix(name, attExt)
+	return ok && len(base) == 32 && strings.Trim(base, "0123456789abcdef") == ""
+}
+
+const erasedField = "erased/"
+
+// Erase destroys an owner's key here, and tells the other devices to do the same. The record keeps who erased
+// and when.
+func (f *Files) Erase(ctx context.Context, examiner string, owner exam.ID, reason string) error {
+	_, err := f.s.Apply(ctx, examiner, storage.Edit{Kind: storage.Kind(change.KindOwner), Field: erasedField + owner.String(), Value: []byte{0xf5}})
+	if err != nil {
+		return fmt.Errorf("erasing an owner's data: %w", err)
+	}
+	if err := audit.Write(ctx, f.s, examiner, audit.Erased, owner.String()+": "+reason); err != nil {
+		return err
+	}
+	return f.Obey(ctx)
+}
+
+// Obey destroys the keys and files of owners whose data were erased, here or on another device. Call it after
+// an exchange.
+func (f *Files) Obey(ctx context.Context) error {
+	fields, err := f.s.Fields(storage.Kind(change.KindOwner), exam.ID{}, exam.ID{})
+	if err != nil {
+		return fmt.Errorf("looking for owners whose data were erased: %w", err)
+	}
+	f.mu.Lock()
+	defer f.mu.Unlock()
+	tags := map[string]bool{}
+	for name := range fields {
+		text, ok := strings.CutPrefix(name, erasedField)
+		owner, err := exam.ParseID(text)
+		if !ok || err != nil {
+			continue
+		}
+		f.erased[owner] = true
+		tags[f.tag(owner)] = true
+		for _, k := range f.keys[owner] {
+			if err := f.destroy(f.ownerFile(k.name)); err != nil {
+				return fmt.Errorf("destroying an owner's key: %w", err)
+			}
+		}
+		delete(f.keys, owner)
+	}
+	if len(tags) == 0 {
+		return nil
+	}
+	es, err := f.fs.List(filepath.Join(f.s.Dir(), filesDir))
+	if err != nil {
+		return fmt.Errorf("looking for files of owners whose data were erased: %w", err)
+	}
+	for _, e := range es {
+		if err := ctx.Err(); err != nil {
+			return err
+		}
+		if goodName(e.Name) && tags[f.tagOf(f.file(e.Name))] {
+			if err := f.destroy(f.file(e.Name)); err != nil {
+				return fmt.Errorf("destroying a file of an owner: %w", err)
+			}
+		}
+	}
+	return nil
+}
+
+// destroy overwrites the beginning of a file and removes it. On many disks the old bytes may still be found
+// by somebody who takes the disk apart; the key is what they would need.
+func (f *Files) destroy(path string) error {
+	if e, err := f.fs.Edit(path); err == nil {
+		size, _ := e.Size()
+		_, werr := e.WriteAt(make([]byte, min(size, 4096)), 0)
+		err = errors.Join(werr, e.SyncData(), e.Close())
+		if err != nil {
+			return err
+		}
+	}
+	if err := f.fs.Remove(path); err != nil && !errors.Is(err, fs.ErrNotExist) {
+		return err
+	}
+	return f.fs.SyncDir(filepath.Dir(path))
+}
+
+// tagOf reads the owner's tag from a file's header, "" if there is none.
+func (f *Files) tagOf(path string) string {
+	in, err := f.fs.Open(path)
+	if err != nil {
+		return ""
+	}
+	defer in.Close()
+	b := make([]byte, 512)
+	n, _ := in.ReadAt(b, 0)
+	return tagIn(b[:n])
+}
+
+func tagIn(head []byte) string {
+	_, rest, ok := bytes.Cut(head, []byte("\n-> "+stanza+" "))
+	if !ok || len(rest) < 32 {
+		return ""
+	}
+	return string(rest[:32])
+}
+
+// Problem is a file that is not what its name says.
+type Problem struct{ File, What string }
+
+// Check reads every file and says which are damaged. It changes nothing.
+func (f *Files) Check(ctx context.Context) ([]Problem, error) {
+	es, err := f.fs.List(filepath.Join(f.s.Dir(), filesDir))
+	if err != nil {
+		return nil, fmt.Errorf("checking the attachments: %w", err)
+	}
+	var out []Problem
+	for _, e := range es {
+		if !goodName(e.Name) || e.Dir {
+			continue
+		}
+		sum, err := f.sumOf(ctx, f.file(e.Name))
+		if ctx.Err() != nil {
+			return nil, ctx.Err()
+		}
+		if err != nil {
+			out = append(out, Problem{filesDir + "/" + e.Name, "it cannot be read: " + err.Error()})
+		} else if f.nameOf(attExt, sum) != e.Name {
+			out = append(out, Problem{filesDir + "/" + e.Name, "it is damaged; an exchange brings it back if another device has it whole"})
+		}
+	}
+	return out, nil
+}
+
+// Repair removes damaged files so that an exchange brings them back.
+func (f *Files) Repair(ctx context.Context) ([]Problem, error) {
+	ps, err := f.Check(ctx)
+	for _, p := range ps {
+		name := filepath.Base(p.File)
+		if err := f.fs.Rename(f.file(name), disk.Aside(f.file(name), "damaged")); err != nil {
+			return ps, fmt.Errorf("setting a damaged attachment aside: %w", err)
+		}
+	}
+	return ps, err
+}
+
+// List implements carry.Attachments.
+func (f *Files) List(context.Context) ([]carry.FileRef, error) {
+	var out []carry.FileRef
+	for dir, ext := range map[string]string{filesDir: attExt, ownersDir: ownerExt} {
+		es, err := f.fs.List(filepath.Join(f.s.Dir(), dir))
+		if err != nil {
+			return nil, err
+		}
+		for _, e := range es {
+			if !e.Dir && strings.HasSuffix(e.Name, ext) {
+				out = append(out, carry.FileRef{Name: e.Name, Size: e.Size})
+			}
+		}
+	}
+	return out, nil
+}
+
+func (f *Files) path(name string) (string, error) {
+	switch {
+	case goodName(name):
+		return f.file(name), nil
+	case goodName(strings.TrimSuffix(name, ownerExt)+attExt) && strings.HasSuffix(name, ownerExt):
+		return f.ownerFile(name), nil
+	}
+	return "", fmt.Errorf("the attachment %.80q: %w", name, fs.ErrInvalid)
+}
+
+// Open implements carry.Attachments.
+func (f *Files) Open(_ context.Context, name string) (io.ReadCloser, error) {
+	p, err := f.path(name)
+	if err != nil {
+		return nil, err
+	}
+	in, err := f.fs.Open(p)
+	if err != nil {
+		return nil, err
+	}
+	size, err := in.Size()
+	if err != nil {
+		return nil, errors.Join(err, in.Close())
+	}
+	return reader{io.NewSectionReader(in, 0, size), in}, nil
+}
+
+// Wanted implements carry.Attachments.
+func (f *Files) Wanted(_ context.Context, name string) (bool, error) {
+	p, err := f.path(name)
+	if err != nil {
+		return false, nil
+	}
+	there, err := disk.Exists(f.fs, p)
+	return !there, err
+}
+
+// Take implements carry.Attachments. The error is carry.ErrUnwanted for what was erased.
+func (f *Files) Take(ctx context.Context, name string, size int64, r io.Reader) error {
+	if size > MaxFile {
+		return fmt.Errorf("%w: it has %d bytes", change.ErrMalformed, size)
+	}
+	if strings.HasSuffix(name, ownerExt) {
+		b, err := io.ReadAll(io.LimitReader(r, maxOwner+1))
+		if err != nil {
+			return err
+		}
+		owner, k, err := f.parseOwner(name, b)
+		if err != nil {
+			return err
+		}
+		f.mu.Lock()
+		defer f.mu.Unlock()
+		if f.erased[owner] {
+			return carry.ErrUnwanted
+		}
+		if err := disk.Replace(f.fs, f.ownerFile(name), b); err != nil {
+			return err
+		}
+		f.keys[owner] = append(f.keys[owner], ownerKey{name, k})
+		return nil
+	}
+	head := make([]byte, 512)
+	n, err := io.ReadFull(r, head)
+	if err != nil && !errors.Is(err, io.ErrUnexpectedEOF) {
+		return err
+	}
+	tag := tagIn(head[:n])
+	f.mu.Lock()
+	for owner := range f.erased {
+		if f.tag(owner) == tag {
+			f.mu.Unlock()
+			return carry.ErrUnwanted
+		}
+	}
+	f.mu.Unlock()
+	_, err = f.take(ctx, "taking-"+name[:16]+disk.Temporary(""), func(w io.Writer) error {
+		_, err := io.Copy(w, io.LimitReader(io.MultiReader(bytes.NewReader(head[:n]), r), size))
+		return err
+	}, name)
+	return err
+}
