@@ -410,6 +410,51 @@ func (a *answers) learn(w *Weigher, gi int, k uint16) {
 	}
 }
 
+// Marginal returns the probability of each category of one cell by itself, at each of the
+// weigher's sites and steps of Grid, in later weeks and without what age and sedation do:
+// out[(i*GridSize+step)*categories+category]. It is nil for a cell that the model does not hold.
+func (w *Weigher) Marginal(k exam.Key) (out []float64, categories int) {
+	m := w.e.m
+	ci, ok := m.lay.byKey[k]
+	if !ok {
+		return nil, 0
+	}
+	c := &m.lay.cells[ci]
+	g, x := &m.groups[c.group], &w.groups[c.group]
+	pos := slices.Index(g.cells, ci)
+	set := &m.sets[m.setOf[ci]]
+	cats := set.cats
+	slot := func(s int, p []float64) {
+		total := 0.0
+		for i := w.from[s]; i < w.from[s+1]; i++ {
+			weight := exp(fromLog(w.prior[i]))
+			row := int(g.rows[pos][x.sig[x.of[i]]]) * cats
+			for j := range p {
+				p[j] += float64(weight * set.margin[row+j])
+			}
+			total += weight
+		}
+		for j := range p {
+			if total > 0 {
+				p[j] /= total
+			} else {
+				p[j] = 1 / float64(cats)
+			}
+		}
+	}
+	sound := make([]float64, cats)
+	slot(len(w.sites)*slots, sound)
+	out = make([]float64, len(w.sites)*GridSize*cats)
+	for i := range w.sites {
+		copy(out[i*GridSize*cats:], sound)
+		for v := range severities {
+			at := (i*GridSize + v + 1) * cats
+			slot(i*slots+v, out[at:at+cats])
+		}
+	}
+	return out, cats
+}
+
 // bendFor brings what age and sedation do to the answers up to date.
 func (e *Engine) bendFor(x *Exam) {
 	if x.AgeYears == e.ctxAge && x.Sedation == e.ctxSedated {

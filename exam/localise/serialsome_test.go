@@ -54,3 +54,23 @@ func TestWeigherAgreesWithEngine(t *testing.T) {
 	_, err = w.LogLikelihoods(Exam{Species: exam.Cat}, nil)
 	require.Error(t, err)
 }
+
+// A cell by itself has the probability that an exam of that one finding has.
+func TestMarginal(t *testing.T) {
+	m, err := ModelOf(exam.Dog)
+	require.NoError(t, err)
+	sites := []int{5, 250, 900}
+	w := m.Weigher(sites)
+	k := exam.Key{Item: exam.Patellar, Site: exam.PelvicLeft}
+	p, cats := w.Marginal(k)
+	require.Equal(t, 5, cats)
+	for g := range cats {
+		ll, err := w.LogLikelihoods(Exam{Species: exam.Dog, OnsetDays: 400, Findings: []exam.Finding{{Item: k.Item, Site: k.Site, Result: exam.Graded(int8(g))}}}, nil)
+		require.NoError(t, err)
+		for i := range ll {
+			require.InDelta(t, math.Exp(ll[i]), p[i*cats+g], 1e-3)
+		}
+	}
+	none, _ := w.Marginal(exam.Key{})
+	require.Nil(t, none)
+}

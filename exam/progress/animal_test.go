@@ -10,67 +10,70 @@ import (
 )
 
 // animal draws exams from the localisation model's own predictions: a dog with a lesion at one
-// place, each finding drawn by itself.
+// place. Findings are drawn one after the other, each given those before, so that what tests of
+// one arc share and what is summed out hang together as the model says.
 type animal struct {
-	model *localise.Model
-	site  int
-	cells []exam.Key
-	p     [][][]float64 // [cell][step of the grid][grade − first]
+	weigher *localise.Weigher
+	cells   []exam.Key
+	ll      []float64
 }
+
+var flat [Levels]float64
 
 func newAnimal(site func(localise.Site) bool, cells []exam.Key) *animal {
 	m, err := localise.ModelOf(exam.Dog)
 	if err != nil {
 		panic(err)
 	}
-	a := &animal{model: m, site: -1, cells: cells}
 	for i, s := range m.Sites() {
 		if site(s) {
-			a.site = i
-			break
+			return &animal{weigher: m.Weigher([]int{i}), cells: cells}
 		}
 	}
-	w := m.Weigher([]int{a.site})
-	for _, c := range cells {
-		in := c.Item.Info()
-		p := make([][]float64, localise.GridSize)
-		for g := range in.Grades {
-			ll, err := w.LogLikelihoods(localise.Exam{Species: exam.Dog, OnsetDays: 30, Findings: []exam.Finding{{Item: c.Item, Site: c.Site, Result: exam.Graded(in.First + int8(g))}}}, nil)
-			if err != nil {
-				panic(err)
-			}
-			for k, l := range ll {
-				p[k] = append(p[k], math.Exp(l))
-			}
-		}
-		a.p = append(a.p, p)
+	panic("no such place")
+}
+
+// at returns the log-likelihood of an exam at a severity.
+func (a *animal) at(x localise.Exam, severity float64) float64 {
+	var err error
+	if a.ll, err = a.weigher.LogLikelihoods(x, a.ll); err != nil {
+		panic(err)
 	}
-	return a
+	var out [Levels]float64
+	interpolate(a.ll, flat[:], out[:], math.Inf(-1))
+	l := severity / spacing
+	k := min(int(l), Levels-2)
+	return out[k] + (l-float64(k))*(out[k+1]-out[k])
 }
 
 func (a *animal) draw(r *rand.Rand, severity float64, at time.Time) exam.Visit {
-	grid := localise.Grid()
-	k := 0
-	for k+2 < len(grid) && severity > grid[k+1] {
-		k++
-	}
-	w := math.Max(0, math.Min(1, (severity-grid[k])/(grid[k+1]-grid[k])))
-	v := exam.Visit{Examined: at, Examiner: "A. Brook"}
-	for i, c := range a.cells {
+	x := localise.OfVisit(dog, exam.Visit{Examined: at})
+	for _, i := range r.Perm(len(a.cells)) {
+		c := a.cells[i]
+		in := c.Item.Info()
+		x.Findings = append(x.Findings, exam.Finding{Item: c.Item, Site: c.Site})
+		f := &x.Findings[len(x.Findings)-1]
+		p, top := make([]float64, len(in.Grades)), math.Inf(-1)
+		for g := range p {
+			f.Result = exam.Graded(in.First + int8(g))
+			p[g] = a.at(x, severity)
+			top = math.Max(top, p[g])
+		}
 		total := 0.0
-		for g := range a.p[i][k] {
-			total += (1-w)*a.p[i][k][g] + w*a.p[i][k+1][g]
+		for g := range p {
+			p[g] = math.Exp(p[g] - top)
+			total += p[g]
 		}
 		u, g := r.Float64()*total, 0
-		for ; g < len(a.p[i][k])-1; g++ {
-			if u -= (1-w)*a.p[i][k][g] + w*a.p[i][k+1][g]; u < 0 {
+		for ; g < len(p)-1; g++ {
+			if u -= p[g]; u < 0 {
 				break
 			}
 		}
-		v.Findings = append(v.Findings, exam.Finding{Item: c.Item, Site: c.Site, Result: exam.Graded(c.Item.Info().First + int8(g))})
+		f.Result = exam.Graded(in.First + int8(g))
 	}
-	exam.SortFindings(v.Findings)
-	return v
+	exam.SortFindings(x.Findings)
+	return exam.Visit{Examined: at, Examiner: "A. Brook", Findings: x.Findings}
 }
 
 // allCells is every cell of the vocabulary whose grades are steps, up to n of them.

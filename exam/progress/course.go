@@ -11,16 +11,14 @@ import (
 	"cordwalk.example/cordwalk/exam/anatomy"
 )
 
-// A place is carried to the next visit while it holds at least leastMass of the belief, at most
-// mostPlaces of them; from the first visits, when little is known, everything down to wideMass.
-// What is dropped can come back as a new lesion.
+// A place is carried to the next visit while it holds at least leastMass of the belief, and from
+// the first visits, when little is known, at least wideMass. What is dropped is less than a
+// thousandth together, and can come back as a new lesion.
 const (
-	leastMass  = 1e-5
-	mostPlaces = 96
+	leastMass  = 2e-6
 	wideVisits = 3
 	wideMass   = 1e-7
 	lookAround = 16 // every so many visits every place is weighed again
-	widePlaces = 400
 )
 
 // leastState is the belief below which a single state of a place counts as impossible.
@@ -46,7 +44,6 @@ type Model struct {
 	first  []float64 // distribution over the states where a lesion is met first
 
 	minMass, minState float64
-	most              int
 }
 
 // NewModel returns a model over the places of space.
@@ -57,7 +54,7 @@ func NewModel(space Space, rates Rates) *Model {
 }
 
 func newModel(space Space, rates Rates) *Model {
-	m := &Model{space: space, rates: rates, daily: rates.daily(), first: rates.start(), minMass: leastMass, minState: leastState, most: mostPlaces}
+	m := &Model{space: space, rates: rates, daily: rates.daily(), first: rates.start(), minMass: leastMass, minState: leastState}
 	for k := range Levels {
 		for j := range Levels {
 			if m.daily[k][j] > 1e-12 {
@@ -330,12 +327,12 @@ func (m *Model) keep(n *node, sites []int, belief, like, day []float64, total fl
 		}
 	}
 	slices.SortFunc(all, func(a, b held) int { return cmp.Or(cmp.Compare(b.mass, a.mass), a.i-b.i) })
-	most, least := m.most, m.minMass
+	least := m.minMass
 	if n.wide {
-		most, least = max(most, widePlaces), min(least, wideMass)
+		least = min(least, wideMass)
 	}
 	cut := 0
-	for cut < len(all) && cut < most && (cut == 0 || all[cut].mass >= least*total) {
+	for cut < len(all) && (cut == 0 || all[cut].mass >= least*total) {
 		cut++
 	}
 	all = all[:cut]
@@ -497,8 +494,8 @@ func (m *Model) collect(sites []int, p []float64) belief {
 }
 
 // PlateauRate is the rate of change, in points of function per week, below which a course
-// counts as a plateau: a tenth of a noticeable change each week.
-const PlateauRate = 2.5
+// counts as a plateau: less than a noticeable change (Margin) in four weeks.
+const PlateauRate = Margin / 4
 
 // filteredBelief is what was known with the i-th visit, smoothedBelief what is known of it now.
 func (c *Course) filteredBelief(i int) belief {

@@ -22,7 +22,7 @@ func exact(growth bool) (*bench, *Model) {
 	r := DefaultRates()
 	r.NewPerYear, r.GrowPerYear = 2, 3 // large, so that a mistake would show
 	m := NewModel(b, r)
-	m.minMass, m.minState, m.most = 0, 0, 1<<20
+	m.minMass, m.minState = 0, 0
 	return b, m
 }
 
@@ -207,7 +207,7 @@ func TestChangeAgainstAllPaths(t *testing.T) {
 	rates := DefaultRates()
 	rates.NewPerYear = 0
 	m := NewModel(b, rates)
-	m.minMass, m.minState, m.most = 0, 0, 1<<20
+	m.minMass, m.minState = 0, 0
 	r := rand.New(rand.NewPCG(12, 3))
 	visits := someVisits(b, r, 3)
 	visits[1].Examined, visits[2].Examined = week(2), week(3)
@@ -287,7 +287,7 @@ func TestSplitVisits(t *testing.T) {
 func TestDroppingAndStoppingAreHarmless(t *testing.T) {
 	b := newBench()
 	full := NewModel(b, DefaultRates())
-	full.minMass, full.minState, full.most = 0, 0, 1<<20
+	full.minMass, full.minState = 0, 0
 	lean := NewModel(b, DefaultRates())
 	r := rand.New(rand.NewPCG(9, 9))
 	all, some := NewCourse(full), NewCourse(lean)

@@ -148,9 +148,10 @@ type Plateau struct {
 	Words       string     `json:"words"`
 }
 
-// PlateauNamed is the probability from which a plateau is named. On simulated courses it is then
-// named within four visits of its start in more than 80 %.
-const PlateauNamed = 0.7
+// PlateauNamed is the probability from which a plateau is named. On simulated courses a true one is
+// then named within four visits of its start in more than 80 %, and a false one less than
+// once in twenty years of weekly visits.
+const PlateauNamed = 0.75
 
 // Relapse says whether the animal has lost what it had gained.
 type Relapse struct {
