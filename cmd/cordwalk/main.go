@@ -54,7 +54,7 @@ func run() int {
 		}
 	}
 	keeper := &desk.Keeper{KeyFile: o.KeyFile}
-	program := desk.New(app.NewWithID("example.cordwalk"), keeper, settings, path, nil)
+	program := desk.New(desk.Still(app.NewWithID("example.cordwalk")), keeper, settings, path, nil)
 	if o.Demo {
 		program.StartDemo(o.Store)
 	} else {

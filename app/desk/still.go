@@ -1,0 +1,30 @@
+package desk
+
+import (
+	"runtime"
+
+	"fyne.io/fyne/v2"
+)
+
+// Still makes a Fyne app that moves nothing by itself: no blinking caret, no fading button. An
+// idle window then draws nothing, where the caret alone would draw the whole of it many times a
+// second. On macOS the toolkit needs its own app behind this, and it is returned as it is.
+func Still(a fyne.App) fyne.App {
+	if runtime.GOOS == "darwin" {
+		return a
+	}
+	s := stillApp{a, stillSettings{a.Settings()}}
+	fyne.SetCurrentApp(s)
+	return s
+}
+
+type stillApp struct {
+	fyne.App
+	settings stillSettings
+}
+
+func (s stillApp) Settings() fyne.Settings { return s.settings }
+
+type stillSettings struct{ fyne.Settings }
+
+func (stillSettings) ShowAnimations() bool { return false }
