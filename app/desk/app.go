@@ -266,7 +266,7 @@ func (a *App) windowSize() fyne.Size {
 	if a.settings.Width >= 600 && a.settings.Height >= 400 {
 		return fyne.NewSize(float32(a.settings.Width), float32(a.settings.Height))
 	}
-	return fyne.NewSize(1280, 800)
+	return fyne.NewSize(1280, 720)
 }
 
 func (a *App) rememberWindow(w *window) {

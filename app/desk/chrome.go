@@ -37,6 +37,8 @@ func screenTitle(s view.Screen) string {
 		return words.T("Devices")
 	case view.ScreenSettings:
 		return words.T("Settings")
+	case view.ScreenOutcomes:
+		return words.T("Outcomes")
 	}
 	return words.T("Caseload")
 }

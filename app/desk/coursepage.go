@@ -109,6 +109,7 @@ func (p *coursePage) help() []view.KeyHelp {
 		{Keys: words.T("Left, Right"), Does: words.T("earlier, later")},
 		{Keys: "0", Does: words.T("the whole course")},
 		{Keys: "m", Does: words.T("the whole series, or each visit by itself")},
+		{Keys: "f", Does: words.T("published scales and plain statistics")},
 		{Keys: words.T("space"), Does: words.T("play the visits on the drawing")},
 		{Keys: "[ ]", Does: words.T("the visit before, the visit after")},
 	}
@@ -138,6 +139,7 @@ func (p *coursePage) build() {
 		zoom(words.T("All"), 0), zoom(words.T("12 weeks"), 12), zoom(words.T("4 weeks"), 4),
 		mark.NewButton("", "left", func() { p.pan(1) }).WithTip(words.T("Earlier")),
 		mark.NewButton("", "right", func() { p.pan(-1) }).WithTip(words.T("Later")),
+		mark.NewButton(words.T("Figures"), "grid", p.figures).WithTip(words.T("Published scales and plain statistics. Key f")),
 		mark.NewButton(words.T("Save picture"), "save", p.askSave))...)
 	p.strip = newChartHost(p.course.Strip, fyne.NewSize(400, 460*max(1, look.Scale())))
 	p.strip.hover = func(x, y, w, h vg.Length, st chart.Style) string {
@@ -362,6 +364,8 @@ func (p *coursePage) typedRune(r rune) bool {
 		p.span()
 	case ' ':
 		p.play()
+	case 'f':
+		p.figures()
 	case 'm':
 		if p.course == p.model {
 			p.switchTo(p.plain)

@@ -151,8 +151,18 @@ func (p *examPage) visitPick(v exam.Visit) fyne.CanvasObject {
 	} else if _, open := p.file.open(); !open {
 		shown, ids = append([]string{words.T("A new visit")}, shown...), append([]string{""}, ids...)
 	}
+	if n := len(p.file.Visits); n > 0 {
+		last := p.file.Visits[n-1]
+		if exam.DayOf(last.Examined) == exam.DayOf(p.win.app.now()) && last.State == exam.Closed && last.RepeatOf.IsZero() && v.RepeatOf.IsZero() {
+			shown, ids = append(shown, words.T("Repeat today's exam, blind")), append(ids, "repeat")
+		}
+	}
 	return mark.Choice(shown, ids, v.ID.String(), func(s string) {
 		if s == v.ID.String() {
+			return
+		}
+		if s == "repeat" {
+			p.repeat()
 			return
 		}
 		id, err := exam.ParseID(s)
@@ -161,6 +171,21 @@ func (p *examPage) visitPick(v exam.Visit) fyne.CanvasObject {
 		}
 		p.win.goTo(view.Route{Screen: view.ScreenExam, Patient: p.file.Patient.ID, Visit: id})
 	})
+}
+
+// repeat begins an exam of the same animal on the same day whose earlier grades stay hidden: it
+// measures how well two exams of this practice agree.
+func (p *examPage) repeat() {
+	a := p.win.app
+	of := p.file.Visits[len(p.file.Visits)-1]
+	v := view.StartVisit(a.records.NewID(), p.file.Patient, a.examiner, of.Protocol, a.practice.Zone, a.now())
+	v.RepeatOf = of.ID
+	p.keepTyped()
+	p.side.close()
+	p.saved = exam.Visit{}
+	p.build(v)
+	p.win.show(p)
+	p.win.foot.say(words.T("A repeat exam: grade what you find; the earlier grades are hidden."))
 }
 
 // examLayout gives the grid 62 % and the map 38 % of the width.

@@ -3,7 +3,6 @@ package desk
 import (
 	"context"
 	"errors"
-	"math"
 	"slices"
 	"strconv"
 	"strings"
@@ -16,7 +15,6 @@ import (
 	"cordwalk.example/cordwalk/app/desk/look"
 	"cordwalk.example/cordwalk/app/desk/mark"
 	"cordwalk.example/cordwalk/app/view"
-	"cordwalk.example/cordwalk/assets/drawing"
 	"cordwalk.example/cordwalk/assets/words"
 	"cordwalk.example/cordwalk/exam"
 	"cordwalk.example/cordwalk/exam/anatomy"
@@ -174,7 +172,7 @@ func (s *examSide) show() {
 	}
 	s.note.Hide()
 	s.host.Show()
-	s.host.set(cordMapOf(s.page.file.Patient.Species, s.kg, r))
+	s.host.set(chart.CordOf(s.page.file.Patient.Species, s.kg, r, ""))
 	s.likely.Words = words.Of(r.Summary)
 	if r.Enough && len(r.Sites) > 0 {
 		s.likely.Words = words.T("%s: %s", words.Of(r.Summary), chanceWord(r.Sites[0].Probability))
@@ -290,57 +288,6 @@ func (s *examSide) unanswered() []string {
 		}
 	}
 	return out
-}
-
-// cordMapOf lays the probabilities over the column of a species at a weight in kg.
-func cordMapOf(sp exam.Species, kg float64, r *localise.Result) chart.CordMap {
-	var m chart.CordMap
-	column := drawing.Column(sp)
-	for _, b := range column {
-		m.Vertebrae = append(m.Vertebrae, chart.CordBlock{Name: b.Vertebra.String(), Major: b.Vertebra.Number() == 1, From: b.Start, To: b.End})
-	}
-	along := func(v float64) float64 {
-		i := int(math.Floor(v))
-		if i < 0 {
-			return 0
-		}
-		if i >= len(column) {
-			return 1
-		}
-		b := column[i]
-		return b.Start + (b.End-b.Start)*(v-float64(i))
-	}
-	index := map[string]int{}
-	for _, seg := range anatomy.Segments(sp) {
-		from, to, err := anatomy.Place(sp, kg, seg)
-		if err != nil {
-			continue
-		}
-		index[seg.String()] = len(m.Segments)
-		m.Segments = append(m.Segments, chart.CordSegment{Name: seg.String(), From: along(from), To: along(to)})
-	}
-	for _, d := range r.Segments {
-		i, ok := index[d.Segment]
-		if !ok {
-			continue
-		}
-		m.Segments[i].Known = true
-		if d.Side == "left" {
-			m.Segments[i].Left = d.Damaged
-		} else {
-			m.Segments[i].Right = d.Damaged
-		}
-	}
-	bracket := func(label, a, b string) {
-		i, ok1 := index[a]
-		j, ok2 := index[b]
-		if ok1 && ok2 {
-			m.Brackets = append(m.Brackets, chart.CordBracket{Label: label, From: m.Segments[i].From, To: m.Segments[j].To})
-		}
-	}
-	bracket(words.T("cervical enlargement"), "C6", "T2")
-	bracket(words.T("lumbar enlargement"), "L4", "S3")
-	return m
 }
 
 // hover explains a place of the map: the segment, what it serves, what was found there.

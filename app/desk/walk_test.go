@@ -166,6 +166,12 @@ func screens(s *stage) map[string]func() {
 		"course":   func() { s.show(view.ScreenCourse, bramble) },
 		"sheet":    func() { s.show(view.ScreenSheet, bramble) },
 		"devices":  func() { s.show(view.ScreenDevices, bramble) },
+		"outcomes": func() { s.show(view.ScreenOutcomes, bramble) },
+		"figures": func() {
+			s.show(view.ScreenCourse, bramble)
+			s.until("the course worked out", func() bool { return s.win().page.(*coursePage).result != nil })
+			s.keys("f")
+		},
 		"settings": func() { s.show(view.ScreenSettings, bramble) },
 		"patient":  func() { s.show(view.ScreenPatient, bramble) },
 		"help":     func() { s.show(view.ScreenExam, bramble); s.win().showHelp() },

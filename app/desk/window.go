@@ -153,6 +153,10 @@ func (w *window) open(r view.Route) {
 		w.file = File{}
 		w.show(newDevicesPage(w))
 		return
+	case view.ScreenOutcomes:
+		w.file = File{}
+		w.show(newOutcomesPage(w))
+		return
 	case view.ScreenPatient:
 		if r.Patient.IsZero() {
 			w.file = File{}
