@@ -116,7 +116,6 @@ func (m CordMap) Draw(c draw.Canvas, st Style) {
 		return
 	}
 	small := size * 0.85
-	last := vg.Length(math.Inf(-1))
 	for _, major := range []bool{true, false} {
 		var taken []vg.Length
 		if !major {
@@ -126,7 +125,7 @@ func (m CordMap) Draw(c draw.Canvas, st Style) {
 				}
 			}
 		}
-		last = vg.Length(math.Inf(-1))
+		last := vg.Length(math.Inf(-1))
 		for i, v := range m.Vertebrae {
 			r := pl.rect(v.From, v.To, pl.bones)
 			if major {

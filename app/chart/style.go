@@ -176,14 +176,6 @@ func Contrast(a, b color.NRGBA) float64 {
 	return (x + 0.05) / (y + 0.05)
 }
 
-// readable returns Ink or Paper, whichever reads better on the colour.
-func (p Palette) readable(on color.NRGBA) color.NRGBA {
-	if Contrast(p.Ink, on) >= Contrast(p.Paper, on) {
-		return p.Ink
-	}
-	return p.Paper
-}
-
 // Typeface is the name of the charts' typeface.
 const Typeface = "Noto Sans"
 
