@@ -27,6 +27,8 @@ type Settings struct {
 	Posture   map[string]string `json:"posture,omitempty"`  // patient id → how it is held
 	OneByOne  bool              `json:"oneByOne,omitempty"` // the exam shows a single test
 	Protocol  string            `json:"protocol,omitempty"` // used last
+	Exchange  string            `json:"exchange,omitempty"` // folder by which devices exchange
+	Backups   string            `json:"backups,omitempty"`  // folder of the backups
 	Token     map[string]string `json:"token,omitempty"`    // store id → proof that the store was not copied
 }
 
