@@ -56,7 +56,7 @@ func rebuild(ctx context.Context, dir string, o Options) error {
 		bag, err = id.unlock(o.Files, o.Unlock)
 	}
 	if err == nil {
-		b := builder{ctx: ctx, fs: o.Files, dir: dir, bag: bag, seals: newSeals(bag.Ring), lives: id.lives(), limits: id.Limits, o: o}
+		b := builder{ctx: ctx, fs: o.Files, dir: dir, bag: bag, seals: newSeals(o.Files, dir, bag.Ring), lives: id.lives(), limits: id.Limits, o: o}
 		var problems []Problem
 		_, problems, err = b.build()
 		for _, p := range problems {
@@ -315,7 +315,7 @@ func (b *builder) workOut(i int, gaps []timedGap) (f filled) {
 		order = append(order, one{b.seals.patientKey(id), id, rs})
 	}
 	slices.SortFunc(order, func(a, b one) int { return bytes.Compare(a.key, b.key) })
-	store := &Store{}
+	store := &Store{seals: b.seals}
 	for _, o := range order {
 		m := manifest{Patient: o.id}
 		first := len(f.records)

@@ -44,7 +44,13 @@ func check(ctx context.Context, dir string, o Options) ([]Problem, error) {
 	if _, err := fl.all(dir); err != nil {
 		return nil, err
 	}
-	return append(ps, checkIndex(filepath.Join(dir, indexFile), newSeals(bag.Ring), st)...), nil
+	seals := newSeals(o.Files, dir, bag.Ring)
+	bad, err := seals.owners.problems()
+	if err != nil {
+		return nil, err
+	}
+	ps = append(ps, bad...)
+	return append(ps, checkIndex(filepath.Join(dir, indexFile), seals, st)...), nil
 }
 
 // checkIndex verifies every value, count and sum of the index.

@@ -716,6 +716,7 @@ func (s *Store) SetKeys(ring *key.Ring) error {
 		return explain("keeping the practice's keys", err)
 	}
 	s.id, s.bag = id, bag
+	s.seals.owners.keys.Store(ring)
 	return nil
 }
 

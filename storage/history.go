@@ -116,6 +116,11 @@ func (s *Store) words(kind Kind, name string, c change.Change) string {
 	if c.Cleared() {
 		return ""
 	}
+	if kind == KindPatient && name == fieldOwner {
+		if _, err := s.seals.owners.openContact(c.Value); err != nil {
+			return "(" + err.Error() + ")"
+		}
+	}
 	w, err := valueWords(s, kind, name, c.Value)
 	if err != nil {
 		return "(" + err.Error() + ")"

@@ -113,13 +113,16 @@ func (m *manifest) note(s change.Stream, seq uint64) {
 
 // seals seals and names the values of an index.
 type seals struct {
-	aead  cipher.AEAD
-	names key.Secret
-	marks key.Secret
+	aead   cipher.AEAD
+	names  key.Secret
+	marks  key.Secret
+	owners *ownerKeys
 }
 
-func newSeals(r *key.Ring) *seals {
-	return &seals{aead: r.Index().AEAD(), names: r.Index().Derive("names"), marks: r.Index().Derive("marks")}
+func newSeals(fsys disk.FS, dir string, r *key.Ring) *seals {
+	s := &seals{aead: r.Index().AEAD(), names: r.Index().Derive("names"), marks: r.Index().Derive("marks"), owners: &ownerKeys{fs: fsys, dir: dir}}
+	s.owners.keys.Store(r)
+	return s
 }
 
 const nameSize = 16

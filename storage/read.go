@@ -144,6 +144,11 @@ func (s *Store) repairing(read func() error) error {
 func (s *Store) repair(seen *index, why error) error {
 	s.write.Lock()
 	defer s.write.Unlock()
+	return s.repairWriting(seen, why)
+}
+
+// repairWriting is repair for those who hold write.
+func (s *Store) repairWriting(seen *index, why error) error {
 	s.follow.Lock()
 	defer s.follow.Unlock()
 	s.mu.Lock()
@@ -490,6 +495,11 @@ func (s *Store) setPatient(p *exam.Patient, name string, b []byte) error {
 	case "born":
 		return setDate(&p.Born)(b)
 	case fieldOwner:
+		if b, err = s.seals.owners.openContact(b); errors.Is(err, ErrErased) {
+			return nil // the entry that erased it says so
+		} else if err != nil {
+			return err
+		}
 		return setContact(&p.Owner)(b)
 	case "veterinarian":
 		return setContact(&p.Veterinarian)(b)

@@ -72,7 +72,7 @@ func (o Options) withDefaults() Options {
 // Store is an open practice. It is safe for use by several goroutines; writes are put in a
 // row, reads do not wait for the disk of a write.
 //
-// Locks are taken in this order: exch, absorbing, follow, write, mu.
+// Locks are taken in this order: exch, absorbing, write, follow, mu.
 type Store struct {
 	dir   string
 	o     Options
@@ -118,6 +118,8 @@ type Store struct {
 	full chan struct{} // much is behind
 	quit chan struct{}
 	done chan struct{}
+
+	quitOnce sync.Once
 }
 
 // Create makes a new practice in a folder, which may exist if it is empty, and opens it.
@@ -267,7 +269,7 @@ func open(dir string, o Options) (*Store, error) {
 // start brings index and journal together and begins to follow.
 func start(dir string, o Options, lock disk.Unlocker, id identity, bag key.Bag, damage []Problem) (*Store, error) {
 	s := &Store{
-		dir: dir, o: o, fs: o.Files, id: id, bag: bag, seals: newSeals(bag.Ring), lock: lock,
+		dir: dir, o: o, fs: o.Files, id: id, bag: bag, seals: newSeals(o.Files, dir, bag.Ring), lock: lock,
 		overlay: map[exam.ID]map[recordKey]*record{}, changed: map[exam.ID]map[recordKey]bool{}, lastOwn: map[exam.ID]uint64{},
 		problems: damage, recv: map[change.Stream]*receiver{}, heads: map[change.Stream][]segment.Signed{}, lateNow: map[change.Stream]bool{}, stop: make(chan struct{}),
 		wake: make(chan struct{}, 1), full: make(chan struct{}, 1), quit: make(chan struct{}), done: make(chan struct{}),
@@ -468,6 +470,8 @@ func (s *Store) onIndex(f func(x *index, tx *bbolt.Tx) error) error {
 // whatever Close returns.
 func (s *Store) Close() error {
 	s.stopExchange()
+	s.quitOnce.Do(func() { close(s.quit) })
+	<-s.done
 	s.write.Lock()
 	s.mu.Lock()
 	if s.shut {
@@ -476,14 +480,13 @@ func (s *Store) Close() error {
 		return nil
 	}
 	s.mu.Unlock()
-	close(s.quit)
-	<-s.done
 	ferr := s.flush()
 	s.mu.Lock()
 	s.shut = true
 	x := s.idx
 	s.mu.Unlock()
 	s.out.leave()
+	s.seals.owners.close()
 	s.write.Unlock()
 	if ferr != nil {
 		s.o.Notice("the index could not be brought up to date; it will be at the next start: " + ferr.Error())
@@ -541,7 +544,14 @@ func (s *Store) following() {
 			t.Stop()
 		case <-t.C:
 		}
-		if err := s.flush(); err != nil {
+		s.mu.RLock()
+		seen := s.idx
+		s.mu.RUnlock()
+		err := s.flush()
+		if errors.Is(err, errIndex) {
+			err = s.repair(seen, err)
+		}
+		if err != nil {
 			s.o.Notice("the index could not be brought up to date; it is tried again: " + explain("writing the index", err).Error())
 			wait = min(2*wait, time.Minute)
 			s.poke(0)
@@ -591,6 +601,11 @@ func (s *Store) flush() error {
 		return err
 	}
 	_ = disk.At(s.fs, "index committed", x.path)
+	for _, d := range ds {
+		if err := s.forgetOwners(d.records); err != nil {
+			return err // the index has it; the key is destroyed at the next try or start
+		}
+	}
 	s.mu.Lock()
 	defer s.mu.Unlock()
 	s.behind -= behind

@@ -158,7 +158,7 @@ func (x *index) row(tx *bbolt.Tx, st *indexState, patient exam.ID) (Summary, boo
 	if err != nil {
 		return Summary{}, false, err
 	}
-	r, ok, err := (&Store{}).assemble(patient, v)
+	r, ok, err := (&Store{seals: x.seals}).assemble(patient, v)
 	if err != nil {
 		return Summary{}, false, fmt.Errorf("%w: %w", errIndex, err)
 	}

@@ -64,7 +64,15 @@ func (s *Store) Apply(ctx context.Context, examiner string, edits ...Edit) (Rece
 			return Receipt{}, explain("saving", err)
 		}
 	}
+	s.mu.RLock()
+	seen := s.idx
+	s.mu.RUnlock()
 	p, err := s.prepare(examiner, edits)
+	if errors.Is(err, errIndex) {
+		if err = s.repairWriting(seen, err); err == nil {
+			p, err = s.prepare(examiner, edits)
+		}
+	}
 	if err != nil || p == nil {
 		return Receipt{}, err
 	}
@@ -138,6 +146,13 @@ func (s *Store) changeFor(r *record, e Edit) (change.Change, bool, error) {
 		return change.Change{}, false, errors.New("the visit is open; change it without an amendment")
 	}
 	f := merge.Evaluate(r.versions(e.Field), r.closingFor(e.Field))
+	if e.Kind == KindPatient && e.Field == fieldOwner {
+		var same bool
+		var err error
+		if e.Value, same, err = s.ownerValue(f.Current, e); err != nil || (same && len(f.Late) == 0) {
+			return change.Change{}, false, err
+		}
+	}
 	if e.act == change.Edit && len(f.Late) == 0 && saysSo(f.Current, e.Value) {
 		return change.Change{}, false, nil
 	}
@@ -149,6 +164,28 @@ func (s *Store) changeFor(r *record, e Edit) (change.Change, bool, error) {
 		c.Seen = r.heads()
 	}
 	return c, true, nil
+}
+
+// ownerValue seals an owner's contact data under the owner's key, and reports whether they are
+// what is said already.
+func (s *Store) ownerValue(current []change.Change, e Edit) (value []byte, same bool, err error) {
+	if _, sealed := sealedContact(e.Value); sealed || len(e.Value) == 0 {
+		return e.Value, false, nil
+	}
+	if e.act == change.Edit && len(current) == 1 {
+		if clear, err := s.seals.owners.openContact(current[0].Value); err == nil && slices.Equal(clear, e.Value) {
+			return e.Value, true, nil
+		}
+	}
+	r, err := s.baseRecord(recordKey{change.KindOwner, e.Patient, e.Patient})
+	if err != nil {
+		return nil, false, explain("reading the owner", err)
+	}
+	if len(r.versions(fieldErased)) > 0 {
+		return nil, false, fmt.Errorf("the contact data of this owner were %w; make a new patient to keep new ones", ErrErased)
+	}
+	value, err = s.seals.owners.sealContact(e.Patient, e.Value)
+	return value, false, explain("keeping the key of the owner's contact data", err)
 }
 
 // saysSo reports whether a field's only value is this one.
