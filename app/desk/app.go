@@ -33,6 +33,7 @@ type App struct {
 	practice exam.Practice
 	saver    *view.Saver
 	examiner string
+	shared   time.Time // of the last exchange since the program was started
 
 	windows     []*window
 	lastPatient exam.ID

@@ -285,6 +285,9 @@ func (s *strip) update() {
 	if !a.records.Protected() {
 		badges = append(badges, badge(words.T("not protected"), words.T("The key lies beside the data: whoever has this folder can read it.")))
 	}
+	if !a.shared.IsZero() {
+		badges = append(badges, badge(words.T("shared %s", a.shared.Format("15:04")), words.T("Exchanged with the other devices at that time.")))
+	}
 	large := look.Scale() > 1.3
 	rightBox := mark.Column(2, alignRight(mark.Line(st.Date)), alignRight(append(badges, s.save)...))
 	if large {

@@ -557,3 +557,94 @@ func BenchmarkKeyToCell(b *testing.B) {
 		g.update()
 	}
 }
+
+func TestSharingBeginsWithARecoveryKeyAndExchangesByAFolder(t *testing.T) {
+	s := newStage(t, view.Settings{})
+	dir := filepath.Join(t.TempDir(), "practice")
+	k := s.app.opener.(*Keeper)
+	k.Config = t.TempDir()
+	r, err := k.Create(dir, nil, exam.Practice{Name: "Hillside", Examiners: []exam.Examiner{{Name: "R. Okafor"}}}, "R. Okafor")
+	if err != nil {
+		t.Fatal(err)
+	}
+	if err := r.Close(); err != nil {
+		t.Fatal(err)
+	}
+	s.app.Start(dir)
+	w := s.win()
+	w.win.Resize(fyne.NewSize(1366, 768))
+	s.until("the caseload", func() bool { _, ok := w.page.(*caseloadPage); return ok })
+	s.show(view.ScreenDevices, exam.ID{})
+	p := w.page.(*devicesPage)
+	has := func(words string) bool {
+		for _, x := range texts(w.win.Content(), w.win.Canvas().Size()) {
+			if strings.Contains(x.words, words) {
+				return true
+			}
+		}
+		return false
+	}
+	if !has("Begin to share") {
+		t.Fatal("the page does not offer to begin")
+	}
+	press := func(words string) {
+		t.Helper()
+		var walk func(o fyne.CanvasObject) bool
+		walk = func(o fyne.CanvasObject) bool {
+			if b, ok := o.(interface {
+				fyne.Tappable
+				fyne.Widget
+			}); ok {
+				for _, x := range texts(b, fyne.NewSize(2000, 2000)) {
+					if x.words == words {
+						b.Tapped(nil)
+						return true
+					}
+				}
+			}
+			var inner []fyne.CanvasObject
+			switch x := o.(type) {
+			case *fyne.Container:
+				inner = x.Objects
+			case fyne.Widget:
+				inner = test.WidgetRenderer(x).Objects()
+			}
+			for _, c := range inner {
+				if walk(c) {
+					return true
+				}
+			}
+			return false
+		}
+		if !walk(p.root) {
+			t.Fatalf("there is no button %q", words)
+		}
+	}
+	press("Begin to share and back up")
+	s.until("the practice founded", func() bool { return p.share != nil && !p.busy })
+	home, _ := os.UserHomeDir()
+	sheet, err := os.ReadFile(filepath.Join(home, "cordwalk-recovery.txt"))
+	if err != nil || !strings.Contains(string(sheet), "AGE-SECRET-KEY-") {
+		t.Errorf("the recovery sheet holds %d bytes, %v", len(sheet), err)
+	}
+	folder := t.TempDir()
+	s.app.settings.Exchange, s.app.settings.Backups = folder, t.TempDir()
+	press("Exchange now")
+	s.until("the exchange", func() bool { return !s.app.shared.IsZero() })
+	if es, err := os.ReadDir(folder); err != nil || len(es) == 0 {
+		t.Errorf("the folder holds %d entries, %v", len(es), err)
+	}
+	if !has("shared 10:00") {
+		t.Error("the strip does not say that the practice is shared")
+	}
+	press("Invite a device")
+	s.until("the code", func() bool { return p.code != "" && !p.busy })
+	press("Back up now")
+	s.until("the backup", func() bool { return !p.busy && len(p.report) > 0 && strings.Contains(p.report[0], "read back") })
+	if es, err := os.ReadDir(s.app.settings.Backups); err != nil || len(es) == 0 {
+		t.Errorf("the backup folder holds %d entries, %v", len(es), err)
+	}
+	for _, f := range faults(w.win.Content(), w.win.Canvas().Size()) {
+		t.Error(f)
+	}
+}

@@ -15,11 +15,13 @@ import (
 	"cordwalk.example/cordwalk/assets/words"
 	"cordwalk.example/cordwalk/exam"
 	"cordwalk.example/cordwalk/storage"
+	"cordwalk.example/cordwalk/sync/share"
 )
 
 // Keeper opens and makes stores on this machine's disk.
 type Keeper struct {
 	KeyFile string           // unlocks instead of a passphrase; may be empty
+	Config  string           // the program's folder in the user's configuration; empty: no watch over copied stores
 	Now     func() time.Time // nil: time.Now
 }
 
@@ -79,7 +81,7 @@ func (k *Keeper) Open(dir string, pass []byte, progress func(string, int64, int6
 	if err != nil {
 		return nil, err
 	}
-	return &kept{s, dir}, nil
+	return k.keep(s, dir, notice)
 }
 
 // Create makes a practice in a folder.
@@ -98,8 +100,27 @@ func (k *Keeper) Create(dir string, pass []byte, p exam.Practice, examiner strin
 			p.Examiners[i].ID = storage.NewID()
 		}
 	}
+	r, err := k.keep(s, dir, nil)
+	if err != nil {
+		return nil, err
+	}
 	if _, err := s.Apply(context.Background(), examiner, storage.PracticeEdits(exam.Practice{}, p)...); err != nil {
 		return nil, errors.Join(err, s.Close())
+	}
+	return r, nil
+}
+
+// keep finds out whether the store was copied or put back behind the program's back, before anything is
+// written: then this device goes on under a new name, so that no number is used twice.
+func (k *Keeper) keep(s *storage.Store, dir string, notice func(string)) (Records, error) {
+	if k.Config != "" {
+		renewed, err := share.CheckToken(context.Background(), s, nil, k.Config)
+		if err != nil {
+			return nil, errors.Join(err, s.Close())
+		}
+		if renewed && notice != nil {
+			notice(words.T("This practice was copied, restored or last opened elsewhere: it goes on under a new device number."))
+		}
 	}
 	return &kept{s, dir}, nil
 }
@@ -130,7 +151,7 @@ func (k *Keeper) Demo(dir string, progress func(string, int64, int64)) (Records,
 	if err != nil {
 		return nil, errors.Join(err, s.Close())
 	}
-	return &kept{s, dir}, nil
+	return k.keep(s, dir, nil)
 }
 
 // kept is a store as the screens use it.
@@ -200,3 +221,6 @@ func (k *kept) Protected() bool { return k.s.Protected() }
 func (k *kept) Device() string  { return k.s.Device() }
 func (k *kept) Place() string   { return k.dir }
 func (k *kept) Close() error    { return k.s.Close() }
+
+// Store returns the store itself, for what concerns devices and backups.
+func (k *kept) Store() *storage.Store { return k.s }

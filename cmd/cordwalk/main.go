@@ -6,6 +6,7 @@ import (
 	"errors"
 	"fmt"
 	"os"
+	"path/filepath"
 	"runtime"
 
 	"fyne.io/fyne/v2/app"
@@ -54,6 +55,9 @@ func run() int {
 		}
 	}
 	keeper := &desk.Keeper{KeyFile: o.KeyFile}
+	if path != "" {
+		keeper.Config = filepath.Dir(path)
+	}
 	program := desk.New(desk.Still(app.NewWithID("example.cordwalk")), keeper, settings, path, nil)
 	if o.Demo {
 		program.StartDemo(o.Store)
