@@ -246,7 +246,7 @@ const points = 5
 
 // quadrature returns the deviations in logits and their weights.
 func (p *Params) quadrature() (dev, weight [points]float64) {
-	const blunder = 6 // logits: far beyond any threshold; judgement
+	const blunder = 14 // logits: beyond every threshold, so that everything is read as lost, or as sound
 	s := float64(p.ArcSpread * 1.7320508075688772)
 	b := p.ArcBlunder
 	dev = [points]float64{-blunder, -s, 0, s, blunder}

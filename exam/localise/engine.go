@@ -402,6 +402,18 @@ func (e *Engine) groupLog(g *group, qw *[points]float64, out []uint64, skipBulk 
 	}
 }
 
+// blockLogs returns what a hypothesis's sums are raised by where cells were filled in a block:
+// the chance that the block was looked at; and the chance that it was not, times what the
+// block shows of a sound animal. A fill without looking shows normal grades whatever the
+// lesion, and is no likelier for being long. Both are 0 where nothing was filled in a block.
+func (e *Engine) blockLogs() (lookedAt, careless int64) {
+	if e.blocks == 0 {
+		return 0, 0
+	}
+	p, sound := e.m.p, e.m.sound
+	return toLog(logOf(1 - p.Careless)), toLog(logOf(p.Careless)) + e.full[sound] - e.looked[sound]
+}
+
 // weigh turns log sums into weights and adds them up by damage. With the label or without.
 func (e *Engine) weigh(labelled bool) {
 	m := e.m
@@ -412,10 +424,7 @@ func (e *Engine) weigh(labelled bool) {
 		early = toLog(logOf(t / m.p.Acute))
 		late = toLog(logOf((1 - t) / (1 - m.p.Acute)))
 	}
-	var lookedAt, careless int64
-	if e.blocks > 0 {
-		lookedAt, careless = toLog(logOf(1-m.p.Careless)), toLog(logOf(m.p.Careless))
-	}
+	lookedAt, careless := e.blockLogs()
 	best := int64(none)
 	prior := func(h int) int64 {
 		l := m.prior[h]

@@ -158,6 +158,8 @@ func discWeight(s exam.Species, centre2 int) float64 {
 // junction and the lumbosacral joint; hardly the ribs' and the tail's levels. Judgement.
 func painWeight(v int) float64 {
 	switch {
+	case v == 1 || v == 4 || v == 5: // C2–C3 (Hakozaki-2015: 32 % in small dogs), C5–C7 (Bonelli-2021)
+		return 1.6
 	case v >= vertT1+1 && v <= vertT1+8:
 		return 0.4
 	case v == vertL7:
@@ -191,9 +193,13 @@ func (sp *space) enumerate() {
 		}
 		for from := 0; from+length <= sp.segments; from += step {
 			to := from + length - 1
+			share := p.Extent[extent]
+			if from+to >= 2*segL4 {
+				share = p.ExtentLow[extent]
+			}
 			for _, side := range all {
 				sp.add(site{kind: Cord, from: from, to: to, side: side, extent: extent, region: regionOf(from, to),
-					weight: float64(float64(p.Extent[extent]*p.Sides[side]) * discWeight(sp.species, from+to) * float64(step))})
+					weight: float64(float64(share*p.Sides[side]) * discWeight(sp.species, from+to) * float64(step))})
 			}
 		}
 	}
@@ -280,7 +286,7 @@ func (sp *space) enumerate() {
 		kind Kind
 		part part
 		w    float64
-	}{{Joint, partStifle, 0.5}, {Joint, partHip, 0.3}, {Joint, partShoulder, 0.2}, {Tendon, partCalcanean, 0.8}, {Tendon, partCarpal, 0.2}, {Ischaemic, noPart, 1}} {
+	}{{Joint, partStifle, 0.4}, {Joint, partHip, 0.3}, {Joint, partShoulder, 0.3}, {Tendon, partCalcanean, 0.8}, {Tendon, partCarpal, 0.2}, {Ischaemic, noPart, 1}} {
 		for _, side := range plain {
 			region := NoRegion
 			if g.kind == Ischaemic {
@@ -325,11 +331,11 @@ func nerveWeight(n nerveID) float64 {
 	case of(anatomy.Radial), nerveRadialLow, of(anatomy.Femoral):
 		return 0.3
 	case of(anatomy.Suprascapular), of(anatomy.Median), of(anatomy.Ulnar), of(anatomy.Musculocutaneous):
-		return 0.15
+		return 0.2
 	case nerveFacial:
 		return 0.7
 	case nerveTrigeminal:
-		return 0.6
+		return 0.7
 	case nerveVagus:
 		return 0.2
 	case nerveOptic, nerveOculomotor, of(anatomy.Pudendal):
@@ -425,13 +431,19 @@ func (sp *space) each(yield func(h *hypothesis)) {
 		acutes := [2]float64{1 - p.Acute, p.Acute}
 		variants := [3]float64{1, 0, 0}
 		companies := [2]float64{1, 0}
-		sev := p.Severity
+		severityOf := func(acute int) [severities]float64 { return p.Severity[acute] }
+		same := func(v ...float64) {
+			severityOf = func(int) [severities]float64 { return [severities]float64(v) }
+		}
 		if g, ok := t.touchesPlexus(); ok {
 			variants = sp.variants[g]
 		}
 		switch t.kind {
 		case Cord:
 			balances = p.Balance
+			if t.region <= C6T2 {
+				severityOf = func(acute int) [severities]float64 { return p.SeverityNeck[acute] }
+			}
 			if _, ok := t.touchesPlexus(); !ok {
 				balances = [3]float64{0.5, 0.5, 0}
 			}
@@ -442,25 +454,26 @@ func (sp *space) each(yield func(h *hypothesis)) {
 				centrals = [2]float64{1 - p.Central, p.Central}
 			}
 		case NoLesion:
-			sev, acutes = [severities]float64{1}, [2]float64{1, 0}
+			same(1, 0, 0, 0, 0)
+			acutes = [2]float64{1, 0}
 		case PainOnly, Tendon, Systemic, Joint:
 			acutes = [2]float64{1, 0}
-			sev = [severities]float64{0.15, 0.25, 0.3, 0.2, 0.1}
+			same(0.15, 0.25, 0.3, 0.2, 0.1)
 			companies = [2]float64{1, 0}
 			if t.kind == PainOnly {
 				companies = [2]float64{1 - rootSignatureShare(t), rootSignatureShare(t)}
 			}
 		case Generalised, Nerve, Root, CaudaEquina, Plexus, Ischaemic:
-			sev = [severities]float64{0.12, 0.2, 0.26, 0.22, 0.2}
+			same(0.12, 0.2, 0.26, 0.22, 0.2)
 			if t.kind == Nerve {
-				sev = [severities]float64{0.05, 0.15, 0.27, 0.28, 0.25}
+				same(0.09, 0.19, 0.27, 0.25, 0.2)
 			}
 			if t.kind == Generalised {
-				sev = [severities]float64{0.15, 0.28, 0.3, 0.17, 0.1}
+				same(0.15, 0.28, 0.3, 0.17, 0.1)
 				companies = [2]float64{0.6, 0.4}
 			}
 		case Brain:
-			sev = [severities]float64{0.15, 0.2, 0.25, 0.22, 0.18}
+			same(0.15, 0.2, 0.25, 0.22, 0.18)
 			if t.part == partVestibularPeripheral {
 				companies = [2]float64{0.7, 0.3}
 			}
@@ -492,7 +505,7 @@ func (sp *space) each(yield func(h *hypothesis)) {
 										continue
 									}
 								}
-								w := float64(float64(float64(sev[s]*wb)*float64(wc*wa)) * float64(wv*wco))
+								w := float64(float64(float64(severityOf(ac)[s]*wb)*float64(wc*wa)) * float64(wv*wco))
 								if w == 0 {
 									continue
 								}
@@ -509,13 +522,15 @@ func (sp *space) each(yield func(h *hypothesis)) {
 }
 
 // rootSignatureShare: how often a source of pain alone carries a root signature. C2–C5 discs
-// 0.15, C6–T2 discs 0.30 (seed table on Schachar-2024 and Dachs-2024); lumbosacral 0.3, from memory.
+// 0.15 on average, C6–T2 discs 0.30 (seed table on Schachar-2024 and Dachs-2024); lumbosacral 0.3, from memory.
 func rootSignatureShare(t *site) float64 {
 	switch {
-	case t.from >= 1 && t.from < segC6:
-		return 0.15
+	case t.from >= 1 && t.from <= 2: // Farlat-2024: none with C2–C3
+		return 0.08
+	case t.from > 2 && t.from < segC6:
+		return 0.18
 	case t.from >= segC6 && t.from < segT3:
-		return 0.3
+		return 0.35
 	case t.from >= segL4:
 		return 0.3
 	}
@@ -618,6 +633,7 @@ func (sp *space) put(b *body, t *site, h *hypothesis, sev float64) {
 			g, limb := nerveLimb(t.nerve)
 			if limb {
 				b.limbPain[g*2+side] = float64(0.4 * share[side])
+				b.rootPain[g*2+side] = float64(0.15 * share[side]) // DellApa: root signature in 13 %
 			}
 		}
 	case Generalised:

@@ -95,7 +95,7 @@ func (st *state) latent(c *cell) float64 {
 		v = both(v, float64(0.8*st.limbPain[l]))
 		uneven := max(0, st.lower[l]-float64(0.6*st.lower[g*2+other]))
 		v = both(v, float64(0.6*uneven))
-		v = both(v, float64(0.3*max(0, st.motor[l]-st.motor[g*2+other])))
+		v = both(v, float64(0.2*max(0, st.motor[l]-st.motor[g*2+other])))
 		return both(v, float64(0.3*st.myalgia))
 	case exam.RootSignature:
 		return st.rootPain[l]
@@ -144,7 +144,7 @@ func (st *state) latent(c *cell) float64 {
 		v := both(float64(0.65*any2(st.fore)), float64(0.85*any2(st.stem)))
 		v = both(v, float64(0.4*any2(st.vestC)))
 		v = both(v, float64(0.5*st.systemic))
-		v = both(v, float64(0.25*st.tiring))
+		v = both(v, float64(0.4*st.tiring))
 		return both(v, float64(0.15*any2(st.cereb)))
 	case exam.Behaviour:
 		return both(float64(0.8*any2(st.fore)), float64(0.3*any2(st.stem)))
@@ -248,7 +248,7 @@ func (st *state) latent(c *cell) float64 {
 	// Reflexes and tone.
 	case exam.Withdrawal:
 		if g == thoracic {
-			eff := float64(0.2*L(arcDeltoid)) + float64(0.45*L(arcBiceps)) + float64(0.35*L(arcForearm))
+			eff := weakest(float64(0.2*L(arcDeltoid))+float64(0.45*L(arcBiceps))+float64(0.35*L(arcForearm)), L(arcDeltoid), L(arcBiceps), L(arcForearm))
 			aff := L(arcRadialSkin)
 			switch c.digit {
 			case exam.Lateral:
@@ -258,11 +258,12 @@ func (st *state) latent(c *cell) float64 {
 			}
 			return st.frontFlexion(eff, aff, l)
 		}
-		eff := float64(0.25*L(arcHip)) + float64(0.2*L(arcHamstring)) + float64(0.35*L(arcTibialis)) + float64(0.2*L(arcPlantar))
+		eff := weakest(float64(0.25*L(arcHip))+float64(0.2*L(arcHamstring))+float64(0.35*L(arcTibialis))+float64(0.2*L(arcPlantar)),
+			L(arcHip), L(arcHamstring), L(arcTibialis), L(arcPlantar))
 		aff := L(arcFibularSkin)
 		switch c.digit {
 		case exam.Medial:
-			eff = float64(0.55*L(arcHip)) + float64(0.15*L(arcHamstring)) + float64(0.2*L(arcTibialis)) + float64(0.1*L(arcPlantar))
+			eff = weakest(float64(0.55*L(arcHip))+float64(0.15*L(arcHamstring))+float64(0.2*L(arcTibialis))+float64(0.1*L(arcPlantar)), L(arcHip))
 			aff = L(arcSaphenousSkin)
 		case exam.Lateral:
 			aff = float64(0.5 * (L(arcFibularSkin) + L(arcTibialSkin)))
@@ -337,7 +338,8 @@ func (st *state) latent(c *cell) float64 {
 		v := both(st.nerve[nerveTrigeminal][side], float64(0.5*st.wasting))
 		return st.wasted(v, 0)
 	case exam.MassSupraspinatus, exam.MassInfraspinatus:
-		return st.wasted(limbArc(arcShoulder, 0.1), st.disuse(l))
+		// Disuse takes the muscles that carry weight; wasted spinati are the mark of C6–C7.
+		return st.wasted(limbArc(arcShoulder, 0.1), float64(0.5*st.disuse(l)))
 	case exam.MassBiceps:
 		return st.wasted(limbArc(arcBiceps, 0.2), st.disuse(l))
 	case exam.MassTriceps:
@@ -436,6 +438,12 @@ func (st *state) latent(c *cell) float64 {
 		return both(float64(0.7*st.mean(arcPelvic)), float64(0.4*st.upTail))
 	}
 	return 0
+}
+
+// weakest: a withdrawal is judged by the whole limb and by the joint that flexes least, about
+// alike (judgement; CSAIM-767: the hock that does not flex).
+func weakest(mean float64, joints ...float64) float64 {
+	return float64(0.55*mean) + float64(0.45*max(joints[0], joints[min(1, len(joints)-1)], joints[min(2, len(joints)-1)], joints[len(joints)-1]))
 }
 
 func boolTo(b bool) float64 {

@@ -16,6 +16,7 @@ type Model struct {
 	sp      *space
 
 	hyps     int
+	sound    int      // the hypothesis of nothing wrong
 	prior    []int64  // stored log prior of each hypothesis
 	siteOf   []uint16 // index into sp.sites
 	damage   []uint16 // index into damages
@@ -371,6 +372,9 @@ func (m *Model) tabulate() {
 			}
 			g.of = append(g.of, pi)
 			lt.hash, lt.pair, lt.of, lt.warm = hash, pair{sig, h.site.class}, pi, true
+		}
+		if h.site.kind == NoLesion {
+			m.sound = m.hyps
 		}
 		m.prior = append(m.prior, toLog(logOf(h.prior)))
 		m.siteOf = append(m.siteOf, uint16(h.index))

@@ -1,6 +1,10 @@
 package localise
 
-import "cordwalk.example/cordwalk/exam"
+import (
+	"slices"
+
+	"cordwalk.example/cordwalk/exam"
+)
 
 // This file holds every parameter of the model. Beside each stands its source: a publication's
 // key, «from memory» (standard textbooks), «common practice», «judgement» (a choice of this
@@ -65,12 +69,14 @@ type Params struct {
 	Mass [regionCount][kindCount]float64
 	Pair float64 // two lesions: judgement
 
-	Extent   [5]float64          // 1, 2, 3, 4 and longer: judgement
-	Sides    [sideCount]float64  // even, left, right, left-worse, right-worse: HNPE-2023, lateralised in about half
-	Severity [severities]float64 // judgement: referral series lean to the severe, rehabilitation to the mild
-	Balance  [3]float64          // grey and white alike, mostly white, mostly grey: judgement
-	Central  float64             // central cord among cervical lesions: HNPE-2023 and -2025, 16–35 %
-	Acute    float64             // within the first week, where the onset is not known: judgement
+	Extent       [5]float64             // 1, 2, 3, 4 and longer: judgement
+	ExtentLow    [5]float64             // the same from L4 on, where three segments lie in one vertebra (CL-73): judgement
+	Sides        [sideCount]float64     // even, left, right, left-worse, right-worse: HNPE-2023, lateralised in about half
+	SeverityNeck [2][severities]float64 // the same for lesions of C1–T2, where complete ones are seldom survived (from memory): fitted to BrCerv, HNPE-2025
+	Severity     [2][severities]float64 // later than the first week, and within it: fitted to BrCerv, HNPE-2025, McKee-2010, Mari-2019
+	Balance      [3]float64             // grey and white alike, mostly white, mostly grey: judgement
+	Central      float64                // central cord among cervical lesions: HNPE-2023 and -2025, 16–35 %
+	Acute        float64                // within the first week, where the onset is not known: judgement
 
 	respond [exam.ItemCount]response
 }
@@ -87,32 +93,34 @@ const (
 // defaults returns the parameters of a species.
 func defaults(s exam.Species) *Params {
 	p := &Params{
-		Slip: 0.03, SlipFrail: 0.06, Careless: 0.1, ArcSpread: 1.0, ArcBlunder: 0.005,
-		FrontShare: 0.8, CentralHind: 0.55, WhiteGrey: 0.3, GreyWhite: 0.3,
-		Shock: 0.2, ShockWithdrawal: 0.45, ShockPatellar: 0.12, SunkHock: 0.1, Voiding: 1.3, Stenosis: 0.75, CordRoot: 0.2, Sympathetic: 1.2, FrontUMN: 0.33, Pseudo: 0.5, ReflexUp: 0.5,
-		Disuse: 0.3, EarlyMass: 0.1, PainAcute: 0.55, PainLater: 0.42,
-		TrunciWalk: 0.5, TrunciLame: 0.9, Posture: 0.3, ReflexSteps: 0.3,
+		Slip: 0.03, SlipFrail: 0.051, Careless: 0.1, ArcSpread: 1.0, ArcBlunder: 0.005,
+		FrontShare: 0.8, CentralHind: 0.55, WhiteGrey: 0.5, GreyWhite: 0.3,
+		Shock: 0.196, ShockWithdrawal: 0.466, ShockPatellar: 0.122, SunkHock: 0.1, Voiding: 2.344, Stenosis: 0.776, CordRoot: 0.134, Sympathetic: 2.651, FrontUMN: 0.3, Pseudo: 0.5, ReflexUp: 0.5,
+		Disuse: 0.3, EarlyMass: 0.1, PainAcute: 0.494, PainLater: 0.42,
+		TrunciWalk: 0.528, TrunciLame: 0.903, Posture: 0.3, ReflexSteps: 0.3,
 		Pair:   0.03,
-		Extent: [5]float64{0.26, 0.3, 0.2, 0.12, 0.12}, Sides: [sideCount]float64{0.46, 0.09, 0.09, 0.18, 0.18},
-		Severity: [severities]float64{0.25, 0.25, 0.2, 0.18, 0.12}, Balance: [3]float64{0.4, 0.45, 0.15},
-		Central: 0.26, Acute: 0.4,
+		Extent: [5]float64{0.26, 0.3, 0.2, 0.12, 0.12}, ExtentLow: [5]float64{0.15, 0.23, 0.28, 0.22, 0.12}, Sides: [sideCount]float64{0.475, 0.0875, 0.0875, 0.175, 0.175},
+		SeverityNeck: [2][severities]float64{{0.342, 0.324, 0.214, 0.08, 0.04}, {0.166, 0.214, 0.38, 0.17, 0.07}},
+		Severity:     [2][severities]float64{{0.293, 0.279, 0.208, 0.13, 0.09}, {0.158, 0.194, 0.231, 0.242, 0.175}}, Balance: [3]float64{0.52, 0.29, 0.19},
+		Central: 0.256, Acute: 0.4,
 		respond: responses(),
 	}
 	m := &p.Mass
-	m[C1C5][Cord], m[C1C5][PainOnly], m[C1C5][Root] = 0.085, 0.045, 0.01
-	m[C6T2][Cord], m[C6T2][PainOnly], m[C6T2][Root], m[C6T2][Plexus] = 0.06, 0.03, 0.025, 0.025
+	m[C1C5][Cord], m[C1C5][PainOnly], m[C1C5][Root] = 0.075, 0.05, 0.006
+	m[C6T2][Cord], m[C6T2][PainOnly], m[C6T2][Root], m[C6T2][Plexus] = 0.06, 0.033, 0.025, 0.025
 	m[T3L3][Cord], m[T3L3][PainOnly], m[T3L3][Root] = 0.22, 0.035, 0.005
 	m[L4S3][Cord], m[L4S3][PainOnly], m[L4S3][Root], m[L4S3][CaudaEquina] = 0.07, 0.03, 0.025, 0.05
-	m[Peripheral][Nerve], m[Peripheral][Ischaemic] = 0.08, 0.012
-	m[GeneralisedRegion][Generalised] = 0.06
+	m[Peripheral][Nerve], m[Peripheral][Ischaemic] = 0.118, 0.012
+	m[GeneralisedRegion][Generalised] = 0.05
 	m[BrainRegion][Brain] = 0.085
-	m[NoRegion][Joint], m[NoRegion][Tendon], m[NoRegion][Systemic], m[NoRegion][NoLesion] = 0.03, 0.008, 0.012, 0.035
+	m[NoRegion][Joint], m[NoRegion][Tendon], m[NoRegion][Systemic], m[NoRegion][NoLesion] = 0.04, 0.008, 0.012, 0.035
 	if s == exam.Cat {
-		p.SunkHock = 0.6
-		// Mella-2020, MH-2010: the cervicothoracic enlargement and L4–S3 weigh more in cats
-		// than in dogs, and a clot in the aorta is a cat's disease (from memory).
-		m[C1C5][Cord], m[C1C5][PainOnly] = 0.075, 0.02
-		m[C6T2][Cord], m[T3L3][Cord], m[L4S3][Cord], m[L4S3][CaudaEquina] = 0.075, 0.18, 0.09, 0.065
+		p.SunkHock = 0.736
+		// Cats against dogs: ischaemia at the cervicothoracic enlargement (Mella-2020, MH-2010), disc
+		// disease most often at L4–L5 (MH-2010), sacrocaudal luxation a common injury (Couper-2020),
+		// and a clot in the aorta a cat's disease (from memory). The sizes are judgement.
+		m[C1C5][Cord], m[C1C5][PainOnly] = 0.07, 0.02
+		m[C6T2][Cord], m[T3L3][Cord], m[L4S3][Cord], m[L4S3][CaudaEquina] = 0.085, 0.155, 0.11, 0.085
 		m[Peripheral][Ischaemic] = 0.04
 	}
 	return p
@@ -125,6 +133,7 @@ func responses() (t [exam.ItemCount]response) {
 	set := func(r response, items ...exam.Item) {
 		for _, i := range items {
 			t[i] = r
+			t[i].down, t[i].up = slices.Clone(r.down), slices.Clone(r.up) // of its own: items are fitted one by one
 		}
 	}
 	one := func(slope float64, down ...float64) response { return response{slope: slope, down: down} }
@@ -132,22 +141,22 @@ func responses() (t [exam.ItemCount]response) {
 
 	// Gait and posture.
 	set(one(14, 0.17, 0.38, 0.55, 0.77), exam.VoluntaryMotor)
-	set(one(12, 0.5, 0.75), exam.Ambulation)
+	set(one(12, 0.493, 0.75), exam.Ambulation)
 	set(up(12, 0.25, 0.5, 0.8), exam.Ataxia)
 	set(up(8, 0.4), exam.AtaxiaProprioceptive, exam.AtaxiaVestibular, exam.AtaxiaCerebellar)
 	set(response{slope: 8, down: []float64{0.4}, up: []float64{0.55}}, exam.Stride)
 	set(up(8, 0.4), exam.Hypermetria)
 	set(one(9, 0.25, 0.5, 0.75), exam.Knuckling)
 	set(one(10, 0.5, 0.65, 0.85), exam.GroundClearance)
-	set(up(7, 0.35, 0.5, 0.68, 0.9), exam.Lameness)
-	set(up(8, 0.5), exam.RootSignature)
-	set(one(9, 0.4, 0.65), exam.Stance)
+	set(up(10, 0.34, 0.5, 0.68, 0.9), exam.Lameness)
+	set(up(8, 0.526), exam.RootSignature)
+	set(one(9, 0.393, 0.65), exam.Stance)
 	set(one(7, 0.45, 0.8), exam.NeckCarriage)
 	set(response{slope: 13, up: []float64{0.4}, slip: 0.006}, exam.HeadTilt, exam.HeadTurn, exam.Circling) // hardly seen where there is none: judgement
 	set(up(8, 0.5), exam.SchiffSherrington, exam.ReflexWalking)
 
 	// Postural reactions.
-	set(one(12, 0.24, 0.6), exam.PawPlacement, exam.Hopping, exam.TactilePlacing, exam.ExtensorThrust, exam.Wheelbarrow)
+	set(one(12, 0.23, 0.6), exam.PawPlacement, exam.Hopping, exam.TactilePlacing, exam.ExtensorThrust, exam.Wheelbarrow)
 
 	// Whole animal.
 	set(one(8, 0.45, 0.75, 0.95), exam.Mentation)
@@ -162,26 +171,27 @@ func responses() (t [exam.ItemCount]response) {
 
 	// Head.
 	set(one(10, 0.32, 0.55), exam.Menace)
-	set(one(10, 0.35, 0.6), exam.PupillaryLight, exam.Palpebral, exam.FacialSensation, exam.Corneal, exam.Vision,
-		exam.EyeFollow, exam.Gag, exam.JawTone, exam.Tongue, exam.Swallowing)
+	set(response{slope: 10, down: []float64{0.35, 0.6}, slip: 0.02}, exam.PupillaryLight, exam.Palpebral, exam.FacialSensation,
+		exam.Corneal, exam.Vision, exam.EyeFollow, exam.Gag, exam.JawTone, exam.Tongue, exam.Swallowing)
 	set(response{slope: 8, down: []float64{0.45}, up: []float64{0.45}}, exam.PupilSize)
-	set(up(8, 0.35, 0.65), exam.FaceDroop)
+	set(response{slope: 10, up: []float64{0.35, 0.65}, slip: 0.02}, exam.FaceDroop)
 	set(response{slope: 13, up: []float64{0.4, 0.7}, slip: 0.006}, exam.Strabismus, exam.Nystagmus)
 	set(up(8, 0.5), exam.NystagmusFastPhase)
-	set(response{slope: 14, up: []float64{0.4, 0.65}, slip: 0.004}, exam.Horner)
+	set(response{slope: 14, up: []float64{0.455, 0.66}, slip: 0.003}, exam.Horner)
 
 	// Reflexes and tone.
 	set(one(12, 0.32, 0.65), exam.Withdrawal, exam.WithdrawalShoulder, exam.WithdrawalElbow, exam.WithdrawalCarpus,
 		exam.WithdrawalHip, exam.WithdrawalStifle, exam.WithdrawalHock, exam.WithdrawalDigits)
-	set(response{slope: 9, down: []float64{0.33, 0.6}, up: []float64{0.55, 0.9}}, exam.Patellar)
+	set(response{slope: 9, down: []float64{0.336, 0.6}, up: []float64{0.55, 0.9}}, exam.Patellar)
 	set(response{slope: 5, down: []float64{0.3, 0.5}, up: []float64{0.7, 1.1}, slip: 0.08}, exam.Biceps, exam.Triceps, exam.Gastrocnemius)
 	set(response{slope: 6, down: []float64{0.35, 0.65}, up: []float64{0.65, 1.05}, slip: 0.05}, exam.ExtensorCarpi)
-	set(response{slope: 3, down: []float64{0.5, 0.9}, up: []float64{1, 1.5}, slip: 0.08}, exam.CranialTibial) // UFRPE-CT: persists under epidural block
+	set(response{slope: 3, down: []float64{0.5, 0.9}, up: []float64{1, 1.5}, slip: 0.056}, exam.CranialTibial) // UFRPE-CT: persists under epidural block
 	set(up(8, 0.62), exam.CrossedExtensor)
-	set(one(12, 0.3, 0.62), exam.Perineal, exam.AnalTone)
+	set(one(12, 0.32, 0.62), exam.Perineal)
+	set(one(12, 0.497, 0.647), exam.AnalTone)
 	set(one(8, 0.35, 0.7), exam.CutaneousTrunciTwitch)
 	set(response{slope: 9, down: []float64{0.33, 0.7}, up: []float64{0.4, 0.85}}, exam.Tone)
-	set(one(10, 0.28, 0.58), exam.TailTone)
+	set(one(10, 0.28, 0.492), exam.TailTone)
 	set(one(9, 0.5), exam.TailMovement)
 	set(up(8, 0.6), exam.PhantomScratching)
 
@@ -191,21 +201,21 @@ func responses() (t [exam.ItemCount]response) {
 	}
 
 	// Sensation and pain.
-	set(response{slope: 10, down: []float64{0.68, 0.88}, up: []float64{0.5}}, exam.SuperficialPain)
-	set(one(36, 0.93, 0.97), exam.DeepPain)
+	set(response{slope: 10, down: []float64{0.6, 0.737}, up: []float64{0.5}}, exam.SuperficialPain)
+	set(one(36, 0.93, 0.969), exam.DeepPain)
 	for i := exam.SensationRadial; i <= exam.SensationPudendal; i++ {
-		set(response{slope: 10, down: []float64{0.55, 0.8}, up: []float64{0.5}}, i)
+		set(response{slope: 10, down: []float64{0.59, 0.8}, up: []float64{0.5}}, i)
 	}
-	set(up(10, 0.34, 0.47, 0.7), exam.SpinalPain)
-	set(up(10, 0.34, 0.47, 0.7), exam.LumbosacralExtension, exam.TailLift)
+	set(up(10, 0.336, 0.47, 0.7), exam.SpinalPain)
+	set(up(10, 0.331, 0.47, 0.7), exam.LumbosacralExtension, exam.TailLift)
 	set(up(7, 0.35, 0.55, 0.8), exam.JointPain, exam.JointSwelling, exam.LimbPain)
 	set(up(8, 0.5), exam.StifleInstability)
 	set(one(9, 0.4, 0.65), exam.FemoralPulse, exam.PawWarmth)
 
 	// Bladder and bowel.
-	set(one(9, 0.5, 0.72), exam.VoluntaryUrination)
+	set(one(9, 0.559, 0.599), exam.VoluntaryUrination)
 	set(up(7, 0.45, 0.8), exam.UrineLeak)
-	set(one(8, 0.42, 0.75), exam.FaecalContinence)
-	set(one(7, 0.5, 0.85), exam.Defaecation)
+	set(one(8, 0.4, 0.75), exam.FaecalContinence)
+	set(one(7, 0.75, 0.88), exam.Defaecation)
 	return t
 }

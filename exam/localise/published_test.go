@@ -205,7 +205,9 @@ func acutely(f func(*hypothesis) bool) func(*hypothesis) bool {
 
 var (
 	cervical = cordIn(C1C5, C6T2)
-	necks    = func(h *hypothesis) bool {
+	// Single discs that were imaged and operated on: with deficits, one or two segments.
+	cervicalDisc = func(h *hypothesis) bool { return cervical(h) && h.site.extent <= 1 && h.severity >= 1 }
+	necks        = func(h *hypothesis) bool {
 		return (h.site.kind == Cord || h.site.kind == PainOnly) && h.site.region <= C6T2
 	}
 	plegicGiv = []constraint{is(exam.VoluntaryMotor, exam.PelvicLeft, 0), is(exam.VoluntaryMotor, exam.PelvicRight, 0)}
@@ -231,14 +233,14 @@ func luxated(h *hypothesis) bool { // sacrocaudal luxation: the roots from S2 or
 
 var publishedRows = []published{
 	{source: "Forterre-2008", what: "cervical disc: examination (thoracic withdrawal) agrees with MRI on C1–C5 v. C6–T2", n: 35, k: 23, species: exam.Dog,
-		where: cervical, event: func(h *hypothesis, p func(...constraint) float64) float64 {
+		where: cervicalDisc, event: func(h *hypothesis, p func(...constraint) float64) float64 {
 			kept := p(is(exam.Withdrawal, exam.ThoracicLeft, 2), is(exam.Withdrawal, exam.ThoracicRight, 2))
 			if h.site.region == C1C5 {
 				return kept
 			}
 			return p() - kept
 		}},
-	{source: "Forterre-2008", what: "C1–C5 called C6–T2, of the wrong calls", n: 12, k: 11, species: exam.Dog, where: cervical,
+	{source: "Forterre-2008", what: "C1–C5 called C6–T2, of the wrong calls", n: 12, k: 11, species: exam.Dog, where: cervicalDisc,
 		event: nil},
 	{source: "Schachar-2024", what: "thoracic root signature: lesion at C6–C7 (segments C7–C8)", n: 47, k: 15, species: exam.Dog,
 		where: func(h *hypothesis) bool {
@@ -269,8 +271,7 @@ var publishedRows = []published{
 		event: that(func(h *hypothesis) bool { return h.site.region == NoRegion })},
 	{source: "HNPE-2023, -2025", what: "cervical, acute: central cord (HNPE, IVDE, FCE pooled)", n: 268, k: 56, species: exam.Dog, where: acutely(cervical),
 		event: that(func(h *hypothesis) bool { return h.central })},
-	{source: "HNPE-2025", what: "cervical, other than HNPE: non-ambulatory", n: 331, k: 179, species: exam.Dog, where: acutely(cervical), event: one(is(exam.Ambulation, exam.Midline, 0, 1)),
-		out: "referred acute cervical disease; the model's severities are those of a rehabilitation practice, where BrCerv's 15 % lie"},
+	{source: "HNPE-2025", what: "cervical, other than HNPE: non-ambulatory", n: 331, k: 179, species: exam.Dog, where: acutely(cervical), event: one(is(exam.Ambulation, exam.Midline, 0, 1))},
 	{source: "HNPE-2025", what: "cervical, other than HNPE: not lateralised", n: 331, k: 159, species: exam.Dog, where: acutely(cervical),
 		event: that(func(h *hypothesis) bool { return h.site.side == Even })},
 	{source: "HNPE-2025", what: "cervical disc extrusion: spinal pain", n: 192, k: 163, species: exam.Dog, where: acutely(cervical),
@@ -327,7 +328,7 @@ var publishedRows = []published{
 		event: either(is(exam.SpinalPain, tlSites[0], 1, 2, 3), is(exam.SpinalPain, tlSites[1], 1, 2, 3), is(exam.SpinalPain, tlSites[2], 1, 2, 3))},
 	{source: "Mari-2019", what: "T3–L3, later: urinary incontinence", n: 187, k: 17, species: exam.Dog, where: func(h *hypothesis) bool { return cordIn(T3L3)(h) && !h.acute },
 		given: []constraint{is(exam.Ambulation, exam.Midline, 2)}, event: one(is(exam.VoluntaryUrination, exam.Midline, 0, 1)),
-		out: ""},
+	},
 	{source: "Mari-2019", what: "T3–L3, later: faecal incontinence", n: 187, k: 44, species: exam.Dog, where: func(h *hypothesis) bool { return cordIn(T3L3)(h) && !h.acute },
 		given: []constraint{is(exam.Ambulation, exam.Midline, 2)}, event: one(is(exam.FaecalContinence, exam.Midline, 0, 1))},
 	{source: "DS-1999", what: "lumbosacral stenosis: pain on extending the joint", n: 131, k: 128, species: exam.Dog, where: stenosis, event: one(is(exam.LumbosacralExtension, exam.Midline, 1, 2, 3))},
@@ -375,7 +376,7 @@ var publishedRows = []published{
 	{source: "Kathmann-2006", what: "degenerative myelopathy placed in L3–S3", n: 50, k: 22, species: exam.Dog, where: func(h *hypothesis) bool {
 		return h.site.kind == Cord && !h.acute && h.site.extent == 4 && h.site.region == T3L3 && h.site.side == Even && h.severity >= 1 && h.severity <= 3
 	}, event: either(is(exam.Patellar, exam.PelvicLeft, 0, 1), is(exam.Patellar, exam.PelvicRight, 0, 1), is(exam.Withdrawal, exam.PelvicLeft, 0, 1), is(exam.Withdrawal, exam.PelvicRight, 0, 1)),
-		out: ""},
+	},
 }
 
 // single: every kind of single lesion; of the plexus variants and balances, which hardly bear

@@ -85,17 +85,16 @@ type Alone struct {
 // Clone returns a copy of r that does not change with the engine.
 func (r *Result) Clone() *Result {
 	c := *r
-	c.Regions = append([]RegionProbability(nil), r.Regions...)
-	c.Kinds = append([]KindProbability(nil), r.Kinds...)
-	c.Sites = append([]SiteProbability(nil), r.Sites...)
-	c.Segments = append([]SegmentDamage(nil), r.Segments...)
-	c.Evidence = append([]Evidence(nil), r.Evidence...)
-	c.Next = append([]NextTest(nil), r.Next...)
+	c.Regions = append([]RegionProbability{}, r.Regions...)
+	c.Kinds = append([]KindProbability{}, r.Kinds...)
+	c.Sites = append([]SiteProbability{}, r.Sites...)
+	c.Segments = append([]SegmentDamage{}, r.Segments...)
+	c.Evidence = append([]Evidence{}, r.Evidence...)
+	c.Next = append([]NextTest{}, r.Next...)
 	c.Warnings = append([]string{}, r.Warnings...)
 	if r.Alone != nil {
-		a := Alone{append([]RegionProbability(nil), r.Alone.Regions...), append([]KindProbability(nil), r.Alone.Kinds...),
-			append([]SiteProbability(nil), r.Alone.Sites...)}
-		c.Alone = &a
+		c.Alone = &Alone{append([]RegionProbability{}, r.Alone.Regions...), append([]KindProbability{}, r.Alone.Kinds...),
+			append([]SiteProbability{}, r.Alone.Sites...)}
 	}
 	return &c
 }

@@ -95,7 +95,7 @@ func (e *Engine) SiteLogLikelihoods(x Exam, dst []float64) ([]float64, error) {
 		early = toLog(logOf(t / m.p.Acute))
 		late = toLog(logOf((1 - t) / (1 - m.p.Acute)))
 	}
-	lookedAt, careless := toLog(logOf(1-m.p.Careless)), toLog(logOf(m.p.Careless))
+	lookedAt, careless := e.blockLogs()
 	prior := func(h int) int64 {
 		l := m.prior[h]
 		if m.timed[h] {

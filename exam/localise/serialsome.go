@@ -231,6 +231,9 @@ func (w *Weigher) Some(x Exam, which []int, dst []float64) ([]float64, error) {
 		return fromLog(best) + logOf(float64(total)/unit) - logOf(mass)
 	}
 	w.bring(len(w.sites), withAcute)
+	if w.blocks { // a fill that was not looked at shows what a sound animal shows
+		careless -= w.extra[w.from[len(w.sites)*slots]]
+	}
 	sound := value(len(w.sites), 0)
 	for i, s := range which {
 		w.bring(s, withAcute)

@@ -50,7 +50,8 @@ values <- function(where) {
   upper <- sum(weights * U[names(weights)])
   sciatic <- 0.5 * (L["hamstring"] + L["tibialis"])
   brisk <- both(reflex_up * U["quadriceps"], pseudo * sciatic)
-  flexion <- 0.25 * L["hip"] + 0.2 * L["hamstring"] + 0.35 * L["tibialis"] + 0.2 * L["plantar"]
+  flexion <- 0.55 * (0.25 * L["hip"] + 0.2 * L["hamstring"] + 0.35 * L["tibialis"] + 0.2 * L["plantar"]) +
+    0.45 * max(L["hip"], L["hamstring"], L["tibialis"], L["plantar"])
   c(motor = unname(both(upper, lower)),
     patellar = unname(L["quadriceps"] - brisk * (1 - L["quadriceps"])),
     withdrawal = unname(both(flexion, 0.3 * L["fibular"])))
@@ -69,7 +70,7 @@ grades <- function(item, v, u) {
   sapply(seq_len(n), function(g) p[g] + sum(sapply(seq_len(n), function(k) miss[abs(k - g) + 1] * (p[k] - p[g]))))
 }
 
-deviation <- c(-6, -spread * sqrt(3), 0, spread * sqrt(3), 6)
+deviation <- c(-14, -spread * sqrt(3), 0, spread * sqrt(3), 14)
 rest <- 1 - 1.5 * blunder
 weight <- c(0.5 * blunder, rest / 6, rest * 2 / 3, rest / 6, blunder)
 
