@@ -36,17 +36,17 @@ type fit struct {
 }
 
 // fits lists the ways for normal or large print, most comfortable first. Running text is
-// never smaller than 8.4 points, or 11.5 in large print.
+// never smaller than 8.4 points, or 11 in large print.
 func fits(large bool, exercises int) []fit {
 	sizes := []float64{12, 11.2, 10.4, 10, 9.6, 9.2, 8.8, 8.4}
 	if large {
-		sizes = []float64{14, 13.5, 13, 12.5, 12, 11.5}
+		sizes = []float64{14, 13.5, 13, 12.5, 12, 11.5, 11}
 	}
 	var out []fit
 	for i, s := range sizes {
 		for _, c := range [][2]float64{{150, 190}, {125, 170}, {104, 150}, {84, 132}} {
 			// Large text before a large chart, but no small chart while there is text to spare.
-			if c[0] >= 104 || i >= 2 {
+			if c[0] >= 104 || i >= 2 || large {
 				out = append(out, fit{size: s, chart: c[0], body: c[1]})
 			}
 		}
@@ -56,6 +56,10 @@ func fits(large bool, exercises int) []fit {
 		{how: 3, goals: 4, summary: 6, perLine: 3, noticeLines: 4, mostNotices: 4, chart: 78, body: 120},
 		{how: 2, goals: 3, summary: 5, perLine: 2, noticeLines: 3, mostNotices: 3, chart: 72, body: 112},
 		{how: 1, goals: 2, summary: 4, perLine: 2, noticeLines: 2, mostNotices: 3, chart: 66, body: 104},
+		// Without the chart there is room for the instructions again.
+		{goals: 3, summary: 6, perLine: 3, noticeLines: 3, mostNotices: 4, body: 112},
+		{how: 3, goals: 2, summary: 5, perLine: 2, noticeLines: 2, mostNotices: 3, body: 104},
+		{how: 2, goals: 2, summary: 4, perLine: 2, noticeLines: 2, mostNotices: 3, body: 104},
 		{how: 1, goals: 2, summary: 4, perLine: 2, noticeLines: 2, mostNotices: 3, body: 104},
 	}
 	for _, f := range tight {
@@ -111,6 +115,12 @@ func Owner(in Input) (Document, error) {
 	out := Document{Pages: doc.PageCount(), Name: fileName(in.Patient.Name, last.Examined, "owner", "pdf"), Subject: title + ", " + day,
 		Prose: prose, Summary: strings.Join(o.summary, " ")}
 	out.Warnings = append(out.Warnings, o.warnings...)
+	if n := chosen.exercises; n > 0 && n < len(o.home) {
+		out.Warnings = append(out.Warnings, fmt.Sprintf("%d of %d exercises did not fit on the page: print the rest apart, or leave out large print", len(o.home)-n, len(o.home)))
+	}
+	if chosen.terse && len(o.home) > 0 && len(o.urgent) == 0 {
+		out.Warnings = append(out.Warnings, "how each exercise is done did not fit on the page: explain it, or print fewer exercises")
+	}
 	if len(p.lost) > 0 {
 		out.Warnings = append(out.Warnings, lostLetters(p.lost))
 	}
@@ -168,8 +178,33 @@ func (o *owner) plan(last exam.Visit) {
 	}
 }
 
-// list joins names with commas, in the paper's language.
-func list(names []string) string { return strings.Join(names, ", ") }
+// list joins the names of topics with commas, in the paper's language; legs that are named
+// together are said together.
+func (o *owner) list(keys []string) string {
+	has := func(list ...string) bool {
+		for _, k := range list {
+			if !slices.Contains(keys, k) {
+				return false
+			}
+		}
+		return true
+	}
+	put := func(word string, instead ...string) {
+		if has(instead...) {
+			i := slices.Index(keys, instead[0])
+			keys = slices.Insert(slices.Clone(keys), i, word)
+			keys = slices.DeleteFunc(keys, func(k string) bool { return slices.Contains(instead, k) })
+		}
+	}
+	put(wordAllLegs, wordLeftFore, wordRghtFore, wordLeftHind, wordRghtHind)
+	put(wordForeLegs, wordLeftFore, wordRghtFore)
+	put(wordHindLegs, wordLeftHind, wordRghtHind)
+	names := make([]string, len(keys))
+	for i, k := range keys {
+		names[i] = o.in.text(k)
+	}
+	return strings.Join(names, ", ")
+}
 
 // sentences says in two to four plain sentences how the animal is doing. It claims no more
 // than was seen: what fell comes first, what was not tested is said.
@@ -194,7 +229,7 @@ func (o *owner) sentences() []string {
 	var since time.Time
 	unlike := false
 	for _, c := range o.changes {
-		word := in.text(c.topic.word)
+		word := c.topic.word
 		switch {
 		case !c.tested:
 			missed = append(missed, word)
@@ -212,13 +247,13 @@ func (o *owner) sentences() []string {
 	}
 	when := dayWords(in.lang(), since)
 	if len(worse) > 0 {
-		out = append(out, in.text(phraseWeaker, when, list(worse)))
+		out = append(out, in.text(phraseWeaker, when, o.list(worse)))
 	}
 	if len(better) > 0 {
-		out = append(out, in.text(phraseBetter, when, list(better)))
+		out = append(out, in.text(phraseBetter, when, o.list(better)))
 	}
 	if len(maybe) > 0 {
-		out = append(out, in.text(phraseMaybe, when, list(maybe)))
+		out = append(out, in.text(phraseMaybe, when, o.list(maybe)))
 	}
 	if len(worse)+len(better)+len(maybe) == 0 && !since.IsZero() {
 		out = append(out, in.text(phraseSame, when))
@@ -239,7 +274,7 @@ func (o *owner) sentences() []string {
 		}
 	}
 	if len(missed) > 0 {
-		out = append(out, in.text(phraseMissed, list(missed)))
+		out = append(out, in.text(phraseMissed, o.list(missed)))
 	}
 	if len(worse) == 0 && len(o.home) > 0 {
 		out = append(out, in.text(phraseKeepOn))
@@ -493,7 +528,7 @@ func (o *owner) seen(p *page, x, w float64, f fit) {
 		groups = append(groups, group{mark, head, []string{name}, rank})
 	}
 	for _, c := range o.changes {
-		name := in.text(c.topic.word)
+		name := c.topic.word
 		when := dayWords(p.lang, c.since)
 		switch {
 		case !c.tested:
@@ -514,7 +549,7 @@ func (o *owner) seen(p *page, x, w float64, f fit) {
 	st := chart.Style{Palette: p.pal, Text: vg.Length(p.size), Lang: p.lang}
 	indent := p.size * 1.4
 	for _, g := range groups {
-		line := upperFirst(list(g.names)) + ": " + g.head + "."
+		line := upperFirst(o.list(g.names)) + ": " + g.head + "."
 		p.note(line)
 		y := p.y + lead(p.size)/2
 		p.draw(x, y-p.size*0.6, p.size*1.2, p.size*1.2, func(c draw.Canvas) {

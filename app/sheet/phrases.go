@@ -91,6 +91,9 @@ const (
 	wordRghtFore = "right front leg"
 	wordLeftHind = "left back leg"
 	wordRghtHind = "right back leg"
+	wordAllLegs  = "all four legs"
+	wordForeLegs = "both front legs"
+	wordHindLegs = "both back legs"
 )
 
 // callSigns are what an owner can see that must not wait, from the red flags of the
@@ -119,7 +122,7 @@ var fixedTexts = []string{textTitle, textSeen, textSeenBy, textShort, textChange
 	textPhoneVet, textPhoneNight, textMedicine, textSupport, textNowBox, textTodayBox, textUntilAgrees, textTellLimb, textTellOther,
 	textBetterThan, textSameAs, textNotTested, textFirstTest, textDemo, textMore, textRest, textLegend,
 	wordBetter, wordSame, wordWeaker, wordNoTest, wordFirst, wordStrong, wordNoMove, wordAlone, wordCannot, wordSurgery, wordOnset,
-	wordWalking, wordTail, wordBladder, wordBowel, wordPain, wordLeftFore, wordRghtFore, wordLeftHind, wordRghtHind}
+	wordWalking, wordTail, wordBladder, wordBowel, wordPain, wordLeftFore, wordRghtFore, wordLeftHind, wordRghtHind, wordAllLegs, wordForeLegs, wordHindLegs}
 
 // Phrases lists the texts that a practice may put in its own words, in English.
 func Phrases() []string { return slices.Clone(editable) }
