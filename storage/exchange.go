@@ -9,6 +9,7 @@ import (
 	"maps"
 	"path/filepath"
 	"slices"
+	"time"
 
 	"cordwalk.example/cordwalk/storage/disk"
 	"cordwalk.example/cordwalk/sync/change"
@@ -337,6 +338,12 @@ func (s *Store) Receive(ctx context.Context, as change.Stream, b segment.Block) 
 	if err != nil {
 		return explain("receiving", err)
 	}
+	if n := len(b.Frames); n > 0 && r.follows(b.Frames) { // the usual case, and a large one at first
+		last := b.Frames[n-1]
+		r.spans[len(r.spans)-1].Last, r.hash = last.Last, last.Hash()
+		r.fresh += int(last.Last - b.Frames[0].First + 1)
+		return s.addReceived(as, r, b.Raw)
+	}
 	var raw []byte
 	for _, f := range b.Frames {
 		if f.Stream != as && len(r.spans) == 0 {
@@ -368,6 +375,26 @@ func (s *Store) Receive(ctx context.Context, as change.Stream, b segment.Block) 
 	if len(raw) == 0 {
 		return nil
 	}
+	return s.addReceived(as, r, raw)
+}
+
+// follows reports whether frames go on, one behind the other, where the receiver stands.
+func (r *receiver) follows(fs []change.Frame) bool {
+	next := r.top() + 1
+	if next == 1 {
+		return false
+	}
+	for _, f := range fs {
+		if f.Stream != r.of || f.First != next {
+			return false
+		}
+		next = f.Last + 1
+	}
+	return true
+}
+
+// addReceived writes frames behind the others. exch must be held.
+func (s *Store) addReceived(as change.Stream, r *receiver, raw []byte) error {
 	if err := r.out.add(raw); err != nil {
 		// Nothing is known about what the segment holds now; what was noted is forgotten and
 		// read again from the journal.
@@ -441,30 +468,66 @@ func (s *Store) Commit(ctx context.Context, as change.Stream, head segment.Signe
 	if err := s.keepHead(as, head); err != nil {
 		return explain("receiving", err)
 	}
-	much := r.fresh > absorbNow
+	much := r.fresh > absorbNow || s.backlog[as]
 	r.fresh = 0
 	if !much {
 		return s.absorb(ctx, as)
 	}
-	s.wait.Go(func() {
-		ctx, cancel := context.WithCancel(context.Background())
-		defer cancel()
-		go func() {
-			select {
-			case <-s.stop:
-				cancel()
-			case <-ctx.Done():
-			}
-		}()
-		if err := s.absorb(ctx, as); err != nil && ctx.Err() == nil {
-			s.o.Notice("what was received could not be put into the index; it will be at the next start: " + err.Error())
-		}
-	})
+	s.backlog[as], s.committed = true, time.Now()
+	if !s.draining {
+		s.draining = true
+		s.wait.Go(s.drain)
+	}
 	return nil
 }
 
+// drainAfter is how long nothing more must come before a backlog is merged: receiving goes first.
+const drainAfter = 300 * time.Millisecond
+
+// drain merges backlogs in the background.
+func (s *Store) drain() {
+	ctx, cancel := context.WithCancel(context.Background())
+	defer cancel()
+	go func() {
+		select {
+		case <-s.stop:
+			cancel()
+		case <-ctx.Done():
+		}
+	}()
+	for {
+		s.exch.Lock()
+		if len(s.backlog) == 0 || ctx.Err() != nil {
+			s.draining = false
+			s.exch.Unlock()
+			return
+		}
+		if time.Since(s.committed) < drainAfter && s.hurry.Load() == 0 {
+			s.exch.Unlock()
+			select {
+			case <-ctx.Done():
+			case <-time.After(drainAfter / 6):
+			}
+			continue
+		}
+		var x change.Stream
+		for x = range s.backlog {
+			break
+		}
+		delete(s.backlog, x)
+		s.exch.Unlock()
+		if err := s.absorb(ctx, x); err != nil && ctx.Err() == nil {
+			s.o.Notice("what was received could not be put into the index; it will be at the next start: " + err.Error())
+		}
+	}
+}
+
 // Settle waits until everything that was received can be read.
-func (s *Store) Settle() { s.wait.Wait() }
+func (s *Store) Settle() {
+	s.hurry.Add(1)
+	s.wait.Wait()
+	s.hurry.Add(-1)
+}
 
 // absorb merges what a foreign stream's journal holds beyond the index's state.
 func (s *Store) absorb(ctx context.Context, x change.Stream) error {

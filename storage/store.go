@@ -18,6 +18,7 @@ import (
 	"path/filepath"
 	"slices"
 	"sync"
+	"sync/atomic"
 	"time"
 
 	"go.etcd.io/bbolt"
@@ -111,6 +112,12 @@ type Store struct {
 	recv  map[change.Stream]*receiver
 	heads map[change.Stream][]segment.Signed
 	sums  []segment.Sum
+	// backlog names streams of which much came that is not merged yet.
+	backlog   map[change.Stream]bool
+	committed time.Time // the last time something came
+	draining  bool      // drain is running
+
+	hurry atomic.Int32 // somebody waits for the backlog
 
 	lateNow map[change.Stream]bool // guarded by mu: streams of which something came late
 
@@ -271,7 +278,7 @@ func start(dir string, o Options, lock disk.Unlocker, id identity, bag key.Bag, 
 	s := &Store{
 		dir: dir, o: o, fs: o.Files, id: id, bag: bag, seals: newSeals(o.Files, dir, bag.Ring), lock: lock,
 		overlay: map[exam.ID]map[recordKey]*record{}, changed: map[exam.ID]map[recordKey]bool{}, lastOwn: map[exam.ID]uint64{},
-		problems: damage, recv: map[change.Stream]*receiver{}, heads: map[change.Stream][]segment.Signed{}, lateNow: map[change.Stream]bool{}, stop: make(chan struct{}),
+		problems: damage, recv: map[change.Stream]*receiver{}, heads: map[change.Stream][]segment.Signed{}, backlog: map[change.Stream]bool{}, lateNow: map[change.Stream]bool{}, stop: make(chan struct{}),
 		wake: make(chan struct{}, 1), full: make(chan struct{}, 1), quit: make(chan struct{}), done: make(chan struct{}),
 	}
 	if err := s.fs.MakeDir(filepath.Join(dir, journalDir)); err != nil {

@@ -13,6 +13,7 @@
 package carry
 
 import (
+	"bytes"
 	"context"
 	"errors"
 	"fmt"
@@ -489,7 +490,9 @@ func (x *exchange) take(ctx context.Context) error {
 			total += r.Size
 		}
 	}
-	for _, r := range todo {
+	ahead := x.openAhead(todo)
+	defer ahead.stop()
+	for i, r := range todo {
 		if err := ctx.Err(); err != nil {
 			return err
 		}
@@ -522,7 +525,7 @@ func (x *exchange) take(ctx context.Context) error {
 			x.problem("a segment of a device that is not a member was left alone: %s", s.Device)
 			continue
 		}
-		if err := x.read(ctx, r, held, want); err != nil {
+		if err := x.read(ctx, r, func() (*segment.Reader, error) { return ahead.open(i) }, held, want); err != nil {
 			if errors.Is(err, errOwnSide) || ctx.Err() != nil {
 				return err
 			}
@@ -536,6 +539,73 @@ func (x *exchange) take(ctx context.Context) error {
 		}
 	}
 	return nil
+}
+
+// aheadReader opens segments before it is their turn, as many at once as there are processors to do it.
+type aheadReader struct {
+	x     *exchange
+	todo  []located
+	ready map[int]chan opening
+	next  int
+}
+
+type opening struct {
+	rd  *segment.Reader
+	err error
+}
+
+const openAtOnce = 3
+
+func (x *exchange) openAhead(todo []located) *aheadReader {
+	return &aheadReader{x: x, todo: todo, ready: map[int]chan opening{}}
+}
+
+// open returns the i-th segment, being read.
+func (a *aheadReader) open(i int) (*segment.Reader, error) {
+	for k := range a.ready {
+		if k < i { // it turned out not to be needed
+			a.drop(k)
+		}
+	}
+	for a.next = max(a.next, i); a.next < len(a.todo) && a.next < i+openAtOnce; a.next++ {
+		c := make(chan opening, 1)
+		a.ready[a.next] = c
+		path := a.todo[a.next].path
+		go func() {
+			rd, err := a.x.openSegment(path)
+			c <- opening{rd, err}
+		}()
+	}
+	o := <-a.ready[i]
+	delete(a.ready, i)
+	return o.rd, o.err
+}
+
+func (a *aheadReader) drop(k int) {
+	if o := <-a.ready[k]; o.rd != nil {
+		o.rd.Stop()
+	}
+	delete(a.ready, k)
+}
+
+func (a *aheadReader) stop() {
+	for k := range a.ready {
+		a.drop(k)
+	}
+}
+
+// openSegment reads a segment's file, which is small where it is compressed, and begins to open it.
+func (x *exchange) openSegment(path string) (*segment.Reader, error) {
+	data, err := disk.ReadFile(x.FS, path, segment.MaxSize)
+	if err != nil {
+		return nil, err
+	}
+	rd, err := segment.NewReader(bytes.NewReader(data), x.Bag.Ring)
+	if err != nil {
+		return nil, err
+	}
+	rd.Ahead()
+	return rd, nil
 }
 
 // errOwnSide marks errors of this device's own journal: to go on makes no sense.
@@ -608,21 +678,13 @@ func (x *exchange) holds(ctx context.Context, h Held, r Ref) (bool, error) {
 }
 
 // read takes one segment in.
-func (x *exchange) read(ctx context.Context, r located, held []Held, want key.Verifier) error {
-	f, err := x.FS.Open(r.path)
+func (x *exchange) read(ctx context.Context, r located, opened func() (*segment.Reader, error), held []Held, want key.Verifier) error {
+	rd, err := opened()
 	if err != nil {
 		return err
 	}
-	defer f.Close()
+	defer rd.Stop()
 	x.report.Read++
-	size, err := f.Size()
-	if err != nil {
-		return err
-	}
-	rd, err := segment.NewReader(io.NewSectionReader(f, 0, size), x.Bag.Ring)
-	if err != nil {
-		return err
-	}
 	if rd.Stream != r.Stream() || rd.First != r.First || rd.Signed.Hash != r.Hash {
 		return fmt.Errorf("%w: the segment is not the one that its device names", change.ErrMalformed)
 	}

@@ -20,7 +20,7 @@ import (
 const (
 	maxStatement = 64 << 10
 	// targetRaw is how many bytes of frames go into one segment.
-	targetRaw = 24 << 20
+	targetRaw = 8 << 20
 	// When this many segments of one stream are small, they are made into one.
 	mergeCount = 16
 	smallSize  = 4 << 20
@@ -296,8 +296,8 @@ func BuildSegments(ctx context.Context, j Journal, bag key.Bag, own bool, h Held
 			}
 			return add(f)
 		}
-		if n := len(pending); n > 0 && pending[n-1].Last+1 != f.First {
-			pending = nil // a hole: what stands before it was not signed
+		if n := len(pending); n > 0 && (pending[n-1].Last+1 != f.First || pending[n-1].Hash() != f.Prev) {
+			pending = nil // a hole, or another branch: what stands before it was not signed
 		}
 		pending = append(pending, f)
 		s, ok := ends[segment.Head{Stream: h.Of, Last: f.Last, Hash: f.Hash()}]

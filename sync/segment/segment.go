@@ -341,9 +341,16 @@ type Reader struct {
 	last   uint64
 	head   change.Hash
 	raw    int
-	read   int
+	taken  int
 	done   bool
 	name   [32]byte
+	ahead  chan read // see Ahead
+	stop   chan struct{}
+}
+
+type read struct {
+	b   Block
+	err error
 }
 
 // NewReader reads and checks the header. The error is change.ErrNoKey where the epoch's key is
@@ -361,7 +368,7 @@ func NewReader(r io.Reader, ring *key.Ring) (*Reader, error) {
 	if !ok {
 		return nil, fmt.Errorf("segment of stream %s: %w (%d)", h.Stream, change.ErrNoKey, h.Epoch)
 	}
-	rd := &Reader{Header: h, r: r, sum: sha256.New(), ring: ring, seal: s.Derive("segments"), last: h.First - 1, head: h.Prev, read: HeaderSize}
+	rd := &Reader{Header: h, r: r, sum: sha256.New(), ring: ring, seal: s.Derive("segments"), last: h.First - 1, head: h.Prev, taken: HeaderSize}
 	rd.sum.Write(head)
 	return rd, nil
 }
@@ -377,27 +384,69 @@ func short(err error, n int) error {
 // segment was complete and everything in it fits together; what was returned before any other
 // error must be thrown away, or may be kept as far as it follows what the caller holds.
 func (r *Reader) Next() (Block, error) {
+	if r.ahead != nil {
+		x, ok := <-r.ahead
+		if !ok {
+			return Block{}, io.EOF
+		}
+		return x.b, x.err
+	}
+	return r.next()
+}
+
+// Ahead begins to read the whole segment in the background, so that several can be opened at once. Call Stop
+// if Next is not called to the end.
+func (r *Reader) Ahead() {
+	ahead, stop := make(chan read, 64), make(chan struct{})
+	r.ahead, r.stop = ahead, stop
+	go func() {
+		defer close(ahead)
+		for {
+			b, err := r.next()
+			select {
+			case ahead <- read{b, err}:
+			case <-stop:
+				return
+			}
+			if err != nil {
+				return
+			}
+		}
+	}()
+}
+
+// Stop ends reading ahead.
+func (r *Reader) Stop() {
+	if r.stop != nil {
+		close(r.stop)
+		for range r.ahead {
+		}
+		r.ahead, r.stop = nil, nil
+	}
+}
+
+func (r *Reader) next() (Block, error) {
 	if r.done {
 		return Block{}, io.EOF
 	}
 	var n [4]byte
 	if _, err := io.ReadFull(r.r, n[:]); err != nil {
-		return Block{}, short(err, r.read)
+		return Block{}, short(err, r.taken)
 	}
 	r.sum.Write(n[:])
 	size := int(binary.BigEndian.Uint32(n[:]))
 	if size == 0 {
 		return Block{}, r.finish()
 	}
-	if size > maxSealed || r.read+size > MaxSize {
+	if size > maxSealed || r.taken+size > MaxSize {
 		return Block{}, fmt.Errorf("%w: a block of %d bytes", change.ErrMalformed, size)
 	}
 	sealed := make([]byte, size)
 	if n, err := io.ReadFull(r.r, sealed); err != nil {
-		return Block{}, short(err, r.read+n)
+		return Block{}, short(err, r.taken+n)
 	}
 	r.sum.Write(sealed)
-	r.read += 4 + size
+	r.taken += 4 + size
 	packed, err := r.seal.Open(sealed, blockContext(r.Stream, r.First, r.n))
 	if err != nil {
 		return Block{}, fmt.Errorf("block %d of a segment of stream %s: %w", r.n, r.Stream, err)
@@ -416,7 +465,7 @@ func (r *Reader) finish() error {
 	var got [32]byte
 	want := [32]byte(r.sum.Sum(nil))
 	if _, err := io.ReadFull(r.r, got[:]); err != nil {
-		return short(err, r.read)
+		return short(err, r.taken)
 	}
 	if got != want {
 		return fmt.Errorf("segment of stream %s: %w: its trailing hash does not fit", r.Stream, ErrIncomplete)
