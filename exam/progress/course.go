@@ -9,13 +9,14 @@ import (
 
 	"cordwalk.example/cordwalk/exam"
 	"cordwalk.example/cordwalk/exam/anatomy"
+	"cordwalk.example/cordwalk/exam/scale"
 )
 
 // A place is carried to the next visit while it holds at least leastMass of the belief, and from
 // the first visits, when little is known, at least wideMass. What is dropped is less than a
 // thousandth together, and can come back as a new lesion.
 const (
-	leastMass  = 2e-6
+	leastMass  = 1e-5
 	wideVisits = 3
 	wideMass   = 1e-7
 	lookAround = 16 // every so many visits every place is weighed again
@@ -83,6 +84,7 @@ type node struct {
 	chains chains      // how readings lean, after this visit
 
 	scores             []anatomy.SegmentScore
+	scales             []scale.Value
 	filtered, smoothed *reading // what they say of the targets, once asked for
 }
 

@@ -18,8 +18,8 @@ type reading struct {
 }
 
 // leastRead is the belief below which a place is left out of a reading: it could move a
-// function by 0.001 points.
-const leastRead = 1e-5
+// function by 0.003 points.
+const leastRead = 3e-5
 
 // bins of the damage axis on which bands are read.
 const bins = 200
@@ -28,7 +28,7 @@ const bins = 200
 type profile struct {
 	target int
 	damage [Levels]float64
-	lo, hi [Levels]float64 // a level stands for the half steps around it; the ends are points
+	lo, hi [Levels]float64 // a level stands for a quarter step to either side; the ends are points
 }
 
 func newProfile(target int, damage [Levels]float64) profile {
@@ -36,13 +36,8 @@ func newProfile(target int, damage [Levels]float64) profile {
 	for k := range Levels {
 		p.lo[k], p.hi[k] = damage[k], damage[k]
 		if k > 0 && k < Levels-1 {
-			p.lo[k], p.hi[k] = (damage[k-1]+damage[k])/2, (damage[k]+damage[k+1])/2
-			if k == 1 {
-				p.lo[k] = damage[0]
-			}
-			if k == Levels-2 {
-				p.hi[k] = damage[k+1]
-			}
+			// Spread over the whole step, the masses of the grid would make bands too wide.
+			p.lo[k], p.hi[k] = damage[k]-(damage[k]-damage[k-1])/4, damage[k]+(damage[k+1]-damage[k])/4
 		}
 	}
 	return p

@@ -199,7 +199,8 @@ func Analyse(s Series, o Options) (Result, error) {
 	slices.SortStableFunc(visits, func(a, b exam.Visit) int { return a.Examined.Compare(b.Examined) })
 	m, err := For(s.Patient)
 	if err != nil {
-		r := plainResult(s.Patient, visits, o)
+		r := plainResult(visits, o)
+		r.Scales = scalesOf(visits, o.Practice, func(i int) []scale.Value { return scale.All(visits[i]) })
 		r.Notes = append(r.Notes, err.Error())
 		return r, nil
 	}
@@ -213,11 +214,11 @@ func Analyse(s Series, o Options) (Result, error) {
 }
 
 // plainResult is what needs no model.
-func plainResult(p exam.Patient, visits []exam.Visit, o Options) Result {
+func plainResult(visits []exam.Visit, o Options) Result {
 	return Result{
 		Segments: []SegmentCourse{}, Limbs: []LimbCourse{}, Regions: []RegionCourse{}, Goals: []GoalChance{}, Alerts: []Alert{}, Notes: []string{},
-		Whole:  LimbCourse{Limb: "whole animal", Points: []Point{}, Forecast: []Ahead{}},
-		Scales: scalesOf(visits, o.Practice), Plain: orEmpty(plainOf(visits, o.Practice)), Symmetry: orEmpty(symmetryOf(visits)),
+		Whole: LimbCourse{Limb: "whole animal", Points: []Point{}, Forecast: []Ahead{}},
+		Plain: orEmpty(plainOf(visits, o.Practice)), Symmetry: orEmpty(symmetryOf(visits)),
 	}
 }
 
@@ -237,7 +238,13 @@ func (c *Course) Result(p exam.Patient, o Options) Result {
 	for i, n := range c.nodes {
 		visits[i] = n.visit
 	}
-	r := plainResult(p, visits, o)
+	r := plainResult(visits, o)
+	r.Scales = scalesOf(visits, o.Practice, func(i int) []scale.Value {
+		if c.nodes[i].scales == nil {
+			c.nodes[i].scales = orEmpty(scale.All(visits[i]))
+		}
+		return c.nodes[i].scales
+	})
 	r.course = c
 	if len(c.nodes) == 0 {
 		return r
@@ -450,8 +457,8 @@ func (c *Course) relapse(shown []int) *Relapse {
 	return r
 }
 
-// scalesOf gathers the published scales of the visits.
-func scalesOf(visits []exam.Visit, own repeat.Practice) []ScaleCourse {
+// scalesOf gathers the published scales of the visits; all returns those of one visit.
+func scalesOf(visits []exam.Visit, own repeat.Practice, all func(i int) []scale.Value) []ScaleCourse {
 	type key struct {
 		scale   scale.Scale
 		site    exam.Site
@@ -459,11 +466,11 @@ func scalesOf(visits []exam.Visit, own repeat.Practice) []ScaleCourse {
 	}
 	out := []ScaleCourse{}
 	index := map[key]int{}
-	for _, v := range visits {
+	for n, v := range visits {
 		if !v.RepeatOf.IsZero() {
 			continue
 		}
-		for _, x := range scale.All(v) {
+		for _, x := range all(n) {
 			k := key{x.Scale, x.Site, x.Variant}
 			i, ok := index[k]
 			if !ok {

@@ -88,9 +88,9 @@ func goodAndBadDays(r *rand.Rand) func(float64) float64 {
 }
 
 // fitsAndStarts bends time: each week's progress is a gamma variate of mean 1 and standard deviation
-// 0.4, for recovery does not run on rails (judgement).
+// 0.5, for recovery does not run on rails (judgement).
 func fitsAndStarts(r *rand.Rand) func(float64) float64 {
-	g := distuv.Gamma{Alpha: 1 / (0.4 * 0.4), Beta: 1 / (0.4 * 0.4), Src: r}
+	g := distuv.Gamma{Alpha: 1 / (0.5 * 0.5), Beta: 1 / (0.5 * 0.5), Src: r}
 	at := []float64{0}
 	return func(w float64) float64 {
 		i := int(w)
