@@ -14,6 +14,7 @@ import (
 
 	"cordwalk.example/cordwalk/exam"
 	"cordwalk.example/cordwalk/sync/change"
+	"cordwalk.example/cordwalk/sync/key"
 )
 
 // The records format: one JSON file that holds everything of one or more animals, for
@@ -37,6 +38,9 @@ type Records struct {
 	Practice exam.Practice // PINs are not exported
 	Animals  []Animal
 	Changes  []change.Change // of the animals, in the order of their history; of Stream only Device counts
+	// OwnerKeys open the owners' contact data in Changes, by the animal's id: 32 bytes each. The
+	// contact data of an owner who was erased have none.
+	OwnerKeys map[exam.ID][]byte
 }
 
 type recordsJSON struct {
@@ -46,6 +50,13 @@ type recordsJSON struct {
 	Practice *practiceJSON `json:"practice,omitempty"`
 	Animals  []animalJSON  `json:"animals"`
 	Changes  []changeJSON  `json:"changes,omitempty"`
+	Keys     []keyJSON     `json:"owner_keys,omitempty"`
+}
+
+// keyJSON is the key of one owner's contact data, in base64.
+type keyJSON struct {
+	Owner exam.ID `json:"owner"`
+	Key   string  `json:"key"`
 }
 
 type practiceJSON struct {
@@ -221,6 +232,10 @@ func EncodeRecords(w io.Writer, r Records) error {
 		}
 		out.Changes = append(out.Changes, changeOut(c))
 	}
+	for owner, k := range r.OwnerKeys {
+		out.Keys = append(out.Keys, keyJSON{owner, base64.StdEncoding.EncodeToString(k)})
+	}
+	slices.SortFunc(out.Keys, func(a, b keyJSON) int { return slices.Compare(a.Owner[:], b.Owner[:]) })
 	enc := json.NewEncoder(w)
 	enc.SetEscapeHTML(false)
 	enc.SetIndent("", " ")
@@ -483,6 +498,19 @@ func recordsIn(in recordsJSON) (Records, error) {
 	}
 	for i, c := range in.Changes {
 		p.in(at0("changes", i), func() { out.Changes = append(out.Changes, changeIn(p, c)) })
+	}
+	for i, k := range in.Keys {
+		p.in(at0("owner_keys", i), func() {
+			b, err := base64.StdEncoding.DecodeString(k.Key)
+			if err != nil || len(b) != len(key.OwnerKey{}) {
+				p.fail(&exam.Invalid{Field: "key", Value: strconv.Itoa(len(b)) + " bytes", Allowed: "32 bytes in base64"})
+				return
+			}
+			if out.OwnerKeys == nil {
+				out.OwnerKeys = map[exam.ID][]byte{}
+			}
+			out.OwnerKeys[k.Owner] = b
+		})
 	}
 	return out, p.err
 }

@@ -199,6 +199,12 @@ func TestRecordsLoseNothing(t *testing.T) {
 		for range rapid.IntRange(0, 3).Draw(t, "changes") {
 			r.Changes = append(r.Changes, anyChange(t))
 		}
+		for range rapid.IntRange(0, 2).Draw(t, "keys") {
+			if r.OwnerKeys == nil {
+				r.OwnerKeys = map[exam.ID][]byte{}
+			}
+			r.OwnerKeys[anyID(t)] = rapid.SliceOfN(rapid.Byte(), 32, 32).Draw(t, "key")
+		}
 		var first bytes.Buffer
 		if err := EncodeRecords(&first, r); err != nil {
 			t.Fatal(err)

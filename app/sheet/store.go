@@ -13,6 +13,7 @@ import (
 	"cordwalk.example/cordwalk/exam"
 	"cordwalk.example/cordwalk/storage"
 	"cordwalk.example/cordwalk/sync/change"
+	"cordwalk.example/cordwalk/sync/key"
 	"cordwalk.example/cordwalk/sync/segment"
 )
 
@@ -73,6 +74,9 @@ func ReadRecords(ctx context.Context, s *storage.Store, made time.Time, history 
 		if out.Changes, err = changesOf(ctx, s, of); err != nil {
 			return Records{}, err
 		}
+		if out.OwnerKeys, err = ownerKeys(s, out.Changes); err != nil {
+			return Records{}, err
+		}
 	}
 	return out, nil
 }
@@ -114,6 +118,34 @@ func changesOf(ctx context.Context, s *storage.Store, of map[exam.ID]bool) ([]ch
 	return out, nil
 }
 
+// ownerKeys collects the keys of the contact data of every animal in the changes.
+func ownerKeys(s *storage.Store, changes []change.Change) (map[exam.ID][]byte, error) {
+	var out map[exam.ID][]byte
+	asked := map[exam.ID]bool{}
+	for _, c := range changes {
+		if c.Kind != change.KindPatient || asked[c.Patient] {
+			continue
+		}
+		asked[c.Patient] = true
+		sealed, ok, err := s.OwnerKey(c.Patient)
+		if err != nil {
+			return nil, err
+		}
+		if !ok {
+			continue // no contact data, or erased
+		}
+		k, err := s.Bag().Ring.OpenOwnerKey(c.Patient, sealed)
+		if err != nil {
+			return nil, err
+		}
+		if out == nil {
+			out = map[exam.ID][]byte{}
+		}
+		out[c.Patient] = k[:]
+	}
+	return out, nil
+}
+
 // historical is the order of a history without places in a journal: by time, device and id.
 func historical(a, b change.Change) int {
 	return cmp.Or(cmp.Compare(a.Time, b.Time), slices.Compare(a.Stream.Device[:], b.Stream.Device[:]), a.ID.Compare(b.ID))
@@ -143,6 +175,11 @@ func AddRecords(ctx context.Context, s *storage.Store, who string, r Records, pr
 		}
 	}
 	if len(r.Changes) > 0 && len(there) == 0 {
+		for owner, k := range r.OwnerKeys {
+			if err := s.AddOwnerKey(owner, s.Bag().Ring.SealOwnerKey(owner, key.OwnerKey(k))); err != nil {
+				return out, fmt.Errorf("taking the history in: %w", err)
+			}
+		}
 		n, err := restore(ctx, s, r.Changes)
 		if err != nil {
 			return out, fmt.Errorf("taking the history in: %w", err)

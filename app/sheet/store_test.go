@@ -110,6 +110,27 @@ func TestExportImportExport(t *testing.T) {
 	assert.Equal(t, string(second), string(exportOf(t, last, true)), "export, import, export: the same bytes")
 }
 
+// TestErasedOwnersStayErased: contact data that were erased at the owner's request do not
+// leave, nor come back by an import.
+func TestErasedOwnersStayErased(t *testing.T) {
+	ctx := context.Background()
+	s := someStore(t)
+	p := demoPractice().Cases[0].Patient
+	require.NoError(t, s.EraseOwner(ctx, "A. Moor", p.ID, "asked by letter"))
+	data := exportOf(t, s, true)
+	assert.NotContains(t, string(data), p.Owner.Name)
+	r, _, err := DecodeRecords(bytes.NewReader(data))
+	require.NoError(t, err)
+	assert.NotContains(t, r.OwnerKeys, p.ID)
+	other := storagetest.Open(t)
+	_, err = AddRecords(ctx, other, "A. Moor", r, nil)
+	require.NoError(t, err)
+	got, err := other.Patient(p.ID)
+	require.NoError(t, err)
+	assert.True(t, got.Patient.Owner.Empty())
+	assert.Equal(t, string(data), string(exportOf(t, other, true)))
+}
+
 // TestImportIntoAStoreWithAnimals adds what is new and leaves what is there alone.
 func TestImportIntoAStoreWithAnimals(t *testing.T) {
 	ctx := context.Background()
