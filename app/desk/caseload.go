@@ -56,7 +56,11 @@ func (p *caseloadPage) build() {
 	p.detail = mark.Column(look.Unit)
 	p.empty = mark.Column(look.Unit * 2)
 	outcomes := mark.NewButton("", "course", func() { w.goTo(view.Route{Screen: view.ScreenOutcomes}) }).WithTip(words.T("Outcomes of the practice: time to walking"))
-	head := mark.Row(look.Unit, []float32{1, 0, 0, 0, 0}, p.search, p.today, p.gone, outcomes, add)
+	table := mark.NewButton("", "grid", func() {
+		w.file = File{}
+		w.show(newImportPage(w))
+	}).WithTip(words.T("Import patients from a table"))
+	head := mark.Row(look.Unit, []float32{1, 0, 0, 0, 0, 0}, p.search, p.today, p.gone, outcomes, table, add)
 	body := &fyne.Container{Layout: caseBody{p}, Objects: []fyne.CanvasObject{newCaseHead(), p.list, p.empty, mark.NewGround(look.Line), mark.NewScroll(mark.Pad(0, look.Unit*2, p.detail))}}
 	p.root = mark.Pad(look.Unit*1.5, look.Unit*2, mark.ColumnGrow(look.Unit, 2, head, p.count, body))
 	p.cases.Search("")

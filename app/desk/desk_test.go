@@ -648,3 +648,34 @@ func TestSharingBeginsWithARecoveryKeyAndExchangesByAFolder(t *testing.T) {
 		t.Error(f)
 	}
 }
+
+func TestAnImportIsLookedAtWrittenAndTakenBackAsOne(t *testing.T) {
+	s := newStage(t, view.Settings{})
+	w := s.demo()
+	before := s.app.caseload.Total()
+	screens(s)["import"]()
+	p := w.page.(*importPage)
+	if take, duplicates, problems := p.plan.Counts(); take != 1 || duplicates != 1 || problems != 1 {
+		t.Fatalf("%d to take, %d there already, %d with problems", take, duplicates, problems)
+	}
+	count := func() int {
+		list, err := s.app.records.Caseload(context.Background())
+		if err != nil {
+			t.Fatal(err)
+		}
+		return view.NewCaseload(list, today).Total()
+	}
+	if n := count(); n != before {
+		t.Fatalf("looking at the table changed the caseload from %d to %d", before, n)
+	}
+	p.apply()
+	s.until("the import", func() bool { return p.done != nil })
+	if n := count(); n != before+1 {
+		t.Errorf("after the import %d animals, want %d", n, before+1)
+	}
+	w.undo(false)
+	s.until("the undo", func() bool { return p.done == nil && !p.busy })
+	if n := count(); n != before {
+		t.Errorf("after the undo %d animals, want %d", n, before)
+	}
+}

@@ -216,6 +216,10 @@ func (k *kept) SavePractice(ctx context.Context, examiner string, before, after 
 	return err
 }
 
+func (k *kept) Apply(ctx context.Context, examiner string, edits ...storage.Edit) (storage.Receipt, error) {
+	return k.s.Apply(ctx, examiner, edits...)
+}
+
 func (k *kept) NewID() exam.ID  { return storage.NewID() }
 func (k *kept) Protected() bool { return k.s.Protected() }
 func (k *kept) Device() string  { return k.s.Device() }

@@ -5,6 +5,7 @@ import (
 
 	"cordwalk.example/cordwalk/app/view"
 	"cordwalk.example/cordwalk/exam"
+	"cordwalk.example/cordwalk/storage"
 )
 
 // Records is what the desktop needs of the store, and no more. Every call may take long and
@@ -18,6 +19,9 @@ type Records interface {
 	SaveVisit(ctx context.Context, examiner string, before, after exam.Visit) error
 	SaveBatch(ctx context.Context, examiner string, b view.Batch) error
 	SavePractice(ctx context.Context, examiner string, before, after exam.Practice) error
+
+	// Apply writes edits as one action; the import uses it.
+	Apply(ctx context.Context, examiner string, edits ...storage.Edit) (storage.Receipt, error)
 
 	NewID() exam.ID  // at once
 	Protected() bool // at once: whether the key lies elsewhere than the data

@@ -2,6 +2,8 @@ package desk
 
 import (
 	"fmt"
+	"os"
+	"path/filepath"
 	"testing"
 
 	"fyne.io/fyne/v2"
@@ -140,6 +142,9 @@ func TestFaultsAreFound(t *testing.T) {
 	}
 }
 
+// table is a table of patients as practices keep them: one good row, one that is there already, one bad.
+const table = "Name;Species;Breed;Owner;Phone;Born;Diagnosis\nPip;dog;Beagle;Ann Bell;01632 960 301;2020-05;disc extrusion\nBramble;dog;Dachshund;Ida Fenn;;2020-11;\n;cat;;;;;\n"
+
 // screens are all screens of the program with what is done on them before they are looked at.
 func screens(s *stage) map[string]func() {
 	bramble := s.id("Bramble")
@@ -162,10 +167,23 @@ func screens(s *stage) map[string]func() {
 			s.app.settings.OneByOne = true
 			s.exam().choose(tabExam)
 		},
-		"compare":  func() { s.show(view.ScreenCompare, bramble) },
-		"course":   func() { s.show(view.ScreenCourse, bramble) },
-		"sheet":    func() { s.show(view.ScreenSheet, bramble) },
-		"devices":  func() { s.show(view.ScreenDevices, bramble) },
+		"compare": func() { s.show(view.ScreenCompare, bramble) },
+		"course":  func() { s.show(view.ScreenCourse, bramble) },
+		"sheet":   func() { s.show(view.ScreenSheet, bramble) },
+		"devices": func() { s.show(view.ScreenDevices, bramble) },
+		"import": func() {
+			s.show(view.ScreenCaseload, bramble)
+			w := s.win()
+			p := newImportPage(w)
+			w.show(p)
+			path := filepath.Join(s.t.TempDir(), "a.csv")
+			if err := os.WriteFile(path, []byte(table), 0o600); err != nil {
+				s.t.Fatal(err)
+			}
+			p.file.SetText(path)
+			p.read()
+			s.until("the table read", func() bool { return p.plan != nil })
+		},
 		"outcomes": func() { s.show(view.ScreenOutcomes, bramble) },
 		"figures": func() {
 			s.show(view.ScreenCourse, bramble)
