@@ -2,6 +2,8 @@ package localise
 
 import (
 	"fmt"
+	"runtime"
+	"slices"
 	"sync"
 
 	"cordwalk.example/cordwalk/exam"
@@ -67,7 +69,6 @@ type rowSet struct {
 	cats   int
 	p      []float64 // row*cats*points
 	margin []float64 // row*cats: summed over the points
-	find   map[rowKey]uint16
 }
 
 // group is a set of cells that share a deviation.
@@ -264,7 +265,9 @@ func dash(s string) string {
 	return string(out)
 }
 
-// tabulate walks the space once and shares equal answers.
+// tabulate walks the space and shares equal answers. Groups that share row sets (the two sides
+// of one item) are tabulated by one goroutine in the order of the space, so the tables are the
+// same however many goroutines there are.
 func (m *Model) tabulate() {
 	cells := m.lay.cells
 	m.setOf = make([]int, len(cells))
@@ -276,7 +279,7 @@ func (m *Model) tabulate() {
 		if !ok {
 			s = len(m.sets)
 			setIndex[k] = s
-			m.sets = append(m.sets, rowSet{item: c.item, cats: c.cats, find: map[rowKey]uint16{}})
+			m.sets = append(m.sets, rowSet{item: c.item, cats: c.cats})
 		}
 		m.setOf[i] = s
 	}
@@ -286,15 +289,101 @@ func (m *Model) tabulate() {
 		g.cells = append(g.cells, i)
 		g.rows = append(g.rows, nil)
 	}
-	finders := make([]*finder, len(m.sets))
-	for i := range finders {
-		finders[i] = newFinder()
+	var wait sync.WaitGroup
+	for _, part := range m.shares(min(runtime.GOMAXPROCS(0), 4)) {
+		wait.Go(func() { m.tabulateGroups(part) })
 	}
-	sigs, pairs := make([]*intern, len(m.groups)), make([]*intern, len(m.groups))
-	for i := range sigs {
-		sigs[i], pairs[i] = newIntern(), newIntern()
+	m.list()
+	wait.Wait()
+	for i := range m.groups {
+		if len(m.groups[i].pairs) > 1<<16 || m.groups[i].sigs > 1<<16 {
+			panic("localise: too many distinct answers in group " + m.lay.groups[i])
+		}
 	}
+}
+
+// shares deals the groups out to n goroutines, those that share a row set together.
+func (m *Model) shares(n int) [][]int {
+	owner := make([]int, len(m.groups))
+	for i := range owner {
+		owner[i] = i
+	}
+	var root func(i int) int
+	root = func(i int) int {
+		if owner[i] != i {
+			owner[i] = root(owner[i])
+		}
+		return owner[i]
+	}
+	firstOf := map[int]int{}
+	for ci, set := range m.setOf {
+		g := m.lay.cells[ci].group
+		if first, ok := firstOf[set]; ok {
+			owner[root(g)] = root(first)
+		} else {
+			firstOf[set] = g
+		}
+	}
+	cost := map[int]int{}
+	for g := range m.groups {
+		cost[root(g)] += len(m.groups[g].cells) + 2
+	}
+	load := make([]int, n)
+	to := map[int]int{}
+	out := make([][]int, n)
+	for g := range m.groups {
+		r := root(g)
+		w, ok := to[r]
+		if !ok {
+			for i := range load {
+				if load[i] < load[w] {
+					w = i
+				}
+			}
+			to[r] = w
+			load[w] += cost[r]
+		}
+		out[w] = append(out[w], g)
+	}
+	return out
+}
+
+// list fills what is kept of each hypothesis by itself.
+func (m *Model) list() {
 	damages := map[[3]int]uint16{}
+	m.sp.each(func(h *hypothesis) {
+		if h.site.kind == NoLesion {
+			m.sound = m.hyps
+		}
+		m.prior = append(m.prior, toLog(logOf(h.prior)))
+		m.siteOf = append(m.siteOf, uint16(h.index))
+		m.acute = append(m.acute, h.acute)
+		m.timed = append(m.timed, h.site.timed())
+		m.severity = append(m.severity, uint8(h.severity))
+		k := [3]int{h.index, h.severity, h.second}
+		d, ok := damages[k]
+		if !ok {
+			d = uint16(len(m.damages))
+			damages[k] = d
+			m.damages = append(m.damages, m.damageOf(h))
+		}
+		m.damage = append(m.damage, d)
+		m.hyps++
+	})
+}
+
+func (m *Model) tabulateGroups(part []int) {
+	cells := m.lay.cells
+	finders := make([]*finder, len(m.sets))
+	sigs, pairs := make([]*intern, len(m.groups)), make([]*intern, len(m.groups))
+	for _, gi := range part {
+		sigs[gi], pairs[gi] = newIntern(), newIntern()
+		for _, ci := range m.groups[gi].cells {
+			if finders[m.setOf[ci]] == nil {
+				finders[m.setOf[ci]] = newFinder()
+			}
+		}
+	}
 	var b, other body
 	var st state
 	var key rowKey
@@ -310,7 +399,7 @@ func (m *Model) tabulate() {
 	m.sp.each(func(h *hypothesis) {
 		m.sp.build(h, &b, &other)
 		st.derive(&b, &m.sp.arcs[h.variant], m.p)
-		for gi := range m.groups {
+		for _, gi := range part {
 			g := &m.groups[gi]
 			hash := uint64(14695981039346656037)
 			for k, ci := range g.cells {
@@ -319,7 +408,11 @@ func (m *Model) tabulate() {
 				set := &m.sets[m.setOf[ci]]
 				row, ok := finders[m.setOf[ci]].find(key)
 				if !ok {
-					row = uint16(len(set.margin) / set.cats)
+					n := len(set.margin) / set.cats
+					if n >= 1<<16 {
+						panic("localise: too many distinct answers of " + c.item.String())
+					}
+					row = uint16(n)
 					finders[m.setOf[ci]].put(key, row)
 					m.p.rowOf(m.species, c, key, out[:set.cats])
 					for cat := range set.cats {
@@ -373,28 +466,10 @@ func (m *Model) tabulate() {
 			g.of = append(g.of, pi)
 			lt.hash, lt.pair, lt.of, lt.warm = hash, pair{sig, h.site.class}, pi, true
 		}
-		if h.site.kind == NoLesion {
-			m.sound = m.hyps
-		}
-		m.prior = append(m.prior, toLog(logOf(h.prior)))
-		m.siteOf = append(m.siteOf, uint16(h.index))
-		m.acute = append(m.acute, h.acute)
-		m.timed = append(m.timed, h.site.timed())
-		m.severity = append(m.severity, uint8(h.severity))
-		k := [3]int{h.index, h.severity, h.second}
-		d, ok := damages[k]
-		if !ok {
-			d = uint16(len(m.damages))
-			damages[k] = d
-			m.damages = append(m.damages, m.damageOf(h))
-		}
-		m.damage = append(m.damage, d)
-		m.hyps++
 	})
-	for i := range m.groups {
-		if len(m.groups[i].pairs) > 1<<16 || m.groups[i].sigs > 1<<16 {
-			panic("localise: too many distinct answers in group " + m.lay.groups[i])
-		}
+	for _, gi := range part { // what grew by doubling is cut to size
+		g := &m.groups[gi]
+		g.of, g.pairs = slices.Clip(g.of), slices.Clip(g.pairs)
 	}
 }
 

@@ -36,8 +36,31 @@ func (e *Engine) summary() {
 		e.res.Summary = lead.Region
 		return
 	}
-	pct := int(math.Round(float64(e.res.Sites[0].Probability * 100)))
-	e.res.Summary = e.note(1, e.classes[0].class, pct, func() string { return e.res.Sites[0].Words + ", " + percent(pct) })
+	// «L6–S1, left: cord or roots, 83 %»: cord and roots of one place and side are hard to
+	// tell apart and are said together.
+	top := e.classes[0]
+	c := &e.m.classes[top.class]
+	sum, together := top.sum, 0
+	if c.kind == Cord || c.kind == Root {
+		for _, r := range e.classes[1:] {
+			o := &e.m.classes[r.class]
+			if o.kind != c.kind && (o.kind == Cord || o.kind == Root) && o.region == c.region && o.side == c.side && o.place == c.place {
+				if float64(r.sum) > 0.1*float64(top.sum) {
+					together = 1
+					sum += r.sum
+				}
+			}
+		}
+	}
+	pct := int(math.Round(float64(e.share(sum) * 100)))
+	e.res.Summary = e.note(1, top.class*2+together, pct, func() string {
+		words := c.words
+		if together == 1 {
+			place, _, _ := strings.Cut(words, ": ")
+			words = place + ": cord or roots"
+		}
+		return words + ", " + percent(pct)
+	})
 }
 
 func percent(p int) string {
