@@ -70,18 +70,17 @@ func (m *Model) after(units int64) *transition { return m.clock.after(units, m.r
 
 // node is one visit with its messages. alpha and beta hold the states of the carried places.
 type node struct {
-	visit  exam.Visit
-	step   *transition // from the visit before; nil for the first and for no time between
-	sites  []int       // carried places, ascending
-	alpha  []float64   // P(place, state | exams so far), adding up to 1
-	like   []float64   // likelihood of this exam for each carried place and level
-	day    []float64   // ln likelihood of all exams of this day, before good and bad days are summed out
-	wide   bool        // one of the first visits
-	when   int64       // units since the first visit
-	beta   []float64   // later evidence for each place and state; Σ alpha·beta = 1
-	scale  float64     // what alpha was divided by
-	logP   float64     // ln P(this exam | earlier exams), up to the constant of LogLikelihoods
-	chains chains      // how readings lean, after this visit
+	visit exam.Visit
+	step  *transition // from the visit before; nil for the first and for no time between
+	sites []int       // carried places, ascending
+	alpha []float64   // P(place, state | exams so far), adding up to 1
+	like  []float64   // likelihood of this exam for each carried place and level
+	day   []float64   // ln likelihood of all exams of this day, before good and bad days are summed out
+	wide  bool        // one of the first visits
+	when  int64       // units since the first visit
+	beta  []float64   // later evidence for each place and state; Σ alpha·beta = 1
+	scale float64     // what alpha was divided by
+	logP  float64     // ln P(this exam | earlier exams), up to the constant of LogLikelihoods
 
 	scores             []anatomy.SegmentScore
 	scales             []scale.Value
@@ -102,11 +101,13 @@ func (n *node) index(site int) int {
 // Course is the exams of one animal and what they say together. Add visits in order of time.
 // A Course is for one goroutine.
 type Course struct {
-	model *Model
-	nodes []*node
-	kept  []*following
-	owed  float64 // belief that later visits may have moved in visits that were left alone
-	steps int64   // places × steps computed so far, for the figures
+	model   *Model
+	nodes   []*node
+	chains  chains // how the readings of the last visits lean
+	scratch [3][]float64
+	kept    []*following
+	owed    float64 // belief that later visits may have moved in visits that were left alone
+	steps   int64   // places × steps computed so far, for the figures
 }
 
 // NewCourse returns an empty course.
@@ -130,8 +131,8 @@ func (c *Course) LogLikelihood() float64 {
 	return sum
 }
 
-// Add takes in the next visit. Only what its exam changes is computed again. The error says
-// that it lies before the last one.
+// Add takes in the next visit. Only what its exam changes is computed again. The error says that it
+// lies before the last one, or that the space has no likelihood for it.
 func (c *Course) Add(v exam.Visit) error {
 	m := c.model
 	n := &node{visit: v, wide: len(c.nodes) < wideVisits}
@@ -149,45 +150,63 @@ func (c *Course) Add(v exam.Visit) error {
 		}
 		n.when = units(c.nodes[0].visit.Examined, v.Examined)
 		n.step = m.after(n.when - last.when)
-		n.chains = make(chains, len(last.chains))
-		for k, l := range last.chains {
-			n.chains[k] = l
-		}
 		sites = m.reachable(last, n.step, sites)
-	} else {
-		n.chains = chains{}
 	}
-	log := make([]float64, len(sites)*Levels)
-	logLikelihoods(m.space, n.chains, v, sites, log)
-	like, best := m.overDays(last, v, sites, log)
+	log := sized(&c.scratch[0], len(sites)*Levels)
+	read := logLikelihoods(m.space, c.chains, v, sites, log)
+	like, best := m.overDays(last, v, sites, log, sized(&c.scratch[1], len(log)))
 	if math.IsInf(best, 0) || math.IsNaN(best) {
 		return fmt.Errorf("the exam of %s is impossible at every place: the model returned %v", v.Examined.Format(time.RFC3339), best)
 	}
-	prior := c.predict(last, n.step, sites)
-	total := 0.0
-	for i := range sites {
-		p := prior[at(i):at(i+1)]
-		for k := range Levels {
-			l := like[i*Levels+k]
-			for q := range int(paceCount) {
-				p[k*int(paceCount)+q] *= l
-				total += p[k*int(paceCount)+q]
-			}
-		}
-	}
+	prior := sized(&c.scratch[2], len(sites)*states)
+	c.predict(last, n.step, sites, prior)
+	total := weigh(prior, like)
 	if !(total > 0) {
-		return fmt.Errorf("the exam of %s cannot be reached from the exams before it", v.Examined.Format(time.RFC3339))
+		// Two exams within hours that exclude each other: the later one starts anew.
+		c.predict(nil, nil, sites, prior)
+		total = weigh(prior, like)
 	}
 	n.logP = best + math.Log(total)
 	m.keep(n, sites, prior, like, log, total)
+	if last != nil {
+		last.day = nil // only a further exam of the same day asks for it
+	}
+	if c.chains == nil {
+		c.chains = chains{}
+	}
+	for k, l := range read {
+		c.chains[k] = l
+	}
 	c.nodes = append(c.nodes, n)
 	return nil
+}
+
+// sized returns a slice of that length, zeroed, in memory that is used again.
+func sized(s *[]float64, n int) []float64 {
+	if cap(*s) < n {
+		*s = make([]float64, n)
+	}
+	out := (*s)[:n]
+	clear(out)
+	return out
+}
+
+// weigh multiplies the belief in states by the likelihood of their levels and returns its sum.
+func weigh(belief, like []float64) float64 {
+	total := 0.0
+	for k, l := range like {
+		for q := range int(paceCount) {
+			belief[k*int(paceCount)+q] *= l
+			total += belief[k*int(paceCount)+q]
+		}
+	}
+	return total
 }
 
 // overDays sums good and bad days out of an exam's log-likelihoods; ln of the scale is returned.
 // Exams of one day share the day: the second says what it adds to the first, and log becomes
 // the sum of both.
-func (m *Model) overDays(last *node, v exam.Visit, sites []int, log []float64) (like []float64, scale float64) {
+func (m *Model) overDays(last *node, v exam.Visit, sites []int, log, like []float64) (_ []float64, scale float64) {
 	sum := func(log []float64, best float64, out []float64) {
 		var e [Levels]float64
 		any := false
@@ -229,7 +248,6 @@ func (m *Model) overDays(last *node, v exam.Visit, sites []int, log []float64) (
 	if math.IsInf(best, 0) || math.IsNaN(best) {
 		return nil, best
 	}
-	like = make([]float64, len(log))
 	var once [Levels]float64
 	for i, s := range sites {
 		out := like[i*Levels : (i+1)*Levels]
@@ -262,10 +280,11 @@ func (m *Model) reachable(last *node, step *transition, sites []int) []int {
 	return slices.Compact(sites)
 }
 
-// predict returns the belief before an exam over the given places.
-func (c *Course) predict(last *node, step *transition, sites []int) []float64 {
+// predict puts the belief before an exam over the given places into out, which holds zeros or
+// whatever is to be overwritten.
+func (c *Course) predict(last *node, step *transition, sites []int, out []float64) {
 	m := c.model
-	out := make([]float64, len(sites)*states)
+	clear(out)
 	if last == nil {
 		for i, s := range sites {
 			w := m.space.Prior(s)
@@ -273,7 +292,7 @@ func (c *Course) predict(last *node, step *transition, sites []int) []float64 {
 				out[at(i)+j] = float64(w * f)
 			}
 		}
-		return out
+		return
 	}
 	m.spread(last.sites, last.alpha, step, sites, out)
 	c.steps += int64(len(last.sites))
@@ -285,7 +304,6 @@ func (c *Course) predict(last *node, step *transition, sites []int) []float64 {
 			}
 		}
 	}
-	return out
 }
 
 // spread moves belief over a stretch without new lesions, growth included.
@@ -380,7 +398,11 @@ func (c *Course) smooth() {
 			total += float64(a * beta[j])
 		}
 		for j := range beta {
-			beta[j] /= total
+			if total > 0 {
+				beta[j] /= total
+			} else {
+				beta[j] = 1 // the next exam started anew
+			}
 		}
 		if n.beta != nil {
 			moved := 0.0
@@ -537,12 +559,15 @@ func (c *Course) beliefAt(t time.Time) belief {
 		for s := range sites {
 			sites[s] = s
 		}
-		return m.collect(sites, c.predict(before, step, sites))
+		belief := make([]float64, len(sites)*states)
+		c.predict(before, step, sites, belief)
+		return m.collect(sites, belief)
 	}
 	c.smooth()
 	next := c.nodes[i]
 	sites := m.reachable(before, step, next.sites)
-	alpha := c.predict(before, step, sites)
+	alpha := make([]float64, len(sites)*states)
+	c.predict(before, step, sites, alpha)
 	beta := m.backward(sites, next, m.after(next.when-now))
 	for j := range alpha {
 		alpha[j] *= beta[j]

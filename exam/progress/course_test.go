@@ -325,3 +325,61 @@ func TestVisitsMustComeInOrder(t *testing.T) {
 	require.ErrorContains(t, c.Add(b.draw(r, 0, 0.5, week(1), 5)), "lies before the last one")
 	require.Equal(t, 1, c.Len())
 }
+
+// n readings that share an error of correlation r weigh n/(1 + (n − 1)r): never more than 1/r.
+func TestNewInformation(t *testing.T) {
+	for _, r := range []float64{copies.Seen, copies.Copied} {
+		sum := 0.0
+		for n := 1; n <= 50; n++ {
+			step := newInformation(n, r)
+			require.Greater(t, step, 0.0)
+			sum += step
+			require.InDelta(t, float64(n)/(1+float64(n-1)*r), sum, 1e-12)
+		}
+		require.Less(t, sum, 1/r)
+	}
+}
+
+// A grade copied by key for weeks tells little that is new; one given with sight of the last
+// grade tells less than a free one; a changed grade counts in full however it came to be.
+func TestCopiedReadingsShareTheirError(t *testing.T) {
+	b := newBench()
+	m := NewModel(b, DefaultRates())
+	r := rand.New(rand.NewPCG(21, 1))
+	first := b.draw(r, b.site("T12"), 0.5, week(0), 30)
+	certain := func(how exam.How, seen bool) float64 {
+		c := NewCourse(m)
+		require.NoError(t, c.Add(first))
+		for w := 1; w <= 8; w++ {
+			v := first
+			v.Examined = week(float64(w))
+			v.Findings = append([]exam.Finding(nil), first.Findings...)
+			for i := range v.Findings {
+				v.Findings[i].How, v.Findings[i].Seen = how, seen
+			}
+			require.NoError(t, c.Add(v))
+		}
+		band := c.filtered(8).whole
+		return band.High - band.Low
+	}
+	fresh, looked, copies := certain(exam.Examined, false), certain(exam.Examined, true), certain(exam.SameAsLast, false)
+	require.Less(t, fresh, looked)
+	require.Less(t, looked, copies)
+
+	// Changed grades are new whatever was seen.
+	_, _, c := chains{}.leans(first)
+	changed := first
+	changed.Findings = append([]exam.Finding(nil), first.Findings...)
+	for i := range changed.Findings {
+		f := &changed.Findings[i]
+		g, _ := f.Result.Grade()
+		if g == f.Item.Info().First {
+			f.Result = exam.Graded(g + 1)
+		} else {
+			f.Result = exam.Graded(g - 1)
+		}
+		f.Seen = true
+	}
+	sorted, _, _ := c.leans(changed)
+	require.Len(t, sorted[free], len(first.Findings))
+}

@@ -87,9 +87,10 @@ type link struct {
 }
 
 // leans sorts a visit's tested findings by how they lean on the earlier ones, with the mean new
-// information of each class, and takes them in.
-func (c chains) leans(v exam.Visit) (sorted [3][]exam.Finding, weight [3]float64) {
+// information of each class, and returns what the chains become with them.
+func (c chains) leans(v exam.Visit) (sorted [3][]exam.Finding, weight [3]float64, next chains) {
 	weight[free] = 1
+	next = make(chains, len(v.Findings))
 	for _, f := range v.Findings {
 		if !f.Result.Tested() {
 			continue
@@ -99,19 +100,19 @@ func (c chains) leans(v exam.Visit) (sorted [3][]exam.Finding, weight [3]float64
 		equal := known && last.result == f.Result && last.level == f.Level
 		class := free
 		switch {
-		case f.How != exam.Examined:
-			class = copied
+		case f.How == exam.SameAsLast, f.How == exam.RestNormal && equal:
+			class = copied // a first block fill is one look, which the space itself weighs
 		case f.Seen && equal:
 			class = seen
 		}
 		run := 1
-		if equal && class != free {
+		switch {
+		case equal && class != free:
 			run = last.run + 1
+		case class == copied:
+			run = 2 // what it was copied from is not in this course
 		}
-		c[k] = link{f.Result, f.Level, run}
-		if class == copied && run == 1 {
-			run = 2 // a block fill with nothing to copy from is still not an exam of each cell
-		}
+		next[k] = link{f.Result, f.Level, run}
 		sorted[class] = append(sorted[class], f)
 		switch class {
 		case seen:
@@ -125,17 +126,18 @@ func (c chains) leans(v exam.Visit) (sorted [3][]exam.Finding, weight [3]float64
 			weight[class] /= float64(n)
 		}
 	}
-	return sorted, weight
+	return sorted, weight, next
 }
 
-// logLikelihoods weighs a visit: fresh findings in full, leaning ones by what they add.
-func logLikelihoods(s Space, c chains, v exam.Visit, sites []int, dst []float64) {
-	sorted, weight := c.leans(v)
+// logLikelihoods weighs a visit: fresh findings in full, leaning ones by what they add. It returns
+// what the chains become.
+func logLikelihoods(s Space, c chains, v exam.Visit, sites []int, dst []float64) chains {
+	sorted, weight, next := c.leans(v)
 	part := v
 	part.Findings = sorted[free]
 	s.LogLikelihoods(part, sites, dst)
 	if len(sorted[seen])+len(sorted[copied]) == 0 {
-		return
+		return next
 	}
 	base := append([]float64(nil), dst...)
 	with := make([]float64, len(dst))
@@ -151,6 +153,7 @@ func logLikelihoods(s Space, c chains, v exam.Visit, sites []int, dst []float64)
 		}
 		copy(base, with)
 	}
+	return next
 }
 
 // exp is eˣ with the same bits on every machine: argument reduction and a Taylor

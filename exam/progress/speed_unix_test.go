@@ -3,6 +3,7 @@
 package progress
 
 import (
+	"maps"
 	"syscall"
 	"testing"
 	"time"
@@ -73,7 +74,7 @@ func BenchmarkToday520(b *testing.B) {
 		saved := saveLate(c)
 		today = *c
 		today.nodes = c.nodes[:520:520]
-		today.kept = cloneKept(c.kept)
+		today.kept, today.chains, today.scratch = cloneKept(c.kept), maps.Clone(c.chains), [3][]float64{}
 		if err := today.Add(visits[520]); err != nil {
 			b.Fatal(err)
 		}
