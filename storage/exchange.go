@@ -450,8 +450,8 @@ func (w *writer) add(raw []byte) error {
 }
 
 // Commit makes what was received of a stream durable and keeps the signed head that covers
-// it. Readers see it when Commit returns, or, if it is much, soon after: see Settle.
-func (s *Store) Commit(ctx context.Context, as change.Stream, head segment.Signed) error {
+// it, if there is one. Readers see it when Commit returns, or, if it is much, soon after: see Settle.
+func (s *Store) Commit(ctx context.Context, as change.Stream, head *segment.Signed) error {
 	s.exch.Lock()
 	defer s.exch.Unlock()
 	r, err := s.receiver(as)
@@ -465,8 +465,10 @@ func (s *Store) Commit(ctx context.Context, as change.Stream, head segment.Signe
 			return explain("receiving", err)
 		}
 	}
-	if err := s.keepHead(as, head); err != nil {
-		return explain("receiving", err)
+	if head != nil {
+		if err := s.keepHead(as, *head); err != nil {
+			return explain("receiving", err)
+		}
 	}
 	much := r.fresh > absorbNow || s.backlog[as]
 	r.fresh = 0

@@ -43,8 +43,9 @@ type Journal interface {
 	// held. They are safe when Commit has returned, and readers see them soon after. Under as they are
 	// kept and shown: it differs from the frames' own stream for the second branch of a fork.
 	Receive(ctx context.Context, as change.Stream, b segment.Block) error
-	// Commit makes what was received of a stream durable, with the signed head that covers it.
-	Commit(ctx context.Context, as change.Stream, head segment.Signed) error
+	// Commit makes what was received of a stream durable, and keeps the signed head that covers it, if
+	// there is one.
+	Commit(ctx context.Context, as change.Stream, head *segment.Signed) error
 	// At returns the chain hash at a number at which a frame of the stream ends; false if none does.
 	At(ctx context.Context, s change.Stream, last uint64) (change.Hash, bool, error)
 	// Signed returns the signed heads that came with a stream of another device, rising.
@@ -709,6 +710,7 @@ func TakeSegment(ctx context.Context, j Journal, rd *segment.Reader, held []Held
 	if err != nil {
 		return 0, nil, err
 	}
+	used := map[change.Stream]bool{}
 	for {
 		block, err := rd.Next()
 		if errors.Is(err, io.EOF) {
@@ -720,7 +722,12 @@ func TakeSegment(ctx context.Context, j Journal, rd *segment.Reader, held []Held
 		if err := ctx.Err(); err != nil {
 			return received, forks, err
 		}
-		for _, part := range b.split(block) {
+		parts, err := b.split(block)
+		if err != nil {
+			return received, forks, err
+		}
+		for _, part := range parts {
+			used[part.as] = true
 			if part.fork {
 				forks = append(forks, Fork{rd.Stream, part.block.Frames[0].First, part.as})
 			}
@@ -730,7 +737,13 @@ func TakeSegment(ctx context.Context, j Journal, rd *segment.Reader, held []Held
 			received += len(part.block.Frames)
 		}
 	}
-	if err := j.Commit(ctx, b.as, rd.Signed); err != nil {
+	delete(used, b.as)
+	for as := range used {
+		if err := j.Commit(ctx, as, nil); err != nil {
+			return received, forks, fmt.Errorf("%w: %w", errOwnSide, err)
+		}
+	}
+	if err := j.Commit(ctx, b.as, &rd.Signed); err != nil {
 		return received, forks, fmt.Errorf("%w: %w", errOwnSide, err)
 	}
 	return received, forks, nil
@@ -741,46 +754,67 @@ func OwnSide(err error) bool { return errors.Is(err, errOwnSide) }
 
 // brancher tells, frame by frame, on which branch of a stream a segment goes on.
 type brancher struct {
-	as   change.Stream
-	ours map[uint64]change.Hash // what we hold under as: hash of the frame that begins at this number
-	end  uint64                 // the highest number that we hold under as
-	head change.Hash            // there
+	ctx   context.Context
+	j     Journal
+	held  []Held
+	first uint64 // of the segment
+	last  uint64
+	as    change.Stream
+	ours  map[uint64]change.Hash // what we hold under as: hash of the frame that begins at this number
+	end   uint64                 // the highest number that we hold under as
+	head  change.Hash            // there
 }
 
-// branch looks at what we hold of a segment's stream.
+// branch looks at what we hold of a segment's stream, and on which branch the segment begins: on that which
+// holds the frame before it.
 func branch(ctx context.Context, j Journal, sh segment.Header, held []Held) (*brancher, error) {
-	b := &brancher{as: sh.Stream}
-	var main *Held
-	for i, h := range held {
+	b := &brancher{ctx: ctx, j: j, held: held, first: sh.First, last: sh.Last}
+	as := sh.Stream
+	for _, h := range held {
 		if h.Of != sh.Stream {
 			continue
 		}
-		if h.Stream == h.Of {
-			main = &held[i]
-		} else if h.Last+1 == sh.First && h.Hash == sh.Prev {
-			b.as = h.Stream // it goes on where a second branch is
-			return b, nil
+		if h.Last+1 == sh.First && h.Hash == sh.Prev {
+			as = h.Stream
+			break
+		}
+		if sh.First == 1 || h.Last < sh.First {
+			continue
+		}
+		hash, ok, err := j.At(ctx, h.Stream, sh.First-1)
+		if err != nil {
+			return nil, fmt.Errorf("%w: %w", errOwnSide, err)
+		}
+		if ok && hash == sh.Prev {
+			as = h.Stream
+			break
 		}
 	}
-	if main == nil {
-		return b, nil
+	return b, b.onto(as)
+}
+
+// onto goes on under a name.
+func (b *brancher) onto(as change.Stream) error {
+	b.as, b.ours, b.end, b.head = as, map[uint64]change.Hash{}, 0, change.Hash{}
+	i := slices.IndexFunc(b.held, func(h Held) bool { return h.Stream == as })
+	if i < 0 {
+		return nil
 	}
-	b.end, b.head = main.Last, main.Hash
-	if main.Last < sh.First {
-		return b, nil
+	b.end, b.head = b.held[i].Last, b.held[i].Hash
+	if b.end < b.first {
+		return nil
 	}
-	b.ours = map[uint64]change.Hash{}
-	err := j.Frames(ctx, main.Stream, sh.First, func(f change.Frame) error {
-		if f.First > sh.Last {
+	err := b.j.Frames(b.ctx, as, b.first, func(f change.Frame) error {
+		if f.First > b.last {
 			return errEnough
 		}
 		b.ours[f.First] = f.Hash()
 		return nil
 	})
 	if err != nil && !errors.Is(err, errEnough) {
-		return nil, fmt.Errorf("%w: %w", errOwnSide, err)
+		return fmt.Errorf("%w: %w", errOwnSide, err)
 	}
-	return b, nil
+	return nil
 }
 
 type part struct {
@@ -790,23 +824,35 @@ type part struct {
 }
 
 // split leaves out of a block what we hold, and parts it where it begins to differ.
-func (b *brancher) split(block segment.Block) (parts []part) {
+func (b *brancher) split(block segment.Block) (parts []part, err error) {
 	for i, f := range block.Frames {
-		fork := false
-		if b.as == f.Stream {
+		fork, skip := false, false
+		for {
 			ours, have := b.ours[f.First]
 			if have && ours == f.Hash() {
-				continue
+				skip = true
+				break
 			}
 			// It differs where we hold another frame, or where it follows another one than our last.
-			if have || f.First == b.end+1 && f.Prev != b.head && b.end > 0 {
-				b.as, fork = segment.ForkOf(f.Stream, f.Hash()), true
+			if !have && (f.First != b.end+1 || f.Prev == b.head || b.end == 0) {
+				break
 			}
-			if !fork && f.First == b.end+1 {
-				b.end, b.head = f.Last, f.Hash()
+			as := segment.ForkOf(f.Stream, f.Hash())
+			fork = !slices.ContainsFunc(b.held, func(h Held) bool { return h.Stream == as })
+			if err := b.onto(as); err != nil {
+				return nil, err
+			}
+			if fork {
+				break
 			}
 		}
-		if len(parts) == 0 || fork {
+		if skip {
+			continue
+		}
+		if f.First == b.end+1 || b.end == 0 {
+			b.end, b.head = f.Last, f.Hash()
+		}
+		if n := len(parts); n == 0 || parts[n-1].as != b.as {
 			parts = append(parts, part{as: b.as, fork: fork})
 		}
 		p := &parts[len(parts)-1].block
@@ -817,7 +863,7 @@ func (b *brancher) split(block segment.Block) (parts []part) {
 	if len(parts) == 1 && len(parts[0].block.Frames) == len(block.Frames) {
 		parts[0].block = block
 	}
-	return parts
+	return parts, nil
 }
 
 // compare says of each peer what it lacks and whether its state is ours.

@@ -190,13 +190,18 @@ func (m *memory) Receive(_ context.Context, as change.Stream, b segment.Block) e
 	return nil
 }
 
-func (m *memory) Commit(_ context.Context, as change.Stream, head segment.Signed) error {
+func (m *memory) Commit(_ context.Context, as change.Stream, head *segment.Signed) error {
 	for s, fs := range m.ready {
 		if s == m.own() {
 			return errors.New("another device may not write in the stream that this one writes")
 		}
 		all := m.streams[s]
 		for _, f := range fs {
+			for _, g := range all {
+				if g.First == f.First && g.Hash() != f.Hash() {
+					return fmt.Errorf("two frames %d under one name", f.First)
+				}
+			}
 			if !slices.ContainsFunc(all, func(g change.Frame) bool { return g.Hash() == f.Hash() }) {
 				all = append(all, f)
 			}
@@ -205,7 +210,10 @@ func (m *memory) Commit(_ context.Context, as change.Stream, head segment.Signed
 		m.streams[s] = all
 		delete(m.ready, s)
 	}
-	m.signed[as] = append(m.signed[as], head)
+	if head == nil {
+		return nil
+	}
+	m.signed[as] = append(m.signed[as], *head)
 	slices.SortFunc(m.signed[as], func(a, b segment.Signed) int { return int(int64(a.Last) - int64(b.Last)) })
 	return nil
 }
