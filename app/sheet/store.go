@@ -359,7 +359,8 @@ func restore(ctx context.Context, s *storage.Store, changes []change.Change) (in
 		if err := s.Receive(ctx, stream, block); err != nil {
 			return n, err
 		}
-		if err := s.Commit(ctx, stream, segment.Sign(segment.Head{Stream: stream, Last: uint64(len(list)), Hash: prev}, bag.Device)); err != nil {
+		head := segment.Sign(segment.Head{Stream: stream, Last: uint64(len(list)), Hash: prev}, bag.Device)
+		if err := s.Commit(ctx, stream, &head); err != nil {
 			return n, err
 		}
 	}
