@@ -8,7 +8,6 @@
 package view
 
 import (
-	"fmt"
 	"math"
 	"strconv"
 	"strings"
@@ -29,7 +28,7 @@ func Day(t time.Time) string {
 	if t.IsZero() {
 		return ""
 	}
-	return fmt.Sprintf("%d %s %d", t.Day(), words.Of(months[t.Month()-1]), t.Year())
+	return words.T("%[1]d %[2]s %[3]d", t.Day(), words.Of(months[t.Month()-1]), t.Year())
 }
 
 // ShortDay returns a date without its year, such as "2 Mar".
@@ -37,7 +36,7 @@ func ShortDay(t time.Time) string {
 	if t.IsZero() {
 		return ""
 	}
-	return fmt.Sprintf("%d %s", t.Day(), words.Of(months[t.Month()-1]))
+	return words.T("%[1]d %[2]s", t.Day(), words.Of(months[t.Month()-1]))
 }
 
 // months are the short names of the months, January first.
@@ -58,9 +57,14 @@ func DateWords(d exam.Date) string {
 	return Day(t)
 }
 
-// number writes a value with at most one decimal and no needless zero.
+// number writes a value with at most one decimal and no needless zero, with the decimal sign of
+// the language in use.
 func number(x float64) string {
-	return strconv.FormatFloat(math.Round(x*10)/10, 'f', -1, 64)
+	s := strconv.FormatFloat(math.Round(x*10)/10, 'f', -1, 64)
+	if words.Language() != "en" {
+		s = strings.Replace(s, ".", ",", 1)
+	}
+	return s
 }
 
 // joinWords joins with commas, the last with «and».
