@@ -202,13 +202,13 @@ func testPowerCut(t *testing.T, exfat bool) {
 					return err
 				}
 				defer os.RemoveAll(dir2)
-				if err := sc.verify(filepath.Join(dir2, "practice"), storagetest.Options(), c.At); err != nil {
+				if err := sc.verify(filepath.Join(dir2, "practice"), on(disktest.New()), c.At); err != nil {
 					return fmt.Errorf("after power cuts at event %d (%s) and %d of recovering (%s): %w", c.At, c.Words, c2.At, c2.Words, err)
 				}
 				return nil
 			})
 		}
-		if err := sc.verify(filepath.Join(dir, "practice"), storagetest.Options(), c.At); err != nil {
+		if err := sc.verify(filepath.Join(dir, "practice"), on(disktest.New()), c.At); err != nil {
 			return fmt.Errorf("after a power cut at event %d (%s): %w", c.At, c.Words, err)
 		}
 		return nil

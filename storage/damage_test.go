@@ -15,6 +15,7 @@ import (
 
 	"cordwalk.example/cordwalk/exam"
 	"cordwalk.example/cordwalk/storage"
+	"cordwalk.example/cordwalk/storage/disk/disktest"
 	"cordwalk.example/cordwalk/storage/storagetest"
 )
 
@@ -123,7 +124,7 @@ func TestRandomDamage(t *testing.T) {
 				}
 				require.True(t, named || cerr != nil, "%s: check names no place: %v", what, ps)
 			}
-			s, err := storage.Open(dir, storagetest.Options())
+			s, err := storage.Open(dir, on(disktest.New()))
 			if err != nil {
 				refused++
 				require.NoError(t, os.RemoveAll(dir))

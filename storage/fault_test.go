@@ -90,7 +90,7 @@ func session(t *testing.T, dir string, d *disktest.Disk, patient, visit exam.ID)
 
 func expectSaved(t *testing.T, dir string, patient, visit exam.ID, saved map[exam.Key]int) {
 	t.Helper()
-	s, err := storage.Open(dir, storagetest.Options())
+	s, err := storage.Open(dir, on(disktest.New()))
 	require.NoError(t, err)
 	r, err := s.Patient(patient)
 	require.NoError(t, err)

@@ -215,12 +215,15 @@ func guard(f func() error) (err error) {
 
 // openIndex opens the index and checks that it is ours. The error is fs.ErrNotExist,
 // errForeignIndex or errIndex where it has to be built anew.
-func openIndex(path string, s *seals, lives []string, practice exam.ID) (x *index, st indexState, err error) {
+func openIndex(fsys disk.FS, path string, s *seals, lives []string, practice exam.ID) (x *index, st indexState, err error) {
 	if _, err := os.Stat(path); err != nil {
 		return nil, st, err
 	}
 	err = guard(func() error {
-		db, err := bbolt.Open(path, 0o600, boltOptions())
+		o := boltOptions()
+		o.NoSync = !disk.Syncs(fsys)
+		o.NoGrowSync = o.NoSync
+		db, err := bbolt.Open(path, 0o600, o)
 		if err != nil {
 			return indexError(err)
 		}
@@ -297,7 +300,7 @@ func createIndex(fsys disk.FS, path string, s *seals, lives []string) (*index, e
 	var x *index
 	err := guard(func() error {
 		o := boltOptions()
-		o.NoSync = true // nothing relies on it until finish has synced it
+		o.NoSync, o.NoGrowSync = true, true // nothing relies on it until finish has synced it
 		db, err := bbolt.Open(tmp, 0o600, o)
 		if err != nil {
 			return err
@@ -322,8 +325,10 @@ func createIndex(fsys disk.FS, path string, s *seals, lives []string) (*index, e
 // finish syncs a new index, gives it its name and closes it.
 func (x *index) finish(fsys disk.FS, path string) error {
 	err := guard(func() error {
-		if err := x.db.Sync(); err != nil {
-			return err
+		if disk.Syncs(fsys) {
+			if err := x.db.Sync(); err != nil {
+				return err
+			}
 		}
 		return x.db.Close()
 	})

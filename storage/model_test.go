@@ -12,6 +12,7 @@ import (
 
 	"cordwalk.example/cordwalk/exam"
 	"cordwalk.example/cordwalk/storage"
+	"cordwalk.example/cordwalk/storage/disk/disktest"
 	"cordwalk.example/cordwalk/storage/storagetest"
 )
 
@@ -150,12 +151,12 @@ func (m *model) Reopen(t *rapid.T) {
 			t.Fatal(err)
 		}
 	case 1:
-		if err := storage.Rebuild(ctx, m.dir, storagetest.Options()); err != nil {
+		if err := storage.Rebuild(ctx, m.dir, on(disktest.New())); err != nil {
 			t.Fatal(err)
 		}
 	}
 	var err error
-	if m.s, err = storage.Open(m.dir, storagetest.Options()); err != nil {
+	if m.s, err = storage.Open(m.dir, on(disktest.New())); err != nil {
 		t.Fatal(err)
 	}
 }
@@ -230,7 +231,7 @@ func TestStoreAgainstMap(t *testing.T) {
 		defer os.RemoveAll(dir)
 		m := &model{dir: filepath.Join(dir, "p"), names: map[exam.ID]string{}, of: map[exam.ID]exam.ID{}, cells: map[exam.ID]map[exam.Key]int{},
 			closed: map[exam.ID]bool{}, amended: map[exam.ID]int{}, joined: map[[2]exam.ID]bool{}}
-		if m.s, err = storage.Create(m.dir, storagetest.Options()); err != nil {
+		if m.s, err = storage.Create(m.dir, on(disktest.New())); err != nil {
 			rt.Fatal(err)
 		}
 		actions := rapid.StateMachineActions(m)

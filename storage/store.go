@@ -306,7 +306,7 @@ func (s *Store) openIndex() error {
 		err = probe(path)
 	}
 	if err == nil {
-		s.idx, s.state, err = openIndex(path, s.seals, s.id.lives(), s.bag.Practice)
+		s.idx, s.state, err = openIndex(s.fs, path, s.seals, s.id.lives(), s.bag.Practice)
 	}
 	switch {
 	case err == nil:
@@ -342,7 +342,7 @@ func (s *Store) rebuildIndex(ctx context.Context, aside bool) error {
 		return err
 	}
 	s.problems = append(s.problems, problems...)
-	if s.idx, _, err = openIndex(path, s.seals, s.id.lives(), s.bag.Practice); err != nil {
+	if s.idx, _, err = openIndex(s.fs, path, s.seals, s.id.lives(), s.bag.Practice); err != nil {
 		return err
 	}
 	s.state = st

@@ -102,6 +102,16 @@ func At(fsys FS, point, file string) error {
 	return nil
 }
 
+// Careless is an optional ability of a test double: to say that nothing needs a sync, since the
+// machine will not lose power. The index is then written without.
+type Careless interface{ Careless() bool }
+
+// Syncs reports whether a sync on this file system has a meaning.
+func Syncs(fsys FS) bool {
+	c, ok := fsys.(Careless)
+	return !ok || !c.Careless()
+}
+
 // Temporary returns the name under which Replace prepares a file.
 func Temporary(name string) string { return name + ".new" }
 
