@@ -2,6 +2,7 @@ package localise
 
 import (
 	"testing"
+	"time"
 
 	"cordwalk.example/cordwalk/exam"
 )
@@ -132,4 +133,57 @@ func BenchmarkSerial(b *testing.B) {
 	for b.Loop() {
 		dst, _ = e.SiteLogLikelihoods(x, dst)
 	}
+}
+
+// BenchmarkRatio is the posterior of one exam after one changed finding, and how many times
+// longer the slow reference takes for the same exam.
+func BenchmarkRatio(b *testing.B) {
+	e := benchEngine(b, exam.Dog)
+	x := Exam{Species: exam.Dog}
+	for _, f := range fullExam(exam.Dog).Findings {
+		if f.Item == exam.VoluntaryMotor || f.Item == exam.PawPlacement || f.Item == exam.Patellar || f.Item == exam.Withdrawal && f.Digit == exam.AnyDigit {
+			x.Findings = append(x.Findings, f)
+		}
+	}
+	ref := newReference(b, exam.Dog, defaults(exam.Dog))
+	devs, qw := ref.p.quadrature()
+	start := time.Now()
+	sum := 0.0
+	for hi := range ref.space {
+		h := &ref.space[hi]
+		st := ref.losses(ref.damage(h), h.shift)
+		like := h.prior
+		byGroup := map[int][]exam.Finding{}
+		for _, f := range x.Findings {
+			g := e.m.lay.cells[e.m.lay.byKey[f.Key()]].group
+			byGroup[g] = append(byGroup[g], f)
+		}
+		for _, fs := range byGroup {
+			part := 0.0
+			for q, u := range devs {
+				p := qw[q]
+				for _, f := range fs {
+					g, _ := f.Result.Grade()
+					p *= ref.grades(&e.m.lay.cells[e.m.lay.byKey[f.Key()]], st, u)[g-f.Item.Info().First]
+				}
+				part += p
+			}
+			like *= part
+		}
+		sum += like
+	}
+	slow := time.Since(start)
+	if _, err := e.Compute(x); err != nil {
+		b.Fatal(err)
+	}
+	f := exam.Finding{Item: exam.Patellar, Site: exam.PelvicLeft}
+	b.ReportAllocs()
+	for i := 0; b.Loop(); i++ {
+		f.Result = exam.Graded(int8(2 + i%2))
+		e.Change(f)
+		e.Leading()
+	}
+	fast := float64(b.Elapsed().Nanoseconds()) / float64(b.N)
+	b.ReportMetric(float64(slow.Nanoseconds())/fast, "×reference")
+	_ = sum
 }

@@ -31,6 +31,9 @@ type Engine struct {
 	blocks       int     // cells filled in a block
 	label        []int64
 	labelled     bool
+	base         []int64 // log prior with the days since the onset
+	baseDays     float64
+	logs         []int64
 	labelOf      [2]string
 	labelKg      float64
 	barred       []bool
@@ -97,7 +100,7 @@ func (m *Model) Engine() *Engine {
 		m: m, obs: make([]int16, n), was: make([]int16, n), upTo: make([]int16, n), wasTo: make([]int16, n), bulk: make([]bool, n), wasBulk: make([]bool, n),
 		found: make([]found, n), ctx: make([]context, n), bent: make([]bool, n), barred: make([]bool, n),
 		state: make([]groupState, len(m.groups)), full: make([]int64, m.hyps), looked: make([]int64, m.hyps),
-		label: make([]int64, len(m.sp.sites)), weightFull: make([]uint64, m.hyps), weightLooked: make([]uint64, m.hyps),
+		label: make([]int64, len(m.sp.sites)), logs: make([]int64, m.hyps), weightFull: make([]uint64, m.hyps), weightLooked: make([]uint64, m.hyps),
 		live: make([]uint32, 0, m.hyps), damageSum: make([]uint64, len(m.damages)), classSum: make([]uint64, len(m.classes)),
 		notes: map[uint64]string{},
 	}
@@ -417,57 +420,72 @@ func (e *Engine) blockLogs() (lookedAt, careless int64) {
 // weigh turns log sums into weights and adds them up by damage. With the label or without.
 func (e *Engine) weigh(labelled bool) {
 	m := e.m
-	const none = -1 << 62
+	e.timePriors()
+	lookedAt, careless := e.blockLogs()
+	// First the sums, and the best of them.
+	best := int64(-1 << 62)
+	logs, full := e.logs[:m.hyps], e.full[:m.hyps]
+	for h, p := range e.base[:m.hyps] {
+		v := p + full[h] + lookedAt
+		logs[h] = v
+		best = max(best, v)
+	}
+	if labelled {
+		best = -1 << 62
+		for h, site := range m.siteOf {
+			v := logs[h] + e.label[site]
+			logs[h] = v
+			best = max(best, v)
+		}
+	}
+	if e.blocks > 0 {
+		for h, l := range logs {
+			best = max(best, l-lookedAt-full[h]+e.looked[h]+careless)
+		}
+	}
+	clear(e.damageSum)
+	e.total = 0
+	for h, l := range logs {
+		w := weight(l - best)
+		e.weightFull[h] = w
+		if e.blocks > 0 {
+			v := weight(l - lookedAt - full[h] + e.looked[h] + careless - best)
+			e.weightLooked[h] = v
+			w += v
+		}
+		if w != 0 {
+			e.damageSum[m.damage[h]] += w
+			e.total += w
+		}
+	}
+}
+
+// timePriors keeps the log priors with what the days since the onset say of the first week.
+func (e *Engine) timePriors() {
+	if e.base != nil && e.baseDays == e.x.OnsetDays {
+		return
+	}
+	m := e.m
 	var early, late int64
 	if e.x.OnsetDays > 0 {
 		t := e.x.timing(m.p.Acute)
 		early = toLog(logOf(t / m.p.Acute))
 		late = toLog(logOf((1 - t) / (1 - m.p.Acute)))
 	}
-	lookedAt, careless := e.blockLogs()
-	best := int64(none)
-	prior := func(h int) int64 {
-		l := m.prior[h]
-		if labelled {
-			l += e.label[m.siteOf[h]]
-		}
+	if e.base == nil {
+		e.base = make([]int64, m.hyps)
+	}
+	for h, p := range m.prior {
 		if m.timed[h] {
 			if m.acute[h] {
-				l += early
+				p += early
 			} else {
-				l += late
+				p += late
 			}
 		}
-		return l
+		e.base[h] = p
 	}
-	for h := range m.hyps {
-		p := prior(h)
-		if v := p + e.full[h] + lookedAt; v > best {
-			best = v
-		}
-		if e.blocks > 0 {
-			if v := p + e.looked[h] + careless; v > best {
-				best = v
-			}
-		}
-	}
-	clear(e.damageSum)
-	e.total = 0
-	for h := range m.hyps {
-		p := prior(h)
-		w := weight(p + e.full[h] + lookedAt - best)
-		e.weightFull[h] = w
-		if e.blocks > 0 {
-			v := weight(p + e.looked[h] + careless - best)
-			e.weightLooked[h] = v
-			w += v
-		}
-		if w == 0 {
-			continue
-		}
-		e.damageSum[m.damage[h]] += w
-		e.total += w
-	}
+	e.baseDays = e.x.OnsetDays
 }
 
 // gatherLive lists the hypotheses that evidence and next tests are worked out from: each at

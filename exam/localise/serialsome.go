@@ -69,6 +69,7 @@ type testedCell struct {
 	more           int // further categories that the finding may stand for
 	keep, add      float64
 	bulk           bool
+	plain          bool // one category, answers not bent, no cell of the group filled in a block
 }
 
 // Weigher returns a weigher for some of Model.Sites.
@@ -366,6 +367,10 @@ func (w *Weigher) answer(gi int) *answers {
 		}
 		a.cells = append(a.cells, c)
 	}
+	for i := range a.cells {
+		c := &a.cells[i]
+		c.plain = c.more == 0 && c.keep == 1 && a.extra == nil
+	}
 	if len(a.cells) > 0 {
 		for i := range a.full {
 			a.full[i] = unknown
@@ -389,6 +394,15 @@ func (a *answers) learn(w *Weigher, gi int, k uint16) {
 	for i := range a.cells {
 		c := &a.cells[i]
 		at := int(c.rows[sig])*c.stride + c.offset
+		if c.plain {
+			p := (*[points]float64)(c.table[at:])
+			full[0] *= p[0]
+			full[1] *= p[1]
+			full[2] *= p[2]
+			full[3] *= p[3]
+			full[4] *= p[4]
+			continue
+		}
 		p := [points]float64(c.table[at : at+points])
 		for j := points; j < (c.more+1)*points; j++ {
 			p[j%points] += c.table[at+j]
