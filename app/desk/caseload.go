@@ -55,14 +55,15 @@ func (p *caseloadPage) build() {
 	p.list = newCaseList(p)
 	p.detail = mark.Column(look.Unit)
 	p.empty = mark.Column(look.Unit * 2)
-	outcomes := mark.NewButton("", "course", func() { w.goTo(view.Route{Screen: view.ScreenOutcomes}) }).WithTip(words.T("Outcomes of the practice: time to walking"))
-	table := mark.NewButton("", "grid", func() {
+	outcomes := mark.NewButton(words.T("Outcomes"), "course", func() { w.goTo(view.Route{Screen: view.ScreenOutcomes}) }).WithTip(words.T("Outcomes of the practice: time to walking"))
+	table := mark.NewButton(words.T("Import"), "grid", func() {
 		w.file = File{}
 		w.show(newImportPage(w))
 	}).WithTip(words.T("Import patients from a table"))
-	head := mark.Row(look.Unit, []float32{1, 0, 0, 0, 0, 0}, p.search, p.today, p.gone, outcomes, table, add)
+	head := mark.Row(look.Unit, []float32{1, 0}, p.search, add)
+	filters := mark.Bar(look.Unit, p.count, p.today, p.gone, outcomes, table)
 	body := &fyne.Container{Layout: caseBody{p}, Objects: []fyne.CanvasObject{newCaseHead(), p.list, p.empty, mark.NewGround(look.Line), mark.NewScroll(mark.Pad(0, look.Unit*2, p.detail))}}
-	p.root = mark.Pad(look.Unit*1.5, look.Unit*2, mark.ColumnGrow(look.Unit, 2, head, p.count, body))
+	p.root = mark.Pad(look.Unit*1.5, look.Unit*2, mark.ColumnGrow(look.Unit, 2, head, filters, body))
 	p.cases.Search("")
 	p.cases.OnlyToday(false)
 	p.cases.HideInactive(true)
@@ -74,7 +75,7 @@ type caseBody struct{ p *caseloadPage }
 
 func (l caseBody) MinSize([]fyne.CanvasObject) fyne.Size { return fyne.NewSize(600, 200) }
 func (l caseBody) Layout(o []fyne.CanvasObject, s fyne.Size) {
-	side := min(s.Width*0.34, 320*max(1, look.Scale()*0.85))
+	side := max(250, min(s.Width*0.27, 320*max(1, look.Scale()*0.85)))
 	left := s.Width - side - look.Unit*2
 	alone := s.Width < 800*look.Scale() // no room for both: the list alone
 	o[3].(*mark.Ground).Hidden, o[4].(*mark.Scroll).Hidden = alone, alone
@@ -329,7 +330,7 @@ func caseColumns(width float32) (x, w [6]float32) {
 	if width < 640*s {
 		fixed[4], fixed[5] = 40, 44
 	}
-	free := width - fixed[0] - fixed[4] - fixed[5] - 5*look.Unit
+	free := width - fixed[0] - fixed[4] - fixed[5] - 6*look.Unit
 	at := look.Unit / 2
 	for i := range x {
 		w[i] = fixed[i] + share[i]*free

@@ -28,6 +28,7 @@ type examPage struct {
 	side    *examSide
 	left1   *fyne.Container // grid, card or one of the forms of the visit
 	tabs    []*mark.Button
+	one     *mark.Button
 	tab     int
 	bar     *fyne.Container
 	where   *mark.Text
@@ -96,7 +97,7 @@ func (p *examPage) build(v exam.Visit) {
 	p.card = newOneCard(p)
 	p.side = newExamSide(p)
 	p.left1 = container.NewStack()
-	names := []string{words.T("Exam"), words.T("Visit"), words.T("Measures"), words.T("Treatments"), words.T("Home programme")}
+	names := []string{words.T("Exam"), words.T("Visit"), words.T("Measures"), words.T("Treatments"), words.T("Home")}
 	var tabs []fyne.CanvasObject
 	p.tabs = nil
 	for i, n := range names {
@@ -105,7 +106,7 @@ func (p *examPage) build(v exam.Visit) {
 		p.tabs = append(p.tabs, b)
 		tabs = append(tabs, b)
 	}
-	one := mark.NewButton("", "card", func() {
+	one := mark.NewButton(words.T("One test"), "card", func() {
 		a.settings.OneByOne = !a.settings.OneByOne
 		p.choose(tabExam)
 	}).As(mark.Quiet).WithTip(words.T("One test at a time, or the grid. Key o"))
@@ -118,6 +119,8 @@ func (p *examPage) build(v exam.Visit) {
 	proSel := mark.Choice(protocols, keys, p.protocol, p.setProtocol)
 	posSel := mark.Choice([]string{words.T("Lying on its side"), words.T("Lying on its chest"), words.T("Held in the arms")},
 		[]string{"lying", "sternal", "held"}, in.Posture.String(), p.setPosture)
+	one.Chosen = a.settings.OneByOne
+	p.one = one
 	p.bar = mark.Row(4, []float32{1}, mark.Wrapped(0, tabs...), one)
 	second := mark.Row(look.Unit, []float32{1, 1, 1}, p.visitPick(v), proSel, posSel)
 	p.where = mark.Line("")
@@ -381,6 +384,7 @@ func (p *examPage) choose(tab int) {
 	for i, b := range p.tabs {
 		b.SetChosen(i == tab)
 	}
+	p.one.SetChosen(p.win.app.settings.OneByOne)
 	var o fyne.CanvasObject
 	switch tab {
 	case tabVisit:

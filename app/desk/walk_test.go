@@ -4,6 +4,7 @@ import (
 	"fmt"
 	"os"
 	"path/filepath"
+	"slices"
 	"testing"
 
 	"fyne.io/fyne/v2"
@@ -15,6 +16,7 @@ import (
 	"cordwalk.example/cordwalk/app/desk/look"
 	"cordwalk.example/cordwalk/app/desk/mark"
 	"cordwalk.example/cordwalk/app/view"
+	"cordwalk.example/cordwalk/assets/words"
 )
 
 // box is a rectangle on the window.
@@ -211,11 +213,19 @@ func TestNoTextIsCutOffOnAnyScreen(t *testing.T) {
 		w, h    float32
 		mode    look.Mode
 		percent int
+		lang    string
 	}{
-		{1366, 768, look.Light, 100}, {1920, 1080, look.Dark, 100}, {1100, 700, look.Contrast, 80},
-		{1366, 768, look.Light, 150}, {1920, 1080, look.Light, 200}, {1100, 700, look.Dark, 200},
+		{1366, 768, look.Light, 100, "en"}, {1920, 1080, look.Dark, 100, "en"}, {1100, 700, look.Contrast, 80, "en"},
+		{1366, 768, look.Light, 150, "en"}, {1920, 1080, look.Light, 200, "en"}, {1100, 700, look.Dark, 200, "en"},
+		{1366, 768, look.Light, 100, "de"}, {1366, 768, look.Light, 100, "es"}, {1366, 768, look.Light, 100, "fr"},
 	} {
-		t.Run(fmt.Sprintf("%.0fx%.0f_%s_%d", c.w, c.h, c.mode, c.percent), func(t *testing.T) {
+		t.Run(fmt.Sprintf("%.0fx%.0f_%s_%d_%s", c.w, c.h, c.mode, c.percent, c.lang), func(t *testing.T) {
+			if !slices.Contains(words.Tags(), c.lang) {
+				t.Logf("no texts in %s yet: the screens are looked at in English", c.lang)
+			} else if err := words.Use(c.lang); err != nil {
+				t.Fatal(err)
+			}
+			t.Cleanup(func() { _ = words.Use("en") })
 			s := newStage(t, view.Settings{Theme: string(c.mode), TextScale: c.percent})
 			w := s.demo()
 			w.win.Resize(fyne.NewSize(c.w, c.h))
