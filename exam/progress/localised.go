@@ -258,7 +258,8 @@ func (b *body) neighbours() {
 	}
 }
 
-// watched picks the likeliest place of each class that is not rare: a new lesion shows there first.
+// watched picks the likeliest place of each class that is not rare, and of every stretch of the cord:
+// a new lesion shows there first.
 func (b *body) watched() {
 	b.class = map[int][]int{}
 	for i, s := range b.sites {
@@ -272,7 +273,8 @@ func (b *body) watched() {
 				best = p
 			}
 		}
-		if sum >= 0.003 {
+		cord := b.sites[best].Kind == localise.Cord && b.sites[best].From.Region() != exam.RegionCd
+		if sum >= 0.005 || cord {
 			b.watch = append(b.watch, best)
 		}
 	}
