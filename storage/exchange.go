@@ -640,18 +640,40 @@ func (s *Store) headsFile(x change.Stream) string {
 	return filepath.Join(s.dir, journalDir, x.Name()+headsExt)
 }
 
+// keepHead adds a head to the file. It is not synced: a head that a power cut takes is replaced by the next
+// one, and until then this device cannot pass on what only it covered.
 func (s *Store) keepHead(x change.Stream, head segment.Signed) error {
 	if err := head.Check(); err != nil {
 		return err
 	}
 	all, err := s.signedHeads(x)
+	if err != nil || slices.Contains(all, head) {
+		return err
+	}
+	if n := len(all); n > 0 && all[n-1].Last > head.Last || n >= mostHeads {
+		return s.writeHeads(x, append(all, head))
+	}
+	f, err := s.fs.Edit(s.headsFile(x))
+	if errors.Is(err, fs.ErrNotExist) {
+		return s.writeHeads(x, append(all, head))
+	}
 	if err != nil {
 		return err
 	}
-	if slices.Contains(all, head) {
-		return nil
+	end := int64(len(all) * segment.SignedSize)
+	if size, err := f.Size(); err != nil || size != end { // a record in it was damaged or cut
+		return errors.Join(err, f.Close(), s.writeHeads(x, append(all, head)))
 	}
-	all = append(all, head)
+	_, err = f.WriteAt(segment.AppendSigned(nil, head), end)
+	if err = errors.Join(err, f.Close()); err != nil {
+		return err
+	}
+	s.heads[x] = append(all, head)
+	return nil
+}
+
+// writeHeads writes the file anew.
+func (s *Store) writeHeads(x change.Stream, all []segment.Signed) error {
 	slices.SortFunc(all, func(a, b segment.Signed) int { return cmp.Compare(a.Last, b.Last) })
 	all = thin(all)
 	var b []byte
