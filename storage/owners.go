@@ -7,8 +7,12 @@ import (
 	"hash/crc32"
 	"io/fs"
 	"path/filepath"
+	"slices"
+	"strings"
 	"sync"
 	"sync/atomic"
+
+	"go.etcd.io/bbolt"
 
 	"cordwalk.example/cordwalk/exam"
 	"cordwalk.example/cordwalk/storage/disk"
@@ -30,7 +34,7 @@ const (
 	slotSize    = 128
 	slotMagic   = "CWok"
 	slotSealed  = 4 + 24 + 32 + 16 // see key.Ring.SealOwnerKey
-	fieldErased = "erased"
+	fieldErased = "erased/"
 )
 
 // ErrErased means that an owner's contact data were erased on request.
@@ -44,9 +48,10 @@ type ownerKeys struct {
 
 	mu     sync.Mutex
 	read   bool
-	sealed map[[nameSize]byte][]byte
+	sealed map[[nameSize]byte][][]byte // usually one; two where two devices made one while apart
 	order  [][nameSize]byte
-	open   map[exam.ID]key.OwnerKey
+	open   map[exam.ID][]key.OwnerKey
+	turn   uint64    // counts changes
 	file   disk.File // to append to; nil: not open, or not to be trusted
 	end    int64
 	bad    []Problem
@@ -67,7 +72,7 @@ func (o *ownerKeys) load() error {
 	if o.read {
 		return nil
 	}
-	o.sealed, o.open, o.order, o.bad = map[[nameSize]byte][]byte{}, map[exam.ID]key.OwnerKey{}, nil, nil
+	o.sealed, o.open, o.order, o.bad = map[[nameSize]byte][][]byte{}, map[exam.ID][]key.OwnerKey{}, nil, nil
 	if err := disk.Recover(o.fs, o.path(), func(b []byte) bool { return len(b)%slotSize == 0 }); err != nil && !errors.Is(err, fs.ErrPermission) {
 		return err
 	}
@@ -90,13 +95,19 @@ func (o *ownerKeys) load() error {
 			o.bad = append(o.bad, Problem{File: ownersDir + "/" + ownersFile, Offset: int64(at), Length: int64(len(slot)), What: "the key of an owner's contact data is damaged; those data cannot be read here"})
 			continue
 		}
-		if _, there := o.sealed[n]; !there {
-			o.order = append(o.order, n)
-		}
-		o.sealed[n] = sealed
+		o.note(n, sealed)
 	}
 	o.read = true
 	return nil
+}
+
+// note keeps a sealed key in memory.
+func (o *ownerKeys) note(n [nameSize]byte, sealed []byte) {
+	if _, there := o.sealed[n]; !there {
+		o.order = append(o.order, n)
+	}
+	o.sealed[n] = append(o.sealed[n], sealed)
+	o.turn++
 }
 
 func makeSlot(n [nameSize]byte, sealed []byte) []byte {
@@ -118,53 +129,52 @@ func parseSlot(b []byte) (n [nameSize]byte, sealed []byte, ok bool) {
 	return [nameSize]byte(b[8 : 8+nameSize]), b[8+nameSize : body : body], true
 }
 
-// get returns an owner's key; false if it is not there.
-func (o *ownerKeys) get(owner exam.ID) (key.OwnerKey, bool, error) {
+// get returns an owner's keys, none if there is none.
+func (o *ownerKeys) get(owner exam.ID) ([]key.OwnerKey, error) {
 	o.mu.Lock()
 	defer o.mu.Unlock()
 	return o.getLocked(owner)
 }
 
-func (o *ownerKeys) getLocked(owner exam.ID) (k key.OwnerKey, ok bool, err error) {
+func (o *ownerKeys) getLocked(owner exam.ID) (ks []key.OwnerKey, err error) {
 	if err := o.load(); err != nil {
-		return k, false, err
+		return nil, err
 	}
-	if k, ok = o.open[owner]; ok {
-		return k, true, nil
+	if ks, ok := o.open[owner]; ok {
+		return ks, nil
 	}
-	sealed, ok := o.sealed[o.name(owner)]
-	if !ok {
-		return k, false, nil
-	}
-	if k, err = o.ring().OpenOwnerKey(owner, sealed); err != nil {
-		return k, false, err
+	for _, sealed := range o.sealed[o.name(owner)] {
+		k, err := o.ring().OpenOwnerKey(owner, sealed)
+		if err != nil {
+			return nil, err
+		}
+		ks = append(ks, k)
 	}
 	if len(o.open) > 1000 {
 		clear(o.open)
 	}
-	o.open[owner] = k
-	return k, true, nil
+	o.open[owner] = ks
+	return ks, nil
 }
 
 // need returns an owner's key and makes it durably if it is not there.
 func (o *ownerKeys) need(owner exam.ID) (key.OwnerKey, error) {
 	o.mu.Lock()
 	defer o.mu.Unlock()
-	k, ok, err := o.getLocked(owner)
-	if ok || err != nil {
-		return k, err
+	ks, err := o.getLocked(owner)
+	if err != nil || len(ks) > 0 {
+		if err != nil {
+			return key.OwnerKey{}, err
+		}
+		return ks[0], nil
 	}
-	k = key.NewSecret()
-	if err := o.add(owner, o.ring().SealOwnerKey(owner, k)); err != nil {
-		return k, err
-	}
-	o.open[owner] = k
-	return k, nil
+	k := key.NewSecret()
+	return k, o.add(owner, k)
 }
 
-// add stores a sealed key durably. mu must be held.
-func (o *ownerKeys) add(owner exam.ID, sealed []byte) error {
-	n := o.name(owner)
+// add stores a key durably. mu must be held.
+func (o *ownerKeys) add(owner exam.ID, k key.OwnerKey) error {
+	n, sealed := o.name(owner), o.ring().SealOwnerKey(owner, k)
 	if err := o.append(makeSlot(n, sealed)); err != nil {
 		// Nothing is known about the end of the file now: write it anew.
 		o.forget()
@@ -172,10 +182,8 @@ func (o *ownerKeys) add(owner exam.ID, sealed []byte) error {
 			return errors.Join(err, rerr)
 		}
 	}
-	if _, there := o.sealed[n]; !there {
-		o.order = append(o.order, n)
-	}
-	o.sealed[n] = sealed
+	o.note(n, sealed)
+	delete(o.open, owner)
 	return nil
 }
 
@@ -208,7 +216,7 @@ func (o *ownerKeys) forget() {
 	}
 }
 
-// rewrite writes the file anew, with one key more or, where sealed is nil, without it.
+// rewrite writes the file anew, with one key more or, where sealed is nil, without those of a name.
 func (o *ownerKeys) rewrite(n [nameSize]byte, sealed []byte) error {
 	if err := o.fs.MakeDir(filepath.Join(o.dir, ownersDir)); err != nil {
 		return err
@@ -218,7 +226,10 @@ func (o *ownerKeys) rewrite(n [nameSize]byte, sealed []byte) error {
 	}
 	var b []byte
 	for _, x := range o.order {
-		if s, ok := o.sealed[x]; ok && x != n {
+		if x == n && sealed == nil {
+			continue
+		}
+		for _, s := range o.sealed[x] {
 			b = append(b, makeSlot(x, s)...)
 		}
 	}
@@ -249,6 +260,7 @@ func (o *ownerKeys) destroy(owner exam.ID) error {
 	}
 	delete(o.sealed, n)
 	delete(o.open, owner)
+	o.turn++
 	return nil
 }
 
@@ -301,54 +313,120 @@ func (o *ownerKeys) openContact(b []byte) ([]byte, error) {
 	if o == nil {
 		return nil, ErrErased
 	}
-	k, ok, err := o.get(w.Owner)
+	ks, err := o.get(w.Owner)
 	if err != nil {
 		return nil, err
 	}
-	if !ok {
-		return nil, ErrErased
+	err = ErrErased
+	for _, k := range ks {
+		var clear []byte
+		if clear, err = k.Open(w.Sealed, contactContext(w.Owner)); err == nil {
+			return clear, nil
+		}
 	}
-	return k.Open(w.Sealed, contactContext(w.Owner))
+	return nil, err
 }
 
-// EraseOwner erases a patient's owner at the owner's request: it destroys the key of the contact
+// ownersRecord holds what is said of owners: the field erased/ID of each whose data were erased.
+var ownersRecord = recordKey{kind: change.KindOwner}
+
+// erased reports whether an owner's data were erased on request.
+func (s *Store) erased(owner exam.ID) (bool, error) {
+	r, err := s.baseRecord(ownersRecord)
+	return err == nil && len(r.versions(fieldErased+owner.String())) > 0, err
+}
+
+// EraseOwner erases a patient's owner at the owner's request: it destroys the keys of the contact
 // data, so that they cannot be read in the journal, in copies of it or on devices that
-// learn of it, and leaves an entry that says so. Backups that hold the key still can show them.
+// learn of it, and leaves an entry that says so. Backups that hold a key still can show them.
 func (s *Store) EraseOwner(ctx context.Context, examiner string, patient exam.ID, reason string) error {
-	e := Edit{Patient: patient, Record: patient, Kind: change.KindOwner, Field: fieldErased, Value: pack(true), reason: reason}
+	e := Edit{Kind: change.KindOwner, Field: fieldErased + patient.String(), Value: []byte{0xf5}, reason: reason}
 	if _, err := s.Apply(ctx, examiner, e, Edit{Patient: patient, Record: patient, Kind: KindPatient, Field: fieldOwner}); err != nil {
 		return err
 	}
 	return explain("destroying the key of an owner's contact data", s.seals.owners.destroy(patient))
 }
 
-// OwnerKey returns an owner's key, sealed for devices of this practice; false if it is not there.
+// OwnerKey returns an owner's first key, sealed for devices of this practice; false if there is none.
 // The owner is named by the patient's id.
 func (s *Store) OwnerKey(owner exam.ID) (sealed []byte, ok bool, err error) {
-	k, ok, err := s.seals.owners.get(owner)
-	if !ok || err != nil {
+	ks, err := s.seals.owners.get(owner)
+	if len(ks) == 0 || err != nil {
 		return nil, false, explain("reading the key of an owner's contact data", err)
 	}
-	return s.seals.owners.ring().SealOwnerKey(owner, k), true, nil
+	return s.seals.owners.ring().SealOwnerKey(owner, ks[0]), true, nil
 }
 
-// AddOwnerKey takes over an owner's key that another device sealed, unless the owner's data were erased here.
-func (s *Store) AddOwnerKey(owner exam.ID, sealed []byte) error {
-	if _, err := s.seals.owners.ring().OpenOwnerKey(owner, sealed); err != nil {
-		return err
-	}
-	r, err := s.baseRecord(recordKey{change.KindOwner, owner, owner})
-	if err != nil || len(r.fields) > 0 {
-		return err
-	}
+// OwnerKeys calls f with each key of each owner that is known here, unless none was added or
+// destroyed since the call that returned turn. The first call passes 0.
+func (s *Store) OwnerKeys(ctx context.Context, turn uint64, f func(owner exam.ID, k key.OwnerKey) error) (now uint64, err error) {
 	o := s.seals.owners
 	o.mu.Lock()
-	_, have, err := o.getLocked(owner)
+	err = o.load()
+	now = o.turn
+	o.mu.Unlock()
+	if err != nil || now == turn {
+		return now, explain("reading the keys of owners' contact data", err)
+	}
+	rows, err := s.patients(ctx)
+	if err != nil {
+		return turn, err
+	}
+	for _, id := range rows {
+		ks, err := o.get(id)
+		if err != nil {
+			return turn, explain("reading the key of an owner's contact data", err)
+		}
+		for _, k := range ks {
+			if err := f(id, k); err != nil {
+				return turn, err
+			}
+		}
+	}
+	return now, nil
+}
+
+// patients returns the ids of all patients.
+func (s *Store) patients(ctx context.Context) (ids []exam.ID, err error) {
+	err = s.onIndex(func(x *index, tx *bbolt.Tx) error {
+		return tx.Bucket(bucketPatients).ForEach(func(k, v []byte) error {
+			m, err := x.decodeManifest(k, v)
+			if err != nil {
+				return err
+			}
+			ids = append(ids, m.Patient)
+			return ctx.Err()
+		})
+	})
+	s.mu.RLock()
+	defer s.mu.RUnlock()
+	for p := range s.changed {
+		if !slices.Contains(ids, p) {
+			ids = append(ids, p)
+		}
+	}
+	return ids, explain("reading the patients", err)
+}
+
+// AddOwnerKey takes over an owner's key that another device sealed, unless the owner's data were
+// erased here.
+func (s *Store) AddOwnerKey(owner exam.ID, sealed []byte) error {
+	o := s.seals.owners
+	k, err := o.ring().OpenOwnerKey(owner, sealed)
+	if err != nil {
+		return err
+	}
+	if gone, err := s.erased(owner); err != nil || gone {
+		return err
+	}
+	o.mu.Lock()
+	ks, err := o.getLocked(owner)
+	have := slices.Contains(ks, k)
 	if !have && err == nil {
-		err = o.add(owner, sealed)
+		err = o.add(owner, k)
 	}
 	o.mu.Unlock()
-	if err != nil {
+	if err != nil || have {
 		return explain("keeping the key of an owner's contact data", err)
 	}
 	// The caseload shows the owner's name from now on.
@@ -369,8 +447,15 @@ func (s *Store) AddOwnerKey(owner exam.ID, sealed []byte) error {
 func (s *Store) forgetOwners(records []*record) error {
 	var err error
 	for _, r := range records {
-		if r.kind == change.KindOwner && len(r.versions(fieldErased)) > 0 {
-			err = errors.Join(err, s.seals.owners.destroy(r.id))
+		if r.key() != ownersRecord {
+			continue
+		}
+		for _, f := range r.fields {
+			if word, ok := strings.CutPrefix(f.name, fieldErased); ok {
+				if id, perr := exam.ParseID(word); perr == nil {
+					err = errors.Join(err, s.seals.owners.destroy(id))
+				}
+			}
 		}
 	}
 	return err

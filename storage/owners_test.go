@@ -12,6 +12,8 @@ import (
 	"cordwalk.example/cordwalk/storage"
 	"cordwalk.example/cordwalk/storage/disk/disktest"
 	"cordwalk.example/cordwalk/storage/storagetest"
+	"cordwalk.example/cordwalk/sync/change"
+	"cordwalk.example/cordwalk/sync/key"
 )
 
 func TestOwnerIsErasedOnRequest(t *testing.T) {
@@ -37,12 +39,15 @@ func TestOwnerIsErasedOnRequest(t *testing.T) {
 		h, err := s.History(p.ID)
 		require.NoError(t, err)
 		told := false
+		of, err := s.Fields(storage.Kind(change.KindOwner), exam.ID{}, exam.ID{})
+		require.NoError(t, err)
+		require.Contains(t, of, "erased/"+p.ID.String(), "an entry says that it was erased")
 		for _, e := range h {
 			require.NotContains(t, e.Value+e.Before, p.Owner.Name)
 			require.NotContains(t, e.Value+e.Before, p.Owner.Phone)
-			told = told || (e.Field == "erased" && e.Reason == "asked by letter")
+			told = told || (e.Field == "owner" && e.Value == "")
 		}
-		require.True(t, told, "an entry says that it was erased")
+		require.True(t, told, "the history of the animal shows that the field was emptied")
 		rows, err := s.Caseload(ctx)
 		require.NoError(t, err)
 		for _, row := range rows {
@@ -82,6 +87,22 @@ func TestOwnerKeyTravels(t *testing.T) {
 	_, ok, err = s.OwnerKey(storage.NewID())
 	require.NoError(t, err)
 	require.False(t, ok)
+	// Two devices made a key each while they were apart: both are kept.
+	other := s.Bag().Ring.SealOwnerKey(p.ID, key.NewSecret())
+	require.NoError(t, s.AddOwnerKey(p.ID, other))
+	n := 0
+	turn, err := s.OwnerKeys(ctx, 0, func(owner exam.ID, _ key.OwnerKey) error {
+		require.Equal(t, p.ID, owner)
+		n++
+		return nil
+	})
+	require.NoError(t, err)
+	require.Equal(t, 2, n)
+	_, err = s.OwnerKeys(ctx, turn, func(exam.ID, key.OwnerKey) error { t.Error("nothing is new"); return nil })
+	require.NoError(t, err)
+	r, err := s.Patient(p.ID)
+	require.NoError(t, err)
+	require.Equal(t, p.Owner, r.Patient.Owner)
 	sealed[20] ^= 1
 	require.Error(t, s.AddOwnerKey(p.ID, sealed))
 	require.NoError(t, s.EraseOwner(ctx, "A", p.ID, ""))

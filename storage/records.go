@@ -33,8 +33,6 @@ type Edit struct {
 
 	act    change.Act
 	reason string
-	seen   []change.ID
-	over   []change.ID // what to supersede, where it is not simply the heads of the field
 }
 
 // The fields of the records. List items have a field each, named by their id, so that two

@@ -177,11 +177,11 @@ func (s *Store) ownerValue(current []change.Change, e Edit) (value []byte, same 
 			return e.Value, true, nil
 		}
 	}
-	r, err := s.baseRecord(recordKey{change.KindOwner, e.Patient, e.Patient})
+	gone, err := s.erased(e.Patient)
 	if err != nil {
 		return nil, false, explain("reading the owner", err)
 	}
-	if len(r.versions(fieldErased)) > 0 {
+	if gone {
 		return nil, false, fmt.Errorf("the contact data of this owner were %w; make a new patient to keep new ones", ErrErased)
 	}
 	value, err = s.seals.owners.sealContact(e.Patient, e.Value)
