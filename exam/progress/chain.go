@@ -227,7 +227,7 @@ func (c *clock) after(n int64, growPerYear float64) *transition {
 			p = &next
 		}
 	}
-	t := &transition{grow: 1 - math.Exp(-growPerYear*days(n)/365.25)}
+	t := &transition{grow: 1 - exp(-growPerYear*days(n)/365.25)}
 	for j := range states {
 		t.fresh[j] = quantum(p.At(states, j))
 	}

@@ -12,8 +12,13 @@ type GoalChance struct {
 	Goal        string   `json:"goal"`
 	Words       string   `json:"words"`
 	By          string   `json:"by"`
-	Probability *float64 `json:"probability"` // null where the model cannot tell
+	Probability *float64 `json:"probability"` // by its date, or within the forecast; null where the model cannot tell
 	Why         string   `json:"why,omitempty"`
+
+	// ByWeek is the probability of having reached the goal 0, 1, … ForecastWeeks weeks after the
+	// last visit; Weeks is the first of them with an even chance, null where there is none.
+	ByWeek []float64 `json:"by_week,omitempty"`
+	Weeks  *int      `json:"weeks"`
 }
 
 // Grader is what a space can add: how grades follow from places and severities. Without it
@@ -31,7 +36,7 @@ const reachedAt = 0.5
 // goals looks ahead to each goal's date. A goal on an item counts as reached once the severity has
 // come down to where the target grade is more likely than not; a goal without a date, or
 // with one beyond the forecast, is looked at over the forecast's twelve weeks.
-func (c *Course) goals(p exam.Patient, now time.Time) []GoalChance {
+func (c *Course) goals(p exam.Patient) []GoalChance {
 	out := []GoalChance{}
 	for _, g := range p.Goals {
 		if g.Reached != "" {
@@ -49,11 +54,19 @@ func (c *Course) goals(p exam.Patient, now time.Time) []GoalChance {
 		case !ok:
 			gc.Why = "the model cannot tell this item"
 		default:
-			by := c.nodes[len(c.nodes)-1].visit.Examined.AddDate(0, 0, 7*ForecastWeeks)
-			if t, ok := g.By.Time(); ok && t.Before(by) {
-				by = t
+			target := int8(math.Round(g.Target))
+			last := c.nodes[len(c.nodes)-1].visit.Examined
+			for w := range ForecastWeeks + 1 {
+				p := round(c.reach(grader, item, site, target, last.AddDate(0, 0, 7*w)), 4)
+				gc.ByWeek = append(gc.ByWeek, p)
+				if p >= 0.5 && gc.Weeks == nil {
+					gc.Weeks = &w
+				}
 			}
-			gc.Probability = finite(round(c.reach(grader, item, site, int8(math.Round(g.Target)), by), 4))
+			gc.Probability = finite(gc.ByWeek[ForecastWeeks])
+			if t, ok := g.By.Time(); ok && t.Before(last.AddDate(0, 0, 7*ForecastWeeks)) {
+				gc.Probability = finite(round(c.reach(grader, item, site, target, t), 4))
+			}
 		}
 		out = append(out, gc)
 	}

@@ -336,7 +336,7 @@ func (c *Course) Result(p exam.Patient, o Options) Result {
 		r.Relapse = c.relapse(shown)
 	}
 	r.Plateau = c.plateau(shown)
-	r.Goals = c.goals(p, o.Now)
+	r.Goals = c.goals(p)
 	if len(shown) < 3 {
 		r.Notes = append(r.Notes, "fewer than three visits: forecasts rest mostly on what is usual")
 	}

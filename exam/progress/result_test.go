@@ -2,6 +2,7 @@ package progress
 
 import (
 	"encoding/json"
+	"math"
 	"math/rand/v2"
 	"testing"
 	"time"
@@ -72,6 +73,10 @@ func TestAnalyse(t *testing.T) {
 	require.Less(t, r.Relapse.Probability, 0.1)
 	require.Len(t, r.Goals, 1)
 	require.Greater(t, *r.Goals[0].Probability, 0.5)
+	require.Len(t, r.Goals[0].ByWeek, ForecastWeeks+1)
+	for w := 1; w <= ForecastWeeks; w++ {
+		require.GreaterOrEqual(t, r.Goals[0].ByWeek[w], r.Goals[0].ByWeek[w-1], "what has been reached stays reached")
+	}
 	// Plain statistics stand beside it.
 	require.Equal(t, "thigh-girth", r.Plain[0].Measure)
 	require.Equal(t, 66, r.Plain[0].MannKendall.S)
@@ -147,4 +152,119 @@ func TestCountBetween(t *testing.T) {
 	require.Equal(t, exam.Worse, CountBetween(dog, b, a).Direction())
 	require.Equal(t, exam.NotComparable, CountBetween(dog, exam.Visit{}, a).Direction())
 	require.Equal(t, exam.Same, CountBetween(dog, a, a).Direction())
+}
+
+// A dog that lost what it had gained, and one that has come to rest.
+func TestRelapseAndPlateau(t *testing.T) {
+	r := rand.New(rand.NewPCG(31, 1))
+	a := newAnimal(cordAt("T13", "L1", localise.Even), motorCells())
+	var back, rest Series
+	back.Patient, rest.Patient = dog, dog
+	for i := range 14 {
+		s := 0.9 - 0.1*float64(min(i, 7))
+		rest.Visits = append(rest.Visits, a.draw(r, s, week(float64(i))))
+		if i >= 11 {
+			s = 0.85
+		}
+		back.Visits = append(back.Visits, a.draw(r, s, week(float64(i))))
+	}
+	x, err := Analyse(back, Options{})
+	require.NoError(t, err)
+	require.Greater(t, x.Relapse.Probability, 0.9)
+	require.Contains(t, x.Relapse.Words, "worse than at its best")
+	require.False(t, x.Plateau.Named)
+	y, err := Analyse(rest, Options{})
+	require.NoError(t, err)
+	require.Less(t, y.Relapse.Probability, 0.1)
+	require.True(t, y.Plateau.Named, y.Plateau.Words)
+	require.NotNil(t, y.Plateau.Since)
+	require.False(t, y.Plateau.Since.Before(week(4)))
+	require.Contains(t, y.Plateau.Words, "2.5 points a week")
+}
+
+// The same series gives the same result whatever order its visits come in, and whether they come
+// one by one or all at once.
+func TestOrderAndStepsDoNotMatter(t *testing.T) {
+	s := recoveringDog()
+	whole, err := Analyse(s, Options{})
+	require.NoError(t, err)
+	m, err := For(s.Patient)
+	require.NoError(t, err)
+	c := NewCourse(m)
+	var steps Result
+	for _, v := range s.Visits {
+		require.NoError(t, c.Add(v))
+		steps = c.Result(s.Patient, Options{})
+	}
+	mixed := Series{Patient: s.Patient}
+	for _, i := range rand.New(rand.NewPCG(1, 1)).Perm(len(s.Visits)) {
+		mixed.Visits = append(mixed.Visits, s.Visits[i])
+	}
+	other, err := Analyse(mixed, Options{})
+	require.NoError(t, err)
+	bytes := func(r Result) string {
+		raw, err := json.Marshal(r)
+		require.NoError(t, err)
+		return string(raw)
+	}
+	require.Equal(t, bytes(whole), bytes(other))
+	for i := range whole.Segments {
+		for k := range whole.Segments[i].Points {
+			require.InDelta(t, whole.Segments[i].Points[k].Function, steps.Segments[i].Points[k].Function, 0.05)
+		}
+	}
+	require.InDelta(t, whole.Change.Better, steps.Change.Better, 0.01)
+}
+
+// What the localisation model is laid out as.
+func TestBody(t *testing.T) {
+	for _, species := range []exam.Species{exam.Dog, exam.Cat} {
+		b, err := bodyOf(species)
+		require.NoError(t, err)
+		sum := 0.0
+		for i := range b.sites {
+			sum += b.prior[i]
+			for _, s := range b.shares[i] {
+				require.Equal(t, 0.0, s.Damage[0], "%s: severity 0 damages nothing", b.sites[i].Words)
+				for k := 1; k < Levels; k++ {
+					require.GreaterOrEqual(t, s.Damage[k], s.Damage[k-1])
+				}
+				require.LessOrEqual(t, s.Damage[Levels-1], 1.0)
+			}
+			require.IsIncreasing(t, append([]int{-1}, b.near[i]...))
+		}
+		require.InDelta(t, 1, sum, 1e-9)
+	}
+	// A complete lesion of the cord in front of the pelvic limbs takes both, and spares the others.
+	b, _ := bodyOf(exam.Dog)
+	for i, s := range b.sites {
+		if !cordAt("T13", "L1", localise.Even)(s) {
+			continue
+		}
+		limbs := map[string]float64{}
+		for _, share := range b.shares[i] {
+			if b.targets[share.Target].Kind == LimbTarget {
+				limbs[b.targets[share.Target].Name] = share.Damage[Levels-1]
+			}
+		}
+		require.Greater(t, limbs["pelvic-left"], 0.9)
+		require.Greater(t, limbs["pelvic-right"], 0.9)
+		require.Less(t, limbs["thoracic-left"], 0.1)
+	}
+}
+
+// At the localisation's own steps nothing is interpolated; between them what is added makes a cell whole.
+func TestInterpolation(t *testing.T) {
+	at := []float64{-9, -4, -2, -1, -3, -8}
+	var flat, out [Levels]float64
+	interpolate(at, flat[:], out[:], math.Inf(-1))
+	for k, s := range localise.Grid() {
+		require.InDelta(t, at[k], out[int(math.Round(s/spacing))], 1e-9)
+	}
+	b, err := bodyOf(exam.Dog)
+	require.NoError(t, err)
+	for _, z := range b.wholeness(exam.Key{Item: exam.VoluntaryMotor, Site: exam.PelvicLeft}) {
+		require.LessOrEqual(t, z, 1e-9)
+		require.Greater(t, z, -0.5)
+	}
 }
