@@ -24,13 +24,12 @@ import (
 // outside it: a journal cannot forget, but a key can be destroyed. Each patient's owner is
 // an owner of their own here, named by the patient's id.
 //
-// The keys stand in owners/keys, 128 bytes each, sealed under the practice's key: a place is never
+// The keys stand in owners.keys, 128 bytes each, sealed under the practice's key: a place is never
 // torn by a power cut, since it lies within one sector. A key is on the disk before the
 // first entry that needs it. Erasing a key writes the file anew without it; what the disk
 // itself keeps of the old file is beyond this program's reach.
 const (
-	ownersDir   = "owners"
-	ownersFile  = "keys"
+	ownersFile  = "owners.keys"
 	slotSize    = 128
 	slotMagic   = "CWok"
 	slotSealed  = 4 + 24 + 32 + 16 // see key.Ring.SealOwnerKey
@@ -59,7 +58,7 @@ type ownerKeys struct {
 
 func (o *ownerKeys) ring() *key.Ring { return o.keys.Load() }
 
-func (o *ownerKeys) path() string { return filepath.Join(o.dir, ownersDir, ownersFile) }
+func (o *ownerKeys) path() string { return filepath.Join(o.dir, ownersFile) }
 
 func (o *ownerKeys) name(owner exam.ID) (n [nameSize]byte) {
 	m := o.ring().Names().MAC([]byte("owner"), owner[:])
@@ -92,7 +91,7 @@ func (o *ownerKeys) load() error {
 		}
 		n, sealed, ok := parseSlot(slot)
 		if !ok {
-			o.bad = append(o.bad, Problem{File: ownersDir + "/" + ownersFile, Offset: int64(at), Length: int64(len(slot)), What: "the key of an owner's contact data is damaged; those data cannot be read here"})
+			o.bad = append(o.bad, Problem{File: ownersFile, Offset: int64(at), Length: int64(len(slot)), What: "the key of an owner's contact data is damaged; those data cannot be read here"})
 			continue
 		}
 		o.note(n, sealed)
@@ -189,9 +188,6 @@ func (o *ownerKeys) add(owner exam.ID, k key.OwnerKey) error {
 
 func (o *ownerKeys) append(slot []byte) error {
 	if o.file == nil {
-		if err := o.fs.MakeDir(filepath.Join(o.dir, ownersDir)); err != nil {
-			return err
-		}
 		f, err := o.fs.Edit(o.path())
 		if err != nil {
 			return err
@@ -218,12 +214,6 @@ func (o *ownerKeys) forget() {
 
 // rewrite writes the file anew, with one key more or, where sealed is nil, without those of a name.
 func (o *ownerKeys) rewrite(n [nameSize]byte, sealed []byte) error {
-	if err := o.fs.MakeDir(filepath.Join(o.dir, ownersDir)); err != nil {
-		return err
-	}
-	if err := o.fs.SyncDir(o.dir); err != nil {
-		return err
-	}
 	var b []byte
 	for _, x := range o.order {
 		if x == n && sealed == nil {

@@ -71,7 +71,7 @@ func TestOwnerIsErasedOnRequest(t *testing.T) {
 	require.NoError(t, err)
 	look()
 	require.NoError(t, s.Close())
-	b, err := os.ReadFile(filepath.Join(dir, "owners", "keys"))
+	b, err := os.ReadFile(filepath.Join(dir, "owners.keys"))
 	require.NoError(t, err)
 	require.Equal(t, 128, len(b), "one key is left")
 }
@@ -128,7 +128,7 @@ func TestDamagedOwnerKeys(t *testing.T) {
 	require.NoError(t, s.Close())
 	for range times(500) {
 		dir := copyDir(t, master)
-		name := filepath.Join(dir, "owners", "keys")
+		name := filepath.Join(dir, "owners.keys")
 		b, err := os.ReadFile(name)
 		require.NoError(t, err)
 		at := rng.IntN(len(b))
@@ -145,7 +145,7 @@ func TestDamagedOwnerKeys(t *testing.T) {
 		require.NoError(t, err)
 		if at%128 != 0 || len(b) == 4*128 {
 			require.NotEmpty(t, found)
-			require.Equal(t, "owners/keys", found[0].File)
+			require.Equal(t, "owners.keys", found[0].File)
 		}
 		s, err := storage.Open(dir, storagetest.Options())
 		require.NoError(t, err)

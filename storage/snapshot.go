@@ -58,7 +58,7 @@ func (s *Store) snapshot() ([]SnapshotFile, error) {
 			out = append(out, SnapshotFile{path.Join(dir, e.Name), size})
 		}
 	}
-	for _, name := range []string{identityFile, "views.log"} {
+	for _, name := range []string{identityFile, ownersFile, "views.log"} {
 		e, err := s.fs.Stat(filepath.Join(s.dir, name))
 		if errors.Is(err, fs.ErrNotExist) {
 			continue

@@ -60,6 +60,8 @@ type Files struct {
 	mu     sync.Mutex
 	keys   map[exam.ID][]ownerKey
 	erased map[exam.ID]bool
+	turn   uint64          // of the store's keys, see meet
+	given  map[string]bool // files whose key the store has
 }
 
 type ownerKey struct {
@@ -72,7 +74,7 @@ func Open(ctx context.Context, s *storage.Store, fsys disk.FS) (*Files, error) {
 	if fsys == nil {
 		fsys = disk.OS()
 	}
-	f := &Files{s: s, fs: fsys, keys: map[exam.ID][]ownerKey{}, erased: map[exam.ID]bool{}}
+	f := &Files{s: s, fs: fsys, keys: map[exam.ID][]ownerKey{}, erased: map[exam.ID]bool{}, given: map[string]bool{}}
 	for _, d := range []string{filesDir, ownersDir} {
 		if err := fsys.MakeDir(filepath.Join(s.Dir(), d)); err != nil {
 			return nil, fmt.Errorf("opening the attachments: %w", err)
@@ -406,6 +408,9 @@ func (f *Files) Obey(ctx context.Context) error {
 		}
 		delete(f.keys, owner)
 	}
+	if err := f.meet(ctx); err != nil {
+		return err
+	}
 	if len(tags) == 0 {
 		return nil
 	}
@@ -503,7 +508,13 @@ func (f *Files) Repair(ctx context.Context) ([]Problem, error) {
 }
 
 // List implements carry.Attachments.
-func (f *Files) List(context.Context) ([]carry.FileRef, error) {
+func (f *Files) List(ctx context.Context) ([]carry.FileRef, error) {
+	f.mu.Lock()
+	err := f.meet(ctx)
+	f.mu.Unlock()
+	if err != nil {
+		return nil, err
+	}
 	var out []carry.FileRef
 	for dir, ext := range map[string]string{filesDir: attExt, ownersDir: ownerExt} {
 		es, err := f.fs.List(filepath.Join(f.s.Dir(), dir))
