@@ -260,7 +260,7 @@ func TestSplitVisits(t *testing.T) {
 	require.InDelta(t, whole.Change(0, 4).Better, split.Change(1, 9).Better, 1e-6)
 
 	// Without growth (summed to first order in a stretch) an empty visit is nothing at all.
-	b, m = exact(false)
+	_, m = exact(false)
 	plain, gaps := NewCourse(m), NewCourse(m)
 	for i, v := range visits {
 		require.NoError(t, plain.Add(v))

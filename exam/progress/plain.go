@@ -90,7 +90,6 @@ func plainOf(visits []exam.Visit, own repeat.Practice) []Plain {
 		first exam.Measured
 		who   string
 		out   Plain
-		many  bool // several examiners
 		names map[string]bool
 	}
 	var rows []*row

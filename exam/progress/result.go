@@ -501,6 +501,18 @@ func scalesOf(visits []exam.Visit, own repeat.Practice, all func(i int) []scale.
 	return out
 }
 
+// Scores returns a visit's certain scores by the names under which package repeat knows them: what
+// repeat.Learn asks for.
+func Scores(v exam.Visit) map[string]float64 {
+	out := map[string]float64{}
+	for _, x := range scale.All(v) {
+		if level, ok := x.Known(); ok && x.Site == exam.NoSite {
+			out[x.Scale.String()] = level
+		}
+	}
+	return out
+}
+
 // noiseName is the name under which package repeat knows a scale.
 func noiseName(s scale.Scale) string {
 	switch s {

@@ -116,6 +116,13 @@ func (t tally) String() string { return fmt.Sprintf("%.1f %% of %d", 100*t.share
 
 func inside(b Band, truth float64) bool { return truth >= b.Low-1e-9 && truth <= b.High+1e-9 }
 
+// long skips what takes minutes under the race detector.
+func long(t *testing.T) {
+	if testing.Short() && !soak() {
+		t.Skip("simulated courses are run without -short")
+	}
+}
+
 // seedOf returns a fresh seed, or the one in CORDWALK_SEED, and prints it.
 func seedOf(t *testing.T) uint64 {
 	seed := uint64(time.Now().UnixNano())
@@ -298,6 +305,7 @@ func calibrate(t *testing.T, r *rand.Rand, n int, tolerance float64, make func()
 
 // What is said with 90 % must hold in 90 %, and «better» with 94 % must be right in 94 %.
 func TestCalibration(t *testing.T) {
+	long(t)
 	r := rand.New(rand.NewPCG(seedOf(t), 1))
 	b := newBench()
 	m := NewModel(b, DefaultRates())
@@ -333,6 +341,7 @@ func dogs(t *testing.T, r *rand.Rand) func() subject {
 
 // The same on dogs, through the localisation model.
 func TestCalibrationOfDogs(t *testing.T) {
+	long(t)
 	r := rand.New(rand.NewPCG(seedOf(t), 2))
 	calibrate(t, r, courses(400), within(0.04, 0.08), dogs(t, r))
 }
@@ -341,6 +350,7 @@ func TestCalibrationOfDogs(t *testing.T) {
 // true course moves by less than half the stated rate; naming one is false while it
 // moves by more than twice that rate, both in the week before and in the week after.
 func TestPlateauIsNamed(t *testing.T) {
+	long(t)
 	r := rand.New(rand.NewPCG(seedOf(t), 3))
 	b := newBench()
 	m := NewModel(b, DefaultRates())
@@ -391,6 +401,7 @@ func TestPlateauIsNamed(t *testing.T) {
 // Noise only: nothing changes over twelve weekly exams. The model may call a change in one of twenty
 // series; reading the change of the raw total calls one nearly always.
 func TestNoiseOnly(t *testing.T) {
+	long(t)
 	r := rand.New(rand.NewPCG(seedOf(t), 4))
 	b := newBench()
 	m := NewModel(b, DefaultRates())

@@ -8,13 +8,13 @@ import (
 	"cordwalk.example/cordwalk/exam/stat"
 )
 
-// Names of the scales in Quantity.Scale.
+// Names of the scales in Quantity.Scale: the keys of package scale.
 const (
-	Frankel   = "modified-frankel"
+	Frankel   = "frankel"
 	OpenField = "open-field"
-	Texas     = "texas"
-	FINFUN    = "finfun"
-	Ashworth  = "modified-ashworth"
+	Texas     = "texas-pelvic"
+	FINFUN    = "functional"
+	Ashworth  = "ashworth"
 )
 
 func ownSource(r Row) string {

@@ -174,7 +174,7 @@ func TestGradesOfRepeats(t *testing.T) {
 	noise, ok := p.Noise(Quantity{Item: exam.Patellar}, false)
 	require.True(t, ok)
 	require.True(t, noise.Own)
-	require.Equal(t, "modified-frankel", p.Rows()[1].Quantity.String())
+	require.Equal(t, "frankel", p.Rows()[1].Quantity.String())
 	require.Equal(t, 22, p.Rows()[1].Pairs)
 	for _, r := range p.Rows() {
 		require.NotContains(t, fmt.Sprint(r.Repeats.SEM), "NaN")
