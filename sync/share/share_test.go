@@ -226,3 +226,33 @@ func TestViewsAreNotedOncePerDay(t *testing.T) {
 	require.NoError(t, err)
 	require.False(t, strings.Contains(string(raw), who), "it is sealed")
 }
+
+// Devices that hold the same come to the same hash of what they show.
+func TestStatesAreCompared(t *testing.T) {
+	stick := t.TempDir()
+	a, _ := first(t)
+	b, _ := join(t, a, stick, "b")
+	add(t, a, "Bramble")
+	add(t, b, "Juniper")
+	sync(t, stick, a, b, a, b)
+	for _, sh := range []*share.Share{a, b} {
+		require.NoError(t, sh.Measure(ctx))
+	}
+	sa, err := a.Sums(ctx)
+	require.NoError(t, err)
+	sb, err := b.Sums(ctx)
+	require.NoError(t, err)
+	require.Len(t, sa, 1)
+	require.Equal(t, sa, sb)
+	sync(t, stick, a)
+	r, err := b.Folder(ctx, stick, nil)
+	require.NoError(t, err)
+	require.False(t, r.Peers[0].Differs)
+
+	add(t, a, "Pebble")
+	require.NoError(t, a.Measure(ctx))
+	later, err := a.Sums(ctx)
+	require.NoError(t, err)
+	require.NotEqual(t, sa[0].At, later[0].At)
+	require.NotEqual(t, sa[0].Sum, later[0].Sum)
+}
