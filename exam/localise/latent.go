@@ -46,7 +46,7 @@ func (st *state) latent(c *cell) float64 {
 		return v
 	case exam.Ataxia:
 		v := st.path[l]
-		v = both(v, float64(float64(0.3*max(0, st.arcLoss[arcHindSense][side]-0.3))*boolTo(g == pelvic)))
+		v = both(v, float64(float64(0.3*max(0, st.arcLoss[arcHindSense][side]-0.2))*boolTo(g == pelvic)))
 		v = both(v, float64(0.85*max(st.cereb[side], float64(0.8*st.cereb[other]))))
 		v = both(v, float64(0.6*any2(st.vestP)))
 		v = both(v, float64(0.75*max(st.vestC[side], float64(0.8*st.vestC[other]))))
@@ -290,7 +290,7 @@ func (st *state) latent(c *cell) float64 {
 	case exam.ExtensorCarpi:
 		return st.reflex(limbArc(arcExtensor, 0.3), st.arcUp[arcExtensor][side])
 	case exam.Patellar:
-		down := both(limbArc(arcQuadriceps, 0.25), float64(st.p.ShockPatellar*st.shock))
+		down := both(min(1, float64(st.p.Knee*limbArc(arcQuadriceps, 0.25))), float64(st.p.ShockPatellar*st.shock))
 		down = both(down, float64(0.2*st.stifle[side]))
 		sciatic := float64(float64(0.5*(st.arcLoss[arcHamstring][side]+st.arcLoss[arcTibialis][side])) * (1 - st.diffuse[l]))
 		up := both(float64(st.p.ReflexUp*st.arcUp[arcQuadriceps][side]), float64(st.p.Pseudo*sciatic))
@@ -497,7 +497,7 @@ func (st *state) posture() float64 {
 // frontFlexion is the thoracic withdrawal: lost with its arc, and weak with the loss of
 // descending control too (Forterre-2008).
 func (st *state) frontFlexion(eff, aff float64, l int) float64 {
-	v := both(eff, float64(0.3*aff))
+	v := both(min(1, float64(st.p.FrontFlexion*eff)), float64(0.3*aff))
 	v = both(v, float64(0.9*st.diffuse[l]))
 	v = both(v, float64(0.3*st.distal[l]))
 	v = both(v, float64(0.15*st.weak[l]))

@@ -51,6 +51,8 @@ type Params struct {
 	Voiding         float64 // how much more voiding depends on the pelvic nerve than its share: fitted to Couper-2020
 	Stenosis        float64 // pain on lumbosacral extension, cauda equina: fitted to DS-1999
 	FrontUMN        float64 // value that a loss of descending control adds to the thoracic withdrawal: fitted to Forterre-2008
+	FrontFlexion    float64 // how much more the thoracic withdrawal loses than its arcs' mean: flexion needs every root; fitted to Forterre-2008
+	Knee            float64 // the same for the patellar reflex: seed table (reduced in 0.85 of L4–L6), judgement
 	Pseudo          float64 // how much lost sciatic antagonists raise the patellar reflex: seed table of likelihoods.md (0.3), judgement
 	ReflexUp        float64 // how much lost descending control raises a reflex: seed table (patellar exaggerated 0.3), judgement
 	Disuse          float64 // wasting by disuse at full loss of motion, after the first week: from memory
@@ -95,7 +97,7 @@ func defaults(s exam.Species) *Params {
 	p := &Params{
 		Slip: 0.03, SlipFrail: 0.051, Careless: 0.1, ArcSpread: 1.0, ArcBlunder: 0.005,
 		FrontShare: 0.8, CentralHind: 0.55, WhiteGrey: 0.5, GreyWhite: 0.3,
-		Shock: 0.196, ShockWithdrawal: 0.466, ShockPatellar: 0.122, SunkHock: 0.1, Voiding: 2.344, Stenosis: 0.776, CordRoot: 0.134, Sympathetic: 2.651, FrontUMN: 0.3, Pseudo: 0.5, ReflexUp: 0.5,
+		Shock: 0.196, ShockWithdrawal: 0.466, ShockPatellar: 0.122, SunkHock: 0.1, Voiding: 2.344, Stenosis: 0.776, CordRoot: 0.134, Sympathetic: 2.651, FrontUMN: 0.25, FrontFlexion: 1.5, Knee: 1.35, Pseudo: 0.5, ReflexUp: 0.5,
 		Disuse: 0.3, EarlyMass: 0.1, PainAcute: 0.494, PainLater: 0.42,
 		TrunciWalk: 0.528, TrunciLame: 0.903, Posture: 0.3, ReflexSteps: 0.3,
 		Pair:   0.03,
@@ -140,9 +142,9 @@ func responses() (t [exam.ItemCount]response) {
 	up := func(slope float64, ups ...float64) response { return response{slope: slope, up: ups} }
 
 	// Gait and posture.
-	set(one(14, 0.17, 0.38, 0.55, 0.77), exam.VoluntaryMotor)
+	set(one(16, 0.17, 0.38, 0.55, 0.77), exam.VoluntaryMotor)
 	set(one(12, 0.493, 0.75), exam.Ambulation)
-	set(up(12, 0.25, 0.5, 0.8), exam.Ataxia)
+	set(up(14, 0.25, 0.5, 0.8), exam.Ataxia)
 	set(up(8, 0.4), exam.AtaxiaProprioceptive, exam.AtaxiaVestibular, exam.AtaxiaCerebellar)
 	set(response{slope: 8, down: []float64{0.4}, up: []float64{0.55}}, exam.Stride)
 	set(up(8, 0.4), exam.Hypermetria)
@@ -156,7 +158,7 @@ func responses() (t [exam.ItemCount]response) {
 	set(up(8, 0.5), exam.SchiffSherrington, exam.ReflexWalking)
 
 	// Postural reactions.
-	set(one(12, 0.23, 0.6), exam.PawPlacement, exam.Hopping, exam.TactilePlacing, exam.ExtensorThrust, exam.Wheelbarrow)
+	set(one(15, 0.23, 0.6), exam.PawPlacement, exam.Hopping, exam.TactilePlacing, exam.ExtensorThrust, exam.Wheelbarrow)
 
 	// Whole animal.
 	set(one(8, 0.45, 0.75, 0.95), exam.Mentation)
@@ -180,14 +182,14 @@ func responses() (t [exam.ItemCount]response) {
 	set(response{slope: 14, up: []float64{0.455, 0.66}, slip: 0.003}, exam.Horner)
 
 	// Reflexes and tone.
-	set(one(12, 0.32, 0.65), exam.Withdrawal, exam.WithdrawalShoulder, exam.WithdrawalElbow, exam.WithdrawalCarpus,
+	set(one(14, 0.32, 0.65), exam.Withdrawal, exam.WithdrawalShoulder, exam.WithdrawalElbow, exam.WithdrawalCarpus,
 		exam.WithdrawalHip, exam.WithdrawalStifle, exam.WithdrawalHock, exam.WithdrawalDigits)
 	set(response{slope: 9, down: []float64{0.336, 0.6}, up: []float64{0.55, 0.9}}, exam.Patellar)
 	set(response{slope: 5, down: []float64{0.3, 0.5}, up: []float64{0.7, 1.1}, slip: 0.08}, exam.Biceps, exam.Triceps, exam.Gastrocnemius)
 	set(response{slope: 6, down: []float64{0.35, 0.65}, up: []float64{0.65, 1.05}, slip: 0.05}, exam.ExtensorCarpi)
 	set(response{slope: 3, down: []float64{0.5, 0.9}, up: []float64{1, 1.5}, slip: 0.056}, exam.CranialTibial) // UFRPE-CT: persists under epidural block
 	set(up(8, 0.62), exam.CrossedExtensor)
-	set(one(12, 0.32, 0.62), exam.Perineal)
+	set(one(14, 0.31, 0.62), exam.Perineal)
 	set(one(12, 0.497, 0.647), exam.AnalTone)
 	set(one(8, 0.35, 0.7), exam.CutaneousTrunciTwitch)
 	set(response{slope: 9, down: []float64{0.33, 0.7}, up: []float64{0.4, 0.85}}, exam.Tone)

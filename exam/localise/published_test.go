@@ -205,9 +205,11 @@ func acutely(f func(*hypothesis) bool) func(*hypothesis) bool {
 
 var (
 	cervical = cordIn(C1C5, C6T2)
-	// Single discs that were imaged and operated on: with deficits, one or two segments.
-	cervicalDisc = func(h *hypothesis) bool { return cervical(h) && h.site.extent <= 1 && h.severity >= 1 }
-	necks        = func(h *hypothesis) bool {
+	// Single discs that were imaged and operated on: with deficits, one or two segments, no further than C7–T1.
+	cervicalDisc = func(h *hypothesis) bool {
+		return cervical(h) && h.site.to <= 8 && h.site.extent <= 1 && h.severity >= 1
+	}
+	necks = func(h *hypothesis) bool {
 		return (h.site.kind == Cord || h.site.kind == PainOnly) && h.site.region <= C6T2
 	}
 	plegicGiv = []constraint{is(exam.VoluntaryMotor, exam.PelvicLeft, 0), is(exam.VoluntaryMotor, exam.PelvicRight, 0)}
@@ -485,4 +487,58 @@ func TestPublishedFrequencies(t *testing.T) {
 		}
 	}
 	sort.SliceStable(ms, func(i, j int) bool { return ms[i].source < ms[j].source })
+}
+
+// TestWithdrawalRatio: a reduced thoracic withdrawal favours C6–T2 over C1–C5 by only 1.3–2.2, a
+// normal one favours C1–C5 by 3–7 (derived from Forterre-2008, likelihoods.md 1.1).
+func TestWithdrawalRatio(t *testing.T) {
+	pr := newPredictor(exam.Dog, defaults(exam.Dog))
+	kept := func(region Region) float64 {
+		return pr.predict(&published{species: exam.Dog, where: func(h *hypothesis) bool { return cervicalDisc(h) && h.site.region == region },
+			event: func(_ *hypothesis, p func(...constraint) float64) float64 {
+				return p(is(exam.Withdrawal, exam.ThoracicLeft, 2), is(exam.Withdrawal, exam.ThoracicRight, 2))
+			}})
+	}
+	up, low := kept(C1C5), kept(C6T2)
+	reduced, normal := (1-low)/(1-up), up/low
+	t.Logf("reduced given C1–C5 %.2f, given C6–T2 %.2f; ratio of reduced %.2f, of normal %.2f", 1-up, 1-low, reduced, normal)
+	if reduced < 1.2 || reduced > 2.2 {
+		t.Errorf("a reduced thoracic withdrawal favours C6–T2 by %.2f", reduced)
+	}
+	if normal < 1.5 || normal > 7 {
+		t.Errorf("a normal thoracic withdrawal favours C1–C5 by %.2f", normal)
+	}
+}
+
+// TestSeeds prints the seed rows of likelihoods.md 10 that rest on judgement, with what the model
+// predicts: no counts stand behind them, so they bound loosely.
+func TestSeeds(t *testing.T) {
+	pr := newPredictor(exam.Dog, defaults(exam.Dog))
+	grey := func(from, to int) func(h *hypothesis) bool {
+		return func(h *hypothesis) bool {
+			return h.site.kind == Cord && h.site.from >= from && h.site.to <= to && h.severity >= 1 && h.site.side == Even && h.site.extent >= 1
+		}
+	}
+	for _, s := range []struct {
+		what   string
+		seed   float64
+		lo, hi float64
+		where  func(*hypothesis) bool
+		event  func(*hypothesis, func(...constraint) float64) float64
+	}{
+		{"withdrawal TL reduced, C6–T2", 0.85, 0.5, 0.97, grey(5, 9), either(is(exam.Withdrawal, exam.ThoracicLeft, 0, 1), is(exam.Withdrawal, exam.ThoracicRight, 0, 1))},
+		{"withdrawal PL reduced, L6–S1", 0.85, 0.5, 0.97, grey(26, 28), either(is(exam.Withdrawal, exam.PelvicLeft, 0, 1), is(exam.Withdrawal, exam.PelvicRight, 0, 1))},
+		{"patellar reduced, L4–L6", 0.85, 0.5, 0.97, grey(24, 26), either(is(exam.Patellar, exam.PelvicLeft, 0, 1), is(exam.Patellar, exam.PelvicRight, 0, 1))},
+		{"patellar exaggerated, T3–L3", 0.3, 0.1, 0.5, func(h *hypothesis) bool { return cordIn(T3L3)(h) && h.site.to <= 21 && h.severity >= 1 }, one(is(exam.Patellar, exam.PelvicLeft, 3, 4))},
+		{"patellar exaggerated, sciatic nerve", 0.3, 0.1, 0.5, func(h *hypothesis) bool { return sciaticNerve(h) && h.site.nerve.name() == "sciatic" }, one(is(exam.Patellar, exam.PelvicLeft, 3, 4))},
+		{"withdrawal TL reduced, T3–L3 (one limb); 0.10 where raters agree less", 0.04, 0.02, 0.12, cordIn(T3L3), one(is(exam.Withdrawal, exam.ThoracicLeft, 0, 1))},
+		{"withdrawal PL reduced, T3–L3 after a week (one limb)", 0.04, 0.02, 0.1, func(h *hypothesis) bool { return cordIn(T3L3)(h) && !h.acute && h.site.to <= 21 }, one(is(exam.Withdrawal, exam.PelvicLeft, 0, 1))},
+		{"anal tone reduced or absent, sound", 0.03, 0.01, 0.08, func(h *hypothesis) bool { return h.site.kind == NoLesion }, one(is(exam.AnalTone, exam.Midline, 0, 1))},
+	} {
+		got := pr.predict(&published{species: exam.Dog, where: s.where, event: s.event})
+		t.Logf("seed %.2f  model %.3f  %s", s.seed, got, s.what)
+		if got < s.lo || got > s.hi {
+			t.Errorf("%s: model %.3f, seed %.2f", s.what, got, s.seed)
+		}
+	}
 }

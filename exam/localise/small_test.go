@@ -15,7 +15,7 @@ import (
 func TestSmallModel(t *testing.T) {
 	// The parameters of the script, whatever is fitted later.
 	p := defaults(exam.Dog)
-	p.ReflexUp, p.Pseudo, p.Slip, p.ArcSpread, p.ArcBlunder = 0.5, 0.5, 0.03, 1, 0.005
+	p.ReflexUp, p.Pseudo, p.Knee, p.Slip, p.ArcSpread, p.ArcBlunder = 0.5, 0.5, 1.35, 0.03, 1, 0.005
 	p.respond[exam.VoluntaryMotor] = response{slope: 14, down: []float64{0.17, 0.38, 0.55, 0.77}}
 	p.respond[exam.Patellar] = response{slope: 9, down: []float64{0.33, 0.6}, up: []float64{0.55, 0.9}}
 	p.respond[exam.Withdrawal] = response{slope: 12, down: []float64{0.32, 0.65}}

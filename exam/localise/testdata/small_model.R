@@ -50,10 +50,11 @@ values <- function(where) {
   upper <- sum(weights * U[names(weights)])
   sciatic <- 0.5 * (L["hamstring"] + L["tibialis"])
   brisk <- both(reflex_up * U["quadriceps"], pseudo * sciatic)
+  knee <- min(1, 1.35 * L["quadriceps"])
   flexion <- 0.55 * (0.25 * L["hip"] + 0.2 * L["hamstring"] + 0.35 * L["tibialis"] + 0.2 * L["plantar"]) +
     0.45 * max(L["hip"], L["hamstring"], L["tibialis"], L["plantar"])
   c(motor = unname(both(upper, lower)),
-    patellar = unname(L["quadriceps"] - brisk * (1 - L["quadriceps"])),
+    patellar = unname(knee - brisk * (1 - knee)),
     withdrawal = unname(both(flexion, 0.3 * L["fibular"])))
 }
 
