@@ -29,6 +29,7 @@ type Options struct {
 	Incarnation func() change.Incarnation
 	Journal     carry.Journal
 	Members     carry.Members
+	Files       carry.Attachments                        // may be nil
 	Sites       []change.Site                            // whose records are taken in; none: all
 	Place       Place                                    // remembers how far the hub was read; may be nil
 	Now         func() time.Time                         // nil: time.Now
@@ -283,6 +284,12 @@ func (c *Client) session(ctx context.Context) error {
 		return err
 	}
 	defer sc.Stop()
+
+	stopFiles, err := c.exchangeFiles(ctx)
+	if err != nil {
+		return err
+	}
+	defer stopFiles()
 
 	tick := time.NewTicker(c.o.Poll)
 	defer tick.Stop()

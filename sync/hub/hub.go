@@ -12,6 +12,7 @@
 //	cw.fill.WHO.SITE.DEVICE     segments that somebody sends again (stream CW)
 //	cw.head.WHO                 the newest head of a device (stream CWH, one message for each)
 //	cw.member                   statements of the member list (stream CWM, kept)
+//	cw.att.WHO.NAME.…           pieces of attachments (stream CWA)
 //	cw.want.SITE.DEVICE         somebody lacks numbers of a stream (not stored)
 //
 // SITE, DEVICE and WHO are hexadecimal; WHO is the first half of a device's public key.
@@ -52,7 +53,7 @@ const targetRaw = 256 << 10 // bytes of frames in one message
 // Limits of the mailbox.
 type Limits struct {
 	Age      time.Duration // how long a message is kept; 0: 90 days
-	Bytes    int64         // of all segments; 0: 8 GiB
+	Bytes    int64         // of all segments, and again of all attachments; 0: 8 GiB
 	Replicas int           // 0: 1; 3 for a cluster
 }
 
@@ -68,6 +69,7 @@ func (l Limits) Configs() []jetstream.StreamConfig {
 	return []jetstream.StreamConfig{
 		{Name: Segments, Subjects: []string{"cw.seg.>", "cw.fill.>"}, MaxAge: l.Age, MaxBytes: l.Bytes, MaxMsgSize: MaxMessage, Storage: jetstream.FileStorage, Replicas: l.Replicas, Discard: jetstream.DiscardOld, AllowDirect: true, Duplicates: 2 * time.Minute},
 		{Name: Heads, Subjects: []string{"cw.head.*"}, MaxAge: l.Age, MaxMsgsPerSubject: 1, MaxBytes: 256 << 20, MaxMsgSize: MaxMessage, Storage: jetstream.FileStorage, Replicas: l.Replicas, AllowDirect: true},
+		{Name: Attached, Subjects: []string{"cw.att.*.*.*.*.*"}, MaxAge: l.Age, MaxBytes: l.Bytes, MaxMsgSize: MaxMessage, Storage: jetstream.FileStorage, Replicas: l.Replicas, Discard: jetstream.DiscardOld, AllowDirect: true, Duplicates: 2 * time.Minute},
 		{Name: Members, Subjects: []string{"cw.member"}, MaxMsgs: 1 << 15, MaxBytes: 1 << 30, MaxMsgSize: 64<<10 + 1024, Storage: jetstream.FileStorage, Replicas: l.Replicas, AllowDirect: true},
 	}
 }

@@ -1,8 +1,10 @@
 package hub_test
 
 import (
+	"bytes"
 	"context"
 	"fmt"
+	"io"
 	"net"
 	"os"
 	"path/filepath"
@@ -15,6 +17,8 @@ import (
 	"github.com/nats-io/nkeys"
 	"github.com/stretchr/testify/require"
 
+	"cordwalk.example/cordwalk/storage"
+	"cordwalk.example/cordwalk/sync/attach"
 	"cordwalk.example/cordwalk/sync/hub"
 	"cordwalk.example/cordwalk/sync/hub/mailbox"
 	"cordwalk.example/cordwalk/sync/share"
@@ -39,7 +43,7 @@ type client struct {
 
 func run(t testing.TB, sh *share.Share, a hub.Address, place hub.Place) *client {
 	t.Helper()
-	c := hub.New(hub.Options{Address: a, Bag: sh.Bag, Incarnation: sh.Incarnation, Journal: sh, Members: sh, Place: place, Poll: 20 * time.Millisecond})
+	c := hub.New(hub.Options{Address: a, Bag: sh.Bag, Incarnation: sh.Incarnation, Journal: sh, Members: sh, Files: sh.Files, Place: place, Poll: 20 * time.Millisecond})
 	ctx, cancel := context.WithCancel(context.Background())
 	done := make(chan error, 1)
 	go func() { done <- c.Run(ctx) }()
@@ -262,6 +266,45 @@ func TestForgedMessagesAreLeftAlone(t *testing.T) {
 	run(t, b, m.Address(), nil)
 	eventually(t, "what is true gets through", func() bool { return sharetest.Names(t, a)["true"] == 1 })
 	require.NotNil(t, ca.Status().Refused)
+}
+
+func TestAttachmentsTravelByHub(t *testing.T) {
+	a := sharetest.Found(t)
+	b := sharetest.Join(t, a, "b")
+	ctx := context.Background()
+	fa, err := attach.Open(ctx, a.Store, nil)
+	require.NoError(t, err)
+	fb, err := attach.Open(ctx, b.Store, nil)
+	require.NoError(t, err)
+	a.Files, b.Files = fa, fb
+	owner := storage.NewID()
+	want := map[string][]byte{}
+	for _, n := range []int{0, 100, 512 << 10, 1_500_000} {
+		data := bytes.Repeat([]byte{byte(n), 7, byte(n >> 8)}, n/3)
+		name, err := fa.Add(ctx, owner, bytes.NewReader(data))
+		require.NoError(t, err)
+		want[name] = data
+	}
+	m := start(t, t.TempDir(), "127.0.0.1:0", a)
+	defer m.Close()
+	run(t, a, m.Address(), nil)
+	sharetest.Add(t, a, "Bramble")
+	run(t, b, m.Address(), nil)
+	eventually(t, "b has the files", func() bool {
+		for name, data := range want {
+			r, err := fb.Read(owner, name)
+			if err != nil {
+				return false
+			}
+			got, err := io.ReadAll(r)
+			r.Close()
+			if err != nil || !bytes.Equal(got, data) {
+				t.Fatalf("%s came wrong: %v", name, err)
+			}
+		}
+		return true
+	})
+	require.Equal(t, 1, sharetest.Names(t, b)["Bramble"])
 }
 
 func TestParseAddress(t *testing.T) {
