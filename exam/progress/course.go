@@ -103,7 +103,8 @@ func (n *node) index(site int) int {
 type Course struct {
 	model   *Model
 	nodes   []*node
-	chains  chains // how the readings of the last visits lean
+	patient exam.Patient // whose course it is, where it was made by Analyse
+	chains  chains       // how the readings of the last visits lean
 	scratch [3][]float64
 	kept    []*following
 	owed    float64 // belief that later visits may have moved in visits that were left alone

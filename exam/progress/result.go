@@ -54,6 +54,10 @@ type Options struct {
 	Since    time.Time       // compare with the first visit at or after this time; zero: with the first visit
 	Practice repeat.Practice // the practice's own repeatability
 	Now      time.Time       // forecasts run from here where it is later than the last visit; zero: from the last visit
+
+	// Continue is the course of an earlier result. Where the series only adds visits to it, what is
+	// past is not computed again; else it is left alone. It moves on with the new result.
+	Continue *Course
 }
 
 // Result is everything that a course says, ready to be printed as JSON. Probabilities are 0 to 1,
@@ -197,6 +201,9 @@ type Alert struct {
 func Analyse(s Series, o Options) (Result, error) {
 	visits := slices.Clone(s.Visits)
 	slices.SortStableFunc(visits, func(a, b exam.Visit) int { return a.Examined.Compare(b.Examined) })
+	if o.Continue.begins(s.Patient, visits) {
+		return carryOn(o.Continue, s.Patient, visits, o)
+	}
 	m, err := For(s.Patient)
 	if err != nil {
 		r := plainResult(visits, o)
@@ -205,12 +212,33 @@ func Analyse(s Series, o Options) (Result, error) {
 		return r, nil
 	}
 	c := NewCourse(m)
-	for _, v := range visits {
+	c.patient = s.Patient
+	return carryOn(c, s.Patient, visits, o)
+}
+
+// carryOn adds the visits that a course does not hold yet.
+func carryOn(c *Course, p exam.Patient, visits []exam.Visit, o Options) (Result, error) {
+	for _, v := range visits[c.Len():] {
 		if err := c.Add(v); err != nil {
 			return Result{}, err
 		}
 	}
-	return c.Result(s.Patient, o), nil
+	return c.Result(p, o), nil
+}
+
+// begins reports whether a course is that of an animal's first visits, as they stand now.
+func (c *Course) begins(p exam.Patient, visits []exam.Visit) bool {
+	if c == nil || c.Len() == 0 || c.Len() > len(visits) || c.patient.Species != p.Species || c.patient.Born != p.Born || !slices.Equal(c.patient.Problems, p.Problems) {
+		return false
+	}
+	for i, n := range c.nodes {
+		a, b := n.visit, visits[i]
+		if a.ID != b.ID || !a.Examined.Equal(b.Examined) || a.Examiner != b.Examiner || a.RepeatOf != b.RepeatOf || a.Sedation != b.Sedation ||
+			!slices.Equal(a.Findings, b.Findings) || !slices.Equal(a.Measures, b.Measures) {
+			return false
+		}
+	}
+	return true
 }
 
 // plainResult is what needs no model.

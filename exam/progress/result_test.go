@@ -268,3 +268,33 @@ func TestInterpolation(t *testing.T) {
 		require.Greater(t, z, -0.5)
 	}
 }
+
+// A course is continued where the series only grows, and begun afresh where the past has changed.
+func TestContinue(t *testing.T) {
+	s := recoveringDog()
+	all := s.Visits
+	s.Visits = all[:11]
+	before, err := Analyse(s, Options{})
+	require.NoError(t, err)
+	steps := before.Course().Steps()
+	s.Visits = all
+	after, err := Analyse(s, Options{Continue: before.Course()})
+	require.NoError(t, err)
+	require.Same(t, before.Course(), after.Course())
+	fresh, err := Analyse(s, Options{})
+	require.NoError(t, err)
+	require.Less(t, after.Course().Steps()-steps, fresh.Course().Steps())
+	require.InDelta(t, fresh.Change.Better, after.Change.Better, 0.01)
+	for i := range fresh.Limbs {
+		require.InDelta(t, fresh.Limbs[i].Points[5].Function, after.Limbs[i].Points[5].Function, 0.05)
+	}
+	// A grade of an earlier visit was corrected.
+	changed := append([]exam.Visit(nil), all...)
+	changed[3].Findings = append([]exam.Finding(nil), all[3].Findings...)
+	g, _ := changed[3].Findings[0].Result.Grade()
+	changed[3].Findings[0].Result = exam.Graded(1 - min(g, 1))
+	s.Visits = changed
+	other, err := Analyse(s, Options{Continue: after.Course()})
+	require.NoError(t, err)
+	require.NotSame(t, after.Course(), other.Course())
+}
