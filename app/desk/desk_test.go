@@ -679,3 +679,41 @@ func TestAnImportIsLookedAtWrittenAndTakenBackAsOne(t *testing.T) {
 		t.Errorf("after the undo %d animals, want %d", n, before)
 	}
 }
+
+func TestClosingAsksForAPageThatIsNotKept(t *testing.T) {
+	s := newStage(t, view.Settings{})
+	w := s.demo()
+	w.goTo(view.Route{Screen: view.ScreenPatient})
+	p := w.page.(*patientPage)
+	s.keys("Pip")
+	w.close()
+	if len(w.layer.Objects) == 0 || len(s.app.windows) != 1 {
+		t.Fatal("the window was closed over a page that is not kept")
+	}
+	s.key(fyne.KeyReturn) // keep and close
+	s.until("the window gone", func() bool { return len(s.app.windows) == 0 })
+	if !p.done {
+		t.Error("the page was not kept")
+	}
+	list, err := s.app.records.Caseload(context.Background())
+	found := false
+	for _, x := range list {
+		found = found || x.Name == "Pip"
+	}
+	if err != nil || !found {
+		t.Errorf("Pip is not in the store, %v", err)
+	}
+}
+
+// What was typed on a page comes back after another screen was looked at.
+func TestADraftSurvivesAnotherScreen(t *testing.T) {
+	s := newStage(t, view.Settings{})
+	w := s.demo()
+	w.goTo(view.Route{Screen: view.ScreenPatient})
+	s.keys("Pip")
+	s.show(view.ScreenCaseload, exam.ID{})
+	w.goTo(view.Route{Screen: view.ScreenPatient})
+	if got := w.page.(*patientPage).form.Name; got != "Pip" {
+		t.Errorf("the page holds %q", got)
+	}
+}

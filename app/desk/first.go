@@ -122,7 +122,7 @@ func (p *firstRunPage) demo() {
 
 func (p *firstRunPage) failed(err error) {
 	p.busy = false
-	p.said.In(look.Worse).Set(err.Error())
+	p.said.In(look.Worse).Set(sentence(err.Error()))
 }
 
 // unlockPage asks for the passphrase of a store.
@@ -151,7 +151,7 @@ func (p *unlockPage) content() fyne.CanvasObject { return p.root }
 func (p *unlockPage) shown()                     { p.win.win.Canvas().Focus(p.pass) }
 func (p *unlockPage) left()                      {}
 func (p *unlockPage) open()                      { p.win.app.open(p.win, p.dir, []byte(p.pass.Text)) }
-func (p *unlockPage) wrong(err error)            { p.box.Wrong(err.Error()) }
+func (p *unlockPage) wrong(err error)            { p.box.Wrong(sentence(err.Error())) }
 
 // openingPage shows that something long is under way.
 type openingPage struct {
@@ -191,7 +191,7 @@ func newFailedPage(w *window, dir string, err error) *failedPage {
 	again := mark.NewButton(words.T("Try again"), "", func() { w.app.open(w, dir, nil) }).As(mark.Main)
 	other := mark.NewButton(words.T("Another practice"), "", func() { w.bare(newFirstRunPage(w, w.app.opener.DefaultDir())) })
 	return &failedPage{bareFrame(words.T("The practice cannot be opened"),
-		mark.NewPara(err.Error()), mark.NewPara(words.T("Its data lie in %s; nothing in there was changed.", dir)).In(look.InkSoft),
+		mark.NewPara(sentence(err.Error())), mark.NewPara(words.T("Its data lie in %s; nothing in there was changed.", dir)).In(look.InkSoft),
 		mark.Row(look.Unit, []float32{0, 1, 0}, again, mark.Space(1, 1), other))}
 }
 

@@ -27,7 +27,8 @@ type patientPage struct {
 	miss     *fyne.Container
 	root     fyne.CanvasObject
 	done     bool
-	restored bool // the page was left with something typed on it, which is here again
+	after    func() // what comes once the page is kept, instead of another screen
+	restored bool   // the page was left with something typed on it, which is here again
 }
 
 func newPatientPage(w *window, before exam.Patient) *patientPage {
@@ -51,7 +52,7 @@ func (p *patientPage) shown() {
 // left remembers what was typed and not kept, so that no other screen costs it.
 func (p *patientPage) left() {
 	delete(p.win.app.drafts, p.before.ID)
-	if !p.done && !reflect.DeepEqual(p.form, view.NewPatientForm(p.before)) {
+	if p.unkept() {
 		p.win.app.drafts[p.before.ID] = p.form
 	}
 }
@@ -294,6 +295,19 @@ func goalChoices() (shown, values []string) {
 	return shown, values
 }
 
+// unkept reports whether something was typed that is not kept yet.
+func (p *patientPage) unkept() bool {
+	return !p.done && !reflect.DeepEqual(p.form, view.NewPatientForm(p.before))
+}
+
+// keepAnd keeps the page and then goes on.
+func (p *patientPage) keepAnd(do func()) {
+	p.after = do
+	p.keep()
+}
+
+func (p *patientPage) forget() { p.done = true }
+
 func (p *patientPage) keep() { p.keepThen(view.ScreenCourse) }
 
 // keepThen writes the page and goes on to a screen of the animal.
@@ -331,6 +345,10 @@ func (p *patientPage) keepThen(next view.Screen) {
 		}
 		return func() {
 			a.lastPatient = after.ID
+			if p.after != nil {
+				p.after()
+				return
+			}
 			if isNew && next == view.ScreenCourse {
 				p.win.goTo(view.Route{Screen: view.ScreenCaseload})
 				p.win.foot.say(words.T("%s is in the caseload. Enter starts the first exam.", after.Name))

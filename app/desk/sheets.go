@@ -83,6 +83,14 @@ func (w *window) askLoss(err error) {
 	w.showSheet(words.T("Not yet saved"), body, 560, lose, again)
 }
 
+// askKeep asks what becomes of a page that is not kept yet when its window is closed.
+func (w *window) askKeep(u unkept) {
+	lose := mark.NewButton(words.T("Close without keeping"), "", func() { u.forget(); w.hideSheet(); w.close() })
+	keep := mark.NewButton(words.T("Keep and close"), "tick", func() { w.hideSheet(); u.keepAnd(w.close) }).As(mark.Main)
+	w.showSheet(words.T("Not kept yet"), mark.NewPara(words.T("What was typed on this page is not kept yet.")), 520, lose, keep)
+	w.win.Canvas().Focus(keep)
+}
+
 // globalKeys are the keys that work on every screen.
 func globalKeys() []view.KeyHelp {
 	return []view.KeyHelp{

@@ -24,11 +24,16 @@ type page interface {
 
 // Optional abilities of a page.
 type (
-	runeTaker  interface{ typedRune(r rune) bool }
-	keyTaker   interface{ typedKey(name fyne.KeyName) bool }
-	helper     interface{ help() []view.KeyHelp }
-	undoer     interface{ undo(redo bool) }
-	closer     interface{ close() }
+	runeTaker interface{ typedRune(r rune) bool }
+	keyTaker  interface{ typedKey(name fyne.KeyName) bool }
+	helper    interface{ help() []view.KeyHelp }
+	undoer    interface{ undo(redo bool) }
+	closer    interface{ close() }
+	unkept    interface {
+		unkept() bool      // something was typed that is not kept yet
+		keepAnd(do func()) // keep it, then go on
+		forget()           // let it go
+	}
 	footWriter interface{ foot() fyne.CanvasObject }
 )
 
@@ -312,6 +317,10 @@ func (w *window) typedRune(r rune) {
 
 // close waits for what is not yet saved, then closes the window; the last one ends the program.
 func (w *window) close() {
+	if u, ok := w.page.(unkept); ok && u.unkept() && len(w.layer.Objects) == 0 {
+		w.askKeep(u)
+		return
+	}
 	w.app.rememberWindow(w)
 	if w.page != nil {
 		w.page.left()
