@@ -85,6 +85,8 @@ type Entry struct {
 	Patient  exam.ID            `json:"patient,omitzero"`
 	Record   exam.ID            `json:"record,omitzero"`
 	Reason   string             `json:"reason,omitempty"`
+
+	order change.HLC // At, and the order within a millisecond
 }
 
 // Read returns the audit from a time on, in the order of time. Entries that make a record are told
@@ -107,7 +109,7 @@ func Read(ctx context.Context, s *storage.Store, since time.Time) ([]Entry, erro
 				return nil // check names what cannot be read
 			}
 			for _, c := range b.Changes {
-				e := Entry{At: c.Time.Time(), Examiner: c.Examiner, Device: f.Stream.Device, Patient: c.Patient, Record: c.Record, Reason: c.Reason}
+				e := Entry{At: c.Time.Time(), order: c.Time, Examiner: c.Examiner, Device: f.Stream.Device, Patient: c.Patient, Record: c.Record, Reason: c.Reason}
 				if t, ok := made[c.Record]; (!ok || c.Time < t) && (c.Kind == change.KindPatient || c.Kind == change.KindVisit) {
 					e := e
 					e.Did, e.What = Made, "patient"
@@ -153,7 +155,9 @@ func Read(ctx context.Context, s *storage.Store, since time.Time) ([]Entry, erro
 			out = append(out, e)
 		}
 	}
-	slices.SortStableFunc(out, func(a, b Entry) int { return cmp.Or(a.At.Compare(b.At), cmp.Compare(a.Examiner, b.Examiner)) })
+	slices.SortStableFunc(out, func(a, b Entry) int {
+		return cmp.Or(cmp.Compare(a.order, b.order), cmp.Compare(a.Examiner, b.Examiner))
+	})
 	return out, nil
 }
 
