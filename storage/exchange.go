@@ -814,6 +814,32 @@ func (s *Store) SetKeys(ring *key.Ring) error {
 	return nil
 }
 
+// Relock changes how the store opens from now on: by any of the openers, and in no other way.
+func (s *Store) Relock(openers ...key.Opener) error {
+	s.write.Lock()
+	defer s.write.Unlock()
+	s.follow.Lock()
+	defer s.follow.Unlock()
+	s.mu.Lock()
+	defer s.mu.Unlock()
+	if s.shut {
+		return ErrShut
+	}
+	bag, id := s.bag, s.id
+	var err error
+	if id.Keys, err = bag.Lock(key.Usual, openers...); err != nil {
+		return explain("changing how the practice opens", err)
+	}
+	if id.Protected, err = key.Protected(id.Keys); err != nil {
+		return explain("changing how the practice opens", err)
+	}
+	if err := writeIdentity(s.fs, s.dir, id); err != nil {
+		return explain("changing how the practice opens", err)
+	}
+	s.id, s.bag = id, bag
+	return nil
+}
+
 // SetLimits says, for streams of devices that were removed, up to which number their entries
 // count. What lies beyond is kept in the journal and shown by Quarantined. Where that changes what
 // counts, the index is built anew.

@@ -22,7 +22,8 @@ import (
 type Unlock struct {
 	KeyFile    string // file with the key; Create makes it if it is not there
 	Passphrase []byte
-	KeyInStore bool // Create only: no protection, the key lies in the store
+	Keyring    *key.Secret // the key from the user's system keyring, where that was chosen
+	KeyInStore bool        // Create only: no protection, the key lies in the store
 }
 
 // ErrLocked means that the store needs a passphrase or a key file, or that the one given is
@@ -184,6 +185,8 @@ func newIdentity(fsys disk.FS, u Unlock, now time.Time, join *joined) (identity,
 		if opener, err = readKeyFile(fsys, u.KeyFile); err != nil {
 			return id, bag, err
 		}
+	case u.Keyring != nil:
+		opener = key.Keyring(*u.Keyring)
 	case u.KeyInStore:
 		opener, id.Protected = key.InStore(), false
 	default:
@@ -225,6 +228,8 @@ func (id identity) unlock(fsys disk.FS, u Unlock) (key.Bag, error) {
 			if opener, err = readKeyFile(fsys, u.KeyFile); err != nil {
 				return key.Bag{}, err
 			}
+		case u.Keyring != nil:
+			opener = key.Keyring(*u.Keyring)
 		default:
 			return key.Bag{}, fmt.Errorf("%w: it needs its passphrase or its key file", ErrLocked)
 		}
