@@ -29,6 +29,8 @@ type caseloadPage struct {
 	chosen exam.ID
 	only   bool
 	hide   bool
+	busy   bool // the caseload is being read
+	later  bool // Enter was pressed before it was there
 }
 
 func newCaseloadPage(w *window) *caseloadPage {
@@ -111,6 +113,7 @@ func (p *caseloadPage) help() []view.KeyHelp {
 // load reads the caseload off the drawing goroutine.
 func (p *caseloadPage) load() {
 	a := p.win.app
+	p.busy = true
 	a.work(func(ctx context.Context) (func(), error) {
 		if err := a.saver.Flush(ctx); err != nil {
 			return nil, err
@@ -122,6 +125,7 @@ func (p *caseloadPage) load() {
 		c := view.NewCaseload(list, a.now())
 		return func() {
 			a.caseload = c
+			p.busy = false
 			if p.win.page != page(p) {
 				return
 			}
@@ -130,6 +134,10 @@ func (p *caseloadPage) load() {
 			c.Search(p.search.Text)
 			p.cases = c
 			p.refresh()
+			if p.later {
+				p.later = false
+				p.start()
+			}
 		}, nil
 	}, func(err error) { p.win.fail(words.T("The caseload cannot be read."), err) })
 }
@@ -166,6 +174,10 @@ func (p *caseloadPage) move(d int) {
 
 // start begins the exam of the chosen animal, or goes on with the unfinished one.
 func (p *caseloadPage) start() {
+	if p.busy && p.win.app.caseload == nil {
+		p.later = true
+		return
+	}
 	i := p.at()
 	if i < 0 {
 		if p.cases.Len() == 0 {

@@ -191,7 +191,7 @@ type importLine struct {
 	widget.BaseWidget
 	page *importPage
 	row  int
-	take *widget.Check
+	take *mark.Check
 	text *mark.Text
 	note *mark.Text
 	box  *fyne.Container
@@ -199,7 +199,7 @@ type importLine struct {
 
 func newImportLine(p *importPage) *importLine {
 	l := &importLine{page: p, text: mark.Line("").AtLeast(60), note: mark.Line("").AtLeast(60)}
-	l.take = widget.NewCheck("", nil)
+	l.take = mark.Tick("", false, nil)
 	l.box = mark.Row(look.Unit, []float32{0, 1.2, 1}, l.take, l.text, l.note)
 	l.ExtendBaseWidget(l)
 	return l

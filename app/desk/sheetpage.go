@@ -33,6 +33,7 @@ type sheetPage struct {
 	about   *mark.Para
 	doc     sheet.Document
 	turn    int
+	later   bool  // saving was asked for before the paper was made
 	refused error // why there is no sheet
 
 	root    fyne.CanvasObject
@@ -205,6 +206,10 @@ func (p *sheetPage) show(doc sheet.Document, pages []image.Image) {
 		p.notes.Add(cautionLine(words.Of(w)))
 	}
 	p.notes.Refresh()
+	if p.later {
+		p.later = false
+		p.askSave()
+	}
 }
 
 func (p *sheetPage) refuse(err error) {
@@ -215,6 +220,7 @@ func (p *sheetPage) refuse(err error) {
 
 func (p *sheetPage) askSave() {
 	if len(p.doc.PDF) == 0 {
+		p.later = p.refused == nil // still being made: asked once it is there
 		return
 	}
 	data := p.doc.PDF

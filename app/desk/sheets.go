@@ -29,6 +29,7 @@ func (w *window) showSheet(title string, body fyne.CanvasObject, width float32, 
 		mark.Title(title).AtLeast(100), scroll, mark.Row(look.Unit, []float32{1}, row...))))
 	w.layer.Objects = []fyne.CanvasObject{newCatcher(veil, w.hideSheet), &fyne.Container{Layout: &sheetLayout{width, body}, Objects: []fyne.CanvasObject{card}}}
 	w.layer.Refresh()
+	w.win.SetTitle(words.T("%s – Cordwalk", title))
 	w.win.Canvas().Unfocus()
 	w.win.Canvas().Focus(done)
 }
@@ -40,6 +41,7 @@ func (w *window) hideSheet() {
 	}
 	w.layer.Objects = nil
 	w.layer.Refresh()
+	w.win.SetTitle(w.title())
 	w.win.Canvas().Unfocus()
 	if w.page != nil {
 		w.page.shown()

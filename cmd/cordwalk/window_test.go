@@ -254,9 +254,8 @@ func TestTheMainJobInARealWindow(t *testing.T) {
 	// The sheet, saved as a file.
 	s.keys("ctrl+5")
 	s.title("Sheet: Rex")
-	time.Sleep(1500 * time.Millisecond)
 	s.keys("s")
-	time.Sleep(400 * time.Millisecond)
+	s.title("Save")
 	pdf := filepath.Join(t.TempDir(), "rex.pdf")
 	s.keys("ctrl+a")
 	s.words(pdf)

@@ -124,11 +124,20 @@ func PassKey(o fyne.CanvasObject, e *fyne.KeyEvent) { passKey(o, e) }
 // PassRune gives a letter to the window.
 func PassRune(o fyne.CanvasObject, r rune) { passRune(o, r) }
 
-// Tick is a box to tick with words beside it.
-func Tick(words string, on bool, changed func(bool)) *widget.Check {
-	c := widget.NewCheck(words, changed)
-	c.Checked = on
+// Check is a box to tick with words beside it, as high as a target.
+type Check struct{ widget.Check }
+
+// Tick returns a box to tick.
+func Tick(words string, on bool, changed func(bool)) *Check {
+	c := &Check{}
+	c.Text, c.Checked, c.OnChanged = words, on, changed
+	c.ExtendBaseWidget(c)
 	return c
+}
+
+// MinSize is at least the target's in both directions.
+func (c *Check) MinSize() fyne.Size {
+	return c.Check.MinSize().Max(fyne.NewSize(look.Target, look.Target))
 }
 
 // Pick is a list to choose one word from, with the outline of a field.

@@ -190,7 +190,7 @@ func TestTargetsAreLargeEnough(t *testing.T) {
 		themed(t, look.Light, scale)
 		for name, o := range map[string]fyne.CanvasObject{
 			"button": NewButton("ok", "", nil), "icon button": NewButton("", "close", nil), "grade": NewGrade(view.Bead{}, "0", "no", nil),
-			"field": NewField("", nil), "choice": Choice([]string{"a"}, []string{"a"}, "a", func(string) {}),
+			"field": NewField("", nil), "tick": Tick("", false, nil), "choice": Choice([]string{"a"}, []string{"a"}, "a", func(string) {}),
 		} {
 			if m := o.MinSize(); m.Height < look.Target || m.Width < look.Target {
 				t.Errorf("%s at %.0f %% is %.0f × %.0f px", name, scale*100, m.Width, m.Height)
