@@ -295,7 +295,7 @@ func (c *Client) session(ctx context.Context) error {
 	defer tick.Stop()
 	slow := time.NewTicker(2 * time.Second)
 	defer slow.Stop()
-	var lastHead []byte
+	var heard told
 	for {
 		select {
 		case <-ctx.Done():
@@ -324,7 +324,7 @@ func (c *Client) session(ctx context.Context) error {
 			if err := c.exchangeMembers(ctx); err != nil {
 				return err
 			}
-			if lastHead, err = c.leaveHead(ctx, lastHead); err != nil {
+			if err := c.leaveHead(ctx, &heard); err != nil {
 				return err
 			}
 			if err := c.ask(ctx, info.State.LastSeq); err != nil {
@@ -671,11 +671,20 @@ func (c *Client) head(data []byte) {
 	}
 }
 
-// leaveHead tells the others what we hold, if that has changed.
-func (c *Client) leaveHead(ctx context.Context, last []byte) ([]byte, error) {
+// told remembers what this device has told the others that it holds.
+type told struct {
+	sent, seen string // digests of what was held when a head was sent, and at the last look
+	at         time.Time
+}
+
+// busyHead is how often a device tells what it holds while that goes on changing.
+const busyHead = 10 * time.Second
+
+// leaveHead tells the others what we hold, if that has changed: when it has come to rest, or now and then.
+func (c *Client) leaveHead(ctx context.Context, t *told) error {
 	held, err := c.o.Journal.Streams(ctx)
 	if err != nil {
-		return last, err
+		return err
 	}
 	bag := c.o.Bag()
 	h := carry.Head{Practice: bag.Practice, Device: c.o.Incarnation()}
@@ -683,25 +692,25 @@ func (c *Client) leaveHead(ctx context.Context, last []byte) ([]byte, error) {
 		h.Streams = append(h.Streams, carry.Reach{Device: x.Stream.Device, Site: x.Stream.Site, Last: x.Last, Hash: x.Hash})
 	}
 	if h.Sums, err = c.o.Journal.Sums(ctx); err != nil {
-		return last, err
+		return err
 	}
-	plain, err := h.Encode(bag.Device)
-	if err != nil || bytes.Equal(plain, last) {
-		// The same as before; but is it still there?
-		if _, err := c.js.Stream(ctx, Heads); err != nil {
-			return nil, err
-		}
-		return last, err
+	now := c.o.Now()
+	digest := fmt.Sprint(h)
+	quiet := digest == t.seen
+	t.seen = digest
+	if digest == t.sent || !quiet && now.Sub(t.at) < busyHead {
+		return nil
 	}
-	h.Time = change.HLCAt(c.o.Now())
+	h.Time = change.HLCAt(now)
 	data, err := h.Encode(bag.Device)
 	if err != nil {
-		return last, err
+		return err
 	}
 	if _, err := c.js.Publish(ctx, "cw.head."+Who(bag.Device.Verifier()), data); err != nil {
-		return last, fmt.Errorf("telling the others what this device holds: %w", err)
+		return fmt.Errorf("telling the others what this device holds: %w", err)
 	}
-	return plain, nil
+	t.sent, t.at = digest, now
+	return nil
 }
 
 // want says which numbers of a stream somebody lacks.
