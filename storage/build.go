@@ -92,6 +92,7 @@ type builder struct {
 	spill    disk.File
 	spillEnd int64
 	spilled  [parts][]stretch
+	total    int64 // bytes of journal
 	aead     cipher.AEAD
 }
 
@@ -106,7 +107,7 @@ func (b *builder) build() (indexState, []Problem, error) {
 		return b.st, nil, err
 	}
 	path := filepath.Join(b.dir, indexFile)
-	x, err := createIndex(b.fs, path, b.seals, b.lives)
+	x, err := createIndex(b.fs, path, b.seals, b.lives, b.total/2)
 	if err != nil {
 		return b.st, nil, err
 	}
@@ -127,6 +128,7 @@ func (b *builder) deal() error {
 	for _, s := range segs {
 		total += s.size
 	}
+	b.total = total
 	fl := follower{ctx: b.ctx, fs: b.fs, keys: b.bag.Ring, state: &b.st, each: b.dealBatch, parallel: true, limits: b.limits,
 		problem: func(p Problem) { b.problems = append(b.problems, p) },
 		read: func(n int64) {
@@ -319,9 +321,16 @@ func (b *builder) workOut(i int, gaps []timedGap) (f filled) {
 	for _, o := range order {
 		m := manifest{Patient: o.id}
 		first := len(f.records)
+		v := view{gaps: gaps}
 		for _, r := range o.rs {
 			k := b.seals.recordKey(r.key())
-			f.records = append(f.records, pair{k, b.seals.seal(bucketRecords, k, r.encode())})
+			plain := r.encode()
+			if r.kind == KindVisit {
+				v.plain = append(v.plain, plain) // read the short way below
+			} else {
+				v.records = append(v.records, r)
+			}
+			f.records = append(f.records, pair{k, b.seals.seal(bucketRecords, k, plain)})
 			if r.kind == KindVisit {
 				pk := k[nameSize:]
 				f.places = append(f.places, pair{pk, b.seals.seal(bucketPlaces, pk, o.id[:])})
@@ -345,7 +354,7 @@ func (b *builder) workOut(i int, gaps []timedGap) (f filled) {
 			return filled{err: err}
 		}
 		f.patients = append(f.patients, pair{o.key, b.seals.seal(bucketPatients, o.key, plain)})
-		rec, ok, err := store.assemble(o.id, view{records: o.rs, gaps: gaps})
+		rec, ok, err := store.assemble(o.id, v)
 		if err != nil {
 			return filled{err: err}
 		}
@@ -364,18 +373,22 @@ func (b *builder) gather(data []byte) (map[exam.ID][]*record, error) {
 	names := map[string]string{} // one string for each field name
 	r := &reader{b: data}
 	var last *record
+	var slab []change.Change // most fields have one version: they are made many at a time
 	for len(r.b) > 0 && !r.bad {
-		var c change.Change
+		if len(slab) == 0 {
+			slab = make([]change.Change, 128)
+		}
+		c := &slab[0]
 		h.kind = Kind(r.uvarint())
 		h.patient, h.id = r.id(), r.id()
 		name := r.bytes()
-		r.version(&c, &h)
+		r.version(c, &h)
 		var ok bool
 		if c.Field, ok = names[string(name)]; !ok {
 			c.Field = string(name)
 			names[c.Field] = c.Field
 		}
-		k := keyOf(c)
+		k := keyOf(*c)
 		rec := last
 		if rec == nil || rec.key() != k {
 			if rec = byKey[k]; rec == nil {
@@ -384,7 +397,8 @@ func (b *builder) gather(data []byte) (map[exam.ID][]*record, error) {
 				out[c.Patient] = append(out[c.Patient], rec)
 			}
 		}
-		rec.fields = append(rec.fields, field{c.Field, []change.Change{c}})
+		rec.fields = append(rec.fields, field{c.Field, slab[:1:1]})
+		slab = slab[1:]
 		last = rec
 	}
 	if r.bad {

@@ -288,8 +288,9 @@ func (x *index) putState(tx *bbolt.Tx, st indexState) error {
 	return tx.Bucket(bucketMeta).Put(keyState, x.seal(bucketMeta, keyState, plain))
 }
 
-// createIndex makes an empty index beside its place. finish gives it its name.
-func createIndex(fsys disk.FS, path string, s *seals, lives []string) (*index, error) {
+// createIndex makes an empty index beside its place, which is expected to grow to about size.
+// finish gives it its name.
+func createIndex(fsys disk.FS, path string, s *seals, lives []string, size int64) (*index, error) {
 	tmp := disk.Temporary(path)
 	if err := fsys.Remove(tmp); err != nil && !errors.Is(err, fs.ErrNotExist) {
 		return nil, err
@@ -300,7 +301,8 @@ func createIndex(fsys disk.FS, path string, s *seals, lives []string) (*index, e
 	var x *index
 	err := guard(func() error {
 		o := boltOptions()
-		o.NoSync, o.NoGrowSync = true, true // nothing relies on it until finish has synced it
+		o.NoSync, o.NoGrowSync = true, true       // nothing relies on it until finish has synced it
+		o.InitialMmapSize = int(min(size, 1<<30)) // mapped once, not anew at each growth
 		db, err := bbolt.Open(tmp, 0o600, o)
 		if err != nil {
 			return err

@@ -294,25 +294,28 @@ func certain(x int) question { return question{options: []int{x}} }
 // open questions matter.
 func ladder(x Value, qs []question, level func(a []int) (l float64, ok bool)) Value {
 	answers := make([]int, len(qs))
-	var walk func(k, skip int, each func())
-	walk = func(k, skip int, each func()) {
+	// walk tries the combinations until each returns false.
+	var walk func(k, skip int, each func() bool) bool
+	walk = func(k, skip int, each func() bool) bool {
 		if k == len(qs) {
-			each()
-			return
+			return each()
 		}
 		if k == skip {
-			walk(k+1, skip, each)
-			return
+			return walk(k+1, skip, each)
 		}
 		for _, o := range qs[k].options {
 			answers[k] = o
-			walk(k+1, skip, each)
+			if !walk(k+1, skip, each) {
+				return false
+			}
 		}
+		return true
 	}
-	walk(0, -1, func() {
+	walk(0, -1, func() bool {
 		if l, ok := level(answers); ok && !slices.Contains(x.Levels, l) {
 			x.Levels = append(x.Levels, l)
 		}
+		return true
 	})
 	slices.Sort(x.Levels)
 	if len(x.Levels) == 0 {
@@ -327,10 +330,7 @@ func ladder(x Value, qs []question, level func(a []int) (l float64, ok bool)) Va
 			continue
 		}
 		matters := false
-		walk(0, k, func() {
-			if matters {
-				return
-			}
+		walk(0, k, func() bool {
 			answers[k] = q.options[0]
 			first, had := level(answers)
 			for _, o := range q.options[1:] {
@@ -339,6 +339,7 @@ func ladder(x Value, qs []question, level func(a []int) (l float64, ok bool)) Va
 					matters = true
 				}
 			}
+			return !matters
 		})
 		if matters {
 			for _, m := range q.missing {

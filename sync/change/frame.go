@@ -223,9 +223,11 @@ func Open(f Frame, keys Keys) (Batch, error) {
 	if err != nil {
 		return Batch{}, where(ErrSealed)
 	}
-	b, err := DecodeBatch(plain, f.Stream, f.First, f.Minor)
-	if err != nil {
-		return Batch{}, where(err)
+	b, ok := quickBatch(plain, f.Stream, f.First)
+	if !ok {
+		if b, err = slowBatch(plain, f.Stream, f.First, f.Minor); err != nil {
+			return Batch{}, where(err)
+		}
 	}
 	if b.Last() != f.Last {
 		return Batch{}, where(fmt.Errorf("%w: it holds %d changes", ErrMalformed, len(b.Changes)))

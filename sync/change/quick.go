@@ -1,7 +1,6 @@
 package change
 
 import (
-	"bytes"
 	"encoding/binary"
 	"unicode/utf8"
 )
@@ -116,9 +115,10 @@ func (q *quick) positive(most uint64) uint64 {
 	return n
 }
 
-// quickBatch is DecodeBatch for the usual case; false means that it has to be asked.
+// quickBatch is DecodeBatch for the usual case; false means that it has to be asked. The values
+// are slices of data, which must not be changed afterwards.
 func quickBatch(data []byte, s Stream, first uint64) (Batch, bool) {
-	q := &quick{b: bytes.Clone(data)} // values are slices of this copy
+	q := &quick{b: data}
 	b := Batch{Stream: s, First: first}
 	pairs := q.head(0xa0)
 	if pairs == 2 && q.head(0) == 1 {

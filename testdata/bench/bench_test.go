@@ -48,19 +48,29 @@ func sqlite(b *testing.B, dir string) *sql.DB {
 }
 
 // pair keeps the times of two sides that are measured in turn.
-type pair struct{ ours, theirs time.Duration }
+type pair struct{ ours, theirs, oursCPU, theirsCPU time.Duration }
 
 func (p pair) report(b *testing.B, ours, theirs string) {
 	b.ReportMetric(0, "ns/op")
 	b.ReportMetric(float64(p.ours.Nanoseconds())/float64(b.N)/1e3, "us-"+ours)
 	b.ReportMetric(float64(p.theirs.Nanoseconds())/float64(b.N)/1e3, "us-"+theirs)
 	b.ReportMetric(float64(p.ours)/float64(p.theirs), "ratio")
+	if p.theirsCPU > 0 {
+		b.ReportMetric(float64(p.oursCPU)/float64(p.theirsCPU), "cpu-ratio")
+	}
 }
 
 func timed(d *time.Duration, f func()) {
 	t := time.Now()
 	f()
 	*d += time.Since(t)
+}
+
+// measured is timed with the processors' time beside it, which tells the cost where the machine is busy.
+func measured(d, cpu *time.Duration, f func()) {
+	c := processors()
+	timed(d, f)
+	*cpu += processors() - c
 }
 
 // BenchmarkDurableFinding: one finding, from the call to saved, against SQLite storing a row of
@@ -255,9 +265,9 @@ func BenchmarkRebuild(b *testing.B) {
 			keys, values := entries(m.Changes)
 			var t pair
 			for b.Loop() {
-				timed(&t.ours, func() { err = storage.Rebuild(ctx, m.Dir, storagetest.Options()) })
+				measured(&t.ours, &t.oursCPU, func() { err = storage.Rebuild(ctx, m.Dir, storagetest.Options()) })
 				require.NoError(b, err)
-				timed(&t.theirs, func() { err = load(filepath.Join(dir, "bare.db"), keys, values) })
+				measured(&t.theirs, &t.theirsCPU, func() { err = load(filepath.Join(dir, "bare.db"), keys, values) })
 				require.NoError(b, err)
 				require.NoError(b, os.Remove(filepath.Join(dir, "bare.db")))
 			}

@@ -5,6 +5,7 @@ import (
 	"os"
 	"path/filepath"
 	"testing"
+	"time"
 
 	"github.com/stretchr/testify/require"
 	"golang.org/x/sys/unix"
@@ -27,4 +28,13 @@ func forget(b *testing.B, dir string) {
 		}
 		return unix.Fadvise(int(f.Fd()), 0, 0, unix.FADV_DONTNEED)
 	}))
+}
+
+// processors returns the processors' time that this process has used.
+func processors() time.Duration {
+	var u unix.Rusage
+	if unix.Getrusage(unix.RUSAGE_SELF, &u) != nil {
+		return 0
+	}
+	return time.Duration(u.Utime.Nano() + u.Stime.Nano())
 }
