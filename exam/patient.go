@@ -111,6 +111,7 @@ type Patient struct {
 	Precautions  []PrecautionOn
 	Goals        []Goal
 	Medicines    []Medicine
+	Sent         []Sent        // papers that were written to be sent, oldest first
 	Weights      []WeightPoint // of all visits, oldest first; derived from the visits' measures
 	Note         string
 	Demo         bool // belongs to the demo practice

@@ -3,6 +3,7 @@ package storage_test
 import (
 	"fmt"
 	"slices"
+	"strings"
 	"testing"
 	"time"
 
@@ -42,6 +43,8 @@ func TestEveryFieldGoesThereAndBack(t *testing.T) {
 	p2.Problems = append(slices.Clone(p.Problems), exam.Problem{ID: storage.NewID(), Diagnosis: "neuritis", Side: "left", Resolved: "2026-04"})
 	p2.Problems[0].Note = "operated"
 	p2.Precautions, p2.Goals, p2.Medicines = nil, nil, nil
+	p2.Sent = []exam.Sent{{ID: storage.NewID(), Visit: v.ID, At: at("2026-03-03T08:00:00+01:00"), Kind: "sheet", Examiner: "R. Okafor", Language: "fr", Summary: "Fern va mieux.", Reworded: true, Hash: "ab12", Note: "confirmed"},
+		{ID: storage.NewID(), Visit: v.ID, At: at("2026-03-03T09:00:00+01:00"), Kind: "letter"}}
 	apply(t, s, storage.PatientEdits(p, p2)...)
 	v2 := v
 	v2.Examined, v2.Zone, v2.Examiner, v2.Protocol = at("2026-03-02T23:30:00-05:00"), "America/New_York", "B. Lund", "weekly"
@@ -57,6 +60,17 @@ func TestEveryFieldGoesThereAndBack(t *testing.T) {
 	require.Empty(t, r.Unshown)
 	require.Empty(t, storage.PatientEdits(r.Patient, p2), "what was read differs from what was saved")
 	require.Empty(t, storage.PatientEdits(p2, r.Patient))
+	require.Len(t, r.Patient.Sent, 2)
+	for i, x := range r.Patient.Sent {
+		require.True(t, x.At.Equal(p2.Sent[i].At))
+		x.At = p2.Sent[i].At
+		require.Equal(t, p2.Sent[i], x)
+	}
+	h, err := s.History(p.ID)
+	require.NoError(t, err)
+	require.True(t, slices.ContainsFunc(h, func(e storage.Entry) bool {
+		return strings.HasPrefix(e.Value, "sheet, 2026-03-03T08:00:00+01:00, R. Okafor, fr, reworded, SHA-256 ab12…") && strings.Contains(e.Value, "Fern va mieux.")
+	}), "the history tells what was sent")
 	require.Empty(t, storage.VisitEdits(r.Visits[0], v2))
 	require.Empty(t, storage.VisitEdits(v2, r.Visits[0]))
 	require.Equal(t, "2026-03-02T23:30:00-05:00", r.Visits[0].Examined.Format(time.RFC3339), "the day is that of the recorded offset")
@@ -69,13 +83,16 @@ func TestPracticeGoesThereAndBack(t *testing.T) {
 	s := storagetest.Open(t)
 	p := exam.Practice{Name: "Fern Rehab", Contact: exam.Contact{Phone: "555 0100"}, OutOfHours: exam.Contact{Name: "Night"}, Zone: "Europe/Paris", Language: "fr",
 		Paper: "A4", Pounds: true, Demo: true, Examiners: []exam.Examiner{{ID: storage.NewID(), Name: "R. Okafor", Initials: "RO", PINHash: "x"}},
-		Protocols: []exam.Protocol{{Key: "mine", Name: "Mine", Items: []string{"patellar", "withdrawal"}}}}
+		Protocols: []exam.Protocol{{Key: "mine", Name: "Mine", Items: []string{"patellar", "withdrawal"}}},
+		Phrases:   []exam.Phrase{{Key: "keep-on", Language: "de", Words: "Weiter so."}, {Key: "keep-on", Language: "en", Words: "Well done."}, {Key: "same", Language: "en", Words: "Nothing new since %s."}},
+		Logo:      []byte("\x89PNG\r\n\x1a\n…")}
 	apply(t, s, storage.PracticeEdits(exam.Practice{}, p)...)
 	got, err := s.Practice()
 	require.NoError(t, err)
 	require.Equal(t, p, got)
 	q := p
 	q.Protocols, q.Examiners, q.Pounds = nil, nil, false
+	q.Phrases, q.Logo = []exam.Phrase{{Key: "keep-on", Language: "en", Words: "Go on."}}, nil
 	apply(t, s, storage.PracticeEdits(p, q)...)
 	got, err = s.Practice()
 	require.NoError(t, err)

@@ -196,6 +196,8 @@ func patientWords(p exam.Patient, name string) string {
 	case len(p.Medicines) > 0:
 		x := p.Medicines[0]
 		return join(", ", x.Name, x.Dose, since("from", x.Start), since("to", x.Stop))
+	case len(p.Sent) > 0:
+		return sentWords(p.Sent[0])
 	}
 	switch name {
 	case "name":
@@ -228,6 +230,19 @@ func patientWords(p exam.Patient, name string) string {
 		return yes(p.Demo)
 	}
 	return ""
+}
+
+// sentWords says what was sent: the kind of paper, the day, the language, the sentences and
+// the beginning of the hash, which is enough to tell two files apart.
+func sentWords(x exam.Sent) string {
+	own, hash := "", ""
+	if x.Reworded {
+		own = "reworded"
+	}
+	if x.Hash != "" {
+		hash = "SHA-256 " + x.Hash[:min(16, len(x.Hash))] + "…"
+	}
+	return join(", ", x.Kind, x.At.Format(time.RFC3339), x.Examiner, x.Language, own, hash, "visit "+x.Visit.String(), x.Summary, x.Note)
 }
 
 func since(word string, d exam.Date) string {
@@ -312,6 +327,8 @@ func practiceWords(p exam.Practice, name string) string {
 		return join(", ", p.Examiners[0].Name, p.Examiners[0].Initials)
 	case len(p.Protocols) > 0:
 		return p.Protocols[0].Name + ": " + strings.Join(p.Protocols[0].Items, ", ")
+	case len(p.Phrases) > 0:
+		return p.Phrases[0].Words
 	}
 	switch name {
 	case "name":
@@ -328,6 +345,8 @@ func practiceWords(p exam.Practice, name string) string {
 		return p.Paper
 	case "pounds":
 		return yes(p.Pounds)
+	case fieldLogo:
+		return strconv.Itoa(len(p.Logo)) + " bytes"
 	case "demo":
 		return yes(p.Demo)
 	}

@@ -407,6 +407,7 @@ func (a *assembler) conflict(r *record, name string, st merge.Field, gaps []time
 func (a *assembler) patientOf(r *record) exam.Patient {
 	p := exam.Patient{ID: r.id}
 	a.each(r, func(name string, v change.Change) error { return a.store.setPatient(&p, name, v.Value) })
+	slices.SortStableFunc(p.Sent, func(x, y exam.Sent) int { return x.At.Compare(y.At) })
 	return p
 }
 
@@ -472,6 +473,12 @@ func (s *Store) setPatient(p *exam.Patient, name string, b []byte) error {
 			}
 			p.Medicines = append(p.Medicines, exam.Medicine{ID: id, Name: w.Name, Dose: w.Dose, Start: w.Start, Stop: w.Stop})
 			return nil
+		case fieldSent:
+			x, err := decodeSent(id, b)
+			if err == nil {
+				p.Sent = append(p.Sent, x)
+			}
+			return err
 		}
 		return errUnknownField
 	}
@@ -688,6 +695,17 @@ func setPractice(p *exam.Practice, name string, b []byte) error {
 		}
 		return err
 	}
+	if rest, ok := strings.CutPrefix(name, fieldPhrase); ok {
+		lang, phrase, ok := strings.Cut(rest, "/")
+		if !ok {
+			return fmt.Errorf("the phrase %q names no language", rest)
+		}
+		own, err := decodeText(b)
+		if err == nil {
+			p.Phrases = append(p.Phrases, exam.Phrase{Key: phrase, Language: lang, Words: own})
+		}
+		return err
+	}
 	switch name {
 	case "name":
 		return setText(&p.Name)(b)
@@ -703,6 +721,10 @@ func setPractice(p *exam.Practice, name string, b []byte) error {
 		return setText(&p.Paper)(b)
 	case "pounds":
 		return setFlag(&p.Pounds)(b)
+	case fieldLogo:
+		raw, err := decodeRaw(b)
+		p.Logo = raw
+		return err
 	case "demo":
 		return setFlag(&p.Demo)(b)
 	}

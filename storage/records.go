@@ -1,6 +1,7 @@
 package storage
 
 import (
+	"bytes"
 	"fmt"
 	"slices"
 	"strings"
@@ -39,8 +40,9 @@ type Edit struct {
 // people who add an item at the same time do not collide.
 //
 //	practice  name contact out-of-hours zone language paper pounds demo examiner/ID protocol/KEY
+//	          phrase/LANGUAGE/KEY logo
 //	patient   name species breed sex neutered born owner veterinarian out-of-hours referral status
-//	          recheck-days note demo problem/ID precaution/ID goal/ID medicine/ID
+//	          recheck-days note demo problem/ID precaution/ID goal/ID medicine/ID sent/ID
 //	visit     examined examiner protocol closed repeat-of sedation aid surface session doses report
 //	          note next-visit finding/CELL measure/CELL treatment/ID home/ID answer/RULE/TIME
 //	edge      same-as/ID of the other patient, see merge.EdgeKey
@@ -56,6 +58,9 @@ const (
 	fieldMedicine   = "medicine/"
 	fieldExaminer   = "examiner/"
 	fieldProtocol   = "protocol/"
+	fieldPhrase     = "phrase/"
+	fieldLogo       = "logo"
+	fieldSent       = "sent/"
 	fieldClosed     = change.FieldClosed
 	fieldOwner      = "owner"
 )
@@ -156,9 +161,25 @@ func PatientEdits(before, after exam.Patient) []Edit {
 	items(d, fieldPrecaution, before.Precautions, after.Precautions, func(x *exam.PrecautionOn) string { return itemID(&x.ID) })
 	items(d, fieldGoal, before.Goals, after.Goals, func(x *exam.Goal) string { return itemID(&x.ID) })
 	items(d, fieldMedicine, before.Medicines, after.Medicines, func(x *exam.Medicine) string { return itemID(&x.ID) })
+	d.sent(before.Sent, after.Sent)
 	d.word("note", before.Note, after.Note)
 	d.flag("demo", before.Demo, after.Demo)
 	return d.edits
+}
+
+// sent papers are never taken back: each is a field of its own. They stand in the patient's
+// record, not in the visit's, so that a closed visit stays as it was closed.
+func (d *differ) sent(before, after []exam.Sent) {
+	had := make(map[exam.ID]bool, len(before))
+	for _, x := range before {
+		had[x.ID] = true
+	}
+	for i := range after {
+		x := &after[i]
+		if name := itemID(&x.ID); !had[x.ID] {
+			d.set(fieldSent+name, encodeSent(*x))
+		}
+	}
 }
 
 // VisitEdits returns the edits that lead from before to after, which must have the visit's
@@ -283,9 +304,32 @@ func PracticeEdits(before, after exam.Practice) []Edit {
 			d.set(fieldProtocol+p.Key, nil)
 		}
 	}
+	d.phrases(before.Phrases, after.Phrases)
+	if !bytes.Equal(before.Logo, after.Logo) {
+		d.set(fieldLogo, encodeRaw(after.Logo))
+	}
 	d.flag("demo", before.Demo, after.Demo)
 	return d.edits
 }
+
+func (d *differ) phrases(before, after []exam.Phrase) {
+	had := make(map[string]string, len(before))
+	for _, x := range before {
+		had[phraseField(x)] = x.Words
+	}
+	for _, x := range after {
+		d.word(phraseField(x), had[phraseField(x)], x.Words)
+		delete(had, phraseField(x))
+	}
+	for _, x := range before {
+		if _, gone := had[phraseField(x)]; gone {
+			d.set(phraseField(x), nil)
+			delete(had, phraseField(x))
+		}
+	}
+}
+
+func phraseField(x exam.Phrase) string { return fieldPhrase + x.Language + "/" + x.Key }
 
 // FindingEdit sets one cell of a visit.
 func FindingEdit(patient, visit exam.ID, f exam.Finding) Edit {

@@ -181,6 +181,18 @@ type wireProtocol struct {
 	Items []string `cbor:"2,keyasint,omitempty"`
 }
 
+type wireSent struct {
+	Visit    []byte       `cbor:"1,keyasint"`
+	At       wireExamined `cbor:"2,keyasint"`
+	Kind     string       `cbor:"3,keyasint"`
+	Examiner string       `cbor:"4,keyasint,omitempty"`
+	Language string       `cbor:"5,keyasint,omitempty"`
+	Summary  string       `cbor:"6,keyasint,omitempty"`
+	Reworded bool         `cbor:"7,keyasint,omitempty"`
+	Hash     string       `cbor:"8,keyasint,omitempty"`
+	Note     string       `cbor:"9,keyasint,omitempty"`
+}
+
 type wireMeasure struct {
 	Value    float64 `cbor:"1,keyasint"`
 	Position string  `cbor:"2,keyasint,omitempty"`
@@ -209,6 +221,16 @@ func encodeFlag(on bool) []byte {
 }
 
 func decodeFlag(b []byte) (on bool, err error) { err = unpack(b, &on); return on, err }
+
+// encodeRaw stores bytes as they are; none clear the field.
+func encodeRaw(b []byte) []byte {
+	if len(b) == 0 {
+		return nil
+	}
+	return pack(b)
+}
+
+func decodeRaw(b []byte) (raw []byte, err error) { err = unpack(b, &raw); return raw, err }
 
 func encodeNumber(n int64) []byte {
 	if n == 0 {
@@ -290,6 +312,24 @@ func encodeClosed(at time.Time) []byte { return pack(wireClosed{wireTime(at, "")
 
 func encodeAnswer(a exam.Acknowledgement) []byte {
 	return pack(wireAnswer{a.Rule, a.Told, a.Note, a.Examiner, wireTime(a.At, "")})
+}
+
+func encodeSent(x exam.Sent) []byte {
+	return pack(wireSent{x.Visit[:], wireTime(x.At, ""), x.Kind, x.Examiner, x.Language, x.Summary, x.Reworded, x.Hash, x.Note})
+}
+
+// decodeSent reads a paper that was sent; its id stands in the field's name.
+func decodeSent(id exam.ID, b []byte) (exam.Sent, error) {
+	var w wireSent
+	if err := unpack(b, &w); err != nil {
+		return exam.Sent{}, err
+	}
+	x := exam.Sent{ID: id, At: w.At.time(), Kind: w.Kind, Examiner: w.Examiner, Language: w.Language, Summary: w.Summary, Reworded: w.Reworded, Hash: w.Hash, Note: w.Note}
+	if len(w.Visit) != len(x.Visit) {
+		return exam.Sent{}, fmt.Errorf("a paper that was sent names no visit")
+	}
+	x.Visit = exam.ID(w.Visit)
+	return x, nil
 }
 
 func encodeMeasure(m exam.Measured) []byte {

@@ -372,6 +372,24 @@ func (o *owner) head(p *page) {
 // unbroken keeps a telephone number on one line.
 func unbroken(s string) string { return strings.Join(strings.Fields(s), "\u00a0") }
 
+// CheckLogo returns an error if a picture cannot stand in the heading of a paper.
+func CheckLogo(data []byte) error {
+	if len(data) > exam.MaxLogo {
+		return fmt.Errorf("the logo has %d KiB; at most %d are kept: save it smaller", len(data)>>10, exam.MaxLogo>>10)
+	}
+	cfg, _, err := image.DecodeConfig(bytes.NewReader(data))
+	if err != nil {
+		return fmt.Errorf("the logo is neither a PNG nor a JPEG picture: %w", err)
+	}
+	if cfg.Width < 1 || cfg.Height < 1 || cfg.Width > 4000 || cfg.Height > 4000 {
+		return fmt.Errorf("the logo is %d by %d dots; up to 4000 by 4000 are taken", cfg.Width, cfg.Height)
+	}
+	if _, _, err := image.Decode(bytes.NewReader(data)); err != nil {
+		return fmt.Errorf("the logo cannot be read to its end: %w", err)
+	}
+	return nil
+}
+
 type logo struct {
 	name, kind string
 	w, h       float64

@@ -18,6 +18,7 @@ import (
 	"github.com/stretchr/testify/require"
 	"pgregory.net/rapid"
 
+	"cordwalk.example/cordwalk/assets/words"
 	"cordwalk.example/cordwalk/exam"
 )
 
@@ -338,7 +339,7 @@ func TestSummaryOverrideAndPhrases(t *testing.T) {
 	assert.Contains(t, textOf(t, doc.PDF), "Bruno had a good week")
 
 	in.Options.Summary = ""
-	in.Options.Phrases = map[string]string{phraseWalksAlone: "%s walks by now.", phraseBetter: "no places", textMedicine: "Give what you like."}
+	in.Options.Phrases = map[string]string{"walks-alone": "%s walks by now.", "better": "no places", "medicine": "Give what you like.", textMedicine: "Give what you like."}
 	doc, err = Owner(in)
 	require.NoError(t, err)
 	text := textOf(t, doc.PDF)
@@ -346,8 +347,45 @@ func TestSummaryOverrideAndPhrases(t *testing.T) {
 	assert.Contains(t, text, "Better than on 13 April 2026: left back leg")
 	assert.Contains(t, text, "Give no medicine your veterinarian did not prescribe", "what keeps an animal safe cannot be reworded")
 	assert.Error(t, CheckPhrase(textMedicine, "x"))
-	assert.Error(t, CheckPhrase(phraseBetter, "no places"))
-	assert.NoError(t, CheckPhrase(phraseSame, "Nothing new since %s."))
+	assert.Error(t, CheckPhrase("better", "no places"))
+	assert.Error(t, CheckPhrase("better", "%[1]s %[1]s"))
+	assert.Error(t, CheckPhrase("same", "50 % as on %s"))
+	assert.Error(t, CheckPhrase("same", "%"))
+	assert.Error(t, CheckPhrase("keep-on", strings.Repeat("x", 301)))
+	assert.NoError(t, CheckPhrase("same", "Nothing new since %s."))
+	assert.NoError(t, CheckPhrase("better", "%[2]s: better than on %[1]s."))
+}
+
+// TestPhraseBank: a wording is kept by name and language, counts in its language alone, and
+// goes back when it is emptied.
+func TestPhraseBank(t *testing.T) {
+	pr := practice()
+	pr, err := SetPhrase(pr, "keep-on", "en-GB", "Well done, go on.")
+	require.NoError(t, err)
+	pr, err = SetPhrase(pr, "keep-on", "de", "Weiter so.")
+	require.NoError(t, err)
+	_, err = SetPhrase(pr, "nothing", "de", "x")
+	require.ErrorContains(t, err, "keep-on")
+	_, err = SetPhrase(pr, "nothing", "de", "")
+	require.Error(t, err)
+	in := patients()["recovery"]
+	for lang, want := range map[string]string{"en": "Well done, go on.", "de-AT": "Weiter so.", "fr": words.OfIn("fr", phraseKeepOn)} {
+		in.Options = Options{Lang: lang, Phrases: OwnPhrases(pr, lang)}
+		doc, err := Owner(in)
+		require.NoError(t, err)
+		assert.Contains(t, doc.Summary, want)
+	}
+	list := Phrases(pr, "de")
+	require.Len(t, list, len(editable))
+	for i, p := range list {
+		assert.Equal(t, editable[i], p.English, "the bank and the list of what can be reworded agree")
+		assert.Regexp(t, `^[a-z-]+$`, p.Key)
+		assert.NoError(t, CheckPhrase(p.Key, p.Standard), "the translation keeps the places")
+	}
+	pr, err = SetPhrase(pr, "keep-on", "de", " ")
+	require.NoError(t, err)
+	assert.Empty(t, OwnPhrases(pr, "de"))
+	assert.Len(t, pr.Phrases, 1)
 }
 
 // TestOtherScripts: Greek and Cyrillic are printed; what the typeface lacks is said.

@@ -2,8 +2,11 @@ package sheet
 
 import (
 	"fmt"
+	"regexp"
 	"slices"
+	"strconv"
 	"strings"
+	"unicode/utf8"
 
 	"cordwalk.example/cordwalk/assets/words"
 	"cordwalk.example/cordwalk/exam"
@@ -113,6 +116,14 @@ var callSigns = []string{
 	"your pet bites or chews its own leg or tail",
 }
 
+// bank lists the phrases that a practice may reword, by the short names under which its
+// wording is kept. Names stay when an English text is mended.
+var bank = []struct{ key, text string }{
+	{"walks-alone", phraseWalksAlone}, {"walks-held", phraseWalksHeld}, {"no-steps", phraseNoSteps}, {"better", phraseBetter}, {"weaker", phraseWeaker},
+	{"same", phraseSame}, {"first", phraseFirst}, {"missed", phraseMissed}, {"unlike", phraseUnlike}, {"maybe", phraseMaybe}, {"gained", phraseGained},
+	{"lost", phraseLost}, {"kept", phraseKept}, {"unsure", phraseUnsure}, {"keep-on", phraseKeepOn}, {"no-home", phraseNoHome},
+}
+
 // editable lists the phrases of the bank.
 var editable = []string{phraseWalksAlone, phraseWalksHeld, phraseNoSteps, phraseBetter, phraseWeaker, phraseSame,
 	phraseFirst, phraseMissed, phraseUnlike, phraseMaybe, phraseGained, phraseLost, phraseKept, phraseUnsure, phraseKeepOn, phraseNoHome}
@@ -124,8 +135,63 @@ var fixedTexts = []string{textTitle, textSeen, textSeenBy, textShort, textChange
 	wordBetter, wordSame, wordWeaker, wordNoTest, wordFirst, wordStrong, wordNoMove, wordAlone, wordCannot, wordSurgery, wordOnset,
 	wordWalking, wordTail, wordBladder, wordBowel, wordPain, wordLeftFore, wordRghtFore, wordLeftHind, wordRghtHind, wordAllLegs, wordForeLegs, wordHindLegs}
 
-// Phrases lists the texts that a practice may put in its own words, in English.
-func Phrases() []string { return slices.Clone(editable) }
+// BankPhrase is a sentence that a practice may put in its own words.
+type BankPhrase struct {
+	Key      string // its short name
+	English  string // the text in English
+	Standard string // the text in the language that was asked for
+	Own      string // the practice's wording in that language, empty where it has none
+}
+
+// Phrases lists the sentences that a practice may put in its own words, with its wording in
+// a language.
+func Phrases(pr exam.Practice, lang string) []BankPhrase {
+	own := OwnPhrases(pr, lang)
+	out := make([]BankPhrase, len(bank))
+	for i, b := range bank {
+		out[i] = BankPhrase{b.key, b.text, words.OfIn(lang, b.text), own[b.key]}
+	}
+	return out
+}
+
+// OwnPhrases returns the practice's own wording in a language by short name, as Options take it.
+func OwnPhrases(pr exam.Practice, lang string) map[string]string {
+	out := map[string]string{}
+	for _, p := range pr.Phrases {
+		if baseTag(p.Language) == baseTag(lang) {
+			out[p.Key] = p.Words
+		}
+	}
+	return out
+}
+
+// SetPhrase returns the practice with a sentence in its own words in a language; empty words
+// go back to the standard text.
+func SetPhrase(pr exam.Practice, key, lang, own string) (exam.Practice, error) {
+	own = strings.TrimSpace(own)
+	if own != "" {
+		if err := CheckPhrase(key, own); err != nil {
+			return pr, err
+		}
+	} else if !slices.ContainsFunc(bank, func(b struct{ key, text string }) bool { return b.key == key }) {
+		return pr, noPhrase(key)
+	}
+	lang = baseTag(lang)
+	pr.Phrases = slices.DeleteFunc(slices.Clone(pr.Phrases), func(p exam.Phrase) bool { return p.Key == key && p.Language == lang })
+	if own != "" {
+		pr.Phrases = append(pr.Phrases, exam.Phrase{Key: key, Language: lang, Words: own})
+	}
+	return pr, nil
+}
+
+// baseTag is the language of a BCP 47 tag without its region; English where none is said.
+func baseTag(tag string) string {
+	b, _, _ := strings.Cut(strings.ToLower(strings.ReplaceAll(tag, "_", "-")), "-")
+	if b == "" {
+		return "en"
+	}
+	return b
+}
 
 // Terms lists every text of the papers that stands in a table, in English, for the
 // catalogue of texts.
@@ -160,24 +226,64 @@ func Terms() []string {
 	return append(out, "medial", "lateral", "flexion", "extension")
 }
 
-// CheckPhrase returns an error if a practice's own wording cannot stand for the phrase:
-// the places for names, days and lists must be the same.
+// maxPhrase is the most letters of a practice's own wording: what still fits beside the picture.
+const maxPhrase = 300
+
+// CheckPhrase returns an error if a practice's own wording cannot stand for the phrase of a
+// short name: the places for names, days and lists must be the same.
 func CheckPhrase(key, own string) error {
-	if !slices.Contains(editable, key) {
-		return fmt.Errorf("the text %q cannot be reworded; the phrases that can are listed by the phrase bank", key)
+	for _, b := range bank {
+		if b.key != key {
+			continue
+		}
+		if !slices.Equal(places(own), places(b.text)) {
+			return fmt.Errorf("the wording %.80q does not keep the places of %q: use the same marks that begin with %%", own, b.text)
+		}
+		if n := utf8.RuneCountInString(own); n > maxPhrase {
+			return fmt.Errorf("the wording has %d letters; at most %d fit on a sheet", n, maxPhrase)
+		}
+		return nil
 	}
-	if verbs(own) != verbs(key) {
-		return fmt.Errorf("the wording %q does not keep the places of %q: use the same %%-marks in the same order", own, key)
+	return noPhrase(key)
+}
+
+func noPhrase(key string) error {
+	names := make([]string, len(bank))
+	for i, b := range bank {
+		names[i] = b.key
 	}
-	return nil
+	return fmt.Errorf("there is no phrase %.40q to reword; the phrases are %s", key, strings.Join(names, ", "))
+}
+
+var placeMark = regexp.MustCompile(`%(\[(\d)\])?(.?)`)
+
+// places returns what is filled into a text, in order of the numbers: "1s", "2s". Marks that
+// are no places are kept as they are, so that they never equal those of a phrase.
+func places(s string) []string {
+	var out []string
+	n := 0
+	for _, m := range placeMark.FindAllStringSubmatch(s, -1) {
+		n++
+		if m[2] != "" {
+			n, _ = strconv.Atoi(m[2])
+		}
+		out = append(out, strconv.Itoa(n)+m[3])
+	}
+	slices.Sort(out)
+	return out
 }
 
 // text writes a text of the tables above in the paper's language, or the practice's own
 // wording of it.
 func (in Input) text(key string, args ...any) string {
 	t := words.OfIn(in.lang(), key)
-	if own, ok := in.Options.Phrases[key]; ok && strings.TrimSpace(own) != "" && CheckPhrase(key, own) == nil {
-		t = own
+	for _, b := range bank {
+		if b.text != key {
+			continue
+		}
+		if own := in.Options.Phrases[b.key]; strings.TrimSpace(own) != "" && CheckPhrase(b.key, own) == nil {
+			t = own
+		}
 	}
 	if len(args) == 0 {
 		return t

@@ -69,6 +69,8 @@ type practiceJSON struct {
 	Pounds     bool            `json:"pounds,omitempty"`
 	Examiners  []exam.Examiner `json:"examiners,omitempty"`
 	Protocols  []exam.Protocol `json:"protocols,omitempty"`
+	Phrases    []exam.Phrase   `json:"phrases,omitempty"`
+	Logo       string          `json:"logo,omitempty"` // base64
 	Demo       bool            `json:"demo,omitempty"`
 }
 
@@ -96,9 +98,23 @@ type patientJSON struct {
 	Precautions  []exam.PrecautionOn `json:"precautions,omitempty"`
 	Goals        []exam.Goal         `json:"goals,omitempty"`
 	Medicines    []exam.Medicine     `json:"medicines,omitempty"`
+	Sent         []sentJSON          `json:"sent,omitempty"`
 	Weights      []weightJSON        `json:"weights,omitempty"`
 	Note         string              `json:"note,omitempty"`
 	Demo         bool                `json:"demo,omitempty"`
+}
+
+type sentJSON struct {
+	ID       exam.ID `json:"id"`
+	Visit    exam.ID `json:"visit"`
+	At       string  `json:"at"`
+	Kind     string  `json:"kind"`
+	Examiner string  `json:"examiner,omitempty"`
+	Language string  `json:"language,omitempty"`
+	Summary  string  `json:"summary,omitempty"`
+	Reworded bool    `json:"reworded,omitempty"`
+	Hash     string  `json:"sha256,omitempty"`
+	Note     string  `json:"note,omitempty"`
 }
 
 type weightJSON struct {
@@ -215,9 +231,9 @@ func unless[T comparable](v T) *T {
 // EncodeRecords writes a records file. The same records give the same bytes.
 func EncodeRecords(w io.Writer, r Records) error {
 	out := recordsJSON{Format: RecordsFormat, Version: RecordsVersion, Made: stamp(r.Made), Animals: []animalJSON{}}
-	if p := r.Practice; p.Name != "" || p.Zone != "" || len(p.Examiners) > 0 || len(p.Protocols) > 0 || p.Demo {
+	if p := r.Practice; p.Name != "" || p.Zone != "" || len(p.Examiners) > 0 || len(p.Protocols) > 0 || len(p.Phrases) > 0 || len(p.Logo) > 0 || p.Demo {
 		pj := practiceJSON{Name: p.Name, Contact: unless(p.Contact), OutOfHours: unless(p.OutOfHours), Zone: p.Zone, Language: p.Language,
-			Paper: p.Paper, Pounds: p.Pounds, Examiners: slices.Clone(p.Examiners), Protocols: p.Protocols, Demo: p.Demo}
+			Paper: p.Paper, Pounds: p.Pounds, Examiners: slices.Clone(p.Examiners), Protocols: p.Protocols, Phrases: p.Phrases, Logo: base64.StdEncoding.EncodeToString(p.Logo), Demo: p.Demo}
 		for i := range pj.Examiners {
 			pj.Examiners[i].PINHash = ""
 		}
@@ -264,6 +280,9 @@ func animalOut(a Animal) animalJSON {
 		Goals: p.Goals, Medicines: p.Medicines, Note: p.Note, Demo: p.Demo}}
 	if p.Sex != exam.SexUnknown {
 		out.Patient.Sex = p.Sex.String()
+	}
+	for _, x := range p.Sent {
+		out.Patient.Sent = append(out.Patient.Sent, sentJSON{x.ID, x.Visit, stamp(x.At), x.Kind, x.Examiner, x.Language, x.Summary, x.Reworded, x.Hash, x.Note})
 	}
 	for _, w := range p.Weights {
 		out.Patient.Weights = append(out.Patient.Weights, weightJSON{stamp(w.At), w.Kg})
@@ -491,7 +510,8 @@ func recordsIn(in recordsJSON) (Records, error) {
 	out := Records{Made: p.time("made", in.Made)}
 	if j := in.Practice; j != nil {
 		out.Practice = exam.Practice{Name: j.Name, Contact: deref(j.Contact), OutOfHours: deref(j.OutOfHours), Zone: j.Zone, Language: j.Language,
-			Paper: j.Paper, Pounds: j.Pounds, Examiners: j.Examiners, Protocols: j.Protocols, Demo: j.Demo}
+			Paper: j.Paper, Pounds: j.Pounds, Examiners: j.Examiners, Protocols: j.Protocols, Phrases: j.Phrases, Demo: j.Demo}
+		p.in("practice", func() { out.Practice.Logo = logoIn(p, j.Logo); phrasesIn(p, j.Phrases) })
 	}
 	for i, a := range in.Animals {
 		p.in(at0("animals", i), func() { out.Animals = append(out.Animals, animalIn(p, a)) })
@@ -515,6 +535,28 @@ func recordsIn(in recordsJSON) (Records, error) {
 	return out, p.err
 }
 
+// logoIn reads the practice's logo; one that could not be printed is refused.
+func logoIn(p *place, s string) []byte {
+	if s == "" {
+		return nil
+	}
+	b, err := base64.StdEncoding.DecodeString(s)
+	if err == nil {
+		err = CheckLogo(b)
+	}
+	if err != nil {
+		p.in("logo", func() { p.fail(err) })
+	}
+	return b
+}
+
+// phrasesIn refuses wordings that could not stand on a sheet.
+func phrasesIn(p *place, list []exam.Phrase) {
+	for i, x := range list {
+		p.in(at0("phrases", i), func() { p.fail(CheckPhrase(x.Key, x.Words)) })
+	}
+}
+
 func animalIn(p *place, a animalJSON) (out Animal) {
 	j := a.Patient
 	p.in("patient", func() {
@@ -527,6 +569,10 @@ func animalIn(p *place, a animalJSON) (out Animal) {
 		out.Patient.Sex = parsed(p, x, err)
 		st, err := exam.ParseStatus(j.Status)
 		out.Patient.Status = parsed(p, st, err)
+		for i, x := range j.Sent {
+			out.Patient.Sent = append(out.Patient.Sent, exam.Sent{ID: x.ID, Visit: x.Visit, At: p.time(at0("sent", i), x.At), Kind: x.Kind, Examiner: x.Examiner,
+				Language: x.Language, Summary: x.Summary, Reworded: x.Reworded, Hash: x.Hash, Note: x.Note})
+		}
 		for i, w := range j.Weights {
 			out.Patient.Weights = append(out.Patient.Weights, exam.WeightPoint{At: p.time(at0("weights", i), w.At), Kg: w.Kg})
 		}

@@ -3,6 +3,8 @@ package sheet
 import (
 	"bytes"
 	"encoding/json"
+	"image"
+	"image/png"
 	"slices"
 	"strings"
 	"testing"
@@ -137,6 +139,8 @@ func anyAnimal(t *rapid.T) Animal {
 		p.Precautions = []exam.PrecautionOn{{ID: anyID(t), Code: "implant", Site: "lumbar", Since: anyDate(t), Until: anyDate(t), Note: anyText(t, "note")}}
 		p.Goals = []exam.Goal{{ID: anyID(t), Words: anyText(t, "words"), Item: "ambulation", Site: "midline", Target: 2, By: anyDate(t), Reached: anyDate(t)}}
 		p.Medicines = []exam.Medicine{{ID: anyID(t), Name: anyText(t, "name"), Dose: anyText(t, "dose"), Start: anyDate(t), Stop: anyDate(t)}}
+		p.Sent = []exam.Sent{{ID: anyID(t), Visit: anyID(t), At: anyTime(t), Kind: "sheet", Examiner: anyText(t, "examiner"), Language: "de", Summary: anyText(t, "summary"),
+			Reworded: rapid.Bool().Draw(t, "reworded"), Hash: "ab12", Note: anyText(t, "note")}}
 		p.Weights = []exam.WeightPoint{{At: anyTime(t), Kg: rapid.Float64Range(0.5, 90).Draw(t, "kg")}}
 	}
 	a := Animal{Patient: p}
@@ -175,6 +179,19 @@ var sameRecords = cmp.Options{
 	cmp.Comparer(func(a, b exam.Result) bool { return a == b }),
 }
 
+// testLogo makes a PNG of a size.
+func testLogo(w, h int) []byte {
+	img := image.NewGray(image.Rect(0, 0, w, h))
+	for i := range img.Pix {
+		img.Pix[i] = byte(i)
+	}
+	var b bytes.Buffer
+	if err := png.Encode(&b, img); err != nil {
+		panic(err)
+	}
+	return b.Bytes()
+}
+
 func recordsSchema(t testing.TB) *jsonschema.Schema {
 	t.Helper()
 	doc, err := jsonschema.UnmarshalJSON(bytes.NewReader(RecordsSchema))
@@ -193,6 +210,10 @@ func TestRecordsLoseNothing(t *testing.T) {
 	rapid.Check(t, func(t *rapid.T) {
 		r := Records{Made: anyTime(t), Practice: exam.Practice{Name: anyText(t, "practice"), Contact: anyContact(t), Zone: "Europe/Vienna", Language: "en", Paper: "Letter", Pounds: true,
 			Examiners: []exam.Examiner{{ID: anyID(t), Name: "R. Okafor", Initials: "RO"}}, Protocols: []exam.Protocol{{Key: "own", Name: anyText(t, "p"), Items: []string{"patellar"}}}, Demo: true}}
+		if rapid.Bool().Draw(t, "own words") {
+			r.Practice.Phrases = []exam.Phrase{{Key: "keep-on", Language: "de", Words: "Weiter so."}, {Key: "same", Language: "en", Words: "%s: nothing new."}}
+			r.Practice.Logo = testLogo(40, 20)
+		}
 		for range rapid.IntRange(0, 2).Draw(t, "animals") {
 			r.Animals = append(r.Animals, anyAnimal(t))
 		}

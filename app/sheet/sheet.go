@@ -75,7 +75,7 @@ type Options struct {
 	Large   bool              // large print
 	Grey    bool              // for a printer without colours
 	Summary string            // replaces the sentences that say how the animal is doing
-	Phrases map[string]string // the practice's own wording by the English text it replaces
+	Phrases map[string]string // the practice's own wording by the phrase's short name; see OwnPhrases
 	Logo    []byte            // PNG or JPEG, shown in the heading; nil for none
 }
 
@@ -107,19 +107,6 @@ func (in Input) letter() bool {
 		p = in.Practice.Paper
 	}
 	return strings.EqualFold(p, "letter")
-}
-
-// verbs returns the formatting verbs of a text in order, so that a phrase whose places do
-// not fit its key is never used.
-func verbs(s string) string {
-	var b strings.Builder
-	for i := 0; i+1 < len(s); i++ {
-		if s[i] == '%' {
-			b.WriteByte(s[i+1])
-			i++
-		}
-	}
-	return b.String()
 }
 
 // check refuses what must not have a paper for the owner.

@@ -14,6 +14,15 @@ func SheetInput(pr exam.Practice, p exam.Patient, visits []exam.Visit, at time.T
 	if p.OutOfHours.Empty() {
 		p.OutOfHours = pr.OutOfHours
 	}
+	if o.Lang == "" {
+		o.Lang = pr.Language
+	}
+	if o.Phrases == nil {
+		o.Phrases = sheet.OwnPhrases(pr, o.Lang)
+	}
+	if o.Logo == nil {
+		o.Logo = pr.Logo
+	}
 	in := sheet.Input{Practice: pr, Patient: p, Visits: slices.Clone(visits), At: at, Options: o}
 	for _, a := range AlertsOf(p, visits) {
 		n := sheet.Notice{Urgency: sheet.NextWorkingDay, Plain: a.Plain, Words: a.Words, Since: a.Since, Told: a.Told}
