@@ -82,6 +82,9 @@ func TestRandomDamage(t *testing.T) {
 	kinds := []string{"journal", "index.db", "practice.json", "practice.bak"}
 	n := times(10_000) / len(kinds)
 	for _, kind := range kinds {
+		if checked && kind == "index.db" {
+			continue
+		}
 		found, refused := 0, 0
 		for range n {
 			dir := filepath.Join(t.TempDir(), "x")
@@ -306,6 +309,9 @@ func TestIndexIsBuiltAnew(t *testing.T) {
 		}},
 	} {
 		t.Run(tt.name, func(t *testing.T) {
+			if checked && tt.name == "cut" {
+				t.Skip("see checked")
+			}
 			d := copyDir(t, dir)
 			tt.harm(t, d)
 			var said []string

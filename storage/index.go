@@ -422,7 +422,9 @@ func (x *index) records(tx *bbolt.Tx, patient exam.ID, f func(name, plain []byte
 	var have tally
 	prefix := x.patientKey(patient)
 	c := tx.Bucket(bucketRecords).Cursor()
-	x.readAhead(c, prefix)
+	if !tx.Writable() { // there the values are those of the mapped file
+		x.readAhead(c, prefix)
+	}
 	for k, v := c.Seek(prefix); k != nil && bytes.HasPrefix(k, prefix); k, v = c.Next() {
 		plain, err := x.open(bucketRecords, k, v)
 		if err != nil {
