@@ -183,6 +183,15 @@ type Objection struct {
 	Stop      bool   // not to be done; else only after thought
 	Why       string // what was seen, where and when
 	Source    string
+	Seen      SeenCell // the finding behind it, zero where it comes from the file
+}
+
+// SeenCell is the finding behind an objection.
+type SeenCell struct {
+	Item  Item // zero: no finding
+	Site  Site
+	Grade int8
+	Day   Date // of the visit
 }
 
 // CheckTreatment returns what speaks against a treatment, stops first: from the precautions in force on
@@ -207,7 +216,7 @@ func CheckExercise(p Patient, e HomeExercise, today Visit, earlier ...Visit) []O
 	return object(conditionsOf(p, NoSite, today, earlier), k.Never, k.Ask, k.Source)
 }
 
-func object(met map[Condition]string, stop, ask []Condition, source string) []Objection {
+func object(met map[Condition]reason, stop, ask []Condition, source string) []Objection {
 	var out []Objection
 	for _, part := range []struct {
 		list []Condition
@@ -215,11 +224,17 @@ func object(met map[Condition]string, stop, ask []Condition, source string) []Ob
 	}{{stop, true}, {ask, false}} {
 		for _, c := range Conditions() {
 			if why, ok := met[c]; ok && slices.Contains(part.list, c) && (part.stop || !slices.Contains(stop, c)) {
-				out = append(out, Objection{Condition: c, Stop: part.stop, Why: c.String() + ": " + why, Source: source})
+				out = append(out, Objection{Condition: c, Stop: part.stop, Why: c.String() + ": " + why.words, Source: source, Seen: why.seen})
 			}
 		}
 	}
 	return out
+}
+
+// reason is why a condition holds.
+type reason struct {
+	words string
+	seen  SeenCell
 }
 
 // freshSurgeryDays is how long a wound counts as not healed (common practice: stitches stay 10–14 days).
@@ -229,14 +244,14 @@ const freshSurgeryDays = 14
 const FeverCelsius = 39.5
 
 // conditionsOf finds which conditions hold, each with what was seen.
-func conditionsOf(p Patient, site Site, today Visit, earlier []Visit) map[Condition]string {
-	met := map[Condition]string{}
+func conditionsOf(p Patient, site Site, today Visit, earlier []Visit) map[Condition]reason {
+	met := map[Condition]reason{}
 	visits := slices.Clone(earlier)
 	slices.SortStableFunc(visits, func(a, b Visit) int { return b.Examined.Compare(a.Examined) })
 	visits = append([]Visit{today}, visits...)
 	say := func(c Condition, format string, args ...any) {
 		if _, ok := met[c]; !ok {
-			met[c] = fmt.Sprintf(format, args...)
+			met[c] = reason{words: fmt.Sprintf(format, args...)}
 		}
 	}
 	day := func(t time.Time) string {
@@ -254,14 +269,19 @@ func conditionsOf(p Patient, site Site, today Visit, earlier []Visit) map[Condit
 		}
 		return 0, time.Time{}, false
 	}
+	found := func(c Condition, i Item, s Site, g int8, when time.Time) {
+		if _, ok := met[c]; !ok {
+			met[c] = reason{describe(i, s, g) + ", " + day(when), SeenCell{i, s, g, DayOf(when)}}
+		}
+	}
 	atMost := func(c Condition, i Item, s Site, limit int8) {
 		if g, when, ok := latest(i, s); ok && g <= limit {
-			say(c, "%s, %s", describe(i, s, g), day(when))
+			found(c, i, s, g, when)
 		}
 	}
 	atLeast := func(c Condition, i Item, s Site, limit int8) {
 		if g, when, ok := latest(i, s); ok && g >= limit {
-			say(c, "%s, %s", describe(i, s, g), day(when))
+			found(c, i, s, g, when)
 		}
 	}
 	// touches reports whether a finding at s concerns a treatment at the site; one without a site concerns all.
@@ -286,10 +306,10 @@ func conditionsOf(p Patient, site Site, today Visit, earlier []Visit) map[Condit
 	for _, s := range skinSites {
 		g, when, ok := latest(Skin, s)
 		if ok && g == 0 && touches(s) {
-			say(OpenSkin, "%s, %s", describe(Skin, s, g), day(when))
+			found(OpenSkin, Skin, s, g, when)
 		}
 		if ok && g == 1 && touches(s) {
-			say(SkinIrritated, "%s, %s", describe(Skin, s, g), day(when))
+			found(SkinIrritated, Skin, s, g, when)
 		}
 	}
 	atMost(OpenSkin, Wound, Midline, 0)
@@ -302,7 +322,7 @@ func conditionsOf(p Patient, site Site, today Visit, earlier []Visit) map[Condit
 	atMost(FoulUrine, UrineLook, Midline, 1)
 	atLeast(UrineLeaks, UrineLeak, Midline, 2)
 	if g, when, ok := latest(BladderOutflow, Midline); ok && g == 0 {
-		say(UrineLeaks, "%s, %s", describe(BladderOutflow, Midline, g), day(when))
+		found(UrineLeaks, BladderOutflow, Midline, g, when)
 	}
 	atMost(TenseBladder, BladderFill, Midline, 0)
 	for _, s := range painSites {
@@ -352,7 +372,7 @@ func conditionsOf(p Patient, site Site, today Visit, earlier []Visit) map[Condit
 	}
 	for _, s := range pairedSites {
 		if g, when, ok := latest(FemoralPulse, s); ok && g == 0 && (touches(s) || site.IsPelvic() && site.Side() == s) {
-			say(NoPulse, "%s, %s", describe(FemoralPulse, s, g), day(when))
+			found(NoPulse, FemoralPulse, s, g, when)
 		}
 	}
 	for _, s := range limbSites {
