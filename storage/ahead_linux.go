@@ -1,5 +1,3 @@
-//go:build linux || darwin
-
 package storage
 
 import (
@@ -13,13 +11,14 @@ const mostAhead = 64 << 20
 
 // willNeed asks the system to read the mapped memory from the beginning of one slice to that
 // of another, if the second does not lie far behind the first. It is a hint: errors do not matter.
+// The memory between the two is of the map too, but of neither slice, so its place is handed to
+// the system as a number and no slice of it is ever made.
 func willNeed(from, to []byte) {
 	page := uintptr(os.Getpagesize())
 	a, b := uintptr(unsafe.Pointer(unsafe.SliceData(from))), uintptr(unsafe.Pointer(unsafe.SliceData(to)))
 	if b <= a || b-a > mostAhead || b-a < 4*page {
 		return
 	}
-	off := a & (page - 1)
-	start := unsafe.Add(unsafe.Pointer(unsafe.SliceData(from)), -int(off))
-	_ = unix.Madvise(unsafe.Slice((*byte)(start), int(b-a+off)), unix.MADV_WILLNEED)
+	start := a &^ (page - 1)
+	_, _, _ = unix.Syscall(unix.SYS_MADVISE, start, b-start, unix.MADV_WILLNEED)
 }
