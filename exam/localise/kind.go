@@ -96,21 +96,6 @@ func (s Side) String() string {
 	return "unknown"
 }
 
-// mirror exchanges left and right.
-func (s Side) mirror() Side {
-	switch s {
-	case LeftOnly:
-		return RightOnly
-	case RightOnly:
-		return LeftOnly
-	case LeftWorse:
-		return RightWorse
-	case RightWorse:
-		return LeftWorse
-	}
-	return s
-}
-
 // main folds left-worse into left and right-worse into right.
 func (s Side) main() Side {
 	switch s {

@@ -83,8 +83,6 @@ type Params struct {
 	respond [exam.ItemCount]response
 }
 
-func (p *Params) clone() *Params { q := *p; return &q }
-
 // thoracicFrom is the first segment of T3–L3, shockTo the last: indices that hold for dog and cat.
 const (
 	segC6 = 5

@@ -31,17 +31,15 @@ type refLesion struct {
 
 // refHypothesis is one point of the space.
 type refHypothesis struct {
-	lesions  []refLesion
-	regions  []Region // one, or two of a pair
-	site     *site    // of the engine, for the label only
-	balance  string   // "both", "white", "grey"
-	central  bool
-	acute    bool
-	timed    bool
-	shift    int // of the plexus
-	company  bool
-	prior    float64
-	weightOf string // region and kind, to normalise by
+	lesions []refLesion
+	regions []Region // one, or two of a pair
+	balance string   // "both", "white", "grey"
+	central bool
+	acute   bool
+	timed   bool
+	shift   int // of the plexus
+	company bool
+	prior   float64
 }
 
 type reference struct {
@@ -830,17 +828,14 @@ func TestReference(t *testing.T) {
 		rng := rand.New(rand.NewPCG(seed, uint64(s)))
 		sim := newSimulator(m, rng)
 		type refExam struct {
-			x                     Exam
-			cells                 []int
-			cats                  []int
-			bulk                  []bool
-			ctx                   []context
-			logFull, logLook      []float64
-			byGroup               map[int][]int
-			full, looked          []float64
-			anyBulk, labelled     bool
-			regions, regionsAlone [regionCount]float64
-			damaged, expected     [2 * maxSegments]float64
+			x            Exam
+			cells        []int
+			cats         []int
+			bulk         []bool
+			ctx          []context
+			byGroup      map[int][]int
+			full, looked []float64
+			anyBulk      bool
 		}
 		var exams []*refExam
 		for i := range n {

@@ -26,7 +26,6 @@ type body struct {
 	cord     [2][]half // left, right
 	pain     map[exam.Site]float64
 	mass     map[exam.Key]float64 // bulk of muscles, 0 to 1; it follows the damage slowly
-	thirst   float64              // unused strength: disuse
 }
 
 func newBody(s exam.Species) *body {
