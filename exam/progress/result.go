@@ -155,7 +155,7 @@ type Plateau struct {
 // PlateauNamed is the probability from which a plateau is named. On simulated courses a true one is
 // then named within four visits of its start in more than 80 %, and a false one less than
 // once in twenty years of weekly visits.
-const PlateauNamed = 0.75
+const PlateauNamed = 0.78
 
 // Relapse says whether the animal has lost what it had gained.
 type Relapse struct {
