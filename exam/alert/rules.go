@@ -303,20 +303,22 @@ func drop(c *scene) (out []hit) {
 	}
 	// a class of the Frankel ladder or a stage of the open-field score, against the last visit that can be scored
 	for _, sc := range []scale.Scale{scale.Frankel, scale.OpenField} {
-		now, ok := scale.Compute(sc, c.today, exam.NoSite)
-		if !ok || len(now.Levels) == 0 {
+		_, high, ok := scale.Range(sc, c.today, exam.NoSite)
+		if !ok {
 			continue
 		}
 		for k := range c.before() {
-			then, ok := scale.Compute(sc, c.earlier[k], exam.NoSite)
-			if !ok || len(then.Levels) == 0 {
+			low, _, ok := scale.Range(sc, c.earlier[k], exam.NoSite)
+			if !ok {
 				continue
 			}
-			fell := now.High < then.Low && now.High <= 4 // gait normal with pain (5) against without (6) is rule 7's
+			fell := high < low && high <= 4 // gait normal with pain (5) against without (6) is rule 7's
 			if sc == scale.OpenField {
-				fell = stage(now.High) < stage(then.Low)
+				fell = stage(high) < stage(low)
 			}
 			if fell {
+				now, _ := scale.Compute(sc, c.today, exam.NoSite)
+				then, _ := scale.Compute(sc, c.earlier[k], exam.NoSite)
 				out = append(out, hit{fmt.Sprintf("%s: %s (before: %s)", sc.Info().Name, now, then), k, urgency})
 			}
 			break

@@ -524,3 +524,27 @@ func TestScalesAreSourced(t *testing.T) {
 		require.NotEmpty(t, exam.SourcesIn(s.Info().Source), "%s: %s", s, s.Info().Source)
 	}
 }
+
+func TestRangeIsComputesRange(t *testing.T) {
+	rng := rand.New(rand.NewPCG(7, 7))
+	items := []exam.Item{exam.VoluntaryMotor, exam.Ambulation, exam.Ataxia, exam.PawPlacement, exam.DeepPain,
+		exam.SuperficialPain, exam.SpinalPain, exam.TailMovement, exam.GroundClearance, exam.Tone}
+	for range 300 {
+		var v exam.Visit
+		for _, i := range items {
+			for _, s := range i.Info().Sites {
+				if rng.IntN(3) > 0 {
+					g := i.Info().First + int8(rng.IntN(len(i.Info().Grades)))
+					v.Findings = append(v.Findings, exam.Finding{Item: i, Site: s, Result: exam.Graded(g)})
+				}
+			}
+		}
+		for _, s := range Scales() {
+			x, scored := Compute(s, v, exam.NoSite)
+			low, high, ok := Range(s, v, exam.NoSite)
+			if ok != (scored && len(x.Levels) > 0) || ok && (low != x.Low || high != x.High) {
+				t.Fatalf("%s: Range says %g to %g, %v; Compute says %v", s, low, high, ok, x)
+			}
+		}
+	}
+}
