@@ -41,6 +41,8 @@ type App struct {
 
 	drafts map[exam.ID]*view.PatientForm // pages of animals that were left with something typed on them
 
+	engines engines // one for each species: each holds much scratch memory
+
 	onUI   view.OnUI // runs on the drawing goroutine; tests pass their own
 	ctx    context.Context
 	cancel context.CancelFunc

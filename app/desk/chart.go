@@ -57,6 +57,9 @@ func (h *chartHost) set(c drawable) {
 	h.Refresh()
 }
 
+// release lets go of the chart and its picture.
+func (h *chartHost) release() { h.chart, h.kept = nil, nil }
+
 func (h *chartHost) MinSize() fyne.Size { h.ExtendBaseWidget(h); return h.least }
 
 func (h *chartHost) CreateRenderer() fyne.WidgetRenderer {

@@ -101,7 +101,18 @@ func (p *coursePage) switchTo(c *view.Course) {
 
 func (p *coursePage) content() fyne.CanvasObject { return p.root }
 func (p *coursePage) shown()                     { p.win.win.Canvas().Unfocus() }
-func (p *coursePage) left()                      { p.halt(); p.gone = true }
+
+// left lets go of the model and the pictures: the toolkit keeps the widgets of a page for a while.
+func (p *coursePage) left() {
+	p.halt()
+	p.gone = true
+	p.model, p.result, p.course = nil, nil, p.plain
+	for _, h := range []*chartHost{p.strip, p.fn, p.limbs, p.meas} {
+		if h != nil {
+			h.release()
+		}
+	}
+}
 
 func (p *coursePage) help() []view.KeyHelp {
 	return []view.KeyHelp{

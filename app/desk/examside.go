@@ -6,6 +6,7 @@ import (
 	"slices"
 	"strconv"
 	"strings"
+	"sync"
 
 	"fyne.io/fyne/v2"
 	"fyne.io/fyne/v2/widget"
@@ -77,25 +78,10 @@ func newExamSide(p *examPage) *examSide {
 	if m, ok := p.sheet.Visit().Measured(exam.Weight, exam.NoSite); ok {
 		s.kg = m.Value
 	}
-	var engine *localise.Engine
-	species := p.file.Patient.Species
-	patient, others := p.file.Patient, p.file.Visits
+	patient, others, engines := p.file.Patient, p.file.Visits, &p.win.app.engines
 	s.ask = view.NewNewest(p.win.app.onUI, func(_ context.Context, q sideQuestion) (sideAnswer, error) {
 		out := sideAnswer{alerts: alertsOf(patient, others, q.visit)}
-		if engine == nil {
-			e, err := localise.New(species)
-			if err != nil {
-				out.err = err
-				return out, nil
-			}
-			engine = e
-		}
-		r, err := engine.Compute(localise.OfVisit(patient, q.visit))
-		if err != nil {
-			out.err = err
-			return out, nil
-		}
-		out.result = r.Clone()
+		out.result, out.err = engines.compute(localise.OfVisit(patient, q.visit))
 		return out, nil
 	}, s.answered)
 	s.ExtendBaseWidget(s)
@@ -106,8 +92,42 @@ func (s *examSide) CreateRenderer() fyne.WidgetRenderer {
 	return widget.NewSimpleRenderer(mark.Pad(look.Unit, look.Unit*2, s.scroll))
 }
 
-// close ends the reckoning.
-func (s *examSide) close() { go s.ask.Close() }
+// close ends the reckoning and lets go of what it holds: the toolkit keeps the widgets of a page
+// that was left for a while.
+func (s *examSide) close() {
+	go s.ask.Close()
+	s.host.release()
+	s.result = nil
+}
+
+// engines keeps one localisation engine for each species and lets one question at it at a time.
+type engines struct {
+	mu sync.Mutex
+	of map[exam.Species]*localise.Engine
+}
+
+// compute weighs an exam. The error is a *localise.Unsupported for a species without a model.
+func (e *engines) compute(x localise.Exam) (*localise.Result, error) {
+	e.mu.Lock()
+	defer e.mu.Unlock()
+	engine := e.of[x.Species]
+	if engine == nil {
+		made, err := localise.New(x.Species)
+		if err != nil {
+			return nil, err
+		}
+		if e.of == nil {
+			e.of = map[exam.Species]*localise.Engine{}
+		}
+		engine = made
+		e.of[x.Species] = made
+	}
+	r, err := engine.Compute(x)
+	if err != nil {
+		return nil, err
+	}
+	return r.Clone(), nil
+}
 
 func (s *examSide) open() bool {
 	return !s.shut && (s.opened || s.page.sheet.MapOpen() || s.page.sheet.Closed())

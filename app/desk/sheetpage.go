@@ -36,11 +36,12 @@ type sheetPage struct {
 	later   bool  // saving was asked for before the paper was made
 	refused error // why there is no sheet
 
-	root    fyne.CanvasObject
-	preview *mark.Scroll
-	notes   *fyne.Container
-	save    *mark.Button
-	print   *mark.Button
+	root     fyne.CanvasObject
+	preview  *mark.Scroll
+	pictures []*canvas.Image
+	notes    *fyne.Container
+	save     *mark.Button
+	print    *mark.Button
 }
 
 func newSheetPage(w *window) *sheetPage {
@@ -81,7 +82,17 @@ func newSheetPage(w *window) *sheetPage {
 
 func (p *sheetPage) content() fyne.CanvasObject { return p.root }
 func (p *sheetPage) shown()                     { p.win.win.Canvas().Unfocus() }
-func (p *sheetPage) left()                      {}
+
+// left lets go of the pages' pictures.
+func (p *sheetPage) left() {
+	p.turn++
+	p.doc = sheet.Document{}
+	for _, i := range p.pictures {
+		i.Image = nil
+	}
+	p.pictures = nil
+	p.preview.SetContent(mark.Space(1, 1))
+}
 
 func (p *sheetPage) help() []view.KeyHelp {
 	return []view.KeyHelp{
@@ -197,8 +208,11 @@ func (p *sheetPage) show(doc sheet.Document, pages []image.Image) {
 	p.save.Enable()
 	p.print.Enable()
 	var out []fyne.CanvasObject
+	p.pictures = nil
 	for _, page := range pages {
-		out = append(out, newSheetImage(page))
+		img, o := newSheetImage(page)
+		p.pictures = append(p.pictures, img)
+		out = append(out, o)
 	}
 	p.preview.SetContent(mark.Pad(look.Unit*2, look.Unit*2, mark.Column(look.Unit*2, out...)))
 	p.notes.Objects = nil
@@ -257,12 +271,12 @@ func (p *sheetPage) open() {
 }
 
 // newSheetImage is a page of paper as wide as there is room.
-func newSheetImage(page image.Image) fyne.CanvasObject {
+func newSheetImage(page image.Image) (*canvas.Image, fyne.CanvasObject) {
 	img := canvas.NewImageFromImage(page)
 	img.FillMode = canvas.ImageFillContain
 	img.ScaleMode = canvas.ImageScaleSmooth
 	b := page.Bounds()
-	return &fyne.Container{Layout: &pageLayout{float32(b.Dy()) / float32(max(1, b.Dx()))}, Objects: []fyne.CanvasObject{img}}
+	return img, &fyne.Container{Layout: &pageLayout{float32(b.Dy()) / float32(max(1, b.Dx()))}, Objects: []fyne.CanvasObject{img}}
 }
 
 // pageLayout keeps the page's proportion, at most 900 px wide.
