@@ -211,12 +211,36 @@ func Clinical(in Input, course *CourseCharts) (Document, error) {
 		part(p, h)
 		c.footer(p, doc.PageNo())
 	}
-	out := Document{Pages: doc.PageCount(), Name: fileName(in.Patient.Name, c.now.Examined, "summary", "pdf"), Subject: title + ", " + day, Prose: prose}
+	out := Document{Pages: doc.PageCount(), Name: fileName(in.Patient.Name, c.now.Examined, "summary", "pdf"), Subject: title + ", " + day, Kind: KindSummary, Lang: lang, Prose: prose, Summary: c.inShort(), Noted: check(in, c.now.Home).noted}
 	if len(p.lost) > 0 {
 		out.Warnings = append(out.Warnings, lostLetters(p.lost))
 	}
 	out.PDF, err = output(doc)
 	return out, err
+}
+
+// inShort is what the record of a paper that was sent says of it: what is urgent, the likely
+// site and the course.
+func (c *clinical) inShort() string {
+	lang := c.in.lang()
+	var out []string
+	for _, n := range sortedNotices(c.in.Notices) {
+		out = append(out, upperFirst(urgencyWord(lang, n.Urgency))+": "+n.Words)
+	}
+	if c.result != nil {
+		out = append(out, upperFirst(c.result.Summary)+".")
+	}
+	if c.course != nil {
+		out = append(out, c.course.Sentence)
+	}
+	return strings.Join(out, " ")
+}
+
+// sortedNotices returns the notices, the most urgent first.
+func sortedNotices(list []Notice) []Notice {
+	list = slices.Clone(list)
+	slices.SortStableFunc(list, func(a, b Notice) int { return int(a.Urgency) - int(b.Urgency) })
+	return list
 }
 
 // footer says who made the paper, when, and what it is not.
@@ -411,8 +435,7 @@ func (c *clinical) alerts(p *page, x, w float64) {
 	if len(in.Notices) == 0 {
 		return
 	}
-	list := slices.Clone(in.Notices)
-	slices.SortStableFunc(list, func(a, b Notice) int { return int(a.Urgency) - int(b.Urgency) })
+	list := sortedNotices(in.Notices)
 	p.heading(x, w, words.In(p.lang, "Alerts"))
 	for i, n := range list {
 		if i == 6 {
@@ -915,6 +938,9 @@ func (c *clinical) treatments(p *page, x, w float64) {
 		if amount != "" {
 			s += ", " + amount
 		}
+		if h.Override != "" {
+			s += " – " + words.In(lang, "against a contraindication: %s", h.Override)
+		}
 		home = append(home, s)
 	}
 	if len(given)+len(home) == 0 {
@@ -956,7 +982,7 @@ func Letter(in Input) (Document, error) {
 	}
 	p.dry, p.size = false, size
 	c.letter(p)
-	out := Document{Pages: doc.PageCount(), Name: fileName(in.Patient.Name, c.now.Examined, "letter", "pdf"), Subject: title + ", " + day, Prose: prose}
+	out := Document{Pages: doc.PageCount(), Name: fileName(in.Patient.Name, c.now.Examined, "letter", "pdf"), Subject: title + ", " + day, Kind: KindLetter, Lang: lang, Prose: prose, Summary: c.inShort()}
 	if len(p.lost) > 0 {
 		out.Warnings = append(out.Warnings, lostLetters(p.lost))
 	}
@@ -968,8 +994,7 @@ func (c *clinical) letter(p *page) {
 	in, lang := c.in, p.lang
 	x, w := p.margin, p.w-2*p.margin
 	p.y = p.margin * 0.8
-	list := slices.Clone(in.Notices)
-	slices.SortStableFunc(list, func(a, b Notice) int { return int(a.Urgency) - int(b.Urgency) })
+	list := sortedNotices(in.Notices)
 	c.title(p, words.In(lang, "Referral of %s", in.Patient.Name))
 	p.y += p.size * 0.5
 	to := in.Patient.Veterinarian

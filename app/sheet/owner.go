@@ -113,13 +113,13 @@ func Owner(in Input) (Document, error) {
 		return Document{}, fmt.Errorf("the sheet of %s does not fit on one page: shorten the home plan or the summary", in.Patient.Name)
 	}
 	out := Document{Pages: doc.PageCount(), Name: fileName(in.Patient.Name, last.Examined, "owner", "pdf"), Subject: title + ", " + day,
-		Prose: prose, Summary: strings.Join(o.summary, " ")}
+		Kind: KindSheet, Lang: lang, Prose: prose, Summary: strings.Join(o.summary, " "), Reworded: strings.TrimSpace(in.Options.Summary) != "", Noted: o.noted}
 	out.Warnings = append(out.Warnings, o.warnings...)
 	if n := chosen.exercises; n > 0 && n < len(o.home) {
-		out.Warnings = append(out.Warnings, fmt.Sprintf("%d of %d exercises did not fit on the page: print the rest apart, or leave out large print", len(o.home)-n, len(o.home)))
+		out.Warnings = append(out.Warnings, words.T("%[1]d of %[2]d exercises did not fit on the page: print the rest apart, or leave out large print", len(o.home)-n, len(o.home)))
 	}
 	if chosen.terse && len(o.home) > 0 && len(o.urgent) == 0 {
-		out.Warnings = append(out.Warnings, "how each exercise is done did not fit on the page: explain it, or print fewer exercises")
+		out.Warnings = append(out.Warnings, words.T("how each exercise is done did not fit on the page: explain it, or print fewer exercises"))
 	}
 	if len(p.lost) > 0 {
 		out.Warnings = append(out.Warnings, lostLetters(p.lost))
@@ -135,7 +135,7 @@ func lostLetters(lost map[string]bool) string {
 		letters = append(letters, l)
 	}
 	slices.Sort(letters)
-	return fmt.Sprintf("these letters cannot be printed and stand as a question mark: %s", strings.Join(letters, " "))
+	return words.T("these letters cannot be printed and stand as a question mark: %s", strings.Join(letters, " "))
 }
 
 // exercise is one line of the home plan as printed.
@@ -152,14 +152,16 @@ type owner struct {
 	home     []exercise
 	summary  []string
 	warnings []string
+	noted    []string
 }
 
 // plan makes the lines of the home plan.
 func (o *owner) plan(last exam.Visit) {
 	in := o.in
-	home, left := allowed(in, last.Home)
-	o.warnings = append(o.warnings, left...)
-	for _, h := range home {
+	plan := check(in, last.Home)
+	o.warnings = append(o.warnings, plan.warnings...)
+	o.noted = plan.noted
+	for _, h := range plan.keep {
 		e := exercise{times: min(max(h.Times, 1), 6)}
 		var amount string
 		e.name, amount, e.how, e.stop = plainExercise(in, h)
@@ -404,9 +406,7 @@ func (o *owner) logo(p *page) *logo {
 	}
 	cfg, kind, err := image.DecodeConfig(bytes.NewReader(data))
 	if err != nil || cfg.Width == 0 || cfg.Height == 0 {
-		if len(o.warnings) == 0 {
-			o.warnings = append(o.warnings, "the logo is left out: it is neither a PNG nor a JPEG picture")
-		}
+		o.warnings = append(o.warnings, words.T("the logo is left out: it is neither a PNG nor a JPEG picture"))
 		o.in.Options.Logo = nil
 		return nil
 	}

@@ -223,7 +223,10 @@ func Terms() []string {
 	for v := repeat.Verdict(0); v <= repeat.Likely; v++ {
 		out = append(out, v.String())
 	}
-	return append(out, "medial", "lateral", "flexion", "extension")
+	for _, c := range exam.Conditions() {
+		out = append(out, c.String())
+	}
+	return append(out, KindSheet, KindSummary, KindLetter, "medial", "lateral", "flexion", "extension")
 }
 
 // maxPhrase is the most letters of a practice's own wording: what still fits beside the picture.

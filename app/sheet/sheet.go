@@ -86,8 +86,12 @@ type Document struct {
 	Name     string   // a file name such as bruno-2026-03-02-owner.pdf
 	Subject  string   // one line for an e-mail
 	Prose    []string // the sentences and lines as printed, without names, addresses and numbers of telephones
+	Kind     string   // "sheet", "summary" or "letter"
+	Lang     string   // BCP 47 tag of the paper
 	Summary  string   // the sentences that say how the animal is doing, for the record of what was sent
-	Warnings []string // what was left off or could not be written, one sentence each
+	Reworded bool     // they are the therapist's own
+	Noted    []string // what was objected to and confirmed with a reason, one sentence each
+	Warnings []string // what was left off, could not be written or needs thought, one sentence each, in the language in use
 }
 
 // lang returns the language of the paper.

@@ -60,12 +60,16 @@ type commands struct {
 		Answer examAnswerCmd `cmd:"" help:"Say who was told of an alert."`
 		Walk   examWalkCmd   `cmd:"" help:"List what a protocol asks of a patient today, in the order of work."`
 	} `cmd:"" help:"Exams."`
-	Compare   compareCmd   `cmd:"" help:"Show what changed between two visits."`
-	Localise  localiseCmd  `cmd:"" help:"Say which segments, roots or nerves explain an exam file."`
-	Progress  progressCmd  `cmd:"" help:"Show the course of a patient, or of a file with a series of exams."`
-	Sheet     sheetCmd     `cmd:"" help:"Write the owner's progress sheet as PDF."`
-	Summary   summaryCmd   `cmd:"" help:"Write the clinical summary for the veterinarian as PDF."`
-	Letter    letterCmd    `cmd:"" help:"Write a referral letter about an alert as PDF."`
+	Compare  compareCmd  `cmd:"" help:"Show what changed between two visits."`
+	Localise localiseCmd `cmd:"" help:"Say which segments, roots or nerves explain an exam file."`
+	Progress progressCmd `cmd:"" help:"Show the course of a patient, or of a file with a series of exams."`
+	Sheet    sheetCmd    `cmd:"" help:"Write the owner's progress sheet as PDF."`
+	Summary  summaryCmd  `cmd:"" help:"Write the clinical summary for the veterinarian as PDF."`
+	Letter   letterCmd   `cmd:"" help:"Write a referral letter about an alert as PDF."`
+	Practice struct {
+		Show practiceShowCmd `cmd:"" help:"Show what holds for all patients."`
+		Set  practiceSetCmd  `cmd:"" help:"Change what holds for all patients."`
+	} `cmd:"" help:"The practice: its name and contact, its logo and its own wording on the sheets."`
 	Export    exportCmd    `cmd:"" help:"Write records out: json, csv, xlsx, fhir or ics."`
 	Import    importCmd    `cmd:"" help:"Read records in, from what export wrote."`
 	Outcomes  outcomesCmd  `cmd:"" help:"Show time to walking by problem and presenting grade, beside published figures."`

@@ -401,6 +401,7 @@ type patientJSON struct {
 	Visits       []visitLine         `json:"visits"`
 	Conflicts    int                 `json:"conflicts"`
 	Missing      []string            `json:"missing"`
+	Sent         []sentJSON          `json:"sent"`
 }
 
 type visitLine struct {
@@ -450,7 +451,7 @@ func (c *patientShowCmd) Run(e *env) error {
 				Born: p.Born, Owner: p.Owner, Veterinarian: p.Veterinarian, OutOfHours: p.OutOfHours, Referral: p.Referral,
 				Status: p.Status.String(), StatusSince: p.StatusSince, RecheckDays: p.RecheckDays, Problems: some(p.Problems),
 				Precautions: some(p.Precautions), Goals: some(p.Goals), Medicines: some(p.Medicines), Weights: some(p.Weights), Note: p.Note,
-				Demo: p.Demo, Visits: []visitLine{}, Conflicts: len(r.Conflicts), Missing: gaps(r)}
+				Demo: p.Demo, Visits: []visitLine{}, Conflicts: len(r.Conflicts), Missing: gaps(r), Sent: sentLines(p)}
 			if len(r.Joined) > 1 {
 				out.Joined = r.Joined
 			}
@@ -479,6 +480,9 @@ func (c *patientShowCmd) Run(e *env) error {
 		}
 		for _, g := range p.Goals {
 			e.say("%s", words.T("Goal: %s, by %s", g.Words, view.DateWords(g.By)))
+		}
+		for _, x := range p.Sent {
+			e.say("%s", words.T("Handed over: %[1]s, %[2]s, %[3]s", words.Of(x.Kind), x.At.Format("2006-01-02 15:04"), x.Examiner))
 		}
 		for _, w := range gaps(r) {
 			e.say("%s", w)
