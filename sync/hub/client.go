@@ -34,7 +34,7 @@ type Options struct {
 	Place       Place                                    // remembers how far the hub was read; may be nil
 	Now         func() time.Time                         // nil: time.Now
 	Notice      func(words string)                       // messages for people; may be nil
-	Poll        time.Duration                            // how often the journal is looked at for new entries; 0: 100 ms
+	Poll        time.Duration                            // how often the journal is looked at for new entries, and the measure of all other waits; 0: 100 ms
 	Connect     func(...nats.Option) (*nats.Conn, error) // for tests and other ways in; nil: by Address
 }
 
@@ -158,7 +158,7 @@ func (c *Client) fail(err error) {
 // makes going on senseless: that this device may not use the hub, or that its own journal fails.
 func (c *Client) Run(ctx context.Context) error {
 	ctx, cancel := context.WithCancelCause(ctx)
-	nc, err := c.o.Connect(nats.RetryOnFailedConnect(true), nats.ErrorHandler(func(_ *nats.Conn, _ *nats.Subscription, err error) { c.fail(err) }),
+	nc, err := c.o.Connect(nats.RetryOnFailedConnect(true), nats.ReconnectWait(5*c.o.Poll), nats.ErrorHandler(func(_ *nats.Conn, _ *nats.Subscription, err error) { c.fail(err) }),
 		nats.DisconnectErrHandler(func(_ *nats.Conn, err error) {
 			if err != nil {
 				c.fail(err)
@@ -188,7 +188,7 @@ func (c *Client) Run(ctx context.Context) error {
 	}()
 	go func() {
 		defer close(counting)
-		t := time.NewTicker(500 * time.Millisecond)
+		t := time.NewTicker(5 * c.o.Poll)
 		defer t.Stop()
 		for {
 			select {
@@ -213,7 +213,7 @@ func (c *Client) Run(ctx context.Context) error {
 		}
 		select {
 		case <-ctx.Done():
-		case <-time.After(500 * time.Millisecond):
+		case <-time.After(5 * c.o.Poll):
 		}
 	}
 	if err := context.Cause(ctx); err != nil && !errors.Is(err, context.Canceled) && !errors.Is(err, context.DeadlineExceeded) {
@@ -293,7 +293,7 @@ func (c *Client) session(ctx context.Context) error {
 
 	tick := time.NewTicker(c.o.Poll)
 	defer tick.Stop()
-	slow := time.NewTicker(2 * time.Second)
+	slow := time.NewTicker(20 * c.o.Poll)
 	defer slow.Stop()
 	var heard told
 	for {
@@ -677,8 +677,8 @@ type told struct {
 	at         time.Time
 }
 
-// busyHead is how often a device tells what it holds while that goes on changing.
-const busyHead = 10 * time.Second
+// busyHead is how often a device tells what it holds while that goes on changing, in polls.
+const busyHead = 100
 
 // leaveHead tells the others what we hold, if that has changed: when it has come to rest, or now and then.
 func (c *Client) leaveHead(ctx context.Context, t *told) error {
@@ -698,7 +698,7 @@ func (c *Client) leaveHead(ctx context.Context, t *told) error {
 	digest := fmt.Sprint(h)
 	quiet := digest == t.seen
 	t.seen = digest
-	if digest == t.sent || !quiet && now.Sub(t.at) < busyHead {
+	if digest == t.sent || !quiet && now.Sub(t.at) < busyHead*c.o.Poll {
 		return nil
 	}
 	h.Time = change.HLCAt(now)
@@ -736,7 +736,7 @@ func (c *Client) ask(ctx context.Context, lastSeq uint64) error {
 	for _, p := range c.peers {
 		for _, r := range p.Streams {
 			s := r.Stream()
-			if s.Device == c.o.Incarnation() || !c.wantsSite(s.Site) || now.Sub(c.wanted[s]) < 3*time.Second {
+			if s.Device == c.o.Incarnation() || !c.wantsSite(s.Site) || now.Sub(c.wanted[s]) < 30*c.o.Poll {
 				continue
 			}
 			h := have[s]
@@ -785,14 +785,14 @@ func (c *Client) answer(ctx context.Context, subject string, data []byte) {
 	asked := c.o.Now()
 	if !c.ours(s) {
 		select {
-		case <-time.After(2*time.Second + rand.N(4*time.Second)):
+		case <-time.After(20*c.o.Poll + rand.N(40*c.o.Poll)):
 		case <-ctx.Done():
 			return
 		}
 	}
 	c.mu.Lock()
 	recent := c.filled[fillKey(s, w.First)]
-	if !recent.Before(asked) || asked.Sub(recent) < 2*time.Second {
+	if !recent.Before(asked) || asked.Sub(recent) < 20*c.o.Poll {
 		c.mu.Unlock()
 		return
 	}

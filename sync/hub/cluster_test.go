@@ -126,6 +126,7 @@ func (c *cluster) leader() int {
 // A cluster of three nodes loses one, then its leader, then all data: every entry that was saved is in every device's
 // state exactly once.
 func TestClusterLosesNodesAndEverything(t *testing.T) {
+	t.Parallel()
 	soak := os.Getenv("CORDWALK_SOAK") == "1" // elections take their time: the whole of it runs there
 	cl := newCluster(t)
 	cl.ensure()

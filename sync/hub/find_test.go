@@ -12,6 +12,7 @@ import (
 )
 
 func TestParseEntry(t *testing.T) {
+	t.Parallel()
 	print := strings.Repeat("ab", 32)
 	good := mdns.ServiceEntry{Name: "front\\ desk._cordwalk._tcp.local.", Port: 4222, AddrV4: net.IPv4(10, 0, 0, 7), InfoFields: []string{"fp=" + print, "x"}}
 	f, ok := parseEntry(&good)
@@ -34,6 +35,7 @@ func TestParseEntry(t *testing.T) {
 // Where the machine has a network with multicast the hub is found by name; elsewhere announcing or finding says so
 // in one sentence and a typed address serves.
 func TestAnnounceAndFind(t *testing.T) {
+	t.Parallel()
 	a := Address{"127.0.0.1:4222", strings.Repeat("0a", 32)}
 	stop, err := Announce(a, "clinic.hub")
 	if err != nil {

@@ -84,6 +84,7 @@ func (f file) Save(h string, seq uint64) error {
 }
 
 func TestThreeDevicesMeetAtTheHub(t *testing.T) {
+	t.Parallel()
 	a := sharetest.Found(t)
 	b, c := sharetest.Join(t, a, "b"), sharetest.Join(t, a, "c")
 	sharetest.Add(t, a, "before the hub")
@@ -113,6 +114,7 @@ func TestThreeDevicesMeetAtTheHub(t *testing.T) {
 // The hub's process is stopped, started, and loses its whole folder: nothing that was recorded is lost,
 // nothing is there twice.
 func TestHubStopsAndLosesItsData(t *testing.T) {
+	t.Parallel()
 	a := sharetest.Found(t)
 	b := sharetest.Join(t, a, "b")
 	dir := filepath.Join(t.TempDir(), "hub")
@@ -168,6 +170,7 @@ func TestHubStopsAndLosesItsData(t *testing.T) {
 }
 
 func TestStrangersAreRefused(t *testing.T) {
+	t.Parallel()
 	a := sharetest.Found(t)
 	b := sharetest.Join(t, a, "b")
 	m := start(t, t.TempDir(), "127.0.0.1:0", a)
@@ -238,6 +241,7 @@ func TestStrangersAreRefused(t *testing.T) {
 
 // What lies on the hub is checked like what lies in a folder.
 func TestForgedMessagesAreLeftAlone(t *testing.T) {
+	t.Parallel()
 	a := sharetest.Found(t)
 	b := sharetest.Join(t, a, "b")
 	m := start(t, t.TempDir(), "127.0.0.1:0", a)
@@ -269,6 +273,7 @@ func TestForgedMessagesAreLeftAlone(t *testing.T) {
 }
 
 func TestAttachmentsTravelByHub(t *testing.T) {
+	t.Parallel()
 	a := sharetest.Found(t)
 	b := sharetest.Join(t, a, "b")
 	ctx := context.Background()
@@ -308,6 +313,7 @@ func TestAttachmentsTravelByHub(t *testing.T) {
 }
 
 func TestParseAddress(t *testing.T) {
+	t.Parallel()
 	print := fmt.Sprintf("%064x", 5)
 	for in, want := range map[string]hub.Address{
 		"hub": {Host: "hub:4222"}, "10.0.0.5:99": {Host: "10.0.0.5:99"}, "[::1]:7": {Host: "[::1]:7"}, "::1": {Host: "[::1]:4222"},

@@ -126,7 +126,8 @@ func (l *light) Renew(context.Context) error                                    
 // key to the other devices is told. CORDWALK_DEVICES and CORDWALK_SECONDS change how many and how long; in full it is 50
 // devices and 300 seconds.
 func TestManyDevicesAtOneHub(t *testing.T) {
-	devices, seconds := 8, 4
+	t.Parallel()
+	devices, seconds := 8, 3
 	if os.Getenv("CORDWALK_SOAK") == "1" {
 		devices, seconds = 50, 300
 	}
