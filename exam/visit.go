@@ -97,6 +97,38 @@ type DoseGiven struct {
 	Hours    float64 `json:"hours"`
 }
 
+// Attachment is a photo or a short clip of a visit. Its bytes lie sealed beside the store under Name;
+// a device may know of it before they have arrived.
+type Attachment struct {
+	ID     ID     `json:"id"`
+	Name   string `json:"name"`           // of the sealed file
+	Format string `json:"format"`         // one of AttachmentFormats
+	Size   int64  `json:"size"`           // bytes before sealing
+	Note   string `json:"note,omitempty"` // what it shows, in the therapist's words
+}
+
+// The largest attachments, in bytes before sealing (a choice: a photo of today's cameras, a minute of gait).
+const (
+	MaxPhoto = 25 << 20
+	MaxClip  = 200 << 20
+)
+
+var attachmentFormats = []string{"jpeg", "png", "mp4", "mov", "webm"}
+
+// AttachmentFormats lists the formats that are taken: two of photos, then three of clips.
+func AttachmentFormats() []string { return slices.Clone(attachmentFormats) }
+
+// Photo reports whether the attachment is a photo and no clip.
+func (a Attachment) Photo() bool { return a.Format == "jpeg" || a.Format == "png" }
+
+// StimRecord is what package stim keeps with a visit, in its own words: a strength–duration test, a
+// session of stimulation, or the answers given before the first session.
+type StimRecord struct {
+	ID   ID     `json:"id"`
+	Kind string `json:"kind"` // "test", "session" or "consent"
+	Data string `json:"data"` // JSON, see package stim
+}
+
 // VisitState of a visit.
 type VisitState uint8
 
@@ -149,6 +181,9 @@ type Visit struct {
 	NextVisit  Date
 	Amendments []Amendment
 	Answers    []Acknowledgement
+
+	Attachments []Attachment
+	Stim        []StimRecord
 }
 
 // Validate checks every part of the visit against the vocabulary and the species.

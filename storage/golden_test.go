@@ -28,6 +28,8 @@ func TestEncodingsStayAsTheyAre(t *testing.T) {
 		{"examined", encodeExamined(at, "X"), "01" + "a3" + "01" + "1a" + "69a55514" + "03" + "190e10" + "04" + "6158"},
 		{"measure", encodeMeasure(exam.Measured{Measure: exam.Weight, Value: 9.5, Clipped: true}), "01" + "a2" + "01" + "f948c0" + "03" + "f5"},
 		{"contact", encodeValue(exam.Contact{Name: "A", Phone: "1"}), "01" + "a2" + "01" + "6141" + "02" + "6131"},
+		{"attachment", encodeValue(exam.Attachment{Name: "ab", Format: "png", Size: 300, Note: "n"}), "01" + "a4" + "01" + "626162" + "02" + "63706e67" + "03" + "19012c" + "04" + "616e"},
+		{"stimulation", encodeValue(exam.StimRecord{Kind: "test", Data: "{}"}), "01" + "a2" + "01" + "6474657374" + "02" + "627b7d"},
 		{"doses", encodeValue([]exam.DoseGiven{{Medicine: "m", Hours: 2}}), "01" + "81" + "a2" + "01" + "616d" + "02" + "f94000"},
 	} {
 		if got := hex.EncodeToString(tt.value); got != tt.want {

@@ -12,6 +12,7 @@ import (
 	"go.etcd.io/bbolt"
 
 	"cordwalk.example/cordwalk/exam"
+	"cordwalk.example/cordwalk/exam/stim"
 	"cordwalk.example/cordwalk/sync/change"
 	"cordwalk.example/cordwalk/sync/merge"
 )
@@ -277,6 +278,15 @@ func visitWords(v exam.Visit, name string) string {
 			times = strconv.Itoa(h.Times) + " times a day"
 		}
 		return join(", ", h.Kind, times, h.Amount, h.How, h.StopFor, h.Override)
+	case len(v.Attachments) > 0:
+		x := v.Attachments[0]
+		kind := "clip"
+		if x.Photo() {
+			kind = "photo"
+		}
+		return join(", ", kind, x.Format, strconv.FormatInt(x.Size, 10)+" bytes", x.Note)
+	case len(v.Stim) > 0:
+		return stim.Words(v.Stim[0])
 	case len(v.Answers) > 0:
 		a := v.Answers[0]
 		return join(", ", a.Rule, "told "+a.Told, a.Note)

@@ -613,6 +613,22 @@ func setVisit(v *exam.Visit, name string, b []byte) error {
 		}
 		return err
 	}
+	if rest, ok := strings.CutPrefix(name, fieldAttachment); ok {
+		id, err := exam.ParseID(rest)
+		var w wireAttachment
+		if err = errors.Join(err, unpack(b, &w)); err == nil {
+			v.Attachments = append(v.Attachments, exam.Attachment{ID: id, Name: w.Name, Format: w.Format, Size: w.Size, Note: w.Note})
+		}
+		return err
+	}
+	if rest, ok := strings.CutPrefix(name, fieldStim); ok {
+		id, err := exam.ParseID(rest)
+		var w wireStim
+		if err = errors.Join(err, unpack(b, &w)); err == nil {
+			v.Stim = append(v.Stim, exam.StimRecord{ID: id, Kind: w.Kind, Data: w.Data})
+		}
+		return err
+	}
 	if strings.HasPrefix(name, fieldAnswer) {
 		var w wireAnswer
 		err := unpack(b, &w)

@@ -45,6 +45,7 @@ type Edit struct {
 //	          recheck-days note demo problem/ID precaution/ID goal/ID medicine/ID sent/ID
 //	visit     examined examiner protocol closed repeat-of sedation aid surface session doses report
 //	          note next-visit finding/CELL measure/CELL treatment/ID home/ID answer/RULE/TIME
+//	          attachment/ID stim/ID
 //	edge      same-as/ID of the other patient, see merge.EdgeKey
 const (
 	fieldFinding    = "finding/"
@@ -52,6 +53,8 @@ const (
 	fieldTreatment  = "treatment/"
 	fieldHome       = "home/"
 	fieldAnswer     = "answer/"
+	fieldAttachment = "attachment/"
+	fieldStim       = "stim/"
 	fieldProblem    = "problem/"
 	fieldPrecaution = "precaution/"
 	fieldGoal       = "goal/"
@@ -214,6 +217,8 @@ func VisitEdits(before, after exam.Visit) []Edit {
 	d.measures(before.Measures, after.Measures)
 	items(d, fieldTreatment, before.Treatments, after.Treatments, func(x *exam.Treatment) string { return itemID(&x.ID) })
 	items(d, fieldHome, before.Home, after.Home, func(x *exam.HomeExercise) string { return itemID(&x.ID) })
+	items(d, fieldAttachment, before.Attachments, after.Attachments, func(x *exam.Attachment) string { return itemID(&x.ID) })
+	items(d, fieldStim, before.Stim, after.Stim, func(x *exam.StimRecord) string { return itemID(&x.ID) })
 	single(d, "report", before.Report, after.Report)
 	d.word("note", before.Note, after.Note)
 	d.word("next-visit", string(before.NextVisit), string(after.NextVisit))

@@ -48,11 +48,13 @@ func sampleVisit(p exam.ID) exam.Visit {
 			{Item: exam.Patellar, Site: exam.PelvicLeft, Result: exam.Graded(2), How: exam.RestNormal},
 			{Item: exam.CutaneousTrunci, Site: exam.Left, Result: exam.Graded(1), Level: exam.NewVertebra(exam.RegionT, 13)},
 		},
-		Measures:   []exam.Measured{{Measure: exam.Weight, Value: 9.4}, {Measure: exam.ThighGirth, Site: exam.Left, Value: 34.5, At: 70, Clipped: true}},
-		Treatments: []exam.Treatment{{ID: storage.NewID(), Kind: "underwater-treadmill", Params: "1.2 m/s", Minutes: 10}},
-		Home:       []exam.HomeExercise{{ID: storage.NewID(), Kind: "sit-to-stand", Times: 3, DaysWeek: 7}},
-		Report:     exam.OwnerReport{Falls: "two", ExercisesDone: 5, ExercisesSet: 7},
-		Note:       "good day", NextVisit: "2026-03-09",
+		Measures:    []exam.Measured{{Measure: exam.Weight, Value: 9.4}, {Measure: exam.ThighGirth, Site: exam.Left, Value: 34.5, At: 70, Clipped: true}},
+		Treatments:  []exam.Treatment{{ID: storage.NewID(), Kind: "underwater-treadmill", Params: "1.2 m/s", Minutes: 10}},
+		Attachments: []exam.Attachment{{ID: storage.NewID(), Name: "0011.att", Format: "jpeg", Size: 123456, Note: "standing, from behind"}},
+		Stim:        []exam.StimRecord{{ID: storage.NewID(), Kind: "test", Data: `{"muscle":"quadriceps","site":"pelvic-left","readings":null}`}},
+		Home:        []exam.HomeExercise{{ID: storage.NewID(), Kind: "sit-to-stand", Times: 3, DaysWeek: 7}},
+		Report:      exam.OwnerReport{Falls: "two", ExercisesDone: 5, ExercisesSet: 7},
+		Note:        "good day", NextVisit: "2026-03-09",
 	}
 }
 

@@ -148,6 +148,18 @@ type wireHome struct {
 	Override string `cbor:"7,keyasint,omitempty"`
 }
 
+type wireAttachment struct {
+	Name   string `cbor:"1,keyasint"`
+	Format string `cbor:"2,keyasint"`
+	Size   int64  `cbor:"3,keyasint"`
+	Note   string `cbor:"4,keyasint,omitempty"`
+}
+
+type wireStim struct {
+	Kind string `cbor:"1,keyasint"`
+	Data string `cbor:"2,keyasint"`
+}
+
 type wireReport struct {
 	Falls         string `cbor:"1,keyasint,omitempty"`
 	Urine         string `cbor:"2,keyasint,omitempty"`
@@ -262,6 +274,10 @@ func encodeValue(v any) []byte {
 		return pack(wireTreatment{x.Kind, x.Site, x.Params, x.Minutes, x.Override})
 	case exam.HomeExercise:
 		return pack(wireHome{x.Kind, x.How, x.Times, x.DaysWeek, x.Amount, x.StopFor, x.Override})
+	case exam.Attachment:
+		return pack(wireAttachment{x.Name, x.Format, x.Size, x.Note})
+	case exam.StimRecord:
+		return pack(wireStim{x.Kind, x.Data})
 	case exam.OwnerReport:
 		return pack(wireReport(x))
 	case exam.Examiner:

@@ -629,6 +629,8 @@ func (s *ExamSheet) head() exam.Visit {
 	v.Doses = slices.Clone(v.Doses)
 	v.Treatments = slices.Clone(v.Treatments)
 	v.Home = slices.Clone(v.Home)
+	v.Attachments = slices.Clone(v.Attachments)
+	v.Stim = slices.Clone(v.Stim)
 	v.Amendments = slices.Clone(v.Amendments)
 	v.Answers = slices.Clone(v.Answers)
 	return v
