@@ -333,8 +333,8 @@ func (s *Store) stopExchange() {
 	clear(s.recv)
 }
 
-// Receive takes frames of another device in, to be kept under stream as. What is there
-// already is left out. They are safe when Commit has returned.
+// Receive takes frames of another device in, to be kept under stream as. b.Hashes must be theirs or be
+// missing. What is there already is left out. They are safe when Commit has returned.
 func (s *Store) Receive(ctx context.Context, as change.Stream, b segment.Block) error {
 	if err := ctx.Err(); err != nil {
 		return err
@@ -345,16 +345,22 @@ func (s *Store) Receive(ctx context.Context, as change.Stream, b segment.Block) 
 	if err != nil {
 		return explain("receiving", err)
 	}
+	if len(b.Hashes) != len(b.Frames) {
+		b.Hashes = make([]change.Hash, len(b.Frames))
+		for i, f := range b.Frames {
+			b.Hashes[i] = f.Hash()
+		}
+	}
 	if n := len(b.Frames); n > 0 && r.follows(b.Frames) { // the usual case, and a large one at first
 		last := b.Frames[n-1]
-		r.spans[len(r.spans)-1].Last, r.hash = last.Last, last.Hash()
+		r.spans[len(r.spans)-1].Last, r.hash = last.Last, b.Hashes[n-1]
 		r.fresh += int(last.Last - b.Frames[0].First + 1)
 		return s.addReceived(as, r, b.Raw)
 	}
 	var raw []byte
-	for _, f := range b.Frames {
+	for i, f := range b.Frames {
 		if f.Stream != as && len(r.spans) == 0 {
-			if segment.ForkOf(f.Stream, f.Hash()) != as {
+			if segment.ForkOf(f.Stream, b.Hashes[i]) != as {
 				return fmt.Errorf("receiving: %w: the entries are not of the stream they are to be kept in", change.ErrMalformed)
 			}
 			r.of = f.Stream
@@ -373,7 +379,7 @@ func (s *Store) Receive(ctx context.Context, as change.Stream, b segment.Block) 
 			s.lateNow[as] = true
 			s.mu.Unlock()
 		} else {
-			r.hash = f.Hash()
+			r.hash = b.Hashes[i]
 		}
 		r.spans = merge.AddSpan(r.spans, merge.Span{First: f.First, Last: f.Last})
 		r.fresh += int(f.Last - f.First + 1)

@@ -39,8 +39,8 @@ type Journal interface {
 	Streams(ctx context.Context) ([]Held, error)
 	// Frames calls f for each frame held of the stream that ends at number from or later, in order.
 	Frames(ctx context.Context, s change.Stream, from uint64, f func(change.Frame) error) error
-	// Receive takes frames of another device in. They may be repeats, and need not follow what is
-	// held. They are safe when Commit has returned, and readers see them soon after. Under as they are
+	// Receive takes frames of another device in, whose memory is the caller's again afterwards. They may
+	// be repeats, and need not follow what is held. They are safe when Commit has returned, and readers see them soon after. Under as they are
 	// kept and shown: it differs from the frames' own stream for the second branch of a fork.
 	Receive(ctx context.Context, as change.Stream, b segment.Block) error
 	// Commit makes what was received of a stream durable, and keeps the signed head that covers it, if
@@ -736,6 +736,7 @@ func TakeSegment(ctx context.Context, j Journal, rd *segment.Reader, held []Held
 			}
 			received += len(part.block.Frames)
 		}
+		segment.Recycle(block)
 	}
 	delete(used, b.as)
 	for as := range used {
@@ -825,11 +826,21 @@ type part struct {
 
 // split leaves out of a block what we hold, and parts it where it begins to differ.
 func (b *brancher) split(block segment.Block) (parts []part, err error) {
+	n := len(block.Frames)
+	if n == 0 {
+		return nil, nil
+	}
+	// The usual case: all is new and goes on where we stand. The reader saw to it that each frame follows the
+	// one before it.
+	if first := block.Frames[0]; len(b.ours) == 0 && (b.end == 0 || first.First == b.end+1 && first.Prev == b.head) {
+		b.end, b.head = block.Frames[n-1].Last, block.Hashes[n-1]
+		return []part{{as: b.as, block: block}}, nil
+	}
 	for i, f := range block.Frames {
 		fork, skip := false, false
 		for {
 			ours, have := b.ours[f.First]
-			if have && ours == f.Hash() {
+			if have && ours == block.Hashes[i] {
 				skip = true
 				break
 			}
@@ -837,7 +848,7 @@ func (b *brancher) split(block segment.Block) (parts []part, err error) {
 			if !have && (f.First != b.end+1 || f.Prev == b.head || b.end == 0) {
 				break
 			}
-			as := segment.ForkOf(f.Stream, f.Hash())
+			as := segment.ForkOf(f.Stream, block.Hashes[i])
 			fork = !slices.ContainsFunc(b.held, func(h Held) bool { return h.Stream == as })
 			if err := b.onto(as); err != nil {
 				return nil, err
@@ -850,7 +861,7 @@ func (b *brancher) split(block segment.Block) (parts []part, err error) {
 			continue
 		}
 		if f.First == b.end+1 || b.end == 0 {
-			b.end, b.head = f.Last, f.Hash()
+			b.end, b.head = f.Last, block.Hashes[i]
 		}
 		if n := len(parts); n == 0 || parts[n-1].as != b.as {
 			parts = append(parts, part{as: b.as, fork: fork})
@@ -859,6 +870,7 @@ func (b *brancher) split(block segment.Block) (parts []part, err error) {
 		p.Raw = append(p.Raw, f.Raw...)
 		p.Frames = append(p.Frames, f)
 		p.Plain = append(p.Plain, block.Plain[i])
+		p.Hashes = append(p.Hashes, block.Hashes[i])
 	}
 	if len(parts) == 1 && len(parts[0].block.Frames) == len(block.Frames) {
 		parts[0].block = block

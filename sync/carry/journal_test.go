@@ -185,6 +185,7 @@ func (m *memory) Receive(_ context.Context, as change.Stream, b segment.Block) e
 		if _, err := change.Open(f, m.bag.Ring); err != nil {
 			return err
 		}
+		f.Raw = slices.Clone(f.Raw) // the block's memory is not ours
 		m.ready[as] = append(m.ready[as], f)
 	}
 	return nil

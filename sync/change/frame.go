@@ -100,17 +100,25 @@ func ParseHeader(b []byte) (Header, error) {
 		Length: binary.BigEndian.Uint32(b[64:]),
 		Prev:   Hash(b[68:100]),
 	}
-	switch {
-	case h.Major == 0:
-		return Header{}, fmt.Errorf("%w: a frame of version 0", ErrMalformed)
-	case h.Length > MaxBody || h.Length < Overhead:
-		return Header{}, fmt.Errorf("%w: a frame's body has %d bytes, allowed are %d to %d", ErrMalformed, h.Length, Overhead, MaxBody)
-	case h.First == 0 || h.Last < h.First || h.Last-h.First >= MaxChanges:
-		return Header{}, fmt.Errorf("%w: a frame says it holds changes %d to %d", ErrMalformed, h.First, h.Last)
-	case (h.First == 1) != h.Prev.IsZero():
-		return Header{}, fmt.Errorf("%w: a frame that begins at %d names %s as the frame before it", ErrMalformed, h.First, h.Prev)
+	if err := h.check(); err != nil {
+		return Header{}, err
 	}
 	return h, nil
+}
+
+// check reports what no header may say.
+func (h Header) check() error {
+	switch {
+	case h.Major == 0:
+		return fmt.Errorf("%w: a frame of version 0", ErrMalformed)
+	case h.Length > MaxBody || h.Length < Overhead:
+		return fmt.Errorf("%w: a frame's body has %d bytes, allowed are %d to %d", ErrMalformed, h.Length, Overhead, MaxBody)
+	case h.First == 0 || h.Last < h.First || h.Last-h.First >= MaxChanges:
+		return fmt.Errorf("%w: a frame says it holds changes %d to %d", ErrMalformed, h.First, h.Last)
+	case (h.First == 1) != h.Prev.IsZero():
+		return fmt.Errorf("%w: a frame that begins at %d names %s as the frame before it", ErrMalformed, h.First, h.Prev)
+	}
+	return nil
 }
 
 // Size returns the length of the whole frame in bytes.
@@ -270,10 +278,12 @@ func Reseal(dst []byte, h Header, nonce, plain []byte, keys Keys) ([]byte, Frame
 		return dst, Frame{}, fmt.Errorf("%w: a batch of %d bytes", ErrMalformed, len(plain))
 	}
 	h.Length = uint32(len(plain) + Overhead)
+	if err := h.check(); err != nil {
+		return dst, Frame{}, err
+	}
 	start := len(dst)
 	dst = h.append(dst)
 	dst = append(dst, nonce...)
 	dst = aead.Seal(dst, nonce, plain, dst[start:start+HeaderSize])
-	f, err := ParseFrame(dst[start:])
-	return dst, f, err
+	return dst, Frame{Header: h, Raw: dst[start:len(dst):len(dst)]}, nil
 }

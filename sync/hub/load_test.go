@@ -108,6 +108,7 @@ func (l *light) Receive(_ context.Context, as change.Stream, b segment.Block) er
 		if err != nil {
 			return err
 		}
+		f.Raw = slices.Clone(f.Raw) // the block's memory is not ours
 		l.keep(as, f)
 		for _, c := range batch.Changes {
 			l.seen[c.ID]++

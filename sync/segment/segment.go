@@ -326,7 +326,29 @@ func (b *Builder) Finish(w io.Writer, signed Signed) (Header, [32]byte, error) {
 type Block struct {
 	Raw    []byte // the frames, one behind the other, as a journal keeps them
 	Frames []change.Frame
-	Plain  [][]byte // of each frame the encoded batch, nil where it could not be opened
+	Plain  [][]byte      // of each frame the encoded batch, nil where it could not be opened
+	Hashes []change.Hash // of each frame the chain hash
+
+	entries []byte // where Plain lies
+}
+
+// rooms keeps the memory of blocks that were given back: a long segment needs that of a few blocks only.
+var rooms sync.Pool
+
+// Recycle gives the memory of a block back. Nothing of the block may be used any more.
+func Recycle(b Block) {
+	if cap(b.entries) > 0 && cap(b.Raw) <= 4*blockRaw {
+		clear(b.Frames)
+		clear(b.Plain)
+		rooms.Put(&Block{b.Raw[:0], b.Frames[:0], b.Plain[:0], b.Hashes[:0], b.entries[:0]})
+	}
+}
+
+func room() Block {
+	if b, ok := rooms.Get().(*Block); ok {
+		return *b
+	}
+	return Block{}
 }
 
 // Reader reads a segment block by block.
@@ -344,6 +366,8 @@ type Reader struct {
 	taken  int
 	done   bool
 	name   [32]byte
+	sealed []byte    // the block that was read last
+	packed []byte    // and what it holds
 	ahead  chan read // see Ahead
 	stop   chan struct{}
 }
@@ -380,7 +404,7 @@ func short(err error, n int) error {
 	return err
 }
 
-// Next returns the next block; its memory is the caller's. The error io.EOF means that the
+// Next returns the next block; its memory is the caller's, who may hand it to Recycle. The error io.EOF means that the
 // segment was complete and everything in it fits together; what was returned before any other
 // error must be thrown away, or may be kept as far as it follows what the caller holds.
 func (r *Reader) Next() (Block, error) {
@@ -397,7 +421,7 @@ func (r *Reader) Next() (Block, error) {
 // Ahead begins to read the whole segment in the background, so that several can be opened at once. Call Stop
 // if Next is not called to the end.
 func (r *Reader) Ahead() {
-	ahead, stop := make(chan read, 64), make(chan struct{})
+	ahead, stop := make(chan read, 16), make(chan struct{})
 	r.ahead, r.stop = ahead, stop
 	go func() {
 		defer close(ahead)
@@ -441,7 +465,10 @@ func (r *Reader) next() (Block, error) {
 	if size > maxSealed || r.taken+size > MaxSize {
 		return Block{}, fmt.Errorf("%w: a block of %d bytes", change.ErrMalformed, size)
 	}
-	sealed := make([]byte, size)
+	if cap(r.sealed) < size {
+		r.sealed = make([]byte, size)
+	}
+	sealed := r.sealed[:size]
 	if n, err := io.ReadFull(r.r, sealed); err != nil {
 		return Block{}, short(err, r.taken+n)
 	}
@@ -452,13 +479,14 @@ func (r *Reader) next() (Block, error) {
 		return Block{}, fmt.Errorf("block %d of a segment of stream %s: %w", r.n, r.Stream, err)
 	}
 	r.n++
+	b := room()
 	d := decoders.Get().(*zstd.Decoder)
-	entries, err := d.DecodeAll(packed, nil)
+	b.entries, err = d.DecodeAll(packed, b.entries)
 	decoders.Put(d)
 	if err != nil {
 		return Block{}, fmt.Errorf("%w: a block does not unpack: %s", change.ErrMalformed, err)
 	}
-	return r.unpack(entries)
+	return r.unpack(b)
 }
 
 func (r *Reader) finish() error {
@@ -483,11 +511,15 @@ func (r *Reader) finish() error {
 // Name returns the trailing hash once Next has returned io.EOF.
 func (r *Reader) Name() [32]byte { return r.name }
 
-func (r *Reader) unpack(entries []byte) (Block, error) {
+// unpack makes frames of the entries of a block.
+func (r *Reader) unpack(b Block) (Block, error) {
+	entries := b.entries
 	bad := func(what string) (Block, error) {
 		return Block{}, fmt.Errorf("%w: segment of stream %s behind %d: %s", change.ErrMalformed, r.Stream, r.last, what)
 	}
-	b := Block{Raw: make([]byte, 0, len(entries)+len(entries)/2)}
+	if need := len(entries) + len(entries)/2; cap(b.Raw) < need {
+		b.Raw = make([]byte, 0, need)
+	}
 	number := func() (uint64, bool) {
 		v, n := binary.Uvarint(entries)
 		if n <= 0 || n > 1 && entries[n-1] == 0 {
@@ -496,12 +528,9 @@ func (r *Reader) unpack(entries []byte) (Block, error) {
 		entries = entries[n:]
 		return v, true
 	}
-	type place struct{ from, to int }
-	var places []place
 	for len(entries) > 0 {
 		kind := entries[0]
 		entries = entries[1:]
-		from := len(b.Raw)
 		var f change.Frame
 		var plain []byte
 		var err error
@@ -546,18 +575,21 @@ func (r *Reader) unpack(entries []byte) (Block, error) {
 			return bad("a frame does not follow the one before it")
 		}
 		r.last, r.head = f.Last, f.Hash()
+		b.Hashes = append(b.Hashes, r.head)
 		if r.frames++; r.frames > r.Frames {
 			return bad("there are more frames than the header says")
 		}
 		if r.raw += len(f.Raw); r.raw > MaxRaw {
 			return bad("its frames are too many bytes")
 		}
-		places = append(places, place{from, len(b.Raw)})
 		b.Frames = append(b.Frames, f)
 		b.Plain = append(b.Plain, plain)
 	}
-	for i, p := range places { // growing may have moved the memory
-		b.Frames[i].Raw = b.Raw[p.from:p.to:p.to]
+	at := 0
+	for i := range b.Frames { // growing may have moved the memory
+		end := at + b.Frames[i].Size()
+		b.Frames[i].Raw = b.Raw[at:end:end]
+		at = end
 	}
 	return b, nil
 }
