@@ -145,6 +145,10 @@ type visitJSON struct {
 	NextVisit  exam.Date           `json:"next_visit,omitempty"`
 	Amendments []amendmentJSON     `json:"amendments,omitempty"`
 	Answers    []answerJSON        `json:"answers,omitempty"`
+
+	// Of an attachment the file says only that it is there: its bytes stay sealed beside the store.
+	Attachments []exam.Attachment `json:"attachments,omitempty"`
+	Stim        []exam.StimRecord `json:"stimulation,omitempty"`
 }
 
 type findingJSON struct {
@@ -296,7 +300,8 @@ func animalOut(a Animal) animalJSON {
 func visitOut(v exam.Visit) visitJSON {
 	out := visitJSON{ID: v.ID, Examined: stamp(v.Examined), Zone: v.Zone, Examiner: v.Examiner, Protocol: v.Protocol, State: "open",
 		ClosedAt: stamp(v.ClosedAt), Aid: v.Aid, Surface: v.Surface, Session: v.Session, Doses: v.Doses, Findings: []findingJSON{},
-		Treatments: v.Treatments, Home: v.Home, Report: unless(v.Report), Note: v.Note, NextVisit: v.NextVisit}
+		Treatments: v.Treatments, Home: v.Home, Report: unless(v.Report), Note: v.Note, NextVisit: v.NextVisit,
+		Attachments: v.Attachments, Stim: v.Stim}
 	if v.State == exam.Closed {
 		out.State = "closed"
 	}
@@ -603,7 +608,8 @@ func date(p *place, name string, d exam.Date) exam.Date {
 func visitIn(p *place, j visitJSON, patient exam.ID) exam.Visit {
 	v := exam.Visit{ID: j.ID, Patient: patient, Examined: p.time("examined", j.Examined), Zone: j.Zone, Examiner: j.Examiner, Protocol: j.Protocol,
 		ClosedAt: p.time("closed_at", j.ClosedAt), RepeatOf: deref(j.RepeatOf), Aid: j.Aid, Surface: j.Surface, Session: j.Session, Doses: j.Doses,
-		Treatments: j.Treatments, Home: j.Home, Report: deref(j.Report), Note: j.Note, NextVisit: date(p, "next_visit", j.NextVisit)}
+		Treatments: j.Treatments, Home: j.Home, Report: deref(j.Report), Note: j.Note, NextVisit: date(p, "next_visit", j.NextVisit),
+		Attachments: j.Attachments, Stim: j.Stim}
 	switch j.State {
 	case "", "open":
 	case "closed":

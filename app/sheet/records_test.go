@@ -122,6 +122,8 @@ func anyVisit(t *rapid.T, s exam.Species, patient exam.ID) exam.Visit {
 		v.Treatments = []exam.Treatment{{ID: anyID(t), Kind: "massage", Site: "left", Params: anyText(t, "params"), Minutes: rapid.Float64Range(0, 90).Draw(t, "minutes"), Override: anyText(t, "override")}}
 		v.Home = []exam.HomeExercise{{ID: anyID(t), Kind: "walk", How: anyText(t, "how"), Times: 3, DaysWeek: 5, Amount: anyText(t, "amount"), StopFor: anyText(t, "stop"), Override: anyText(t, "o")}}
 		v.Report = exam.OwnerReport{Falls: anyText(t, "falls"), Urine: anyText(t, "urine"), Appetite: anyText(t, "appetite"), ExercisesDone: 3, ExercisesSet: 5, Words: anyText(t, "words")}
+		v.Attachments = []exam.Attachment{{ID: anyID(t), Name: "00ff.att", Format: "jpeg", Size: rapid.Int64Range(1, 1<<27).Draw(t, "size"), Note: anyText(t, "shows")}}
+		v.Stim = []exam.StimRecord{{ID: anyID(t), Kind: "test", Data: `{"muscle":"quadriceps"}`}}
 		v.Answers = []exam.Acknowledgement{{Rule: "r", Told: anyText(t, "told"), Note: anyText(t, "n"), Examiner: "e", At: anyTime(t)}}
 	}
 	return v
