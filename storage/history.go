@@ -29,8 +29,10 @@ type Entry struct {
 	At       time.Time
 	How      string // "edit", "amend", "accept", "pick", "undo", …
 	Reason   string
-	Current  bool // it counts now
-	Late     bool // it arrived after the visit was closed and was not accepted
+	Raw      []byte   // the value as an Edit holds it; nil where the field was cleared
+	Replaced [][]byte // what it replaced, likewise
+	Current  bool     // it counts now
+	Late     bool     // it arrived after the visit was closed and was not accepted
 }
 
 // History returns every change that a patient, its visits and those it is joined with ever
@@ -72,7 +74,7 @@ func (s *Store) History(id exam.ID) ([]Entry, error) {
 				st := merge.Evaluate(f.versions, c)
 				for _, ch := range f.versions {
 					e := Entry{Record: r.id, Kind: r.kind, Field: f.name, Value: s.words(r.kind, f.name, ch), Before: s.before(r.kind, f, ch),
-						Examiner: ch.Examiner, Device: s.deviceWord(ch.Stream), At: ch.Time.Time(), How: ch.Act.String(), Reason: ch.Reason,
+						Examiner: ch.Examiner, Device: s.deviceWord(ch.Stream), At: ch.Time.Time(), How: ch.Act.String(), Reason: ch.Reason, Raw: ch.Value, Replaced: replaced(f, ch),
 						Current: among(st.Current, ch), Late: among(st.Late, ch)}
 					lines = append(lines, line{ch, e})
 				}
@@ -97,6 +99,16 @@ func among(vs []change.Change, c change.Change) bool {
 		}
 	}
 	return false
+}
+
+// replaced returns the values that a change replaced.
+func replaced(f field, c change.Change) (out [][]byte) {
+	for _, v := range f.versions {
+		if !v.Cleared() && slices.Contains(c.Supersedes, v.ID) {
+			out = append(out, v.Value)
+		}
+	}
+	return out
 }
 
 // before returns what a change replaced, in words.

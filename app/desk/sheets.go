@@ -101,6 +101,7 @@ func globalKeys() []view.KeyHelp {
 		{Keys: "Ctrl+F", Does: words.T("search in the caseload")},
 		{Keys: "Ctrl+N", Does: words.T("new patient")},
 		{Keys: "Ctrl+E", Does: words.T("edit this patient")},
+		{Keys: "Ctrl+H", Does: words.T("who changed what of this patient, and when")},
 		{Keys: "Ctrl+T", Does: words.T("this screen again in a second window")},
 		{Keys: "Ctrl+,", Does: words.T("settings")},
 		{Keys: words.T("Alt+Left, Alt+Right"), Does: words.T("back and forward")},

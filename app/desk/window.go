@@ -110,10 +110,15 @@ func (w *window) show(p page) {
 	w.strip.update()
 	w.rail.update()
 	w.foot.update()
+	w.layout()
+	p.shown()
+}
+
+// layout gives rail, strip, page and foot their places anew.
+func (w *window) layout() {
 	if root := w.root(); root != nil {
 		root.Layout.Layout(root.Objects, root.Size())
 	}
-	p.shown()
 }
 
 // title names the window by what it shows: the screen, and the animal.
@@ -211,6 +216,10 @@ func (w *window) openFile(r view.Route) {
 		w.show(newCoursePage(w))
 	case view.ScreenSheet:
 		w.show(newSheetPage(w))
+	case view.ScreenChoices:
+		w.show(newChoicesPage(w))
+	case view.ScreenHistory:
+		w.show(newHistoryPage(w))
 	default:
 		w.goTo(view.Route{Screen: view.ScreenCaseload})
 	}
@@ -254,6 +263,11 @@ func (w *window) keys() {
 	ctrl(fyne.KeyE, func() {
 		if id := w.patient(); !id.IsZero() {
 			w.goTo(view.Route{Screen: view.ScreenPatient, Patient: id})
+		}
+	})
+	ctrl(fyne.KeyH, func() {
+		if id := w.patient(); !id.IsZero() {
+			w.goTo(view.Route{Screen: view.ScreenHistory, Patient: id})
 		}
 	})
 	ctrl(fyne.KeyComma, func() { w.goTo(view.Route{Screen: view.ScreenSettings}) })

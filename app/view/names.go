@@ -179,7 +179,7 @@ func Terms() []string {
 		out = append(out, measureKey(m))
 	}
 	for _, r := range alert.Rules() {
-		out = append(out, r.Name)
+		out = append(out, r.Name, r.Why)
 	}
 	for _, s := range plainAlerts {
 		out = append(out, s)
@@ -204,6 +204,7 @@ func Terms() []string {
 	out = append(out, outcomeTerms()...)
 	out = append(out, positionTitles[:]...)
 	out = append(out, sectionTitles[:]...)
+	out = append(out, fieldTerms()...)
 	out = append(out, "medial digit", "lateral digit", "female", "male", "unknown", "active", "discharged", "died",
 		"sedation", "aid", "surface", "session", "medicines", "none", "mild", "moderate", "deep")
 	out = append(out, exam.AidWords()...)

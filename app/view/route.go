@@ -21,11 +21,13 @@ const (
 	ScreenPatient
 	ScreenSettings
 	ScreenOutcomes
+	ScreenChoices
+	ScreenHistory
 	ScreenFirstRun
 	screenCount
 )
 
-var screenWords = [screenCount]string{"caseload", "exam", "compare", "course", "sheet", "devices", "patient", "settings", "outcomes", "first-run"}
+var screenWords = [screenCount]string{"caseload", "exam", "compare", "course", "sheet", "devices", "patient", "settings", "outcomes", "choices", "history", "first-run"}
 
 // String returns the screen's stable word.
 func (s Screen) String() string {
