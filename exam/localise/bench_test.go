@@ -155,7 +155,7 @@ func BenchmarkRatio(b *testing.B) {
 		like := h.prior
 		byGroup := map[int][]exam.Finding{}
 		for _, f := range x.Findings {
-			g := e.m.lay.cells[e.m.lay.byKey[f.Key()]].group
+			g := e.m.lay.cells[mustFind(e.m.lay, f.Key())].group
 			byGroup[g] = append(byGroup[g], f)
 		}
 		for _, fs := range byGroup {
@@ -164,7 +164,7 @@ func BenchmarkRatio(b *testing.B) {
 				p := qw[q]
 				for _, f := range fs {
 					g, _ := f.Result.Grade()
-					p *= ref.grades(&e.m.lay.cells[e.m.lay.byKey[f.Key()]], st, u)[g-f.Item.Info().First]
+					p *= ref.grades(&e.m.lay.cells[mustFind(e.m.lay, f.Key())], st, u)[g-f.Item.Info().First]
 				}
 				part += p
 			}

@@ -17,7 +17,8 @@ type cell struct {
 	side   int // left or right; left for the midline
 	place  int // palpation place of spinal pain
 	group  int
-	cats   int // categories: grades in order, for cutaneous trunci also the level
+	low    int8 // the lowest grade
+	cats   int  // categories: grades in order, for cutaneous trunci also the level
 	row    func(sp *space, c *cell, st *state, out *rowKey)
 }
 
@@ -67,7 +68,28 @@ func trunciCategory(s exam.Species, f exam.Finding) int {
 type layout struct {
 	cells  []cell
 	groups []string
-	byKey  map[exam.Key]int
+	first  [256][64]int16 // by item and site: the first of its cells, −1 where there is none
+}
+
+// find returns the cell of a key. The cells of an item and site lie together.
+func (l *layout) find(k exam.Key) (int, bool) {
+	if int(k.Site) >= len(l.first[0]) {
+		return 0, false
+	}
+	i := int(l.first[k.Item][k.Site])
+	if i < 0 {
+		return 0, false
+	}
+	for ; i < len(l.cells); i++ {
+		c := &l.cells[i]
+		if c.item != k.Item || c.site != k.Site {
+			break
+		}
+		if c.digit == k.Digit && c.joint == k.Joint {
+			return i, true
+		}
+	}
+	return 0, false
 }
 
 // groupOf names the group of a cell. Cells of one group are tests of one arc on one limb
@@ -180,7 +202,12 @@ func pelvicItem(i exam.Item) bool {
 }
 
 func newLayout() *layout {
-	lay := &layout{byKey: map[exam.Key]int{}}
+	lay := &layout{}
+	for i := range lay.first {
+		for j := range lay.first[i] {
+			lay.first[i][j] = -1
+		}
+	}
 	groups := map[string]int{}
 	for _, item := range exam.Items() {
 		if silent(item) {
@@ -201,7 +228,7 @@ func newLayout() *layout {
 			}
 			for _, d := range digits {
 				for _, j := range joints {
-					c := cell{item: item, site: site, digit: d, joint: j, cats: len(in.Grades), row: ordinalRow}
+					c := cell{item: item, site: site, digit: d, joint: j, low: in.First, cats: len(in.Grades), row: ordinalRow}
 					if site.Side() == exam.Right {
 						c.side = right
 					}
@@ -231,7 +258,9 @@ func newLayout() *layout {
 						lay.groups = append(lay.groups, name)
 					}
 					c.group = g
-					lay.byKey[c.key()] = len(lay.cells)
+					if lay.first[item][site] < 0 {
+						lay.first[item][site] = int16(len(lay.cells))
+					}
 					lay.cells = append(lay.cells, c)
 				}
 			}

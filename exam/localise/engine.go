@@ -174,7 +174,7 @@ func (e *Engine) Update(f exam.Finding) *Result {
 // Change is Update without the answer: for several cells that change at once, or where
 // only Leading is wanted.
 func (e *Engine) Change(f exam.Finding) {
-	i, ok := e.m.lay.byKey[f.Key()]
+	i, ok := e.m.lay.find(f.Key())
 	if !ok {
 		return
 	}
@@ -204,7 +204,7 @@ func (e *Engine) clear(i int) {
 
 // put enters a finding. Of two findings of one cell the lower category stays, whatever their order.
 func (e *Engine) put(f exam.Finding) {
-	i, ok := e.m.lay.byKey[f.Key()]
+	i, ok := e.m.lay.find(f.Key())
 	if !ok {
 		return
 	}
@@ -213,7 +213,7 @@ func (e *Engine) put(f exam.Finding) {
 		return
 	}
 	c := &e.m.lay.cells[i]
-	cat := int16(g - f.Item.Info().First)
+	cat := int16(g - c.low)
 	if c.item == exam.CutaneousTrunci {
 		cat = int16(trunciCategory(e.m.species, f))
 	}
@@ -233,7 +233,7 @@ func (e *Engine) put(f exam.Finding) {
 // widen makes the grade in a cell stand for every grade as far from normal or further, and
 // for every lesser one on the same side of normal: only that it is ill is known.
 func (e *Engine) widen(k exam.Key) {
-	i, ok := e.m.lay.byKey[k]
+	i, ok := e.m.lay.find(k)
 	if !ok || e.obs[i] < 0 || e.m.lay.cells[i].item == exam.CutaneousTrunci {
 		return
 	}

@@ -4,6 +4,8 @@ import (
 	"flag"
 	"os"
 	"testing"
+
+	"cordwalk.example/cordwalk/exam"
 )
 
 // TestMain runs fewer random exams than rapid's hundred unless the long counts are asked for.
@@ -21,4 +23,12 @@ func TestMain(m *testing.M) {
 		}
 	}
 	os.Exit(m.Run())
+}
+
+// mustFind is the cell of a key, or −1.
+func mustFind(l *layout, k exam.Key) int {
+	if i, ok := l.find(k); ok {
+		return i
+	}
+	return -1
 }

@@ -85,10 +85,8 @@ type pair struct {
 	class uint16
 }
 
-var (
-	dogModel = sync.OnceValues(func() (*Model, error) { return newModel(exam.Dog, nil) })
-	catModel = sync.OnceValues(func() (*Model, error) { return newModel(exam.Cat, nil) })
-)
+// models holds the tables that were made and not forgotten: exam.Species → func() (*Model, error).
+var models sync.Map
 
 // Unsupported is the error for a species that the engine has no anatomy for.
 type Unsupported struct{ Species exam.Species }
@@ -100,14 +98,16 @@ func (e *Unsupported) Error() string {
 // ModelOf returns the tables of a species, made at the first call and shared from then on.
 // The error is an *Unsupported for other species than dog and cat.
 func ModelOf(s exam.Species) (*Model, error) {
-	switch s {
-	case exam.Dog:
-		return dogModel()
-	case exam.Cat:
-		return catModel()
+	if s != exam.Dog && s != exam.Cat {
+		return nil, &Unsupported{s}
 	}
-	return nil, &Unsupported{s}
+	f, _ := models.LoadOrStore(s, sync.OnceValues(func() (*Model, error) { return newModel(s, nil) }))
+	return f.(func() (*Model, error))()
 }
+
+// Forget lets go of a species' tables, tens of megabytes, for a program that runs all day. Engines
+// at work keep theirs; the next call of ModelOf makes them anew, which takes about half a second.
+func Forget(s exam.Species) { models.Delete(s) }
 
 // newModel builds the tables from the parameters; nil means the species' own.
 func newModel(s exam.Species, p *Params) (*Model, error) {
@@ -289,11 +289,11 @@ func (m *Model) tabulate() {
 		g.cells = append(g.cells, i)
 		g.rows = append(g.rows, nil)
 	}
+	m.list()
 	var wait sync.WaitGroup
 	for _, part := range m.shares(min(runtime.GOMAXPROCS(0), 4)) {
 		wait.Go(func() { m.tabulateGroups(part) })
 	}
-	m.list()
 	wait.Wait()
 	for i := range m.groups {
 		if len(m.groups[i].pairs) > 1<<16 || m.groups[i].sigs > 1<<16 {
@@ -350,6 +350,10 @@ func (m *Model) shares(n int) [][]int {
 
 // list fills what is kept of each hypothesis by itself.
 func (m *Model) list() {
+	n := 0
+	m.sp.each(func(*hypothesis) { n++ })
+	m.prior, m.siteOf, m.damage = make([]int64, 0, n), make([]uint16, 0, n), make([]uint16, 0, n)
+	m.acute, m.timed, m.severity = make([]bool, 0, n), make([]bool, 0, n), make([]uint8, 0, n)
 	damages := map[[3]int]uint16{}
 	m.sp.each(func(h *hypothesis) {
 		if h.site.kind == NoLesion {
@@ -374,10 +378,14 @@ func (m *Model) list() {
 
 func (m *Model) tabulateGroups(part []int) {
 	cells := m.lay.cells
+	// What a row answers is worked out once all rows are known, so that the tables are made at
+	// their size: grown by doubling they would take three times the memory for a while.
 	finders := make([]*finder, len(m.sets))
+	keys := make([][]rowKey, len(m.sets))
 	sigs, pairs := make([]*intern, len(m.groups)), make([]*intern, len(m.groups))
 	for _, gi := range part {
 		sigs[gi], pairs[gi] = newIntern(), newIntern()
+		m.groups[gi].of = make([]uint16, 0, m.hyps)
 		for _, ci := range m.groups[gi].cells {
 			if finders[m.setOf[ci]] == nil {
 				finders[m.setOf[ci]] = newFinder()
@@ -394,8 +402,6 @@ func (m *Model) tabulateGroups(part []int) {
 		of   uint16
 		warm bool
 	}, len(m.groups))
-	var out [32][points]float64
-	_, qw := m.p.quadrature()
 	m.sp.each(func(h *hypothesis) {
 		m.sp.build(h, &b, &other)
 		st.derive(&b, &m.sp.arcs[h.variant], m.p)
@@ -405,24 +411,16 @@ func (m *Model) tabulateGroups(part []int) {
 			for k, ci := range g.cells {
 				c := &cells[ci]
 				c.row(m.sp, c, &st, &key)
-				set := &m.sets[m.setOf[ci]]
-				row, ok := finders[m.setOf[ci]].find(key)
+				set := m.setOf[ci]
+				row, ok := finders[set].find(key)
 				if !ok {
-					n := len(set.margin) / set.cats
+					n := len(keys[set])
 					if n >= 1<<16 {
 						panic("localise: too many distinct answers of " + c.item.String())
 					}
 					row = uint16(n)
-					finders[m.setOf[ci]].put(key, row)
-					m.p.rowOf(m.species, c, key, out[:set.cats])
-					for cat := range set.cats {
-						sum := 0.0
-						for q := range points {
-							set.p = append(set.p, out[cat][q])
-							sum += float64(qw[q] * out[cat][q])
-						}
-						set.margin = append(set.margin, sum)
-					}
+					finders[set].put(key, row)
+					keys[set] = append(keys[set], key)
 				}
 				scratch[k] = row
 				hash = (hash ^ uint64(row)) * 1099511628211
@@ -467,9 +465,37 @@ func (m *Model) tabulateGroups(part []int) {
 			lt.hash, lt.pair, lt.of, lt.warm = hash, pair{sig, h.site.class}, pi, true
 		}
 	})
+	clear(finders)
+	clear(sigs)
+	clear(pairs)
 	for _, gi := range part { // what grew by doubling is cut to size
 		g := &m.groups[gi]
-		g.of, g.pairs = slices.Clip(g.of), slices.Clip(g.pairs)
+		g.pairs = slices.Clone(g.pairs)
+		for k, ci := range g.cells {
+			g.rows[k] = slices.Clone(g.rows[k])
+			if set := m.setOf[ci]; m.sets[set].p == nil {
+				m.answers(&m.sets[set], &cells[ci], keys[set])
+				keys[set] = nil
+			}
+		}
+	}
+}
+
+// answers fills a row set from the keys of its rows.
+func (m *Model) answers(set *rowSet, c *cell, keys []rowKey) {
+	var out [32][points]float64
+	_, qw := m.p.quadrature()
+	set.p, set.margin = make([]float64, 0, len(keys)*set.cats*points), make([]float64, 0, len(keys)*set.cats)
+	for _, key := range keys {
+		m.p.rowOf(m.species, c, key, out[:set.cats])
+		for cat := range set.cats {
+			sum := 0.0
+			for q := range points {
+				set.p = append(set.p, out[cat][q])
+				sum += float64(qw[q] * out[cat][q])
+			}
+			set.margin = append(set.margin, sum)
+		}
 	}
 }
 

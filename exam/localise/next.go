@@ -87,7 +87,7 @@ func (e *Engine) neckAtRisk() bool {
 
 // grade returns the grade of an item at a site (any digit) in the exam at hand.
 func (e *Engine) grade(i exam.Item, s exam.Site) (int8, bool) {
-	ci, ok := e.m.lay.byKey[exam.Key{Item: i, Site: s}]
+	ci, ok := e.m.lay.find(exam.Key{Item: i, Site: s})
 	if !ok || e.obs[ci] < 0 {
 		return 0, false
 	}
@@ -165,7 +165,7 @@ func (e *Engine) endNext() {
 	e.res.Next = e.res.Next[:0]
 	// Deep pain that is due stands first: it is owed, not suggested.
 	for _, limb := range [4]exam.Site{exam.ThoracicLeft, exam.ThoracicRight, exam.PelvicLeft, exam.PelvicRight} {
-		ci := m.lay.byKey[exam.Key{Item: exam.DeepPain, Site: limb}]
+		ci, _ := m.lay.find(exam.Key{Item: exam.DeepPain, Site: limb})
 		if e.obs[ci] >= 0 || e.barred[ci] {
 			continue
 		}

@@ -64,9 +64,16 @@ func logOf(x float64) float64 {
 	s := (m - 1) / (m + 1)
 	z := float64(s * s)
 	t := 1.0 / 21
-	for i := 19; i >= 1; i -= 2 {
-		t = float64(t*z) + 1/float64(i)
-	}
+	t = float64(t*z) + 1.0/19
+	t = float64(t*z) + 1.0/17
+	t = float64(t*z) + 1.0/15
+	t = float64(t*z) + 1.0/13
+	t = float64(t*z) + 1.0/11
+	t = float64(t*z) + 1.0/9
+	t = float64(t*z) + 1.0/7
+	t = float64(t*z) + 1.0/5
+	t = float64(t*z) + 1.0/3
+	t = float64(t*z) + 1
 	k := float64(e)
 	return float64(k*ln2High) + (float64(2*float64(s*t)) + float64(k*ln2Low))
 }

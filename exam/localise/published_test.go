@@ -96,11 +96,11 @@ func (pr *predictor) joint(x *Exam, cs []constraint) float64 {
 		if done>>i&1 == 1 {
 			continue
 		}
-		ci := pr.lay.byKey[cs[i].key]
+		ci := mustFind(pr.lay, cs[i].key)
 		g := pr.lay.cells[ci].group
 		acc := qw
 		for j := i; j < len(cs); j++ {
-			cj := pr.lay.byKey[cs[j].key]
+			cj := mustFind(pr.lay, cs[j].key)
 			c := &pr.lay.cells[cj]
 			if c.group != g {
 				continue

@@ -866,7 +866,7 @@ func TestReference(t *testing.T) {
 			best := map[int]int{}
 			isBulk := map[int]bool{}
 			for _, f := range x.Findings {
-				ci := m.lay.byKey[f.Key()]
+				ci := mustFind(m.lay, f.Key())
 				g, _ := f.Result.Grade()
 				cat := int(g - f.Item.Info().First)
 				if f.Item == exam.CutaneousTrunci {

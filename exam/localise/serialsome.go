@@ -1,6 +1,7 @@
 package localise
 
 import (
+	"bytes"
 	"cmp"
 	"slices"
 
@@ -16,16 +17,10 @@ const keepPatterns = 24
 
 // Weigher weighs the exams of a course at chosen sites. It is for one goroutine at a time.
 type Weigher struct {
-	e     *Engine // its own: nothing else may use it
-	sites []int   // of Model.Sites
+	*chosen
+	e      *Engine // its own, for entering findings only
+	groups []weighed
 
-	// Hypotheses of the chosen sites lie site by site, the sound animal last; within a site those
-	// of later weeks come first, by severity, then those of the first week, by severity.
-	prior    []int64   // by hypothesis
-	from     []int32   // by site and slot: hypotheses from[s*slots+k] … from[s*slots+k+1]−1
-	mass     []float64 // by site and slot: their prior
-	timed    []bool    // by site
-	groups   []weighed
 	full     []int64 // sums by hypothesis
 	extra    []int64 // what a sum gains without the cells filled in a block
 	lateAt   []int   // by site: the exam that the sums of later weeks stand at
@@ -34,18 +29,37 @@ type Weigher struct {
 	blocks   bool
 	changed  []int // groups that the last exam changed
 	occupied []int // groups with a tested cell
+	key      []byte
+}
+
+// chosen is the part of a model's tables that concerns some sites. It is only read.
+//
+// Hypotheses of the chosen sites lie site by site, the sound animal last; within a site those
+// of later weeks come first, by severity, then those of the first week, by severity.
+type chosen struct {
+	sites []int     // of Model.Sites
+	prior []int64   // by hypothesis
+	from  []int32   // by site and slot: hypotheses from[s*slots+k] … from[s*slots+k+1]−1
+	mass  []float64 // by site and slot: their prior
+	timed []bool    // by site
+	told  []told    // by group
+}
+
+// told is how far the chosen hypotheses tell the signatures of a group apart.
+type told struct {
+	sig []uint16 // signatures in use
+	of  []uint16 // by hypothesis: index into sig
 }
 
 // slots of a site: the severities in later weeks, then those in the first.
 const slots = 2 * severities
 
-// weighed is one group of cells, as far as the chosen hypotheses tell signatures apart.
+// weighed is one group of cells, as an exam and the one before answered it.
 type weighed struct {
-	sig       []uint16 // signatures in use
-	of        []uint16 // by hypothesis: index into sig
+	*told
 	now, last *answers // of this exam and of the one before
 	known     map[string]*answers
-	key       []byte
+	key       []byte  // of now
 	delta     []int64 // now minus last, by signature, where stamp says so
 	stamp     []int
 }
@@ -74,7 +88,7 @@ type testedCell struct {
 
 // Weigher returns a weigher for some of Model.Sites.
 func (m *Model) Weigher(sites []int) *Weigher {
-	w := &Weigher{e: m.Engine(), sites: slices.Clone(sites)}
+	w := &chosen{sites: slices.Clone(sites), told: make([]told, len(m.groups))}
 	all := m.Sites()
 	index := make([]int, len(m.sp.sites)) // of a site among the chosen, −1 where it is not wanted
 	for i := range index {
@@ -119,11 +133,8 @@ func (m *Model) Weigher(sites []int) *Weigher {
 	for s := range n * slots {
 		w.from[s+1] += w.from[s]
 	}
-	w.full, w.extra = make([]int64, len(list)), make([]int64, len(list))
-	w.lateAt, w.acuteAt = make([]int, n), make([]int, n)
-	w.groups = make([]weighed, len(m.groups))
 	for gi := range m.groups {
-		g, x := &m.groups[gi], &w.groups[gi]
+		g, x := &m.groups[gi], &w.told[gi]
 		in := make([]int32, g.sigs)
 		for i := range in {
 			in[i] = -1
@@ -137,12 +148,41 @@ func (m *Model) Weigher(sites []int) *Weigher {
 			}
 			x.of[i] = uint16(in[s])
 		}
+		x.sig = slices.Clone(x.sig)
+	}
+	return w.weigher(m.reader())
+}
+
+// Another returns a weigher for the same sites, which shares the tables of this one.
+func (w *Weigher) Another() *Weigher { return w.weigher(w.e.m.reader()) }
+
+func (c *chosen) weigher(e *Engine) *Weigher {
+	w := &Weigher{chosen: c, e: e}
+	n := len(c.timed)
+	w.full, w.extra = make([]int64, len(c.prior)), make([]int64, len(c.prior))
+	w.lateAt, w.acuteAt = make([]int, n), make([]int, n)
+	w.groups = make([]weighed, len(c.told))
+	for gi := range w.groups {
+		x := &w.groups[gi]
+		x.told = &c.told[gi]
 		x.known = map[string]*answers{}
 		x.now = &answers{full: make([]int64, len(x.sig))}
 		x.delta, x.stamp = make([]int64, len(x.sig)), make([]int, len(x.sig))
 	}
 	w.exam = 2 // no site stands at it, nor at the one before
 	return w
+}
+
+// reader returns an engine that takes findings in and computes nothing: it has no sums.
+func (m *Model) reader() *Engine {
+	n := len(m.lay.cells)
+	e := &Engine{m: m, obs: make([]int16, n), upTo: make([]int16, n), bulk: make([]bool, n), found: make([]found, n), ctx: make([]context, n), bent: make([]bool, n)}
+	for i := range n {
+		e.obs[i], e.upTo[i] = -1, -1
+		e.ctx[i].keep = 1
+	}
+	e.x.Species = m.species
+	return e
 }
 
 // LogLikelihoods is Engine.SiteLogLikelihoods for the weigher's sites: dst[i*GridSize+step]
@@ -254,7 +294,7 @@ func (w *Weigher) enter() {
 	first := true
 	for gi := range w.groups {
 		g, x := &e.m.groups[gi], &w.groups[gi]
-		x.key = x.key[:0]
+		key := w.key[:0]
 		bent, tested := false, false
 		for _, ci := range g.cells {
 			b := byte(e.obs[ci]+1) << 1
@@ -266,20 +306,28 @@ func (w *Weigher) enter() {
 					w.blocks = true
 				}
 			}
-			x.key = append(x.key, b, byte(e.upTo[ci]-e.obs[ci]))
+			key = append(key, b, byte(e.upTo[ci]-e.obs[ci]))
 		}
-		next, ok := x.known[string(x.key)]
+		w.key = key
+		if tested {
+			w.occupied = append(w.occupied, gi)
+		}
+		if !bent && bytes.Equal(key, x.key) {
+			continue
+		}
+		next, ok := x.known[string(key)]
 		if !ok || bent {
 			next = w.answer(gi)
 			if !bent {
 				if len(x.known) >= keepPatterns {
 					clear(x.known)
 				}
-				x.known[string(x.key)] = next
+				x.known[string(key)] = next
 			}
 		}
-		if tested {
-			w.occupied = append(w.occupied, gi)
+		x.key = append(x.key[:0], key...)
+		if bent {
+			x.key = x.key[:0] // the same findings may be bent otherwise next time
 		}
 		if next != x.now {
 			if first { // the same findings again are the same exam
@@ -432,7 +480,7 @@ func (a *answers) learn(w *Weigher, gi int, k uint16) {
 // out[(i*GridSize+step)*categories+category]. It is nil for a cell that the model does not hold.
 func (w *Weigher) Marginal(k exam.Key) (out []float64, categories int) {
 	m := w.e.m
-	ci, ok := m.lay.byKey[k]
+	ci, ok := m.lay.find(k)
 	if !ok {
 		return nil, 0
 	}
@@ -481,9 +529,6 @@ func (e *Engine) bendFor(x *Exam) {
 		ctx, bent := e.m.bend(x, &e.m.lay.cells[i])
 		if bent || e.bent[i] {
 			e.ctx[i], e.bent[i] = ctx, bent
-			if e.was[i] >= 0 {
-				e.state[e.m.lay.cells[i].group].dirty = true
-			}
 		}
 	}
 	e.ctxAge, e.ctxSedated = x.AgeYears, x.Sedation

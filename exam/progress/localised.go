@@ -29,7 +29,7 @@ type body struct {
 
 	cells    sync.Map // exam.Key → []float64: see wholeness
 	marginal sync.Mutex
-	maker    *localise.Weigher // for Marginal, under the mutex
+	maker    *localise.Weigher // for tables, under the mutex once the body is made
 	reader   *reader
 	clock    *clock
 }
@@ -59,6 +59,11 @@ func bodyOf(s exam.Species) (*body, error) {
 	return f.(func() (*body, error))()
 }
 
+// Forget lets go of what is kept for all courses of a species, tens of megabytes. Models at work keep
+// theirs; the next call of For makes it anew, which takes some hundredths of a second while
+// localise still has the species' tables.
+func Forget(s exam.Species) { bodies.Delete(s) }
+
 // For returns the model of an animal's course. The error is a *localise.Unsupported for a
 // species whose cord is not on record in the detail that localisation needs.
 func For(p exam.Patient) (*Model, error) {
@@ -67,7 +72,7 @@ func For(p exam.Patient) (*Model, error) {
 		return nil, err
 	}
 	rates := DefaultRates()
-	space := &localised{body: b, patient: p, weigher: b.m.Weigher(b.index)}
+	space := &localised{body: b, patient: p, weigher: b.maker.Another()}
 	m := newModel(space, rates)
 	m.clock, m.reader = b.clock, b.reader.share()
 	return m, nil
@@ -177,7 +182,7 @@ func spread(grid, at []float64) (out [Levels]float64) {
 // movement of each limb: the loss of the expected grade, from that of a sound animal (0) to the
 // least that any place causes (1).
 func (b *body) limbShares(s exam.Species, first int) error {
-	w := b.m.Weigher(b.index)
+	w := b.maker.Another()
 	n := localise.GridSize
 	in := exam.VoluntaryMotor.Info()
 	expected := make([][]float64, 4)
@@ -515,7 +520,7 @@ func (b *body) atLeast(key goalKey) []float64 {
 	in := key.item.Info()
 	near := func(g int8) int8 { return max(g-in.Normal, in.Normal-g) }
 	good, all := make([]float64, len(b.sites)*n), make([]float64, len(b.sites)*n)
-	w := b.m.Weigher(b.index)
+	w := b.maker.Another()
 	for k := range in.Grades {
 		g := in.First + int8(k)
 		ll, err := w.LogLikelihoods(localise.Exam{Species: b.species, OnsetDays: settledDays, Findings: []exam.Finding{{Item: key.item, Site: key.at, Result: exam.Graded(g)}}}, nil)
