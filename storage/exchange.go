@@ -37,6 +37,7 @@ type receiver struct {
 	spans []merge.Span  // what the journal holds, merged or not
 	hash  change.Hash   // chain hash at their end
 	fresh int           // changes received since the last Commit
+	dirty bool          // something was written since the last sync
 }
 
 // Bag returns the practice's and this device's keys.
@@ -408,6 +409,7 @@ func (r *receiver) follows(fs []change.Frame) bool {
 
 // addReceived writes frames behind the others. exch must be held.
 func (s *Store) addReceived(as change.Stream, r *receiver, raw []byte) error {
+	r.dirty = true
 	if err := r.out.add(raw); err != nil {
 		// Nothing is known about what the segment holds now; what was noted is forgotten and
 		// read again from the journal.
@@ -471,23 +473,31 @@ func (s *Store) Commit(ctx context.Context, as change.Stream, head *segment.Sign
 	if err != nil {
 		return explain("receiving", err)
 	}
-	if r.out.file != nil {
+	if r.out.file != nil && r.dirty {
 		if err := r.out.file.SyncData(); err != nil {
 			r.out.leave()
 			delete(s.recv, as)
 			return explain("receiving", err)
 		}
 	}
+	r.dirty = false
 	if head != nil {
 		if err := s.keepHead(as, *head); err != nil {
 			return explain("receiving", err)
 		}
 	}
 	much := r.fresh > absorbNow || s.backlog[as]
-	r.fresh = 0
-	if !much {
-		return s.absorb(ctx, as)
+	if r.fresh == 0 && !s.backlog[as] {
+		return nil
 	}
+	if !much {
+		if err := s.absorb(ctx, as); err != nil {
+			return err
+		}
+		r.fresh = 0
+		return nil
+	}
+	r.fresh = 0
 	s.backlog[as], s.committed = true, time.Now()
 	if !s.draining {
 		s.draining = true

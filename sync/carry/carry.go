@@ -701,53 +701,84 @@ func (x *exchange) read(ctx context.Context, r located, opened func() (*segment.
 	return err
 }
 
-// TakeSegment takes in of a segment what the journal does not hold. held is what it holds now. That the
+// TakeSegment takes in of a segment what the journal does not hold, for good. held is what it holds now. That the
 // segment's signer may sign for its stream, and that the stream is not the one this device writes,
 // is for the caller to see to. An error that wraps none of the journal's leaves what came before it, which
 // is true and follows what was held.
 func TakeSegment(ctx context.Context, j Journal, rd *segment.Reader, held []Held) (received int, forks []Fork, err error) {
+	var t Taken
+	if err := t.Take(ctx, j, rd, held); err != nil {
+		return t.Frames, t.Forks, err
+	}
+	return t.Frames, t.Forks, t.Commit(ctx, j)
+}
+
+// Taken is what was taken in of segments and is not durable before Commit. Many small segments are made durable
+// together. The zero value is ready for use.
+type Taken struct {
+	Frames int
+	Forks  []Fork
+	heads  []takenHead
+}
+
+type takenHead struct {
+	as   change.Stream
+	head *segment.Signed
+}
+
+// Take is TakeSegment without making it durable. After an error Commit keeps what came before it.
+func (t *Taken) Take(ctx context.Context, j Journal, rd *segment.Reader, held []Held) error {
 	b, err := branch(ctx, j, rd.Header, held)
 	if err != nil {
-		return 0, nil, err
+		return err
 	}
 	used := map[change.Stream]bool{}
+	defer func() {
+		for as := range used {
+			t.heads = append(t.heads, takenHead{as: as})
+		}
+	}()
 	for {
 		block, err := rd.Next()
 		if errors.Is(err, io.EOF) {
 			break
 		}
 		if err != nil {
-			return received, forks, err
+			return err
 		}
 		if err := ctx.Err(); err != nil {
-			return received, forks, err
+			return err
 		}
 		parts, err := b.split(block)
 		if err != nil {
-			return received, forks, err
+			return err
 		}
 		for _, part := range parts {
 			used[part.as] = true
 			if part.fork {
-				forks = append(forks, Fork{rd.Stream, part.block.Frames[0].First, part.as})
+				t.Forks = append(t.Forks, Fork{rd.Stream, part.block.Frames[0].First, part.as})
 			}
 			if err := j.Receive(ctx, part.as, part.block); err != nil {
-				return received, forks, fmt.Errorf("%w: %w", errOwnSide, err)
+				return fmt.Errorf("%w: %w", errOwnSide, err)
 			}
-			received += len(part.block.Frames)
+			t.Frames += len(part.block.Frames)
 		}
 		segment.Recycle(block)
 	}
 	delete(used, b.as)
-	for as := range used {
-		if err := j.Commit(ctx, as, nil); err != nil {
-			return received, forks, fmt.Errorf("%w: %w", errOwnSide, err)
+	t.heads = append(t.heads, takenHead{b.as, &rd.Signed})
+	return nil
+}
+
+// Commit makes durable what was taken in.
+func (t *Taken) Commit(ctx context.Context, j Journal) error {
+	for len(t.heads) > 0 {
+		if err := j.Commit(ctx, t.heads[0].as, t.heads[0].head); err != nil {
+			return fmt.Errorf("%w: %w", errOwnSide, err)
 		}
+		t.heads = t.heads[1:]
 	}
-	if err := j.Commit(ctx, b.as, &rd.Signed); err != nil {
-		return received, forks, fmt.Errorf("%w: %w", errOwnSide, err)
-	}
-	return received, forks, nil
+	return nil
 }
 
 // OwnSide reports whether an error is that of this device's own journal.

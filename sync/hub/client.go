@@ -67,7 +67,10 @@ type Client struct {
 	js   jetstream.JetStream
 	kick chan struct{}
 
-	take sync.Mutex // one segment at a time
+	take  sync.Mutex  // one segment at a time, and what follows
+	taken carry.Taken // received and not durable yet
+	upTo  uint64      // the last message that it came in
+	since time.Time   // when the first of it came
 
 	mu     sync.Mutex
 	status Status
@@ -275,7 +278,13 @@ func (c *Client) session(ctx context.Context) error {
 	if err != nil {
 		return err
 	}
+	over := false
 	sc, err := segs.Consume(func(m jetstream.Msg) {
+		c.take.Lock()
+		defer c.take.Unlock()
+		if over {
+			return
+		}
 		if err := c.receive(ctx, m); err != nil {
 			cancel(err)
 		}
@@ -283,7 +292,18 @@ func (c *Client) session(ctx context.Context) error {
 	if err != nil {
 		return err
 	}
-	defer sc.Stop()
+	// What was received before the session ends is kept, and then no more is taken in.
+	defer func() {
+		sc.Stop()
+		c.take.Lock()
+		defer c.take.Unlock()
+		over = true
+		if err := c.settle(context.WithoutCancel(ctx)); err != nil {
+			c.fail(err)
+		}
+		c.savePlace()
+		c.upTo = 0
+	}()
 
 	stopFiles, err := c.exchangeFiles(ctx)
 	if err != nil {
@@ -299,9 +319,11 @@ func (c *Client) session(ctx context.Context) error {
 	for {
 		select {
 		case <-ctx.Done():
-			c.savePlace()
 			return context.Cause(ctx)
 		case <-tick.C:
+			if err := c.settleLate(ctx); err != nil {
+				return err
+			}
 		case <-c.kick:
 		case <-slow.C:
 			c.savePlace()
@@ -570,25 +592,67 @@ func (c *Client) publish(ctx context.Context, h carry.Held, first, last uint64, 
 	return settle(0)
 }
 
-// receive takes a message in.
+// What comes in one stretch is made durable together: at its end, or when it is this many frames, or
+// after some polls.
+const (
+	mostTaken = 8192
+	latest    = 5
+)
+
+// receive takes a message in. take must be held.
 func (c *Client) receive(ctx context.Context, m jetstream.Msg) error {
-	c.take.Lock()
-	defer c.take.Unlock()
 	meta, err := m.Metadata()
 	if err != nil {
 		return nil // no message of a stream
+	}
+	if c.taken.Frames == 0 {
+		c.since = c.o.Now()
 	}
 	err = c.segment(ctx, m.Data())
 	if carry.OwnSide(err) || ctx.Err() != nil {
 		return err
 	}
+	if err != nil {
+		c.mu.Lock()
+		c.status.Refused = fmt.Errorf("a message on the hub was left alone: %w", err)
+		c.mu.Unlock()
+	}
+	c.upTo = meta.Sequence.Stream
+	c.mu.Lock()
+	c.status.Behind = meta.NumPending
+	c.mu.Unlock()
+	if meta.NumPending == 0 || c.taken.Frames >= mostTaken {
+		return c.settle(ctx)
+	}
+	return nil
+}
+
+// settle makes durable what was received. take must be held.
+func (c *Client) settle(ctx context.Context) error {
+	if err := c.taken.Commit(ctx, c.o.Journal); err != nil {
+		c.taken, c.upTo = carry.Taken{}, 0 // it is read again from the hub
+		return err
+	}
 	c.mu.Lock()
 	defer c.mu.Unlock()
-	if err != nil {
-		c.status.Refused = fmt.Errorf("a message on the hub was left alone: %w", err)
-	}
-	c.seq, c.status.Behind = meta.Sequence.Stream, meta.NumPending
+	c.status.Received += uint64(c.taken.Frames)
+	c.status.Forks = append(c.status.Forks, c.taken.Forks...)
+	c.note(c.taken.Frames)
+	c.seq = max(c.seq, c.upTo)
+	c.taken = carry.Taken{}
 	return nil
+}
+
+// settleLate makes durable what has waited for long.
+func (c *Client) settleLate(ctx context.Context) error {
+	if !c.take.TryLock() {
+		return nil // it is being seen to
+	}
+	defer c.take.Unlock()
+	if c.taken.Frames == 0 && c.upTo == 0 || c.o.Now().Sub(c.since) < latest*c.o.Poll {
+		return nil
+	}
+	return c.settle(ctx)
 }
 
 func (c *Client) segment(ctx context.Context, data []byte) error {
@@ -635,15 +699,7 @@ func (c *Client) segment(ctx context.Context, data []byte) error {
 			return err
 		}
 	}
-	n, forks, err := carry.TakeSegment(ctx, c.o.Journal, rd, held)
-	c.mu.Lock()
-	defer c.mu.Unlock()
-	c.status.Forks = append(c.status.Forks, forks...)
-	if err == nil {
-		c.status.Received += uint64(n)
-		c.note(n)
-	}
-	return err
+	return c.taken.Take(ctx, c.o.Journal, rd, held)
 }
 
 func covers(spans []merge.Span, first, last uint64) bool {

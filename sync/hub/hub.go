@@ -48,7 +48,7 @@ const (
 // MaxMessage is the size of the largest message. Segments for the hub stay well below it.
 const MaxMessage = 1 << 20
 
-const targetRaw = 256 << 10 // bytes of frames in one message
+const targetRaw = 96 << 10 // bytes of frames in one message: some hundreds, as findings go
 
 // Limits of the mailbox.
 type Limits struct {
