@@ -41,7 +41,9 @@ type App struct {
 
 	drafts map[exam.ID]*view.PatientForm // pages of animals that were left with something typed on them
 
-	engines engines // one for each species: each holds much scratch memory
+	album   album   // the photos and clips beside the store
+	engines engines     // of all exams: each would hold much scratch memory
+	resting *time.Timer // see rest
 
 	onUI   view.OnUI // runs on the drawing goroutine; tests pass their own
 	ctx    context.Context
@@ -255,6 +257,9 @@ func (a *App) closed(w *window) {
 // Done waits for work under way and closes the store; it is called after the windows are gone.
 func (a *App) Done() error {
 	a.cancel()
+	if a.resting != nil {
+		a.resting.Stop()
+	}
 	a.busy.Wait()
 	if a.records == nil {
 		return nil

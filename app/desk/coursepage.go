@@ -107,6 +107,11 @@ func (p *coursePage) left() {
 	p.halt()
 	p.gone = true
 	p.model, p.result, p.course = nil, nil, p.plain
+	p.releaseCharts()
+	progress.Forget(p.file.Patient.Species)
+}
+
+func (p *coursePage) releaseCharts() {
 	for _, h := range []*chartHost{p.strip, p.fn, p.limbs, p.meas} {
 		if h != nil {
 			h.release()
@@ -133,6 +138,7 @@ func (p *coursePage) build() {
 			mark.Left(mark.NewButton(words.T("Start exam"), "exam", func() { p.win.to(view.ScreenExam) }).As(mark.Main)))))
 		return
 	}
+	p.releaseCharts()
 	zoom := func(word string, weeks int) *mark.Button {
 		b := mark.NewButton(word, "", func() { p.weeks, p.back = weeks, 0; p.span() })
 		p.zooms = append(p.zooms, b)
@@ -284,8 +290,12 @@ func (p *coursePage) regions() fyne.CanvasObject {
 
 // put shows what was built.
 func (p *coursePage) put(o fyne.CanvasObject) {
+	before := p.root.Objects
 	p.root.Objects = []fyne.CanvasObject{o}
 	p.root.Refresh()
+	for _, b := range before {
+		p.win.freed(b)
+	}
 }
 
 // verdict is what the course says in words: the sentence with its probability, and what must be

@@ -6,7 +6,6 @@ import (
 	"slices"
 	"strconv"
 	"strings"
-	"sync"
 
 	"fyne.io/fyne/v2"
 	"fyne.io/fyne/v2/widget"
@@ -57,6 +56,7 @@ type examSide struct {
 	failed error
 	opened bool // somebody asked for the map
 	shut   bool // somebody closed it again
+	ended  bool
 	kg     float64
 }
 
@@ -79,6 +79,7 @@ func newExamSide(p *examPage) *examSide {
 		s.kg = m.Value
 	}
 	patient, others, engines := p.file.Patient, p.file.Visits, &p.win.app.engines
+	engines.hold()
 	s.ask = view.NewNewest(p.win.app.onUI, func(_ context.Context, q sideQuestion) (sideAnswer, error) {
 		out := sideAnswer{alerts: alertsOf(patient, others, q.visit)}
 		out.result, out.err = engines.compute(localise.OfVisit(patient, q.visit))
@@ -95,38 +96,17 @@ func (s *examSide) CreateRenderer() fyne.WidgetRenderer {
 // close ends the reckoning and lets go of what it holds: the toolkit keeps the widgets of a page
 // that was left for a while.
 func (s *examSide) close() {
-	go s.ask.Close()
+	if s.ended {
+		return
+	}
+	s.ended = true
+	engines := &s.page.win.app.engines
+	go func() {
+		s.ask.Close()
+		engines.letGo()
+	}()
 	s.host.release()
 	s.result = nil
-}
-
-// engines keeps one localisation engine for each species and lets one question at it at a time.
-type engines struct {
-	mu sync.Mutex
-	of map[exam.Species]*localise.Engine
-}
-
-// compute weighs an exam. The error is a *localise.Unsupported for a species without a model.
-func (e *engines) compute(x localise.Exam) (*localise.Result, error) {
-	e.mu.Lock()
-	defer e.mu.Unlock()
-	engine := e.of[x.Species]
-	if engine == nil {
-		made, err := localise.New(x.Species)
-		if err != nil {
-			return nil, err
-		}
-		if e.of == nil {
-			e.of = map[exam.Species]*localise.Engine{}
-		}
-		engine = made
-		e.of[x.Species] = made
-	}
-	r, err := engine.Compute(x)
-	if err != nil {
-		return nil, err
-	}
-	return r.Clone(), nil
 }
 
 func (s *examSide) open() bool {

@@ -87,11 +87,16 @@ func (p *sheetPage) shown()                     { p.win.win.Canvas().Unfocus() }
 func (p *sheetPage) left() {
 	p.turn++
 	p.doc = sheet.Document{}
+	p.dropPictures()
+	p.preview.SetContent(mark.Space(1, 1))
+}
+
+func (p *sheetPage) dropPictures() {
 	for _, i := range p.pictures {
+		p.win.freed(i)
 		i.Image = nil
 	}
 	p.pictures = nil
-	p.preview.SetContent(mark.Space(1, 1))
 }
 
 func (p *sheetPage) help() []view.KeyHelp {
@@ -208,7 +213,7 @@ func (p *sheetPage) show(doc sheet.Document, pages []image.Image) {
 	p.save.Enable()
 	p.print.Enable()
 	var out []fyne.CanvasObject
-	p.pictures = nil
+	p.dropPictures()
 	for _, page := range pages {
 		img, o := newSheetImage(page)
 		p.pictures = append(p.pictures, img)

@@ -69,6 +69,11 @@ func newWindow(a *App) *window {
 	w.win.Resize(a.windowSize())
 	w.win.SetCloseIntercept(w.close)
 	w.keys()
+	w.win.SetOnDropped(func(_ fyne.Position, files []fyne.URI) {
+		if p, ok := w.page.(dropTaker); ok {
+			p.dropped(files)
+		}
+	})
 	return w
 }
 
@@ -105,8 +110,15 @@ func (w *window) show(p page) {
 	}
 	w.page = p
 	w.win.SetTitle(w.title())
+	before := w.center.Objects
 	w.center.Objects = []fyne.CanvasObject{p.content()}
 	w.center.Refresh()
+	for _, o := range before {
+		if o != p.content() {
+			w.freed(o)
+		}
+	}
+	w.app.rest()
 	w.strip.update()
 	w.rail.update()
 	w.foot.update()
@@ -193,6 +205,7 @@ func (w *window) open(r view.Route) {
 			if turn == w.turn {
 				w.foot.say("")
 				w.file = f
+				w.app.shows(f.Patient.Species)
 				w.openFile(r)
 			}
 		}, err
