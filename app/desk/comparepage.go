@@ -163,6 +163,9 @@ func (p *comparePage) build() {
 	p.head.Objects = []fyne.CanvasObject{picks, bodies}
 	p.head.Refresh()
 	var rows []fyne.CanvasObject
+	if pictures := newPhotosBeside(p.win, a, b); pictures != nil {
+		rows = append(rows, pictures)
+	}
 	section := view.Section(255)
 	for _, r := range c.Rows {
 		if r.Section != section {

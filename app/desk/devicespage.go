@@ -39,6 +39,7 @@ type devicesPage struct {
 	code   string   // of an invitation just made; shown once
 	busy   bool
 	gone   bool
+	open   []unchosen // animals with values to choose between
 }
 
 func newDevicesPage(w *window) *devicesPage {
@@ -48,9 +49,12 @@ func newDevicesPage(w *window) *devicesPage {
 	}
 	p.root = mark.Pad(look.Unit*1.5, look.Unit*2, mark.ColumnGrow(look.Unit*2, 1, mark.Title(words.T("Devices")).AtLeast(80), p.body))
 	p.build()
+	if p.store != nil {
+		p.findChoices()
+	}
 	if p.store != nil && p.founded() {
 		p.do(func(ctx context.Context) (func(), error) {
-			sh, _, err := share.Open(ctx, p.store, share.Options{})
+			sh, _, err := p.openShare(ctx)
 			return func() { p.share = sh }, err
 		})
 	}
@@ -115,6 +119,9 @@ func (p *devicesPage) build() {
 	case p.share != nil:
 		parts = append(parts, p.exchange(), p.devices(), p.backups())
 	}
+	if x := p.choices(); x != nil {
+		parts = append(parts, x)
+	}
 	for _, line := range p.report {
 		parts = append(parts, mark.NewPara(line))
 	}
@@ -135,7 +142,7 @@ func (p *devicesPage) found() fyne.CanvasObject {
 			if err != nil {
 				return nil, fmt.Errorf("making the recovery sheet: %w", err)
 			}
-			sh, recovery, err := share.Open(ctx, p.store, share.Options{})
+			sh, recovery, err := p.openShare(ctx)
 			if err == nil && recovery != nil {
 				_, err = fmt.Fprintf(f, "%s\n%s\n", words.T("Recovery sheet of the practice %s. Whoever holds this key can open its data.", p.store.Bag().Practice), recovery)
 			}

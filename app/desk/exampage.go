@@ -46,6 +46,7 @@ const (
 	tabMeasures
 	tabTreatments
 	tabHome
+	tabPhotos
 )
 
 func newExamPage(w *window, visit exam.ID) *examPage {
@@ -97,7 +98,7 @@ func (p *examPage) build(v exam.Visit) {
 	p.card = newOneCard(p)
 	p.side = newExamSide(p)
 	p.left1 = container.NewStack()
-	names := []string{words.T("Exam"), words.T("Visit"), words.T("Measures"), words.T("Treatments"), words.T("Home")}
+	names := []string{words.T("Exam"), words.T("Visit"), words.T("Measures"), words.T("Treatments"), words.T("Home"), words.T("Photos")}
 	var tabs []fyne.CanvasObject
 	p.tabs = nil
 	for i, n := range names {
@@ -395,6 +396,8 @@ func (p *examPage) choose(tab int) {
 		o = newTreatmentsForm(p)
 	case tabHome:
 		o = newHomeForm(p)
+	case tabPhotos:
+		o = newPhotosForm(p)
 	default:
 		if p.win.app.settings.OneByOne {
 			p.card.update()

@@ -35,6 +35,7 @@ type (
 		forget()           // let it go
 	}
 	footWriter interface{ foot() fyne.CanvasObject }
+	dropTaker  interface{ dropped(files []fyne.URI) }
 )
 
 // window is one window of the program: the rail, the strip, a page, the line below.
