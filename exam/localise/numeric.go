@@ -56,7 +56,12 @@ func logOf(x float64) float64 {
 	if x <= 0 {
 		return -700
 	}
-	m, e := math.Frexp(x)
+	b := math.Float64bits(x)
+	e := int(b>>52) - 1022
+	m := math.Float64frombits(b&(1<<52-1) | 1022<<52)
+	if e == -1022 || e > 1024 { // below the normal numbers, or none at all
+		m, e = math.Frexp(x)
+	}
 	if m < math.Sqrt2/2 {
 		m += m
 		e--

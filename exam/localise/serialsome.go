@@ -30,6 +30,7 @@ type Weigher struct {
 	changed  []int // groups that the last exam changed
 	occupied []int // groups with a tested cell
 	key      []byte
+	weights  [points]float64 // of the quadrature
 }
 
 // chosen is the part of a model's tables that concerns some sites. It is only read.
@@ -60,8 +61,13 @@ type weighed struct {
 	now, last *answers // of this exam and of the one before
 	known     map[string]*answers
 	key       []byte  // of now
-	delta     []int64 // now minus last, by signature, where stamp says so
-	stamp     []int
+	deltas    []delta // by signature
+}
+
+// delta is what a signature's answer changed by with the exam of that number.
+type delta struct {
+	exam int
+	by   int64
 }
 
 // answers is the log-likelihood of a pattern of findings for each signature in use, worked out
@@ -158,6 +164,7 @@ func (w *Weigher) Another() *Weigher { return w.weigher(w.e.m.reader()) }
 
 func (c *chosen) weigher(e *Engine) *Weigher {
 	w := &Weigher{chosen: c, e: e}
+	_, w.weights = e.m.p.quadrature()
 	n := len(c.timed)
 	w.full, w.extra = make([]int64, len(c.prior)), make([]int64, len(c.prior))
 	w.lateAt, w.acuteAt = make([]int, n), make([]int, n)
@@ -167,7 +174,7 @@ func (c *chosen) weigher(e *Engine) *Weigher {
 		x.told = &c.told[gi]
 		x.known = map[string]*answers{}
 		x.now = &answers{full: make([]int64, len(x.sig))}
-		x.delta, x.stamp = make([]int64, len(x.sig)), make([]int, len(x.sig))
+		x.deltas = make([]delta, len(x.sig))
 	}
 	w.exam = 2 // no site stands at it, nor at the one before
 	return w
@@ -351,13 +358,14 @@ func (w *Weigher) bring(site int, withAcute bool) {
 		case w.exam - 1:
 			for _, gi := range w.changed {
 				x := &w.groups[gi]
-				sums := w.full[from:to]
-				for i, k := range x.of[from:to] {
-					if x.stamp[k] != w.exam {
-						x.stamp[k] = w.exam
-						x.delta[k] = x.now.at(w, gi, k) - x.last.at(w, gi, k)
+				of := x.of[from:to]
+				sums := w.full[from:to][:len(of)]
+				for i, k := range of {
+					d := &x.deltas[k]
+					if d.exam != w.exam {
+						*d = delta{w.exam, x.now.at(w, gi, k) - x.last.at(w, gi, k)}
 					}
-					sums[i] += x.delta[k]
+					sums[i] += d.by
 				}
 				if x.now.extra != nil || x.last.extra != nil {
 					for i := from; i < to; i++ {
@@ -376,8 +384,14 @@ func (w *Weigher) bring(site int, withAcute bool) {
 			clear(w.extra[from:to])
 			for _, gi := range w.occupied {
 				x := &w.groups[gi]
-				for i := from; i < to; i++ {
-					w.full[i] += x.now.at(w, gi, x.of[i])
+				of, full := x.of[from:to], x.now.full
+				sums := w.full[from:to][:len(of)]
+				for i, k := range of {
+					v := full[k]
+					if v == unknown {
+						v = x.now.at(w, gi, k)
+					}
+					sums[i] += v
 				}
 				if x.now.extra != nil {
 					for i := from; i < to; i++ {
@@ -436,7 +450,7 @@ func (a *answers) at(w *Weigher, gi int, k uint16) int64 {
 
 // learn works one signature out, as Engine.groupLog does for all.
 func (a *answers) learn(w *Weigher, gi int, k uint16) {
-	_, full := w.e.m.p.quadrature()
+	full := w.weights
 	look := full
 	sig := w.groups[gi].sig[k]
 	for i := range a.cells {

@@ -286,17 +286,7 @@ func (t *transition) forward(dst, from []float64) {
 		copy(dst, from)
 		return
 	}
-	clear(dst)
-	for i, a := range from {
-		if a == 0 {
-			continue
-		}
-		row := t.rows[i*states : i*states+states]
-		d := dst[:len(row)]
-		for j, p := range row {
-			d[j] += float64(a * p)
-		}
-	}
+	combine(dst, from, &t.rows)
 }
 
 // backward puts t × to into dst.
@@ -305,15 +295,43 @@ func (t *transition) backward(dst, to []float64) {
 		copy(dst, to)
 		return
 	}
-	clear(dst)
-	for j, a := range to {
-		if a == 0 {
-			continue
+	combine(dst, to, &t.cols)
+}
+
+// combine puts Σ by[i] × the i-th line of lines into dst. It takes four lines at a time and adds
+// them one after the other, so that the sums are the same as line by line.
+func combine(dst, by []float64, lines *[states * states]float64) {
+	var at [states]int
+	n := 0
+	for i, v := range by[:states] {
+		if v != 0 {
+			at[n] = i
+			n++
 		}
-		col := t.cols[j*states : j*states+states]
-		d := dst[:len(col)]
-		for i, p := range col {
-			d[i] += float64(a * p)
+	}
+	d := (*[states]float64)(dst)
+	*d = [states]float64{}
+	line := func(k int) (float64, *[states]float64) {
+		i := at[k]
+		return by[i], (*[states]float64)(lines[i*states:])
+	}
+	k := 0
+	for ; k+4 <= n; k += 4 {
+		a0, l0 := line(k)
+		a1, l1 := line(k + 1)
+		a2, l2 := line(k + 2)
+		a3, l3 := line(k + 3)
+		for j := range d {
+			v := d[j] + float64(a0*l0[j])
+			v += float64(a1 * l1[j])
+			v += float64(a2 * l2[j])
+			d[j] = v + float64(a3*l3[j])
+		}
+	}
+	for ; k < n; k++ {
+		a, l := line(k)
+		for j := range d {
+			d[j] += float64(a * l[j])
 		}
 	}
 }

@@ -41,8 +41,9 @@ type Model struct {
 	clock  *clock
 	reader *reader
 	daily  [Levels][Levels]float64
-	reach  int       // levels beyond which a good or bad day does not carry
-	first  []float64 // distribution over the states where a lesion is met first
+	reach  int          // levels beyond which a good or bad day does not carry
+	calm   [states]bool // states that change by less than the plateau's rate
+	first  []float64    // distribution over the states where a lesion is met first
 
 	minMass, minState float64
 }
@@ -57,6 +58,9 @@ func NewModel(space Space, rates Rates) *Model {
 func newModel(space Space, rates Rates) *Model {
 	m := &Model{space: space, rates: rates, daily: rates.daily(), first: rates.start(), minMass: leastMass, minState: leastState}
 	for k := range Levels {
+		for q := range paceCount {
+			m.calm[k*int(paceCount)+int(q)] = math.Abs(rates.speed(k, q))*100 < PlateauRate
+		}
 		for j := range Levels {
 			if m.daily[k][j] > 1e-12 {
 				m.reach = max(m.reach, j-k, k-j)
@@ -363,6 +367,8 @@ func (m *Model) keep(n *node, sites []int, belief, like, day []float64, total fl
 		sum += h.mass
 	}
 	n.scale = sum
+	n.sites, n.alpha = make([]int, 0, len(all)), make([]float64, 0, len(all)*states)
+	n.like, n.day = make([]float64, 0, len(all)*Levels), make([]float64, 0, len(all)*Levels)
 	for _, h := range all {
 		n.sites = append(n.sites, sites[h.i])
 		for _, v := range belief[at(h.i):at(h.i+1)] {
@@ -489,17 +495,22 @@ type belief struct {
 	slow  float64 // probability that the severity changes by less than the plateau's rate
 }
 
-// collect sums the paces out of a distribution over states, which need not add up to 1.
-func (m *Model) collect(sites []int, p []float64) belief {
+// collect sums the paces out of a distribution over states, which need not add up to 1. Where
+// later is given, each state is weighed by it.
+func (m *Model) collect(sites []int, p, later []float64) belief {
 	b := belief{sites: sites, level: make([]float64, len(sites)*Levels)}
 	total := 0.0
 	for i := range sites {
 		for k := range Levels {
 			for q := range paceCount {
-				v := p[at(i)+k*int(paceCount)+int(q)]
+				j := k*int(paceCount) + int(q)
+				v := p[at(i)+j]
+				if later != nil {
+					v = float64(v * later[at(i)+j])
+				}
 				b.level[i*Levels+k] += v
 				b.pace[q] += v
-				if math.Abs(m.rates.speed(k, q))*100 < PlateauRate {
+				if m.calm[j] {
 					b.slow += v
 				}
 				total += v
@@ -525,17 +536,13 @@ const PlateauRate = Margin / 4
 // filteredBelief is what was known with the i-th visit, smoothedBelief what is known of it now.
 func (c *Course) filteredBelief(i int) belief {
 	n := c.nodes[i]
-	return c.model.collect(n.sites, n.alpha)
+	return c.model.collect(n.sites, n.alpha, nil)
 }
 
 func (c *Course) smoothedBelief(i int) belief {
 	c.smooth()
 	n := c.nodes[i]
-	p := make([]float64, len(n.alpha))
-	for j, a := range n.alpha {
-		p[j] = float64(a * n.beta[j])
-	}
-	return c.model.collect(n.sites, p)
+	return c.model.collect(n.sites, n.alpha, n.beta)
 }
 
 // beliefAt is what is known now of any time: between visits, or after the last one (a forecast).
@@ -562,7 +569,7 @@ func (c *Course) beliefAt(t time.Time) belief {
 		}
 		belief := make([]float64, len(sites)*states)
 		c.predict(before, step, sites, belief)
-		return m.collect(sites, belief)
+		return m.collect(sites, belief, nil)
 	}
 	c.smooth()
 	next := c.nodes[i]
@@ -573,5 +580,5 @@ func (c *Course) beliefAt(t time.Time) belief {
 	for j := range alpha {
 		alpha[j] *= beta[j]
 	}
-	return m.collect(sites, alpha)
+	return m.collect(sites, alpha, nil)
 }
