@@ -38,11 +38,18 @@ func (b Body) plan(r vg.Rectangle, st Style) bodyPlan {
 	fig := drawing.FromAbove(b.Species)
 	w, h := r.Max.X-r.Min.X, r.Max.Y-r.Min.Y
 	// The words beside the animal come first; it keeps a quarter of the width at least.
-	size, words := st.size(), vg.Length(0)
+	size, words, least := st.size(), vg.Length(0), vg.Length(0)
 	for _, l := range b.Limbs {
 		words = max(words, Width(l.Name, size, false), Width(l.Word, size*1.1, true)+size*1.43)
+		for _, half := range halves(l.Name, size) {
+			least = max(least, Width(half, size, false))
+		}
+		least = max(least, Width(l.Word, size*1.1, true)+size*1.43)
 	}
-	room := max(w-2*(words+size*0.7), w*0.25)
+	room := w - 2*(words+size*0.7)
+	if room < w*0.25 { // names on two lines
+		room = max(w-2*(least+size*0.7), w*0.18)
+	}
 	scale := min(h/vg.Length(fig.Height), w*0.5/vg.Length(fig.Width), room/vg.Length(fig.Width))
 	fw, fh := scale*vg.Length(fig.Width), scale*vg.Length(fig.Height)
 	o := vg.Point{X: (r.Min.X + r.Max.X - fw) / 2, Y: (r.Min.Y+r.Max.Y)/2 + fh/2}
@@ -110,6 +117,29 @@ func (b Body) Draw(c draw.Canvas, st Style) {
 	}
 }
 
+// shrunk is the size at which a text fits, not below two thirds of the size asked for.
+func shrunk(text string, room, size vg.Length, bold bool) vg.Length {
+	if w := Width(text, size, bold); w > room && w > 0 {
+		return size * max(0.99*room/w, 0.67) // a hair less, for rounding
+	}
+	return size
+}
+
+// halves breaks a name where its two lines are most alike in width; a name of one word
+// stays as the second line.
+func halves(name string, size vg.Length) [2]string {
+	out, best := [2]string{"", name}, Width(name, size, false)
+	for i, r := range name {
+		if r != ' ' {
+			continue
+		}
+		if w := max(Width(name[:i], size, false), Width(name[i+1:], size, false)); w < best {
+			out, best = [2]string{name[:i], name[i+1:]}, w
+		}
+	}
+	return out
+}
+
 func (b Body) label(p pen, pl bodyPlan, site exam.Site, limb BodyLimb, size vg.Length) {
 	pal := p.st.Palette
 	centre, ok := pl.fig.Centre(site.String())
@@ -127,10 +157,22 @@ func (b Body) label(p pen, pl bodyPlan, site exam.Site, limb BodyLimb, size vg.L
 		ax, room = 0, pl.box.Max.X-x
 	}
 	y := at.Y + size*0.9
-	p.text(x, y, Fit(limb.Name, room, size, false), size, false, pal.Soft, ax)
+	if Width(limb.Name, size, false) <= room {
+		p.text(x, y, limb.Name, size, false, pal.Soft, ax)
+	} else {
+		for i, half := range halves(limb.Name, size) {
+			small := shrunk(half, room, size, false)
+			p.text(x, y+size*1.15*vg.Length(1-i), Fit(half, room, small, false), small, false, pal.Soft, ax)
+		}
+	}
 	y -= size * 1.35
 	mark := size * 0.42
-	word := Fit(limb.Word, room-mark*3.4, size*1.1, true)
+	wide := room - mark*3.4
+	if limb.Mark == MarkPlain {
+		wide = room
+	}
+	big := shrunk(limb.Word, wide, size*1.1, true)
+	word := Fit(limb.Word, wide, big, true)
 	col := pal.Ink
 	switch limb.Mark {
 	case MarkBetter:
@@ -147,7 +189,7 @@ func (b Body) label(p pen, pl bodyPlan, site exam.Site, limb BodyLimb, size vg.L
 		tx = x
 	}
 	Wedge(p.Canvas, p.st, vg.Point{X: mx, Y: y + size*0.4}, mark, limb.Mark, limb.Hollow)
-	p.text(tx, y, word, size*1.1, true, col, ax)
+	p.text(tx, y, word, big, true, col, ax)
 	if limb.ShowBeads {
 		y -= size * 1.0
 		r := size * 0.38

@@ -27,7 +27,7 @@ var ErrNoAlert = errors.New("no alert is open")
 // CourseCharts is the course as the serial model sees it, for the clinical papers. Without
 // it they show the plain segment score.
 type CourseCharts struct {
-	Sentence string // the change since the last visit and its probability
+	Sentence string // the change since the last visit and its probability, in English
 	Strip    chart.Strip
 }
 
@@ -175,7 +175,7 @@ func newClinical(in Input, course *CourseCharts) (*clinical, error) {
 		}
 	}
 	if err != nil {
-		c.why = upperFirst(err.Error()) + "."
+		c.why = words.In(in.lang(), "For this species nothing is on record from which a site could be worked out.")
 	}
 	return c, nil
 }
@@ -228,10 +228,10 @@ func (c *clinical) inShort() string {
 		out = append(out, upperFirst(urgencyWord(lang, n.Urgency))+": "+n.Words)
 	}
 	if c.result != nil {
-		out = append(out, upperFirst(c.result.Summary)+".")
+		out = append(out, upperFirst(Say(lang, c.result.Summary))+".")
 	}
 	if c.course != nil {
-		out = append(out, c.course.Sentence)
+		out = append(out, Say(lang, c.course.Sentence))
 	}
 	return strings.Join(out, " ")
 }
@@ -464,18 +464,19 @@ func (c *clinical) likely(p *page, x, w float64) {
 		return
 	}
 	r := c.result
-	p.note(r.Summary)
-	p.para(x, w, upperFirst(r.Summary), p.size*1.1, true, p.pal.Ink, 2)
+	site := upperFirst(Say(p.lang, r.Summary))
+	p.note(site)
+	p.para(x, w, site, p.size*1.1, true, p.pal.Ink, 2)
 	var regions []string
 	for i, g := range r.Regions {
 		if i < 4 && g.Probability >= 0.02 {
-			regions = append(regions, fmt.Sprintf("%s %.0f %%", words.OfIn(p.lang, g.Region), g.Probability*100))
+			regions = append(regions, fmt.Sprintf("%s %.0f %%", Say(p.lang, g.Region), g.Probability*100))
 		}
 	}
 	var kinds []string
 	for i, k := range r.Kinds {
 		if i < 3 && k.Probability >= 0.02 {
-			kinds = append(kinds, fmt.Sprintf("%s %.0f %%", words.OfIn(p.lang, k.Kind), k.Probability*100))
+			kinds = append(kinds, fmt.Sprintf("%s %.0f %%", Say(p.lang, k.Kind), k.Probability*100))
 		}
 	}
 	p.line(x, w, words.In(p.lang, "Regions"), strings.Join(regions, ", ")+"; "+strings.Join(kinds, ", "), 2)
@@ -489,8 +490,8 @@ func (c *clinical) likely(p *page, x, w float64) {
 			con = append(con, s)
 		}
 	}
-	p.line(x, w, words.In(p.lang, "Speaks for it"), strings.Join(pro, "; "), 2)
-	p.line(x, w, words.In(p.lang, "Speaks against it"), strings.Join(con, "; "), 2)
+	p.line(x, w, words.In(p.lang, "Speaks for it"), strings.Join(pro, "; "), 3)
+	p.line(x, w, words.In(p.lang, "Speaks against it"), strings.Join(con, "; "), 3)
 	var next []string
 	for i, n := range r.Next {
 		if i < 3 {
@@ -502,6 +503,7 @@ func (c *clinical) likely(p *page, x, w float64) {
 	p.line(x, w, words.In(p.lang, "Would tell most"), strings.Join(next, "; "), 1)
 	for i, s := range r.Warnings {
 		if i < 3 {
+			s = Say(p.lang, s)
 			p.note(s)
 			p.para(x, w, "• "+s, p.size*0.95, false, p.pal.Ink, 2)
 		}
@@ -568,7 +570,7 @@ func (c *clinical) pageOne(p *page, h float64) {
 	p.line(x, w, words.In(p.lang, "Problems"), c.problems(), 3)
 	p.line(x, w, words.In(p.lang, "Precautions"), c.precautions(), 2)
 	p.line(x, w, words.In(p.lang, "Medicines"), c.medicines(), 2)
-	p.line(x, w, words.In(p.lang, "Conditions of the exam"), c.conditions(), 2)
+	p.line(x, w, words.In(p.lang, "Conditions of the exam"), c.conditions(), 3)
 	c.alerts(p, x, w)
 	c.likely(p, x, w)
 	p.heading(x, w, words.In(p.lang, "Course of function by segment"))
@@ -577,7 +579,7 @@ func (c *clinical) pageOne(p *page, h float64) {
 	strip.Legend = true
 	sentence := words.In(p.lang, "Plain segment score: mean health of the tested findings whose arc includes the segment.")
 	if c.course != nil {
-		sentence = c.course.Sentence
+		sentence = Say(p.lang, c.course.Sentence)
 	}
 	p.note(sentence)
 	p.para(x, w, sentence, p.size, false, p.pal.Ink, 2)
@@ -589,6 +591,9 @@ func (c *clinical) pageOne(p *page, h float64) {
 	}
 	span := chart.SpanOf(strip.Visits, more...)
 	span.Left, span.Right = 88, 4
+	for _, l := range limbs.Limbs { // room for the longest label
+		span.Left = max(span.Left, min(chart.Width(l.Label, 7, false)+16, vg.Length(w*0.3)))
+	}
 	strip.Span, limbs.Span = span, span
 	rest := h - p.margin*0.95 - p.y
 	lh := math.Max(84, math.Min(130, rest*0.36))
@@ -681,6 +686,9 @@ func (c *clinical) gridTable(p *page, x, w float64, rows []gridRow, three, two b
 	size := p.size * 0.88
 	colW := (w - 14) / 2
 	labelW := colW * 0.36
+	for _, r := range rows {
+		labelW = math.Max(labelW, math.Min(width(r.label, size, false)+4, colW*0.5))
+	}
 	line := lead(size)
 	type laid struct {
 		row   gridRow
@@ -739,7 +747,9 @@ func (c *clinical) gridTable(p *page, x, w float64, rows []gridRow, three, two b
 			n++
 			y := p.y - size*0.3
 			if k == 0 {
-				p.put(cx, y, chart.Fit(l.row.label, vg.Length(labelW-3), vg.Length(size), false), size, false, p.pal.Ink)
+				// A label that is too long for its column is written smaller.
+				small := size * math.Min(1, math.Max(0.75, (labelW-3)/width(l.row.label, size, false)))
+				p.put(cx, y, chart.Fit(l.row.label, vg.Length(labelW-3), vg.Length(small), false), small, false, p.pal.Ink)
 			}
 			at := cx + labelW
 			for _, cell := range cells {
@@ -774,22 +784,24 @@ func (p *page) table(x, w float64, head []string, rows [][]string, most int, mor
 		rest -= cw
 	}
 	widths[0] = math.Max(rest, w*0.28)
-	put := func(r []string, bold bool, col func(int) bool) {
-		p.y += lead(size)
-		at := x
+	// What is too long for its column goes on to the next line.
+	put := func(r []string, bold bool) {
+		top, bottom, at := p.y, p.y, x
 		for i, s := range r {
-			b := bold || col != nil && col(i)
-			p.put(at, p.y-size*0.3, chart.Fit(p.clean(s), vg.Length(widths[i]-4), vg.Length(size), b), size, b, p.pal.Ink)
+			p.y = top
+			p.para(at, widths[i]-4, s, size, bold, p.pal.Ink, 3)
+			bottom = math.Max(bottom, p.y)
 			at += widths[i]
 		}
+		p.y = math.Max(bottom, top+lead(size))
 	}
-	put(head, true, nil)
+	put(head, true)
 	for i, r := range rows {
 		if i == most {
 			p.para(x, w, more(len(rows)-most), size, false, p.pal.Soft, 1)
 			break
 		}
-		put(r, false, nil)
+		put(r, false)
 	}
 }
 
@@ -833,16 +845,16 @@ func (c *clinical) scales(p *page, x, w float64) {
 			name += " " + siteShort(p.lang, exam.Key{Site: s.Site})
 		}
 		if s.Variant != "" {
-			name += " (" + s.Variant + ")"
+			name += " (" + Say(p.lang, s.Variant) + ")"
 		}
 		first, last, change := "–", "–", "–"
 		if y, ok := at(c.first, s); ok && len(c.in.Visits) > 1 {
-			first = y.String()
+			first = Say(p.lang, y.String())
 		}
 		if y, ok := at(c.prev, s); ok && len(c.in.Visits) > 1 {
-			last, change = y.String(), directionWord(p.lang, scale.Change(y, s))
+			last, change = Say(p.lang, y.String()), directionWord(p.lang, scale.Change(y, s))
 		}
-		rows = append(rows, []string{name, first, last, s.String(), change})
+		rows = append(rows, []string{name, first, last, Say(p.lang, s.String()), change})
 	}
 	p.table(x, w, []string{words.In(p.lang, "Scale"), words.In(p.lang, "first"), words.In(p.lang, "last"), words.In(p.lang, "today"), words.In(p.lang, "change")}, rows, 10,
 		func(n int) string { return c.in.text(textMore, n) })
@@ -1044,19 +1056,20 @@ func (c *clinical) letter(p *page) {
 		for _, g := range r.cells {
 			cells = append(cells, strings.TrimSpace(g.site+" "+g.last+step+g.now))
 		}
-		p.line(x, w, r.label, strings.Join(cells, ", "), 2)
+		p.line(x, w, r.label, strings.Join(cells, ", "), 4)
 		shown++
 	}
 	p.heading(x, w, words.In(lang, "Likely site (from today's exam, no diagnosis)"))
 	if c.result != nil {
-		p.note(c.result.Summary)
-		p.para(x, w, upperFirst(c.result.Summary), p.size, true, p.pal.Ink, 2)
+		site := upperFirst(Say(lang, c.result.Summary))
+		p.note(site)
+		p.para(x, w, site, p.size, true, p.pal.Ink, 2)
 	} else {
 		p.para(x, w, c.why, p.size, false, p.pal.Ink, 2)
 	}
 	p.line(x, w, words.In(lang, "Precautions"), c.precautions(), 2)
 	p.line(x, w, words.In(lang, "Medicines"), c.medicines(), 2)
-	p.line(x, w, words.In(lang, "Conditions of the exam"), c.conditions(), 2)
+	p.line(x, w, words.In(lang, "Conditions of the exam"), c.conditions(), 4)
 	p.y += p.size
 	if len(in.urgent()) > 0 {
 		s := words.In(lang, "Exercises are stopped until you agree to go on.")

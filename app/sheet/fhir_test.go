@@ -64,9 +64,10 @@ func validFHIR(data []byte) error {
 	return whole
 }
 
-// mapped is what of an animal a bundle carries: all but the weight series.
+// mapped is what of an animal a bundle carries: all but the weight series and
+// the record of what was sent.
 func mapped(a Animal) Animal {
-	a.Patient.Weights = nil
+	a.Patient.Weights, a.Patient.Sent = nil, nil
 	return a
 }
 

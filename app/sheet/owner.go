@@ -30,7 +30,6 @@ type fit struct {
 	how         int     // most lines of text of each exercise, 0: all
 	goals       int     // most goals, 0: all
 	summary     int     // most lines of the summary, 0: all
-	perLine     int     // most lines of each change, 0: all
 	noticeLines int     // most lines of each alert, 0: all
 	mostNotices int     // most alerts, 0: all
 }
@@ -53,28 +52,28 @@ func fits(large bool, exercises int) []fit {
 	}
 	small := sizes[len(sizes)-1]
 	tight := []fit{
-		{how: 3, goals: 4, summary: 6, perLine: 3, noticeLines: 4, mostNotices: 4, chart: 78, body: 120},
-		{how: 2, goals: 3, summary: 5, perLine: 2, noticeLines: 3, mostNotices: 3, chart: 72, body: 112},
-		{how: 1, goals: 2, summary: 4, perLine: 2, noticeLines: 2, mostNotices: 3, chart: 66, body: 104},
+		{how: 3, goals: 4, summary: 6, noticeLines: 4, mostNotices: 4, chart: 78, body: 120},
+		{how: 2, goals: 3, summary: 5, noticeLines: 3, mostNotices: 3, chart: 72, body: 112},
+		{how: 1, goals: 2, summary: 4, noticeLines: 2, mostNotices: 3, chart: 66, body: 104},
 		// Without the chart there is room for the instructions again.
-		{goals: 3, summary: 6, perLine: 3, noticeLines: 3, mostNotices: 4, body: 112},
-		{how: 3, goals: 2, summary: 5, perLine: 2, noticeLines: 2, mostNotices: 3, body: 104},
-		{how: 2, goals: 2, summary: 4, perLine: 2, noticeLines: 2, mostNotices: 3, body: 104},
-		{how: 1, goals: 2, summary: 4, perLine: 2, noticeLines: 2, mostNotices: 3, body: 104},
+		{goals: 3, summary: 6, noticeLines: 3, mostNotices: 4, body: 112},
+		{how: 3, goals: 2, summary: 5, noticeLines: 2, mostNotices: 3, body: 104},
+		{how: 2, goals: 2, summary: 4, noticeLines: 2, mostNotices: 3, body: 104},
+		{how: 1, goals: 2, summary: 4, noticeLines: 2, mostNotices: 3, body: 104},
 	}
 	for _, f := range tight {
 		f.size = small
 		out = append(out, f)
 	}
 	for _, s := range sizes { // names and boxes alone, as large as they go
-		out = append(out, fit{size: s, how: 1, goals: 1, summary: 3, perLine: 2, noticeLines: 2, mostNotices: 2, body: 96, terse: true})
+		out = append(out, fit{size: s, how: 1, goals: 1, summary: 3, noticeLines: 2, mostNotices: 2, body: 96, terse: true})
 	}
 	last := out[len(out)-1]
 	for n := min(exercises, 24) - 1; n >= 1; n-- {
 		last.exercises = n
 		out = append(out, last)
 	}
-	last.exercises, last.perLine, last.noticeLines = 1, 1, 1
+	last.exercises, last.noticeLines = 1, 1
 	return append(out, last)
 }
 
@@ -142,6 +141,7 @@ func lostLetters(lost map[string]bool) string {
 type exercise struct {
 	name, often, how, stop string
 	times                  int
+	own                    bool // how it is done is the therapist's own text
 }
 
 type owner struct {
@@ -162,7 +162,7 @@ func (o *owner) plan(last exam.Visit) {
 	o.warnings = append(o.warnings, plan.warnings...)
 	o.noted = plan.noted
 	for _, h := range plan.keep {
-		e := exercise{times: min(max(h.Times, 1), 6)}
+		e := exercise{times: min(max(h.Times, 1), 6), own: h.How != ""}
 		var amount string
 		e.name, amount, e.how, e.stop = plainExercise(in, h)
 		often := in.text(textOnce)
@@ -178,6 +178,23 @@ func (o *owner) plan(last exam.Visit) {
 		e.often = often
 		o.home = append(o.home, e)
 	}
+}
+
+// wholeSentences leaves out the last sentences of a text that has too many lines, so that
+// what stands is whole; a text of the therapist's own is left as it is. Where not even the
+// first sentence fits, nothing of it is said.
+func wholeSentences(text string, own bool, most int, lines func(string) int) string {
+	if own || most <= 0 {
+		return text
+	}
+	for text != "" && lines(text) > most {
+		i := strings.LastIndex(strings.TrimRight(text, ". "), ". ")
+		if i < 0 {
+			return ""
+		}
+		text = text[:i+1]
+	}
+	return text
 }
 
 // list joins the names of topics with commas, in the paper's language; legs that are named
@@ -519,11 +536,20 @@ func (o *owner) picture(p *page, f fit) {
 		for _, s := range o.summary {
 			p.note(s)
 		}
-		p.para(rx, rw, strings.Join(o.summary, " "), p.size*1.05, false, p.pal.Ink, f.summary)
+		p.para(rx, rw, strings.Join(o.summary, " "), p.size*1.05, false, p.pal.Ink, o.mostSummary(f))
 	}
 	p.heading(rx, rw, in.text(textChanges))
 	o.seen(p, rx, rw, f)
 	p.y = math.Max(p.y, bottom)
+}
+
+// mostSummary is the most lines of the sentences: what the program says itself is never cut,
+// unless the animal's name alone takes lines.
+func (o *owner) mostSummary(f fit) int {
+	if strings.TrimSpace(o.in.Options.Summary) == "" && len(o.in.Patient.Name) <= 40 {
+		return 0
+	}
+	return f.summary
 }
 
 // seen lists what is worse, better, the same and not tested, each under its mark.
@@ -573,11 +599,7 @@ func (o *owner) seen(p *page, x, w float64, f fit) {
 		p.draw(x, y-p.size*0.6, p.size*1.2, p.size*1.2, func(c draw.Canvas) {
 			chart.Wedge(c, st, vg.Point{X: vg.Length(p.size * 0.6), Y: vg.Length(p.size * 0.6)}, vg.Length(p.size*0.36), g.mark, false)
 		})
-		most := f.perLine
-		if g.rank == 0 {
-			most = 0 // what fell is never cut
-		}
-		p.para(x+indent, w-indent, line, p.size, g.rank == 0, p.pal.Ink, most)
+		p.para(x+indent, w-indent, line, p.size, g.rank == 0, p.pal.Ink, 0)
 		p.y += p.size * 0.15
 	}
 }
@@ -790,14 +812,19 @@ func (o *owner) homePlan(p *page, f fit) {
 		p.y += p.size * 0.1
 		head := e.name + " – " + e.often
 		p.note(head)
-		p.para(x, textW, head, p.size, true, p.pal.Ink, max(f.how, 0))
+		most := 0
+		if f.how > 0 {
+			most = max(f.how, 2)
+		}
+		p.para(x, textW, head, p.size, true, p.pal.Ink, most)
 		if e.how != "" && !f.terse {
-			p.note(e.how)
-			p.para(x, textW, e.how, p.size*0.93, false, p.pal.Ink, f.how)
+			how := wholeSentences(e.how, e.own, f.how, func(s string) int { return len(wrap(p.clean(s), textW, p.size*0.93, false, 0)) })
+			p.note(how)
+			p.para(x, textW, how, p.size*0.93, false, p.pal.Ink, f.how)
 		}
 		if e.stop != "" && !f.terse {
 			p.note(e.stop)
-			p.para(x, textW, e.stop, p.size*0.93, false, p.pal.Ink, f.how)
+			p.para(x, textW, e.stop, p.size*0.93, false, p.pal.Ink, 0)
 		}
 		side := p.size * 0.85
 		perRow := 2

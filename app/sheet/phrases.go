@@ -226,6 +226,7 @@ func Terms() []string {
 	for _, c := range exam.Conditions() {
 		out = append(out, c.String())
 	}
+	out = append(out, sayKeys()...)
 	return append(out, KindSheet, KindSummary, KindLetter, "medial", "lateral", "flexion", "extension")
 }
 

@@ -4,6 +4,7 @@ import (
 	"strings"
 	"time"
 
+	"cordwalk.example/cordwalk/app/sheet"
 	"cordwalk.example/cordwalk/assets/words"
 	"cordwalk.example/cordwalk/exam"
 	"cordwalk.example/cordwalk/exam/alert"
@@ -40,7 +41,10 @@ func UrgencyWords(urgency string) string {
 
 // AlertsOf returns what the last of the visits raises, and what those of the two weeks
 // before it raised and nobody has answered; most urgent first.
-func AlertsOf(p exam.Patient, visits []exam.Visit) []Alert {
+func AlertsOf(p exam.Patient, visits []exam.Visit) []Alert { return AlertsIn("", p, visits) }
+
+// AlertsIn is AlertsOf in a stated language; the empty tag is the language in use.
+func AlertsIn(lang string, p exam.Patient, visits []exam.Visit) []Alert {
 	var last time.Time
 	for _, v := range visits {
 		if v.Examined.After(last) {
@@ -49,8 +53,8 @@ func AlertsOf(p exam.Patient, visits []exam.Visit) []Alert {
 	}
 	var out []Alert
 	for _, f := range alert.Scan(p, visits, last) {
-		a := Alert{Rule: f.Rule, Seen: f.Seen, Urgency: f.Urgency.String(), Title: AlertTitle(f.Rule), Words: f.Words(),
-			Plain: plainAlert(f), Source: f.Source, Visit: f.Visit, Since: f.From, Answered: !f.Open()}
+		a := Alert{Rule: f.Rule, Seen: sheet.Say(lang, f.Seen), Urgency: f.Urgency.String(), Title: alertTitle(lang, f.Rule), Words: alertWords(lang, f),
+			Plain: plainAlert(lang, f), Source: f.Source, Visit: f.Visit, Since: f.From, Answered: !f.Open()}
 		if a.Since.IsZero() {
 			a.Since = f.To
 		}
@@ -63,16 +67,18 @@ func AlertsOf(p exam.Patient, visits []exam.Visit) []Alert {
 }
 
 // AlertTitle returns the name of an alert rule.
-func AlertTitle(rule string) string {
+func AlertTitle(rule string) string { return alertTitle("", rule) }
+
+func alertTitle(lang, rule string) string {
 	for _, r := range alert.Rules() {
 		if r.Key == rule {
-			return words.Of(r.Name)
+			return words.OfIn(lang, r.Name)
 		}
 	}
 	if rule == "decline" {
-		return words.T("Decline over several exams")
+		return words.In(lang, "Decline over several exams")
 	}
-	return words.Of(capital(strings.ReplaceAll(rule, "-", " ")))
+	return words.OfIn(lang, capital(strings.ReplaceAll(rule, "-", " ")))
 }
 
 // plainAlerts say each rule to the owner, in everyday words.
@@ -102,14 +108,33 @@ var plainAlerts = map[string]string{
 	"decline":         "Over the last visits your pet has become weaker.",
 }
 
-func plainAlert(f alert.Flag) string {
+// alertWords says a flag in one short paragraph: what was seen, between which days and by
+// whom, why it matters and what to do.
+func alertWords(lang string, f alert.Flag) string {
+	seen := sheet.Say(lang, f.Seen)
+	if f.CannotRuleOut {
+		seen = words.In(lang, "Cannot rule out: %s", seen)
+	}
+	to := string(exam.DayOf(f.To))
+	if f.From.IsZero() || f.From.Equal(f.To) {
+		seen = words.In(lang, "%[1]s, seen %[2]s", seen, to)
+	} else {
+		seen = words.In(lang, "%[1]s, between %[2]s and %[3]s", seen, string(exam.DayOf(f.From)), to)
+	}
+	if f.ToExaminer != "" {
+		seen += " (" + f.ToExaminer + ")"
+	}
+	return seen + ". " + words.OfIn(lang, f.Why) + " " + words.OfIn(lang, f.Do)
+}
+
+func plainAlert(lang string, f alert.Flag) string {
 	s, ok := plainAlerts[f.Rule]
 	if !ok {
 		s = "We saw something that your veterinarian must know of."
 	}
-	s = words.Of(s)
+	s = words.OfIn(lang, s)
 	if f.CannotRuleOut {
-		s += " " + words.T("We could not test this today.")
+		s += " " + words.In(lang, "We could not test this today.")
 	}
 	return s
 }

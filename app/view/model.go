@@ -97,10 +97,11 @@ func Sentence(r progress.Result) string {
 	if r.Change == nil {
 		return ""
 	}
-	return capital(r.Change.Words) + "."
+	return sheet.Say("", capital(r.Change.Words)+".")
 }
 
-// ClinicalCourse is the course for the clinical summary; nil where there is no model.
+// ClinicalCourse is the course for the clinical summary, its sentence in English, which the
+// paper says in its own language; nil where there is no model.
 func ClinicalCourse(p exam.Patient, visits []exam.Visit) (*sheet.CourseCharts, error) {
 	c, r, err := ModelCourse(p, visits, progress.Options{})
 	if err != nil {
@@ -109,7 +110,11 @@ func ClinicalCourse(p exam.Patient, visits []exam.Visit) (*sheet.CourseCharts, e
 	if len(r.Segments) == 0 {
 		return nil, nil
 	}
-	return &sheet.CourseCharts{Sentence: Sentence(r), Strip: c.Strip}, nil
+	english := ""
+	if r.Change != nil {
+		english = capital(r.Change.Words) + "."
+	}
+	return &sheet.CourseCharts{Sentence: english, Strip: c.Strip}, nil
 }
 
 // VertebralLevel says where a segment lies in the column of an animal of that weight, such

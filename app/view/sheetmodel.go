@@ -17,6 +17,9 @@ func SheetInput(pr exam.Practice, p exam.Patient, visits []exam.Visit, at time.T
 	if o.Lang == "" {
 		o.Lang = pr.Language
 	}
+	if o.Lang == "" {
+		o.Lang = "en"
+	}
 	if o.Phrases == nil {
 		o.Phrases = sheet.OwnPhrases(pr, o.Lang)
 	}
@@ -24,7 +27,7 @@ func SheetInput(pr exam.Practice, p exam.Patient, visits []exam.Visit, at time.T
 		o.Logo = pr.Logo
 	}
 	in := sheet.Input{Practice: pr, Patient: p, Visits: slices.Clone(visits), At: at, Options: o}
-	for _, a := range AlertsOf(p, visits) {
+	for _, a := range AlertsIn(o.Lang, p, visits) {
 		n := sheet.Notice{Urgency: sheet.NextWorkingDay, Plain: a.Plain, Words: a.Words, Since: a.Since, Told: a.Told}
 		switch a.Urgency {
 		case "now":

@@ -76,7 +76,7 @@ func (c *practiceShowCmd) Run(e *env) error {
 		line(words.T("Language"), pr.Language)
 		line(words.T("Paper"), pr.Paper)
 		if n := len(pr.Logo); n > 0 {
-			line(words.T("Logo"), words.N(n>>10, "%d KiB", "%d KiB", n>>10))
+			line(words.T("Logo"), words.T("%d KiB", max(1, n>>10)))
 		}
 		e.say("%s", words.T("Sentences on the owner's sheet (%s), by their names; * marks the practice's own:", lang))
 		for _, p := range list {

@@ -61,7 +61,7 @@ var rules = []Rule{
 		Source: "Beal2003, Andruzzi2021, MV-TP2023", find: breathing,
 		open: func(_ *scene, k exam.Key) bool { return k.Item == exam.Breathing }},
 	{Key: "drop", Number: 6, Name: "Sudden drop in function", Items: []exam.Item{exam.Ambulation, exam.VoluntaryMotor, exam.DeepPain, exam.SuperficialPain, exam.Ataxia, exam.PawPlacement},
-		Why:    "A second extrusion or bleeding can follow within days; 5.8 % of operated dogs worsen in days 1 to 10.",
+		Why:    "A second extrusion or bleeding can follow within days; of 100 operated dogs 5.8 worsen in days 1 to 10.",
 		Source: "Hettlich2012, Forterre2010; first 14 days common practice", find: drop,
 		open: func(_ *scene, k exam.Key) bool {
 			return k.Item == exam.Ambulation || k.Item == exam.VoluntaryMotor
