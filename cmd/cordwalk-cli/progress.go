@@ -151,7 +151,7 @@ func (e *env) progressOf(p exam.Patient, visits []exam.Visit, since exam.Date, w
 	}
 	res.Notes = append(res.Notes, warnings...)
 	if e.c.JSON {
-		return e.printJSON(res)
+		return e.printLarge(res)
 	}
 	for _, n := range res.Notes {
 		e.say("%s", words.T("Note: %s", n))
