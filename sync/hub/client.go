@@ -77,8 +77,10 @@ type Client struct {
 	acked  map[change.Stream]uint64    // what the hub has of our own streams
 	peers  map[key.Verifier]carry.Head // the newest head of each
 	wanted map[change.Stream]time.Time // when we asked last
+	moving map[change.Stream]time.Time // when something of it came last, or we noticed that we lack something
 	filled map[string]time.Time        // what was sent again of late, by us or others
 	known  map[string]bool             // statements on the hub
+	read   uint64                      // up to where they were read
 	moved  []moved                     // for the rate
 	seq    uint64                      // of the last message read
 	hub    string                      // which hub that was: when its stream was made
@@ -106,7 +108,7 @@ func New(o Options) *Client {
 		}
 	}
 	return &Client{o: o, kick: make(chan struct{}, 1), acked: map[change.Stream]uint64{}, peers: map[key.Verifier]carry.Head{},
-		wanted: map[change.Stream]time.Time{}, filled: map[string]time.Time{}, known: map[string]bool{}}
+		wanted: map[change.Stream]time.Time{}, moving: map[change.Stream]time.Time{}, filled: map[string]time.Time{}, known: map[string]bool{}}
 }
 
 // Kick tells the client that there are new entries, so that it need not look.
@@ -244,6 +246,7 @@ func (c *Client) session(ctx context.Context) error {
 	c.mu.Lock()
 	clear(c.acked)
 	clear(c.known)
+	c.read = 0
 	c.seq, c.hub = from-1, hub
 	c.status.Oldest = info.State.FirstTime
 	c.mu.Unlock()
@@ -382,11 +385,11 @@ func (c *Client) exchangeMembers(ctx context.Context) error {
 	}
 	state := s.CachedInfo().State
 	c.mu.Lock()
-	seen := len(c.known)
+	read := c.read
 	c.mu.Unlock()
-	if seen == 0 || uint64(seen) != state.Msgs {
+	if state.Msgs > 0 && state.LastSeq > read {
 		var found [][]byte
-		for seq := state.FirstSeq; seq <= state.LastSeq && state.Msgs > 0; seq++ {
+		for seq := max(state.FirstSeq, read+1); seq <= state.LastSeq; seq++ {
 			m, err := s.GetMsg(ctx, seq)
 			if errors.Is(err, jetstream.ErrMsgNotFound) {
 				continue
@@ -404,6 +407,9 @@ func (c *Client) exchangeMembers(ctx context.Context) error {
 		if _, err := c.o.Members.Learn(found); err != nil {
 			return err
 		}
+		c.mu.Lock()
+		c.read = state.LastSeq
+		c.mu.Unlock()
 	}
 	for _, raw := range c.o.Members.Statements() {
 		c.mu.Lock()
@@ -666,6 +672,7 @@ func (c *Client) segment(ctx context.Context, data []byte) error {
 	}
 	c.mu.Lock()
 	c.filled[fillKey(rd.Stream, rd.First)] = c.o.Now()
+	c.moving[rd.Stream] = c.o.Now()
 	c.mu.Unlock()
 	held, err := c.o.Journal.Streams(ctx)
 	if err != nil {
@@ -797,6 +804,13 @@ func (c *Client) ask(ctx context.Context, lastSeq uint64) error {
 			}
 			h := have[s]
 			if gaps := merge.Gaps(s, h.Spans, r.Last); len(gaps) > 0 {
+				// What somebody holds may be on its way: a backlog travels for a while.
+				if last, ok := c.moving[s]; !ok || now.Sub(last) < 10*c.o.Poll {
+					if !ok {
+						c.moving[s] = now
+					}
+					continue
+				}
 				wants[s] = want{gaps[0].First, max(gaps[0].Last, wants[s].Last)}
 			}
 		}

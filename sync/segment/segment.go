@@ -172,13 +172,25 @@ const (
 	entryOpened = 1 // uvarint epoch, minor version, uvarint number of changes, nonce, uvarint length, batch
 )
 
-var encoders = sync.Pool{New: func() any {
-	e, err := zstd.NewWriter(nil, zstd.WithEncoderConcurrency(1), zstd.WithEncoderLevel(zstd.SpeedDefault), zstd.WithEncoderCRC(false))
-	if err != nil {
-		panic(err) // the options are constants
-	}
-	return e
-}}
+// Small blocks are those of a hub: there the time counts and not the last byte.
+const smallBlock = 128 << 10
+
+var encoders, quickEncoders = encodersOf(zstd.SpeedDefault), encodersOf(zstd.SpeedFastest)
+
+func encodersOf(level zstd.EncoderLevel) *sync.Pool {
+	return &sync.Pool{New: func() any {
+		e, err := zstd.NewWriter(nil, zstd.WithEncoderConcurrency(1), zstd.WithEncoderLevel(level), zstd.WithEncoderCRC(false))
+		if err != nil {
+			panic(err) // the options are constants
+		}
+		return e
+	}}
+}
+
+// buffers keeps the memory that builders work in.
+var buffers = sync.Pool{New: func() any { return new(buffer) }}
+
+type buffer struct{ block, opened, packed []byte }
 
 var decoders = sync.Pool{New: func() any {
 	d, err := zstd.NewReader(nil, zstd.WithDecoderConcurrency(1), zstd.WithDecoderMaxMemory(maxBlock), zstd.WithDecoderMaxWindow(8<<20))
@@ -196,9 +208,7 @@ type Builder struct {
 	started bool
 	last    uint64
 	head    change.Hash
-	block   []byte // entries not sealed yet
-	opened  []byte
-	packed  []byte
+	*buffer // block holds entries that are not sealed yet
 	blocks  [][]byte
 	size    int
 	raw     int
@@ -208,7 +218,9 @@ type Builder struct {
 func NewBuilder(ring *key.Ring) *Builder {
 	epoch := ring.Current()
 	s, _ := ring.Secret(epoch)
-	return &Builder{ring: ring, seal: s.Derive("segments"), h: Header{Epoch: epoch}}
+	buf := buffers.Get().(*buffer)
+	buf.block = buf.block[:0]
+	return &Builder{ring: ring, seal: s.Derive("segments"), h: Header{Epoch: epoch}, buffer: buf}
 }
 
 // Raw returns the bytes of the frames added so far.
@@ -272,9 +284,13 @@ func (b *Builder) close() {
 	if len(b.block) == 0 {
 		return
 	}
-	e := encoders.Get().(*zstd.Encoder)
+	pool := encoders
+	if len(b.block) < smallBlock {
+		pool = quickEncoders
+	}
+	e := pool.Get().(*zstd.Encoder)
 	b.packed = e.EncodeAll(b.block, b.packed[:0])
-	encoders.Put(e)
+	pool.Put(e)
 	// The header is not known yet, so a block is tied to its stream, its place and what comes
 	// before it; the trailing hash and the chain hash tie the rest.
 	sealed := b.seal.Seal(b.packed, blockContext(b.h.Stream, b.h.First, len(b.blocks)))
@@ -319,6 +335,8 @@ func (b *Builder) Finish(w io.Writer, signed Signed) (Header, [32]byte, error) {
 	}
 	name := [32]byte(sum.Sum(nil))
 	_, err := w.Write(name[:])
+	buffers.Put(b.buffer)
+	b.buffer = &buffer{}
 	return b.h, name, err
 }
 
