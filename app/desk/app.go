@@ -41,7 +41,7 @@ type App struct {
 
 	drafts map[exam.ID]*view.PatientForm // pages of animals that were left with something typed on them
 
-	album   album   // the photos and clips beside the store
+	album   album       // the photos and clips beside the store
 	engines engines     // of all exams: each would hold much scratch memory
 	resting *time.Timer // see rest
 

@@ -47,6 +47,7 @@ const (
 	tabTreatments
 	tabHome
 	tabPhotos
+	tabStim
 )
 
 func newExamPage(w *window, visit exam.ID) *examPage {
@@ -98,7 +99,7 @@ func (p *examPage) build(v exam.Visit) {
 	p.card = newOneCard(p)
 	p.side = newExamSide(p)
 	p.left1 = container.NewStack()
-	names := []string{words.T("Exam"), words.T("Visit"), words.T("Measures"), words.T("Treatments"), words.T("Home"), words.T("Photos")}
+	names := []string{words.T("Exam"), words.T("Visit"), words.T("Measures"), words.T("Treatments"), words.T("Home"), words.T("Photos"), words.T("Stimulation")}
 	var tabs []fyne.CanvasObject
 	p.tabs = nil
 	for i, n := range names {
@@ -398,6 +399,8 @@ func (p *examPage) choose(tab int) {
 		o = newHomeForm(p)
 	case tabPhotos:
 		o = newPhotosForm(p)
+	case tabStim:
+		o = newStimForm(p)
 	default:
 		if p.win.app.settings.OneByOne {
 			p.card.update()

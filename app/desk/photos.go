@@ -336,4 +336,3 @@ func newPhotosBeside(w *window, a, b exam.Visit) fyne.CanvasObject {
 	return mark.Column(look.Unit, mark.Pad(look.Unit, 0, mark.Heading(words.T("Photos and clips")).AtLeast(60)), mark.Rule(),
 		mark.RowTop(look.Unit*2, []float32{1, 1}, side(a), side(b)))
 }
-

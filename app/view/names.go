@@ -205,6 +205,7 @@ func Terms() []string {
 	out = append(out, positionTitles[:]...)
 	out = append(out, sectionTitles[:]...)
 	out = append(out, fieldTerms()...)
+	out = append(out, stimTerms()...)
 	out = append(out, "medial digit", "lateral digit", "female", "male", "unknown", "active", "discharged", "died",
 		"sedation", "aid", "surface", "session", "medicines", "none", "mild", "moderate", "deep")
 	out = append(out, exam.AidWords()...)

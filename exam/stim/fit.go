@@ -119,6 +119,14 @@ const (
 	wantedSpread = 100
 )
 
+// The warnings of a fit, but for the one that names a pulse width.
+const (
+	fewWidths    = "fewer than five pulse widths: the curve is uncertain"
+	narrowWidths = "pulse widths spread over less than a factor of 100"
+	wideCharge   = "a charge line over so wide a range is ruled by the long pulses: prefer the law fitted to currents"
+	notFalling   = "the points do not fall with pulse width as a curve should: repeat the test"
+)
+
 // Do fits a law to the points of a test. Widths and currents must be positive and finite and of at least three
 // different widths; else the error says which point is wrong. Repeats at one width are points of their
 // own. A point that is far off is kept in the fit and named in Bad.
@@ -152,13 +160,13 @@ func Do(points []Point, law Law) (Fit, error) {
 		return f, &exam.Invalid{Field: "strength–duration test", Value: number(float64(widths)) + " pulse widths", Allowed: "at least three different pulse widths"}
 	}
 	if widths < wantedWidths {
-		f.Warnings = append(f.Warnings, "fewer than five pulse widths: the curve is uncertain")
+		f.Warnings = append(f.Warnings, fewWidths)
 	}
 	if f.Points[len(f.Points)-1].Width < wantedSpread*f.Points[0].Width {
-		f.Warnings = append(f.Warnings, "pulse widths spread over less than a factor of 100")
+		f.Warnings = append(f.Warnings, narrowWidths)
 	}
 	if law == WeissCharge && f.Points[len(f.Points)-1].Width > 50*f.Points[0].Width {
-		f.Warnings = append(f.Warnings, "a charge line over so wide a range is ruled by the long pulses: prefer the law fitted to currents")
+		f.Warnings = append(f.Warnings, wideCharge)
 	}
 	f.solve()
 	f.findBad()
@@ -168,7 +176,7 @@ func Do(points []Point, law Law) (Fit, error) {
 		}
 	}
 	if !f.Chargeable {
-		f.Warnings = append(f.Warnings, "the points do not fall with pulse width as a curve should: repeat the test")
+		f.Warnings = append(f.Warnings, notFalling)
 	}
 	return f, nil
 }

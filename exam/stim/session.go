@@ -174,17 +174,26 @@ func (s Session) Validate() error {
 	return nil
 }
 
-// Remarks compares a session with the ranges of its aim. A figure that is 0 is «not said». The remarks are
+// Remark is a figure of a session that lies outside the range of its aim.
+type Remark struct {
+	Name      string // "frequency", …
+	Value     float64
+	Low, High float64
+	Unit      string
+	Source    string
+}
+
+// Outside compares a session with the ranges of its aim. A figure that is 0 is «not said». The ranges are
 // guidance; none forbids.
-func (s Session) Remarks() []string {
+func (s Session) Outside() []Remark {
 	a, ok := AimByKey(s.Aim)
 	if !ok {
 		return nil
 	}
-	var out []string
+	var out []Remark
 	check := func(name string, v, low, high float64, unit string) {
 		if v > 0 && high > 0 && (v < low || v > high) {
-			out = append(out, fmt.Sprintf("%s %s %s: the literature says %s to %s %s (%s)", name, number(v), unit, number(low), number(high), unit, a.Source))
+			out = append(out, Remark{name, v, low, high, unit, a.Source})
 		}
 	}
 	check("frequency", s.Frequency, a.FrequencyLow, a.FrequencyHigh, "Hz")
@@ -194,10 +203,46 @@ func (s Session) Remarks() []string {
 	if s.On > 0 && s.Off > 0 {
 		check("rest for each second of work", s.Off/s.On, a.RatioLow, a.RatioHigh, "s")
 	}
+	return out
+}
+
+// soreSkin is what is said of skin that a session left sore.
+const soreSkin = "the skin is sore after the session: rest it, larger electrodes or more gel, and tell the veterinarian if it is not gone tomorrow"
+
+// SkinRemark says what to do about the skin after the session; empty where there is nothing to say.
+func (s Session) SkinRemark() string {
 	if s.SkinAfter == "sore" {
-		out = append(out, "the skin is sore after the session: rest it, larger electrodes or more gel, and tell the veterinarian if it is not gone tomorrow")
+		return soreSkin
+	}
+	return ""
+}
+
+// Remarks says in English what Outside and SkinRemark find.
+func (s Session) Remarks() []string {
+	var out []string
+	for _, r := range s.Outside() {
+		out = append(out, fmt.Sprintf("%s %s %s: the literature says %s to %s %s (%s)", r.Name, number(r.Value), r.Unit, number(r.Low), number(r.High), r.Unit, r.Source))
+	}
+	if w := s.SkinRemark(); w != "" {
+		out = append(out, w)
 	}
 	return out
+}
+
+// Terms lists the texts of this package that people read, for the catalogue.
+func Terms() []string {
+	out := append(SkinWords(), WaveformWords()...)
+	for _, a := range Aims() {
+		out = append(out, a.Name, a.Note)
+	}
+	for _, q := range Questions() {
+		out = append(out, q.Words)
+	}
+	for l := Uncertain; l <= MuscleLike; l++ {
+		out = append(out, l.String())
+	}
+	return append(out, "frequency", "pulse width", "ramp", "duration", "rest for each second of work", soreSkin, fewWidths, narrowWidths, wideCharge, notFalling,
+		"keep current away from the heart", "keep current away from the front of the neck")
 }
 
 // Question is asked before the first session of an animal.
