@@ -117,7 +117,7 @@ func (p *devicesPage) build() {
 	case p.share == nil && !p.founded():
 		parts = append(parts, p.found())
 	case p.share != nil:
-		parts = append(parts, p.exchange(), p.devices(), p.backups())
+		parts = append(parts, p.exchange(), p.hub(), p.devices(), p.backups())
 	}
 	if x := p.choices(); x != nil {
 		parts = append(parts, x)
@@ -213,6 +213,7 @@ func (p *devicesPage) exchange() fyne.CanvasObject {
 					a.shared = at
 				}
 				p.report = lines
+				p.findChoices()
 				p.win.strip.update()
 				p.win.foot.say(lines[0])
 			}, nil
@@ -269,7 +270,7 @@ func (p *devicesPage) devices() fyne.CanvasObject {
 	lines = append(lines, mark.Left(invite))
 	if p.code != "" {
 		lines = append(lines, mark.NewPara(p.code).As(look.Title).Strong(),
-			mark.NewPara(words.T("Tell this code by voice and never send it with the invitation. The other device runs: cordwalk-cli join FOLDER --code …. Then exchange here to see who asks.")))
+			mark.NewPara(words.T("Tell this code by voice and never send it with the invitation. The other device chooses «Join a practice» at its first start. Then exchange here to see who asks.")))
 	}
 	return section(words.T("Devices of the practice"), lines...)
 }

@@ -61,6 +61,7 @@ func newFirstRunPage(w *window, dir string) *firstRunPage {
 	p.said = mark.NewPara("").In(look.Worse)
 	start := mark.NewButton(words.T("Start my practice"), "tick", p.start).As(mark.Main)
 	demo := mark.NewButton(words.T("Open the demo practice"), "eye", p.demo)
+	join := mark.NewButton(words.T("Join a practice"), "devices", func() { w.bare(newJoinPage(w, dir)) })
 	p.root = bareFrame(words.T("Welcome to Cordwalk"),
 		mark.NewPara(words.T("A weekly neurological exam, kept safe on this computer and compared with the one before. Three questions, then the caseload.")),
 		mark.RowTop(look.Unit*2, []float32{1.4, 1}, p.fields["practice"], p.fields["phone"]),
@@ -70,7 +71,7 @@ func newFirstRunPage(w *window, dir string) *firstRunPage {
 		none,
 		mark.NewPara(words.T("Without the passphrase nobody can read the data, and nobody can bring them back: keep it where you will find it.")).In(look.InkSoft),
 		p.said,
-		mark.Row(look.Unit, []float32{0, 1, 0}, start, mark.Space(1, 1), demo),
+		mark.Row(look.Unit, []float32{0, 1, 0, 0}, start, mark.Space(1, 1), join, demo),
 		mark.NewPara(words.T("The demo practice is invented, lies in a folder of its own and is marked as demo on every screen.")).In(look.InkSoft),
 		mark.NewPara(words.T("Cordwalk supports and never replaces a licensed veterinarian.")).In(look.InkSoft))
 	return p

@@ -28,6 +28,7 @@ type Settings struct {
 	OneByOne  bool              `json:"oneByOne,omitempty"` // the exam shows a single test
 	Protocol  string            `json:"protocol,omitempty"` // used last
 	Exchange  string            `json:"exchange,omitempty"` // folder by which devices exchange
+	Hub       string            `json:"hub,omitempty"`      // address of the hub in the network
 	Backups   string            `json:"backups,omitempty"`  // folder of the backups
 	Token     map[string]string `json:"token,omitempty"`    // store id → proof that the store was not copied
 }
