@@ -145,7 +145,7 @@ func TestStickIsPulledOut(t *testing.T) {
 
 // Random histories of 2 to 5 devices and 1 to 3 folders: entries, exchanges, interrupted copies, files lost,
 // renamed and damaged, stores copied and put back, folders emptied. In the end every device has every
-// value that any device had.
+// value that any device had, and the state of all is the same, whichever branch of a fork each met first.
 func TestFolderHistories(t *testing.T) {
 	rounds := 40
 	if os.Getenv("CORDWALK_SOAK") == "1" {
@@ -219,6 +219,9 @@ func TestFolderHistories(t *testing.T) {
 					t.Fatalf("history %d of seed %d: device %d lacks %q", i, seed, k, v)
 				}
 			}
+		}
+		for k, d := range ds[1:] {
+			require.Equal(t, ds[0].state().Hash(), d.state().Hash(), "history %d of seed %d: device %d shows something else than device 0", i, seed, k+1)
 		}
 		// Idle now: nothing is sent or received any more.
 		for _, d := range ds {

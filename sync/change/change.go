@@ -177,10 +177,11 @@ func (c Change) Previous() (seq uint64, ok bool) {
 	return c.Before - 1, true
 }
 
-// Compare puts changes into the order of a history: by time, then stream, then sequence,
-// then id. It says nothing about what is current.
+// Compare puts changes into the order of a history: by time, then sequence, then id. It says nothing
+// about what is current. The stream takes no part: which of the two branches of a fork has the stream's own
+// name is up to each device.
 func (c Change) Compare(d Change) int {
-	return cmp.Or(cmp.Compare(c.Time, d.Time), c.Stream.Compare(d.Stream), cmp.Compare(c.Seq, d.Seq), c.ID.Compare(d.ID))
+	return cmp.Or(cmp.Compare(c.Time, d.Time), cmp.Compare(c.Seq, d.Seq), c.ID.Compare(d.ID))
 }
 
 // Limits of one change, batch and frame. A frame that asks for more is refused before

@@ -11,7 +11,7 @@
 // at the same time does not count until it is accepted: see Field.
 //
 // No clock takes part. Where an order is needed, for display and for hashes, it is that of
-// time, stream, sequence and id.
+// time, sequence and id.
 package merge
 
 import (
@@ -311,7 +311,9 @@ func (s Sum) combine(h [32]byte, op func(x, y, carry uint64) (uint64, uint64)) S
 func (s Sum) String() string { return hex.EncodeToString(s[:]) }
 
 // FieldHash returns the hash of a field's state: its key, all its versions, and which of them
-// are heads by the rules of this version. The zero hash stands for no versions.
+// are heads by the rules of this version. The zero hash stands for no versions. The name of a version's device
+// is left out: of a forked stream each device keeps the branch that it met first under the stream's own name, and
+// the state is the same whichever that was.
 func FieldHash(k Key, vs []Version) [32]byte {
 	if len(vs) == 0 {
 		return [32]byte{}
@@ -328,6 +330,7 @@ func FieldHash(k Key, vs []Version) [32]byte {
 	put(k.Record[:])
 	put([]byte(k.Field))
 	for _, v := range vs {
+		v.Stream.Device = change.Incarnation{}
 		put(encode(v))
 	}
 	for _, v := range Heads(vs) {

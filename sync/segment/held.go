@@ -1,6 +1,8 @@
 package segment
 
 import (
+	"bytes"
+	"cmp"
 	"crypto/sha256"
 	"encoding/binary"
 	"slices"
@@ -29,16 +31,17 @@ type Sum struct {
 	Sum   merge.Sum   `cbor:"4,keyasint"`
 }
 
-// HashOfHeld returns the hash of what is held of a site: every stream with its number and chain hash.
+// HashOfHeld returns the hash of what is held of a site: every stream with its number and chain hash. Of a
+// forked stream it does not matter which branch is kept under which name.
 func HashOfHeld(site change.Site, held []Held) [32]byte {
 	held = slices.Clone(held)
-	slices.SortFunc(held, func(a, b Held) int { return a.Stream.Compare(b.Stream) })
+	slices.SortFunc(held, func(a, b Held) int { return cmp.Or(a.Of.Compare(b.Of), bytes.Compare(a.Hash[:], b.Hash[:])) })
 	h := sha256.New()
 	for _, x := range held {
-		if x.Stream.Site != site {
+		if x.Of.Site != site {
 			continue
 		}
-		h.Write(x.Stream.Device[:])
+		h.Write(x.Of.Device[:])
 		var n [8]byte
 		binary.BigEndian.PutUint64(n[:], uint64(len(x.Spans)))
 		h.Write(n[:])
