@@ -199,6 +199,15 @@ type placedEvent struct {
 func placeEvents(events []Event, s scaleX, st Style) (placed []placedEvent, rows int) {
 	size := st.size()
 	ends := [eventRows]vg.Length{vg.Length(math.Inf(-1)), vg.Length(math.Inf(-1))}
+	// crosses reports whether another event's line would run through a word.
+	crosses := func(from, to vg.Length, but int) bool {
+		for i, e := range events {
+			if x := s.at(e.At); i != but && x > from-1 && x < to+1 && math.Abs(float64(x-s.at(events[but].At))) > 1 {
+				return true
+			}
+		}
+		return false
+	}
 	for i, e := range events {
 		x := s.at(e.At)
 		if x < s.x0-0.5 || x > s.x1+0.5 {
@@ -208,7 +217,7 @@ func placeEvents(events []Event, s scaleX, st Style) (placed []placedEvent, rows
 		word := Fit(e.Word, (s.x1-s.x0)*0.45, size, false)
 		w := Width(word, size, false)
 		left := x + size*0.25
-		if left+w > s.x1 {
+		if left+w > s.x1 || crosses(left, left+w, i) && !crosses(x-size*0.25-w, x-size*0.25, i) {
 			left = x - size*0.25 - w
 		}
 		for r := range ends {

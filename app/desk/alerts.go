@@ -1,12 +1,14 @@
 package desk
 
 import (
+	"regexp"
 	"strings"
 
 	"fyne.io/fyne/v2"
 
 	"cordwalk.example/cordwalk/app/desk/look"
 	"cordwalk.example/cordwalk/app/desk/mark"
+	"cordwalk.example/cordwalk/app/sheet"
 	"cordwalk.example/cordwalk/app/view"
 	"cordwalk.example/cordwalk/assets/words"
 	"cordwalk.example/cordwalk/exam"
@@ -43,7 +45,7 @@ func alertsOf(p exam.Patient, others []exam.Visit, today exam.Visit) []alertLine
 	var out []alertLine
 	for _, f := range flags {
 		name := view.AlertTitle(f.Rule)
-		l := alertLine{Rule: f.Rule, Name: name, Title: view.UrgencyWords(f.Urgency.String()) + " " + name, Seen: words.Of(f.Seen), Why: words.Of(f.Why) + " " + words.Of(f.Do),
+		l := alertLine{Rule: f.Rule, Name: name, Title: view.UrgencyWords(f.Urgency.String()) + " " + name, Seen: seenWords(f.Seen), Why: said(f.Why) + " " + said(f.Do),
 			Source: f.Source, Must: must[f.Rule+f.Seen], Unlooked: f.CannotRuleOut}
 		if f.Answered != nil {
 			l.Answered = words.T("told: %s", f.Answered.Told)
@@ -51,6 +53,39 @@ func alertsOf(p exam.Patient, others []exam.Visit, today exam.Visit) []alertLine
 		out = append(out, l)
 	}
 	return out
+}
+
+// said puts a sentence of the engines into the language in use.
+func said(english string) string { return sheet.Say("", english) }
+
+// seenPlace finds the cell that a part of what an alert saw begins with: an item's and a site's key.
+var seenPlace = regexp.MustCompile(`^([a-z-]+)(?: at ([a-z-]+))?(:| was )`)
+
+// seenWords says what an alert saw by the names that the screen uses.
+func seenWords(seen string) string {
+	parts := strings.Split(seen, "; ")
+	for i, p := range parts {
+		if s := said(p); s != p {
+			parts[i] = s
+			continue
+		}
+		m := seenPlace.FindStringSubmatch(p)
+		if m == nil {
+			continue
+		}
+		item, err := exam.ParseItem(m[1])
+		if err != nil {
+			continue
+		}
+		k := exam.Key{Item: item}
+		if m[2] != "" {
+			if k.Site, err = exam.ParseSite(m[2]); err != nil {
+				continue
+			}
+		}
+		parts[i] = view.CellName(k) + m[3] + p[len(m[0]):]
+	}
+	return strings.Join(parts, "; ")
 }
 
 // alertBox shows one alert: how soon, what was seen, and what can be done.

@@ -157,7 +157,7 @@ func (p *comparePage) build() {
 		text = append(text, cautionLine(words.T("Not like for like: %s", u)))
 	}
 	for _, m := range p.file.Missing {
-		text = append(text, cautionLine(words.Of(m)))
+		text = append(text, cautionLine(said(m)))
 	}
 	bodies := mark.Row(look.Unit*2, []float32{0, 0, 1}, mark.NewBody(c.BeforeCross, p.file.Patient.Species, 150), mark.NewBody(c.AfterCross, p.file.Patient.Species, 150), mark.Column(look.Unit, text...))
 	p.head.Objects = []fyne.CanvasObject{picks, bodies}

@@ -47,6 +47,7 @@ type coursePage struct {
 	animal *mark.LimbCross
 	day    *mark.Text
 	zooms  []*mark.Button
+	chosen bool   // somebody chose the segments
 	rows   [2]int // the segments shown: the first and the one behind the last; zero: all
 }
 
@@ -158,7 +159,8 @@ func (p *coursePage) build() {
 		mark.NewButton("", "right", func() { p.pan(-1) }).WithTip(words.T("Later")),
 		mark.NewButton(words.T("Figures"), "grid", p.figures).WithTip(words.T("Published scales and plain statistics. Key f")),
 		mark.NewButton(words.T("Save picture"), "save", p.askSave))...)
-	p.strip = newChartHost(p.course.Strip, fyne.NewSize(400, 460*max(1, look.Scale())))
+	choose := p.regions()
+	p.strip = newChartHost(p.course.Strip, fyne.NewSize(400, p.stripHeight()))
 	p.strip.hover = func(x, y, w, h vg.Length, st chart.Style) string {
 		strip, ok := p.strip.chart.(chart.Strip)
 		if !ok {
@@ -190,7 +192,7 @@ func (p *coursePage) build() {
 		title = words.T("Segments: function as the whole series shows it")
 		how = words.T("Each segment has a line for its left and its right half. The shade is the function that all visits together make likely; a thin line is uncertain.")
 	}
-	lines := append(p.verdict(), mark.Bar(look.Unit, mark.Heading(title).AtLeast(80), mark.Sized(200, look.Target, p.regions())), mark.NewPara(how).In(look.InkSoft), p.strip)
+	lines := append(p.verdict(), mark.Bar(look.Unit, mark.Heading(title).AtLeast(80), mark.Sized(230, look.Target, choose)), mark.NewPara(how).In(look.InkSoft), p.strip)
 	if n := len(p.course.Function.Limbs); n > 0 {
 		fn := p.course.Function
 		p.fn = newChartHost(fn, fyne.NewSize(400, (float32(n)*74+50)*max(1, look.Scale())))
@@ -245,7 +247,7 @@ func (p *coursePage) build() {
 				if c.Probability != nil {
 					line = words.T("%s. Reached in time: %s, %s", line, percent(*c.Probability), chanceWord(*c.Probability))
 				} else if c.Why != "" {
-					line += ". " + words.Of(c.Why)
+					line += ". " + said(c.Why)
 				}
 				break
 			}
@@ -253,7 +255,7 @@ func (p *coursePage) build() {
 		side.Add(mark.NewPara(line))
 	}
 	for _, m := range p.file.Missing {
-		side.Add(cautionLine(words.Of(m)))
+		side.Add(cautionLine(said(m)))
 	}
 	split := mark.RowTop(look.Unit*2, []float32{1, 0}, p.body, mark.Sized(196, 10, mark.NewScroll(side)))
 	p.put(mark.Pad(look.Unit*1.5, look.Unit*2, mark.ColumnGrow(look.Unit, 1, bar, split)))
@@ -273,19 +275,64 @@ func (p *coursePage) regions() fyne.CanvasObject {
 	}
 	shown := []string{words.T("All segments")}
 	values := []string{"0/0"}
-	now := strconv.Itoa(p.rows[0]) + "/" + strconv.Itoa(p.rows[1])
+	if a, b := affected(p.course.Strip.Rows); b > 0 {
+		shown, values = append(shown, words.T("Affected, %s to %s", p.course.Strip.Rows[a].Label, p.course.Strip.Rows[b-1].Label)), append(values, strconv.Itoa(a)+"/"+strconv.Itoa(b))
+		if !p.chosen {
+			p.rows = [2]int{a, b}
+		}
+	} else if !p.chosen {
+		p.rows = [2]int{}
+	}
 	for _, r := range [][3]string{{words.T("Neck, C1 to C5"), "C1", "C5"}, {words.T("Thoracic limbs, C6 to T2"), "C6", "T2"}, {words.T("Trunk, T3 to L3"), "T3", "L3"},
 		{words.T("Pelvic limbs, L4 to S1"), "L4", "S1"}, {words.T("Bladder and tail, S1 to Cd5"), "S1", "Cd5"}} {
 		if a, b := at(r[1]), at(r[2]); a >= 0 && b >= a {
 			shown, values = append(shown, r[0]), append(values, strconv.Itoa(a)+"/"+strconv.Itoa(b+1))
 		}
 	}
+	now := strconv.Itoa(p.rows[0]) + "/" + strconv.Itoa(p.rows[1])
 	return mark.Choice(shown, values, now, func(s string) {
+		p.chosen = true
 		a, b, _ := strings.Cut(s, "/")
 		p.rows[0], _ = strconv.Atoi(a)
 		p.rows[1], _ = strconv.Atoi(b)
 		p.span()
 	})
+}
+
+// stripHeight gives few segments broad rows and all of them room on one screen.
+func (p *coursePage) stripHeight() float32 {
+	n := len(p.course.Strip.Rows)
+	if p.rows[1] > 0 {
+		n = p.rows[1] - p.rows[0]
+	}
+	return min(460, 130+float32(n)*24) * max(1, look.Scale())
+}
+
+// affected returns the stretch of the cord that was ever below nine tenths of its function, with two
+// segments on either side; zero where that is nothing or nearly everything.
+func affected(rows []chart.StripRow) (from, behind int) {
+	const full, beside = 90, 2
+	first, last := -1, -1
+	for i, r := range rows {
+		for _, side := range [][]chart.Value{r.Left, r.Right} {
+			for _, v := range side {
+				if v.Known && v.Value < full {
+					if first < 0 {
+						first = i
+					}
+					last = i
+				}
+			}
+		}
+	}
+	if first < 0 {
+		return 0, 0
+	}
+	from, behind = max(0, first-beside), min(len(rows), last+1+beside)
+	if behind-from > len(rows)*3/4 {
+		return 0, 0
+	}
+	return from, behind
 }
 
 // put shows what was built.
@@ -314,13 +361,13 @@ func (p *coursePage) verdict() []fyne.CanvasObject {
 			out = append(out, mark.NewPara(words.T("One visit says where the animal stands; the next one says where it goes.")))
 		}
 		if r.Plateau != nil && r.Plateau.Named {
-			out = append(out, mark.NewPara(sentence(words.Of(r.Plateau.Words))))
+			out = append(out, mark.NewPara(sentence(said(r.Plateau.Words))))
 		}
 		if r.Relapse != nil && r.Relapse.Probability > 0.5 {
-			out = append(out, cautionLine(sentence(words.Of(r.Relapse.Words))))
+			out = append(out, cautionLine(sentence(said(r.Relapse.Words))))
 		}
 		for _, n := range r.Notes {
-			out = append(out, mark.NewPara(words.Of(n)).In(look.InkSoft).As(look.Small))
+			out = append(out, mark.NewPara(said(n)).In(look.InkSoft).As(look.Small))
 		}
 	}
 	return out
@@ -449,7 +496,9 @@ func (p *coursePage) span() {
 	if p.rows[1] > 0 && p.rows[1] <= len(strip.Rows) {
 		strip.Rows = strip.Rows[p.rows[0]:p.rows[1]]
 	}
+	p.strip.least.Height = p.stripHeight()
 	p.strip.set(strip)
+	p.body.Reflow()
 	p.limbs.set(limbs)
 	if p.fn != nil && len(p.course.Function.Limbs) > 0 {
 		fn := p.course.Function

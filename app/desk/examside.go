@@ -173,9 +173,9 @@ func (s *examSide) show() {
 	s.note.Hide()
 	s.host.Show()
 	s.host.set(chart.CordOf(s.page.file.Patient.Species, s.kg, r, ""))
-	s.likely.Words = words.Of(r.Summary)
+	s.likely.Words = said(r.Summary)
 	if r.Enough && len(r.Sites) > 0 {
-		s.likely.Words = words.T("%s: %s", words.Of(r.Summary), chanceWord(r.Sites[0].Probability))
+		s.likely.Words = words.T("%s: %s", said(r.Summary), chanceWord(r.Sites[0].Probability))
 	}
 	s.pro.Words, s.con.Words = "", ""
 	if f, ok := strongest(r, 1); ok {
@@ -189,7 +189,7 @@ func (s *examSide) show() {
 		if s.warn.Words != "" {
 			s.warn.Words += "\n"
 		}
-		s.warn.Words += words.Of(w)
+		s.warn.Words += said(w)
 	}
 	s.nextB.Hide()
 	if k, ok := s.next(); ok {

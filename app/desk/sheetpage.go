@@ -222,7 +222,7 @@ func (p *sheetPage) show(doc sheet.Document, pages []image.Image) {
 	p.preview.SetContent(mark.Pad(look.Unit*2, look.Unit*2, mark.Column(look.Unit*2, out...)))
 	p.notes.Objects = nil
 	for _, w := range doc.Warnings {
-		p.notes.Add(cautionLine(words.Of(w)))
+		p.notes.Add(cautionLine(said(w)))
 	}
 	p.notes.Refresh()
 	if p.later {
