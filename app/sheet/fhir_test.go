@@ -64,10 +64,13 @@ func validFHIR(data []byte) error {
 	return whole
 }
 
-// mapped is what of an animal a bundle carries: all but the weight series and
-// the record of what was sent.
+// mapped is what of an animal a bundle carries: all but the weight series, the record of
+// what was sent, and the photos, clips and stimulation of its visits.
 func mapped(a Animal) Animal {
 	a.Patient.Weights, a.Patient.Sent = nil, nil
+	for i := range a.Visits {
+		a.Visits[i].Attachments, a.Visits[i].Stim = nil, nil
+	}
 	return a
 }
 

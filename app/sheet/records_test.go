@@ -2,11 +2,13 @@ package sheet
 
 import (
 	"bytes"
+	"encoding/binary"
 	"encoding/json"
 	"image"
 	"image/png"
 	"slices"
 	"strings"
+	"sync/atomic"
 	"testing"
 	"time"
 
@@ -28,9 +30,14 @@ func anyText(t *rapid.T, label string) string {
 	).Draw(t, label)
 }
 
+// made counts the ids made by anyID.
+var made atomic.Uint64
+
 func anyID(t *rapid.T) exam.ID {
 	id := exam.ID(rapid.SliceOfN(rapid.Byte(), 16, 16).Draw(t, "id"))
 	id[6] |= 0x70 // never the zero id
+	// No two ids of one run are equal, as none are in life.
+	binary.BigEndian.PutUint64(id[8:], made.Add(1))
 	return id
 }
 
