@@ -1,6 +1,7 @@
 package view
 
 import (
+	"sync"
 	"time"
 
 	"cordwalk.example/cordwalk/app/chart"
@@ -47,11 +48,48 @@ func ModelScores(p exam.Patient, visits []exam.Visit, r progress.Result) Scores 
 	}
 }
 
+// lastCourse is the model of the patient that was read last, so that adding today's visit, or
+// changing it, does not compute the past again. One is kept: it may take tens of megabytes.
+var lastCourse struct {
+	sync.Mutex
+	of     exam.ID
+	course *progress.Course
+}
+
+// ForgetCourse lets go of the course that was read last.
+func ForgetCourse() {
+	lastCourse.Lock()
+	defer lastCourse.Unlock()
+	lastCourse.of, lastCourse.course = exam.ID{}, nil
+}
+
+// analyse is progress.Analyse, which goes on from the last course where that is the patient's.
+// While one goroutine works with the course, others begin afresh.
+func analyse(p exam.Patient, visits []exam.Visit, o progress.Options) (progress.Result, error) {
+	if p.ID.IsZero() || o.Continue != nil {
+		return progress.Analyse(progress.Series{Patient: p, Visits: visits}, o)
+	}
+	lastCourse.Lock()
+	if lastCourse.of == p.ID {
+		o.Continue = lastCourse.course
+	}
+	lastCourse.of, lastCourse.course = exam.ID{}, nil
+	lastCourse.Unlock()
+	r, err := progress.Analyse(progress.Series{Patient: p, Visits: visits}, o)
+	if err == nil {
+		lastCourse.Lock()
+		lastCourse.of, lastCourse.course = p.ID, r.Course()
+		lastCourse.Unlock()
+	}
+	return r, err
+}
+
 // ModelCourse analyses a patient's visits by the serial model and lays the course out from
 // it: the strip and the limbs with their bands and forecasts. It takes its time: call it
-// off the goroutine that draws. Where the species has no model, the course is the plain one.
+// off the goroutine that draws. The model behind the result may go on with the patient's next
+// visit: read the result, not its Course. Where the species has no model, the course is the plain one.
 func ModelCourse(p exam.Patient, visits []exam.Visit, o progress.Options) (*Course, progress.Result, error) {
-	r, err := progress.Analyse(progress.Series{Patient: p, Visits: visits}, o)
+	r, err := analyse(p, visits, o)
 	if err != nil {
 		return nil, r, err
 	}

@@ -60,6 +60,29 @@ type following struct {
 	from, to int
 	node     *node // of from: the course may have been read afresh
 	places   []*follow
+	before   *following // as it was one visit earlier, for when the last visit is taken back
+}
+
+// clone copies what carrying on would change.
+func (f *following) clone() *following {
+	out := &following{from: f.from, to: f.to, node: f.node, before: f.before}
+	for _, p := range f.places {
+		q := *p
+		q.rows, q.levels = make([][]float64, len(p.rows)), slices.Clone(p.levels)
+		for i, row := range p.rows {
+			q.rows[i] = slices.Clone(row)
+		}
+		out.places = append(out.places, &q)
+	}
+	return out
+}
+
+// backTo drops what has been carried to visits that are no more.
+func (f *following) backTo(n int) *following {
+	for f != nil && f.to >= n {
+		f = f.before
+	}
+	return f
 }
 
 // keepFollowing is how many visits' beliefs are kept on their way: the first visit's, the best one's.
@@ -118,6 +141,10 @@ func (c *Course) followTo(a, b int, mass []float64) *following {
 	}
 	move := make([]float64, states)
 	for t := f.to + 1; t <= b; t++ {
+		if t == b {
+			f.before, f.to = nil, t-1
+			f.before = f.clone()
+		}
 		n := c.nodes[t]
 		kept := f.places[:0]
 		for _, p := range f.places {

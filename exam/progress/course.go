@@ -22,6 +22,9 @@ const (
 	lookAround = 16 // every so many visits every place is weighed again
 )
 
+// backMost is how many of its last visits a course can take back.
+const backMost = 3
+
 // leastState is the belief below which a single state of a place counts as impossible.
 const leastState = 1e-13
 
@@ -75,6 +78,7 @@ func (m *Model) after(units int64) *transition { return m.clock.after(units, m.r
 // node is one visit with its messages. alpha and beta hold the states of the carried places.
 type node struct {
 	visit exam.Visit
+	print uint64      // see printOf
 	step  *transition // from the visit before; nil for the first and for no time between
 	sites []int       // carried places, ascending
 	alpha []float64   // P(place, state | exams so far), adding up to 1
@@ -173,8 +177,8 @@ func (c *Course) Add(v exam.Visit) error {
 	}
 	n.logP = best + math.Log(total)
 	m.keep(n, sites, prior, like, log, total)
-	if last != nil {
-		last.day = nil // only a further exam of the same day asks for it
+	if i := len(c.nodes) - backMost - 1; i >= 0 {
+		c.nodes[i].day = nil // only a further exam of the same day asks for it
 	}
 	if c.chains == nil {
 		c.chains = chains{}

@@ -2,6 +2,8 @@ package progress
 
 import (
 	"fmt"
+	"hash/maphash"
+	"maps"
 	"math"
 	"slices"
 	"strconv"
@@ -55,8 +57,9 @@ type Options struct {
 	Practice repeat.Practice // the practice's own repeatability
 	Now      time.Time       // forecasts run from here where it is later than the last visit; zero: from the last visit
 
-	// Continue is the course of an earlier result. Where the series only adds visits to it, what is
-	// past is not computed again; else it is left alone. It moves on with the new result.
+	// Continue is the course of an earlier result. Where the series adds visits to it, or changes
+	// its last ones, what is past is not computed again; else it is left alone. It moves on
+	// with the new result.
 	Continue *Course
 }
 
@@ -201,7 +204,7 @@ type Alert struct {
 func Analyse(s Series, o Options) (Result, error) {
 	visits := slices.Clone(s.Visits)
 	slices.SortStableFunc(visits, func(a, b exam.Visit) int { return a.Examined.Compare(b.Examined) })
-	if o.Continue.begins(s.Patient, visits) {
+	if o.Continue.backTo(o.Continue.agrees(s.Patient, visits)) {
 		return carryOn(o.Continue, s.Patient, visits, o)
 	}
 	m, err := For(s.Patient)
@@ -222,22 +225,68 @@ func carryOn(c *Course, p exam.Patient, visits []exam.Visit, o Options) (Result,
 		if err := c.Add(v); err != nil {
 			return Result{}, err
 		}
+		c.nodes[len(c.nodes)-1].print = printOf(v)
 	}
 	return c.Result(p, o), nil
 }
 
-// begins reports whether a course is that of an animal's first visits, as they stand now.
-func (c *Course) begins(p exam.Patient, visits []exam.Visit) bool {
-	if c == nil || c.Len() == 0 || c.Len() > len(visits) || c.patient.Species != p.Species || c.patient.Born != p.Born || !slices.Equal(c.patient.Problems, p.Problems) {
-		return false
+var printSeed = maphash.MakeSeed()
+
+// printOf tells whether what was found at a visit is what it was when the course took it in: the
+// lists are shared with the caller, who may have changed them since.
+func printOf(v exam.Visit) uint64 {
+	var h maphash.Hash
+	h.SetSeed(printSeed)
+	for _, f := range v.Findings {
+		maphash.WriteComparable(&h, f)
+	}
+	h.WriteByte('/')
+	for _, m := range v.Measures {
+		maphash.WriteComparable(&h, m)
+	}
+	return h.Sum64()
+}
+
+// agrees returns how many of a course's visits are an animal's first visits, as they stand now.
+func (c *Course) agrees(p exam.Patient, visits []exam.Visit) int {
+	if c == nil || c.patient.Species != p.Species || c.patient.Born != p.Born || !slices.Equal(c.patient.Problems, p.Problems) {
+		return 0
 	}
 	for i, n := range c.nodes {
+		if i == len(visits) {
+			return i
+		}
 		a, b := n.visit, visits[i]
-		if a.ID != b.ID || !a.Examined.Equal(b.Examined) || a.Examiner != b.Examiner || a.RepeatOf != b.RepeatOf || a.Sedation != b.Sedation ||
-			!slices.Equal(a.Findings, b.Findings) || !slices.Equal(a.Measures, b.Measures) {
-			return false
+		if a.ID != b.ID || !a.Examined.Equal(b.Examined) || a.Examiner != b.Examiner || a.RepeatOf != b.RepeatOf || a.Sedation != b.Sedation || n.print != printOf(b) {
+			return i
 		}
 	}
+	return len(c.nodes)
+}
+
+// backTo takes the visits after the first n out of the course again. It reports false, and leaves
+// the course alone, where that is all of them or more than a few.
+func (c *Course) backTo(n int) bool {
+	if n == 0 || len(c.nodes)-n > backMost {
+		return false
+	}
+	if n == len(c.nodes) {
+		return true
+	}
+	clear(c.nodes[n:])
+	c.nodes = c.nodes[:n]
+	// What the visit that is now the last one learnt from later ones is void; smooth goes
+	// back from it as far as that matters.
+	c.nodes[n-1].beta, c.nodes[n-1].smoothed = nil, nil
+	c.chains = chains{}
+	for _, n := range c.nodes {
+		_, _, next := c.chains.leans(n.visit)
+		maps.Copy(c.chains, next)
+	}
+	for i, f := range c.kept {
+		c.kept[i] = f.backTo(n)
+	}
+	c.kept = slices.DeleteFunc(c.kept, func(f *following) bool { return f == nil })
 	return true
 }
 

@@ -288,9 +288,45 @@ func TestContinue(t *testing.T) {
 	for i := range fresh.Limbs {
 		require.InDelta(t, fresh.Limbs[i].Points[5].Function, after.Limbs[i].Points[5].Function, 0.05)
 	}
-	// A grade of an earlier visit was corrected.
+	// A grade of today's visit was changed: it alone is weighed again, and the answer is that of a fresh course.
+	today := append([]exam.Visit(nil), all...)
+	i := len(all) - 1
+	today[i].Findings = append([]exam.Finding(nil), all[i].Findings...)
+	for k, f := range today[i].Findings {
+		if f.Item == exam.VoluntaryMotor || f.Item == exam.PawPlacement {
+			today[i].Findings[k].Result = exam.Graded(f.Item.Info().First)
+		}
+	}
+	s.Visits = today
+	steps = after.Course().Steps()
+	edited, err := Analyse(s, Options{Continue: after.Course()})
+	require.NoError(t, err)
+	require.Same(t, after.Course(), edited.Course())
+	fresh, err = Analyse(s, Options{})
+	require.NoError(t, err)
+	require.Less(t, edited.Course().Steps()-steps, fresh.Course().Steps())
+	require.InDelta(t, fresh.Change.Better, edited.Change.Better, 0.01)
+	for l := range fresh.Limbs {
+		for k := range fresh.Limbs[l].Points {
+			require.InDelta(t, fresh.Limbs[l].Points[k].Function, edited.Limbs[l].Points[k].Function, 0.05, "%d", k)
+			require.InDelta(t, fresh.Limbs[l].Points[k].Filtered, edited.Limbs[l].Points[k].Filtered, 0.05, "%d", k)
+		}
+	}
+	// The last visit was taken out.
+	s.Visits = today[:i]
+	fewer, err := Analyse(s, Options{Continue: after.Course()})
+	require.NoError(t, err)
+	require.Same(t, after.Course(), fewer.Course())
+	fresh, err = Analyse(s, Options{})
+	require.NoError(t, err)
+	for k := range fresh.Whole.Points {
+		require.InDelta(t, fresh.Whole.Points[k].Function, fewer.Whole.Points[k].Function, 0.05, "%d", k)
+	}
+	s.Visits = all
+	after, err = Analyse(s, Options{Continue: after.Course()})
+	require.NoError(t, err)
+	// A grade of an earlier visit was corrected, in the very list that the course was given.
 	changed := append([]exam.Visit(nil), all...)
-	changed[3].Findings = append([]exam.Finding(nil), all[3].Findings...)
 	g, _ := changed[3].Findings[0].Result.Grade()
 	changed[3].Findings[0].Result = exam.Graded(1 - min(g, 1))
 	s.Visits = changed

@@ -105,17 +105,7 @@ func restore(c *Course, saved []node) {
 func cloneKept(kept []*following) []*following {
 	var out []*following
 	for _, f := range kept {
-		g := *f
-		g.places = nil
-		for _, p := range f.places {
-			q := *p
-			q.rows, q.levels = nil, append([][]int(nil), p.levels...)
-			for _, row := range p.rows {
-				q.rows = append(q.rows, append([]float64(nil), row...))
-			}
-			g.places = append(g.places, &q)
-		}
-		out = append(out, &g)
+		out = append(out, f.clone())
 	}
 	return out
 }
