@@ -6,6 +6,7 @@ import (
 	"net/url"
 	"os"
 	"path/filepath"
+	"strings"
 
 	"fyne.io/fyne/v2"
 	"fyne.io/fyne/v2/canvas"
@@ -42,6 +43,8 @@ type sheetPage struct {
 	notes    *fyne.Container
 	save     *mark.Button
 	print    *mark.Button
+	mail     *mark.Button
+	in       sheet.Input // what the paper was made from
 }
 
 func newSheetPage(w *window) *sheetPage {
@@ -59,6 +62,7 @@ func newSheetPage(w *window) *sheetPage {
 	}
 	p.save = mark.NewButton(words.T("Save as PDF"), "save", p.askSave).As(mark.Main)
 	p.print = mark.NewButton(words.T("Open and print"), "print", p.open)
+	p.mail = mark.NewButton(words.T("Write an e-mail"), "", p.write)
 	summary := mark.NewArea("", 4, nil).Hint(words.T("Instead of the sentences on the sheet"))
 	summary.OnLeave = func() {
 		if p.options.Summary != summary.Text {
@@ -68,7 +72,7 @@ func newSheetPage(w *window) *sheetPage {
 	}
 	side := mark.Column(look.Unit,
 		mark.Wrapped(4, choose.Objects...), p.title, p.about,
-		p.save, p.print, mark.Space(1, look.Unit),
+		p.save, p.print, p.mail, mark.Space(1, look.Unit),
 		tick(words.T("Large print"), func(on bool) { p.options.Large = on }),
 		tick(words.T("For a printer without colours"), func(on bool) { p.options.Grey = on }),
 		tick(words.T("Leave the course chart out"), func(on bool) { p.options.NoChart = on }),
@@ -103,6 +107,7 @@ func (p *sheetPage) help() []view.KeyHelp {
 	return []view.KeyHelp{
 		{Keys: "s", Does: words.T("save as PDF")},
 		{Keys: "p", Does: words.T("open with the system's program, to print")},
+		{Keys: "e", Does: words.T("write an e-mail")},
 		{Keys: words.T("Up, Down"), Does: words.T("scroll the page")},
 	}
 }
@@ -113,6 +118,8 @@ func (p *sheetPage) typedRune(r rune) bool {
 		p.askSave()
 	case 'p':
 		p.open()
+	case 'e':
+		p.write()
 	default:
 		return false
 	}
@@ -187,6 +194,8 @@ func (p *sheetPage) make() {
 	in := view.SheetInput(a.practice, p.file.Patient, p.file.Visits, a.now(), p.options)
 	p.save.Disable()
 	p.print.Disable()
+	p.mail.Disable()
+	p.in = in
 	a.work(func(context.Context) (func(), error) {
 		doc, err := kind.write(in)
 		if err != nil {
@@ -212,6 +221,7 @@ func (p *sheetPage) show(doc sheet.Document, pages []image.Image) {
 	p.doc, p.refused = doc, nil
 	p.save.Enable()
 	p.print.Enable()
+	p.mail.Enable()
 	var out []fyne.CanvasObject
 	p.dropPictures()
 	for _, page := range pages {
@@ -242,11 +252,38 @@ func (p *sheetPage) askSave() {
 		p.later = p.refused == nil // still being made: asked once it is there
 		return
 	}
-	data := p.doc.PDF
+	doc, keep := p.doc, p.sent()
 	title, _ := p.kind.words()
-	p.win.askFile(words.T("Save as PDF: %s", title), p.doc.Name, words.T("The sheet is not protected once it has left the practice's store."), func(path string) error {
-		return os.WriteFile(path, data, 0o600)
+	p.win.askFile(words.T("Save as PDF: %s", title), doc.Name, words.T("The sheet is not protected once it has left the practice's store."), func(path string) error {
+		if err := os.WriteFile(path, doc.PDF, 0o600); err != nil {
+			return err
+		}
+		return keep(context.Background())
 	})
+}
+
+// sent returns what keeps with the patient that the paper was handed over.
+func (p *sheetPage) sent() func(context.Context) error {
+	a, doc, in, at := p.win.app, p.doc, p.in, p.win.app.now()
+	records, who := a.records, a.examiner
+	return func(ctx context.Context) error {
+		_, err := records.Apply(ctx, who, sheet.SentEdits(in.Patient, in.Visits[len(in.Visits)-1].ID, doc, who, at)...)
+		return err
+	}
+}
+
+// write opens a draft e-mail with the paper in the system's mail program; nothing is sent.
+func (p *sheetPage) write() {
+	if len(p.doc.PDF) == 0 {
+		return
+	}
+	draft, err := sheet.Mail(p.in, p.doc, "")
+	if err != nil {
+		p.win.fail(words.T("The sheet could not be handed over."), err)
+		return
+	}
+	p.hand(draft, strings.TrimSuffix(p.doc.Name, ".pdf")+".eml", words.T("Opened as a draft in the system's mail program; nothing was sent."),
+		words.T("This system has no program that opens drafts of e-mails; save the sheet and attach it."))
 }
 
 // open hands the sheet to the system's own program, which prints it.
@@ -254,7 +291,13 @@ func (p *sheetPage) open() {
 	if len(p.doc.PDF) == 0 {
 		return
 	}
-	data, name := p.doc.PDF, p.doc.Name
+	p.hand(p.doc.PDF, p.doc.Name, words.T("Opened with the system's program for PDF files"), words.T("This system has no program that opens PDF files; save the sheet instead."))
+}
+
+// hand writes a file where only this user can read it, opens it with the system's program
+// and keeps that it was handed over.
+func (p *sheetPage) hand(data []byte, name, done, none string) {
+	keep := p.sent()
 	p.win.app.work(func(context.Context) (func(), error) {
 		dir, err := os.MkdirTemp("", "cordwalk-sheet-")
 		if err != nil {
@@ -267,10 +310,12 @@ func (p *sheetPage) open() {
 		return func() {
 			u := &url.URL{Scheme: "file", Path: filepath.ToSlash(path)}
 			if err := p.win.app.fyne.OpenURL(u); err != nil {
-				p.win.fail(words.T("This system has no program that opens PDF files; save the sheet instead."), err)
+				p.win.fail(none, err)
 				return
 			}
-			p.win.foot.say(words.T("Opened with the system's program for PDF files"))
+			p.win.app.work(func(ctx context.Context) (func(), error) { return nil, keep(ctx) },
+				func(err error) { p.win.fail(words.T("That the paper was handed over could not be kept."), err) })
+			p.win.foot.say(done)
 		}, nil
 	}, func(err error) { p.win.fail(words.T("The sheet could not be handed over."), err) })
 }

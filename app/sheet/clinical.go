@@ -225,7 +225,7 @@ func (c *clinical) inShort() string {
 	lang := c.in.lang()
 	var out []string
 	for _, n := range sortedNotices(c.in.Notices) {
-		out = append(out, upperFirst(urgencyWord(lang, n.Urgency))+": "+n.Words)
+		out = append(out, upperFirst(urgencyWord(lang, n.Urgency))+colon(lang)+n.Words)
 	}
 	if c.result != nil {
 		out = append(out, upperFirst(Say(lang, c.result.Summary))+".")
@@ -322,13 +322,14 @@ func (p *page) line(x, w float64, label, s string, most int) {
 	if strings.TrimSpace(s) == "" {
 		return
 	}
-	p.note(label + ": " + s)
-	lw := width(label+": ", p.size, true)
+	label += colon(p.lang)
+	p.note(label + s)
+	lw := width(label, p.size, true)
 	lines := wrap(p.clean(s), w-lw, p.size, false, most)
 	for i, l := range lines {
 		p.y += lead(p.size)
 		if i == 0 {
-			p.put(x, p.y-p.size*0.3, label+": ", p.size, true, p.pal.Ink)
+			p.put(x, p.y-p.size*0.3, label, p.size, true, p.pal.Ink)
 		}
 		p.put(x+lw, p.y-p.size*0.3, l, p.size, false, p.pal.Ink)
 	}
@@ -442,7 +443,7 @@ func (c *clinical) alerts(p *page, x, w float64) {
 			p.para(x, w, in.text(textMore, len(list)-6), p.size, true, p.pal.Ink, 1)
 			break
 		}
-		s := upperFirst(urgencyWord(p.lang, n.Urgency)) + ": " + n.Words
+		s := upperFirst(urgencyWord(p.lang, n.Urgency)) + colon(p.lang) + n.Words
 		if !n.Since.IsZero() {
 			s += " (" + words.In(p.lang, "since %s", dayWords(p.lang, n.Since)) + ")"
 		}
@@ -669,6 +670,7 @@ func (c *clinical) pageTwo(p *page, h float64) {
 	}
 	p.line(x, w, words.In(p.lang, "Owner's report"), strings.Join(slices.DeleteFunc(report, func(s string) bool { return s == "" }), "; "), 2)
 	p.line(x, w, words.In(p.lang, "Note"), c.now.Note, 3)
+	p.line(x, w, words.In(p.lang, "Photos and clips"), c.attachments(), 3)
 	closed := words.In(p.lang, "visit still open")
 	if c.now.State == exam.Closed {
 		closed = words.In(p.lang, "visit closed %s", c.now.ClosedAt.Format("2006-01-02 15:04 -07:00"))
@@ -679,6 +681,28 @@ func (c *clinical) pageTwo(p *page, h float64) {
 			p.line(x, w, words.In(p.lang, "Amended"), fmt.Sprintf("%s: %s (%s, %s)", a.Field, a.Reason, a.Examiner, a.At.Format("2006-01-02")), 1)
 		}
 	}
+}
+
+// attachments lists the photos and clips on file, the newest visit's first; they stay in the
+// practice and are shown on request.
+func (c *clinical) attachments() string {
+	lang := c.in.lang()
+	var out []string
+	for i := len(c.in.Visits) - 1; i >= 0; i-- {
+		v := c.in.Visits[i]
+		for _, a := range v.Attachments {
+			s := words.In(lang, "clip")
+			if a.Photo() {
+				s = words.In(lang, "photo")
+			}
+			s += " " + v.Examined.Format("2006-01-02")
+			if a.Note != "" {
+				s += " (" + a.Note + ")"
+			}
+			out = append(out, s)
+		}
+	}
+	return strings.Join(out, "; ")
 }
 
 // gridTable writes the findings in two columns, the changed and abnormal ones first.
@@ -1013,7 +1037,7 @@ func (c *clinical) letter(p *page) {
 	p.line(x, w, words.In(lang, "To"), strings.Trim(to.Name+", "+to.Phone, ", "), 2)
 	p.line(x, w, words.In(lang, "From"), c.now.Examiner+", "+in.Practice.Name, 2)
 	p.line(x, w, words.In(lang, "Date"), c.in.At.Format("2006-01-02 15:04 -07:00"), 1)
-	p.line(x, w, words.In(lang, "Animal"), in.Patient.Name+": "+c.signalment(), 2)
+	p.line(x, w, words.In(lang, "Animal"), in.Patient.Name+colon(lang)+c.signalment(), 2)
 	p.line(x, w, words.In(lang, "Owner"), strings.Trim(in.Patient.Owner.Name+", "+in.Patient.Owner.Phone, ", "), 1)
 	p.line(x, w, words.In(lang, "Problems"), c.problems(), 3)
 	p.y += p.size * 0.6

@@ -88,7 +88,7 @@ func cellWords(lang string, i exam.Item, s exam.Site, grade int8) string {
 	if s != exam.Midline && s != exam.NoSite {
 		name += ", " + siteWords(lang, s)
 	}
-	return name + ": " + words.OfIn(lang, i.GradeWord(grade))
+	return name + colon(lang) + words.OfIn(lang, i.GradeWord(grade))
 }
 
 // siteWords is a site in full.

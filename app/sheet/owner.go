@@ -455,7 +455,7 @@ func (o *owner) urgentBox(p *page, f fit) {
 		}
 		p.note(head)
 		phone := in.Patient.Veterinarian
-		p.para(x+pad, w-2*pad, head+": "+phoneLine(phone), p.size*1.35, true, p.pal.Call, 2)
+		p.para(x+pad, w-2*pad, head+colon(p.lang)+phoneLine(phone), p.size*1.35, true, p.pal.Call, 2)
 		shown := o.urgent
 		if f.mostNotices > 0 && len(shown) > f.mostNotices {
 			shown = shown[:f.mostNotices]
@@ -593,7 +593,7 @@ func (o *owner) seen(p *page, x, w float64, f fit) {
 	st := chart.Style{Palette: p.pal, Text: vg.Length(p.size), Lang: p.lang}
 	indent := p.size * 1.4
 	for _, g := range groups {
-		line := upperFirst(o.list(g.names)) + ": " + g.head + "."
+		line := upperFirst(o.list(g.names)) + colon(p.lang) + g.head + "."
 		p.note(line)
 		y := p.y + lead(p.size)/2
 		p.draw(x, y-p.size*0.6, p.size*1.2, p.size*1.2, func(c draw.Canvas) {
@@ -772,7 +772,7 @@ func (o *owner) homePlan(p *page, f fit) {
 	}
 	defer func() {
 		p.y += p.size * 0.35
-		s := in.text(textNextVisit) + ": "
+		s := in.text(textNextVisit) + colon(p.lang)
 		p.y += lead(p.size * 1.1)
 		p.put(x, p.y-p.size*0.3, s, p.size*1.1, true, p.pal.Ink)
 		p.put(x+width(s, p.size*1.1, true), p.y-p.size*0.3, next, p.size*1.1, false, p.pal.Ink)
@@ -865,8 +865,8 @@ func (o *owner) callBox(p *page) {
 		}
 		p.dry = pass || dry
 		p.y = top + pad*0.4
-		p.note(in.text(textCall) + ":")
-		p.para(x+pad, w-2*pad, in.text(textCall)+":", p.size*1.12, true, p.pal.Call, 1)
+		p.note(in.text(textCall) + strings.TrimSpace(colon(p.lang)))
+		p.para(x+pad, w-2*pad, strings.TrimRight(in.text(textCall)+colon(p.lang), " "), p.size*1.12, true, p.pal.Call, 1)
 		col := (w - 2*pad) / 2
 		row := p.y
 		bottom := row
@@ -897,7 +897,7 @@ func (o *owner) callBox(p *page) {
 			size := p.size * 1.12
 			p.y += lead(size)
 			y := p.y - size*0.3
-			label := c.label + ": "
+			label := c.label + colon(p.lang)
 			p.put(x+pad, y, label, size, false, p.pal.Ink)
 			tx := x + pad + width(label, size, false)
 			phone := c.who.Phone

@@ -24,7 +24,7 @@ type Ease struct {
 func Reading(lang string, lines []string) (Ease, bool) {
 	base, _, _ := strings.Cut(strings.ToLower(lang), "-")
 	var e Ease
-	count, ok := map[string]func(string) int{"en": syllablesEnglish, "": syllablesEnglish, "de": vowelGroups, "fr": vowelGroupsFrench, "es": vowelGroups, "nl": vowelGroups}[base]
+	count, ok := map[string]func(string) int{"en": syllablesEnglish, "": syllablesEnglish, "de": vowelGroups, "fr": vowelGroupsFrench, "es": vowelGroupsSpanish, "nl": vowelGroups}[base]
 	if !ok {
 		return e, false
 	}
@@ -162,6 +162,25 @@ func vowelGroups(w string) int {
 		}
 		before = v
 	}
+	return n
+}
+
+// vowelGroupsSpanish parts the vowels of a hiatus: an accented i or u beside another vowel
+// (dí-a, ba-úl), and a, e, o side by side (le-er, o-í-do).
+func vowelGroupsSpanish(w string) int {
+	n := 0
+	var before rune
+	for _, r := range w {
+		strong := strings.ContainsRune("aeoáéóíú", r)
+		vowel := strong || strings.ContainsRune("iuüy", r)
+		if vowel && (before == 0 || strong && strings.ContainsRune("aeoáéóíú", before)) {
+			n++
+		}
+		if before = 0; vowel {
+			before = r
+		}
+	}
+	// A u that is not spoken after g and q stands with its vowel, so it counts no syllable more.
 	return n
 }
 

@@ -42,6 +42,20 @@ func TestSyllables(t *testing.T) {
 	}
 }
 
+// TestSyllablesOfOtherLanguages: syllables as dictionaries part the words (common practice).
+func TestSyllablesOfOtherLanguages(t *testing.T) {
+	for lang, list := range map[string]map[string]int{
+		"es": {"perro": 2, "día": 2, "veterinario": 5, "leer": 2, "cuello": 2, "trasera": 3, "izquierda": 3, "respira": 3, "oído": 3, "médico": 3, "que": 1, "cuidado": 3},
+		"de": {"hund": 1, "bewegung": 3, "tierarzt": 2, "heute": 2, "übung": 2, "schmerz": 1, "hinterbein": 3, "besser": 2, "medikament": 4},
+		"fr": {"chien": 1, "patte": 1, "mieux": 1, "marche": 1, "vétérinaire": 4, "exercice": 3, "les": 1, "douleur": 2, "arrière": 2, "gauche": 1},
+	} {
+		count := map[string]func(string) int{"es": vowelGroupsSpanish, "de": vowelGroups, "fr": vowelGroupsFrench}[lang]
+		for w, want := range list {
+			assert.Equal(t, want, max(1, count(w)), "%s: %s", lang, w)
+		}
+	}
+}
+
 func TestOtherLanguagesUseTheirOwnMeasure(t *testing.T) {
 	for lang, text := range map[string]string{
 		"de": "Der Hund geht heute besser. Rufen Sie an.", "fr": "Le chien marche mieux.", "es": "El perro anda mejor.", "nl": "De hond loopt beter.",

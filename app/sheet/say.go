@@ -153,6 +153,9 @@ func say(lang, s string, depth int) string {
 	}
 	for _, sep := range []string{"; ", ": ", ", "} {
 		if first, rest, ok := strings.Cut(s, sep); ok {
+			if sep == ": " {
+				sep = colon(lang)
+			}
 			return say(lang, first, depth+1) + sep + say(lang, rest, depth+1)
 		}
 	}

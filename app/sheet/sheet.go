@@ -234,6 +234,14 @@ func weekday(lang string, d time.Weekday) string {
 	return words.In(lang, "Sun")
 }
 
+// colon joins a label and what follows as the language does: French sets a space before it.
+func colon(lang string) string {
+	if baseTag(lang) == "fr" {
+		return "\u00a0: "
+	}
+	return ": "
+}
+
 // dayWords writes a day as people say it: 2 March 2026.
 func dayWords(lang string, t time.Time) string {
 	return words.In(lang, "%[1]d %[2]s %[3]d", t.Day(), strings.TrimSuffix(month(lang, t.Month()), " (month)"), t.Year())

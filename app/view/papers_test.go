@@ -131,13 +131,21 @@ func ownTexts(pr exam.Practice, p exam.Patient, visits []exam.Visit) []string {
 }
 
 // TestPapersSpeakTheirLanguage: on every paper of every animal of the demo practice, at its
-// last visit and at every visit that raises an alert, no text stays English, and nothing that
-// the program itself says is cut off.
+// last visit and at visits that raise an alert, no text stays English, nothing that the
+// program itself says is cut off, and the owner's sheet reads easily by the language's own
+// published measure (package sheet names the sources): 60 or more on each.
 func TestPapersSpeakTheirLanguage(t *testing.T) {
 	pr := demoPractice()
-	for _, lang := range []string{"de", "es", "fr"} {
-		english := englishOnly(t, lang)
-		require.Greater(t, len(english), 500)
+	for _, lang := range []string{"en", "de", "es", "fr"} {
+		var english []string
+		if lang != "en" {
+			english = englishOnly(t, lang)
+			require.Greater(t, len(english), 500)
+		}
+		hardest, sheets, sum := 1000.0, 0, 0.0
+		defer func() {
+			t.Logf("%s: %d sheets, reading ease %.0f at the mean, %.0f for the hardest", lang, sheets, sum/float64(max(sheets, 1)), hardest)
+		}()
 		left := map[string]string{}
 		for _, c := range pr.Cases {
 			at := []int{len(c.Visits)}
@@ -153,6 +161,12 @@ func TestPapersSpeakTheirLanguage(t *testing.T) {
 					if *keepPapers != "" {
 						require.NoError(t, os.MkdirAll(*keepPapers, 0o755))
 						require.NoError(t, os.WriteFile(filepath.Join(*keepPapers, name+".pdf"), d.PDF, 0o644))
+					}
+					if kind == "sheet" {
+						ease, ok := sheet.Reading(lang, d.Prose)
+						require.True(t, ok)
+						assert.GreaterOrEqual(t, ease.Score, 60.0, "%s: reading ease by %s; %d words, %d sentences, %d syllables", name, ease.Measure, ease.Words, ease.Sentences, ease.Syllables)
+						hardest, sheets, sum = min(hardest, ease.Score), sheets+1, sum+ease.Score
 					}
 					text := paperText(t, d.PDF, "-raw")
 					for _, own := range ownTexts(pr.Practice, c.Patient, c.Visits[:n]) {
