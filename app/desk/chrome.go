@@ -12,7 +12,6 @@ import (
 	"cordwalk.example/cordwalk/app/desk/mark"
 	"cordwalk.example/cordwalk/app/view"
 	"cordwalk.example/cordwalk/assets/words"
-	"cordwalk.example/cordwalk/exam"
 )
 
 // rail is the list of screens at the left: an icon and a word each.
@@ -282,7 +281,7 @@ func (s *strip) update() {
 	}
 	var badges []fyne.CanvasObject
 	f := w.file
-	st := view.StripOf(f.Patient, a.now())
+	st := view.StripOf(f.Patient, a.now(), a.practice.Pounds)
 	if st.Demo || a.practice.Demo {
 		badges = append(badges, badge(words.T("DEMO"), words.T("Invented animals, made to look around. Nothing here is a real patient.")))
 	}
@@ -521,15 +520,6 @@ func (t *tipped) CreateRenderer() fyne.WidgetRenderer { return widget.NewSimpleR
 func (t *tipped) MouseIn(e *desktop.MouseEvent)       { mark.ShowTip(t, t.tip, e.AbsolutePosition) }
 func (t *tipped) MouseMoved(*desktop.MouseEvent)      {}
 func (t *tipped) MouseOut()                           { mark.HideTip(t) }
-
-// valueWords says a measured value with its unit.
-func valueWords(m exam.Measured) string {
-	unit := m.Measure.Info().Unit
-	if unit == "1" {
-		return plainNumber(m.Value)
-	}
-	return plainNumber(m.Value) + " " + unit
-}
 
 // iconImage is an icon of a side in px that follows the theme.
 func iconImage(name string, token fyne.ThemeColorName, side float32) fyne.CanvasObject {

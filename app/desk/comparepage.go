@@ -179,7 +179,7 @@ func (p *comparePage) build() {
 	if len(c.Measures) > 0 {
 		rows = append(rows, mark.Pad(look.Unit, 0, mark.Heading(words.T("Measures")).AtLeast(60)), mark.Rule())
 		for _, m := range c.Measures {
-			rows = append(rows, measureLine(m))
+			rows = append(rows, measureLine(m, p.win.app.practice.Pounds))
 		}
 	}
 	p.body.SetContent(mark.Column(0, rows...))
@@ -233,14 +233,14 @@ func newCompareLine(r view.CompareRow) fyne.CanvasObject {
 	return mark.Column(0, mark.Pad(5, look.Unit/2, line), mark.Rule())
 }
 
-func measureLine(m view.MeasureRow) fyne.CanvasObject {
+func measureLine(m view.MeasureRow, pounds bool) fyne.CanvasObject {
 	value := func(x exam.Measured, had bool) fyne.CanvasObject {
 		if !had {
 			return mark.NewPara(words.T("not measured")).In(look.InkSoft)
 		}
-		return mark.NewPara(valueWords(x))
+		return mark.NewPara(view.MeasuredWords(x, pounds))
 	}
-	note := m.ChangeWords
+	note := m.ChangeIn(pounds)
 	if m.Unlike != "" {
 		note = m.Unlike
 	}

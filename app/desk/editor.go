@@ -196,16 +196,16 @@ func typedLine(s *view.ExamSheet, c view.Cell, text string, done func(error)) fy
 	unit := ""
 	hint := words.T("Why was it not tested? Enter keeps it.")
 	if c.IsMeasure() {
-		unit = c.Measure.Info().Unit
+		unit = s.UnitOf(c.Measure)
 		if unit == "1" {
 			unit = ""
 		}
 		hint = words.T("Type the value; Enter keeps it.")
 		if c.HasLast {
-			hint = words.T("Last time: %s. Type the value; Enter keeps it.", valueWords(c.LastVal))
+			hint = words.T("Last time: %s. Type the value; Enter keeps it.", s.ValueWords(c.LastVal))
 		}
 		if text == "" && c.Entered {
-			text = valueWords(c.Value)
+			text = s.ValueWords(c.Value)
 			unit = ""
 		}
 	}

@@ -495,7 +495,7 @@ func (c *gridCell) faceOf(focus int) cellFace {
 	switch {
 	case cell.IsMeasure():
 		if cell.Entered {
-			f.text = valueWords(cell.Value)
+			f.text = c.grid.sheet.ValueWords(cell.Value)
 		} else {
 			f.empty = true
 		}
@@ -712,7 +712,7 @@ func (c *gridCell) explain() string {
 	out := cell.Name()
 	switch {
 	case cell.IsMeasure() && cell.Entered:
-		out += ": " + valueWords(cell.Value)
+		out += ": " + s.ValueWords(cell.Value)
 	case !cell.IsMeasure() && cell.Entered:
 		out += ": " + view.GradeWords(cell.Today)
 		if cell.Today.Note != "" {

@@ -1,6 +1,7 @@
 package desk
 
 import (
+	"math"
 	"strconv"
 	"strings"
 
@@ -199,17 +200,21 @@ func (p *examPage) measureField(m exam.Measure, site exam.Site, v, last exam.Vis
 		name += ", " + view.SiteName(site)
 	}
 	if in.Unit != "1" {
-		name += ", " + in.Unit
+		name += ", " + p.sheet.UnitOf(m)
 	}
+	pounds := p.sheet.UnitOf(m) != in.Unit
 	value := ""
 	found, has := v.Measured(m, site)
 	if has {
 		value = plainNumber(found.Value)
+		if pounds {
+			value = plainNumber(math.Round(view.PoundsOf(found.Value)*10) / 10)
+		}
 	}
 	f := mark.NewField(value, nil)
 	if hasLast {
 		if x, ok := last.Measured(m, site); ok {
-			f.Hint(words.T("last time %s", plainNumber(x.Value)))
+			f.Hint(words.T("last time %s", p.sheet.ValueWords(x)))
 		}
 	}
 	l := mark.NewLabelled(name, f)
@@ -238,6 +243,9 @@ func (p *examPage) measureField(m exam.Measure, site exam.Site, v, last exam.Vis
 			return
 		}
 		x.Value = n
+		if pounds {
+			x.Value = view.KilogramsOf(n)
+		}
 		if err := p.sheet.PutMeasured(x); err != nil {
 			l.Wrong(err.Error())
 			return

@@ -445,7 +445,7 @@ func (s *ExamSheet) Peek() Outcome {
 	case s.Blind():
 		return refused(errors.New(words.T("This is a repeat exam: earlier grades stay hidden.")))
 	case c.IsMeasure() && c.HasLast:
-		return did(words.T("Last time: %s %s", number(c.LastVal.Value), c.Measure.Info().Unit))
+		return did(words.T("Last time: %s", s.ValueWords(c.LastVal)))
 	case !c.HasLast:
 		return did(words.T("No finding last time"))
 	}
@@ -698,7 +698,10 @@ func (s *ExamSheet) pressText(k Key) Outcome {
 		if c.IsMeasure() {
 			x, err := strconv.ParseFloat(strings.ReplaceAll(text, ",", "."), 64)
 			if err != nil {
-				return refused(&exam.Invalid{Field: c.Name(), Value: text, Allowed: "a number in " + c.Measure.Info().Unit})
+				return refused(&exam.Invalid{Field: c.Name(), Value: text, Allowed: "a number in " + s.UnitOf(c.Measure)})
+			}
+			if c.Measure == exam.Weight && s.in.Pounds {
+				x = KilogramsOf(x)
 			}
 			if err := s.SetMeasure(x); err != nil {
 				return refused(err)

@@ -129,6 +129,7 @@ type ExamInput struct {
 	Earlier  []exam.Visit // the visits before, oldest first
 	Items    []exam.Item  // of the protocol, in any order
 	Measures []exam.Measure
+	Pounds   bool                  // weights are shown and typed in lb
 	Extra    []exam.Key            // cells asked beside the protocol
 	Barred   func(exam.Key) string // the precaution that bars a cell, in words, or ""
 	// Agenda says what is asked once today's findings are known: a limb found without movement
@@ -287,7 +288,7 @@ func (s *ExamSheet) measureList() []exam.Measure {
 }
 
 func (s *ExamSheet) addMeasureRow(m exam.Measure) {
-	r := Row{Measure: m, Name: MeasureName(m), Segments: m.Info().Unit, stage: HandsOff, Heading: HandsOff}
+	r := Row{Measure: m, Name: MeasureName(m), Segments: s.UnitOf(m), stage: HandsOff, Heading: HandsOff}
 	sites := m.Info().Sites
 	if len(sites) == 0 {
 		sites = []exam.Site{exam.NoSite}

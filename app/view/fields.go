@@ -103,6 +103,25 @@ func MeasuredWords(m exam.Measured, pounds bool) string {
 	return number(m.Value) + " " + unit
 }
 
+// ChangeIn says the change of a measure, of a weight in pounds where they are wanted.
+func (r MeasureRow) ChangeIn(pounds bool) string {
+	if pounds && r.After.Measure == exam.Weight && r.HadBefore && r.HasAfter {
+		return signed(PoundsOf(r.Change))
+	}
+	return r.ChangeWords
+}
+
+// UnitOf is the unit that a measure is shown and typed in.
+func (s *ExamSheet) UnitOf(m exam.Measure) string {
+	if m == exam.Weight && s.in.Pounds {
+		return "lb"
+	}
+	return m.Info().Unit
+}
+
+// ValueWords says a measured value in the unit that it is shown in.
+func (s *ExamSheet) ValueWords(m exam.Measured) string { return MeasuredWords(m, s.in.Pounds) }
+
 // PoundsOf converts kilograms to pounds: 1 lb is 0.45359237 kg (international yard and pound agreement, 1959).
 func PoundsOf(kg float64) float64 { return kg / 0.45359237 }
 

@@ -461,7 +461,7 @@ func (c *patientShowCmd) Run(e *env) error {
 			return e.printJSON(out)
 		}
 		e.protection(s)
-		st := view.StripOf(p, time.Now())
+		st := view.StripOf(p, time.Now(), false)
 		e.say("%s · %s · %s", p.Name, st.Species, st.Signalment)
 		if st.Problem != "" {
 			e.say("%s", words.T("Problem: %s", st.Problem))
