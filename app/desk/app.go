@@ -38,6 +38,7 @@ type App struct {
 	windows     []*window
 	lastPatient exam.ID
 	caseload    *view.Caseload // the newest, shown at once while a newer one is read
+	first       *readAhead     // the caseload that is read while the window is still being made; nil once it was shown
 
 	drafts map[exam.ID]*view.PatientForm // pages of animals that were left with something typed on them
 
@@ -135,7 +136,8 @@ func (a *App) demo(w *window, dir string, failed func(error)) {
 		if err != nil {
 			return nil, errors.Join(err, r.Close())
 		}
-		return func() { a.use(w, r, practice, dir) }, nil
+		first := a.readAhead(r)
+		return func() { a.first = first; a.use(w, r, practice, dir) }, nil
 	}, failed)
 }
 
@@ -155,7 +157,8 @@ func (a *App) open(w *window, dir string, passphrase []byte) {
 		if err != nil {
 			return nil, errors.Join(err, r.Close())
 		}
-		return func() { a.use(w, r, practice, dir) }, nil
+		first := a.readAhead(r)
+		return func() { a.first = first; a.use(w, r, practice, dir) }, nil
 	}, func(err error) {
 		_, locked := a.opener.Exists(dir)
 		if locked {

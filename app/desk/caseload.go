@@ -2,6 +2,7 @@ package desk
 
 import (
 	"context"
+	"time"
 
 	"fyne.io/fyne/v2"
 	"fyne.io/fyne/v2/canvas"
@@ -38,9 +39,53 @@ func newCaseloadPage(w *window) *caseloadPage {
 	if p.cases == nil {
 		p.cases = view.NewCaseload(nil, w.app.now())
 	}
+	first := w.app.first
+	w.app.first = nil
+	if first != nil && first.there() {
+		p.cases, w.app.caseload = first.cases, first.cases
+		p.build()
+		return p
+	}
 	p.build()
-	p.load()
+	p.load(first)
 	return p
+}
+
+// readAhead is a caseload that is read while the window is still being made.
+type readAhead struct {
+	done  chan struct{}
+	cases *view.Caseload
+	err   error
+}
+
+// readAhead begins to read the caseload of a store that was opened a moment ago.
+func (a *App) readAhead(r Records) *readAhead {
+	f := &readAhead{done: make(chan struct{})}
+	a.busy.Add(1)
+	go func() {
+		defer a.busy.Done()
+		defer close(f.done)
+		f.cases, f.err = readCaseload(a.ctx, r, a.now())
+	}()
+	return f
+}
+
+// there reports whether the caseload was read, without waiting for it.
+func (f *readAhead) there() bool {
+	select {
+	case <-f.done:
+		return f.err == nil
+	default:
+		return false
+	}
+}
+
+func readCaseload(ctx context.Context, r Records, now time.Time) (*view.Caseload, error) {
+	list, err := r.Caseload(ctx)
+	if err != nil {
+		return nil, err
+	}
+	return view.NewCaseload(list, now), nil
 }
 
 func (p *caseloadPage) build() {
@@ -110,19 +155,25 @@ func (p *caseloadPage) help() []view.KeyHelp {
 	}
 }
 
-// load reads the caseload off the drawing goroutine.
-func (p *caseloadPage) load() {
+// load reads the caseload off the drawing goroutine, or waits for the one that is being read.
+func (p *caseloadPage) load(first *readAhead) {
 	a := p.win.app
 	p.busy = true
 	a.work(func(ctx context.Context) (func(), error) {
 		if err := a.saver.Flush(ctx); err != nil {
 			return nil, err
 		}
-		list, err := a.records.Caseload(ctx)
+		var c *view.Caseload
+		var err error
+		if first != nil {
+			<-first.done
+			c, err = first.cases, first.err
+		} else {
+			c, err = readCaseload(ctx, a.records, a.now())
+		}
 		if err != nil {
 			return nil, err
 		}
-		c := view.NewCaseload(list, a.now())
 		return func() {
 			a.caseload = c
 			p.busy = false
