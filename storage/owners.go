@@ -398,6 +398,33 @@ func (s *Store) patients(ctx context.Context) (ids []exam.ID, err error) {
 	return ids, explain("reading the patients", err)
 }
 
+// OwnersFile is the name of the file of owners' keys in a store's folder and in its backups.
+const OwnersFile = ownersFile
+
+// StillHeld returns the owners whose data were erased here on request and whose key stands in a copy of a file of
+// owners' keys, as a backup holds it, or who are among others: with the key the data could still be shown.
+func (s *Store) StillHeld(file []byte, others []exam.ID) ([]exam.ID, error) {
+	r, err := s.baseRecord(ownersRecord)
+	if err != nil {
+		return nil, explain("looking for owners whose data were erased", err)
+	}
+	have := map[[nameSize]byte]bool{}
+	for ; len(file) >= slotSize; file = file[slotSize:] {
+		if n, _, ok := parseSlot(file[:slotSize]); ok {
+			have[n] = true
+		}
+	}
+	var out []exam.ID
+	for _, f := range r.fields {
+		if word, ok := strings.CutPrefix(f.name, fieldErased); ok {
+			if id, err := exam.ParseID(word); err == nil && (have[s.seals.owners.name(id)] || slices.Contains(others, id)) {
+				out = append(out, id)
+			}
+		}
+	}
+	return out, nil
+}
+
 // AddOwnerKey takes over an owner's key that another device sealed, unless the owner's data were
 // erased here.
 func (s *Store) AddOwnerKey(owner exam.ID, sealed []byte) error {

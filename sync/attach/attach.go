@@ -123,10 +123,17 @@ func (f *Files) sealOwner(owner exam.ID, k key.OwnerKey) []byte {
 
 func (f *Files) parseOwner(name string, b []byte) (owner exam.ID, k key.OwnerKey, err error) {
 	sum := sha256.Sum256(b)
-	if f.nameOf(ownerExt, sum[:]) != name || len(b) < 4 {
+	if f.nameOf(ownerExt, sum[:]) != name {
 		return owner, k, fmt.Errorf("an owner's key: %w", change.ErrMalformed)
 	}
-	w, ok := f.s.Bag().Ring.Wrap(binary.BigEndian.Uint32(b))
+	return openOwner(f.s.Bag().Ring, b)
+}
+
+func openOwner(ring *key.Ring, b []byte) (owner exam.ID, k key.OwnerKey, err error) {
+	if len(b) < 4 {
+		return owner, k, fmt.Errorf("an owner's key: %w", change.ErrMalformed)
+	}
+	w, ok := ring.Wrap(binary.BigEndian.Uint32(b))
 	if !ok {
 		return owner, k, fmt.Errorf("an owner's key: %w", change.ErrNoKey)
 	}
@@ -135,6 +142,15 @@ func (f *Files) parseOwner(name string, b []byte) (owner exam.ID, k key.OwnerKey
 		return owner, k, fmt.Errorf("an owner's key: %w", change.ErrSealed)
 	}
 	return exam.ID(plain[:16]), key.OwnerKey(plain[16:]), nil
+}
+
+// OwnersDir is the folder in a store, and in a backup of it, where each file holds the key of one owner.
+const OwnersDir = ownersDir
+
+// OwnerOf returns whose key a file in OwnersDir holds.
+func OwnerOf(ring *key.Ring, file []byte) (exam.ID, error) {
+	owner, _, err := openOwner(ring, file)
+	return owner, err
 }
 
 // ownerKeys returns the keys of an owner, and makes the first one if it is wanted.

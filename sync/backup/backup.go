@@ -217,6 +217,15 @@ func write(ctx context.Context, out io.Writer, dir string, files []storage.Snaps
 		}
 		return nil
 	}
+	slices.SortStableFunc(files, func(a, b storage.SnapshotFile) int { // see early
+		switch {
+		case early(a.Name) && !early(b.Name):
+			return -1
+		case early(b.Name) && !early(a.Name):
+			return 1
+		}
+		return 0
+	})
 	for _, f := range files {
 		if !goodName(f.Name) {
 			continue // nothing of ours
@@ -277,13 +286,21 @@ func read(ctx context.Context, file string, ids []age.Identity, o Options, f fun
 	if err != nil {
 		return c, m, err
 	}
-	plain, err := age.Decrypt(io.NewSectionReader(in, 0, size), ids...)
+	disk := &failing{r: io.NewSectionReader(in, 0, size)}
+	// malformed says what is wrong: the disk, where it could not be read, and the backup otherwise.
+	malformed := func(err error) error {
+		if disk.err != nil {
+			return disk.err
+		}
+		return fmt.Errorf("%w: %s", change.ErrMalformed, err)
+	}
+	plain, err := age.Decrypt(disk, ids...)
 	if err != nil {
 		var none *age.NoIdentityMatchError
 		if errors.As(err, &none) {
 			return c, m, change.ErrSealed
 		}
-		return c, m, fmt.Errorf("%w: %s", change.ErrMalformed, err)
+		return c, m, malformed(err)
 	}
 	unpacked, err := zstd.NewReader(plain, zstd.WithDecoderConcurrency(1), zstd.WithDecoderMaxWindow(32<<20), zstd.WithDecoderLowmem(true))
 	if err != nil {
@@ -301,7 +318,7 @@ func read(ctx context.Context, file string, ids []age.Identity, o Options, f fun
 			break
 		}
 		if err != nil {
-			return c, m, fmt.Errorf("%w: %s", change.ErrMalformed, err)
+			return c, m, malformed(err)
 		}
 		if m.Format != 0 {
 			return c, m, fmt.Errorf("%w: it goes on behind its end", change.ErrMalformed)
@@ -314,7 +331,9 @@ func read(ctx context.Context, file string, ids []age.Identity, o Options, f fun
 				return c, m, fmt.Errorf("%w: its list of files has %d bytes", change.ErrMalformed, h.Size)
 			}
 			d := json.NewDecoder(archive)
-			if err := d.Decode(&m); err != nil || m.Format == 0 {
+			if err := d.Decode(&m); err != nil && disk.err != nil {
+				return c, m, disk.err
+			} else if err != nil || m.Format == 0 {
 				return c, m, fmt.Errorf("%w: its list of files cannot be read", change.ErrMalformed)
 			}
 			if m.Format > 1 {
@@ -333,17 +352,17 @@ func read(ctx context.Context, file string, ids []age.Identity, o Options, f fun
 			}
 		}
 		if _, err := io.Copy(io.Discard, r); err != nil {
-			return c, m, fmt.Errorf("%w: %s", change.ErrMalformed, err)
+			return c, m, malformed(err)
 		}
 		sums[h.Name] = hex.EncodeToString(sum.Sum(nil))
 		o.Progress("reading the backup", c.Bytes, 0)
 	}
 	// To the very end: a cut shows only there.
 	if _, err := io.Copy(io.Discard, unpacked); err != nil {
-		return c, m, fmt.Errorf("%w: %s", change.ErrMalformed, err)
+		return c, m, malformed(err)
 	}
 	if _, err := io.Copy(io.Discard, plain); err != nil {
-		return c, m, fmt.Errorf("%w: %s", change.ErrMalformed, err)
+		return c, m, malformed(err)
 	}
 	if m.Format == 0 || !sameFiles(sums, m.Files) {
 		return c, m, fmt.Errorf("%w: its files are not those that its list names", change.ErrMalformed)
@@ -352,19 +371,37 @@ func read(ctx context.Context, file string, ids []age.Identity, o Options, f fun
 	return c, m, nil
 }
 
+// failing remembers the error of a reader behind which others say that what they read is malformed.
+type failing struct {
+	r   io.Reader
+	err error
+}
+
+func (f *failing) Read(b []byte) (int, error) {
+	n, err := f.r.Read(b)
+	if err != nil && !errors.Is(err, io.EOF) {
+		f.err = err
+	}
+	return n, err
+}
+
 // Extract makes the folder of a store out of a backup. The folder must not exist or be empty; it has its
 // name only when everything is in it. The store must not be written to before it got a new incarnation:
 // see Restore.
 func Extract(ctx context.Context, file string, ids []age.Identity, dir string, o Options) (Contents, error) {
-	o = o.withDefaults()
-	c, err := extract(ctx, file, ids, dir, o)
+	return extractAnd(ctx, file, ids, dir, o.withDefaults(), nil)
+}
+
+// extractAnd is Extract with something that is done to the folder before it has its name.
+func extractAnd(ctx context.Context, file string, ids []age.Identity, dir string, o Options, ready func(dir string) error) (Contents, error) {
+	c, err := extract(ctx, file, ids, dir, o, ready)
 	if err != nil {
 		return Contents{}, fmt.Errorf("restoring %s into %s: %w", file, dir, err)
 	}
 	return c, nil
 }
 
-func extract(ctx context.Context, file string, ids []age.Identity, dir string, o Options) (c Contents, err error) {
+func extract(ctx context.Context, file string, ids []age.Identity, dir string, o Options, ready func(dir string) error) (c Contents, err error) {
 	if es, err := o.FS.List(dir); err == nil && len(es) > 0 {
 		return c, errors.New("the folder is not empty; name an empty or new one")
 	} else if err == nil {
@@ -416,6 +453,11 @@ func extract(ctx context.Context, file string, ids []age.Identity, dir string, o
 			return c, err
 		}
 	}
+	if ready != nil {
+		if err := ready(tmp); err != nil {
+			return c, err
+		}
+	}
 	if err := o.FS.Rename(tmp, dir); err != nil {
 		return c, err
 	}
@@ -455,18 +497,16 @@ func removeAll(fsys disk.FS, dir string) error {
 	return fsys.Remove(dir)
 }
 
-// Restore makes a store out of a backup and gives it a new incarnation. so unlocks it as it was unlocked when
-// the backup was made.
+// Restore makes a store out of a backup and gives it a new incarnation before the folder has its name, so that no
+// half-restored store can be written to. so unlocks it as it was unlocked when the backup was made.
 func Restore(ctx context.Context, file string, ids []age.Identity, dir string, so storage.Options, o Options) (Contents, error) {
-	c, err := Extract(ctx, file, ids, dir, o)
-	if err != nil {
-		return c, err
-	}
-	s, err := storage.Open(dir, so)
-	if err != nil {
-		return c, fmt.Errorf("opening what was restored: %w", err)
-	}
-	return c, errors.Join(s.Renew(ctx), s.Close())
+	return extractAnd(ctx, file, ids, dir, o.withDefaults(), func(tmp string) error {
+		s, err := storage.Open(tmp, so)
+		if err != nil {
+			return fmt.Errorf("opening what was restored: %w", err)
+		}
+		return errors.Join(s.Renew(ctx), s.Close())
+	})
 }
 
 // How many backups are kept.
@@ -521,15 +561,9 @@ func Expired(names []string) []string {
 // back whole.
 func Tidy(ctx context.Context, folder string, ids []age.Identity, o Options) error {
 	o = o.withDefaults()
-	es, err := o.FS.List(folder)
+	names, err := list(folder, o)
 	if err != nil {
 		return fmt.Errorf("tidying the backups in %s: %w", folder, err)
-	}
-	var names []string
-	for _, e := range es {
-		if _, ok := parseName(e.Name); ok && !e.Dir {
-			names = append(names, e.Name)
-		}
 	}
 	expired := Expired(names)
 	if len(expired) == 0 {
