@@ -22,8 +22,7 @@ type Engine struct {
 	found       []found // what the cell's finding was, for the evidence
 	ctx         []context
 	bent        []bool
-	ctxAge      float64
-	ctxSedated  exam.Sedation
+	ctxOf       habits
 
 	state        []groupState
 	full         []int64 // sum of the groups' log-likelihoods
@@ -202,7 +201,9 @@ func (e *Engine) clear(i int) {
 	e.obs[i], e.upTo[i], e.bulk[i], e.found[i] = -1, -1, false, found{}
 }
 
-// put enters a finding. Of two findings of one cell the lower category stays, whatever their order.
+// put enters a finding. Of two findings of one cell the lower category stays, whatever their
+// order; but a tendon reflex that was absent once and present once counts as present: it may be
+// missing in the uppermost limb only (neuropetvet).
 func (e *Engine) put(f exam.Finding) {
 	i, ok := e.m.lay.find(f.Key())
 	if !ok {
@@ -221,11 +222,14 @@ func (e *Engine) put(f exam.Finding) {
 		return
 	}
 	bulk := f.How == exam.RestNormal || f.Block != ""
-	if e.obs[i] >= 0 {
-		if cat > e.obs[i] {
+	if was := e.obs[i]; was >= 0 {
+		again := exam.TendonReflex(c.item) && (cat == 0) != (was == 0)
+		switch {
+		case again && cat == 0, !again && cat > was:
 			return
+		case cat == was:
+			bulk = bulk && e.bulk[i]
 		}
-		bulk = bulk && (e.bulk[i] || cat < e.obs[i])
 	}
 	e.obs[i], e.upTo[i], e.bulk[i], e.found[i] = cat, cat, bulk, found{g, f.Level}
 }
@@ -260,7 +264,7 @@ func (e *Engine) set(x Exam) {
 		e.widen(k)
 	}
 	// What is known of the animal bends the answers of some cells.
-	if x.AgeYears != e.ctxAge || x.Sedation != e.ctxSedated {
+	if of := x.habits(); of != e.ctxOf {
 		for i := range e.m.lay.cells {
 			ctx, bent := e.m.bend(&x, &e.m.lay.cells[i])
 			if bent || e.bent[i] {
@@ -270,7 +274,7 @@ func (e *Engine) set(x Exam) {
 				}
 			}
 		}
-		e.ctxAge, e.ctxSedated = x.AgeYears, x.Sedation
+		e.ctxOf = of
 	}
 	if l := [2]string{x.Diagnosis, x.Level}; l != e.labelOf || x.WeightKg != e.labelKg {
 		e.labelled = e.m.label(&x, e.label)

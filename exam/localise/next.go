@@ -251,9 +251,9 @@ func (e *Engine) information(g *group, k, ci int, seen bool) float64 {
 	for i := range e.livePairs {
 		p := &e.livePairs[i]
 		row := table[int(p.class)*cats : int(p.class)*cats+cats]
-		at := pred[int(p.sig)*cats : int(p.sig)*cats+cats]
-		for cat := range row {
-			h, _ := bits.Mul64(p.full, at[cat])
+		at := pred[int(p.sig)*cats:][:len(row)]
+		for cat, v := range at {
+			h, _ := bits.Mul64(p.full, v)
 			row[cat] += h
 		}
 	}

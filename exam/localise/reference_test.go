@@ -862,7 +862,8 @@ func TestReference(t *testing.T) {
 				x.Diagnosis, x.Level = "disc extrusion", "T12-T13"
 			}
 			re := &refExam{x: x, byGroup: map[int][]int{}}
-			// Of two findings of a cell the one with the lower category stands.
+			// Of two findings of a cell the one with the lower category stands; of a tendon reflex
+			// absent once and present once, the one that is present.
 			best := map[int]int{}
 			isBulk := map[int]bool{}
 			for _, f := range x.Findings {
@@ -873,6 +874,12 @@ func TestReference(t *testing.T) {
 					cat = trunciCategory(s, f)
 				}
 				old, seen := best[ci]
+				if seen && exam.TendonReflex(f.Item) && (old == 0 || cat == 0) && old+cat > 0 {
+					if old == 0 {
+						best[ci], isBulk[ci] = cat, f.Block != ""
+					}
+					continue
+				}
 				switch {
 				case !seen || cat < old:
 					best[ci], isBulk[ci] = cat, f.Block != ""

@@ -536,7 +536,8 @@ func (w *Weigher) Marginal(k exam.Key) (out []float64, categories int) {
 
 // bendFor brings what age and sedation do to the answers up to date.
 func (e *Engine) bendFor(x *Exam) {
-	if x.AgeYears == e.ctxAge && x.Sedation == e.ctxSedated {
+	of := x.habits()
+	if of == e.ctxOf {
 		return
 	}
 	for i := range e.m.lay.cells {
@@ -545,5 +546,5 @@ func (e *Engine) bendFor(x *Exam) {
 			e.ctx[i], e.bent[i] = ctx, bent
 		}
 	}
-	e.ctxAge, e.ctxSedated = x.AgeYears, x.Sedation
+	e.ctxOf = of
 }

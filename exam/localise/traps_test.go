@@ -63,6 +63,98 @@ func TestAgeExcusesThePatellar(t *testing.T) {
 	}
 }
 
+func TestAbsentUppermostPresentUndermostIsPresent(t *testing.T) {
+	// neuropetvet: a tendon reflex that is missing in the uppermost limb and there when that limb
+	// lies undermost counts as present. Both tries may stand in one exam.
+	base := "voluntary-motor t4 pl1 pr4; paw-placement pl0 pr2; withdrawal p2; spinal-pain cervical0 thoracolumbar0; patellar pr2; "
+	once := compute(t, say(t, exam.Dog, base+"patellar pl2"))
+	want := append([]RegionProbability(nil), once.Regions...)
+	absent := compute(t, say(t, exam.Dog, base+"patellar pl0"))
+	odds := func(r *Result) float64 { return (r.Region("L4-S3") + r.Region("peripheral")) / r.Region("T3-L3") }
+	absentOdds := odds(absent)
+	if once = compute(t, say(t, exam.Dog, base+"patellar pl2")); absentOdds < 3*odds(once) {
+		t.Errorf("an absent patellar must count: odds of L4–S3 or nerve %.3f, present %.3f", absentOdds, odds(once))
+	}
+	for _, both := range []string{"patellar pl0; patellar pl2", "patellar pl2; patellar pl0"} {
+		got := compute(t, say(t, exam.Dog, base+both))
+		for i, r := range got.Regions {
+			if r != want[i] {
+				t.Errorf("%s: %v, undermost alone %v", both, r, want[i])
+			}
+		}
+	}
+	// Of other tests of one cell the worse one stands, in whatever order.
+	worse := compute(t, say(t, exam.Dog, base+"menace l0"))
+	want = append(want[:0], worse.Regions...)
+	for _, both := range []string{"menace l0; menace l2", "menace l2; menace l0"} {
+		got := compute(t, say(t, exam.Dog, base+both))
+		for i, r := range got.Regions {
+			if r != want[i] {
+				t.Errorf("%s: %v, the worse alone %v", both, r, want[i])
+			}
+		}
+	}
+}
+
+func TestOldProtrusionOfFrenchBulldogs(t *testing.T) {
+	// LaRosa-2023: of 80 French bulldogs with a thoracic or lumbar extrusion 73 had a lumbosacral
+	// protrusion too, and 15.1 % of these a reduced withdrawal that it may explain. A reduced
+	// withdrawal is so about as likely from it as from spinal shock.
+	base := "ambulation m0; voluntary-motor t4 p0; paw-placement t2 p0; patellar p2; perineal b2; tone p2; cutaneous-trunci b1@T13; spinal-pain thoracolumbar2 lumbar0 lumbosacral0; superficial-pain p0; deep-pain p1"
+	// What a reduced withdrawal of one side adds to the odds of L4–S3.
+	adds := func(breed string) float64 {
+		odds := func(text string) float64 {
+			x := say(t, exam.Dog, base+text)
+			x.Breed, x.OnsetDays, x.AgeYears = breed, 60, 5
+			r := compute(t, x)
+			return r.Region("L4-S3") / r.Region("T3-L3")
+		}
+		return odds("; withdrawal pl1 pr2") / odds("; withdrawal p2")
+	}
+	other, bulldog := adds("Dachshund"), adds("French Bulldog")
+	t.Logf("two months on, a reduced withdrawal raises the odds of L4–S3 over T3–L3 by %.2f, in a French bulldog by %.2f", other, bulldog)
+	if bulldog > 0.7*other {
+		t.Errorf("an old protrusion excuses nothing: %.2f in a French bulldog, %.2f in another dog", bulldog, other)
+	}
+	// The chance of a reduced or absent withdrawal below a severe lesion of T13–L1.
+	e := engineFor(t, exam.Dog)
+	reduced := func(breed string, days float64) float64 {
+		sum := 0.0
+		for g := range int8(2) {
+			x := Exam{Species: exam.Dog, Breed: breed, AgeYears: 5, OnsetDays: days,
+				Findings: []exam.Finding{{Item: exam.Withdrawal, Site: exam.PelvicLeft, Result: exam.Graded(g)}}}
+			ll, err := e.SiteLogLikelihoods(x, nil)
+			if err != nil {
+				t.Fatal(err)
+			}
+			for i, s := range e.m.Sites() {
+				if s.Kind == Cord && s.From.String() == "T13" && s.To.String() == "L1" && s.Side == Even {
+					sum += exp(ll[i*GridSize+GridSize-1])
+				}
+			}
+		}
+		return sum
+	}
+	plain := reduced("Dachshund", 60)
+	shock, old := reduced("Dachshund", 1)-plain, reduced("French bulldog", 60)-plain
+	t.Logf("a withdrawal reduced or absent below T13–L1: by spinal shock %.3f, by an old protrusion %.3f, else %.3f", shock, old, plain)
+	if r := old / shock; r < 0.4 || r > 2.5 {
+		t.Errorf("by an old protrusion %.3f, by spinal shock %.3f: not about as likely", old, shock)
+	}
+	if old < 0.10 || old > 0.18 {
+		t.Errorf("by an old protrusion %.3f, reported in 11 of 80", old)
+	}
+	// In the limbs in front, and at the hip, nothing is excused.
+	front := func(breed string) float64 {
+		x := say(t, exam.Dog, base+"; withdrawal p2 tl1 tr2; withdrawal-hip pl1 pr2")
+		x.Breed, x.OnsetDays, x.AgeYears = breed, 60, 5
+		return compute(t, x).Region("T3-L3")
+	}
+	if a, b := front("French bulldog"), front("Dachshund"); a > 1.1*b || a < b/1.1 {
+		t.Errorf("T3–L3 with a weak front and hip: %.3f in a French bulldog, %.3f in another dog", a, b)
+	}
+}
+
 func TestSchiffSherringtonIsNotCervical(t *testing.T) {
 	x := say(t, exam.Dog, "ambulation m0; voluntary-motor t4 p0; tone t4 p1; schiff-sherrington m1; paw-placement t2 p0; withdrawal a2; patellar p2; spinal-pain cervical0 thoracolumbar3; deep-pain p0")
 	x.OnsetDays = 1

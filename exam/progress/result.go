@@ -249,7 +249,7 @@ func printOf(v exam.Visit) uint64 {
 
 // agrees returns how many of a course's visits are an animal's first visits, as they stand now.
 func (c *Course) agrees(p exam.Patient, visits []exam.Visit) int {
-	if c == nil || c.patient.Species != p.Species || c.patient.Born != p.Born || !slices.Equal(c.patient.Problems, p.Problems) {
+	if c == nil || c.patient.Species != p.Species || c.patient.Born != p.Born || c.patient.Breed != p.Breed || !slices.Equal(c.patient.Problems, p.Problems) {
 		return 0
 	}
 	for i, n := range c.nodes {
