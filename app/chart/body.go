@@ -44,7 +44,7 @@ func (b Body) plan(r vg.Rectangle, st Style) bodyPlan {
 		for _, half := range halves(l.Name, size) {
 			least = max(least, Width(half, size, false))
 		}
-		least = max(least, Width(l.Word, size*1.1, true)+size*1.43)
+		least = max(least, Width(l.Word, size*1.1, true)*0.8+size*1.43) // a word may shrink a little
 	}
 	room := w - 2*(words+size*0.7)
 	if room < w*0.25 { // names on two lines
@@ -113,8 +113,25 @@ func (b Body) Draw(c draw.Canvas, st Style) {
 		p.strokePath(pl.path(d), edge*0.7, pal.Soft)
 	}
 	for i, l := range limbs {
-		b.label(p, pl, l, b.Limbs[i], size)
+		b.label(p, pl, l, b.Limbs[i], size, b.apart(pl, size))
 	}
+}
+
+// apart is how far the words of front and back limbs are moved from each other so that they
+// do not touch.
+func (b Body) apart(pl bodyPlan, size vg.Length) vg.Length {
+	fore, ok1 := pl.fig.Centre(exam.ThoracicLeft.String())
+	hind, ok2 := pl.fig.Centre(exam.PelvicLeft.String())
+	if !ok1 || !ok2 {
+		return 0
+	}
+	return max(0, (size*4.8-(pl.pt(fore).Y-pl.pt(hind).Y))/2)
+}
+
+// Tall is the height that the picture needs at a width, at most h.
+func (b Body) Tall(w, h vg.Length, st Style) vg.Length {
+	pl := b.plan(area(w, h), st)
+	return min(h, max(pl.scale*vg.Length(pl.fig.Height), st.size()*11))
 }
 
 // shrunk is the size at which a text fits, not below two thirds of the size asked for.
@@ -140,7 +157,7 @@ func halves(name string, size vg.Length) [2]string {
 	return out
 }
 
-func (b Body) label(p pen, pl bodyPlan, site exam.Site, limb BodyLimb, size vg.Length) {
+func (b Body) label(p pen, pl bodyPlan, site exam.Site, limb BodyLimb, size, apart vg.Length) {
 	pal := p.st.Palette
 	centre, ok := pl.fig.Centre(site.String())
 	if !ok {
@@ -157,6 +174,11 @@ func (b Body) label(p pen, pl bodyPlan, site exam.Site, limb BodyLimb, size vg.L
 		ax, room = 0, pl.box.Max.X-x
 	}
 	y := at.Y + size*0.9
+	if site.IsThoracic() {
+		y += apart
+	} else {
+		y -= apart
+	}
 	if Width(limb.Name, size, false) <= room {
 		p.text(x, y, limb.Name, size, false, pal.Soft, ax)
 	} else {

@@ -533,7 +533,9 @@ func (c *clinical) evidence(e localise.Evidence) string {
 // strip is the course of every segment: the model's where it was given, else the plain score.
 func (c *clinical) strip() chart.Strip {
 	if c.course != nil {
-		return c.course.Strip
+		s := c.course.Strip
+		s.Events = c.events()
+		return s
 	}
 	s := chart.Strip{}
 	for i, v := range c.in.Visits {
@@ -556,8 +558,30 @@ func (c *clinical) strip() chart.Strip {
 			}
 		}
 	}
-	s.Events = ownerCourse(c.in).Events
+	s.Events = c.events()
 	return s
+}
+
+// events are what happened to the animal, in the paper's language, oldest first.
+func (c *clinical) events() []chart.Event {
+	lang, p := c.in.lang(), c.in.Patient
+	var out []chart.Event
+	add := func(d exam.Date, word string) {
+		if t, ok := d.Time(); ok {
+			out = append(out, chart.Event{At: time.Date(t.Year(), t.Month(), t.Day(), 12, 0, 0, 0, c.now.Examined.Location()), Word: word})
+		}
+	}
+	for _, pr := range p.Problems {
+		add(pr.Onset, words.In(lang, "onset"))
+		add(pr.Surgery, words.In(lang, "surgery"))
+		add(pr.Resolved, words.In(lang, "resolved"))
+	}
+	for _, m := range p.Medicines {
+		add(m.Start, m.Name)
+		add(m.Stop, words.In(lang, "%s stopped", m.Name))
+	}
+	slices.SortStableFunc(out, func(a, b chart.Event) int { return a.At.Compare(b.At) })
+	return out
 }
 
 func (c *clinical) pageOne(p *page, h float64) {

@@ -522,6 +522,7 @@ func (o *owner) picture(p *page, f fit) {
 	p.heading(x, bw-10, in.text(textLegs))
 	st := chart.Style{Palette: p.pal, Text: vg.Length(p.size * 0.9), Lang: p.lang}
 	bodyTop := p.y + p.size*0.2
+	f.body = body.Tall(vg.Length(bw-10), vg.Length(f.body), st).Points()
 	p.draw(x, bodyTop, bw-10, f.body, func(c draw.Canvas) { body.Draw(c, st) })
 	bottom := bodyTop + f.body
 	p.y = bottom
