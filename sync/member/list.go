@@ -595,6 +595,62 @@ func (l *List) renew(b key.Bag, now change.HLC) (*key.Ring, error) {
 	return b.Ring, nil
 }
 
+// Finish hands on the keys that should have followed what this device stated: a program that stopped, or a disk that
+// failed, may have come between a removal and the new key, or between an admission and the keys for it. It does
+// nothing if all was done, or if this device is no member any more.
+func (l *List) Finish(b key.Bag, now change.HLC) error {
+	me := b.Device.Verifier()
+	if d, ok := l.Device(me); !ok || !d.Member() {
+		return nil
+	}
+	to := l.recipients()
+	renew, hand := false, false
+	l.mu.RLock()
+	var mine []*Statement
+	got := map[ID]map[string]bool{} // who got keys from somebody who knew of it
+	for id, s := range l.all {
+		if s.Signer == me && (s.Kind == Remove || s.Kind == Confirm || s.Kind == Admit) {
+			mine = append(mine, s)
+			got[id] = map[string]bool{}
+		}
+	}
+	for _, s := range l.all {
+		if s.Kind != Keys || len(mine) == 0 {
+			continue
+		}
+		past := l.past(s)
+		for _, m := range mine {
+			if past[m.id] {
+				for _, w := range s.Wraps {
+					got[m.id][w.To] = true
+				}
+			}
+		}
+	}
+	for _, m := range mine {
+		switch {
+		case m.Kind == Admit:
+			// Whoever is a member still must have got keys at some time after it.
+			if d := l.devices[m.Subject]; d != nil && d.Member() && !got[m.id][d.Recipient] {
+				hand = true
+			}
+		case len(got[m.id]) == 0:
+			renew = true
+		case slices.ContainsFunc(to, func(r string) bool { return !got[m.id][r] }):
+			hand = true
+		}
+	}
+	l.mu.RUnlock()
+	if renew {
+		_, err := l.renew(b, now)
+		return err
+	}
+	if hand {
+		return l.hand(b, now, to)
+	}
+	return nil
+}
+
 // Practice returns the practice's id, zero while the founding statement has not come.
 func (l *List) Practice() exam.ID {
 	l.mu.RLock()

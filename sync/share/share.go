@@ -64,7 +64,7 @@ func (o Options) withDefaults() Options {
 
 // Open reads the list of devices that lies beside a store. The first time it founds the practice
 // with this device; then recovery is what belongs on the recovery sheet and is kept nowhere else.
-// It is nil otherwise.
+// It is nil otherwise. It comes with an error where it is not known whether the practice was founded: keep it then too.
 func Open(ctx context.Context, s *storage.Store, o Options) (sh *Share, recovery *age.X25519Identity, err error) {
 	o = o.withDefaults()
 	sh = &Share{Store: s, at: s.Dir(), fs: o.FS, now: o.Now}
@@ -74,7 +74,7 @@ func Open(ctx context.Context, s *storage.Store, o Options) (sh *Share, recovery
 		if sh.List, recovery, err = member.Establish(s.Bag(), s.Device(), s.Incarnation(), sh.clock()); err != nil {
 			return nil, nil, err
 		}
-		if err := sh.keep(sh.List); err != nil {
+		if err := sh.keepStatements(sh.List); err != nil {
 			return nil, nil, err
 		}
 	case err != nil:
@@ -90,7 +90,32 @@ func Open(ctx context.Context, s *storage.Store, o Options) (sh *Share, recovery
 		}
 	}
 	sh.List.OnLearn(sh.save)
-	return sh, recovery, sh.refresh(ctx)
+	if err := sh.settle(ctx); err != nil {
+		return nil, nil, err
+	}
+	if recovery == nil {
+		return sh, nil, nil
+	}
+	// The practice is founded when the root is kept, and not before: until then the next opening founds it anew,
+	// with another recovery sheet.
+	if err := sh.keepRoot(sh.List); err != nil {
+		if rerr := sh.fs.Remove(sh.path(rootFile)); rerr == nil || errors.Is(rerr, fs.ErrNotExist) {
+			recovery = nil
+		}
+		return nil, recovery, err
+	}
+	return sh, recovery, nil
+}
+
+// settle brings keys and limits in step with the list, and the list with what this device began.
+func (sh *Share) settle(ctx context.Context) error {
+	if err := sh.refresh(ctx); err != nil { // its own keys come first
+		return err
+	}
+	if err := sh.List.Finish(sh.Bag(), sh.clock()); err != nil {
+		return err
+	}
+	return sh.refresh(ctx)
 }
 
 func (sh *Share) path(names ...string) string { return folder(sh.at, names...) }
@@ -104,11 +129,23 @@ func (sh *Share) clock() change.HLC { return change.HLCAt(sh.now()) }
 
 // keep writes a whole list beside the store, the root last.
 func (sh *Share) keep(l *member.List) error {
+	if err := sh.keepStatements(l); err != nil {
+		return err
+	}
+	return sh.keepRoot(l)
+}
+
+func (sh *Share) keepStatements(l *member.List) error {
 	for _, raw := range l.Statements() {
 		if err := sh.save(raw); err != nil {
 			return err
 		}
 	}
+	return nil
+}
+
+// keepRoot says which statement the list begins with.
+func (sh *Share) keepRoot(l *member.List) error {
 	id := l.Root()
 	if err := disk.Replace(sh.fs, sh.path(rootFile), []byte(hex.EncodeToString(id[:])+"\n")); err != nil {
 		return fmt.Errorf("keeping the list of devices: %w", err)
