@@ -128,7 +128,7 @@ func (c *patientsCmd) Run(e *env) error {
 			for _, r := range cases.Rows() {
 				out.Patients = append(out.Patients, lineOf(r))
 			}
-			return e.printJSON(out)
+			return e.printLarge(out)
 		}
 		e.protection(s)
 		w := tabwriter.NewWriter(e.out, 0, 4, 2, ' ', 0)
