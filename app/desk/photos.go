@@ -9,6 +9,7 @@ import (
 	"io/fs"
 	"os"
 	"path/filepath"
+	"strings"
 	"sync"
 
 	"fyne.io/fyne/v2"
@@ -309,7 +310,7 @@ func (p *examPage) addPhotos(names []string) {
 				}
 			}
 			if bad != nil {
-				p.win.foot.fail(words.T("Not every file was taken: %s", sentence(bad.Error())), bad)
+				p.win.foot.fail(words.T("Not every file was taken: %s", strings.ReplaceAll(bad.Error(), "\n", "; ")), bad)
 			}
 		}, nil
 	}, func(err error) { p.win.fail(words.T("The files could not be kept."), err) })
