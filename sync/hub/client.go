@@ -308,6 +308,25 @@ func (c *Client) session(ctx context.Context) error {
 		c.upTo = 0
 	}()
 
+	// In a goroutine of its own: what came in must not wait for what goes out.
+	settling := make(chan struct{})
+	go func() {
+		defer close(settling)
+		t := time.NewTicker(c.o.Poll)
+		defer t.Stop()
+		for {
+			select {
+			case <-ctx.Done():
+				return
+			case <-t.C:
+				if err := c.settleLate(ctx); err != nil {
+					cancel(err)
+				}
+			}
+		}
+	}()
+	defer func() { cancel(nil); <-settling }()
+
 	stopFiles, err := c.exchangeFiles(ctx)
 	if err != nil {
 		return err
@@ -324,9 +343,6 @@ func (c *Client) session(ctx context.Context) error {
 		case <-ctx.Done():
 			return context.Cause(ctx)
 		case <-tick.C:
-			if err := c.settleLate(ctx); err != nil {
-				return err
-			}
 		case <-c.kick:
 		case <-slow.C:
 			c.savePlace()
@@ -558,7 +574,7 @@ func (c *Client) publish(ctx context.Context, h carry.Held, first, last uint64, 
 				return fmt.Errorf("the hub did not take what was sent: %w", err)
 			case <-ctx.Done():
 				return context.Cause(ctx)
-			case <-time.After(30 * time.Second):
+			case <-time.After(100 * c.o.Poll):
 				return errors.New("the hub does not answer")
 			}
 			waiting = waiting[1:]
