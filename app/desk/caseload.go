@@ -446,26 +446,28 @@ func (l caseHeadLayout) Layout(o []fyne.CanvasObject, s fyne.Size) {
 // caseLine is one animal of the caseload.
 type caseLine struct {
 	widget.BaseWidget
-	page   *caseloadPage
-	id     exam.ID
-	bed    *mark.Ground
-	bar    *mark.Ground
-	cross  *mark.LimbCross
-	name   *mark.Text
-	sub    *mark.Text
-	prob   *mark.Text
-	due    *mark.Text
-	last   *mark.Text
-	change *mark.Change
-	word   *mark.Text
-	phone  *canvas.Image
-	alert  *mark.Text
-	rule   *mark.Ground
+	page    *caseloadPage
+	id      exam.ID
+	problem string
+	bed     *mark.Ground
+	bar     *mark.Ground
+	cross   *mark.LimbCross
+	name    *mark.Text
+	sub     *mark.Text
+	prob    *mark.Text
+	more    *mark.Text // the problem's second line
+	due     *mark.Text
+	last    *mark.Text
+	change  *mark.Change
+	word    *mark.Text
+	phone   *canvas.Image
+	alert   *mark.Text
+	rule    *mark.Ground
 }
 
 func newCaseLine(p *caseloadPage) *caseLine {
 	l := &caseLine{page: p, bed: mark.NewGround(look.Paper), bar: mark.NewGround(look.Focus), cross: mark.NewLimbCross(view.LimbCross{}, 40),
-		name: mark.Bold("").AtLeast(20), sub: mark.Note("").AtLeast(20), prob: mark.Line("").AtLeast(20),
+		name: mark.Bold("").AtLeast(20), sub: mark.Note("").AtLeast(20), prob: mark.Line("").AtLeast(20), more: mark.Line("").AtLeast(20),
 		due: mark.Line("").AtLeast(20), last: mark.Note("").AtLeast(20), change: mark.NewChange(view.ChangeMark{}, 20), word: mark.Line("").AtLeast(10),
 		phone: &canvas.Image{FillMode: canvas.ImageFillContain}, alert: mark.Bold("").In(look.Call).AtLeast(10), rule: mark.NewGround(look.Line)}
 	l.ExtendBaseWidget(l)
@@ -494,7 +496,7 @@ func (l *caseLine) set(r view.CaseRow) {
 		sub += " · " + s.Owner
 	}
 	l.sub.Words = sub
-	l.prob.Words = s.Problem
+	l.problem = s.Problem
 	l.due.Words, l.due.Bold, l.due.Token = r.DueWords, r.Attention <= view.DueToday, dueToken(r)
 	l.last.Words = r.LastWords
 	l.change.Set(r.Change)
@@ -520,7 +522,7 @@ func (l *caseLine) set(r view.CaseRow) {
 }
 
 func (l *caseLine) CreateRenderer() fyne.WidgetRenderer {
-	o := []fyne.CanvasObject{l.bed, l.rule, l.bar, l.cross, l.name, l.sub, l.prob, l.due, l.last, l.change, l.word, l.phone, l.alert}
+	o := []fyne.CanvasObject{l.bed, l.rule, l.bar, l.cross, l.name, l.sub, l.prob, l.more, l.due, l.last, l.change, l.word, l.phone, l.alert}
 	return &caseLineRenderer{l, o}
 }
 
@@ -554,6 +556,8 @@ func (r *caseLineRenderer) Layout(s fyne.Size) {
 		put(a, x, top, w, ha)
 		put(b, x, top+ha, w, hb)
 	}
+	was := [2]string{l.prob.Words, l.more.Words}
+	l.prob.Words, l.more.Words = l.problem, ""
 	if ph := l.prob.MinSize().Height; stackedCase(s.Width) && l.MinSize().Height > 56+ph/2 {
 		ha, hb := l.name.MinSize().Height, l.sub.MinSize().Height
 		top := (s.Height - ha - hb - ph) / 2
@@ -562,7 +566,12 @@ func (r *caseLineRenderer) Layout(s fyne.Size) {
 		put(l.prob, x[1], top+ha+hb, w[1], ph)
 	} else {
 		two(l.name, l.sub, x[1], w[1])
-		put(l.prob, x[2], (s.Height-ph)/2, w[2], ph)
+		l.prob.Words, l.more.Words = twoLines(l.problem, w[2])
+		two(l.prob, l.more, x[2], w[2])
+	}
+	if was != [2]string{l.prob.Words, l.more.Words} {
+		l.prob.Refresh()
+		l.more.Refresh()
 	}
 	two(l.due, l.last, x[3], w[3])
 	put(l.change, x[4], (s.Height-20)/2, 20, 20)
@@ -576,6 +585,20 @@ func (r *caseLineRenderer) Layout(s fyne.Size) {
 	h = l.alert.MinSize().Height
 	put(l.alert, x[5]+26, (s.Height-h)/2, w[5]-26, h)
 	l.alert.Hidden = w[5] < 60
+}
+
+// twoLines breaks a text at the last space that fits into a width; the second line may be too long.
+func twoLines(s string, width float32) (first, second string) {
+	fits := func(s string) bool { return fyne.MeasureText(s, look.Px(look.Body), fyne.TextStyle{}).Width <= width }
+	if fits(s) {
+		return s, ""
+	}
+	for i := len(s) - 1; i > 0; i-- {
+		if s[i] == ' ' && fits(s[:i]) {
+			return s[:i], s[i+1:]
+		}
+	}
+	return s, ""
 }
 
 func (r *caseLineRenderer) Refresh() {

@@ -2,6 +2,7 @@ package desk
 
 import (
 	"context"
+	"strconv"
 	"strings"
 
 	"fyne.io/fyne/v2"
@@ -28,6 +29,7 @@ type examPage struct {
 	side    *examSide
 	left1   *fyne.Container // grid, card or one of the forms of the visit
 	tabs    []*mark.Button
+	parts   *mark.Pick // instead of the tabs where text is large
 	one     *mark.Button
 	tab     int
 	bar     *fyne.Container
@@ -124,6 +126,19 @@ func (p *examPage) build(v exam.Visit) {
 	one.Chosen = a.settings.OneByOne
 	p.one = one
 	p.bar = mark.Row(4, []float32{1}, mark.Wrapped(0, tabs...), one)
+	p.parts = nil
+	if look.Scale() > 1.3 { // the buttons would take three lines from the grid
+		keys := make([]string, len(names))
+		for i := range names {
+			keys[i] = strconv.Itoa(i)
+		}
+		p.parts = mark.Choice(names, keys, "0", func(s string) {
+			if k, err := strconv.Atoi(s); err == nil && k != p.tab {
+				p.choose(k)
+			}
+		})
+		p.bar = mark.Row(look.Unit, []float32{1, 0}, p.parts, one)
+	}
 	second := mark.Row(look.Unit, []float32{1, 1, 1}, p.visitPick(v), proSel, posSel)
 	p.where = mark.Line("")
 	p.walk = newWalkBar()
@@ -385,6 +400,9 @@ func (p *examPage) choose(tab int) {
 	p.tab = tab
 	for i, b := range p.tabs {
 		b.SetChosen(i == tab)
+	}
+	if p.parts != nil && p.parts.SelectedIndex() != tab {
+		p.parts.SetSelectedIndex(tab)
 	}
 	p.one.SetChosen(p.win.app.settings.OneByOne)
 	var o fyne.CanvasObject

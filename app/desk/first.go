@@ -42,10 +42,10 @@ func newFirstRunPage(w *window, dir string) *firstRunPage {
 		return f
 	}
 	p.first = field("practice", words.T("1. What is the practice called?"), "", words.T("Name of the practice; it stands on every sheet"), func(s string) { p.form.Practice = s })
-	field("phone", words.T("Telephone of the practice"), "", words.T("For the owner's sheet; can be added later"), func(s string) { p.form.Phone = s })
+	field("phone", words.T("Telephone of the practice"), "", words.T("For the sheet; can come later"), func(s string) { p.form.Phone = s })
 	field("examiner", words.T("2. Who examines?"), "", words.T("Your name; more people can be added later"), func(s string) { p.form.Examiner = s })
 	field("folder", words.T("3. Where do the data live?"), dir, words.T("A folder on this computer"), func(s string) { p.form.Folder = s })
-	pass := field("passphrase", words.T("Passphrase"), "", words.T("Several words; nobody can open the data without it"), func(s string) { p.form.Passphrase = s })
+	pass := field("passphrase", words.T("Passphrase"), "", words.T("Several words, easy to keep"), func(s string) { p.form.Passphrase = s })
 	again := field("again", words.T("Passphrase again"), "", "", func(s string) { p.form.Again = s })
 	pass.Password, again.Password = true, true
 	none := mark.Tick(words.T("Leave the data unprotected on this computer"), false, func(on bool) {

@@ -46,13 +46,14 @@ type window struct {
 	page  page
 	file  File // of the patient shown; zero where the page has none
 
-	rail   *rail
-	strip  *strip
-	foot   *foot
-	center *fyne.Container
-	tips   *mark.Tips
-	layer  *fyne.Container // help and other sheets laid over the page
-	turn   int             // number of the newest load; older ones are dropped
+	rail    *rail
+	strip   *strip
+	foot    *foot
+	center  *fyne.Container
+	tips    *mark.Tips
+	layer   *fyne.Container // help and other sheets laid over the page
+	opening bool            // the foot says that a page is being opened
+	turn    int             // number of the newest load; older ones are dropped
 }
 
 func newWindow(a *App) *window {
@@ -108,6 +109,10 @@ func (l windowLayout) Layout(o []fyne.CanvasObject, s fyne.Size) {
 func (w *window) show(p page) {
 	if w.page != nil {
 		w.page.left()
+	}
+	if w.opening { // of a page that somebody no longer waits for
+		w.opening = false
+		w.foot.say("")
 	}
 	w.page = p
 	w.win.SetTitle(w.title())
@@ -196,6 +201,7 @@ func (w *window) open(r view.Route) {
 		return
 	}
 	w.foot.say(words.T("Opening…"))
+	w.opening = true
 	w.app.work(func(ctx context.Context) (func(), error) {
 		// What was entered a moment ago must be on the page that comes.
 		if err := w.app.saver.Flush(ctx); err != nil {
@@ -204,7 +210,6 @@ func (w *window) open(r view.Route) {
 		f, err := w.app.records.File(r.Patient)
 		return func() {
 			if turn == w.turn {
-				w.foot.say("")
 				w.file = f
 				w.app.shows(f.Patient.Species)
 				w.openFile(r)
@@ -212,6 +217,7 @@ func (w *window) open(r view.Route) {
 		}, err
 	}, func(err error) {
 		if turn == w.turn {
+			w.opening = false
 			w.fail(words.T("The file of this animal cannot be opened."), err)
 		}
 	})
