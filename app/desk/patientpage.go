@@ -143,8 +143,14 @@ func (p *patientPage) build() {
 	keep := mark.NewButton(words.T("Keep"), "tick", p.keep).As(mark.Main)
 	exam1 := mark.NewButton(words.T("Keep and start exam"), "exam", func() { p.keepThen(view.ScreenExam) })
 	cancel := mark.NewButton(words.T("Back without keeping"), "", p.back).As(mark.Quiet)
+	buttons := []fyne.CanvasObject{cancel, exam1, keep}
+	if !f.New() {
+		buttons = append([]fyne.CanvasObject{mark.NewButton(words.T("History"), "", func() {
+			p.win.goTo(view.Route{Screen: view.ScreenHistory, Patient: p.before.ID})
+		}).As(mark.Quiet).WithTip("Ctrl+H")}, buttons...)
+	}
 	p.root = mark.Pad(look.Unit*1.5, look.Unit*2, mark.ColumnGrow(look.Unit, 2,
-		mark.Bar(look.Unit, mark.Title(title).AtLeast(100), cancel, exam1, keep), p.miss, p.body))
+		mark.Bar(look.Unit, mark.Title(title).AtLeast(100), buttons...), p.miss, p.body))
 }
 
 func (p *patientPage) missing() {

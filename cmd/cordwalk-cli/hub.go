@@ -90,7 +90,7 @@ func (e *env) byHub(sh *share.Share, address string, stay bool) (syncJSON, error
 	}
 	ctx, cancel := context.WithCancel(e.ctx)
 	defer cancel()
-	client := hub.New(hub.Options{Address: a, Bag: func() key.Bag { return sh.Bag() }, Incarnation: sh.Incarnation, Journal: sh, Members: sh,
+	client := hub.New(hub.Options{Address: a, Bag: func() key.Bag { return sh.Bag() }, Incarnation: sh.Incarnation, Journal: sh, Members: sh, Files: sh.Files,
 		Place: hubPlace{filepath.Join(sh.Dir(), "hub.place")}, Notice: func(w string) { e.warn(w) }})
 	done := make(chan error, 1)
 	go func() { done <- client.Run(ctx) }()

@@ -54,12 +54,15 @@ type commands struct {
 		Part patientPartCmd `cmd:"" help:"Take back that two records are one animal."`
 	} `cmd:"" help:"One patient."`
 	Exam struct {
-		Add    examAddCmd    `cmd:"" help:"Record an exam from a file."`
-		Show   examShowCmd   `cmd:"" help:"Show a visit."`
-		Close  examCloseCmd  `cmd:"" help:"Close a visit; later changes need a reason."`
-		Amend  examAmendCmd  `cmd:"" help:"Change findings of a closed visit, with a reason."`
-		Answer examAnswerCmd `cmd:"" help:"Say who was told of an alert."`
-		Walk   examWalkCmd   `cmd:"" help:"List what a protocol asks of a patient today, in the order of work."`
+		Add         examAddCmd         `cmd:"" help:"Record an exam from a file."`
+		Show        examShowCmd        `cmd:"" help:"Show a visit."`
+		Close       examCloseCmd       `cmd:"" help:"Close a visit; later changes need a reason."`
+		Amend       examAmendCmd       `cmd:"" help:"Change findings of a closed visit, with a reason."`
+		Answer      examAnswerCmd      `cmd:"" help:"Say who was told of an alert."`
+		Attach      examAttachCmd      `cmd:"" help:"Add a photo or a clip to a visit."`
+		Attachments examAttachmentsCmd `cmd:"" help:"List the photos and clips of a visit."`
+		Extract     examExtractCmd     `cmd:"" help:"Write a photo or a clip of a visit to a file."`
+		Walk        examWalkCmd        `cmd:"" help:"List what a protocol asks of a patient today, in the order of work."`
 	} `cmd:"" help:"Exams."`
 	Compare  compareCmd  `cmd:"" help:"Show what changed between two visits."`
 	Localise localiseCmd `cmd:"" help:"Say which segments, roots or nerves explain an exam file."`

@@ -19,6 +19,7 @@ import (
 	"cordwalk.example/cordwalk/storage/disk"
 	"cordwalk.example/cordwalk/sync/audit"
 	"cordwalk.example/cordwalk/sync/backup"
+	"cordwalk.example/cordwalk/sync/attach"
 	"cordwalk.example/cordwalk/sync/carry"
 	"cordwalk.example/cordwalk/sync/change"
 	"cordwalk.example/cordwalk/sync/key"
@@ -46,6 +47,9 @@ func (e *env) shared(c sheetFlag, f func(sh *share.Share) error) error {
 		}
 		sh, recovery, err := share.Open(e.ctx, s, share.Options{})
 		if err != nil {
+			return err
+		}
+		if sh.Files, err = attach.Open(e.ctx, s, nil); err != nil {
 			return err
 		}
 		if recovery != nil {
