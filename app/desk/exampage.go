@@ -38,6 +38,7 @@ type examPage struct {
 	root    fyne.CanvasObject
 	undoB   *mark.Button
 	closed  *mark.Button
+	reflow  func()   // gives the form shown its height anew; may be nil
 	pending []func() // what was typed and not yet kept
 }
 

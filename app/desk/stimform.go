@@ -47,10 +47,13 @@ func (p *examPage) stimField(name, value, hint string, keep func(text string) er
 		}
 		if err := keep(strings.TrimSpace(f.Text)); err != nil {
 			l.Wrong(err.Error())
-			return
+		} else {
+			last = f.Text
+			l.Wrong("")
 		}
-		last = f.Text
-		l.Wrong("")
+		if p.reflow != nil {
+			p.reflow()
+		}
 	}
 	f.OnLeave = store
 	f.OnSubmitted = func(string) { store(); p.win.win.Canvas().FocusNext() }
@@ -106,7 +109,7 @@ func newStimForm(p *examPage) fyne.CanvasObject {
 	} else {
 		log = append(log, cautionLine(why))
 	}
-	return mark.NewScroll(mark.Pad(look.Unit, look.Unit, mark.Column(look.Unit*3,
+	form := mark.NewScroll(mark.Pad(look.Unit, look.Unit, mark.Column(look.Unit*3,
 		section(words.T("Strength–duration test"), append([]fyne.CanvasObject{
 			mark.NewPara(words.T("The weakest current that makes the muscle twitch, at several pulse widths. Repeat each threshold; one electrode, one place, clipped or not as last time.")).In(look.InkSoft),
 			mark.Left(addTest)}, tests...)...),
@@ -114,6 +117,8 @@ func newStimForm(p *examPage) fyne.CanvasObject {
 		section(words.T("Stimulation log"), append([]fyne.CanvasObject{
 			mark.NewPara(words.T("Ranges are guidance from the literature. Current and indication are chosen by whoever is licensed to.")).In(look.InkSoft)},
 			append(log, sessions...)...)...))))
+	p.reflow = form.Reflow
+	return form
 }
 
 func (p *examPage) lastSession() (stim.Session, bool) {
