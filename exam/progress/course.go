@@ -54,7 +54,7 @@ type Model struct {
 // NewModel returns a model over the places of space.
 func NewModel(space Space, rates Rates) *Model {
 	m := newModel(space, rates)
-	m.clock, m.reader = newClock(rates), newReader(space)
+	m.clock, m.reader = newClock(rates), newReader(space, quarterStep)
 	return m
 }
 
