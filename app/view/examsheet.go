@@ -615,7 +615,7 @@ func (s *ExamSheet) EditHead(edit func(*exam.Visit)) error {
 		return errClosed()
 	}
 	before := s.head()
-	after := before
+	after := s.head() // lists of its own: an edit in place must differ from what was before
 	edit(&after)
 	after.Findings, after.Measures = nil, nil
 	b := Batch{Head: true, Before: before, After: after}

@@ -142,3 +142,34 @@ func TestHistorySaysWhatReplacedWhat(t *testing.T) {
 		t.Errorf("%d lines after all again", len(h.Lines()))
 	}
 }
+
+// A line of a list that is changed in place is a change like any other: it must reach the store and undo.
+func TestAnEditInPlaceIsSaved(t *testing.T) {
+	v := exam.Visit{ID: exam.ID{15: 2}, Patient: exam.ID{15: 1}, Examined: day0, Examiner: "A",
+		Treatments:  []exam.Treatment{{ID: exam.ID{15: 3}, Kind: "massage"}},
+		Home:        []exam.HomeExercise{{ID: exam.ID{15: 4}, Kind: "walk"}},
+		Attachments: []exam.Attachment{{ID: exam.ID{15: 5}, Name: "a.att", Format: "png", Size: 1}},
+		Stim:        []exam.StimRecord{{ID: exam.ID{15: 6}, Kind: "test", Data: "{}"}}}
+	var saved []Batch
+	s, err := NewExamSheet(ExamInput{Patient: exam.Patient{ID: exam.ID{15: 1}, Species: exam.Dog}, Visit: v, Items: []exam.Item{exam.Mentation}, Save: func(b Batch) { saved = append(saved, b) }})
+	if err != nil {
+		t.Fatal(err)
+	}
+	for i, edit := range []func(*exam.Visit){
+		func(v *exam.Visit) { v.Treatments[0].Minutes = 10 },
+		func(v *exam.Visit) { v.Home[0].Times = 3 },
+		func(v *exam.Visit) { v.Attachments[0].Note = "from behind" },
+		func(v *exam.Visit) { v.Stim[0].Data = `{"muscle":"x"}` },
+	} {
+		if err := s.EditHead(edit); err != nil {
+			t.Fatal(err)
+		}
+		if n := len(saved[i].Edits()); n != 1 {
+			t.Errorf("edit %d gives the store %d changes", i, n)
+		}
+	}
+	s.Press(Key{Rune: 'z', Ctrl: true})
+	if got := s.Visit().Stim[0].Data; got != "{}" {
+		t.Errorf("undo leaves %s", got)
+	}
+}
