@@ -53,7 +53,7 @@ type published struct {
 	// event returns the joint probability of the event and what is given; p gives that of
 	// constraints beside what is given.
 	event func(h *hypothesis, p func(...constraint) float64) float64
-	out   string // why the row may stay outside its interval; argued in NOTES.md
+	out   string // why the row may stay outside its interval; argued in DEVELOPERS.md
 }
 
 // predictor evaluates rows by walking the space, without the engine's tables.

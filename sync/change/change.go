@@ -8,8 +8,8 @@
 //
 // Everything has exactly one encoding: what decodes encodes to the same bytes again, or
 // it is refused. Fields of a newer minor version are kept byte for byte and passed on;
-// frames of a newer major version are kept sealed and passed on. FORMAT.md in this
-// folder is the specification, with test vectors in testdata/vectors.
+// frames of a newer major version are kept sealed and passed on. DEVELOPERS.md
+// holds the specification; test vectors are in testdata/vectors.
 package change
 
 import (

@@ -14,7 +14,7 @@ import (
 	"golang.org/x/crypto/chacha20poly1305"
 )
 
-// The version of the format that this program writes. See FORMAT.md for what a newer minor
+// The version of the format that this program writes. See DEVELOPERS.md for what a newer minor
 // or major version means to a reader.
 const (
 	Major = 1

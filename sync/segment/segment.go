@@ -8,7 +8,7 @@
 // or of an epoch whose key it lacks) travel as they are.
 //
 // A segment is complete only if its trailing hash fits. Nothing in it is believed before the
-// signature, the hashes and the seals are checked. FORMAT.md in this folder is the specification.
+// signature, the hashes and the seals are checked. DEVELOPERS.md holds the specification.
 package segment
 
 import (
@@ -385,7 +385,6 @@ type Reader struct {
 	done   bool
 	name   [32]byte
 	sealed []byte    // the block that was read last
-	packed []byte    // and what it holds
 	ahead  chan read // see Ahead
 	stop   chan struct{}
 }

@@ -88,7 +88,7 @@ func BenchmarkDurableFinding(b *testing.B) {
 	require.NoError(b, err)
 	insert, err := db.Prepare("insert into frame values (?, ?)")
 	require.NoError(b, err)
-	// The length of a frame of one finding; see sync/change/FORMAT.md.
+	// The length of a frame of one finding; see DEVELOPERS.md.
 	raw := make([]byte, 300)
 	cells := []exam.Finding{}
 	for _, i := range exam.Items() {
