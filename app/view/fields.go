@@ -85,6 +85,12 @@ func FieldWords(field string, raw []byte, plain string) string {
 			s += ", " + f.Note
 		}
 		return s
+	case field == "examined":
+		return Day(v.Examined) + " " + v.Examined.Format("15:04")
+	case field == "closed":
+		return Day(v.ClosedAt) + " " + v.ClosedAt.Format("15:04")
+	case field == "next-visit":
+		return DateWords(v.NextVisit)
 	case len(v.Measures) > 0:
 		return MeasuredWords(v.Measures[0], false)
 	}
