@@ -388,7 +388,7 @@ func (s *localised) LogLikelihoods(v exam.Visit, sites []int, dst []float64) {
 // caution is how much of an exam's log-likelihood counts. An examiner's habits and an animal's
 // ways come back week after week, which a chain of independent exams does not know; and
 // the steps of severity are interpolated. Judgement; on dogs drawn from the localisation model it
-// makes 90 % bands hold in 91 % (as known then) and 90 % (as known now).
+// makes 90 % bands hold in 91 % (as known then) and 88 % (as known now).
 const caution = 0.85
 
 // hopeless is how far below the best place, in nats, a place need not be worked out: e⁻⁶⁰.
