@@ -45,6 +45,7 @@ type App struct {
 	album   album       // the photos and clips beside the store
 	engines engines     // of all exams: each would hold much scratch memory
 	resting *time.Timer // see rest
+	heavy   sync.Mutex  // long work on one course or paper at a time: each needs much memory
 
 	onUI   view.OnUI // runs on the drawing goroutine; tests pass their own
 	ctx    context.Context

@@ -8,6 +8,7 @@ import (
 	"path/filepath"
 	"strconv"
 	"strings"
+	"sync/atomic"
 	"time"
 
 	"fyne.io/fyne/v2"
@@ -39,7 +40,7 @@ type coursePage struct {
 	model  *view.Course     // the serial model's; nil until it is worked out, or where there is none
 	result *progress.Result // what the model says
 	said   string           // why there is no model
-	gone   bool             // another page has come
+	gone   atomic.Bool      // another page has come
 	strip  *chartHost
 	fn     *chartHost
 	limbs  *chartHost
@@ -69,13 +70,19 @@ func (p *coursePage) analyse() {
 		return
 	}
 	patient, visits, now := p.file.Patient, p.file.Visits, p.win.app.now()
-	p.win.app.work(func(context.Context) (func(), error) {
+	a := p.win.app
+	a.work(func(context.Context) (func(), error) {
+		a.heavy.Lock()
+		defer a.heavy.Unlock()
+		if p.gone.Load() {
+			return nil, nil
+		}
 		c, r, err := view.ModelCourse(patient, visits, progress.Options{Now: now})
 		if err != nil {
 			return nil, err
 		}
 		return func() {
-			if p.gone {
+			if p.gone.Load() {
 				return
 			}
 			p.result = &r
@@ -85,7 +92,7 @@ func (p *coursePage) analyse() {
 			p.build()
 		}, nil
 	}, func(err error) {
-		if !p.gone {
+		if !p.gone.Load() {
 			p.said = words.T("The course could not be worked out: %s", err.Error())
 			p.build()
 		}
@@ -106,7 +113,7 @@ func (p *coursePage) shown()                     { p.win.win.Canvas().Unfocus() 
 // left lets go of the model and the pictures: the toolkit keeps the widgets of a page for a while.
 func (p *coursePage) left() {
 	p.halt()
-	p.gone = true
+	p.gone.Store(true)
 	p.model, p.result, p.course = nil, nil, p.plain
 	p.releaseCharts()
 	progress.Forget(p.file.Patient.Species)

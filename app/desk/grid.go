@@ -104,14 +104,17 @@ func (g *examGrid) update() {
 	g.reveal()
 }
 
-// reveal scrolls the open row into view.
+// reveal scrolls the open row into view; where it is too tall for that, at least its grades.
 func (g *examGrid) reveal() {
 	if g.open < 0 || g.open >= len(g.rows) {
 		return
 	}
 	r := g.rows[g.open]
-	top := r.Position().Y
-	g.scroll.ScrollTo(top, r.Size().Height+g.editor.Size().Height, 2*look.Unit+headHeight())
+	top, h, margin := r.Position().Y, r.Size().Height+g.editor.Size().Height, 2*look.Unit+headHeight()
+	if h+margin > g.scroll.Size().Height {
+		top, h, margin = g.editor.Position().Y, g.editor.Size().Height, look.Unit/2
+	}
+	g.scroll.ScrollTo(top, h, margin)
 }
 
 func headHeight() float32 { return 30 * max(1, look.Scale()) }

@@ -7,6 +7,7 @@ import (
 	"os"
 	"path/filepath"
 	"strings"
+	"sync/atomic"
 
 	"fyne.io/fyne/v2"
 	"fyne.io/fyne/v2/canvas"
@@ -34,8 +35,9 @@ type sheetPage struct {
 	about   *mark.Para
 	doc     sheet.Document
 	turn    int
-	later   bool  // saving was asked for before the paper was made
-	refused error // why there is no sheet
+	newest  atomic.Int64 // turn, for the goroutine that writes
+	later   bool         // saving was asked for before the paper was made
+	refused error        // why there is no sheet
 
 	root     fyne.CanvasObject
 	preview  *mark.Scroll
@@ -90,6 +92,7 @@ func (p *sheetPage) shown()                     { p.win.win.Canvas().Unfocus() }
 // left lets go of the pages' pictures.
 func (p *sheetPage) left() {
 	p.turn++
+	p.newest.Store(int64(p.turn))
 	p.doc = sheet.Document{}
 	p.dropPictures()
 	p.preview.SetContent(mark.Space(1, 1))
@@ -181,6 +184,7 @@ func (k paperKind) write(in sheet.Input) (sheet.Document, error) {
 func (p *sheetPage) make() {
 	p.turn++
 	turn := p.turn
+	p.newest.Store(int64(turn))
 	a := p.win.app
 	for k, b := range p.kinds {
 		b.SetChosen(paperKind(k) == p.kind)
@@ -197,6 +201,11 @@ func (p *sheetPage) make() {
 	p.mail.Disable()
 	p.in = in
 	a.work(func(context.Context) (func(), error) {
+		a.heavy.Lock()
+		defer a.heavy.Unlock()
+		if p.newest.Load() != int64(turn) {
+			return nil, nil // another paper is wanted, or none
+		}
 		doc, err := kind.write(in)
 		if err != nil {
 			return nil, err
