@@ -21,7 +21,7 @@ import (
 
 // screen is a virtual screen with the program on it, worked by keys alone.
 type screen struct {
-	t       *testing.T
+	t       testing.TB
 	display string
 	binary  string
 	env     []string
@@ -32,7 +32,7 @@ type screen struct {
 const passphrase = "three lame foxes"
 
 // newScreen starts a virtual screen and builds the program.
-func newScreen(t *testing.T) *screen {
+func newScreen(t testing.TB) *screen {
 	t.Helper()
 	for _, tool := range []string{"Xvfb", "xdotool", "import"} {
 		if _, err := exec.LookPath(tool); err != nil {
@@ -48,7 +48,7 @@ func newScreen(t *testing.T) *screen {
 	if err != nil {
 		t.Fatal(err)
 	}
-	x := exec.Command("Xvfb", "-displayfd", "3", "-screen", "0", "1366x820x24", "-nolisten", "tcp")
+	x := exec.Command("Xvfb", "-displayfd", "3", "-screen", "0", "1366x820x24", "-nolisten", "tcp", "-noreset")
 	x.ExtraFiles = []*os.File{w}
 	if err := x.Start(); err != nil {
 		t.Fatal(err)

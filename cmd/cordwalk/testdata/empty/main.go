@@ -1,0 +1,20 @@
+// Command empty opens a window with nothing in it, in the program's theme: what the toolkit alone takes.
+package main
+
+import (
+	"fyne.io/fyne/v2"
+	"fyne.io/fyne/v2/app"
+	"fyne.io/fyne/v2/canvas"
+
+	"cordwalk.example/cordwalk/app/desk"
+	"cordwalk.example/cordwalk/app/desk/look"
+)
+
+func main() {
+	a := desk.Still(app.NewWithID("example.cordwalk.empty"))
+	a.Settings().SetTheme(look.New(look.Light, 1))
+	w := a.NewWindow("Empty – Cordwalk")
+	w.SetContent(canvas.NewRectangle(look.C(look.Paper)))
+	w.Resize(fyne.NewSize(1280, 720))
+	w.ShowAndRun()
+}
