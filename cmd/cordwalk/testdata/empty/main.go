@@ -13,7 +13,9 @@ import (
 func main() {
 	a := desk.Still(app.NewWithID("example.cordwalk.empty"))
 	a.Settings().SetTheme(look.New(look.Light, 1))
-	w := a.NewWindow("Empty – Cordwalk")
+	w := a.NewWindow("Starting")
+	// Like the caseload, it has its name once the drawing loop runs, not when the frame is mapped.
+	a.Lifecycle().SetOnStarted(func() { fyne.Do(func() { w.SetTitle("Empty – Cordwalk") }) })
 	w.SetContent(canvas.NewRectangle(look.C(look.Paper)))
 	w.Resize(fyne.NewSize(1280, 720))
 	w.ShowAndRun()
