@@ -291,6 +291,12 @@ func (s *strip) update() {
 	if !a.shared.IsZero() {
 		badges = append(badges, badge(words.T("shared %s", a.shared.Format("15:04")), words.T("Exchanged with the other devices at that time.")))
 	}
+	if n := len(f.Conflict); n > 0 {
+		say := words.N(n, "%d value to choose", "%d values to choose", n)
+		badges = append(badges, newPressable(mark.On(look.FocusBed, true, mark.Pad(1, look.Unit, mark.Note(say).In(look.Ink))),
+			words.T("Two devices wrote different things. Both are kept until a person chooses."),
+			func() { w.goTo(view.Route{Screen: view.ScreenChoices, Patient: f.Patient.ID}) }))
+	}
 	large := look.Scale() > 1.3
 	rightBox := mark.Column(2, alignRight(mark.Line(st.Date)), alignRight(append(badges, s.save)...))
 	if large {
@@ -322,12 +328,6 @@ func (s *strip) update() {
 	var caution fyne.CanvasObject = mark.NewPara(words.T("no precautions")).In(look.InkSoft)
 	if len(list) > 0 {
 		caution = mark.Row(6, []float32{0, 1}, iconImage("caution", look.Worse, 20), mark.NewPara(strings.Join(list, " · ")).Strong())
-	}
-	if n := len(f.Conflict); n > 0 {
-		say := words.N(n, "%d value to choose", "%d values to choose", n)
-		badges = append(badges, newPressable(mark.On(look.FocusBed, true, mark.Pad(1, look.Unit, mark.Note(say).In(look.Ink))),
-			words.T("Two devices wrote different things. Both are kept until a person chooses."),
-			func() { w.goTo(view.Route{Screen: view.ScreenChoices, Patient: f.Patient.ID}) }))
 	}
 	name := mark.Heading(st.Name).AtLeast(80)
 	left := mark.Column(0, mark.Row(look.Unit*1.5, []float32{0, 1}, fitted(name, 420), mark.Soft(st.Signalment).AtLeast(60)))

@@ -8,13 +8,16 @@ import (
 	"image/jpeg"
 	"os"
 	"path/filepath"
+	"slices"
 	"strings"
 	"testing"
 	"time"
 
 	"fyne.io/fyne/v2"
 	"fyne.io/fyne/v2/storage"
+	"fyne.io/fyne/v2/test"
 
+	"cordwalk.example/cordwalk/app/desk/mark"
 	"cordwalk.example/cordwalk/app/view"
 	"cordwalk.example/cordwalk/exam"
 	"cordwalk.example/cordwalk/exam/stim"
@@ -146,6 +149,9 @@ func TestChooseBetweenTwoValues(t *testing.T) {
 	s.show(view.ScreenCourse, fern.ID)
 	if len(w.file.Conflict) != 1 {
 		t.Fatalf("the strip knows of %d", len(w.file.Conflict))
+	}
+	if !shows(w.strip.box, "1 value to choose") {
+		t.Error("the strip does not show that there is something to choose")
 	}
 	s.show(view.ScreenChoices, fern.ID)
 	p := w.page.(*choicesPage)
@@ -361,4 +367,17 @@ func TestWeightsInPoundsOnTheScreens(t *testing.T) {
 	if u := s.exam().sheet.UnitOf(exam.Weight); u != "lb" {
 		t.Errorf("the exam takes weights in %s", u)
 	}
+}
+
+// shows reports whether a text stands anywhere on a part of a screen.
+func shows(o fyne.CanvasObject, text string) bool {
+	switch x := o.(type) {
+	case *mark.Text:
+		return x.Words == text
+	case *fyne.Container:
+		return slices.ContainsFunc(x.Objects, func(o fyne.CanvasObject) bool { return shows(o, text) })
+	case fyne.Widget:
+		return slices.ContainsFunc(test.WidgetRenderer(x).Objects(), func(o fyne.CanvasObject) bool { return shows(o, text) })
+	}
+	return false
 }
