@@ -7,7 +7,9 @@ import (
 
 // VisitField reads one field of a visit, such as "finding/patellar/pelvic-left", into a visit that holds
 // nothing else.
-func VisitField(name string, value []byte) (v exam.Visit, err error) { return v, setVisit(&v, name, value) }
+func VisitField(name string, value []byte) (v exam.Visit, err error) {
+	return v, setVisit(&v, name, value)
+}
 
 // Fields returns the values that count in a record, by field. Fields in conflict and cleared ones are
 // left out. It serves the kinds of record that are no patients, visits or settings.

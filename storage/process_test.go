@@ -33,6 +33,8 @@ func TestMain(m *testing.M) {
 		childRecord()
 	case "open":
 		childOpen()
+	case "damaged":
+		childDamaged()
 	default:
 		roles[os.Getenv(roleVariable)]()
 	}
