@@ -19,6 +19,7 @@ type comparePage struct {
 	body          *mark.Scroll
 	head          *fyne.Container
 	open          map[view.Section]bool
+	maps          mapsBeside
 }
 
 func newComparePage(w *window, r view.Route) *comparePage {
@@ -26,6 +27,7 @@ func newComparePage(w *window, r view.Route) *comparePage {
 	for s := view.NotLookedAt; s <= view.StayedSame; s++ {
 		p.open[s] = true
 	}
+	p.maps.page = p
 	n := len(p.file.Visits)
 	if _, ok := p.file.visit(p.after); !ok && n > 0 {
 		p.after = p.file.Visits[n-1].ID
@@ -41,7 +43,14 @@ func newComparePage(w *window, r view.Route) *comparePage {
 
 func (p *comparePage) content() fyne.CanvasObject { return p.root }
 func (p *comparePage) shown()                     { p.win.win.Canvas().Unfocus() }
-func (p *comparePage) left()                      {}
+func (p *comparePage) left()                      { p.maps.close() }
+
+// days returns the two visits, the earlier first.
+func (p *comparePage) days() [2]exam.Visit {
+	a, _ := p.file.visit(p.before)
+	b, _ := p.file.visit(p.after)
+	return [2]exam.Visit{a, b}
+}
 
 func (p *comparePage) help() []view.KeyHelp {
 	return []view.KeyHelp{
@@ -49,6 +58,7 @@ func (p *comparePage) help() []view.KeyHelp {
 		{Keys: "l", Does: words.T("the last two visits")},
 		{Keys: "[ ]", Does: words.T("an earlier or later visit at the left")},
 		{Keys: "a", Does: words.T("show all rows, or only those that changed")},
+		{Keys: "m", Does: words.T("open or close the cord map")},
 	}
 }
 
@@ -79,6 +89,8 @@ func (p *comparePage) typedRune(r rune) bool {
 			p.open[s] = on
 		}
 		p.build()
+	case 'm':
+		p.maps.toggle()
 	default:
 		return false
 	}
@@ -182,6 +194,7 @@ func (p *comparePage) build() {
 			rows = append(rows, measureLine(m, p.win.app.practice.Pounds))
 		}
 	}
+	rows = append(rows, p.maps.section(a, b))
 	p.body.SetContent(mark.Column(0, rows...))
 	p.root.Refresh()
 }
