@@ -17,6 +17,22 @@ import (
 // examMax bounds an exam file.
 const examMax = 8 << 20
 
+// readExam reads an exam file, or standard input for -, and passes its warnings on.
+func (e *env) readExam(file string) (exam.File, error) {
+	data, err := e.readInput(file, examMax)
+	if err != nil {
+		return exam.File{}, err
+	}
+	f, warnings, err := exam.DecodeFile(data)
+	if err != nil {
+		return exam.File{}, fmt.Errorf("%s: %w", file, err)
+	}
+	for _, w := range warnings {
+		e.warn(file + ": " + w)
+	}
+	return f, nil
+}
+
 // examAddCmd records an exam from a file.
 type examAddCmd struct {
 	Patient  string `arg:"" help:"Id or name of the patient."`
@@ -26,16 +42,9 @@ type examAddCmd struct {
 }
 
 func (c *examAddCmd) Run(e *env) error {
-	data, err := e.readInput(c.File, examMax)
+	f, err := e.readExam(c.File)
 	if err != nil {
 		return err
-	}
-	f, warnings, err := exam.DecodeFile(data)
-	if err != nil {
-		return fmt.Errorf("%s: %w", c.File, err)
-	}
-	for _, w := range warnings {
-		e.warn(c.File + ": " + w)
 	}
 	if f.Examined.IsZero() {
 		return fmt.Errorf("%s: %w", c.File, &exam.Invalid{Field: "examined", Allowed: "a time such as 2026-03-02T10:15:00+01:00"})
@@ -341,16 +350,9 @@ type examAmendCmd struct {
 }
 
 func (c *examAmendCmd) Run(e *env) error {
-	data, err := e.readInput(c.File, examMax)
+	f, err := e.readExam(c.File)
 	if err != nil {
 		return err
-	}
-	f, warnings, err := exam.DecodeFile(data)
-	if err != nil {
-		return fmt.Errorf("%s: %w", c.File, err)
-	}
-	for _, w := range warnings {
-		e.warn(c.File + ": " + w)
 	}
 	if strings.TrimSpace(c.Reason) == "" {
 		return usage("%s", words.T("give a reason to amend a closed visit"))
