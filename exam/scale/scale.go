@@ -304,29 +304,11 @@ type question struct {
 // certain is a question with one answer.
 func certain(x int) question { return question{options: []int{x}} }
 
-// ladder tries every combination of answers and gathers the levels that may result, and which
-// open questions matter.
-func ladder(x Value, qs []question, level func(a []int) (l float64, ok bool)) Value {
-	answers := make([]int, len(qs))
-	// walk tries the combinations until each returns false.
-	var walk func(k, skip int, each func() bool) bool
-	walk = func(k, skip int, each func() bool) bool {
-		if k == len(qs) {
-			return each()
-		}
-		if k == skip {
-			return walk(k+1, skip, each)
-		}
-		for _, o := range qs[k].options {
-			answers[k] = o
-			if !walk(k+1, skip, each) {
-				return false
-			}
-		}
-		return true
-	}
-	walk(0, -1, func() bool {
-		if l, ok := level(answers); ok && !slices.Contains(x.Levels, l) {
+// ladder gathers the levels that may result from the answers that are possible, and which open
+// questions matter. level asks for the answers it needs, by their place in qs.
+func ladder(x Value, qs []question, level func(ask func(k int) int) (l float64, ok bool)) Value {
+	ways(qs, func(ask func(k int) int) bool {
+		if l, ok := level(ask); ok && !slices.Contains(x.Levels, l) {
 			x.Levels = append(x.Levels, l)
 		}
 		return true
@@ -343,15 +325,20 @@ func ladder(x Value, qs []question, level func(a []int) (l float64, ok bool)) Va
 		if len(q.options) < 2 {
 			continue
 		}
-		matters := false
-		walk(0, k, func() bool {
-			answers[k] = q.options[0]
-			first, had := level(answers)
-			for _, o := range q.options[1:] {
-				answers[k] = o
-				if l, ok := level(answers); l != first || ok != had {
-					matters = true
+		matters := false // whether another answer to it alone gives another level
+		given := 0
+		ways(qs, func(ask func(k int) int) bool {
+			with := func(j int) int {
+				if j == k {
+					return given
 				}
+				return ask(j)
+			}
+			given = q.options[0]
+			first, had := level(with)
+			for _, given = range q.options[1:] {
+				l, ok := level(with)
+				matters = matters || l != first || ok != had
 			}
 			return !matters
 		})
@@ -364,6 +351,42 @@ func ladder(x Value, qs []question, level func(a []int) (l float64, ok bool)) Va
 		}
 	}
 	return x
+}
+
+// ways calls each once for every way through the open questions, until it returns false. It branches only at the questions that
+// are asked: a score of ten questions asks three or four of them on its way to a level.
+func ways(qs []question, each func(ask func(k int) int) bool) {
+	var asked [16]struct{ question, option int } // the way taken; no score has more questions
+	n, at := 0, 0
+	ask := func(k int) int {
+		if len(qs[k].options) == 1 {
+			return qs[k].options[0]
+		}
+		for i := range at { // asked before on this way
+			if asked[i].question == k {
+				return qs[k].options[asked[i].option]
+			}
+		}
+		if at == n {
+			asked[n].question, asked[n].option = k, 0
+			n++
+		}
+		at++
+		return qs[k].options[asked[at-1].option]
+	}
+	for {
+		at = 0
+		if !each(ask) {
+			return
+		}
+		for n > 0 && asked[n-1].option+1 == len(qs[asked[n-1].question].options) {
+			n--
+		}
+		if n == 0 {
+			return
+		}
+		asked[n-1].option++
+	}
 }
 
 func at(i exam.Item, s exam.Site) string {
@@ -499,21 +522,21 @@ func frankel(s Scale, v exam.Visit, x Value) (Value, bool) {
 			return x, true
 		}
 	}
-	x = ladder(x, []question{moves, deep, surface, walks, normal, pain}, func(a []int) (float64, bool) {
-		moves, deep, surface, walks, normal, pain := a[0] == 1, a[1] == 1, a[2] == 1, a[3] == 1, a[4] == 1, a[5] == 1
+	x = ladder(x, []question{moves, deep, surface, walks, normal, pain}, func(ask func(int) int) (float64, bool) {
+		const moves, deep, surface, walks, normal, pain = 0, 1, 2, 3, 4, 5
 		level := 0.0
-		switch {
-		case !moves && surface:
+		switch is := func(k int) bool { return ask(k) == 1 }; {
+		case !is(moves) && is(surface):
 			level = 2 // felt on the surface is felt deeply
-		case !moves && deep:
+		case !is(moves) && is(deep):
 			level = 1
-		case !moves:
+		case !is(moves):
 			level = 0
-		case !walks:
+		case !is(walks):
 			level = 3
-		case !normal:
+		case !is(normal):
 			level = 4
-		case pain:
+		case is(pain):
 			level = 5
 		default:
 			level = 6
@@ -671,27 +694,29 @@ func openField(v exam.Visit, x Value) (Value, bool) {
 	if !tested && !t1 {
 		return Value{}, false
 	}
-	x = ladder(x, []question{moves, strong, ataxic, bear[0], bear[1], deep, tail, joints, swing, mistakes}, func(a []int) (float64, bool) {
-		moves, strong, ataxic, deep, tail := a[0] == 1, a[1] == 1, a[2] == 1, a[5] == 1, a[6] == 1
-		bears := max(a[3], a[4])
-		switch {
-		case !moves && tail:
-			return 2, true
-		case !moves && deep:
-			return 1, true
-		case !moves:
+	x = ladder(x, []question{moves, strong, ataxic, bear[0], bear[1], deep, tail, joints, swing, mistakes}, func(ask func(int) int) (float64, bool) {
+		const moves, strong, ataxic, left, right, deep, tail, joints, swing, mistakes = 0, 1, 2, 3, 4, 5, 6, 7, 8, 9
+		if ask(moves) == 0 {
+			switch {
+			case ask(tail) == 1:
+				return 2, true
+			case ask(deep) == 1:
+				return 1, true
+			}
 			return 0, true
-		case bears == none && a[7] < 2:
+		}
+		switch bears := max(ask(left), ask(right)); {
+		case bears == none && ask(joints) < 2:
 			return 3, true
 		case bears == none:
-			return 4 + float64(a[8]), true
+			return 4 + float64(ask(swing)), true
 		case bears < allSteps:
 			return 5 + float64(bears), true // 6, 7, 8
-		case !strong:
-			return 11 - float64(a[9]), true
-		case ataxic && a[9] >= 1:
+		case ask(strong) == 0:
+			return 11 - float64(ask(mistakes)), true
+		case ask(ataxic) == 1 && ask(mistakes) >= 1:
 			return 12, true
-		case ataxic:
+		case ask(ataxic) == 1:
 			return 13, true
 		}
 		return 14, true
@@ -761,17 +786,18 @@ func texasLimb(v exam.Visit, l exam.Site) (Value, bool) {
 	paw := ask(exam.PawPlacement, l, 2)
 	deep, t1 := feeling(v, exam.DeepPain, []exam.Site{l})
 	surface, t2 := feeling(v, exam.SuperficialPain, []exam.Site{l})
-	x := ladder(Value{}, []question{motor, walks, ataxia, clears, paw, deep, surface}, func(a []int) (float64, bool) {
+	x := ladder(Value{}, []question{motor, walks, ataxia, clears, paw, deep, surface}, func(ask func(int) int) (float64, bool) {
+		const motor, walks, ataxia, clears, paw, deep, surface = 0, 1, 2, 3, 4, 5, 6
 		gait := 0
-		switch {
-		case a[0] == 0:
-		case a[0] == 1 && a[1] < 2:
-			gait = min(a[3], 2) + 1 // paw clears the ground: never 1, now and then 2, in most swings 3
-		case a[0] < 4 && a[1] < 2:
+		switch strength := ask(motor); {
+		case strength == 0:
+		case strength == 1 && ask(walks) < 2:
+			gait = min(ask(clears), 2) + 1 // paw clears the ground: never 1, now and then 2, in most swings 3
+		case strength < 4 && ask(walks) < 2:
 			gait = 3 // it bears weight, and the animal does not walk alone
 		default:
 			// the worse of paresis (grade 3 is mild) and ataxia
-			worst := max(a[2], 4-a[0])
+			worst := max(ask(ataxia), 4-strength)
 			switch {
 			case worst >= 2:
 				gait = 4
@@ -783,12 +809,12 @@ func texasLimb(v exam.Visit, l exam.Site) (Value, bool) {
 		}
 		feels := 0
 		switch {
-		case a[6] == 1:
+		case ask(surface) == 1:
 			feels = 2
-		case a[5] == 1:
+		case ask(deep) == 1:
 			feels = 1
 		}
-		return float64(gait + a[4] + feels), true
+		return float64(gait + ask(paw) + feels), true
 	})
 	return x, tested || t1 || t2
 }
