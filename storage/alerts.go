@@ -8,7 +8,7 @@ func alerts(r Record) []SummaryAlert {
 	if len(r.Visits) == 0 {
 		return nil
 	}
-	flags := alert.Scan(r.Patient, r.Visits, r.Visits[len(r.Visits)-1].Examined)
+	flags := alert.Raised(r.Patient, r.Visits, r.Visits[len(r.Visits)-1].Examined)
 	out := make([]SummaryAlert, 0, len(flags))
 	for _, f := range flags {
 		out = append(out, SummaryAlert{Rule: f.Rule, Urgency: f.Urgency.String(), Answered: !f.Open()})

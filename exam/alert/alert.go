@@ -99,49 +99,83 @@ type scene struct {
 	p       exam.Patient
 	today   exam.Visit
 	earlier []exam.Visit // oldest first, blind repeats left out
-	tracks  tracks       // of earlier and of later visits
+	tracks  *tracks      // of earlier and of later visits
 	skip    int          // index of the visit that today's repeats, -1 for none
+	brief   bool         // that a flag is raised is wanted, not what to say of it
 }
 
 // tracks holds, for each cell of item and site, the visits in which it was tested, oldest first.
-type tracks [][]point
+type tracks struct {
+	points []point
+	ends   [slots]int32 // of the cell's points
+}
 
 // slot is a cell's place in tracks; sites are fewer than 32.
 func slot(i exam.Item, s exam.Site) int { return int(i)<<5 | int(s)&31 }
 
+const slots = exam.ItemCount << 5
+
 type point struct {
-	visit int // index into the series without blind repeats
+	visit int32 // index into the series without blind repeats
 	grade int8
+}
+
+// of returns a cell's points.
+func (t *tracks) of(at int) []point {
+	from := int32(0)
+	if at > 0 {
+		from = t.ends[at-1]
+	}
+	return t.points[from:t.ends[at]]
 }
 
 // trackOf indexes a series once, so that each rule finds the last known grade without a search
 // through every visit. Of several digits or joints of one cell the grade furthest from normal counts.
-func trackOf(vs []exam.Visit) tracks {
-	t := make(tracks, exam.ItemCount<<5)
-	for k, v := range vs {
-		for _, f := range v.Findings {
-			g, ok := f.Result.Grade()
-			if !ok || int(f.Item) >= exam.ItemCount {
-				continue
+func trackOf(vs []exam.Visit) *tracks {
+	t := &tracks{}
+	var last [slots]int32 // the visit that tested a cell last, counted from 1
+	each := func(do func(at int, k int32, f *exam.Finding, g int8)) {
+		clear(last[:])
+		for k := range vs {
+			for n := range vs[k].Findings {
+				f := &vs[k].Findings[n]
+				if g, ok := f.Result.Grade(); ok && int(f.Item) < exam.ItemCount {
+					at := slot(f.Item, f.Site)
+					do(at, int32(k), f, g)
+					last[at] = int32(k) + 1
+				}
 			}
-			at := slot(f.Item, f.Site)
-			if n := len(t[at]); n > 0 && t[at][n-1].visit == k {
-				t[at][n-1].grade, _ = v.Grade(f.Item, f.Site)
-				continue
-			}
-			t[at] = append(t[at], point{k, g})
 		}
 	}
+	each(func(at int, k int32, _ *exam.Finding, _ int8) {
+		if last[at] != k+1 {
+			t.ends[at]++
+		}
+	})
+	sum := int32(0)
+	for at, n := range t.ends { // from here on where the next point of the cell goes
+		t.ends[at] = sum
+		sum += n
+	}
+	t.points = make([]point, sum)
+	each(func(at int, k int32, f *exam.Finding, g int8) {
+		if last[at] == k+1 {
+			t.points[t.ends[at]-1].grade, _ = vs[k].Grade(f.Item, f.Site)
+			return
+		}
+		t.points[t.ends[at]] = point{k, g}
+		t.ends[at]++
+	})
 	return t
 }
 
 // last returns the last known grade of an item at a site before today, and in which visit.
 func (c *scene) last(i exam.Item, s exam.Site) (grade int8, visit int, ok bool) {
-	ps := c.tracks[slot(i, s)]
-	at, _ := slices.BinarySearchFunc(ps, len(c.earlier), func(p point, n int) int { return cmp.Compare(p.visit, n) })
+	ps := c.tracks.of(slot(i, s))
+	at, _ := slices.BinarySearchFunc(ps, int32(len(c.earlier)), func(p point, n int32) int { return cmp.Compare(p.visit, n) })
 	for at--; at >= 0; at-- {
-		if ps[at].visit != c.skip {
-			return ps[at].grade, ps[at].visit, true
+		if k := int(ps[at].visit); k != c.skip {
+			return ps[at].grade, k, true
 		}
 	}
 	return 0, -1, false
@@ -167,7 +201,17 @@ func (c *scene) latest() int {
 }
 
 // grade returns today's grade.
-func (c *scene) grade(i exam.Item, s exam.Site) (int8, bool) { return c.today.Grade(i, s) }
+func (c *scene) grade(i exam.Item, s exam.Site) (int8, bool) {
+	if !c.today.RepeatOf.IsZero() { // not in the tracks
+		return c.today.Grade(i, s)
+	}
+	ps := c.tracks.of(slot(i, s))
+	at, ok := slices.BinarySearchFunc(ps, int32(len(c.earlier)), func(p point, n int32) int { return cmp.Compare(p.visit, n) })
+	if !ok {
+		return 0, false
+	}
+	return ps[at].grade, true
+}
 
 // known returns today's grade or, where the item was not tested today, the last known one.
 func (c *scene) known(i exam.Item, s exam.Site) (int8, bool) {
@@ -199,6 +243,9 @@ func (c *scene) isNew(i exam.Item, s exam.Site) (visit int, yes bool) {
 
 // say names a finding of today with what it was before.
 func (c *scene) say(i exam.Item, s exam.Site) string {
+	if c.brief {
+		return ""
+	}
 	name := i.String()
 	if s != exam.Midline {
 		name += " at " + s.String()
@@ -256,7 +303,17 @@ func (c *scene) level(in func(v exam.Vertebra) bool) bool {
 // bounds those two weeks. Visits may come in any order; a blind repeat of an exam is not compared
 // with the exam it repeats.
 func Scan(p exam.Patient, visits []exam.Visit, now time.Time) []Flag {
+	return newSeries(p, visits).latest(now)
+}
+
+// Raised is Scan for lists of many animals: the same flags, without what was seen, since when and what to do.
+func Raised(p exam.Patient, visits []exam.Visit, now time.Time) []Flag {
 	r := newSeries(p, visits)
+	r.brief = true
+	return r.latest(now)
+}
+
+func (r *series) latest(now time.Time) []Flag {
 	if len(r.all) == 0 {
 		return nil
 	}
@@ -320,7 +377,8 @@ type series struct {
 	all    []exam.Visit
 	plain  []exam.Visit // without blind repeats: what later visits are compared with
 	upTo   []int        // upTo[k] is how many of plain lie before all[k]
-	tracks tracks
+	tracks *tracks
+	brief  bool // see scene
 }
 
 func newSeries(p exam.Patient, visits []exam.Visit) *series {
@@ -350,7 +408,7 @@ func sortFlags(fs []Flag) {
 
 // scan runs every rule on visit k against those before it.
 func (r *series) scan(k int) []Flag {
-	c := &scene{p: r.p, today: r.all[k], earlier: r.plain[:r.upTo[k]], tracks: r.tracks, skip: -1}
+	c := &scene{p: r.p, today: r.all[k], earlier: r.plain[:r.upTo[k]], tracks: r.tracks, skip: -1, brief: r.brief}
 	if again := r.all[k].RepeatOf; !again.IsZero() {
 		c.skip = slices.IndexFunc(c.earlier, func(v exam.Visit) bool { return v.ID == again })
 	}
@@ -369,15 +427,21 @@ func (r *series) scan(k int) []Flag {
 		var seen []string
 		from := -1
 		for _, h := range hits {
-			seen = append(seen, h.seen)
+			if !c.brief {
+				seen = append(seen, h.seen)
+			}
 			f.Urgency = max(f.Urgency, h.urgency)
 			from = max(from, h.from)
 		}
-		f.Seen = strings.Join(seen, "; ")
+		if !c.brief {
+			f.Seen = strings.Join(seen, "; ")
+		}
 		if from >= 0 {
 			f.From, f.FromExaminer = c.earlier[from].Examined, c.earlier[from].Examiner
 		}
-		f.Do = toDo(f)
+		if !c.brief {
+			f.Do = toDo(f)
+		}
 		for i := range c.today.Answers {
 			if a := c.today.Answers[i]; a.Rule == r.Key {
 				f.Answered = &a
@@ -424,6 +488,9 @@ func (c *scene) untested(r Rule) ([]hit, bool) {
 			}
 			if !f.Abnormal() {
 				continue
+			}
+			if c.brief {
+				return []hit{{"", k, Soon}}, true // one is enough
 			}
 			name := i.String()
 			if s != exam.Midline {

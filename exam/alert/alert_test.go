@@ -554,3 +554,30 @@ func TestRulesAreSourced(t *testing.T) {
 		require.True(t, len(exam.SourcesIn(r.Source)) > 0 || strings.Contains(r.Source, "from memory"), "%s: %s", r.Key, r.Source)
 	}
 }
+
+// TestRaisedIsScan: lists and screens tell the same flags.
+func TestRaisedIsScan(t *testing.T) {
+	vs := long()
+	r := rand.New(rand.NewPCG(3, 1))
+	raised := 0
+	for range 200 {
+		from := r.IntN(len(vs) - 12)
+		some := slices.Clone(vs[from : from+2+r.IntN(10)])
+		for k := range some { // each exam looks at some of the cells
+			some[k].Findings = slices.DeleteFunc(slices.Clone(some[k].Findings), func(exam.Finding) bool { return r.IntN(3) == 0 })
+			if k > 0 && r.IntN(5) == 0 {
+				some[k].RepeatOf = some[k-1].ID
+			}
+		}
+		now := some[len(some)-1].Examined
+		full, brief := Scan(dog(disc), some, now), Raised(dog(disc), some, now)
+		require.Len(t, brief, len(full))
+		for k, f := range full {
+			b := brief[k]
+			require.Equal(t, []any{f.Rule, f.Urgency, f.Visit, f.CannotRuleOut, f.Open()}, []any{b.Rule, b.Urgency, b.Visit, b.CannotRuleOut, b.Open()})
+			require.Empty(t, b.Seen)
+			raised++
+		}
+	}
+	require.Greater(t, raised, 500)
+}

@@ -316,7 +316,9 @@ func drop(c *scene) (out []hit) {
 			if sc == scale.OpenField {
 				fell = stage(high) < stage(low)
 			}
-			if fell {
+			if fell && c.brief {
+				out = append(out, hit{"", k, urgency})
+			} else if fell {
 				now, _ := scale.Compute(sc, c.today, exam.NoSite)
 				then, _ := scale.Compute(sc, c.earlier[k], exam.NoSite)
 				out = append(out, hit{fmt.Sprintf("%s: %s (before: %s)", sc.Info().Name, now, then), k, urgency})
