@@ -260,7 +260,7 @@ func (p pen) laneLabels(x0 vg.Length, pl lanePlan, y scaleY, s Series, top, ends
 		p.line(pl.plot.Min.X, y.at(e.v), pl.plot.Max.X, y.at(e.v), 0.4, pal.Line)
 		if y.y1-y.y0 > size {
 			if e.word == "" {
-				e.word = number(e.v)
+				e.word = p.st.number(e.v)
 			}
 			p.middle(pl.plot.Min.X-size*0.4, y.at(e.v), e.word, size*0.85, false, pal.Soft, 1)
 		}

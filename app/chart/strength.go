@@ -69,7 +69,7 @@ func (s Strength) Draw(c draw.Canvas, st Style) {
 		v := x0 * math.Pow(10, float64(i))
 		p.line(px(v), box.Min.Y, px(v), box.Max.Y, 0.5, st.Palette.Line)
 		if i%step == 0 {
-			p.text(px(v), box.Min.Y-size*1.25, number(v), size, false, st.Palette.Soft, 0.5)
+			p.text(px(v), box.Min.Y-size*1.25, st.number(v), size, false, st.Palette.Soft, 0.5)
 		}
 	}
 	last := box.Min.Y - size*2
@@ -81,7 +81,7 @@ func (s Strength) Draw(c draw.Canvas, st Style) {
 			}
 			last = py(v)
 			p.line(box.Min.X, last, box.Max.X, last, 0.5, st.Palette.Line)
-			p.middle(box.Min.X-size*0.4, last, number(v), size, false, st.Palette.Soft, 1)
+			p.middle(box.Min.X-size*0.4, last, st.number(v), size, false, st.Palette.Soft, 1)
 		}
 	}
 	p.text((box.Min.X+box.Max.X)/2, r.Min.Y+size*0.4, words.In(st.Lang, "pulse width, ms"), size, false, st.Palette.Soft, 0.5)

@@ -292,13 +292,13 @@ func (c *clinical) signalment() string {
 	}
 	parts = append(parts, sex)
 	if y, ok := pt.AgeYears(c.now.Examined); ok {
-		parts = append(parts, words.In(lang, "%.1f years", y))
+		parts = append(parts, words.In(lang, "%s years", decimal(lang, y, 1)))
 	}
 	if kg := c.kg(); kg > 0 {
 		if c.in.Practice.Pounds {
-			parts = append(parts, words.In(lang, "%.1f lb", kg*2.20462)) // 1 lb = 0.45359237 kg
+			parts = append(parts, decimal(lang, kg*2.20462, 1)+" lb") // 1 lb = 0.45359237 kg
 		} else {
-			parts = append(parts, words.In(lang, "%.1f kg", kg))
+			parts = append(parts, decimal(lang, kg, 1)+" kg")
 		}
 	}
 	return upperFirst(strings.Join(parts, ", "))
@@ -393,7 +393,7 @@ func (c *clinical) medicines() string {
 		out = append(out, s)
 	}
 	for _, d := range c.now.Doses {
-		out = append(out, words.In(c.in.lang(), "%[1]s given %[2]g h before", d.Medicine, d.Hours))
+		out = append(out, words.In(c.in.lang(), "%[1]s given %[2]s h before", d.Medicine, decimal(c.in.lang(), d.Hours, -1)))
 	}
 	return strings.Join(out, "; ")
 }
@@ -927,7 +927,7 @@ func (c *clinical) measures(p *page, x, w float64) {
 		if !ok || len(c.in.Visits) == 1 {
 			return "–"
 		}
-		return strconv.FormatFloat(m.Value, 'g', 5, 64)
+		return figure(p.lang, m.Value)
 	}
 	var rows [][]string
 	for _, m := range c.now.Measures {
@@ -946,7 +946,7 @@ func (c *clinical) measures(p *page, x, w float64) {
 		if okB && len(c.in.Visits) > 1 {
 			verdict = c.verdict(b, m)
 		}
-		rows = append(rows, []string{name, num(a, okA), num(b, okB), strconv.FormatFloat(m.Value, 'g', 5, 64), verdict})
+		rows = append(rows, []string{name, num(a, okA), num(b, okB), figure(p.lang, m.Value), verdict})
 	}
 	p.table(x, w, []string{words.In(p.lang, "Measure"), words.In(p.lang, "first"), words.In(p.lang, "last"), words.In(p.lang, "today"), words.In(p.lang, "change")}, rows, 10,
 		func(n int) string { return c.in.text(textMore, n) })
@@ -978,7 +978,7 @@ func (c *clinical) treatments(p *page, x, w float64) {
 			name += " " + words.OfIn(lang, strings.ReplaceAll(t.Site, "-", " "))
 		}
 		if t.Minutes > 0 {
-			name += " " + words.In(lang, "%g min", t.Minutes)
+			name += " " + words.In(lang, "%s min", decimal(lang, t.Minutes, -1))
 		}
 		if t.Params != "" {
 			name += " (" + t.Params + ")"

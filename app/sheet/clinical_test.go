@@ -4,6 +4,7 @@ import (
 	"bytes"
 	"strings"
 	"testing"
+	"time"
 
 	"github.com/stretchr/testify/assert"
 	"github.com/stretchr/testify/require"
@@ -170,4 +171,41 @@ func TestGridShowsThreeDays(t *testing.T) {
 		normal = normal || r.rank == 2
 		assert.False(t, normal && r.rank < 2, "abnormal rows first")
 	}
+}
+
+// TestFiguresAndDaysAsTheLanguageWritesThem: decimal commas, the French first of the month and the
+// Spanish «de», as the Unicode CLDR gives them for dates in full (patterns of type long).
+func TestFiguresAndDaysAsTheLanguageWritesThem(t *testing.T) {
+	first := time.Date(2026, time.May, 1, 9, 0, 0, 0, zone)
+	for _, tt := range []struct{ lang, day, second, month, kg, years, given string }{
+		{"en", "1 May 2026", "2 May 2026", "May 2026", "7.3 kg", "7.0 years", "1.5 h"},
+		{"de", "1. Mai 2026", "2. Mai 2026", "Mai 2026", "7,3 kg", "7,0 Jahre", "1,5 h"},
+		{"fr", "1er mai 2026", "2 mai 2026", "mai 2026", "7,3 kg", "7,0 ans", "1,5 h"},
+		{"es", "1 de mayo de 2026", "2 de mayo de 2026", "mayo de 2026", "7,3 kg", "7,0 años", "1,5 h"},
+	} {
+		t.Run(tt.lang, func(t *testing.T) {
+			assert.Equal(t, tt.day, dateWords(tt.lang, "2026-05-01"))
+			assert.Equal(t, tt.second, dateWords(tt.lang, "2026-05-02"))
+			assert.Equal(t, tt.month, dateWords(tt.lang, "2026-05"))
+			in := patients()["recovery"]
+			in.Patient.Weights = []exam.WeightPoint{{At: first, Kg: 7.3}}
+			v := &in.Visits[len(in.Visits)-1]
+			v.Doses = []exam.DoseGiven{{Medicine: "Gabapentin", Hours: 1.5}}
+			v.Measures = []exam.Measured{{Measure: exam.Temperature, Value: 38.6}, {Measure: exam.StandTime, Value: 12}}
+			in.Options.Lang = tt.lang
+			doc, err := Clinical(in, nil)
+			require.NoError(t, err)
+			text := textOf(t, doc.PDF)
+			for _, want := range []string{tt.kg, tt.years, tt.given} {
+				assert.Contains(t, text, want)
+			}
+			wrong, right := " 38.6 ", " 38,6 "
+			if tt.lang == "en" {
+				wrong, right = right, wrong
+			}
+			assert.Contains(t, text, right)
+			assert.NotContains(t, text, wrong)
+		})
+	}
+	assert.Equal(t, "Temperatur 40,2 °C", Say("de", "temperature 40.2 °C"))
 }

@@ -217,7 +217,7 @@ func whole(name string, v int) []fhirExt {
 	return []fhirExt{{URL: fhirBase + name, ValueInteger: &v}}
 }
 
-func decimal(name string, v float64) []fhirExt {
+func decimalExt(name string, v float64) []fhirExt {
 	if v == 0 {
 		return nil
 	}
@@ -517,13 +517,13 @@ func (w *fhirWriter) visit(p exam.Patient, v exam.Visit) {
 		}
 		o.Note = note(m.Note)
 		o.ValueQuantity = &fhirQuantity{&m.Value, m.Measure.Info().Unit, ucumSystem, UCUM(m.Measure)}
-		o.Extension = slices.Concat(str("joint", m.Joint.String()), str("motion", m.Motion), decimal("at", m.At), str("position", m.Position), yes("clipped", m.Clipped),
-			str("end-feel", m.EndFeel), str("variant", m.Variant), decimal("best-end", m.BestEnd))
+		o.Extension = slices.Concat(str("joint", m.Joint.String()), str("motion", m.Motion), decimalExt("at", m.At), str("position", m.Position), yes("clipped", m.Clipped),
+			str("end-feel", m.EndFeel), str("variant", m.Variant), decimalExt("best-end", m.BestEnd))
 		w.add(derived(v.ID, "measure "+m.Key()), o)
 	}
 	for i, t := range v.Treatments {
 		r := fhirResource{ResourceType: "Procedure", Status: "completed", Code: code("treatment", t.Kind, ""), Subject: ref(p.ID), Encounter: ref(v.ID), Performed: stamp(v.Examined),
-			Extension: slices.Concat(str("params", t.Params), decimal("minutes", t.Minutes), str("override", t.Override), original(t.ID))}
+			Extension: slices.Concat(str("params", t.Params), decimalExt("minutes", t.Minutes), str("override", t.Override), original(t.ID))}
 		if t.Site != "" {
 			r.BodySite = []fhirConcept{*code("site", t.Site, "")}
 		}

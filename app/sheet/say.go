@@ -116,8 +116,11 @@ func Say(lang, english string) string {
 	if english == "" || lang == "" && words.Language() == "en" || lang != "" && baseTag(lang) == "en" {
 		return english
 	}
-	return say(lang, english, 0)
+	return decimalPoint.ReplaceAllStringFunc(say(lang, english, 0), func(s string) string { return words.Decimal(lang, s) })
 }
+
+// decimalPoint is a number with a decimal point.
+var decimalPoint = regexp.MustCompile(`\d+\.\d+`)
 
 const deepest = 6
 

@@ -11,6 +11,7 @@ package sheet
 import (
 	"errors"
 	"fmt"
+	"strconv"
 	"strings"
 	"time"
 
@@ -244,7 +245,26 @@ func colon(lang string) string {
 
 // dayWords writes a day as people say it: 2 March 2026.
 func dayWords(lang string, t time.Time) string {
-	return words.In(lang, "%[1]d %[2]s %[3]d", t.Day(), strings.TrimSuffix(month(lang, t.Month()), " (month)"), t.Year())
+	return words.In(lang, "%[1]s %[2]s %[3]d", dayOfMonth(lang, t.Day()), strings.TrimSuffix(month(lang, t.Month()), " (month)"), t.Year())
+}
+
+// dayOfMonth writes a day of a month as it is said in full: French counts the first as an ordinal.
+func dayOfMonth(lang string, day int) string {
+	if day == 1 && baseTag(lang) == "fr" {
+		return "1er"
+	}
+	return strconv.Itoa(day)
+}
+
+// decimal writes a number with at most places decimals, or with as many as it has where places
+// is negative, and with the decimal sign of the language.
+func decimal(lang string, x float64, places int) string {
+	return words.Decimal(lang, strconv.FormatFloat(x, 'f', places, 64))
+}
+
+// figure writes a measured value with the five digits that count.
+func figure(lang string, x float64) string {
+	return words.Decimal(lang, strconv.FormatFloat(x, 'g', 5, 64))
 }
 
 // dateWords writes a date that may lack its day or month.

@@ -163,10 +163,7 @@ func figure(x float64) string {
 	if strings.Contains(s, ".") {
 		s = strings.TrimRight(strings.TrimRight(s, "0"), ".")
 	}
-	if words.Language() != "en" {
-		s = strings.Replace(s, ".", ",", 1)
-	}
-	return s
+	return words.Decimal("", s)
 }
 
 func intervalWords(i stim.Interval, unit string) string {

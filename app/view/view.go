@@ -60,11 +60,7 @@ func DateWords(d exam.Date) string {
 // number writes a value with at most one decimal and no needless zero, with the decimal sign of
 // the language in use.
 func number(x float64) string {
-	s := strconv.FormatFloat(math.Round(x*10)/10, 'f', -1, 64)
-	if words.Language() != "en" {
-		s = strings.Replace(s, ".", ",", 1)
-	}
-	return s
+	return words.Decimal("", strconv.FormatFloat(math.Round(x*10)/10, 'f', -1, 64))
 }
 
 // joinWords joins with commas, the last with «and».

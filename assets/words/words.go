@@ -124,6 +124,16 @@ func NIn(tag string, n int, one, other string, args ...any) string {
 	return fmt.Sprintf(text, args...)
 }
 
+// Decimal writes a number that stands in its English form with the decimal sign of a language: the
+// point in English, the comma in every other language there are texts for (CLDR). The empty tag is the
+// language in use.
+func Decimal(tag, number string) string {
+	if lookup(tag) == nil {
+		return number
+	}
+	return strings.Replace(number, ".", ",", 1)
+}
+
 func find(tag, text string) string {
 	if c := lookup(tag); c != nil {
 		if t, ok := c.texts[text]; ok && t != "" {
