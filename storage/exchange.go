@@ -603,6 +603,7 @@ func (s *Store) absorb(ctx context.Context, x change.Stream) error {
 	}
 	s.mu.Lock()
 	*s.state.stream(x) = private.Streams[0].clone()
+	s.moved++
 	s.mu.Unlock()
 	return nil
 }

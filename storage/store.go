@@ -99,6 +99,7 @@ type Store struct {
 	changed  map[exam.ID]map[recordKey]bool // what the index does not have yet
 	lastOwn  map[exam.ID]uint64             // the last change to a patient in this device's stream
 	behind   int                            // changes that the index does not have yet
+	moved    int                            // times that a stream was read further without any change for the index
 	problems []Problem
 	shut     bool
 	covered  bool // at the start the index held all that had been written
@@ -573,7 +574,7 @@ func (s *Store) flush() error {
 	s.follow.Lock()
 	defer s.follow.Unlock()
 	s.mu.RLock()
-	x, behind := s.idx, s.behind
+	x, behind, moved := s.idx, s.behind, s.moved
 	st := s.state.clone()
 	type dirty struct {
 		patient exam.ID
@@ -588,7 +589,7 @@ func (s *Store) flush() error {
 		ds = append(ds, d)
 	}
 	s.mu.RUnlock()
-	if len(ds) == 0 {
+	if len(ds) == 0 && moved == 0 {
 		return nil
 	}
 	if err := disk.At(s.fs, "index commit", x.path); err != nil {
@@ -616,6 +617,7 @@ func (s *Store) flush() error {
 	s.mu.Lock()
 	defer s.mu.Unlock()
 	s.behind -= behind
+	s.moved -= moved
 	s.state.Records, s.state.Patients, s.state.Places, s.state.Pages = st.Records, st.Patients, st.Places, st.Pages
 	for _, d := range ds {
 		for _, r := range d.records {

@@ -365,6 +365,12 @@ func (fl *follower) piece(p piece, st *streamState) (b change.Batch, news bool, 
 		return b, false, "an entry cannot be opened: " + o.err.Error()
 	}
 	b = o.batch
+	if b.Stream != p.seg.stream { // the second branch of a fork goes under its own name
+		b.Stream = p.seg.stream
+		for i := range b.Changes {
+			b.Changes[i].Stream = p.seg.stream
+		}
+	}
 	if limit, ok := fl.limits[p.seg.stream.Name()]; ok && b.Last() > limit {
 		// It came after the device was removed: it is kept, and counts once a person admits it.
 		st.take(p.Frame.Header, o.hash, b.Changes[0].Time, b.Changes[0].Time)
@@ -382,12 +388,6 @@ func (fl *follower) piece(p piece, st *streamState) (b change.Batch, news bool, 
 		began, ended = min(began, c.Time), max(ended, c.Time)
 	}
 	st.take(p.Frame.Header, o.hash, began, ended)
-	if b.Stream != p.seg.stream { // the second branch of a fork goes under its own name
-		b.Stream = p.seg.stream
-		for i := range b.Changes {
-			b.Changes[i].Stream = p.seg.stream
-		}
-	}
 	return b, true, what
 }
 

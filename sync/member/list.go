@@ -38,7 +38,7 @@ type Removal struct {
 	By        key.Verifier
 	Reason    string
 	Time      change.HLC
-	Accepted  map[change.Stream]uint64
+	Accepted  []Accepted
 	Confirmed bool
 }
 
@@ -310,10 +310,7 @@ func (l *List) world(in map[ID]bool) world {
 		}
 		for _, id := range standing(v, known) {
 			s := l.all[id]
-			r := Removal{ID: id, By: s.Signer, Reason: s.Reason, Time: s.Time, Accepted: map[change.Stream]uint64{}, Confirmed: confirmed[id]}
-			for _, a := range s.Accepted {
-				r.Accepted[change.Stream{Device: a.Device, Site: a.Site}] = a.Last
-			}
+			r := Removal{ID: id, By: s.Signer, Reason: s.Reason, Time: s.Time, Accepted: s.Accepted, Confirmed: confirmed[id]}
 			d.Removals = append(d.Removals, r)
 		}
 		for _, i := range d.Incarnations {
@@ -385,9 +382,10 @@ func (l *List) NameOf(i change.Incarnation) string {
 	return ""
 }
 
-// Limit returns the last number of a stream that counts, and false if all of it does. What
+// Limit returns the last number of a stream that may count, and false if all of it does. What
 // lies beyond is in quarantine: kept and shown, and part of the record only once a person
-// admits it.
+// admits it. Of a stream that forked, only the branches whose chain hashes the removal names
+// count: see Removal.
 func (l *List) Limit(s change.Stream) (uint64, bool) {
 	l.mu.RLock()
 	defer l.mu.RUnlock()
@@ -404,7 +402,13 @@ func (l *List) Limit(s change.Stream) (uint64, bool) {
 	}
 	limit := ^uint64(0)
 	for _, r := range d.Removals {
-		limit = min(limit, r.Accepted[s])
+		n := uint64(0)
+		for _, a := range r.Accepted {
+			if a.Stream() == s {
+				n = max(n, a.Last)
+			}
+		}
+		limit = min(limit, n)
 	}
 	return limit, true
 }

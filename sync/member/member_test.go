@@ -11,6 +11,7 @@ import (
 	"time"
 
 	"filippo.io/age"
+	"github.com/fxamacker/cbor/v2"
 	"github.com/stretchr/testify/require"
 
 	"cordwalk.example/cordwalk/exam"
@@ -452,4 +453,23 @@ func FuzzTake(f *testing.F) {
 			t.Fatal("a request that nobody made was taken")
 		}
 	})
+}
+
+// Removals of the earliest form, which name a number without a chain hash, are read as they are.
+func TestAcceptedWithoutAHash(t *testing.T) {
+	a, _ := found(t, "a")
+	b := join(a, "b")
+	_, err := a.list.Remove(a.bag, b.v(), "lost", []member.Accepted{
+		{Device: b.inc, Site: site, Last: 40},
+		{Device: b.inc, Site: change.Site{2}, Last: 7, Hash: change.Hash{1}},
+		{Device: b.inc, Site: change.Site{2}, Last: 9, Hash: change.Hash{2}},
+	}, a.now())
+	require.NoError(t, err)
+	d, _ := a.list.Device(b.v())
+	require.Len(t, d.Removals[0].Accepted, 3)
+	plain, err := cbor.Marshal(d.Removals[0].Accepted[0])
+	require.NoError(t, err)
+	require.EqualValues(t, 0xa3, plain[0], "a map of three, as it always was")
+	n, _ := a.list.Limit(change.Stream{Device: b.inc, Site: change.Site{2}})
+	require.EqualValues(t, 9, n, "the longer branch")
 }

@@ -54,12 +54,18 @@ const (
 	maxName       = 200
 )
 
-// Accepted is the last number of a removed device's stream that counts.
+// Accepted is up to where a removed device's stream counts: the number and the chain hash of its last frame that
+// does. A stream that forked has one for each branch. Without a hash, as the earliest form had it, the number
+// alone counts, in the journal that stands under this name.
 type Accepted struct {
 	Device change.Incarnation `cbor:"1,keyasint"`
 	Site   change.Site        `cbor:"2,keyasint"`
 	Last   uint64             `cbor:"3,keyasint"`
+	Hash   change.Hash        `cbor:"4,keyasint,omitzero"`
 }
+
+// Stream returns the stream that counts so far.
+func (a Accepted) Stream() change.Stream { return change.Stream{Device: a.Device, Site: a.Site} }
 
 // Wrapped is a list of epochs sealed to one device or to the recovery sheet (age, X25519).
 type Wrapped struct {

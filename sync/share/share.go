@@ -25,6 +25,7 @@ import (
 	"cordwalk.example/cordwalk/sync/change"
 	"cordwalk.example/cordwalk/sync/key"
 	"cordwalk.example/cordwalk/sync/member"
+	"cordwalk.example/cordwalk/sync/segment"
 )
 
 const (
@@ -44,6 +45,8 @@ type Share struct {
 	fs  disk.FS
 	now func() time.Time
 	mu  sync.Mutex // one exchange, join or removal at a time
+
+	setting sync.Mutex // while keys and limits are handed to the store
 }
 
 // Options of a Share.
@@ -207,6 +210,8 @@ func (sh *Share) Learn(raws [][]byte) (bool, error) {
 // refresh hands what the list says to the store: keys of new epochs, the limits of devices that were
 // removed; and says under which name this device writes.
 func (sh *Share) refresh(ctx context.Context) error {
+	sh.setting.Lock()
+	defer sh.setting.Unlock()
 	bag := sh.Bag()
 	ring, err := sh.List.Ring(bag.Device.Identity(), bag.Ring)
 	if err != nil {
@@ -219,45 +224,14 @@ func (sh *Share) refresh(ctx context.Context) error {
 	if err != nil {
 		return err
 	}
-	limits := map[change.Stream]uint64{}
-	for _, h := range held {
-		if _, limited := sh.List.Limit(h.Of); limited {
-			// The second branch of a fork counts if the removal names it.
-			limits[h.Stream], _ = sh.limit(h.Of, h.Stream)
-		}
-	}
-	for _, d := range sh.List.Devices() {
-		for _, r := range d.Removals {
-			for x := range r.Accepted {
-				if n, limited := sh.List.Limit(x); limited {
-					if _, there := limits[x]; !there {
-						limits[x] = n
-					}
-				}
-			}
-		}
+	limits, err := Limits(ctx, sh.List, sh.Store, held)
+	if err != nil {
+		return err
 	}
 	if err := sh.SetLimits(ctx, limits); err != nil {
 		return err
 	}
 	return sh.announce()
-}
-
-// limit returns up to where a stream or branch counts.
-func (sh *Share) limit(of, x change.Stream) (uint64, bool) {
-	if of == x {
-		return sh.List.Limit(x)
-	}
-	v, ok := sh.List.Signer(of.Device)
-	if !ok {
-		return 0, true
-	}
-	d, _ := sh.List.Device(v)
-	n := ^uint64(0)
-	for _, r := range d.Removals {
-		n = min(n, r.Accepted[x])
-	}
-	return n, true
 }
 
 // announce tells the others under which names this device writes. A device that was removed cannot;
@@ -277,6 +251,22 @@ func (sh *Share) Renew(ctx context.Context) error {
 		return err
 	}
 	return sh.announce()
+}
+
+// Commit implements carry.Journal. What comes of a device that was removed may change which branch of
+// a stream counts, or be one that nobody knew of.
+func (sh *Share) Commit(ctx context.Context, as change.Stream, head *segment.Signed) error {
+	if err := sh.Store.Commit(ctx, as, head); err != nil {
+		return err
+	}
+	of := as
+	if head != nil {
+		of = head.Stream
+	}
+	if _, limited := sh.List.Limit(of); !limited {
+		return nil
+	}
+	return sh.refresh(ctx)
 }
 
 // Member reports whether this device still belongs to the practice.
@@ -431,7 +421,11 @@ func (sh *Share) Remove(ctx context.Context, examiner string, device key.Verifie
 	var accepted []member.Accepted
 	for _, h := range held {
 		if v, ok := sh.List.Signer(h.Of.Device); ok && v == device && len(h.Spans) > 0 {
-			accepted = append(accepted, member.Accepted{Device: h.Stream.Device, Site: h.Stream.Site, Last: h.Last})
+			x := h.Of
+			if h.Hash == (change.Hash{}) { // its last frame cannot be read here: the number alone counts
+				x = h.Stream
+			}
+			accepted = append(accepted, member.Accepted{Device: x.Device, Site: x.Site, Last: h.Last, Hash: h.Hash})
 		}
 	}
 	d, _ := sh.List.Device(device)
