@@ -12,6 +12,7 @@ import (
 	"runtime"
 	"slices"
 	"strings"
+	"sync"
 
 	"go.etcd.io/bbolt"
 
@@ -93,6 +94,7 @@ type builder struct {
 	spillEnd int64
 	spilled  [parts][]stretch
 	total    int64 // bytes of journal
+	rooms    sync.Pool
 	aead     cipher.AEAD
 }
 
@@ -303,7 +305,12 @@ func (b *builder) workOut(i int, gaps []timedGap) (f filled) {
 	if err != nil {
 		return filled{err: err}
 	}
-	patients, err := b.gather(data)
+	room, _ := b.rooms.Get().(*room)
+	if room == nil {
+		room = newRoom()
+	}
+	defer b.rooms.Put(room)
+	patients, err := b.gather(data, room)
 	if err != nil {
 		return filled{err: err}
 	}
@@ -336,7 +343,11 @@ func (b *builder) workOut(i int, gaps []timedGap) (f filled) {
 				f.places = append(f.places, pair{pk, b.seals.seal(bucketPlaces, pk, o.id[:])})
 			}
 			if r.kind == KindEdge {
-				f.edges = append(f.edges, r)
+				kept, err := decodeRecord(plain) // r goes with its room
+				if err != nil {
+					return filled{err: err}
+				}
+				f.edges = append(f.edges, kept)
 			}
 			for _, fd := range r.fields {
 				for _, c := range fd.versions {
@@ -365,20 +376,45 @@ func (b *builder) workOut(i int, gaps []timedGap) (f filled) {
 	return f
 }
 
-// gather reads dealt changes and puts them together into records.
-func (b *builder) gather(data []byte) (map[exam.ID][]*record, error) {
+// room is memory that one part after another is gathered in.
+type room struct {
+	slabs [][]change.Change // most fields have one version: they are made many at a time
+	used  int
+	names map[string]string // one string for each field name
+}
+
+const slabSize = 512
+
+func newRoom() *room { return &room{names: map[string]string{}} }
+
+// version returns room for one version.
+func (r *room) version() []change.Change {
+	at := r.used % slabSize
+	if r.used/slabSize == len(r.slabs) {
+		r.slabs = append(r.slabs, make([]change.Change, slabSize))
+	}
+	v := r.slabs[r.used/slabSize][at : at+1 : at+1]
+	v[0] = change.Change{}
+	r.used++
+	return v
+}
+
+// gather reads dealt changes and puts them together into records, which last until the room is
+// used again.
+func (b *builder) gather(data []byte, room *room) (map[exam.ID][]*record, error) {
 	out := map[exam.ID][]*record{}
 	byKey := map[recordKey]*record{}
 	h := head{tables: b.dealt}
-	names := map[string]string{} // one string for each field name
+	names := room.names
+	if len(names) > 4096 { // some names hold ids
+		clear(names)
+	}
+	room.used = 0
 	r := &reader{b: data}
 	var last *record
-	var slab []change.Change // most fields have one version: they are made many at a time
 	for len(r.b) > 0 && !r.bad {
-		if len(slab) == 0 {
-			slab = make([]change.Change, 128)
-		}
-		c := &slab[0]
+		version := room.version()
+		c := &version[0]
 		h.kind = Kind(r.uvarint())
 		h.patient, h.id = r.id(), r.id()
 		name := r.bytes()
@@ -397,8 +433,10 @@ func (b *builder) gather(data []byte) (map[exam.ID][]*record, error) {
 				out[c.Patient] = append(out[c.Patient], rec)
 			}
 		}
-		rec.fields = append(rec.fields, field{c.Field, slab[:1:1]})
-		slab = slab[1:]
+		if cap(rec.fields) == len(rec.fields) {
+			rec.fields = slices.Grow(rec.fields, max(48, len(rec.fields))) // a usual exam
+		}
+		rec.fields = append(rec.fields, field{c.Field, version})
 		last = rec
 	}
 	if r.bad {

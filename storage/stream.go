@@ -223,7 +223,7 @@ type follower struct {
 	read    func(bytes int64) // progress; may be nil
 	limits  map[string]uint64 // see identity
 
-	parallel bool // open frames ahead on all processors
+	parallel bool // open frames ahead on all processors; each must then not keep its batch
 	covered  bool // the state is known to hold all that was ever written: the store was closed in order
 }
 
@@ -357,7 +357,7 @@ func (fl *follower) piece(p piece, st *streamState) (b change.Batch, news bool, 
 	}
 	o := p.opened
 	if o == nil {
-		x := fl.openFrame(p.Frame)
+		x := fl.openFrame(p.Frame, change.Open)
 		o = &x
 	}
 	if o.err != nil {
@@ -371,7 +371,7 @@ func (fl *follower) piece(p piece, st *streamState) (b change.Batch, news bool, 
 			b.Changes[i].Stream = p.seg.stream
 		}
 	}
-	if limit, ok := fl.limits[p.seg.stream.Name()]; ok && b.Last() > limit {
+	if limit, ok := fl.limit(p.seg.stream); ok && b.Last() > limit {
 		// It came after the device was removed: it is kept, and counts once a person admits it.
 		st.take(p.Frame.Header, o.hash, b.Changes[0].Time, b.Changes[0].Time)
 		if b.First > limit {
@@ -389,6 +389,15 @@ func (fl *follower) piece(p piece, st *streamState) (b change.Batch, news bool, 
 	}
 	st.take(p.Frame.Header, o.hash, began, ended)
 	return b, true, what
+}
+
+// limit returns the last number accepted of a removed device's stream.
+func (fl *follower) limit(s change.Stream) (uint64, bool) {
+	if len(fl.limits) == 0 { // nearly always; a name costs as much as a small frame
+		return 0, false
+	}
+	n, ok := fl.limits[s.Name()]
+	return n, ok
 }
 
 // branch reports whether a frame belongs to the second branch of a fork that is kept under st's
@@ -412,9 +421,9 @@ type opened struct {
 	err   error
 }
 
-func (fl *follower) openFrame(f change.Frame) (o opened) {
+func (fl *follower) openFrame(f change.Frame, open func(change.Frame, change.Keys) (change.Batch, error)) (o opened) {
 	o.hash = f.Hash()
-	o.batch, o.err = change.Open(f, fl.keys)
+	o.batch, o.err = open(f, fl.keys)
 	return o
 }
 
@@ -425,7 +434,18 @@ func (fl *follower) walkAhead(fsys disk.FS, seg segmentFile, from int64, f func(
 	type bunch struct {
 		pieces []piece
 		opened []opened
+		opener change.Opener
 		done   chan struct{}
+	}
+	used := make(chan *bunch, 4*runtime.GOMAXPROCS(0)) // their memory serves again
+	empty := func() *bunch {
+		select {
+		case b := <-used:
+			b.opener.Reset()
+			return &bunch{pieces: b.pieces[:0], opened: b.opened[:0], opener: b.opener, done: make(chan struct{})}
+		default:
+			return &bunch{pieces: make([]piece, 0, some), opened: make([]opened, 0, some), done: make(chan struct{})}
+		}
 	}
 	ahead := make(chan *bunch, 2*runtime.GOMAXPROCS(0))
 	work := make(chan *bunch, cap(ahead))
@@ -438,7 +458,7 @@ func (fl *follower) walkAhead(fsys disk.FS, seg segmentFile, from int64, f func(
 			for b := range work {
 				for i, p := range b.pieces {
 					if p.Damage == nil {
-						b.opened[i] = fl.openFrame(p.Frame)
+						b.opened[i] = fl.openFrame(p.Frame, b.opener.Open)
 					}
 				}
 				close(b.done)
@@ -448,14 +468,15 @@ func (fl *follower) walkAhead(fsys disk.FS, seg segmentFile, from int64, f func(
 	wg.Go(func() {
 		defer close(ahead)
 		defer close(work)
-		cur := &bunch{done: make(chan struct{})}
+		cur := empty()
 		send := func() error {
 			if len(cur.pieces) == 0 {
 				return nil
 			}
-			cur.opened = make([]opened, len(cur.pieces))
+			cur.opened = cur.opened[:len(cur.pieces)]
+			clear(cur.opened)
 			b := cur
-			cur = &bunch{done: make(chan struct{})}
+			cur = empty()
 			select {
 			case ahead <- b:
 				work <- b
@@ -488,6 +509,10 @@ func (fl *follower) walkAhead(fsys disk.FS, seg segmentFile, from int64, f func(
 				close(stop)
 				break
 			}
+		}
+		select {
+		case used <- b:
+		default:
 		}
 	}
 	wg.Wait()

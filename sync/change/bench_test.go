@@ -27,6 +27,21 @@ func BenchmarkOpenOne(b *testing.B) {
 	}
 }
 
+func BenchmarkOpenerOne(b *testing.B) {
+	frames, data := journal(b, 1000)
+	b.SetBytes(int64(len(data) / len(frames)))
+	b.ReportAllocs()
+	var o change.Opener
+	for i := 0; b.Loop(); i++ {
+		if i%256 == 0 {
+			o.Reset()
+		}
+		if _, err := o.Open(frames[i%len(frames)], keyring); err != nil {
+			b.Fatal(err)
+		}
+	}
+}
+
 func BenchmarkDecodeOne(b *testing.B) {
 	c := change.Change{ID: change.NewID(), Time: 1, Kind: change.KindVisit, Field: "finding/patellar pelvic-left", Value: make([]byte, 30), Supersedes: []change.ID{change.NewID()}}
 	data, _ := change.EncodeBatch(change.Batch{Stream: stream, First: 2, Examiner: "R. Okafor", Changes: []change.Change{c}})

@@ -143,6 +143,34 @@ func TestFrameRoundTrip(t *testing.T) {
 	})
 }
 
+// TestOpenerOpensTheSame: batches of one Opener stand side by side until Reset, and what its memory held
+// before does not show.
+func TestOpenerOpensTheSame(t *testing.T) {
+	var o change.Opener
+	rapid.Check(t, func(t *rapid.T) {
+		o.Reset()
+		var want, got []change.Batch
+		for range rapid.IntRange(1, 20).Draw(t, "frames") {
+			batch := genBatch().Draw(t, "batch")
+			var prev change.Hash
+			if batch.First > 1 {
+				prev = change.Hash{1}
+			}
+			f, err := change.Seal(batch, prev, 7, keys{7})
+			require.NoError(t, err)
+			b, err := change.Open(f, keys{7})
+			require.NoError(t, err)
+			want = append(want, b)
+			_, err = o.Open(f, keys{8})
+			require.ErrorIs(t, err, change.ErrNoKey)
+			b, err = o.Open(f, keys{7})
+			require.NoError(t, err)
+			got = append(got, b)
+		}
+		require.Equal(t, want, got)
+	})
+}
+
 // journal makes n chained frames of one change each.
 func journal(t testing.TB, n int) (frames []change.Frame, data []byte) {
 	var prev change.Hash

@@ -82,7 +82,7 @@ func EncodeBatch(b Batch) ([]byte, error) {
 // encoding of the same batch. Fields that this program does not know are kept only if the
 // writer's minor version is newer.
 func DecodeBatch(data []byte, s Stream, first uint64, minor uint8) (Batch, error) {
-	if b, ok := quickBatch(bytes.Clone(data), s, first); ok {
+	if b, ok := quickBatch(bytes.Clone(data), s, first, nil); ok {
 		return b, nil
 	}
 	return slowBatch(data, s, first, minor)

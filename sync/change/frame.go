@@ -191,7 +191,7 @@ func seal(b Batch, prev Hash, epoch uint32, keys Keys, random func([]byte) (int,
 	if err != nil {
 		return Frame{}, err
 	}
-	again, err := unseal(f, aead)
+	again, err := unseal(nil, f, aead)
 	if err != nil || !bytes.Equal(again, plain) {
 		return Frame{}, errors.New("a batch did not open again right after it was sealed: this computer's memory or this program is faulty; nothing was written")
 	}
@@ -207,16 +207,18 @@ func hasExtra(cs []Change) bool {
 	return false
 }
 
-func unseal(f Frame, aead cipher.AEAD) ([]byte, error) {
+func unseal(dst []byte, f Frame, aead cipher.AEAD) ([]byte, error) {
 	body := f.Raw[HeaderSize:]
 	nonce, sealed := body[:chacha20poly1305.NonceSizeX], body[chacha20poly1305.NonceSizeX:]
-	return aead.Open(nil, nonce, sealed, f.Raw[:HeaderSize])
+	return aead.Open(dst, nonce, sealed, f.Raw[:HeaderSize])
 }
 
 // Open unseals and decodes a frame. The error is ErrNewer for a newer major version or another
 // way of sealing, ErrNoKey where the epoch's key is missing, ErrSealed where the body does not
 // open, ErrMalformed where it opens but breaks the format.
-func Open(f Frame, keys Keys) (Batch, error) {
+func Open(f Frame, keys Keys) (Batch, error) { return open(f, keys, nil) }
+
+func open(f Frame, keys Keys, o *Opener) (Batch, error) {
 	where := func(err error) error {
 		return fmt.Errorf("frame %d–%d of stream %s: %w", f.First, f.Last, f.Stream, err)
 	}
@@ -227,11 +229,12 @@ func Open(f Frame, keys Keys) (Batch, error) {
 	if !ok {
 		return Batch{}, where(fmt.Errorf("%w (%d)", ErrNoKey, f.Epoch))
 	}
-	plain, err := unseal(f, aead)
+	plain, err := unseal(o.bytes(len(f.Raw)), f, aead)
 	if err != nil {
 		return Batch{}, where(ErrSealed)
 	}
-	b, ok := quickBatch(plain, f.Stream, f.First)
+	o.keep(plain)
+	b, ok := quickBatch(plain, f.Stream, f.First, o)
 	if !ok {
 		if b, err = slowBatch(plain, f.Stream, f.First, f.Minor); err != nil {
 			return Batch{}, where(err)

@@ -14,6 +14,7 @@ import (
 type quick struct {
 	b   []byte
 	bad bool
+	o   *Opener
 }
 
 // head reads the head of an item of a major type, in its shortest form only.
@@ -82,7 +83,7 @@ func (q *quick) text() string {
 		q.bad = true
 		return ""
 	}
-	return string(x)
+	return q.o.name(x)
 }
 
 func (q *quick) id() (id ID) {
@@ -117,8 +118,8 @@ func (q *quick) positive(most uint64) uint64 {
 
 // quickBatch is DecodeBatch for the usual case; false means that it has to be asked. The values
 // are slices of data, which must not be changed afterwards.
-func quickBatch(data []byte, s Stream, first uint64) (Batch, bool) {
-	q := &quick{b: data}
+func quickBatch(data []byte, s Stream, first uint64, o *Opener) (Batch, bool) {
+	q := &quick{b: data, o: o}
 	b := Batch{Stream: s, First: first}
 	pairs := q.head(0xa0)
 	if pairs == 2 && q.head(0) == 1 {
@@ -132,7 +133,7 @@ func quickBatch(data []byte, s Stream, first uint64) (Batch, bool) {
 	if q.bad || n == 0 || n > MaxChanges || n > uint64(len(q.b)) {
 		return Batch{}, false
 	}
-	b.Changes = make([]Change, n)
+	b.Changes = o.changes(int(n))
 	for i := range b.Changes {
 		c := &b.Changes[i]
 		q.change(c)

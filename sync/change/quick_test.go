@@ -14,7 +14,7 @@ import (
 func both(t testing.TB, data []byte) bool {
 	t.Helper()
 	s := Stream{Incarnation{1}, Site{2}}
-	q, ok := quickBatch(data, s, 5)
+	q, ok := quickBatch(data, s, 5, nil)
 	b, err := slowBatch(data, s, 5, Minor)
 	if !ok {
 		return false
