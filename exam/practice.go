@@ -18,13 +18,17 @@ type Practice struct {
 	Zone       string  // IANA name
 	Language   string  // BCP 47 tag of the sheets, "en" where not said
 	Paper      string  // "A4" or "Letter"
-	Pounds     bool    // show weights in lb
+	Pounds     bool    // show and take weights in lb
+	Inches     bool    // show and take girths in inches
 	Examiners  []Examiner
 	Protocols  []Protocol // those the practice made for itself
 	Phrases    []Phrase   // its own wording of sentences on the owner's sheet
 	Logo       []byte     // PNG or JPEG for the heading of papers, at most MaxLogo bytes; nil for none
 	Demo       bool
 }
+
+// Units are the units that the practice reads and types measures in.
+func (p Practice) Units() Units { return Units{Pounds: p.Pounds, Inches: p.Inches} }
 
 // MaxLogo is the most bytes of a practice's logo: enough for any print of its size on paper.
 const MaxLogo = 256 << 10

@@ -367,6 +367,8 @@ func practiceWords(p exam.Practice, name string) string {
 		return p.Paper
 	case "pounds":
 		return yes(p.Pounds)
+	case "inches":
+		return yes(p.Inches)
 	case fieldLogo:
 		return strconv.Itoa(len(p.Logo)) + " bytes"
 	case "demo":

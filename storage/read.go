@@ -737,6 +737,8 @@ func setPractice(p *exam.Practice, name string, b []byte) error {
 		return setText(&p.Paper)(b)
 	case "pounds":
 		return setFlag(&p.Pounds)(b)
+	case "inches":
+		return setFlag(&p.Inches)(b)
 	case fieldLogo:
 		raw, err := decodeRaw(b)
 		p.Logo = raw

@@ -39,7 +39,7 @@ type Edit struct {
 // The fields of the records. List items have a field each, named by their id, so that two
 // people who add an item at the same time do not collide.
 //
-//	practice  name contact out-of-hours zone language paper pounds demo examiner/ID protocol/KEY
+//	practice  name contact out-of-hours zone language paper pounds inches demo examiner/ID protocol/KEY
 //	          phrase/LANGUAGE/KEY logo
 //	patient   name species breed sex neutered born owner veterinarian out-of-hours referral status
 //	          recheck-days note demo problem/ID precaution/ID goal/ID medicine/ID sent/ID
@@ -292,6 +292,7 @@ func PracticeEdits(before, after exam.Practice) []Edit {
 	d.word("language", before.Language, after.Language)
 	d.word("paper", before.Paper, after.Paper)
 	d.flag("pounds", before.Pounds, after.Pounds)
+	d.flag("inches", before.Inches, after.Inches)
 	items(d, fieldExaminer, before.Examiners, after.Examiners, func(x *exam.Examiner) string { return itemID(&x.ID) })
 	had := make(map[string]exam.Protocol, len(before.Protocols))
 	for _, p := range before.Protocols {

@@ -71,13 +71,13 @@ func (p *choicesPage) load() {
 		p.build()
 		return
 	}
-	of := p.of
+	of, units := p.of, p.win.app.practice.Units()
 	p.win.app.work(func(context.Context) (func(), error) {
 		r, err := p.store.Patient(of)
 		if err != nil {
 			return nil, err
 		}
-		list := view.NewChoices(r)
+		list := view.NewChoices(r, units)
 		return func() { p.list, p.read = list, true; p.build() }, nil
 	}, func(err error) { p.win.fail(words.T("The file of this animal cannot be opened."), err) })
 }

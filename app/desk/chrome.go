@@ -281,7 +281,7 @@ func (s *strip) update() {
 	}
 	var badges []fyne.CanvasObject
 	f := w.file
-	st := view.StripOf(f.Patient, a.now(), a.practice.Pounds)
+	st := view.StripOf(f.Patient, a.now(), a.practice.Units())
 	if st.Demo || a.practice.Demo {
 		badges = append(badges, badge(words.T("DEMO"), words.T("Invented animals, made to look around. Nothing here is a real patient.")))
 	}
@@ -305,13 +305,14 @@ func (s *strip) update() {
 			rightBox.Add(alignRight(b))
 		}
 	}
+	who := mark.NewButton(a.initials(), "person", w.showExaminers).WithTip(words.T("%s examines. Press to switch (Ctrl+U).", a.examiner))
 	if f.Patient.ID.IsZero() {
 		name := a.practice.Name
 		if name == "" {
 			name = words.T("Practice without a name")
 		}
 		left := mark.Column(0, mark.NewPara(name).As(look.Head).Strong(), mark.NewPara(words.T("examining: %s", a.examiner)).In(look.InkSoft))
-		s.box.Objects = []fyne.CanvasObject{mark.Row(look.Unit*2, []float32{1, 0}, left, rightBox)}
+		s.box.Objects = []fyne.CanvasObject{mark.Row(look.Unit*2, []float32{1, 0, 0}, left, rightBox, who)}
 		s.box.Refresh()
 		s.Refresh()
 		return
@@ -337,7 +338,7 @@ func (s *strip) update() {
 	} else {
 		left.Add(mark.RowTop(look.Unit*2, []float32{1, 1.2}, mark.Column(0, mark.Line(problem).AtLeast(100)), caution))
 	}
-	s.box.Objects = []fyne.CanvasObject{mark.Row(look.Unit*1.5, []float32{0, 1, 0}, mark.NewSpecies(f.Patient.Species, 52*max(1, look.Scale()*0.8)), left, rightBox)}
+	s.box.Objects = []fyne.CanvasObject{mark.Row(look.Unit*1.5, []float32{0, 1, 0, 0}, mark.NewSpecies(f.Patient.Species, 52*max(1, look.Scale()*0.8)), left, rightBox, who)}
 	s.box.Refresh()
 	s.Refresh()
 }

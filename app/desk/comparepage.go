@@ -191,7 +191,7 @@ func (p *comparePage) build() {
 	if len(c.Measures) > 0 {
 		rows = append(rows, mark.Pad(look.Unit, 0, mark.Heading(words.T("Measures")).AtLeast(60)), mark.Rule())
 		for _, m := range c.Measures {
-			rows = append(rows, measureLine(m, p.win.app.practice.Pounds))
+			rows = append(rows, measureLine(m, p.win.app.practice.Units()))
 		}
 	}
 	rows = append(rows, p.maps.section(a, b))
@@ -246,14 +246,14 @@ func newCompareLine(r view.CompareRow) fyne.CanvasObject {
 	return mark.Column(0, mark.Pad(5, look.Unit/2, line), mark.Rule())
 }
 
-func measureLine(m view.MeasureRow, pounds bool) fyne.CanvasObject {
+func measureLine(m view.MeasureRow, u exam.Units) fyne.CanvasObject {
 	value := func(x exam.Measured, had bool) fyne.CanvasObject {
 		if !had {
 			return mark.NewPara(words.T("not measured")).In(look.InkSoft)
 		}
-		return mark.NewPara(view.MeasuredWords(x, pounds))
+		return mark.NewPara(view.MeasuredWords(x, u))
 	}
-	note := m.ChangeIn(pounds)
+	note := m.ChangeIn(u)
 	if m.Unlike != "" {
 		note = m.Unlike
 	}

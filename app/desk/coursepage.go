@@ -54,7 +54,7 @@ type coursePage struct {
 
 func newCoursePage(w *window) *coursePage {
 	p := &coursePage{win: w, file: w.file}
-	p.plain = view.NewCourse(p.file.Patient, p.file.Visits, view.PlainScores(p.file.Patient.Species, p.file.Visits), false)
+	p.plain = view.NewCourse(p.file.Patient, p.file.Visits, view.PlainScores(p.file.Patient.Species, p.file.Visits), false).In(w.app.practice.Units())
 	p.course = p.plain
 	p.at = len(p.course.Visits) - 1
 	p.root = container.NewStack()
@@ -87,7 +87,8 @@ func (p *coursePage) analyse() {
 			}
 			p.result = &r
 			if len(r.Segments) > 0 {
-				p.model, p.course = c, c
+				p.model = c.In(a.practice.Units())
+				p.course = c
 			}
 			p.build()
 		}, nil

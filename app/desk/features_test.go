@@ -360,8 +360,20 @@ func TestWeightsInPoundsOnTheScreens(t *testing.T) {
 	id := s.id("Bramble")
 	s.app.practice.Pounds = true
 	s.show(view.ScreenCourse, id)
-	if sig := view.StripOf(w.file.Patient, s.app.now(), s.app.practice.Pounds).Signalment; !strings.HasSuffix(sig, " lb") {
+	if sig := view.StripOf(w.file.Patient, s.app.now(), s.app.practice.Units()).Signalment; !strings.HasSuffix(sig, " lb") {
 		t.Errorf("the strip says %q", sig)
+	}
+	drawn := false
+	for i, x := range w.page.(*coursePage).plain.Measure.Series {
+		if strings.Contains(w.page.(*coursePage).plain.MeasureKeys[i], exam.Weight.String()) {
+			drawn = true
+			if x.Unit != "lb" {
+				t.Errorf("the course draws weights in %s", x.Unit)
+			}
+		}
+	}
+	if !drawn {
+		t.Error("the course draws no weights")
 	}
 	s.show(view.ScreenExam, id)
 	if u := s.exam().sheet.UnitOf(exam.Weight); u != "lb" {

@@ -50,12 +50,13 @@ func newHistoryPage(w *window) *historyPage {
 	if err != nil {
 		zone = time.Local
 	}
+	units := w.app.practice.Units()
 	w.app.work(func(context.Context) (func(), error) {
 		entries, err := s.Store().History(id)
 		if err != nil {
 			return nil, err
 		}
-		list := view.NewHistory(entries, visits, zone)
+		list := view.NewHistory(entries, visits, zone, units)
 		return func() { p.list = list; p.list.Search(p.find.Text); p.build() }, nil
 	}, func(err error) { w.fail(words.T("The history cannot be read."), err) })
 	return p

@@ -2,6 +2,8 @@ package desk
 
 import (
 	"context"
+	"maps"
+	"slices"
 	"strconv"
 	"strings"
 
@@ -23,10 +25,12 @@ type settingsPage struct {
 	lists *fyne.Container
 	body  *mark.Scroll
 	said  *mark.Para
+	pins  map[exam.ID]string // new PINs of examiners, as typed
 }
 
 func newSettingsPage(w *window) *settingsPage {
-	p := &settingsPage{win: w, after: w.app.practice}
+	p := &settingsPage{win: w, after: w.app.practice, pins: map[exam.ID]string{}}
+	p.after.Examiners = slices.Clone(p.after.Examiners)
 	p.build()
 	return p
 }
@@ -57,15 +61,6 @@ func (p *settingsPage) build() {
 		b.Chosen = n == scale
 		sizes.Add(b)
 	}
-	examiners := []string{}
-	for _, e := range a.practice.Examiners {
-		examiners = append(examiners, e.Name)
-	}
-	who := mark.Choice(examiners, examiners, a.examiner, func(s string) {
-		a.examiner, a.settings.Examiner = s, s
-		p.win.strip.update()
-		a.keepSettings()
-	})
 	langs := words.Tags()
 	lang := mark.Choice(languageNames(langs), langs, words.Language(), func(s string) {
 		a.settings.Language = s
@@ -78,19 +73,25 @@ func (p *settingsPage) build() {
 	})
 	here := section(words.T("On this computer"),
 		pair(mark.NewLabelled(words.T("Colours"), theme), mark.NewLabelled(words.T("Language"), lang)),
-		mark.NewLabelled(words.T("Size of the text"), mark.Column(4, mark.Row(look.Unit, []float32{1, 0}, slider, shown), sizes)),
-		mark.NewLabelled(words.T("Who examines now"), who))
+		mark.NewLabelled(words.T("Size of the text"), mark.Column(4, mark.Row(look.Unit, []float32{1, 0}, slider, shown), sizes)))
 	field := func(name, value string, set func(string)) fyne.CanvasObject {
 		return mark.NewLabelled(name, mark.NewField(value, set))
 	}
 	pr := &p.after
+	sheetsIn := pr.Language
+	if sheetsIn == "" {
+		sheetsIn = "en"
+	}
 	practice := section(words.T("The practice"),
 		pair(field(words.T("Name"), pr.Name, func(s string) { pr.Name = s }), field(words.T("Telephone"), pr.Contact.Phone, func(s string) { pr.Contact.Phone = s })),
 		pair(field(words.T("E-mail"), pr.Contact.Email, func(s string) { pr.Contact.Email = s }), field(words.T("Address"), pr.Contact.Address, func(s string) { pr.Contact.Address = s })),
 		pair(field(words.T("Veterinarian at night and on Sundays"), pr.OutOfHours.Name, func(s string) { pr.OutOfHours.Name = s }),
 			field(words.T("Telephone at night"), pr.OutOfHours.Phone, func(s string) { pr.OutOfHours.Phone = s })),
-		pair(mark.NewLabelled(words.T("Paper of the sheets"), mark.Choice([]string{"A4", "Letter"}, []string{"A4", "Letter"}, pr.Paper, func(s string) { pr.Paper = s })),
-			mark.NewLabelled(words.T("Weights"), mark.Choice([]string{"kg", "lb"}, []string{"kg", "lb"}, map[bool]string{false: "kg", true: "lb"}[pr.Pounds], func(s string) { pr.Pounds = s == "lb" }))))
+		mark.RowTop(look.Unit*2, []float32{1, 1, 1, 1},
+			mark.NewLabelled(words.T("Paper of the sheets"), mark.Choice([]string{"A4", "Letter"}, []string{"A4", "Letter"}, pr.Paper, func(s string) { pr.Paper = s })),
+			mark.NewLabelled(words.T("Language of the sheets"), mark.Choice(languageNames(langs), langs, sheetsIn, func(s string) { pr.Language = s })),
+			mark.NewLabelled(words.T("Weights"), mark.Choice([]string{"kg", "lb"}, []string{"kg", "lb"}, map[bool]string{false: "kg", true: "lb"}[pr.Pounds], func(s string) { pr.Pounds = s == "lb" })),
+			mark.NewLabelled(words.T("Girths"), mark.Choice([]string{"cm", "in"}, []string{"cm", "in"}, map[bool]string{false: "cm", true: "in"}[pr.Inches], func(s string) { pr.Inches = s == "in" }))))
 	p.lists = mark.Column(look.Unit * 3)
 	p.drawLists()
 	p.said = mark.NewPara("").In(look.Worse)
@@ -116,17 +117,33 @@ func (w *window) redress() {
 	w.open(w.here())
 }
 
+// person is the line of one examiner: name, initials, PIN.
+func (p *settingsPage) person(x *exam.Examiner) fyne.CanvasObject {
+	pin := mark.NewField(p.pins[x.ID], func(s string) { p.pins[x.ID] = s }).Hint(words.T("PIN, if wanted"))
+	pin.Password = true
+	last := fyne.CanvasObject(mark.Space(1, 1))
+	if x.PINHash != "" {
+		pin.Hint(words.T("another PIN"))
+		last = mark.NewButton(words.T("Remove the PIN"), "open-lock", func() {
+			x.PINHash = ""
+			delete(p.pins, x.ID)
+			p.drawLists()
+		})
+	}
+	return mark.Row(look.Unit, []float32{2, 0.8, 1.2, 1.4},
+		mark.NewField(x.Name, func(s string) { x.Name = s }).Hint(words.T("name")),
+		mark.NewField(x.Initials, func(s string) { x.Initials = s }).Hint(words.T("initials")), pin, last)
+}
+
 // drawLists draws the examiners and the practice's own protocols.
 func (p *settingsPage) drawLists() {
 	pr := &p.after
 	id := p.win.app.records.NewID
 	var people []fyne.CanvasObject
 	for i := range pr.Examiners {
-		x := &pr.Examiners[i]
-		people = append(people, mark.Row(look.Unit, []float32{3, 1},
-			mark.NewField(x.Name, func(s string) { x.Name = s }).Hint(words.T("name")),
-			mark.NewField(x.Initials, func(s string) { x.Initials = s }).Hint(words.T("initials"))))
+		people = append(people, p.person(&pr.Examiners[i]))
 	}
+	people = append(people, mark.NewPara(words.T("A PIN is asked for when somebody switches to that name, so that findings do not go under another's by mistake. It protects nothing: a forgotten one is removed here.")).In(look.InkSoft))
 	addPerson := mark.NewButton(words.T("Add an examiner"), "add", func() {
 		pr.Examiners = append(append([]exam.Examiner(nil), pr.Examiners...), exam.Examiner{ID: id()})
 		p.drawLists()
@@ -239,16 +256,35 @@ func (p *settingsPage) keep() {
 			return
 		}
 	}
+	for _, e := range people {
+		if pin := p.pins[e.ID]; pin != "" && view.CheckPIN(pin) != nil {
+			p.said.Set(words.T("%s: %s", e.Name, view.CheckPIN(pin).Error()))
+			return
+		}
+	}
 	before, records, examiner := a.practice, a.records, a.examiner
+	pins := maps.Clone(p.pins)
 	a.work(func(ctx context.Context) (func(), error) {
+		for i, e := range after.Examiners {
+			if pin := pins[e.ID]; pin != "" {
+				hash, err := view.HashPIN(pin)
+				if err != nil {
+					return nil, err
+				}
+				after.Examiners[i].PINHash = hash
+			}
+		}
 		if err := records.SavePractice(ctx, examiner, before, after); err != nil {
 			return nil, err
 		}
 		return func() {
 			a.practice = after
 			p.after = after
+			p.after.Examiners = slices.Clone(after.Examiners)
+			clear(p.pins)
 			p.said.Set("")
-			p.win.strip.update()
+			p.drawLists()
+			a.renamed(before)
 			p.win.foot.say(words.T("The practice's settings are kept."))
 		}, nil
 	}, func(err error) { p.win.fail(words.T("The practice's settings could not be kept."), err) })

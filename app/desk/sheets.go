@@ -18,6 +18,7 @@ func plainNumber(x float64) string { return strconv.FormatFloat(x, 'f', -1, 64) 
 
 // showSheet lays a sheet over the page. Escape or its button takes it away.
 func (w *window) showSheet(title string, body fyne.CanvasObject, width float32, buttons ...fyne.CanvasObject) {
+	w.layerRune = nil
 	veil := canvas.NewRectangle(look.C(look.Sunk))
 	r, g, b, _ := look.C(look.Sunk).RGBA()
 	veil.FillColor = nrgba(r, g, b, 200)
@@ -39,7 +40,7 @@ func (w *window) hideSheet() {
 	if len(w.layer.Objects) == 0 {
 		return
 	}
-	w.layer.Objects = nil
+	w.layer.Objects, w.layerRune = nil, nil
 	w.layer.Refresh()
 	w.win.SetTitle(w.title())
 	w.win.Canvas().Unfocus()
@@ -102,6 +103,7 @@ func globalKeys() []view.KeyHelp {
 		{Keys: "Ctrl+N", Does: words.T("new patient")},
 		{Keys: "Ctrl+E", Does: words.T("edit this patient")},
 		{Keys: "Ctrl+H", Does: words.T("who changed what of this patient, and when")},
+		{Keys: "Ctrl+U", Does: words.T("switch the examiner")},
 		{Keys: "Ctrl+T", Does: words.T("this screen again in a second window")},
 		{Keys: "Ctrl+,", Does: words.T("settings")},
 		{Keys: words.T("Alt+Left, Alt+Right"), Does: words.T("back and forward")},

@@ -176,7 +176,7 @@ func newMeasuresForm(p *examPage) fyne.CanvasObject {
 		return out
 	}
 	general := section(words.T("Measures"), rowsOf(quickMeasures, exam.NoSite)...)
-	girth := section(words.T("Girth, in cm: one examiner, one place, one position"),
+	girth := section(words.T("Girth: one examiner, one place, one position"),
 		pair(field(exam.ThighGirth, exam.Left), field(exam.ThighGirth, exam.Right)),
 		pair(field(exam.BrachiumGirth, exam.Left), field(exam.BrachiumGirth, exam.Right)))
 	var limbs []fyne.CanvasObject
@@ -202,13 +202,13 @@ func (p *examPage) measureField(m exam.Measure, site exam.Site, v, last exam.Vis
 	if in.Unit != "1" {
 		name += ", " + p.sheet.UnitOf(m)
 	}
-	pounds := p.sheet.UnitOf(m) != in.Unit
+	units := p.sheet.Units()
 	value := ""
 	found, has := v.Measured(m, site)
 	if has {
 		value = plainNumber(found.Value)
-		if pounds {
-			value = plainNumber(math.Round(view.PoundsOf(found.Value)*10) / 10)
+		if units.Unit(m) != in.Unit {
+			value = plainNumber(math.Round(units.Shown(m, found.Value)*100) / 100)
 		}
 	}
 	f := mark.NewField(value, nil)
@@ -242,10 +242,7 @@ func (p *examPage) measureField(m exam.Measure, site exam.Site, v, last exam.Vis
 			l.Wrong(words.T("Use a number."))
 			return
 		}
-		x.Value = n
-		if pounds {
-			x.Value = view.KilogramsOf(n)
-		}
+		x.Value = units.Kept(m, n)
 		if err := p.sheet.PutMeasured(x); err != nil {
 			l.Wrong(err.Error())
 			return

@@ -46,14 +46,15 @@ type window struct {
 	page  page
 	file  File // of the patient shown; zero where the page has none
 
-	rail    *rail
-	strip   *strip
-	foot    *foot
-	center  *fyne.Container
-	tips    *mark.Tips
-	layer   *fyne.Container // help and other sheets laid over the page
-	opening bool            // the foot says that a page is being opened
-	turn    int             // number of the newest load; older ones are dropped
+	rail      *rail
+	strip     *strip
+	foot      *foot
+	center    *fyne.Container
+	tips      *mark.Tips
+	layer     *fyne.Container // help and other sheets laid over the page
+	layerRune func(rune)      // what letters do on the sheet; nil for nothing
+	opening   bool            // the foot says that a page is being opened
+	turn      int             // number of the newest load; older ones are dropped
 }
 
 func newWindow(a *App) *window {
@@ -291,6 +292,7 @@ func (w *window) keys() {
 		}
 	})
 	ctrl(fyne.KeyComma, func() { w.goTo(view.Route{Screen: view.ScreenSettings}) })
+	ctrl(fyne.KeyU, w.showExaminers)
 	ctrl(fyne.KeyT, func() { w.app.another(w.here()) })
 	c.AddShortcut(&desktop.CustomShortcut{KeyName: fyne.KeyQ, Modifier: fyne.KeyModifierControl}, func(fyne.Shortcut) { w.close() })
 	for _, enter := range []fyne.KeyName{fyne.KeyReturn, fyne.KeyEnter} {
@@ -339,6 +341,9 @@ func (w *window) typedKey(e *fyne.KeyEvent) {
 
 func (w *window) typedRune(r rune) {
 	if len(w.layer.Objects) > 0 {
+		if w.layerRune != nil {
+			w.layerRune(r)
+		}
 		return
 	}
 	if k, ok := w.page.(runeTaker); ok && k.typedRune(r) {

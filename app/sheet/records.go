@@ -67,6 +67,7 @@ type practiceJSON struct {
 	Language   string          `json:"language,omitempty"`
 	Paper      string          `json:"paper,omitempty"`
 	Pounds     bool            `json:"pounds,omitempty"`
+	Inches     bool            `json:"inches,omitempty"`
 	Examiners  []exam.Examiner `json:"examiners,omitempty"`
 	Protocols  []exam.Protocol `json:"protocols,omitempty"`
 	Phrases    []exam.Phrase   `json:"phrases,omitempty"`
@@ -237,7 +238,7 @@ func EncodeRecords(w io.Writer, r Records) error {
 	out := recordsJSON{Format: RecordsFormat, Version: RecordsVersion, Made: stamp(r.Made), Animals: []animalJSON{}}
 	if p := r.Practice; p.Name != "" || p.Zone != "" || len(p.Examiners) > 0 || len(p.Protocols) > 0 || len(p.Phrases) > 0 || len(p.Logo) > 0 || p.Demo {
 		pj := practiceJSON{Name: p.Name, Contact: unless(p.Contact), OutOfHours: unless(p.OutOfHours), Zone: p.Zone, Language: p.Language,
-			Paper: p.Paper, Pounds: p.Pounds, Examiners: slices.Clone(p.Examiners), Protocols: p.Protocols, Phrases: p.Phrases, Logo: base64.StdEncoding.EncodeToString(p.Logo), Demo: p.Demo}
+			Paper: p.Paper, Pounds: p.Pounds, Inches: p.Inches, Examiners: slices.Clone(p.Examiners), Protocols: p.Protocols, Phrases: p.Phrases, Logo: base64.StdEncoding.EncodeToString(p.Logo), Demo: p.Demo}
 		for i := range pj.Examiners {
 			pj.Examiners[i].PINHash = ""
 		}
@@ -515,7 +516,7 @@ func recordsIn(in recordsJSON) (Records, error) {
 	out := Records{Made: p.time("made", in.Made)}
 	if j := in.Practice; j != nil {
 		out.Practice = exam.Practice{Name: j.Name, Contact: deref(j.Contact), OutOfHours: deref(j.OutOfHours), Zone: j.Zone, Language: j.Language,
-			Paper: j.Paper, Pounds: j.Pounds, Examiners: j.Examiners, Protocols: j.Protocols, Phrases: j.Phrases, Demo: j.Demo}
+			Paper: j.Paper, Pounds: j.Pounds, Inches: j.Inches, Examiners: j.Examiners, Protocols: j.Protocols, Phrases: j.Phrases, Demo: j.Demo}
 		p.in("practice", func() { out.Practice.Logo = logoIn(p, j.Logo); phrasesIn(p, j.Phrases) })
 	}
 	for i, a := range in.Animals {

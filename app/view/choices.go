@@ -27,7 +27,7 @@ type Option struct {
 }
 
 // NewChoices lists what is to be chosen in a patient's record.
-func NewChoices(r storage.Record) []Choice {
+func NewChoices(r storage.Record, u exam.Units) []Choice {
 	visits := map[exam.ID]exam.Visit{}
 	for _, v := range r.Visits {
 		visits[v.ID] = v
@@ -41,7 +41,7 @@ func NewChoices(r storage.Record) []Choice {
 		}
 		late, doubt, current := 0, 0, 0
 		for _, v := range c.Values {
-			o := Option{Words: FieldWords(c.Field, v.Raw, v.Words), Who: entryWho(v.Examiner, v.Device, v.At)}
+			o := Option{Words: FieldWords(c.Field, v.Raw, v.Words, u), Who: entryWho(v.Examiner, v.Device, v.At)}
 			switch {
 			case v.Late:
 				late++

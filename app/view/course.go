@@ -205,6 +205,40 @@ func (c *Course) measures(cols []chart.Visit, events []chart.Event, goals []goal
 	}
 }
 
+// In shows the measures in the units that a practice reads.
+func (c *Course) In(u exam.Units) *Course {
+	for i := range c.Measure.Series {
+		s := &c.Measure.Series[i]
+		m, ok := c.measureOf(c.MeasureKeys[i])
+		if !ok || u.Unit(m) == m.Info().Unit {
+			continue
+		}
+		s.Unit = u.Unit(m)
+		for k := range s.Values {
+			if v := &s.Values[k]; v.Known {
+				v.Value = u.Shown(m, v.Value)
+				v.Mark = number(v.Value)
+			}
+		}
+		for k := range s.Goals {
+			s.Goals[k].Value = u.Shown(m, s.Goals[k].Value)
+		}
+	}
+	return c
+}
+
+// measureOf returns the measure that a key of a series belongs to.
+func (c *Course) measureOf(key string) (exam.Measure, bool) {
+	for _, v := range c.Visits {
+		for _, m := range v.Measures {
+			if m.Key() == key {
+				return m.Measure, true
+			}
+		}
+	}
+	return exam.NoMeasure, false
+}
+
 // eventsOf lists what happened to the animal, oldest first. A date of a month or a year
 // stands in its middle.
 func eventsOf(p exam.Patient, visits []exam.Visit) []CourseEvent {

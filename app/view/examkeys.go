@@ -700,10 +700,7 @@ func (s *ExamSheet) pressText(k Key) Outcome {
 			if err != nil {
 				return refused(&exam.Invalid{Field: c.Name(), Value: text, Allowed: "a number in " + s.UnitOf(c.Measure)})
 			}
-			if c.Measure == exam.Weight && s.in.Pounds {
-				x = KilogramsOf(x)
-			}
-			if err := s.SetMeasure(x); err != nil {
+			if err := s.SetMeasure(s.in.Units.Kept(c.Measure, x)); err != nil {
 				return refused(err)
 			}
 			s.mode, s.text = Grading, ""

@@ -129,7 +129,7 @@ type ExamInput struct {
 	Earlier  []exam.Visit // the visits before, oldest first
 	Items    []exam.Item  // of the protocol, in any order
 	Measures []exam.Measure
-	Pounds   bool                  // weights are shown and typed in lb
+	Units    exam.Units            // that measures are shown and typed in
 	Extra    []exam.Key            // cells asked beside the protocol
 	Barred   func(exam.Key) string // the precaution that bars a cell, in words, or ""
 	// Agenda says what is asked once today's findings are known: a limb found without movement

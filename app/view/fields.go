@@ -71,7 +71,7 @@ func FieldTitle(field string) string {
 
 // FieldWords says a value of a field in the language in use. Findings and measures are said as on the other
 // screens; plain is what the store says of all others. The empty value reads «cleared».
-func FieldWords(field string, raw []byte, plain string) string {
+func FieldWords(field string, raw []byte, plain string, u exam.Units) string {
 	if len(raw) == 0 {
 		return words.T("cleared")
 	}
@@ -92,52 +92,38 @@ func FieldWords(field string, raw []byte, plain string) string {
 	case field == "next-visit":
 		return DateWords(v.NextVisit)
 	case len(v.Measures) > 0:
-		return MeasuredWords(v.Measures[0], false)
+		return MeasuredWords(v.Measures[0], u)
 	}
 	return words.Of(plain)
 }
 
-// MeasuredWords says a measured value with its unit; a weight in pounds where pounds are wanted.
-func MeasuredWords(m exam.Measured, pounds bool) string {
-	if m.Measure == exam.Weight && pounds {
-		return WeightWords(m.Value, true)
+// MeasuredWords says a measured value with its unit, in the units that the practice reads.
+func MeasuredWords(m exam.Measured, u exam.Units) string {
+	s := number(u.Shown(m.Measure, m.Value))
+	if unit := u.Unit(m.Measure); unit != "1" {
+		s += " " + unit
 	}
-	unit := m.Measure.Info().Unit
-	if unit == "1" {
-		return number(m.Value)
-	}
-	return number(m.Value) + " " + unit
+	return s
 }
 
-// ChangeIn says the change of a measure, of a weight in pounds where they are wanted.
-func (r MeasureRow) ChangeIn(pounds bool) string {
-	if pounds && r.After.Measure == exam.Weight && r.HadBefore && r.HasAfter {
-		return signed(PoundsOf(r.Change))
+// ChangeIn says the change of a measure in the units that the practice reads.
+func (r MeasureRow) ChangeIn(u exam.Units) string {
+	if r.ChangeWords == "" {
+		return ""
 	}
-	return r.ChangeWords
+	return signed(u.Shown(r.After.Measure, r.Change))
 }
 
 // UnitOf is the unit that a measure is shown and typed in.
-func (s *ExamSheet) UnitOf(m exam.Measure) string {
-	if m == exam.Weight && s.in.Pounds {
-		return "lb"
-	}
-	return m.Info().Unit
-}
+func (s *ExamSheet) UnitOf(m exam.Measure) string { return s.in.Units.Unit(m) }
+
+// Units are the units that the sheet shows and takes.
+func (s *ExamSheet) Units() exam.Units { return s.in.Units }
 
 // ValueWords says a measured value in the unit that it is shown in.
-func (s *ExamSheet) ValueWords(m exam.Measured) string { return MeasuredWords(m, s.in.Pounds) }
-
-// PoundsOf converts kilograms to pounds: 1 lb is 0.45359237 kg (international yard and pound agreement, 1959).
-func PoundsOf(kg float64) float64 { return kg / 0.45359237 }
-
-// KilogramsOf converts pounds to kilograms.
-func KilogramsOf(lb float64) float64 { return lb * 0.45359237 }
+func (s *ExamSheet) ValueWords(m exam.Measured) string { return MeasuredWords(m, s.in.Units) }
 
 // WeightWords says a weight with its unit, in pounds where they are wanted.
-func WeightWords(kg float64, pounds bool) string {
-	if pounds {
-		return number(PoundsOf(kg)) + " lb"
-	}
-	return number(kg) + " kg"
+func WeightWords(kg float64, u exam.Units) string {
+	return MeasuredWords(exam.Measured{Measure: exam.Weight, Value: kg}, u)
 }

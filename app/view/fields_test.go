@@ -9,22 +9,20 @@ import (
 	"cordwalk.example/cordwalk/storage"
 )
 
-// The avoirdupois pound is 0.45359237 kg exactly (international yard and pound agreement of 1959).
+// The avoirdupois pound is 0.45359237 kg, the foot 30.48 cm exactly (international yard and pound agreement of 1959).
 func TestWeightsInPounds(t *testing.T) {
-	if got := WeightWords(10, true); got != "22 lb" {
+	us := exam.Units{Pounds: true, Inches: true}
+	if got := WeightWords(10, us); got != "22 lb" {
 		t.Errorf("10 kg is %s", got)
 	}
-	if got := WeightWords(0.45359237, true); got != "1 lb" {
+	if got := WeightWords(0.45359237, us); got != "1 lb" {
 		t.Errorf("a pound is %s", got)
 	}
-	if got := KilogramsOf(PoundsOf(9.4)); got < 9.3999999 || got > 9.4000001 {
-		t.Errorf("there and back 9.4 kg is %v", got)
-	}
-	if got := MeasuredWords(exam.Measured{Measure: exam.ThighGirth, Value: 30}, true); got != "30 cm" {
+	if got := MeasuredWords(exam.Measured{Measure: exam.ThighGirth, Value: 30.48}, us); got != "12 in" {
 		t.Errorf("a girth is %s", got)
 	}
 	p := exam.Patient{Name: "Fern", Species: exam.Dog, Weights: []exam.WeightPoint{{Kg: 10}}}
-	if s := StripOf(p, day0, true); !strings.HasSuffix(s.Signalment, "22 lb") {
+	if s := StripOf(p, day0, us); !strings.HasSuffix(s.Signalment, "22 lb") {
 		t.Errorf("the strip says %q", s.Signalment)
 	}
 }
@@ -32,7 +30,7 @@ func TestWeightsInPounds(t *testing.T) {
 // A weight typed in pounds is kept in kilograms.
 func TestAWeightTypedInPounds(t *testing.T) {
 	in := ExamInput{Patient: exam.Patient{ID: exam.ID{15: 1}, Species: exam.Dog}, Visit: exam.Visit{ID: exam.ID{15: 2}, Patient: exam.ID{15: 1}, Examined: day0, Examiner: "A"},
-		Items: []exam.Item{exam.Mentation}, Measures: []exam.Measure{exam.Weight}, Pounds: true}
+		Items: []exam.Item{exam.Mentation}, Measures: []exam.Measure{exam.Weight}, Units: exam.Units{Pounds: true}}
 	s, err := NewExamSheet(in)
 	if err != nil {
 		t.Fatal(err)
@@ -90,7 +88,7 @@ func TestValuesToChooseSayWhoAndWhy(t *testing.T) {
 	conflict := func(vs ...storage.Value) storage.Record {
 		return storage.Record{Visits: []exam.Visit{closed}, Conflicts: []storage.Conflict{{Patient: visit.Patient, Record: visit.ID, Kind: storage.KindVisit, Field: "finding/" + cell.String(), Values: vs}}}
 	}
-	two := NewChoices(conflict(storage.Value{Raw: raw(1), Examiner: "Ada", Device: "laptop", At: seen}, storage.Value{Raw: raw(2), Examiner: "Bo", Device: "device 0a1b", At: seen}))
+	two := NewChoices(conflict(storage.Value{Raw: raw(1), Examiner: "Ada", Device: "laptop", At: seen}, storage.Value{Raw: raw(2), Examiner: "Bo", Device: "device 0a1b", At: seen}), exam.Units{})
 	if len(two) != 1 || len(two[0].Options) != 2 {
 		t.Fatalf("%+v", two)
 	}
@@ -102,15 +100,15 @@ func TestValuesToChooseSayWhoAndWhy(t *testing.T) {
 	if o := c.Options[0]; o.Words != want || !strings.HasPrefix(o.Who, "Ada, 2 Mar 2026") || !strings.HasSuffix(o.Who, "laptop") || o.Note != "" {
 		t.Errorf("%+v, want the words %q", o, want)
 	}
-	late := NewChoices(conflict(storage.Value{Raw: raw(1)}, storage.Value{Raw: raw(2), Late: true}))[0]
+	late := NewChoices(conflict(storage.Value{Raw: raw(1)}, storage.Value{Raw: raw(2), Late: true}), exam.Units{})[0]
 	if late.Why != "A value arrived after the visit was closed." || late.Options[1].Note == "" || late.Options[0].Note != "" {
 		t.Errorf("%+v", late)
 	}
-	doubt := NewChoices(conflict(storage.Value{Raw: raw(1), Doubtful: true}))[0]
+	doubt := NewChoices(conflict(storage.Value{Raw: raw(1), Doubtful: true}), exam.Units{})[0]
 	if !strings.HasPrefix(doubt.Why, "An entry was lost") || doubt.Options[0].Note == "" {
 		t.Errorf("%+v", doubt)
 	}
-	gone := NewChoices(conflict(storage.Value{Raw: raw(1)}, storage.Value{}))[0]
+	gone := NewChoices(conflict(storage.Value{Raw: raw(1)}, storage.Value{}), exam.Units{})[0]
 	if gone.Options[1].Words != "cleared" {
 		t.Errorf("a cleared value reads %q", gone.Options[1].Words)
 	}
@@ -122,7 +120,7 @@ func TestHistorySaysWhatReplacedWhat(t *testing.T) {
 		{Record: visit.Patient, Field: "name", Raw: []byte{1}, Value: "Fern", Examiner: "Ada", Device: "laptop", At: seen, How: "edit", Current: true},
 		{Record: visit.ID, Field: f, Raw: raw(1), Examiner: "Ada", Device: "laptop", At: seen.Add(time.Minute), How: "edit"},
 		{Record: visit.ID, Field: f, Raw: raw(2), Replaced: [][]byte{raw(1)}, Examiner: "Bo", Device: "tablet", At: seen.Add(24 * time.Hour), How: "amend", Reason: "misread", Current: true},
-	}, []exam.Visit{visit}, time.UTC)
+	}, []exam.Visit{visit}, time.UTC, exam.Units{})
 	l := h.Lines()
 	if h.Total() != 3 || l[0].Who != "Bo, tablet" || l[0].How != "amended after closing: misread" || l[0].Day != "3 Mar 2026" || l[0].Clock != "10:00" {
 		t.Errorf("%+v", l[0])

@@ -290,8 +290,8 @@ type Strip struct {
 	Limits                    string // the referral's limits, and whether it has run out
 }
 
-// StripOf returns the strip of a patient at a time, with its weight in lb where pounds are wanted.
-func StripOf(p exam.Patient, now time.Time, pounds bool) Strip {
+// StripOf returns the strip of a patient at a time, with its weight in the units that the practice reads.
+func StripOf(p exam.Patient, now time.Time, u exam.Units) Strip {
 	s := Strip{Name: p.Name, Species: SpeciesName(p.Species), Date: Day(now), Demo: p.Demo}
 	var sig []string
 	if p.Breed != "" {
@@ -315,7 +315,7 @@ func StripOf(p exam.Patient, now time.Time, pounds bool) Strip {
 		}
 	}
 	if n := len(p.Weights); n > 0 {
-		sig = append(sig, WeightWords(p.Weights[n-1].Kg, pounds))
+		sig = append(sig, WeightWords(p.Weights[n-1].Kg, u))
 	}
 	s.Signalment = strings.Join(sig, ", ")
 	var probs []string

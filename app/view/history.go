@@ -35,7 +35,7 @@ type History struct {
 }
 
 // NewHistory says the changes of a patient in words.
-func NewHistory(entries []storage.Entry, visits []exam.Visit, zone *time.Location) *History {
+func NewHistory(entries []storage.Entry, visits []exam.Visit, zone *time.Location, u exam.Units) *History {
 	if zone == nil {
 		zone = time.Local
 	}
@@ -47,7 +47,7 @@ func NewHistory(entries []storage.Entry, visits []exam.Visit, zone *time.Locatio
 	for _, e := range slices.Backward(entries) {
 		at := e.At.In(zone)
 		l := HistoryLine{At: at, Day: Day(at), Clock: at.Format("15:04"), Who: strings.Trim(e.Examiner+", "+e.Device, ", "), Where: words.T("Patient"),
-			Field: FieldTitle(e.Field), After: FieldWords(e.Field, e.Raw, e.Value), How: e.How, key: e.Record.String() + "/" + e.Field}
+			Field: FieldTitle(e.Field), After: FieldWords(e.Field, e.Raw, e.Value, u), How: e.How, key: e.Record.String() + "/" + e.Field}
 		if t, ok := actTitles[e.How]; ok {
 			l.How = words.Of(t)
 		}
@@ -59,7 +59,7 @@ func NewHistory(entries []storage.Entry, visits []exam.Visit, zone *time.Locatio
 		}
 		var before []string
 		for _, raw := range e.Replaced {
-			if w := FieldWords(e.Field, raw, e.Before); !slices.Contains(before, w) {
+			if w := FieldWords(e.Field, raw, e.Before, u); !slices.Contains(before, w) {
 				before = append(before, w)
 			}
 		}

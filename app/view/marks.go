@@ -182,13 +182,3 @@ func UntestedWords(f exam.Finding) string {
 	}
 	return words.T("not tested (%s)", words.Of(r.String()))
 }
-
-// ValueWords says a measured value with its unit, such as "9.4 kg"; numbers without a unit
-// stand alone.
-func ValueWords(m exam.Measured) string {
-	s := number(m.Value)
-	if u := m.Measure.Info().Unit; u != "" && u != "1" {
-		s += " " + u
-	}
-	return s
-}

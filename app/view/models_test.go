@@ -266,7 +266,7 @@ func TestStripAboveEveryScreen(t *testing.T) {
 	p.Problems = []exam.Problem{{Diagnosis: "disc extrusion", Level: "T12-T13", Side: "left"}, {Diagnosis: "old", Resolved: "2025-01-01"}}
 	p.Precautions = []exam.PrecautionOn{{Code: "rest-until", Until: "2026-04-01", Note: "crate"}, {Code: "bites"}, {Code: "rest-until", Until: "2026-01-01"}}
 	p.Referral = exam.Referral{By: "Dr A", Until: "2026-02-01"}
-	s := StripOf(p, day0, false)
+	s := StripOf(p, day0, exam.Units{})
 	require.Equal(t, "Dachshund, female, neutered, 5 years", s.Signalment)
 	require.Equal(t, "disc extrusion T12-T13, left", s.Problem)
 	require.Equal(t, []string{"rest until 1 Apr 2026 (crate)", "bites"}, s.Precautions, "what has run out is not shown")

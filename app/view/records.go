@@ -86,7 +86,7 @@ func ExamOf(pr exam.Practice, p exam.Patient, visit exam.Visit, others []exam.Vi
 	agenda := exam.AgendaFor(protocol, last, visit)
 	bars := exam.Bars(p.Precautions, exam.DayOf(visit.Examined))
 	return ExamInput{
-		Patient: p, Visit: visit, Earlier: others, Pounds: pr.Pounds,
+		Patient: p, Visit: visit, Earlier: others, Units: pr.Units(),
 		Items: agenda.Items, Measures: agenda.Measures, Extra: agenda.Extra,
 		Barred:  bars.Why,
 		Posture: PostureOf(exam.UsualPosition(p, visit.Examined)),

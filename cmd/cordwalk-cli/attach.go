@@ -56,9 +56,9 @@ func (c *examAttachCmd) Run(e *env) error {
 		if err != nil {
 			return err
 		}
-		who := c.Examiner
-		if who == "" {
-			who = v.Examiner
+		who, err := e.examinerOr(s, c.Examiner, v.Examiner)
+		if err != nil {
+			return err
 		}
 		x := exam.Attachment{ID: storage.NewID(), Name: name, Format: clean.Format, Size: clean.Size, Note: c.Note}
 		after := v

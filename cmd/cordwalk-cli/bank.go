@@ -17,6 +17,12 @@ type practiceShowCmd struct {
 	Language string `help:"Language whose sentences are shown; that of the sheets where not said." placeholder:"TAG"`
 }
 
+type whoJSON struct {
+	Name     string `json:"name"`
+	Initials string `json:"initials,omitempty"`
+	PIN      bool   `json:"pin"` // a PIN is asked for
+}
+
 type phraseJSON struct {
 	Key      string `json:"key"`
 	English  string `json:"english"`
@@ -51,9 +57,14 @@ func (c *practiceShowCmd) Run(e *env) error {
 				Language   string       `json:"language"`
 				Paper      string       `json:"paper"`
 				Pounds     bool         `json:"pounds"`
+				Inches     bool         `json:"inches"`
+				Examiners  []whoJSON    `json:"examiners"`
 				LogoBytes  int          `json:"logo_bytes"`
 				Phrases    []phraseJSON `json:"phrases"`
-			}{pr.Name, pr.Contact, pr.OutOfHours, pr.Zone, pr.Language, pr.Paper, pr.Pounds, len(pr.Logo), []phraseJSON{}}
+			}{pr.Name, pr.Contact, pr.OutOfHours, pr.Zone, pr.Language, pr.Paper, pr.Pounds, pr.Inches, []whoJSON{}, len(pr.Logo), []phraseJSON{}}
+			for _, x := range pr.Examiners {
+				out.Examiners = append(out.Examiners, whoJSON{x.Name, x.Initials, x.PINHash != ""})
+			}
 			for _, p := range list {
 				out.Phrases = append(out.Phrases, phraseJSON(p))
 			}
@@ -75,6 +86,15 @@ func (c *practiceShowCmd) Run(e *env) error {
 		line(words.T("Nights and Sundays"), pr.OutOfHours.Name, pr.OutOfHours.Phone)
 		line(words.T("Language"), pr.Language)
 		line(words.T("Paper"), pr.Paper)
+		units := pr.Units()
+		line(words.T("Units"), units.Unit(exam.Weight), units.Unit(exam.ThighGirth))
+		for _, x := range pr.Examiners {
+			pin := ""
+			if x.PINHash != "" {
+				pin = words.T("with a PIN")
+			}
+			line(words.T("Examiner"), x.Name, x.Initials, pin)
+		}
 		if n := len(pr.Logo); n > 0 {
 			line(words.T("Logo"), words.T("%d KiB", max(1, n>>10)))
 		}
@@ -100,6 +120,8 @@ type practiceSetCmd struct {
 	NightPhone *string           `help:"Telephone at night and on Sundays."`
 	SheetsIn   *string           `name:"sheets-in" help:"Language of the sheets." placeholder:"TAG"`
 	Paper      string            `help:"Paper of the sheets." enum:",A4,Letter" default:""`
+	Weights    string            `help:"Unit that weights are shown and taken in: kg or lb." enum:",kg,lb" default:""`
+	Girths     string            `help:"Unit that girths are shown and taken in: cm or in." enum:",cm,in" default:""`
 	Logo       string            `help:"PNG or JPEG for the heading of papers, at most 256 KiB." placeholder:"FILE"`
 	NoLogo     bool              `help:"Take the logo away."`
 	Phrase     map[string]string `help:"A sentence in the practice's own words, by its name; without words the standard text comes back." placeholder:"KEY=WORDS" mapsep:"none"`
@@ -109,7 +131,7 @@ type practiceSetCmd struct {
 
 func (c *practiceSetCmd) Run(e *env) error {
 	return e.change(func(s *storage.Store) error {
-		who, err := examiner(s, c.Examiner)
+		who, err := e.examiner(s, c.Examiner)
 		if err != nil {
 			return err
 		}
@@ -132,6 +154,12 @@ func (c *practiceSetCmd) Run(e *env) error {
 		}
 		if c.Paper != "" {
 			after.Paper = c.Paper
+		}
+		if c.Weights != "" {
+			after.Pounds = c.Weights == "lb"
+		}
+		if c.Girths != "" {
+			after.Inches = c.Girths == "in"
 		}
 		switch {
 		case c.NoLogo:

@@ -185,14 +185,15 @@ func (e *env) compare(s *storage.Store, r storage.Record, before, after exam.Vis
 	}
 	if len(cmp.Measures) > 0 {
 		fmt.Fprintf(w, "\n%s\n", words.T("Measures"))
+		units := e.units(s)
 		value := func(has bool, m exam.Measured) string {
 			if !has {
 				return words.T("not measured")
 			}
-			return view.ValueWords(m)
+			return view.MeasuredWords(m, units)
 		}
 		for _, m := range cmp.Measures {
-			fmt.Fprintf(w, "    %s\t%s\t→ %s\t%s\n", m.Name, value(m.HadBefore, m.Before), value(m.HasAfter, m.After), strings.Trim(m.ChangeWords+" "+m.Unlike, " "))
+			fmt.Fprintf(w, "    %s\t%s\t→ %s\t%s\n", m.Name, value(m.HadBefore, m.Before), value(m.HasAfter, m.After), strings.Trim(m.ChangeIn(units)+" "+m.Unlike, " "))
 		}
 	}
 	return w.Flush()

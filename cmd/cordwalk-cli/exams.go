@@ -273,13 +273,14 @@ func (c *examShowCmd) Run(e *env) error {
 			fmt.Fprintf(w, "%s\t%s\t%s\t%s\n", mark, view.CellName(f.Key()), view.GradeWords(f), how)
 		}
 		if len(v.Measures) > 0 {
+			units := e.units(s)
 			fmt.Fprintf(w, "\n%s\n", words.T("Measures"))
 			for _, m := range v.Measures {
 				site := ""
 				if m.Site != exam.NoSite && m.Site != exam.Midline {
 					site = ", " + view.SiteName(m.Site)
 				}
-				fmt.Fprintf(w, "\t%s%s\t%s\t\n", view.MeasureName(m.Measure), site, view.ValueWords(m))
+				fmt.Fprintf(w, "\t%s%s\t%s\t\n", view.MeasureName(m.Measure), site, view.MeasuredWords(m, units))
 			}
 		}
 		if err := w.Flush(); err != nil {
@@ -329,9 +330,9 @@ func (c *examCloseCmd) Run(e *env) error {
 		if err := mayClose(r, v); err != nil {
 			return err
 		}
-		who := c.Examiner
-		if who == "" {
-			who = v.Examiner
+		who, err := e.examinerOr(s, c.Examiner, v.Examiner)
+		if err != nil {
+			return err
 		}
 		if _, err := s.Apply(e.ctx, who, storage.CloseEdit(v.Patient, v.ID, time.Now())); err != nil {
 			return err
@@ -385,9 +386,9 @@ func (c *examAmendCmd) Run(e *env) error {
 			e.say("%s", words.T("Nothing differs; nothing was changed."))
 			return nil
 		}
-		who := c.Examiner
-		if who == "" {
-			who = v.Examiner
+		who, err := e.examinerOr(s, c.Examiner, v.Examiner)
+		if err != nil {
+			return err
 		}
 		if _, err := s.Apply(e.ctx, who, storage.AmendEdits(v, c.Reason, edits...)...); err != nil {
 			return err
@@ -428,9 +429,9 @@ func (c *examAnswerCmd) Run(e *env) error {
 			}
 			return fmt.Errorf("%s", words.T("this visit raises no alert %q; it raises %s", c.Rule, strings.Join(names, ", ")))
 		}
-		who := c.Examiner
-		if who == "" {
-			who = v.Examiner
+		who, err := e.examinerOr(s, c.Examiner, v.Examiner)
+		if err != nil {
+			return err
 		}
 		after := v
 		after.Answers = append(slices.Clone(v.Answers), exam.Acknowledgement{Rule: c.Rule, Told: c.Told, Note: c.Note, Examiner: who, At: time.Now()})

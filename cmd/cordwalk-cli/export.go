@@ -431,7 +431,7 @@ func (c *importCmd) table(e *env, data []byte) error {
 		}
 		take, duplicates, problems := plan.Counts()
 		if !c.DryRun {
-			who, err := examiner(s, c.Examiner)
+			who, err := e.examiner(s, c.Examiner)
 			if err != nil {
 				return err
 			}

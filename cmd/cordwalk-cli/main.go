@@ -40,6 +40,8 @@ type commands struct {
 	KeyFile      string           `help:"File with the key that opens the practice." placeholder:"FILE"`
 	PassphraseFd int              `name:"passphrase-fd" help:"Read the passphrase from this file descriptor." default:"-1" placeholder:"N"`
 	NoPassphrase bool             `help:"A new practice is made without protection: its key lies beside the data."`
+	As           string           `help:"Who is at work: an examiner of the practice, by name or initials; the first where not said." env:"CORDWALK_AS" placeholder:"NAME"`
+	PINFd        int              `name:"pin-fd" help:"Read the examiner's PIN from this file descriptor." default:"-1" placeholder:"N"`
 	Lang         string           `help:"Language of what is printed and of the sheets, such as en." env:"CORDWALK_LANG" placeholder:"TAG"`
 	Version      kong.VersionFlag `help:"Print the version."`
 
@@ -71,8 +73,9 @@ type commands struct {
 	Summary  summaryCmd  `cmd:"" help:"Write the clinical summary for the veterinarian as PDF."`
 	Letter   letterCmd   `cmd:"" help:"Write a referral letter about an alert as PDF."`
 	Practice struct {
-		Show practiceShowCmd `cmd:"" help:"Show what holds for all patients."`
-		Set  practiceSetCmd  `cmd:"" help:"Change what holds for all patients."`
+		Show     practiceShowCmd     `cmd:"" help:"Show what holds for all patients."`
+		Set      practiceSetCmd      `cmd:"" help:"Change what holds for all patients."`
+		Examiner practiceExaminerCmd `cmd:"" help:"Add an examiner, or change one: name, initials, a PIN for switching."`
 	} `cmd:"" help:"The practice: its name and contact, its logo and its own wording on the sheets."`
 	Export    exportCmd    `cmd:"" help:"Write records out: json, csv, xlsx, fhir or ics."`
 	Import    importCmd    `cmd:"" help:"Read records in, from what export wrote."`
@@ -103,6 +106,7 @@ type env struct {
 	out    io.Writer
 	errOut io.Writer
 	in     io.Reader
+	asked  string // the examiner whose PIN was given
 }
 
 // usageError is an error of the command line, not of the data.

@@ -305,7 +305,7 @@ func (c *patientAddCmd) Run(e *env) error {
 			}
 			return e.added("patient", p.ID, false)
 		}
-		who, err := examiner(s, c.Examiner)
+		who, err := e.examiner(s, c.Examiner)
 		if err != nil {
 			return err
 		}
@@ -356,7 +356,7 @@ func (c *patientSetCmd) Run(e *env) error {
 		if bad.Any() {
 			return complain(bad)
 		}
-		who, err := examiner(s, c.Examiner)
+		who, err := e.examiner(s, c.Examiner)
 		if err != nil {
 			return err
 		}
@@ -461,7 +461,7 @@ func (c *patientShowCmd) Run(e *env) error {
 			return e.printJSON(out)
 		}
 		e.protection(s)
-		st := view.StripOf(p, time.Now(), false)
+		st := view.StripOf(p, time.Now(), e.units(s))
 		e.say("%s · %s · %s", p.Name, st.Species, st.Signalment)
 		if st.Problem != "" {
 			e.say("%s", words.T("Problem: %s", st.Problem))
@@ -572,7 +572,7 @@ func (c *patientPartCmd) Run(e *env) error {
 		if !slices.Contains(r.Joined, a) || !slices.Contains(r.Joined, b) || a == b {
 			return fmt.Errorf("%s", words.T("the two are not joined"))
 		}
-		who, err := examiner(s, c.Examiner)
+		who, err := e.examiner(s, c.Examiner)
 		if err != nil {
 			return err
 		}
@@ -598,7 +598,7 @@ func (e *env) edge(a, b, who string, edits func(a, b storage.Record) ([]storage.
 		if err != nil {
 			return err
 		}
-		name, err := examiner(s, who)
+		name, err := e.examiner(s, who)
 		if err != nil {
 			return err
 		}

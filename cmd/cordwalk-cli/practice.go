@@ -331,7 +331,7 @@ func (c *resolveCmd) Run(e *env) error {
 			return fmt.Errorf("%s", words.N(len(r.Conflicts), "%s has %d conflict", "%s has %d conflicts", r.Patient.Name, len(r.Conflicts)))
 		}
 		x := r.Conflicts[c.Number-1]
-		who, err := examiner(s, c.Examiner)
+		who, err := e.examiner(s, c.Examiner)
 		if err != nil {
 			return err
 		}

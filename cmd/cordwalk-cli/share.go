@@ -220,7 +220,7 @@ type inviteCmd struct {
 
 func (c *inviteCmd) Run(e *env) error {
 	return e.shared(c.sheetFlag, func(sh *share.Share) error {
-		who, err := examiner(sh.Store, c.Examiner)
+		who, err := e.examiner(sh.Store, c.Examiner)
 		if err != nil {
 			return err
 		}
@@ -342,7 +342,7 @@ func (c *admitCmd) Run(e *env) error {
 		if len(asked) == 0 {
 			return errors.New(words.T("no request that fits an open invitation lies in %s", c.Folder))
 		}
-		who, err := examiner(sh.Store, c.Examiner)
+		who, err := e.examiner(sh.Store, c.Examiner)
 		if err != nil {
 			return err
 		}
@@ -399,7 +399,7 @@ func (c *removeCmd) Run(e *env) error {
 		if len(hits) != 1 {
 			return errors.New(words.N(len(hits), "%d device is called %q; name it by its key", "%d devices are called %q; name one by its key", len(hits), c.Device))
 		}
-		who, err := examiner(sh.Store, c.Examiner)
+		who, err := e.examiner(sh.Store, c.Examiner)
 		if err != nil {
 			return err
 		}
@@ -492,7 +492,7 @@ func (c *backupCmd) Run(e *env) error {
 		if err != nil {
 			return err
 		}
-		who, err := examiner(sh.Store, c.Examiner)
+		who, err := e.examiner(sh.Store, c.Examiner)
 		if err != nil {
 			return err
 		}

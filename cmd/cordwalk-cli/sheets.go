@@ -54,7 +54,7 @@ func (c *paperFlags) input(e *env, s *storage.Store) (sheet.Input, error) {
 
 // finish writes a paper, keeps with the patient that it was written, and says where.
 func (c *paperFlags) finish(e *env, s *storage.Store, in sheet.Input, d sheet.Document) error {
-	who, err := examiner(s, c.Examiner)
+	who, err := e.examiner(s, c.Examiner)
 	if err != nil {
 		return err
 	}

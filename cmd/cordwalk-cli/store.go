@@ -192,7 +192,7 @@ func (e *env) token(s *storage.Store) {
 
 // audited writes that something left the practice, once it has.
 func (e *env) audited(s *storage.Store, did audit.Did, what string) error {
-	who, err := examiner(s, "")
+	who, err := e.examiner(s, "")
 	if err != nil {
 		return err
 	}
@@ -202,9 +202,11 @@ func (e *env) audited(s *storage.Store, did audit.Did, what string) error {
 // looked notes that a patient was looked at, once for each day. A practice that cannot be
 // written to is read all the same.
 func (e *env) looked(s *storage.Store, patient exam.ID) {
-	who, err := examiner(s, "")
-	if err != nil {
-		return
+	who := "cordwalk-cli"
+	if e.c.As == "" || e.c.PINFd >= 0 { // nobody is asked for a PIN in order to read
+		if x, err := e.examiner(s, ""); err == nil {
+			who = x
+		}
 	}
 	if v, err := audit.OpenViews(s, nil); err == nil {
 		_ = v.Note(who, patient, time.Now())
@@ -380,20 +382,97 @@ func (e *env) readInput(name string, limit int64) ([]byte, error) {
 	return data, nil
 }
 
-// examiner returns who makes a change: the one named, or the practice's first; in a practice
-// without examiners this program.
-func examiner(s *storage.Store, named string) (string, error) {
-	if strings.TrimSpace(named) != "" {
-		return strings.TrimSpace(named), nil
-	}
+// examiner is who a change is written under: the one named, else the one that --as names, else the
+// practice's first. An examiner of the practice may be called by initials; one with a PIN is asked for it.
+func (e *env) examiner(s *storage.Store, named string) (string, error) {
 	p, err := s.Practice()
 	if err != nil {
 		return "", err
 	}
-	if len(p.Examiners) > 0 {
-		return p.Examiners[0].Name, nil
+	named = strings.TrimSpace(named)
+	if as := strings.TrimSpace(e.c.As); named == "" && as != "" {
+		if _, ok := view.FindExaminer(p, as); !ok {
+			return "", usage("%s", words.T("nobody is called %[1]s here; the practice's examiners are %[2]s", as, examinerNames(p)))
+		}
+		named = as
 	}
-	return "cordwalk-cli", nil
+	if named == "" {
+		if len(p.Examiners) > 0 {
+			return p.Examiners[0].Name, nil
+		}
+		return "cordwalk-cli", nil
+	}
+	x, ok := view.FindExaminer(p, named)
+	if !ok {
+		return named, nil
+	}
+	return x.Name, e.askPIN(x)
+}
+
+// examinerOr is examiner, with somebody else than the practice's first where nobody is named.
+func (e *env) examinerOr(s *storage.Store, named, otherwise string) (string, error) {
+	if strings.TrimSpace(named) == "" && strings.TrimSpace(e.c.As) == "" {
+		return otherwise, nil
+	}
+	return e.examiner(s, named)
+}
+
+func examinerNames(p exam.Practice) string {
+	names := make([]string, len(p.Examiners))
+	for i, x := range p.Examiners {
+		names[i] = strings.TrimSpace(x.Name + " " + x.Initials)
+	}
+	return strings.Join(names, ", ")
+}
+
+// units are the units that the practice reads measures in.
+func (e *env) units(s *storage.Store) exam.Units {
+	p, err := s.Practice()
+	if err != nil {
+		return exam.Units{}
+	}
+	return p.Units()
+}
+
+// askPIN asks for the PIN of an examiner who has one, once.
+func (e *env) askPIN(x exam.Examiner) error {
+	if x.PINHash == "" || e.asked == x.Name {
+		return nil
+	}
+	pin, err := e.readPIN(e.c.PINFd, words.T("PIN of %s: ", x.Name))
+	if err != nil {
+		return err
+	}
+	switch err := view.PINFits(x, pin); {
+	case errors.Is(err, view.ErrNotTheirPIN):
+		return errors.New(words.T("this is not the PIN of %s; nothing was changed", x.Name))
+	case err != nil:
+		return err
+	}
+	e.asked = x.Name
+	return nil
+}
+
+// readPIN reads a PIN from a file descriptor, or asks at the terminal.
+func (e *env) readPIN(fd int, prompt string) (string, error) {
+	if fd >= 0 {
+		f := os.NewFile(uintptr(fd), "PIN")
+		if f == nil {
+			return "", usage("%s", words.T("file descriptor %d is not open", fd))
+		}
+		p, err := io.ReadAll(io.LimitReader(f, 64))
+		if err != nil {
+			return "", fmt.Errorf("%s: %w", words.T("reading the PIN"), err)
+		}
+		return strings.TrimSpace(string(p)), nil
+	}
+	if in, ok := e.in.(*os.File); ok && term.IsTerminal(int(in.Fd())) {
+		fmt.Fprint(e.errOut, prompt)
+		p, err := term.ReadPassword(int(in.Fd()))
+		fmt.Fprintln(e.errOut)
+		return strings.TrimSpace(string(p)), err
+	}
+	return "", usage("%s", words.T("there is no terminal to ask for the PIN at; give it with a file descriptor, such as --pin-fd 3"))
 }
 
 // shortDay is a day in a table.
