@@ -11,7 +11,6 @@ import (
 	"path/filepath"
 	"runtime"
 	"slices"
-	"strings"
 	"sync"
 
 	"go.etcd.io/bbolt"
@@ -380,12 +379,22 @@ func (b *builder) workOut(i int, gaps []timedGap) (f filled) {
 type room struct {
 	slabs [][]change.Change // most fields have one version: they are made many at a time
 	used  int
-	names map[string]string // one string for each field name
+	names map[string]int // of the fields, in list
+	list  []string
+	ranks []int // the place of each name of list in the order of the names
+	found map[recordKey]*gathered
+	order []uint64 // of one record's fields
+}
+
+// gathered is a record whose fields were only collected, with the place of each field's name in room.list.
+type gathered struct {
+	*record
+	names []uint32
 }
 
 const slabSize = 512
 
-func newRoom() *room { return &room{names: map[string]string{}} }
+func newRoom() *room { return &room{names: map[string]int{}, found: map[recordKey]*gathered{}} }
 
 // version returns room for one version.
 func (r *room) version() []change.Change {
@@ -403,15 +412,15 @@ func (r *room) version() []change.Change {
 // used again.
 func (b *builder) gather(data []byte, room *room) (map[exam.ID][]*record, error) {
 	out := map[exam.ID][]*record{}
-	byKey := map[recordKey]*record{}
 	h := head{tables: b.dealt}
-	names := room.names
-	if len(names) > 4096 { // some names hold ids
-		clear(names)
+	clear(room.found)
+	if len(room.list) > 4096 { // some names hold ids
+		clear(room.names)
+		room.list = nil
 	}
 	room.used = 0
 	r := &reader{b: data}
-	var last *record
+	var last *gathered
 	for len(r.b) > 0 && !r.bad {
 		version := room.version()
 		c := &version[0]
@@ -419,48 +428,67 @@ func (b *builder) gather(data []byte, room *room) (map[exam.ID][]*record, error)
 		h.patient, h.id = r.id(), r.id()
 		name := r.bytes()
 		r.version(c, &h)
-		var ok bool
-		if c.Field, ok = names[string(name)]; !ok {
-			c.Field = string(name)
-			names[c.Field] = c.Field
+		at, ok := room.names[string(name)]
+		if !ok {
+			at = len(room.list)
+			room.list = append(room.list, string(name))
+			room.names[room.list[at]] = at
 		}
+		c.Field = room.list[at]
 		k := keyOf(*c)
 		rec := last
 		if rec == nil || rec.key() != k {
-			if rec = byKey[k]; rec == nil {
-				rec = newRecord(k)
-				byKey[k] = rec
-				out[c.Patient] = append(out[c.Patient], rec)
+			if rec = room.found[k]; rec == nil {
+				rec = &gathered{record: newRecord(k)}
+				room.found[k] = rec
+				out[c.Patient] = append(out[c.Patient], rec.record)
 			}
 		}
 		if cap(rec.fields) == len(rec.fields) {
-			rec.fields = slices.Grow(rec.fields, max(48, len(rec.fields))) // a usual exam
+			more := max(48, len(rec.fields)) // a usual exam
+			rec.fields, rec.names = slices.Grow(rec.fields, more), slices.Grow(rec.names, more)
 		}
 		rec.fields = append(rec.fields, field{c.Field, version})
+		rec.names = append(rec.names, uint32(at))
 		last = rec
 	}
 	if r.bad {
 		return nil, fmt.Errorf("the index under way: %w", errRecord)
 	}
-	for _, rec := range byKey {
-		rec.settle()
+	room.rank()
+	for _, rec := range room.found {
+		room.settle(rec)
 	}
 	return out, nil
 }
 
-// settle puts fields that were only collected into their form: sorted, each name once.
-func (r *record) settle() {
-	slices.SortStableFunc(r.fields, func(a, b field) int { return strings.Compare(a.name, b.name) })
-	n := 0
-	for i := range r.fields {
-		if n > 0 && r.fields[n-1].name == r.fields[i].name {
-			r.fields[n-1].versions = merge.Apply(r.fields[n-1].versions, r.fields[i].versions[0])
+// rank orders the names, so that fields are sorted by numbers.
+func (r *room) rank() {
+	sorted := slices.Sorted(slices.Values(r.list))
+	r.ranks = slices.Grow(r.ranks[:0], len(r.list))[:len(r.list)]
+	for i, name := range sorted {
+		r.ranks[r.names[name]] = i
+	}
+}
+
+// settle puts fields that were only collected into their form: sorted, each name once. Versions
+// of one name stay in the order they came in.
+func (r *room) settle(g *gathered) {
+	r.order = r.order[:0]
+	for i, at := range g.names {
+		r.order = append(r.order, uint64(r.ranks[at])<<32|uint64(i))
+	}
+	slices.Sort(r.order)
+	out := make([]field, 0, len(g.fields))
+	for _, o := range r.order {
+		f := g.fields[uint32(o)]
+		if n := len(out); n > 0 && out[n-1].name == f.name {
+			out[n-1].versions = merge.Apply(out[n-1].versions, f.versions[0])
 			continue
 		}
-		r.fields[n] = r.fields[i]
-		n++
+		out = append(out, f)
 	}
-	r.fields = r.fields[:n]
+	g.fields = out
 }
 
 // loader puts sorted entries into a new index, in transactions of some size.

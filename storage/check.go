@@ -11,17 +11,21 @@ import (
 
 	"cordwalk.example/cordwalk/storage/disk"
 	"cordwalk.example/cordwalk/sync/change"
+	"cordwalk.example/cordwalk/sync/key"
 )
+
+// A Checker looks through what lies in a store's folder and is kept by another package, such as attachments.
+type Checker func(ctx context.Context, fsys disk.FS, dir string, ring *key.Ring) ([]Problem, error)
 
 // Check reads everything in a store and reports what is wrong, by place. It changes nothing.
 // The error says that the check could not be made, for example because the store is open elsewhere.
-func Check(ctx context.Context, dir string, o Options) ([]Problem, error) {
+func Check(ctx context.Context, dir string, o Options, more ...Checker) ([]Problem, error) {
 	o = o.withDefaults()
-	ps, err := check(ctx, dir, o)
+	ps, err := check(ctx, dir, o, more)
 	return ps, explain("checking the practice in "+dir, err)
 }
 
-func check(ctx context.Context, dir string, o Options) ([]Problem, error) {
+func check(ctx context.Context, dir string, o Options, more []Checker) ([]Problem, error) {
 	if err := holdsPractice(o.Files, dir); err != nil {
 		return nil, err
 	}
@@ -50,6 +54,13 @@ func check(ctx context.Context, dir string, o Options) ([]Problem, error) {
 		return nil, err
 	}
 	ps = append(ps, bad...)
+	for _, c := range more {
+		bad, err := c(ctx, o.Files, dir, bag.Ring)
+		if err != nil {
+			return nil, err
+		}
+		ps = append(ps, bad...)
+	}
 	return append(ps, checkIndex(filepath.Join(dir, indexFile), seals, st)...), nil
 }
 

@@ -81,92 +81,105 @@ func used(b []byte) int {
 func TestRandomDamage(t *testing.T) {
 	rng := seeded(t)
 	master, patient, visit, last := corrected(t, rng)
-	kinds := []string{"journal", "index.db", "practice.json", "practice.bak"}
-	n := times(10_000) / len(kinds)
-	for _, kind := range kinds {
-		if checked && kind == "index.db" {
-			continue
+	for _, kind := range []string{"journal", "index.db", "practice.json", "practice.bak"} {
+		t.Run(kind, func(t *testing.T) {
+			if checked && kind == "index.db" {
+				t.Skip("see checked")
+			}
+			damageFiles(t, rng, kind, master, patient, visit, last)
+		})
+	}
+}
+
+// flips is how often each kind of file is damaged.
+func flips() int {
+	if soak() {
+		return 10_000
+	}
+	return times(2500)
+}
+
+func damageFiles(t *testing.T, rng *rand.Rand, kind, master string, patient, visit exam.ID, last map[exam.Key]int) {
+	n := flips()
+	found, refused := 0, 0
+	for range n {
+		dir := filepath.Join(t.TempDir(), "x")
+		require.NoError(t, os.CopyFS(dir, os.DirFS(master)))
+		name := filepath.Join(dir, kind)
+		if kind == "journal" {
+			es, err := os.ReadDir(name)
+			require.NoError(t, err)
+			name = filepath.Join(name, es[0].Name())
 		}
-		found, refused := 0, 0
-		for range n {
-			dir := filepath.Join(t.TempDir(), "x")
-			require.NoError(t, os.CopyFS(dir, os.DirFS(master)))
-			name := filepath.Join(dir, kind)
-			if kind == "journal" {
-				es, err := os.ReadDir(name)
-				require.NoError(t, err)
-				name = filepath.Join(name, es[0].Name())
-			}
-			b, err := os.ReadFile(name)
-			require.NoError(t, err)
-			end := used(b)
-			at := rng.IntN(end)
-			what := fmt.Sprintf("bit of byte %d of %d in %s", at, end, kind)
-			if rng.IntN(3) == 0 {
-				what = fmt.Sprintf("%s cut to %d of %d bytes", kind, at, len(b))
-				b = b[:at]
-			} else {
-				for range 1 + rng.IntN(3) {
-					b[at] ^= 1 << rng.IntN(8)
-					if b[at] == 0 && rng.IntN(2) == 0 {
-						break
-					}
+		b, err := os.ReadFile(name)
+		require.NoError(t, err)
+		end := used(b)
+		at := rng.IntN(end)
+		what := fmt.Sprintf("bit of byte %d of %d in %s", at, end, kind)
+		if rng.IntN(3) == 0 {
+			what = fmt.Sprintf("%s cut to %d of %d bytes", kind, at, len(b))
+			b = b[:at]
+		} else {
+			for range 1 + rng.IntN(3) {
+				b[at] ^= 1 << rng.IntN(8)
+				if b[at] == 0 && rng.IntN(2) == 0 {
+					break
 				}
 			}
-			require.NoError(t, os.WriteFile(name, b, 0o600))
-			if kind == "index.db" {
-				refused += damagedIndex(t, dir, patient, visit, last, what)
-				found++
-				require.NoError(t, os.RemoveAll(dir))
-				continue
-			}
-			if kind == "journal" || rng.IntN(2) == 0 {
-				require.NoError(t, os.Remove(filepath.Join(dir, "index.db"))) // so that only the journal can tell
-			}
-			same := sums(t, master)
-			damaged := sums(t, dir)
-			before := damaged
-			ps, cerr := storage.Check(ctx, dir, storagetest.Options())
-			require.Equal(t, before, sums(t, dir), "check changed a file: %s", what)
-			if same[kind] != damaged[kind] && sameJournal(same) != sameJournal(damaged) {
-				named := false
-				for _, p := range ps {
-					named = named || strings.HasPrefix(p.File, kind)
-				}
-				require.True(t, named || cerr != nil, "%s: check names no place: %v", what, ps)
-			}
-			s, err := storage.Open(dir, on(disktest.New()))
-			if err != nil {
-				refused++
-				require.NoError(t, os.RemoveAll(dir))
-				require.NotEqual(t, "journal", kind, "%s: %v", what, err)
-				continue
-			}
-			r, err := s.Patient(patient)
-			if err == nil && len(r.Visits) == 1 && r.Visits[0].ID == visit {
-				got := notes(r.Visits[0])
-				for k, want := range last {
-					switch g, ok := got[k]; {
-					case ok:
-						require.Equal(t, want, g, "%s: an old value of %s came back", what, k)
-					default:
-						require.True(t, len(r.Missing) > 0 || len(r.Conflicts) > 0, "%s: the value of %s is gone and nothing says so", what, k)
-					}
-				}
-			} else {
-				require.Equal(t, "journal", kind, "%s: %v", what, err)
-			}
-			_, _ = s.History(patient)
-			_, err = s.Caseload(ctx)
-			require.NoError(t, err)
-			_, err = s.Apply(ctx, "B", storage.FindingEdit(patient, visit, finding(cells[0], 1, "1000")))
-			require.NoError(t, err, what)
-			require.NoError(t, s.Close(), what)
+		}
+		require.NoError(t, os.WriteFile(name, b, 0o600))
+		if kind == "index.db" {
+			refused += damagedIndex(t, dir, patient, visit, last, what)
 			found++
 			require.NoError(t, os.RemoveAll(dir))
+			continue
 		}
-		t.Logf("%s: damaged %d times, opened %d times, refused (index.db: ended the process) %d times", kind, n, found, refused)
+		if kind == "journal" || rng.IntN(2) == 0 {
+			require.NoError(t, os.Remove(filepath.Join(dir, "index.db"))) // so that only the journal can tell
+		}
+		same := sums(t, master)
+		damaged := sums(t, dir)
+		before := damaged
+		ps, cerr := storage.Check(ctx, dir, storagetest.Options())
+		require.Equal(t, before, sums(t, dir), "check changed a file: %s", what)
+		if same[kind] != damaged[kind] && sameJournal(same) != sameJournal(damaged) {
+			named := false
+			for _, p := range ps {
+				named = named || strings.HasPrefix(p.File, kind)
+			}
+			require.True(t, named || cerr != nil, "%s: check names no place: %v", what, ps)
+		}
+		s, err := storage.Open(dir, on(disktest.New()))
+		if err != nil {
+			refused++
+			require.NoError(t, os.RemoveAll(dir))
+			require.NotEqual(t, "journal", kind, "%s: %v", what, err)
+			continue
+		}
+		r, err := s.Patient(patient)
+		if err == nil && len(r.Visits) == 1 && r.Visits[0].ID == visit {
+			got := notes(r.Visits[0])
+			for k, want := range last {
+				switch g, ok := got[k]; {
+				case ok:
+					require.Equal(t, want, g, "%s: an old value of %s came back", what, k)
+				default:
+					require.True(t, len(r.Missing) > 0 || len(r.Conflicts) > 0, "%s: the value of %s is gone and nothing says so", what, k)
+				}
+			}
+		} else {
+			require.Equal(t, "journal", kind, "%s: %v", what, err)
+		}
+		_, _ = s.History(patient)
+		_, err = s.Caseload(ctx)
+		require.NoError(t, err)
+		_, err = s.Apply(ctx, "B", storage.FindingEdit(patient, visit, finding(cells[0], 1, "1000")))
+		require.NoError(t, err, what)
+		require.NoError(t, s.Close(), what)
+		found++
+		require.NoError(t, os.RemoveAll(dir))
 	}
+	t.Logf("%s: damaged %d times, opened %d times, refused (index.db: ended the process) %d times", kind, n, found, refused)
 }
 
 // damagedIndex reads and writes a store with a damaged index in processes of their own: bbolt

@@ -905,7 +905,8 @@ func (s *Store) SetLimits(ctx context.Context, limits map[change.Stream]uint64) 
 	return explain("building the index anew", s.rebuildIndex(ctx, true))
 }
 
-// Quarantined returns the changes that removed devices made beyond what counts of them.
+// Quarantined returns the changes that removed devices made beyond what counts of them and that nobody admitted,
+// in the order in which each device made them.
 func (s *Store) Quarantined(ctx context.Context) ([]change.Change, error) {
 	s.mu.RLock()
 	limits, ring := maps.Clone(s.id.Limits), s.bag.Ring
@@ -922,7 +923,14 @@ func (s *Store) Quarantined(ctx context.Context) ([]change.Change, error) {
 				return nil // what cannot be read is named by check
 			}
 			for _, c := range b.Changes {
-				if c.Seq > limits[name] {
+				if c.Seq <= limits[name] {
+					continue
+				}
+				admitted, err := s.admitted(c)
+				if err != nil {
+					return err
+				}
+				if !admitted {
 					out = append(out, c)
 				}
 			}
@@ -934,6 +942,20 @@ func (s *Store) Quarantined(ctx context.Context) ([]change.Change, error) {
 	}
 	return out, nil
 }
+
+// admitted reports whether a person took a quarantined change's value into the record.
+func (s *Store) admitted(c change.Change) (bool, error) {
+	r, err := s.baseRecord(keyOf(c))
+	if err != nil {
+		return false, err
+	}
+	return slices.ContainsFunc(r.versions(c.Field), func(v change.Change) bool {
+		return v.Act == change.Admit && slices.Equal(v.Value, c.Value)
+	}), nil
+}
+
+// Words says the value of a change in English, as History does; it is empty where the change cleared its field.
+func (s *Store) Words(c change.Change) string { return s.words(c.Kind, c.Field, c) }
 
 // Admit returns the edit by which a person takes a quarantined change into the record.
 func Admit(c change.Change, reason string) Edit {

@@ -337,6 +337,15 @@ func (s *Store) EraseOwner(ctx context.Context, examiner string, patient exam.ID
 	return explain("destroying the key of an owner's contact data", s.seals.owners.destroy(patient))
 }
 
+// ForgetOwner destroys the keys of an owner whose data were erased, perhaps on another device, as the index does by
+// itself a little later. It is no error if they are gone, or if nothing says that they were erased.
+func (s *Store) ForgetOwner(owner exam.ID) error {
+	if gone, err := s.erased(owner); err != nil || !gone {
+		return err
+	}
+	return explain("destroying the key of an owner's contact data", s.seals.owners.destroy(owner))
+}
+
 // OwnerKey returns an owner's first key, sealed for devices of this practice; false if there is none.
 // The owner is named by the patient's id.
 func (s *Store) OwnerKey(owner exam.ID) (sealed []byte, ok bool, err error) {

@@ -126,7 +126,9 @@ func TestDamagedOwnerKeys(t *testing.T) {
 		ps = append(ps, p)
 	}
 	require.NoError(t, s.Close())
-	for range times(500) {
+	n := flips()
+	t.Logf("%d times", n)
+	for range n {
 		dir := copyDir(t, master)
 		name := filepath.Join(dir, "owners.keys")
 		b, err := os.ReadFile(name)

@@ -16,6 +16,7 @@ import (
 	"time"
 
 	"cordwalk.example/cordwalk/exam"
+	"cordwalk.example/cordwalk/exam/scale"
 )
 
 // Urgency says how soon the veterinarian must hear of it.
@@ -101,7 +102,8 @@ type scene struct {
 	earlier []exam.Visit // oldest first, blind repeats left out
 	tracks  *tracks      // of earlier and of later visits
 	skip    int          // index of the visit that today's repeats, -1 for none
-	brief   bool         // that a flag is raised is wanted, not what to say of it
+	series  *series
+	brief   bool // that a flag is raised is wanted, not what to say of it
 }
 
 // tracks holds, for each cell of item and site, the visits in which it was tested, oldest first.
@@ -211,6 +213,15 @@ func (c *scene) grade(i exam.Item, s exam.Site) (int8, bool) {
 		return 0, false
 	}
 	return ps[at].grade, true
+}
+
+// span returns the levels that today's score may have.
+func (c *scene) span(sc scale.Scale) (x span) {
+	if c.today.RepeatOf.IsZero() {
+		return c.series.span(sc, len(c.earlier))
+	}
+	x.low, x.high, x.ok = scale.Range(sc, c.today, exam.NoSite)
+	return x
 }
 
 // known returns today's grade or, where the item was not tested today, the last known one.
@@ -379,10 +390,32 @@ type series struct {
 	upTo   []int        // upTo[k] is how many of plain lie before all[k]
 	tracks *tracks
 	brief  bool // see scene
+	ranges map[ranged]span
+}
+
+// ranged names a score of a visit; span is the levels it may have.
+type ranged struct {
+	scale scale.Scale
+	visit int // index into series.plain
+}
+
+type span struct {
+	low, high float64
+	ok        bool
+}
+
+// span returns a score of a visit of the series, worked out once.
+func (r *series) span(sc scale.Scale, k int) span {
+	x, ok := r.ranges[ranged{sc, k}]
+	if !ok {
+		x.low, x.high, x.ok = scale.Range(sc, r.plain[k], exam.NoSite)
+		r.ranges[ranged{sc, k}] = x
+	}
+	return x
 }
 
 func newSeries(p exam.Patient, visits []exam.Visit) *series {
-	r := &series{p: p, all: slices.Clone(visits)}
+	r := &series{p: p, all: slices.Clone(visits), ranges: map[ranged]span{}}
 	slices.SortStableFunc(r.all, func(a, b exam.Visit) int { return a.Examined.Compare(b.Examined) })
 	for _, v := range r.all {
 		r.upTo = append(r.upTo, len(r.plain))
@@ -408,7 +441,7 @@ func sortFlags(fs []Flag) {
 
 // scan runs every rule on visit k against those before it.
 func (r *series) scan(k int) []Flag {
-	c := &scene{p: r.p, today: r.all[k], earlier: r.plain[:r.upTo[k]], tracks: r.tracks, skip: -1, brief: r.brief}
+	c := &scene{p: r.p, today: r.all[k], earlier: r.plain[:r.upTo[k]], tracks: r.tracks, skip: -1, series: r, brief: r.brief}
 	if again := r.all[k].RepeatOf; !again.IsZero() {
 		c.skip = slices.IndexFunc(c.earlier, func(v exam.Visit) bool { return v.ID == again })
 	}

@@ -303,15 +303,17 @@ func drop(c *scene) (out []hit) {
 	}
 	// a class of the Frankel ladder or a stage of the open-field score, against the last visit that can be scored
 	for _, sc := range []scale.Scale{scale.Frankel, scale.OpenField} {
-		_, high, ok := scale.Range(sc, c.today, exam.NoSite)
-		if !ok {
+		now := c.span(sc)
+		if !now.ok {
 			continue
 		}
+		high := now.high
 		for k := range c.before() {
-			low, _, ok := scale.Range(sc, c.earlier[k], exam.NoSite)
-			if !ok {
+			then := c.series.span(sc, k)
+			if !then.ok {
 				continue
 			}
+			low := then.low
 			fell := high < low && high <= 4 // gait normal with pain (5) against without (6) is rule 7's
 			if sc == scale.OpenField {
 				fell = stage(high) < stage(low)

@@ -59,9 +59,10 @@ type Files struct {
 
 	mu     sync.Mutex
 	keys   map[exam.ID][]ownerKey
-	erased map[exam.ID]bool
-	turn   uint64          // of the store's keys, see meet
-	given  map[string]bool // files whose key the store has
+	erased map[exam.ID]bool // on request
+	gone   map[exam.ID]bool // of these, whose keys and files are destroyed here
+	turn   uint64           // of the store's keys, see meet
+	given  map[string]bool  // files whose key the store has
 }
 
 type ownerKey struct {
@@ -74,7 +75,7 @@ func Open(ctx context.Context, s *storage.Store, fsys disk.FS) (*Files, error) {
 	if fsys == nil {
 		fsys = disk.OS()
 	}
-	f := &Files{s: s, fs: fsys, keys: map[exam.ID][]ownerKey{}, erased: map[exam.ID]bool{}, given: map[string]bool{}}
+	f := &Files{s: s, fs: fsys, keys: map[exam.ID][]ownerKey{}, erased: map[exam.ID]bool{}, gone: map[exam.ID]bool{}, given: map[string]bool{}}
 	for _, d := range []string{filesDir, ownersDir} {
 		if err := fsys.MakeDir(filepath.Join(s.Dir(), d)); err != nil {
 			return nil, fmt.Errorf("opening the attachments: %w", err)
@@ -102,9 +103,11 @@ func Open(ctx context.Context, s *storage.Store, fsys disk.FS) (*Files, error) {
 func (f *Files) ownerFile(name string) string { return filepath.Join(f.s.Dir(), ownersDir, name) }
 func (f *Files) file(name string) string      { return filepath.Join(f.s.Dir(), filesDir, name) }
 
+func (f *Files) nameOf(kind string, sum []byte) string { return nameOf(f.s.Bag().Ring, kind, sum) }
+
 // nameOf makes the name of a file out of the SHA-256 of its bytes.
-func (f *Files) nameOf(kind string, sum []byte) string {
-	m := f.s.Bag().Ring.Names().MAC([]byte(kind), sum)
+func nameOf(ring *key.Ring, kind string, sum []byte) string {
+	m := ring.Names().MAC([]byte(kind), sum)
 	return hex.EncodeToString(m[:16]) + kind
 }
 
@@ -153,12 +156,18 @@ func OwnerOf(ring *key.Ring, file []byte) (exam.ID, error) {
 	return owner, err
 }
 
-// ownerKeys returns the keys of an owner, and makes the first one if it is wanted.
+// ownerKeys returns the keys of an owner, and makes the first one if it is wanted and the store has none for the
+// contact data.
 func (f *Files) ownerKeys(owner exam.ID, make bool) ([]ownerKey, error) {
 	f.mu.Lock()
 	defer f.mu.Unlock()
 	if f.erased[owner] {
 		return nil, ErrErased
+	}
+	if len(f.keys[owner]) == 0 && make {
+		if err := f.meet(context.Background()); err != nil {
+			return nil, err
+		}
 	}
 	if ks := f.keys[owner]; len(ks) > 0 || !make {
 		if len(ks) == 0 {
@@ -283,7 +292,7 @@ func (f *Files) take(ctx context.Context, tmp string, write func(io.Writer) erro
 		return "", err
 	}
 	// Read back: a disk that kept something else is found out now, not when the photo is missed.
-	back, err := f.sumOf(ctx, path)
+	back, err := sumOf(ctx, f.fs, path)
 	if err != nil {
 		return "", err
 	}
@@ -318,8 +327,8 @@ func (w *writer) Write(b []byte) (int, error) {
 	return n, err
 }
 
-func (f *Files) sumOf(ctx context.Context, path string) ([]byte, error) {
-	in, err := f.fs.Open(path)
+func sumOf(ctx context.Context, fsys disk.FS, path string) ([]byte, error) {
+	in, err := fsys.Open(path)
 	if err != nil {
 		return nil, err
 	}
@@ -386,11 +395,11 @@ func goodName(name string) bool {
 
 const erasedField = "erased/"
 
-// Erase destroys an owner's key here, and tells the other devices to do the same. The record keeps who erased
-// and when.
+// Erase erases an owner's data at the owner's request: it destroys the owner's keys here, of contact data and of
+// files, and tells the other devices to do the same at their next contact. The record keeps who erased and
+// when. The owner is named by the patient's id.
 func (f *Files) Erase(ctx context.Context, examiner string, owner exam.ID, reason string) error {
-	_, err := f.s.Apply(ctx, examiner, storage.Edit{Kind: storage.Kind(change.KindOwner), Field: erasedField + owner.String(), Value: []byte{0xf5}})
-	if err != nil {
+	if err := f.s.EraseOwner(ctx, examiner, owner, reason); err != nil {
 		return fmt.Errorf("erasing an owner's data: %w", err)
 	}
 	if err := audit.Write(ctx, f.s, examiner, audit.Erased, owner.String()+": "+reason); err != nil {
@@ -399,23 +408,30 @@ func (f *Files) Erase(ctx context.Context, examiner string, owner exam.ID, reaso
 	return f.Obey(ctx)
 }
 
-// Obey destroys the keys and files of owners whose data were erased, here or on another device. Call it after
-// an exchange.
+// Obey implements carry.Attachments: it destroys the keys and files of owners whose data were erased, here or on
+// another device.
 func (f *Files) Obey(ctx context.Context) error {
+	f.mu.Lock()
+	defer f.mu.Unlock()
+	return f.obey(ctx)
+}
+
+// obey is Obey. mu must be held.
+func (f *Files) obey(ctx context.Context) error {
 	fields, err := f.s.Fields(storage.Kind(change.KindOwner), exam.ID{}, exam.ID{})
 	if err != nil {
 		return fmt.Errorf("looking for owners whose data were erased: %w", err)
 	}
-	f.mu.Lock()
-	defer f.mu.Unlock()
+	var owners []exam.ID // whose data are still to be destroyed here
 	tags := map[string]bool{}
 	for name := range fields {
 		text, ok := strings.CutPrefix(name, erasedField)
 		owner, err := exam.ParseID(text)
-		if !ok || err != nil {
+		if !ok || err != nil || f.gone[owner] {
 			continue
 		}
-		f.erased[owner] = true
+		owners = append(owners, owner)
+		f.erased[owner] = true // from now on nothing of it is taken in
 		tags[f.tag(owner)] = true
 		for _, k := range f.keys[owner] {
 			if err := f.destroy(f.ownerFile(k.name)); err != nil {
@@ -423,28 +439,30 @@ func (f *Files) Obey(ctx context.Context) error {
 			}
 		}
 		delete(f.keys, owner)
-	}
-	if err := f.meet(ctx); err != nil {
-		return err
-	}
-	if len(tags) == 0 {
-		return nil
-	}
-	es, err := f.fs.List(filepath.Join(f.s.Dir(), filesDir))
-	if err != nil {
-		return fmt.Errorf("looking for files of owners whose data were erased: %w", err)
-	}
-	for _, e := range es {
-		if err := ctx.Err(); err != nil {
-			return err
+		if err := f.s.ForgetOwner(owner); err != nil {
+			return fmt.Errorf("destroying an owner's key: %w", err)
 		}
-		if goodName(e.Name) && tags[f.tagOf(f.file(e.Name))] {
-			if err := f.destroy(f.file(e.Name)); err != nil {
-				return fmt.Errorf("destroying a file of an owner: %w", err)
+	}
+	if len(tags) > 0 {
+		es, err := f.fs.List(filepath.Join(f.s.Dir(), filesDir))
+		if err != nil {
+			return fmt.Errorf("looking for files of owners whose data were erased: %w", err)
+		}
+		for _, e := range es {
+			if err := ctx.Err(); err != nil {
+				return err
+			}
+			if goodName(e.Name) && tags[f.tagOf(f.file(e.Name))] {
+				if err := f.destroy(f.file(e.Name)); err != nil {
+					return fmt.Errorf("destroying a file of an owner: %w", err)
+				}
 			}
 		}
 	}
-	return nil
+	for _, owner := range owners {
+		f.gone[owner] = true
+	}
+	return f.meet(ctx)
 }
 
 // destroy overwrites the beginning of a file and removes it. On many disks the old bytes may still be found
@@ -484,39 +502,55 @@ func tagIn(head []byte) string {
 	return string(rest[:32])
 }
 
-// Problem is a file that is not what its name says.
-type Problem struct{ File, What string }
-
-// Check reads every file and says which are damaged. It changes nothing.
-func (f *Files) Check(ctx context.Context) ([]Problem, error) {
-	es, err := f.fs.List(filepath.Join(f.s.Dir(), filesDir))
-	if err != nil {
-		return nil, fmt.Errorf("checking the attachments: %w", err)
-	}
-	var out []Problem
-	for _, e := range es {
-		if !goodName(e.Name) || e.Dir {
+// Check reads every file of attachments and owners' keys in a store's folder and says which are damaged. It changes
+// nothing. It is a storage.Checker.
+func Check(ctx context.Context, fsys disk.FS, dir string, ring *key.Ring) ([]storage.Problem, error) {
+	var out []storage.Problem
+	for _, in := range []struct{ dir, ext, bad string }{
+		{filesDir, attExt, "it is damaged; an exchange brings it back if another device has it whole"},
+		{ownersDir, ownerExt, "the key of an owner is damaged; an exchange brings it back if another device has it"},
+	} {
+		es, err := fsys.List(filepath.Join(dir, in.dir))
+		if errors.Is(err, fs.ErrNotExist) {
 			continue
 		}
-		sum, err := f.sumOf(ctx, f.file(e.Name))
-		if ctx.Err() != nil {
-			return nil, ctx.Err()
-		}
 		if err != nil {
-			out = append(out, Problem{filesDir + "/" + e.Name, "it cannot be read: " + err.Error()})
-		} else if f.nameOf(attExt, sum) != e.Name {
-			out = append(out, Problem{filesDir + "/" + e.Name, "it is damaged; an exchange brings it back if another device has it whole"})
+			return nil, fmt.Errorf("checking the attachments: %w", err)
+		}
+		for _, e := range es {
+			if e.Dir || !goodName(strings.TrimSuffix(e.Name, in.ext)+attExt) || !strings.HasSuffix(e.Name, in.ext) {
+				continue
+			}
+			p := storage.Problem{File: in.dir + "/" + e.Name, Offset: -1}
+			sum, err := sumOf(ctx, fsys, filepath.Join(dir, in.dir, e.Name))
+			if ctx.Err() != nil {
+				return nil, ctx.Err()
+			}
+			switch {
+			case err != nil:
+				p.What = "it cannot be read: " + err.Error()
+			case nameOf(ring, in.ext, sum) != e.Name:
+				p.What = in.bad
+			default:
+				continue
+			}
+			out = append(out, p)
 		}
 	}
 	return out, nil
 }
 
-// Repair removes damaged files so that an exchange brings them back.
-func (f *Files) Repair(ctx context.Context) ([]Problem, error) {
+// Check is Check for this store.
+func (f *Files) Check(ctx context.Context) ([]storage.Problem, error) {
+	return Check(ctx, f.fs, f.s.Dir(), f.s.Bag().Ring)
+}
+
+// Repair sets damaged files aside so that an exchange brings them back.
+func (f *Files) Repair(ctx context.Context) ([]storage.Problem, error) {
 	ps, err := f.Check(ctx)
 	for _, p := range ps {
-		name := filepath.Base(p.File)
-		if err := f.fs.Rename(f.file(name), disk.Aside(f.file(name), "damaged")); err != nil {
+		path := filepath.Join(f.s.Dir(), filepath.FromSlash(p.File))
+		if err := f.fs.Rename(path, disk.Aside(path, "damaged")); err != nil {
 			return ps, fmt.Errorf("setting a damaged attachment aside: %w", err)
 		}
 	}
@@ -525,10 +559,7 @@ func (f *Files) Repair(ctx context.Context) ([]Problem, error) {
 
 // List implements carry.Attachments.
 func (f *Files) List(ctx context.Context) ([]carry.FileRef, error) {
-	f.mu.Lock()
-	err := f.meet(ctx)
-	f.mu.Unlock()
-	if err != nil {
+	if err := f.Obey(ctx); err != nil {
 		return nil, err
 	}
 	var out []carry.FileRef

@@ -14,6 +14,7 @@ import (
 
 	"cordwalk.example/cordwalk/exam"
 	"cordwalk.example/cordwalk/storage"
+	"cordwalk.example/cordwalk/storage/disk"
 	"cordwalk.example/cordwalk/sync/attach"
 	"cordwalk.example/cordwalk/sync/change"
 	"cordwalk.example/cordwalk/sync/share"
@@ -187,3 +188,59 @@ func TestFailedAddLeavesNothing(t *testing.T) {
 type broken struct{}
 
 func (broken) Read([]byte) (int, error) { return 0, errors.New("the camera was unplugged") }
+
+// Random bits are flipped and random ends cut off in attachments and in owners' keys: each is told with its name, and
+// nothing wrong is given out.
+func TestRandomDamage(t *testing.T) {
+	n := 500
+	if os.Getenv("CORDWALK_SOAK") == "1" {
+		n = 10_000
+	}
+	seed := rand.Uint64()
+	rng := rand.New(rand.NewPCG(seed, 1))
+	t.Logf("seed %d, %d times for each kind", seed, n)
+	a := sharetest.Found(t)
+	f := open(t, a)
+	owner := storage.NewID()
+	whole := content(70_000) // two chunks
+	name, err := f.Add(ctx, owner, bytes.NewReader(whole))
+	require.NoError(t, err)
+	for _, dir := range []string{"files", "owners"} {
+		es, err := os.ReadDir(filepath.Join(a.Dir(), dir))
+		require.NoError(t, err)
+		require.Len(t, es, 1)
+		path := filepath.Join(a.Dir(), dir, es[0].Name())
+		data, err := os.ReadFile(path)
+		require.NoError(t, err)
+		for range n {
+			bad := bytes.Clone(data)
+			at := rng.IntN(len(bad))
+			if rng.IntN(3) == 0 {
+				bad = bad[:at]
+			} else {
+				bad[at] ^= 1 << rng.IntN(8)
+			}
+			require.NoError(t, os.WriteFile(path, bad, 0o600))
+			ps, err := attach.Check(ctx, disk.OS(), a.Dir(), a.Bag().Ring)
+			require.NoError(t, err)
+			require.Len(t, ps, 1)
+			require.Equal(t, dir+"/"+es[0].Name(), ps[0].File)
+			if dir == "files" {
+				got, err := read(f, owner, name)
+				require.Error(t, err)
+				require.True(t, bytes.HasPrefix(whole, got), "a chunk that was changed is not given out")
+			}
+		}
+		require.NoError(t, os.WriteFile(path, data, 0o600))
+	}
+	// The store opens with a damaged key, and says of the photo that its key is not here.
+	es, err := os.ReadDir(filepath.Join(a.Dir(), "owners"))
+	require.NoError(t, err)
+	require.NoError(t, os.Truncate(filepath.Join(a.Dir(), "owners", es[0].Name()), 20))
+	again, err := attach.Open(ctx, a.Store, nil)
+	require.NoError(t, err)
+	_, err = read(again, owner, name)
+	if err != nil { // the store has the key as well
+		require.ErrorIs(t, err, attach.ErrNoKey)
+	}
+}

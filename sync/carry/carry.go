@@ -15,6 +15,7 @@ package carry
 import (
 	"bytes"
 	"context"
+	"crypto/sha256"
 	"errors"
 	"fmt"
 	"io"
@@ -69,7 +70,7 @@ type Members interface {
 
 // Options of an exchange.
 type Options struct {
-	Bag         key.Bag
+	Bag         func() key.Bag                           // the keys as they are now: an exchange may bring new ones
 	Incarnation func() change.Incarnation // the one that this device writes under now
 	Journal     Journal
 	Members     Members
@@ -138,6 +139,8 @@ type exchange struct {
 	heads  []string // our own head files
 	// renewed is true once this device writes under a new name.
 	renewed bool
+	// bad holds the names of segments that this device found damaged, and spoilt those that others did and that are.
+	bad, spoilt map[[32]byte]bool
 	// onto remembers which places are known to lie on which branch.
 	onto map[change.Stream]map[uint64]change.Hash
 }
@@ -167,7 +170,7 @@ func Sync(ctx context.Context, folder string, o Options) (Report, error) {
 		}
 		return Report{}, fmt.Errorf("the exchange folder %s is not there (put the stick in, or connect the share): %w", folder, err)
 	}
-	x := &exchange{Options: o, dir: filepath.Join(folder, FolderName(o.Bag.Practice)), onto: map[change.Stream]map[uint64]change.Hash{}}
+	x := &exchange{Options: o, dir: filepath.Join(folder, FolderName(o.Bag().Practice)), onto: map[change.Stream]map[uint64]change.Hash{}, bad: map[[32]byte]bool{}, spoilt: map[[32]byte]bool{}}
 	if err := x.members(); err != nil {
 		return x.report, err
 	}
@@ -287,7 +290,7 @@ func (x *exchange) readHeads(ctx context.Context) (map[change.Incarnation]peerHe
 		if err != nil {
 			return err
 		}
-		if h.Practice != x.Bag.Practice {
+		if h.Practice != x.Bag().Practice {
 			return errors.New("it belongs to another practice")
 		}
 		want, ok := x.Members.Signer(h.Device)
@@ -314,8 +317,12 @@ func (x *exchange) readHeads(ctx context.Context) (map[change.Incarnation]peerHe
 				first = err
 			}
 		}
-		if _, ok := out[d]; !ok && first != nil {
+		switch _, ok := out[d]; {
+		case first == nil:
+		case !ok:
 			x.problem("what device %s left here cannot be used: %s", d, first)
+		case d != x.Incarnation(): // our own is written anew
+			x.problem("what device %s left here last cannot be read and may still be on its way; what it left before was used: %s", d, first)
 		}
 	}
 	for _, e := range odd {
@@ -367,6 +374,9 @@ func (x *exchange) isMine(ctx context.Context, head Head) (bool, error) {
 	return true, nil
 }
 
+// maxBad is how many damaged segments a head names.
+const maxBad = 256
+
 // maxOdd is how many files of strange names are looked at in one folder.
 const maxOdd = 64
 
@@ -384,8 +394,17 @@ func (x *exchange) locate(peers map[change.Incarnation]peerHead) error {
 		}
 	}
 	var missing []located
+	accused := map[[32]byte]bool{}
+	for _, p := range peers {
+		for _, name := range p.Bad {
+			accused[name] = true
+		}
+	}
 	add := func(r Ref, own bool) {
 		l := located{r, filepath.Join(x.dir, dataDir, r.File()), own}
+		if accused[r.Name] && sizes[r.File()] == r.Size && !x.sound(r) {
+			x.spoilt[r.Name] = true // whoever holds what is in it leaves it again
+		}
 		if size, ok := sizes[r.File()]; ok && size == r.Size {
 			x.refs = append(x.refs, l)
 		} else {
@@ -447,6 +466,17 @@ func cmpUint(a, b uint64) int {
 		return 1
 	}
 	return 0
+}
+
+// sound reads a segment that another device found damaged, and reports whether it is whole.
+func (x *exchange) sound(r Ref) bool {
+	x.report.Read++
+	data, err := disk.ReadFile(x.FS, filepath.Join(x.dir, dataDir, r.File()), segment.MaxSize)
+	if err != nil || len(data) < len(r.Name) {
+		return false
+	}
+	body, tail := data[:len(data)-len(r.Name)], data[len(data)-len(r.Name):]
+	return bytes.Equal(tail, r.Name[:]) && sha256.Sum256(body) == r.Name
 }
 
 // whole reports whether a file of a segment's name has the size that its head says.
@@ -531,6 +561,9 @@ func (x *exchange) take(ctx context.Context) error {
 				return err
 			}
 			x.report.Waiting = append(x.report.Waiting, Waiting{s, r.First, r.Last, err.Error()})
+			if !errors.Is(err, change.ErrNoKey) && !errors.Is(err, change.ErrNewer) && len(x.bad) < maxBad {
+				x.bad[r.Name] = true
+			}
 			continue
 		}
 		done += r.Size
@@ -601,7 +634,7 @@ func (x *exchange) openSegment(path string) (*segment.Reader, error) {
 	if err != nil {
 		return nil, err
 	}
-	rd, err := segment.NewReader(bytes.NewReader(data), x.Bag.Ring)
+	rd, err := segment.NewReader(bytes.NewReader(data), x.Bag().Ring)
 	if err != nil {
 		return nil, err
 	}

@@ -118,7 +118,7 @@ func TestEveryOperationWhileReceivingFails(t *testing.T) {
 			require.NoError(t, s.Close())
 			s, err = storage.Open(dir, storagetest.Options())
 			require.NoError(t, err)
-			r, err = carry.Sync(context.Background(), stick, carry.Options{Bag: s.Bag(), Incarnation: s.Incarnation, Journal: s, Members: sender.members, ReceiveOnly: true})
+			r, err = carry.Sync(context.Background(), stick, carry.Options{Bag: s.Bag, Incarnation: s.Incarnation, Journal: s, Members: sender.members, ReceiveOnly: true})
 			require.NoError(t, err)
 			require.Zero(t, r.Received, "operation %d: after a restart all is there", n)
 			require.NoError(t, s.Close())

@@ -16,6 +16,8 @@ var ErrUnwanted = errors.New("its owner's data were erased on request")
 // Attachments is the store's folder of sealed attachments: films, photos, documents. A file's
 // name is an HMAC and never changes its content.
 type Attachments interface {
+	// Obey destroys what the records say was erased on request. It is called when new records have come.
+	Obey(ctx context.Context) error
 	// List returns name and size of each file that is whole.
 	List(ctx context.Context) ([]FileRef, error)
 	// Open opens a file for reading.
@@ -120,6 +122,9 @@ func (x *exchange) copyOut(ctx context.Context, f FileRef) (err error) {
 func (x *exchange) takeFiles(ctx context.Context) error {
 	if x.Files == nil {
 		return nil
+	}
+	if err := x.Files.Obey(ctx); err != nil {
+		return fmt.Errorf("%w: %w", errOwnSide, err)
 	}
 	es, err := x.list(filesDir)
 	if err != nil {

@@ -28,6 +28,7 @@ type Head struct {
 	Streams  []Reach            `cbor:"5,keyasint"` // what the device holds, by stream, rising
 	Segments []Ref              `cbor:"6,keyasint"` // what it has put into this folder and still lies there
 	Sums     []segment.Sum      `cbor:"7,keyasint,omitempty"`
+	Bad      [][32]byte         `cbor:"8,keyasint,omitempty"` // names of segments that lie here damaged, rising: whoever has them whole leaves them again
 }
 
 // Reach says how far a device holds a stream.

@@ -229,7 +229,7 @@ func (m *memory) Sums(ctx context.Context) ([]segment.Sum, error) {
 }
 
 func (m *memory) options() carry.Options {
-	return carry.Options{Bag: m.bag, Incarnation: func() change.Incarnation { return m.current }, Journal: m, Members: m.members, Now: m.now}
+	return carry.Options{Bag: func() key.Bag { return m.bag }, Incarnation: func() change.Incarnation { return m.current }, Journal: m, Members: m.members, Now: m.now}
 }
 
 func (m *memory) sync(folder string) carry.Report {

@@ -7,6 +7,7 @@ import (
 	"encoding/hex"
 	"errors"
 	"fmt"
+	"maps"
 	"path/filepath"
 	"slices"
 	"syscall"
@@ -52,12 +53,17 @@ func (x *exchange) leave(ctx context.Context) error {
 	}
 	var own []Ref
 	for _, r := range x.refs {
-		if r.own && filepath.Base(r.path) == r.File() {
+		if r.own && filepath.Base(r.path) == r.File() && !x.spoilt[r.Name] {
 			own = append(own, r.Ref)
 		}
 	}
 	lost := len(own) != len(x.mine.Segments)
 	var obsolete []string
+	for _, r := range x.mine.Segments {
+		if x.spoilt[r.Name] {
+			obsolete = append(obsolete, r.File())
+		}
+	}
 	for _, h := range held {
 		added, gone, err := x.leaveStream(ctx, h, own)
 		own = append(own, added...)
@@ -80,10 +86,11 @@ func (x *exchange) leave(ctx context.Context) error {
 			x.blocked(err)
 		}
 	}
-	next := Head{Practice: x.Bag.Practice, Device: x.Incarnation(), Counter: x.mine.Counter, Time: change.HLCAt(x.Now()), Segments: own}
+	next := Head{Practice: x.Bag().Practice, Device: x.Incarnation(), Counter: x.mine.Counter, Time: change.HLCAt(x.Now()), Segments: own}
 	for _, h := range held {
 		next.Streams = append(next.Streams, Reach{h.Stream.Device, h.Stream.Site, h.Last, h.Hash})
 	}
+	next.Bad = slices.SortedFunc(maps.Keys(x.bad), func(a, b [32]byte) int { return bytes.Compare(a[:], b[:]) })
 	if next.Sums, err = x.Journal.Sums(ctx); err != nil {
 		return fmt.Errorf("reading this device's state: %w", err)
 	}
@@ -102,7 +109,7 @@ func (x *exchange) leave(ctx context.Context) error {
 		}
 	}
 	next.Counter++
-	data, err := next.Encode(x.Bag.Device)
+	data, err := next.Encode(x.Bag().Device)
 	if err != nil {
 		return err
 	}
@@ -136,7 +143,7 @@ func sameHead(a, b Head) bool {
 func (x *exchange) leaveStream(ctx context.Context, h Held, own []Ref) (added, gone []Ref, err error) {
 	var there []merge.Span
 	for _, r := range x.refs {
-		if r.Stream() != h.Of {
+		if r.Stream() != h.Of || x.spoilt[r.Name] {
 			continue
 		}
 		if ok, err := x.holds(ctx, h, r.Ref); err != nil {
@@ -228,7 +235,7 @@ var errEnough = errors.New("enough")
 // write makes segments of a stream from number first to last.
 func (x *exchange) write(ctx context.Context, h Held, first, last uint64) (added []Ref, err error) {
 	signer, _ := x.Members.Signer(h.Of.Device)
-	err = BuildSegments(ctx, x.Journal, x.Bag, signer == x.Bag.Device.Verifier(), h, first, last, targetRaw, func(b *segment.Builder, s segment.Signed) error {
+	err = BuildSegments(ctx, x.Journal, x.Bag(), signer == x.Bag().Device.Verifier(), h, first, last, targetRaw, func(b *segment.Builder, s segment.Signed) error {
 		r, err := x.finish(b, s)
 		if err == nil {
 			added = append(added, r)

@@ -23,7 +23,7 @@ func storeOptions(s *storage.Store, members *list) carry.Options {
 	for _, l := range s.Lives() {
 		members.signers[l] = s.Bag().Device.Verifier()
 	}
-	return carry.Options{Bag: s.Bag(), Incarnation: s.Incarnation, Journal: renewing{s, members}, Members: members}
+	return carry.Options{Bag: s.Bag, Incarnation: s.Incarnation, Journal: renewing{s, members}, Members: members}
 }
 
 // renewing tells the member list of a new incarnation.

@@ -655,6 +655,16 @@ func (l *List) Finish(b key.Bag, now change.HLC) error {
 	return nil
 }
 
+// Recovery returns the recipient of the recovery sheet ("age1…"), "" while the founding statement has not come.
+func (l *List) Recovery() string {
+	l.mu.RLock()
+	defer l.mu.RUnlock()
+	if root := l.all[l.root]; root != nil {
+		return root.Recovery
+	}
+	return ""
+}
+
 // Practice returns the practice's id, zero while the founding statement has not come.
 func (l *List) Practice() exam.ID {
 	l.mu.RLock()

@@ -1,9 +1,7 @@
 package share
 
 import (
-	"encoding/hex"
 	"fmt"
-	"strings"
 
 	"filippo.io/age"
 
@@ -11,7 +9,6 @@ import (
 	"cordwalk.example/cordwalk/storage/disk"
 	"cordwalk.example/cordwalk/sync/change"
 	"cordwalk.example/cordwalk/sync/key"
-	"cordwalk.example/cordwalk/sync/member"
 )
 
 // Recover makes a store that was extracted from a backup, or copied from a lost device, usable with the
@@ -24,13 +21,8 @@ func Recover(dir string, so storage.Options, sheet *age.X25519Identity, name str
 	if err != nil {
 		return fmt.Errorf("reading the list of devices: %w", err)
 	}
-	id, err := hex.DecodeString(strings.TrimSpace(string(root)))
-	if err != nil || len(id) != len(member.ID{}) {
-		return fmt.Errorf("reading the list of devices: %s is damaged", folder(dir, rootFile))
-	}
-	sh.List = member.NewList(member.ID(id))
 	sh.at = dir
-	if err := sh.load(); err != nil {
+	if err := sh.readList(root); err != nil {
 		return err
 	}
 	sh.List.OnLearn(sh.save)

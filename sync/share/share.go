@@ -12,6 +12,7 @@ import (
 	"fmt"
 	"io/fs"
 	"path/filepath"
+	"slices"
 	"strings"
 	"sync"
 	"time"
@@ -20,6 +21,7 @@ import (
 
 	"cordwalk.example/cordwalk/storage"
 	"cordwalk.example/cordwalk/storage/disk"
+	"cordwalk.example/cordwalk/sync/attach"
 	"cordwalk.example/cordwalk/sync/audit"
 	"cordwalk.example/cordwalk/sync/carry"
 	"cordwalk.example/cordwalk/sync/change"
@@ -32,6 +34,7 @@ const (
 	membersDir = "members"
 	rootFile   = "root"
 	invitesDir = "invites"
+	memberExt  = ".member"
 )
 
 // Share is an open store with the list of the practice's devices.
@@ -41,10 +44,11 @@ type Share struct {
 	// Files are exchanged with the records where they are set; see package attach.
 	Files carry.Attachments
 
-	at  string // the store's folder
-	fs  disk.FS
-	now func() time.Time
-	mu  sync.Mutex // one exchange, join or removal at a time
+	at      string   // the store's folder
+	damaged []string // see Damaged
+	fs      disk.FS
+	now     func() time.Time
+	mu      sync.Mutex // one exchange, join or removal at a time
 
 	setting sync.Mutex // while keys and limits are handed to the store
 }
@@ -83,12 +87,7 @@ func Open(ctx context.Context, s *storage.Store, o Options) (sh *Share, recovery
 	case err != nil:
 		return nil, nil, fmt.Errorf("reading the list of devices: %w", err)
 	default:
-		id, derr := hex.DecodeString(strings.TrimSpace(string(root)))
-		if derr != nil || len(id) != len(member.ID{}) {
-			return nil, nil, fmt.Errorf("reading the list of devices: %s is damaged; restore it from a backup", sh.path(rootFile))
-		}
-		sh.List = member.NewList(member.ID(id))
-		if err := sh.load(); err != nil {
+		if err := sh.readList(root); err != nil {
 			return nil, nil, err
 		}
 	}
@@ -165,31 +164,75 @@ func (sh *Share) save(raw []byte) error {
 	if err := sh.fs.MakeDir(sh.path()); err != nil {
 		return fmt.Errorf("keeping the list of devices: %w", err)
 	}
-	id := s.ID()
-	if err := disk.Replace(sh.fs, sh.path(hex.EncodeToString(id[:20])+".member"), raw); err != nil {
+	if err := disk.Replace(sh.fs, sh.path(statementFile(s)), raw); err != nil {
 		return fmt.Errorf("keeping the list of devices: %w", err)
 	}
 	return nil
 }
 
-func (sh *Share) load() error {
+// readList reads the list of devices that begins with the statement that root names. Where the root is damaged it is
+// the only founding statement there.
+func (sh *Share) readList(root []byte) error {
+	raws, founding, err := sh.load()
+	if err != nil {
+		return err
+	}
+	id, err := parseRoot(root)
+	if (err != nil || !slices.Contains(founding, id)) && len(founding) == 1 {
+		id, err = founding[0], nil
+	}
+	if err != nil {
+		return fmt.Errorf("reading the list of devices: %s is damaged; restore it from a backup", sh.path(rootFile))
+	}
+	sh.List = member.NewList(id)
+	_, err = sh.List.Learn(raws)
+	return err
+}
+
+// load reads the statements beside the store, and which of them found a practice.
+func (sh *Share) load() (raws [][]byte, founding []member.ID, err error) {
 	es, err := sh.fs.List(sh.path())
 	if err != nil {
-		return fmt.Errorf("reading the list of devices: %w", err)
+		return nil, nil, fmt.Errorf("reading the list of devices: %w", err)
 	}
-	var raws [][]byte
 	for _, e := range es {
-		if e.Dir || e.Size > member.MaxStatement || !strings.HasSuffix(e.Name, ".member") {
+		if e.Dir || !strings.HasSuffix(e.Name, memberExt) {
+			continue
+		}
+		if e.Size > member.MaxStatement {
+			sh.damaged = append(sh.damaged, e.Name)
 			continue
 		}
 		b, err := disk.ReadFile(sh.fs, sh.path(e.Name), member.MaxStatement)
 		if err != nil {
-			return fmt.Errorf("reading the list of devices: %w", err)
+			return nil, nil, fmt.Errorf("reading the list of devices: %w", err)
+		}
+		s, err := member.Parse(b)
+		if err != nil || statementFile(s) != e.Name {
+			sh.damaged = append(sh.damaged, e.Name)
+			continue
 		}
 		raws = append(raws, b)
+		if s.Kind == member.Found {
+			founding = append(founding, s.ID())
+		}
 	}
-	_, err = sh.List.Learn(raws)
-	return err
+	return raws, founding, nil
+}
+
+// Damaged returns the files of the list of devices that could not be read when it was opened and that no exchange has
+// brought back since. Until then nothing new is set apart: it would be judged by half a list.
+func (sh *Share) Damaged() []string {
+	if len(sh.damaged) == 0 {
+		return nil
+	}
+	there := map[string]bool{}
+	for _, raw := range sh.List.Statements() {
+		if s, err := member.Parse(raw); err == nil {
+			there[statementFile(s)] = true
+		}
+	}
+	return slices.DeleteFunc(slices.Clone(sh.damaged), func(name string) bool { return there[name] })
 }
 
 // Signer implements carry.Members.
@@ -224,12 +267,15 @@ func (sh *Share) refresh(ctx context.Context) error {
 	if err != nil {
 		return err
 	}
-	limits, err := Limits(ctx, sh.List, sh.Store, held)
-	if err != nil {
-		return err
-	}
-	if err := sh.SetLimits(ctx, limits); err != nil {
-		return err
+	// Half a list would take members for strangers and set apart all that they wrote.
+	if len(sh.Damaged()) == 0 && !sh.List.Practice().IsZero() {
+		limits, err := Limits(ctx, sh.List, sh.Store, held)
+		if err != nil {
+			return err
+		}
+		if err := sh.SetLimits(ctx, limits); err != nil {
+			return err
+		}
 	}
 	return sh.announce()
 }
@@ -275,11 +321,27 @@ func (sh *Share) Member() bool {
 	return ok && d.Member()
 }
 
+// BackupKeys returns to whom backups are sealed, this device and the recovery sheet, and what reads them back here.
+func (sh *Share) BackupKeys() (to []age.Recipient, check []age.Identity, err error) {
+	list := []string{sh.Bag().Device.Recipient()}
+	if r := sh.List.Recovery(); r != "" {
+		list = append(list, r)
+	}
+	for _, r := range list {
+		x, err := age.ParseX25519Recipient(r)
+		if err != nil {
+			return nil, nil, fmt.Errorf("finding out who may open a backup: %w", err)
+		}
+		to = append(to, x)
+	}
+	return to, []age.Identity{sh.Bag().Device.Identity()}, nil
+}
+
 // Folder exchanges with a folder.
 func (sh *Share) Folder(ctx context.Context, place string, progress func(what string, done, total int64)) (carry.Report, error) {
 	sh.mu.Lock()
 	defer sh.mu.Unlock()
-	r, err := carry.Sync(ctx, place, carry.Options{Bag: sh.Bag(), Incarnation: sh.Incarnation, Journal: sh, Members: sh, Files: sh.Files, FS: sh.fs, Now: sh.now, Progress: progress})
+	r, err := carry.Sync(ctx, place, carry.Options{Bag: sh.Bag, Incarnation: sh.Incarnation, Journal: sh, Members: sh, Files: sh.Files, FS: sh.fs, Now: sh.now, Progress: progress})
 	if err == nil && r.Received > 0 {
 		err = sh.refresh(ctx) // streams that are new to us may be limited
 	}
@@ -476,6 +538,10 @@ func Join(ctx context.Context, dir, folder string, j *member.Joining, inc change
 		return nil, err
 	}
 	sh := &Share{Store: s, at: s.Dir(), List: list, fs: o.FS, now: o.Now}
+	// Owners' contact data can be read only with keys that travel as files do.
+	if sh.Files, err = attach.Open(ctx, s, o.FS); err != nil {
+		return nil, errors.Join(err, s.Close())
+	}
 	if err := sh.keep(list); err != nil {
 		return nil, errors.Join(err, s.Close())
 	}

@@ -20,6 +20,7 @@ import (
 	"cordwalk.example/cordwalk/sync/key"
 	"cordwalk.example/cordwalk/sync/member"
 	"cordwalk.example/cordwalk/sync/share"
+	"cordwalk.example/cordwalk/sync/share/sharetest"
 )
 
 var ctx = context.Background()
@@ -255,4 +256,19 @@ func TestStatesAreCompared(t *testing.T) {
 	require.NoError(t, err)
 	require.NotEqual(t, sa[0].At, later[0].At)
 	require.NotEqual(t, sa[0].Sum, later[0].Sum)
+}
+
+// The key that a removal brings opens what was written with it in the same exchange.
+func TestANewKeyServesInTheExchangeThatBringsIt(t *testing.T) {
+	stick := t.TempDir()
+	a := sharetest.Found(t)
+	b, c := sharetest.Join(t, a, "b"), sharetest.Join(t, a, "c")
+	sync(t, stick, a, b, c)
+	require.NoError(t, a.Remove(ctx, who, b.Bag().Device.Verifier(), "sold"))
+	sharetest.Add(t, a, "With the new key")
+	sync(t, stick, a)
+	r, err := c.Folder(ctx, stick, nil)
+	require.NoError(t, err)
+	require.Empty(t, r.Waiting)
+	require.Equal(t, []string{"With the new key"}, names(t, c))
 }
