@@ -26,3 +26,12 @@ func (s *Store) Fields(kind Kind, patient, id exam.ID) (map[string][]byte, error
 	}
 	return out, nil
 }
+
+// PatientField reads one field of a patient, such as "problem/ID", into a patient that holds nothing else.
+// The owner's contact is sealed and cannot be read in this way.
+func PatientField(name string, value []byte) (p exam.Patient, err error) {
+	if name == fieldOwner {
+		return p, errUnknownField
+	}
+	return p, (*Store)(nil).setPatient(&p, name, value)
+}

@@ -269,7 +269,7 @@ func (a *App) Done() error {
 		return nil
 	}
 	if err := a.records.Close(); err != nil {
-		return fmt.Errorf("closing the practice: %w", err)
+		return fmt.Errorf("%s: %w", words.T("closing the practice"), err)
 	}
 	return nil
 }

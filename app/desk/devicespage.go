@@ -140,7 +140,7 @@ func (p *devicesPage) found() fyne.CanvasObject {
 			}
 			f, err := os.OpenFile(name, os.O_WRONLY|os.O_CREATE|os.O_EXCL, 0o600)
 			if err != nil {
-				return nil, fmt.Errorf("making the recovery sheet: %w", err)
+				return nil, fmt.Errorf("%s: %w", words.T("making the recovery sheet"), err)
 			}
 			sh, recovery, err := p.openShare(ctx)
 			if err == nil && recovery != nil {

@@ -214,8 +214,11 @@ func typedLine(s *view.ExamSheet, c view.Cell, text string, done func(error)) fy
 	keys := []fyne.CanvasObject{mark.Sized(100, look.Target, field), ok}
 	if c.IsMeasure() {
 		for _, k := range "1234567890." {
-			key := k
-			keys = append(keys, mark.NewButton(string(key), "", func() { o := s.Press(view.Rune(key)); done(o.Err) }))
+			key, face := k, string(k)
+			if key == '.' {
+				face = view.DecimalSign()
+			}
+			keys = append(keys, mark.NewButton(face, "", func() { o := s.Press(view.Rune(key)); done(o.Err) }))
 		}
 	}
 	return mark.Column(4, mark.Wrapped(4, keys...), mark.NewPara(hint).In(look.InkSoft).As(look.Small))

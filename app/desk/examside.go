@@ -222,7 +222,7 @@ func evidenceWords(e localise.Evidence) string {
 	f.Digit, _ = exam.ParseDigit(e.Digit)
 	f.Joint, _ = exam.ParseJoint(e.Joint)
 	f.Level, _ = exam.ParseVertebra(e.Level, 0)
-	return view.CellName(f.Key()) + ": " + view.GradeWords(f)
+	return view.Labelled(view.CellName(f.Key()), view.GradeWords(f))
 }
 
 // next returns the cell of the test that would tell most.
@@ -248,15 +248,15 @@ func (s *examSide) showAlerts() {
 	for _, a := range s.found {
 		alert := a
 		if alert.Unlooked && alert.Answered == "" && !s.page.sheet.Closed() {
-			if !slices.Contains(still, alert.Name) {
-				still = append(still, alert.Name)
+			if !slices.Contains(still, view.LowerFirst(alert.Name)) {
+				still = append(still, view.LowerFirst(alert.Name))
 			}
 			continue
 		}
 		out = append(out, alertBox(alert, func() { s.page.answer(alert) }, func() { s.page.explain(alert) }))
 	}
 	if len(still) > 0 {
-		out = append(out, newTapped(cautionLine(words.T("Still to rule out: %s", strings.ToLower(strings.Join(still, ", ")))), s.explainStill))
+		out = append(out, newTapped(cautionLine(words.T("Still to rule out: %s", strings.Join(still, ", "))), s.explainStill))
 	}
 	s.alerts.Objects = out
 	if len(out) == 0 {
@@ -325,7 +325,7 @@ func (s *examSide) hover(x, y, w, h vg.Length, st chart.Style) string {
 		}
 		for _, wgt := range anatomy.ArcOfFinding(sp, f) {
 			if wgt.Segment == id && wgt.Weight > 0.2 {
-				out += "\n" + view.CellName(f.Key()) + ": " + view.GradeWords(f)
+				out += "\n" + view.Labelled(view.CellName(f.Key()), view.GradeWords(f))
 				n++
 				break
 			}

@@ -99,7 +99,7 @@ func scaleLine(s progress.ScaleCourse) fyne.CanvasObject {
 		name += ", " + view.SiteName(site)
 	}
 	if s.Variant != "" {
-		name += " (" + s.Variant + ")"
+		name += " (" + words.Of(s.Variant) + ")"
 	}
 	return figureRow(name, value, note, s.Source)
 }

@@ -6,6 +6,7 @@ import (
 	"strings"
 
 	"fyne.io/fyne/v2"
+	"fyne.io/fyne/v2/lang"
 	"fyne.io/fyne/v2/widget"
 
 	"cordwalk.example/cordwalk/app/desk/look"
@@ -36,6 +37,9 @@ type firstRunPage struct {
 
 func newFirstRunPage(w *window, dir string) *firstRunPage {
 	p := &firstRunPage{win: w, form: view.NewFirstRun(dir), fields: map[string]*mark.Labelled{}}
+	if _, region, ok := strings.Cut(lang.SystemLocale().LanguageString(), "-"); ok {
+		p.form.Region = region
+	}
 	field := func(key, name, value, hint string, set func(string)) *mark.Field {
 		f := mark.NewField(value, set).Hint(hint)
 		p.fields[key] = mark.NewLabelled(name, f)
@@ -86,7 +90,7 @@ func (p *firstRunPage) start() {
 		return
 	}
 	a := p.win.app
-	practice, bad := p.form.Check(a.now().Location().String())
+	practice, bad := p.form.Check(zoneName(a.now().Location()))
 	for key, f := range p.fields {
 		f.Wrong(bad[key])
 	}

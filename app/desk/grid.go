@@ -715,9 +715,9 @@ func (c *gridCell) explain() string {
 	out := cell.Name()
 	switch {
 	case cell.IsMeasure() && cell.Entered:
-		out += ": " + s.ValueWords(cell.Value)
+		out = view.Labelled(out, s.ValueWords(cell.Value))
 	case !cell.IsMeasure() && cell.Entered:
-		out += ": " + view.GradeWords(cell.Today)
+		out = view.Labelled(out, view.GradeWords(cell.Today))
 		if cell.Today.Note != "" {
 			out += "\n" + cell.Today.Note
 		}

@@ -31,7 +31,7 @@ func (p hubPlace) Load() (string, uint64, error) {
 	name, seq, ok := strings.Cut(strings.TrimSpace(string(data)), " ")
 	n, err := strconv.ParseUint(seq, 10, 64)
 	if !ok || err != nil {
-		return "", 0, fmt.Errorf("%s is damaged; it is written anew", p.file)
+		return "", 0, errors.New(words.T("%s is damaged; it is written anew", p.file))
 	}
 	return name, n, nil
 }

@@ -6,6 +6,8 @@ import (
 	"strings"
 
 	"fyne.io/fyne/v2"
+	"fyne.io/fyne/v2/dialog"
+	"fyne.io/fyne/v2/storage"
 	"fyne.io/fyne/v2/widget"
 
 	"cordwalk.example/cordwalk/app/desk/look"
@@ -36,6 +38,7 @@ func newImportPage(w *window) *importPage {
 	p.file = mark.NewField("", nil).Hint(words.T("A CSV or XLSX file; it can also be dropped on this window"))
 	p.file.OnSubmitted = func(string) { p.read() }
 	read := mark.NewButton(words.T("Look at it"), "eye", p.read)
+	browse := mark.NewButton(words.T("Choose a file"), "search", p.choose)
 	p.start = mark.NewButton(words.T("Import"), "tick", p.apply).As(mark.Main)
 	p.back = mark.NewButton(words.T("Take the whole import back"), "undo", func() { p.undo(false) })
 	p.list = widget.NewList(func() int {
@@ -51,7 +54,7 @@ func newImportPage(w *window) *importPage {
 	p.list.HideSeparators = true
 	p.parts = mark.ColumnGrow(look.Unit, 4,
 		mark.Bar(look.Unit, mark.Title(words.T("Import patients")).AtLeast(100), p.back, p.start),
-		mark.Row(look.Unit, []float32{1, 0}, p.file, read),
+		mark.Row(look.Unit, []float32{1, 0, 0}, p.file, browse, read),
 		p.said, p.cols, p.list)
 	p.root = mark.Pad(look.Unit*1.5, look.Unit*2, p.parts)
 	p.draw()
@@ -60,17 +63,40 @@ func newImportPage(w *window) *importPage {
 
 func (p *importPage) content() fyne.CanvasObject { return p.root }
 
-func (p *importPage) shown() {
-	p.win.win.Canvas().Focus(p.file)
-	p.win.win.SetOnDropped(func(_ fyne.Position, uris []fyne.URI) {
-		if len(uris) > 0 && p.win.page == page(p) {
-			p.file.SetText(uris[0].Path())
-			p.read()
-		}
-	})
+func (p *importPage) shown() { p.win.win.Canvas().Focus(p.file) }
+func (p *importPage) left()  {}
+
+// dropped reads a table that was dragged into the window.
+func (p *importPage) dropped(files []fyne.URI) {
+	if len(files) > 0 {
+		p.file.SetText(files[0].Path())
+		p.read()
+	}
 }
 
-func (p *importPage) left() { p.win.win.SetOnDropped(nil) }
+// choose asks for the file.
+func (p *importPage) choose() {
+	d := dialog.NewFileOpen(func(in fyne.URIReadCloser, err error) {
+		if err != nil {
+			p.win.fail(words.T("This file cannot be read as a table of patients."), err)
+			return
+		}
+		if in == nil {
+			return
+		}
+		path := in.URI().Path()
+		in.Close()
+		p.file.SetText(path)
+		p.read()
+	}, p.win.win)
+	d.SetTitleText(words.T("Import patients"))
+	d.SetConfirmText(words.T("Look at it"))
+	d.SetDismissText(words.T("back"))
+	d.SetFilter(storage.NewExtensionFileFilter([]string{".csv", ".tsv", ".txt", ".xlsx", ".CSV", ".XLSX"}))
+	s := p.win.win.Canvas().Size()
+	d.Resize(fyne.NewSize(s.Width-64, s.Height-64))
+	d.Show()
+}
 
 func (p *importPage) help() []view.KeyHelp {
 	return []view.KeyHelp{{Keys: "Enter", Does: words.T("look at the file")}, {Keys: "Ctrl+Z", Does: words.T("take the whole import back")}}
@@ -128,7 +154,7 @@ func (p *importPage) draw() {
 		}
 		shown, values := []string{words.T("left out")}, []string{""}
 		for _, f := range view.ImportFields() {
-			shown, values = append(shown, words.Of(strings.ReplaceAll(string(f), "-", " "))), append(values, string(f))
+			shown, values = append(shown, f.Title()), append(values, string(f))
 		}
 		for i, h := range p.plan.Table.Headings {
 			column, now := i, ""
@@ -226,11 +252,7 @@ func (l *importLine) set(i int) {
 	l.note.Words, l.note.Token = "", look.Ink
 	switch {
 	case r.Problems.Any():
-		var list []string
-		for field, why := range r.Problems {
-			list = append(list, words.Of(strings.ReplaceAll(field, "-", " "))+": "+why)
-		}
-		l.note.Words, l.note.Token = strings.Join(list, " "), look.Worse
+		l.note.Words, l.note.Token = r.Told(), look.Worse
 	case r.Duplicate != "":
 		l.note.Words = words.T("perhaps there already: %s", r.Duplicate)
 	}

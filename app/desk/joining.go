@@ -73,7 +73,7 @@ func (k *Keeper) Join(ctx context.Context, j *Joining, dir string, passphrase []
 	o := k.options(passphrase, nil, nil)
 	o.Unlock.KeyInStore = len(passphrase) == 0 && k.KeyFile == ""
 	if err := os.MkdirAll(filepath.Dir(dir), 0o700); err != nil {
-		return nil, fmt.Errorf("making the folder %s: %w", filepath.Dir(dir), err)
+		return nil, fmt.Errorf("%s: %w", words.T("making the folder %s", filepath.Dir(dir)), err)
 	}
 	for {
 		sh, err := share.Join(ctx, dir, j.folder, j.asks, j.inc, o, share.Options{Now: k.Now})

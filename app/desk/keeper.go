@@ -89,7 +89,7 @@ func (k *Keeper) Create(dir string, pass []byte, p exam.Practice, examiner strin
 	o := k.options(pass, nil, nil)
 	o.Unlock.KeyInStore = len(pass) == 0 && k.KeyFile == ""
 	if err := os.MkdirAll(filepath.Dir(dir), 0o700); err != nil {
-		return nil, fmt.Errorf("making the folder %s: %w", filepath.Dir(dir), err)
+		return nil, fmt.Errorf("%s: %w", words.T("making the folder %s", filepath.Dir(dir)), err)
 	}
 	s, err := storage.Create(dir, o)
 	if err != nil {
@@ -133,7 +133,7 @@ func (k *Keeper) Demo(dir string, progress func(string, int64, int64)) (Records,
 	o := k.options(nil, progress, nil)
 	o.Unlock = storage.Unlock{KeyInStore: true}
 	if err := os.MkdirAll(filepath.Dir(dir), 0o700); err != nil {
-		return nil, fmt.Errorf("making the folder %s: %w", filepath.Dir(dir), err)
+		return nil, fmt.Errorf("%s: %w", words.T("making the folder %s", filepath.Dir(dir)), err)
 	}
 	s, err := storage.Create(dir, o)
 	if err != nil {

@@ -2,7 +2,6 @@ package desk
 
 import (
 	"errors"
-	"strconv"
 
 	"fyne.io/fyne/v2"
 	"fyne.io/fyne/v2/canvas"
@@ -13,8 +12,8 @@ import (
 	"cordwalk.example/cordwalk/assets/words"
 )
 
-// plainNumber writes a number without needless digits.
-func plainNumber(x float64) string { return strconv.FormatFloat(x, 'f', -1, 64) }
+// plainNumber writes a number as it is typed in the language in use.
+func plainNumber(x float64) string { return view.Plain(x) }
 
 // showSheet lays a sheet over the page. Escape or its button takes it away.
 func (w *window) showSheet(title string, body fyne.CanvasObject, width float32, buttons ...fyne.CanvasObject) {
@@ -132,7 +131,7 @@ func (w *window) showHelp() {
 func keyLines(list []view.KeyHelp) []fyne.CanvasObject {
 	out := make([]fyne.CanvasObject, len(list))
 	for i, k := range list {
-		out[i] = mark.RowTop(look.Unit*1.5, []float32{1, 2.4}, mark.NewPara(k.Keys).Strong(), mark.NewPara(k.Does))
+		out[i] = mark.RowTop(look.Unit*1.5, []float32{1, 2.4}, mark.NewPara(view.KeyWords(k.Keys)).Strong(), mark.NewPara(k.Does))
 	}
 	return out
 }

@@ -698,7 +698,7 @@ func (s *ExamSheet) pressText(k Key) Outcome {
 		if c.IsMeasure() {
 			x, err := strconv.ParseFloat(strings.ReplaceAll(text, ",", "."), 64)
 			if err != nil {
-				return refused(&exam.Invalid{Field: c.Name(), Value: text, Allowed: "a number in " + s.UnitOf(c.Measure)})
+				return refused(&exam.Invalid{Field: c.Name(), Value: text, Allowed: words.T("a number in %s", s.UnitOf(c.Measure))})
 			}
 			if err := s.SetMeasure(s.in.Units.Kept(c.Measure, x)); err != nil {
 				return refused(err)

@@ -546,7 +546,7 @@ func (s *ExamSheet) Progress() Progress {
 	if len(s.steps) > 0 {
 		p.Position = s.steps[s.focus].Position
 	}
-	p.Words = words.T("%d of %d, %s", p.Done, p.Total, strings.ToLower(p.Position.Words()))
+	p.Words = words.T("%d of %d, %s", p.Done, p.Total, LowerFirst(p.Position.Words()))
 	return p
 }
 

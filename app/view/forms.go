@@ -102,7 +102,7 @@ func (f *PatientForm) Patient() (exam.Patient, Problems) {
 	if t := trim(f.RecheckDays); t != "" {
 		n, err := strconv.Atoi(t)
 		if err != nil || n < 1 || n > 366 {
-			bad["recheck-days"] = why(&exam.Invalid{Field: "days between visits", Value: t, Allowed: "1 to 366"})
+			bad["recheck-days"] = why(&exam.Invalid{Field: words.T("days between visits"), Value: t, Allowed: words.T("%[1]s to %[2]s", "1", "366")})
 		} else {
 			p.RecheckDays = n
 		}
@@ -175,7 +175,7 @@ func checkGoal(g exam.Goal) error {
 		}
 		in := m.Info()
 		if g.Target < in.Min || g.Target > in.Max {
-			return &exam.Invalid{Field: "target", Value: number(g.Target), Allowed: number(in.Min) + " to " + number(in.Max) + " " + in.Unit}
+			return &exam.Invalid{Field: "target", Value: number(g.Target), Allowed: strings.TrimSuffix(words.T("%[1]s to %[2]s", number(in.Min), number(in.Max))+" "+in.Unit, " 1")}
 		}
 	} else {
 		i, err := exam.ParseItem(g.Item)
@@ -183,14 +183,14 @@ func checkGoal(g exam.Goal) error {
 			return err
 		}
 		if i.GradeWord(int8(g.Target)) == "" || g.Target != float64(int8(g.Target)) {
-			return &exam.Invalid{Field: "target", Value: number(g.Target), Allowed: "a grade of " + i.String()}
+			return &exam.Invalid{Field: "target", Value: number(g.Target), Allowed: words.T("a grade of %s", ItemName(i))}
 		}
 		site, err := exam.ParseSite(g.Site)
 		if err != nil {
 			return err
 		}
 		if !i.At(site) {
-			return &exam.Invalid{Field: "site of the goal", Value: g.Site, Allowed: "a site of " + i.String()}
+			return &exam.Invalid{Field: words.T("site of the goal"), Value: g.Site, Allowed: words.T("a site of %s", ItemName(i))}
 		}
 	}
 	_, err := exam.ParseDate(string(g.By))
@@ -201,7 +201,7 @@ func checkGoal(g exam.Goal) error {
 func why(err error) string {
 	var inv *exam.Invalid
 	if errors.As(err, &inv) {
-		return words.T("Use %s.", inv.Allowed)
+		return words.T("Use %s.", words.Of(inv.Allowed))
 	}
 	return err.Error()
 }
@@ -228,6 +228,7 @@ type FirstRun struct {
 	Examiner string
 	Folder   string // where the data lies
 	Phone    string // of the practice, for the sheets
+	Region   string // ISO 3166 code of the country that the system is set to; it proposes paper and units
 	// Passphrase protects the data; empty with Unprotected set leaves the key in the store.
 	Passphrase, Again string
 	Unprotected       bool
@@ -264,10 +265,17 @@ func (f *FirstRun) Check(zone string) (exam.Practice, Problems) {
 	if zone == "" || zone == "Local" {
 		zone = "UTC"
 	}
-	return exam.Practice{Name: strings.TrimSpace(f.Practice), Zone: zone, Language: words.Language(), Paper: "A4",
+	paper, us := "A4", f.Region == "US"
+	if slices.Contains(letterRegions, f.Region) {
+		paper = "Letter"
+	}
+	return exam.Practice{Name: strings.TrimSpace(f.Practice), Zone: zone, Language: words.Language(), Paper: paper, Pounds: us, Inches: us,
 		Contact:   exam.Contact{Name: strings.TrimSpace(f.Practice), Phone: strings.TrimSpace(f.Phone)},
 		Examiners: []exam.Examiner{{Name: strings.TrimSpace(f.Examiner), Initials: Initials(f.Examiner)}}}, nil
 }
+
+// letterRegions are the countries that print on Letter (CLDR, supplemental data, paperSize).
+var letterRegions = []string{"BZ", "CA", "CL", "CO", "CR", "GT", "MX", "NI", "PA", "PH", "PR", "SV", "US", "VE"}
 
 // Initials returns the first letters of a name, at most three.
 func Initials(name string) string {

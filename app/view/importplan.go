@@ -7,6 +7,7 @@ import (
 	"errors"
 	"fmt"
 	"io"
+	"maps"
 	"slices"
 	"strings"
 	"unicode/utf8"
@@ -43,6 +44,30 @@ const (
 	ImportNote     ImportField = "note"
 )
 
+// importTitles are the fields as people call them.
+var importTitles = map[ImportField]string{
+	ImportName: "Name", ImportSpecies: "Species", ImportBreed: "Breed", ImportSex: "Sex", ImportNeutered: "Neutered", ImportBorn: "Born",
+	ImportOwner: "Owner", ImportPhone: "Owner's telephone", ImportEmail: "Owner's e-mail", ImportAddress: "Owner's address",
+	ImportVet: "Treating veterinarian", ImportVetPhone: "Veterinarian's telephone", ImportProblem: "Problem", ImportLevel: "Level",
+	ImportOnset: "Onset", ImportSurgery: "Surgery", ImportNote: "Note",
+}
+
+// Title names the field in the language in use.
+func (f ImportField) Title() string { return words.Of(importTitles[f]) }
+
+// Told says the row's problems in one line, in the order of the fields.
+func (r ImportRow) Told() string {
+	var out []string
+	for _, key := range slices.Sorted(maps.Keys(r.Problems)) {
+		field := ImportField(key)
+		if strings.HasPrefix(key, "problem") {
+			field = ImportProblem
+		}
+		out = append(out, Labelled(field.Title(), r.Problems[key]))
+	}
+	return strings.Join(out, " ")
+}
+
 // ImportFields lists the fields in the order shown.
 func ImportFields() []ImportField {
 	return []ImportField{ImportName, ImportSpecies, ImportBreed, ImportSex, ImportNeutered, ImportBorn, ImportOwner, ImportPhone, ImportEmail,
@@ -61,6 +86,24 @@ var headings = map[string]ImportField{
 	"vet": ImportVet, "veterinarian": ImportVet, "referredby": ImportVet, "vetphone": ImportVetPhone, "veterinarianphone": ImportVetPhone,
 	"problem": ImportProblem, "diagnosis": ImportProblem, "complaint": ImportProblem, "level": ImportLevel, "onset": ImportOnset,
 	"surgery": ImportSurgery, "operated": ImportSurgery, "note": ImportNote, "notes": ImportNote, "remark": ImportNote, "remarks": ImportNote,
+	// German
+	"tier": ImportName, "tiername": ImportName, "tierart": ImportSpecies, "art": ImportSpecies, "rasse": ImportBreed, "geschlecht": ImportSex,
+	"kastriert": ImportNeutered, "geboren": ImportBorn, "geburtsdatum": ImportBorn, "geburtstag": ImportBorn, "besitzer": ImportOwner, "halter": ImportOwner,
+	"tierhalter": ImportOwner, "kunde": ImportOwner, "telefon": ImportPhone, "handy": ImportPhone, "mobil": ImportPhone, "anschrift": ImportAddress,
+	"adresse": ImportAddress, "tierarzt": ImportVet, "haustierarzt": ImportVet, "uberweiser": ImportVet, "telefontierarzt": ImportVetPhone,
+	"diagnose": ImportProblem, "hohe": ImportLevel, "beginn": ImportOnset, "operation": ImportSurgery, "operiert": ImportSurgery, "notiz": ImportNote,
+	"bemerkung": ImportNote, "bemerkungen": ImportNote,
+	// French
+	"nom": ImportName, "espece": ImportSpecies, "sexe": ImportSex, "sterilise": ImportNeutered, "castre": ImportNeutered, "ne": ImportBorn,
+	"naissance": ImportBorn, "datedenaissance": ImportBorn, "proprietaire": ImportOwner, "courriel": ImportEmail, "veterinaire": ImportVet,
+	"probleme": ImportProblem, "diagnostic": ImportProblem, "niveau": ImportLevel, "debut": ImportOnset, "chirurgie": ImportSurgery, "opere": ImportSurgery,
+	"remarque": ImportNote, "remarques": ImportNote,
+	// Spanish
+	"nombre": ImportName, "paciente": ImportName, "especie": ImportSpecies, "raza": ImportBreed, "sexo": ImportSex, "castrado": ImportNeutered,
+	"esterilizado": ImportNeutered, "nacido": ImportBorn, "nacimiento": ImportBorn, "fechadenacimiento": ImportBorn, "propietario": ImportOwner,
+	"dueno": ImportOwner, "cliente": ImportOwner, "telefono": ImportPhone, "movil": ImportPhone, "correo": ImportEmail, "direccion": ImportAddress,
+	"veterinario": ImportVet, "problema": ImportProblem, "diagnostico": ImportProblem, "nivel": ImportLevel, "inicio": ImportOnset, "cirugia": ImportSurgery,
+	"nota": ImportNote, "notas": ImportNote, "observaciones": ImportNote,
 }
 
 // importMost bounds the rows of a table.
@@ -308,13 +351,13 @@ func sexWord(s string, neutered bool) (string, bool) {
 	switch fold(s) {
 	case "":
 		return exam.SexUnknown.String(), neutered
-	case "f", "female", "bitch", "queen":
+	case "f", "female", "bitch", "queen", "w", "weiblich", "hundin", "femelle", "h", "hembra":
 		return exam.Female.String(), neutered
-	case "m", "male", "tom":
+	case "m", "male", "tom", "mannlich", "rude", "kater", "macho":
 		return exam.Male.String(), neutered
-	case "fs", "fn", "spayed", "female spayed", "female neutered":
+	case "fs", "fn", "spayed", "female spayed", "female neutered", "wk", "weiblich kastriert", "femelle sterilisee", "hembra esterilizada", "hembra castrada":
 		return exam.Female.String(), true
-	case "mn", "mc", "castrated", "male neutered", "male castrated":
+	case "mn", "mc", "castrated", "male neutered", "male castrated", "mk", "mannlich kastriert", "male castre", "macho castrado":
 		return exam.Male.String(), true
 	}
 	return s, neutered
@@ -322,7 +365,7 @@ func sexWord(s string, neutered bool) (string, bool) {
 
 func yes(s string) bool {
 	switch fold(s) {
-	case "y", "yes", "true", "1", "x", "ja", "si", "oui", "neutered", "spayed", "castrated":
+	case "y", "yes", "true", "1", "x", "ja", "si", "oui", "neutered", "spayed", "castrated", "kastriert", "sterilise", "castre", "castrado", "esterilizado":
 		return true
 	}
 	return false

@@ -6,6 +6,7 @@ import (
 	"cordwalk.example/cordwalk/assets/words"
 	"cordwalk.example/cordwalk/exam"
 	"cordwalk.example/cordwalk/exam/alert"
+	"cordwalk.example/cordwalk/exam/scale"
 )
 
 // itemTitles are the names of items on screens, where the vocabulary's word with its
@@ -208,6 +209,17 @@ func Terms() []string {
 	out = append(out, stimTerms()...)
 	out = append(out, "medial digit", "lateral digit", "female", "male", "unknown", "active", "discharged", "died",
 		"sedation", "aid", "surface", "session", "medicines", "none", "mild", "moderate", "deep")
+	for _, p := range exam.Protocols() {
+		out = append(out, p.Name)
+	}
+	for _, s := range scale.Scales() {
+		out = append(out, s.Info().Variant)
+	}
+	for _, t := range importTitles {
+		out = append(out, t)
+	}
+	out = append(out, keyNames...)
+	out = append(out, Undermost)
 	out = append(out, exam.AidWords()...)
 	out = append(out, exam.SurfaceWords()...)
 	out = append(out, exam.SessionWords()...)

@@ -1,6 +1,7 @@
 package view
 
 import (
+	"cordwalk.example/cordwalk/assets/words"
 	"encoding/json"
 	"errors"
 	"fmt"
@@ -40,7 +41,7 @@ const resumeMax = 200
 func SettingsPath() (string, error) {
 	dir, err := os.UserConfigDir()
 	if err != nil {
-		return "", fmt.Errorf("this system names no folder for settings: %w", err)
+		return "", fmt.Errorf("%s: %w", words.T("this system names no folder for settings"), err)
 	}
 	return filepath.Join(dir, "cordwalk", "settings.json"), nil
 }
@@ -53,11 +54,11 @@ func LoadSettings(path string) (Settings, error) {
 		return Settings{}, nil
 	}
 	if err != nil {
-		return Settings{}, fmt.Errorf("reading the settings: %w", err)
+		return Settings{}, fmt.Errorf("%s: %w", words.T("reading the settings"), err)
 	}
 	var s Settings
 	if err := json.Unmarshal(data, &s); err != nil {
-		return Settings{}, fmt.Errorf("the settings in %s cannot be read and start anew: %w", path, err)
+		return Settings{}, fmt.Errorf("%s: %w", words.T("the settings in %s cannot be read and start anew", path), err)
 	}
 	if s.TextScale != 0 {
 		s.TextScale = max(80, min(200, s.TextScale))
@@ -69,15 +70,15 @@ func LoadSettings(path string) (Settings, error) {
 // leaves the old ones.
 func (s Settings) Save(path string) error {
 	if err := os.MkdirAll(filepath.Dir(path), 0o700); err != nil {
-		return fmt.Errorf("keeping the settings: %w", err)
+		return fmt.Errorf("%s: %w", words.T("keeping the settings"), err)
 	}
 	data, err := json.MarshalIndent(s, "", "  ")
 	if err != nil {
-		return fmt.Errorf("keeping the settings: %w", err)
+		return fmt.Errorf("%s: %w", words.T("keeping the settings"), err)
 	}
 	f, err := os.CreateTemp(filepath.Dir(path), "settings-*.tmp")
 	if err != nil {
-		return fmt.Errorf("keeping the settings: %w", err)
+		return fmt.Errorf("%s: %w", words.T("keeping the settings"), err)
 	}
 	defer os.Remove(f.Name())
 	if _, err = f.Write(data); err == nil {
@@ -90,7 +91,7 @@ func (s Settings) Save(path string) error {
 		err = os.Rename(f.Name(), path)
 	}
 	if err != nil {
-		return fmt.Errorf("keeping the settings: %w", err)
+		return fmt.Errorf("%s: %w", words.T("keeping the settings"), err)
 	}
 	return nil
 }

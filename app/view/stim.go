@@ -36,7 +36,7 @@ func ParseCurrents(text string) ([]float64, error) {
 	for _, w := range strings.FieldsFunc(text, func(r rune) bool { return r == ' ' || r == ';' || r == '\t' }) {
 		x, err := strconv.ParseFloat(strings.ReplaceAll(w, ",", "."), 64)
 		if err != nil || !(x > 0) || math.IsInf(x, 0) {
-			return nil, &exam.Invalid{Field: "threshold", Value: w, Allowed: "currents in mA such as 12 or 12.5, with spaces between repeats"}
+			return nil, &exam.Invalid{Field: "threshold", Value: w, Allowed: words.T("currents in mA such as 12 or 12.5, with spaces between repeats")}
 		}
 		out = append(out, x)
 	}
@@ -47,7 +47,7 @@ func ParseCurrents(text string) ([]float64, error) {
 func CurrentsWords(list []float64) string {
 	parts := make([]string, len(list))
 	for i, x := range list {
-		parts[i] = strconv.FormatFloat(x, 'f', -1, 64)
+		parts[i] = Plain(x)
 	}
 	return strings.Join(parts, " ")
 }

@@ -57,10 +57,18 @@ func DateWords(d exam.Date) string {
 	return Day(t)
 }
 
+// DecimalSign is what the language in use sets before decimals.
+func DecimalSign() string { return words.Decimal("", "0.5")[1:2] }
+
+// Plain writes a number without needless digits, with the language's decimal sign, as it is typed.
+func Plain(x float64) string {
+	return words.Decimal("", strconv.FormatFloat(x, 'f', -1, 64))
+}
+
 // number writes a value with at most one decimal and no needless zero, with the decimal sign of
 // the language in use.
 func number(x float64) string {
-	return words.Decimal("", strconv.FormatFloat(math.Round(x*10)/10, 'f', -1, 64))
+	return Plain(math.Round(x*10) / 10)
 }
 
 // joinWords joins with commas, the last with «and».

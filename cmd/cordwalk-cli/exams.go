@@ -47,10 +47,10 @@ func (c *examAddCmd) Run(e *env) error {
 		return err
 	}
 	if f.Examined.IsZero() {
-		return fmt.Errorf("%s: %w", c.File, &exam.Invalid{Field: "examined", Allowed: "a time such as 2026-03-02T10:15:00+01:00"})
+		return fmt.Errorf("%s: %w", c.File, &exam.Invalid{Field: "examined", Allowed: words.T("a time such as 2026-03-02T10:15:00+01:00")})
 	}
 	if strings.TrimSpace(f.Examiner) == "" {
-		return fmt.Errorf("%s: %w", c.File, &exam.Invalid{Field: "examiner", Allowed: "the examiner's name"})
+		return fmt.Errorf("%s: %w", c.File, &exam.Invalid{Field: "examiner", Allowed: words.T("the examiner's name")})
 	}
 	return e.change(func(s *storage.Store) error {
 		r, err := e.patient(s, c.Patient)

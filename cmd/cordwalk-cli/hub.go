@@ -221,7 +221,7 @@ func (c *stimCmd) Run(e *env) error {
 	}
 	e.say("%s", words.T("Rheobase %s mA, chronaxie %s ms: %s", show(f.Rheobase), show(f.Chronaxie), words.Of(out.Label)))
 	for _, p := range out.Bad {
-		e.say("%s", words.T("The threshold at %g ms does not fit the others: take it again.", p.Width))
+		e.say("%s", words.T("The threshold at %s ms does not fit the others: take it again.", view.Plain(p.Width)))
 	}
 	for _, w := range out.Warnings {
 		e.say("%s", words.T("Note: %s", w))

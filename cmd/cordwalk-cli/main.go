@@ -129,20 +129,27 @@ func main() {
 func run(ctx context.Context, args []string, in io.Reader, out, errOut io.Writer) int {
 	var c commands
 	ended := -1
+	tag, asked := languageOf(args)
+	defer func() { _ = words.Use("en") }()
+	if err := words.Use(tag); err != nil && asked {
+		fmt.Fprintf(errOut, "cordwalk-cli: %s\n", err)
+		return exitUsage
+	}
 	parser, err := kong.New(&c,
 		kong.Name("cordwalk-cli"),
-		kong.Description("Neurological exams of dogs and cats in rehabilitation: record, compare, localise, follow. "+
-			"Supports and never replaces a licensed veterinarian."),
+		kong.Description(words.T("Neurological exams of dogs and cats in rehabilitation: record, compare, localise, follow. Supports and never replaces a licensed veterinarian.")),
 		kong.Vars{"version": version},
 		kong.Writers(out, errOut),
 		kong.Exit(func(code int) { ended = code; panic(exitNow{}) }),
 		kong.ConfigureHelp(kong.HelpOptions{Compact: true, NoExpandSubcommands: true}),
 		kong.UsageOnError(),
+		kong.Help(printHelp),
 	)
 	if err != nil {
 		fmt.Fprintln(errOut, "cordwalk-cli:", err)
 		return exitUsage
 	}
+	translate(parser.Model.Node)
 	var k *kong.Context
 	err = func() (err error) {
 		defer func() {
@@ -159,16 +166,9 @@ func run(ctx context.Context, args []string, in io.Reader, out, errOut io.Writer
 		return ended
 	}
 	if err != nil {
-		fmt.Fprintf(errOut, "cordwalk-cli: %s\n", err)
-		fmt.Fprintln(errOut, "Try: cordwalk-cli --help")
+		fmt.Fprintf(errOut, "cordwalk-cli: %s\n", complaint(err))
+		fmt.Fprintln(errOut, words.T("Try: cordwalk-cli --help"))
 		return exitUsage
-	}
-	if c.Lang != "" {
-		if err := words.Use(c.Lang); err != nil {
-			fmt.Fprintf(errOut, "cordwalk-cli: %s\n", err)
-			return exitUsage
-		}
-		defer func() { _ = words.Use("en") }()
 	}
 	err = k.Run(&env{ctx: ctx, c: &c, out: out, errOut: errOut, in: in})
 	var wrong usageError

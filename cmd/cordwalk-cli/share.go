@@ -450,11 +450,7 @@ func (c *auditCmd) Run(e *env) error {
 					name = r.Patient.Name
 				}
 			}
-			note := x.What
-			if x.Reason != "" {
-				note += ": " + x.Reason
-			}
-			fmt.Fprintf(w, "%s\t%s\t%s\t%s\t%s\n", x.At.Format("2006-01-02 15:04:05"), x.Examiner, words.Of(string(x.Did)), name, note)
+			fmt.Fprintf(w, "%s\t%s\t%s\t%s\t%s\n", x.At.Format("2006-01-02 15:04:05"), x.Examiner, words.Of(string(x.Did)), name, auditWords(x))
 		}
 		return w.Flush()
 	})

@@ -10,6 +10,7 @@ import (
 	"maps"
 	"os"
 	"path/filepath"
+	"reflect"
 	"regexp"
 	"slices"
 	"sort"
@@ -58,6 +59,11 @@ func collect(t *testing.T) catalogue {
 		f, err := parser.ParseFile(fset, name, nil, 0)
 		if err != nil {
 			return err
+		}
+		if strings.Contains(filepath.ToSlash(name), "/cmd/") {
+			for _, h := range helps(f) {
+				out.Texts[h] = h
+			}
 		}
 		imported := ""
 		for _, i := range f.Imports {
@@ -117,7 +123,7 @@ func collect(t *testing.T) catalogue {
 	if err != nil {
 		t.Fatal(err)
 	}
-	terms := slices.Concat(view.Terms(), sheet.Terms(), returned(t, filepath.Join(root, "exam", "protocol.go"), "NotAsked"))
+	terms := slices.Concat(view.Terms(), sheet.Terms(), languageTerms(), returned(t, filepath.Join(root, "exam", "protocol.go"), "NotAsked"))
 	for _, d := range []audit.Did{audit.Exported, audit.Printed, audit.BackedUp, audit.Restored, audit.Invited, audit.Joined, audit.Refused, audit.Removed,
 		audit.Confirmed, audit.Erased, audit.Admitted, audit.Made, audit.Amended, audit.Closed, audit.United, audit.Parted, audit.Looked} {
 		terms = append(terms, string(d))
@@ -130,6 +136,21 @@ func collect(t *testing.T) catalogue {
 			out.Texts[w] = w
 		}
 	}
+	return out
+}
+
+// helps lists the help texts in the tags of a command line's fields.
+func helps(f *ast.File) (out []string) {
+	ast.Inspect(f, func(n ast.Node) bool {
+		if x, ok := n.(*ast.Field); ok && x.Tag != nil {
+			if tag, err := strconv.Unquote(x.Tag.Value); err == nil {
+				if h := reflect.StructTag(tag).Get("help"); h != "" {
+					out = append(out, h)
+				}
+			}
+		}
+		return true
+	})
 	return out
 }
 

@@ -11,6 +11,7 @@ import (
 	"runtime/debug"
 
 	"fyne.io/fyne/v2/app"
+	"fyne.io/fyne/v2/lang"
 	"github.com/alecthomas/kong"
 
 	"cordwalk.example/cordwalk/app/desk"
@@ -39,12 +40,6 @@ func main() {
 }
 
 func run() int {
-	var o options
-	kong.Parse(&o, kong.Name("cordwalk"), kong.Description("Records and compares neurological exams of dogs and cats. It supports and never replaces a licensed veterinarian."), kong.Vars{"version": version})
-	if err := display(); err != nil {
-		fmt.Fprintln(os.Stderr, err)
-		return 2
-	}
 	path, err := view.SettingsPath()
 	if err != nil {
 		fmt.Fprintln(os.Stderr, err)
@@ -53,10 +48,24 @@ func run() int {
 	if err != nil {
 		fmt.Fprintln(os.Stderr, err)
 	}
-	if settings.Language != "" {
-		if err := words.Use(settings.Language); err != nil {
-			fmt.Fprintln(os.Stderr, err)
-		}
+	tag := settings.Language
+	if tag == "" {
+		tag = lang.SystemLocale().LanguageString() // English where there are no texts in it
+	}
+	if err := words.Use(tag); err != nil && settings.Language != "" {
+		fmt.Fprintln(os.Stderr, err)
+	}
+	var o options
+	parser := kong.Must(&o, kong.Name("cordwalk"), kong.Description(words.T("Records and compares neurological exams of dogs and cats. It supports and never replaces a licensed veterinarian.")),
+		kong.Vars{"version": version})
+	for _, f := range parser.Model.Flags {
+		f.Help = words.Of(f.Help)
+	}
+	_, err = parser.Parse(os.Args[1:])
+	parser.FatalIfErrorf(err)
+	if err := display(); err != nil {
+		fmt.Fprintln(os.Stderr, err)
+		return 2
 	}
 	keeper := &desk.Keeper{KeyFile: o.KeyFile}
 	if path != "" {

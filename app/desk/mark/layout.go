@@ -643,6 +643,7 @@ func NewScroll(content fyne.CanvasObject) *Scroll {
 	s.inner = container.New(&scrollLayout{s}, content)
 	s.scroll = container.NewVScroll(s.inner)
 	s.ExtendBaseWidget(s)
+	enlist(s)
 	return s
 }
 

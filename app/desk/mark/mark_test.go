@@ -285,3 +285,16 @@ func TestScrollFollowsItsWidth(t *testing.T) {
 		t.Error("it does not scroll back")
 	}
 }
+
+// The wheel over a line of text moves the form that the line lies in.
+func TestTheWheelOverAFieldScrollsTheForm(t *testing.T) {
+	test.NewTempApp(t).Settings().SetTheme(look.New(look.Light, 1))
+	field := NewField("Bramble", nil)
+	s := NewScroll(Column(look.Unit, field, Space(1, 2000)))
+	w := test.NewTempWindow(t, s)
+	w.Resize(fyne.NewSize(300, 200))
+	test.Scroll(w.Canvas(), fyne.NewPos(40, 20), 0, -60)
+	if s.Offset() == 0 {
+		t.Error("the form stands still")
+	}
+}
