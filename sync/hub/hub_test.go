@@ -59,10 +59,15 @@ func run(t testing.TB, sh *share.Share, a hub.Address, place hub.Place) *client 
 
 func eventually(t testing.TB, what string, f func() bool) {
 	t.Helper()
-	end := time.Now().Add(30 * time.Second)
+	within(t, 30*time.Second, what, f)
+}
+
+func within(t testing.TB, d time.Duration, what string, f func() bool) {
+	t.Helper()
+	end := time.Now().Add(d)
 	for !f() {
 		if time.Now().After(end) {
-			t.Fatalf("still not so after 30 s: %s", what)
+			t.Fatalf("still not so after %s: %s", d, what)
 		}
 		time.Sleep(20 * time.Millisecond)
 	}
