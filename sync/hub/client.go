@@ -156,6 +156,9 @@ func (c *Client) fail(err error) {
 	c.status.Err = err
 }
 
+// giveUp is after how many sessions that got nowhere another node of a cluster is tried.
+const giveUp = 2
+
 // Run exchanges until ctx ends. It keeps trying: a hub that is away is no error. It returns what
 // makes going on senseless: that this device may not use the hub, or that its own journal fails.
 func (c *Client) Run(ctx context.Context) error {
@@ -205,13 +208,24 @@ func (c *Client) Run(ctx context.Context) error {
 			}
 		}
 	}()
+	failed := 0 // sessions one after the other that got nowhere
 	for ctx.Err() == nil {
+		before := c.Status()
 		err := c.session(ctx)
 		if carry.OwnSide(err) {
 			return err
 		}
 		if err != nil && ctx.Err() == nil {
 			c.fail(err)
+		}
+		failed++
+		if now := c.Status(); now.Sent != before.Sent || now.Received != before.Received {
+			failed = 0
+		}
+		if failed >= giveUp && nc.IsConnected() {
+			// Its node may be cut off from the others of its cluster: another one may be better.
+			_ = nc.ForceReconnect()
+			failed = 0
 		}
 		select {
 		case <-ctx.Done():
