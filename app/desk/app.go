@@ -8,6 +8,7 @@ import (
 	"context"
 	"errors"
 	"fmt"
+	"runtime/debug"
 	"sync"
 	"time"
 
@@ -33,12 +34,13 @@ type App struct {
 	practice exam.Practice
 	saver    *view.Saver
 	examiner string
+	draws    bool      // Run was called: the garbage collector is the program's own
 	shared   time.Time // of the last exchange since the program was started
 
 	windows     []*window
 	lastPatient exam.ID
 	caseload    *view.Caseload // the newest, shown at once while a newer one is read
-	first       *readAhead     // the caseload that is read while the window is still being made; nil once it was shown
+	fresh       bool           // the caseload was read with the store and not shown yet
 
 	drafts map[exam.ID]*view.PatientForm // pages of animals that were left with something typed on them
 
@@ -137,13 +139,20 @@ func (a *App) demo(w *window, dir string, failed func(error)) {
 		if err != nil {
 			return nil, errors.Join(err, r.Close())
 		}
-		first := a.readAhead(r)
-		return func() { a.first = first; a.use(w, r, practice, dir) }, nil
+		cases, _ := readCaseload(a.ctx, r, a.now()) // what fails is read again, and told, by the page
+		return func() {
+			a.caseload, a.fresh = cases, cases != nil
+			a.use(w, r, practice, dir)
+		}, nil
 	}, failed)
 }
 
 // Run draws until the last window is closed.
-func (a *App) Run() { a.fyne.Run() }
+func (a *App) Run() {
+	a.draws = true
+	debug.SetGCPercent(starting)
+	a.fyne.Run()
+}
 
 // open opens a store off the drawing goroutine and shows the caseload.
 func (a *App) open(w *window, dir string, passphrase []byte) {
@@ -158,8 +167,11 @@ func (a *App) open(w *window, dir string, passphrase []byte) {
 		if err != nil {
 			return nil, errors.Join(err, r.Close())
 		}
-		first := a.readAhead(r)
-		return func() { a.first = first; a.use(w, r, practice, dir) }, nil
+		cases, _ := readCaseload(a.ctx, r, a.now()) // what fails is read again, and told, by the page
+		return func() {
+			a.caseload, a.fresh = cases, cases != nil
+			a.use(w, r, practice, dir)
+		}, nil
 	}, func(err error) {
 		_, locked := a.opener.Exists(dir)
 		if locked {
