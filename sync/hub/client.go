@@ -56,6 +56,8 @@ type Status struct {
 	Peers     []carry.Peer
 	Forks     []carry.Fork
 	Oldest    time.Time // of the messages that the hub still keeps
+	Bytes     uint64    // of them
+	Limits    Limits    // how long and how much the hub keeps
 	Err       error     // why nothing goes on at the moment
 	Refused   error     // the last message that was left alone, and why
 }
@@ -260,7 +262,7 @@ func (c *Client) session(ctx context.Context) error {
 	clear(c.lacking)
 	c.read = 0
 	c.seq, c.hub = from-1, hub
-	c.status.Oldest = info.State.FirstTime
+	c.keeps(info)
 	c.mu.Unlock()
 
 	if err := c.exchangeMembers(ctx); err != nil {
@@ -337,7 +339,7 @@ func (c *Client) session(ctx context.Context) error {
 			}
 			c.mu.Lock()
 			seq := c.seq
-			c.status.Oldest = info.State.FirstTime
+			c.keeps(info)
 			c.mu.Unlock()
 			if info.Created.UTC().Format(time.RFC3339Nano) != hub || info.State.LastSeq < seq {
 				c.o.Notice("the hub has lost what it held; it is filled again")
@@ -361,6 +363,12 @@ func (c *Client) session(ctx context.Context) error {
 			return err
 		}
 	}
+}
+
+// keeps notes what the hub holds and keeps. mu must be held.
+func (c *Client) keeps(i *jetstream.StreamInfo) {
+	c.status.Oldest, c.status.Bytes = i.State.FirstTime, i.State.Bytes
+	c.status.Limits = Limits{Age: i.Config.MaxAge, Bytes: i.Config.MaxBytes, Replicas: i.Config.Replicas}
 }
 
 func (c *Client) savePlace() {
