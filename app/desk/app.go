@@ -45,6 +45,8 @@ type App struct {
 	drafts map[exam.ID]*view.PatientForm // pages of animals that were left with something typed on them
 
 	album   album       // the photos and clips beside the store
+	keep    keeping     // backups made by themselves
+	idle    idling      // the lock of a screen that nobody uses
 	engines engines     // of all exams: each would hold much scratch memory
 	resting *time.Timer // see rest
 	heavy   sync.Mutex  // long work on one course or paper at a time: each needs much memory
@@ -106,7 +108,7 @@ func (a *App) Start(dir string) {
 	switch {
 	case !exists:
 		w.bare(newFirstRunPage(w, dir))
-	case locked:
+	case locked && !a.inSession(dir):
 		w.bare(newUnlockPage(w, dir))
 	default:
 		a.open(w, dir, nil)
@@ -208,6 +210,14 @@ func (a *App) use(w *window, r Records, p exam.Practice, dir string) {
 		a.lastPatient = route.Patient
 	}
 	w.goTo(view.Route{Screen: view.ScreenCaseload})
+	a.keepSafe()
+	a.watch()
+}
+
+// inSession reports whether a practice opens by itself in its user's unlocked session.
+func (a *App) inSession(dir string) bool {
+	o, ok := a.opener.(interface{ InSession(dir string) bool })
+	return ok && o.InSession(dir)
 }
 
 // work runs something slow on its own goroutine and hands what it returns back to the
@@ -276,7 +286,11 @@ func (a *App) Done() error {
 	if a.resting != nil {
 		a.resting.Stop()
 	}
+	if a.idle.timer != nil {
+		a.idle.timer.Stop()
+	}
 	a.busy.Wait()
+	a.endKeeping()
 	if a.records == nil {
 		return nil
 	}

@@ -97,8 +97,7 @@ func (p *devicesPage) hub() fyne.CanvasObject {
 			p.win.foot.fail(words.T("Name the hub first."), nil)
 			return
 		}
-		p.win.foot.say(words.T("Exchanging…"))
-		p.do(func(ctx context.Context) (func(), error) {
+		p.do(words.T("Exchanging…"), func(ctx context.Context, _ told) (func(), error) {
 			if err := a.saver.Flush(ctx); err != nil {
 				return nil, err
 			}
