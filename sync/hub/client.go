@@ -15,6 +15,7 @@ import (
 	"github.com/nats-io/nats.go"
 	"github.com/nats-io/nats.go/jetstream"
 
+	"cordwalk.example/cordwalk/exam"
 	"cordwalk.example/cordwalk/sync/carry"
 	"cordwalk.example/cordwalk/sync/change"
 	"cordwalk.example/cordwalk/sync/key"
@@ -29,13 +30,16 @@ type Options struct {
 	Incarnation func() change.Incarnation
 	Journal     carry.Journal
 	Members     carry.Members
-	Files       carry.Attachments                        // may be nil
-	Sites       []change.Site                            // whose records are taken in; none: all
-	Place       Place                                    // remembers how far the hub was read; may be nil
-	Now         func() time.Time                         // nil: time.Now
-	Notice      func(words string)                       // messages for people; may be nil
-	Poll        time.Duration                            // how often the journal is looked at for new entries, and the measure of all other waits; 0: 100 ms
-	Connect     func(...nats.Option) (*nats.Conn, error) // for tests and other ways in; nil: by Address
+	Files       carry.Attachments // may be nil
+	Sites       []change.Site     // whose records are taken in; none: all
+	// Extract makes an extract of a patient for the device named who, for a site that does not keep it; none for a
+	// patient that is not here. May be nil: then asks are left to others.
+	Extract func(ctx context.Context, patient exam.ID, who string) ([]byte, error)
+	Place   Place                                    // remembers how far the hub was read; may be nil
+	Now     func() time.Time                         // nil: time.Now
+	Notice  func(words string)                       // messages for people; may be nil
+	Poll    time.Duration                            // how often the journal is looked at for new entries, and the measure of all other waits; 0: 100 ms
+	Connect func(...nats.Option) (*nats.Conn, error) // for tests and other ways in; nil: by Address
 }
 
 // Place remembers how far a hub was read, so that the next start goes on there.
@@ -315,6 +319,11 @@ func (c *Client) session(ctx context.Context) error {
 		return err
 	}
 	defer stopFiles()
+	stopExtracts, err := c.giveExtracts(ctx)
+	if err != nil {
+		return err
+	}
+	defer stopExtracts()
 
 	tick := time.NewTicker(c.o.Poll)
 	defer tick.Stop()

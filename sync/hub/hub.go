@@ -6,13 +6,14 @@
 // journal of its sites, drops repeats itself, compares what it holds with what the others say they
 // hold, asks for what it lacks, and fills the hub again.
 //
-// Subjects, in two streams of messages:
+// Subjects, in streams of messages:
 //
 //	cw.seg.SITE.DEVICE          segments of a device's own stream (stream CW)
 //	cw.fill.WHO.SITE.DEVICE     segments that somebody sends again (stream CW)
 //	cw.head.WHO                 the newest head of a device (stream CWH, one message for each)
 //	cw.member                   statements of the member list (stream CWM, kept)
 //	cw.att.WHO.NAME.…           pieces of attachments (stream CWA)
+//	cw.ask.…, cw.extract.…      one patient for a site that does not keep it (stream CWX)
 //	cw.want.SITE.DEVICE         somebody lacks numbers of a stream (not stored)
 //
 // SITE, DEVICE and WHO are hexadecimal; WHO is the first half of a device's public key.
@@ -71,6 +72,7 @@ func (l Limits) Configs() []jetstream.StreamConfig {
 		{Name: Segments, Subjects: []string{"cw.seg.>", "cw.fill.>"}, MaxAge: l.Age, MaxBytes: l.Bytes, MaxMsgSize: MaxMessage, Storage: jetstream.FileStorage, Replicas: l.Replicas, Discard: jetstream.DiscardOld, AllowDirect: true, Duplicates: 2 * time.Minute},
 		{Name: Heads, Subjects: []string{"cw.head.*"}, MaxAge: l.Age, MaxMsgsPerSubject: 1, MaxBytes: 256 << 20, MaxMsgSize: MaxMessage, Storage: jetstream.FileStorage, Replicas: l.Replicas, AllowDirect: true},
 		{Name: Attached, Subjects: []string{"cw.att.*.*.*.*.*"}, MaxAge: l.Age, MaxBytes: l.Bytes, MaxMsgSize: MaxMessage, Storage: jetstream.FileStorage, Replicas: l.Replicas, Discard: jetstream.DiscardOld, AllowDirect: true, Duplicates: 2 * time.Minute},
+		{Name: Extracts, Subjects: []string{"cw.ask.*.*", "cw.extract.*.*.*.*"}, MaxAge: l.Age, MaxMsgsPerSubject: 1, MaxBytes: min(l.Bytes, 1<<30), MaxMsgSize: MaxMessage, Storage: jetstream.FileStorage, Replicas: l.Replicas, Discard: jetstream.DiscardOld, AllowDirect: true},
 		{Name: Members, Subjects: []string{"cw.member"}, MaxMsgs: 1 << 15, MaxBytes: 1 << 30, MaxMsgSize: 64<<10 + 1024, Storage: jetstream.FileStorage, Replicas: l.Replicas, AllowDirect: true},
 	}
 }

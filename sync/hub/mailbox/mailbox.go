@@ -339,13 +339,13 @@ func (m *Mailbox) Check(c server.ClientAuthentication) bool {
 func permissions(d member.Device) *server.Permissions {
 	who := hub.Who(d.Verifier)
 	pub := []string{
-		"cw.fill." + who + ".*.*", "cw.att." + who + ".>", "cw.head." + who, "cw.member", "cw.want.*.*",
+		"cw.fill." + who + ".*.*", "cw.att." + who + ".>", "cw.head." + who, "cw.member", "cw.want.*.*", "cw.ask." + who + ".*", "cw.extract." + who + ".*.*.*",
 		"$JS.API.INFO", "$JS.ACK.>", "_INBOX.>",
 	}
 	for _, i := range d.Incarnations {
 		pub = append(pub, "cw.seg.*."+i.String())
 	}
-	for _, s := range []string{hub.Segments, hub.Heads, hub.Members, hub.Attached} {
+	for _, s := range []string{hub.Segments, hub.Heads, hub.Members, hub.Attached, hub.Extracts} {
 		pub = append(pub, "$JS.API.STREAM.INFO."+s, "$JS.API.STREAM.MSG.GET."+s, "$JS.API.DIRECT.GET."+s, "$JS.API.DIRECT.GET."+s+".>",
 			"$JS.API.CONSUMER.CREATE."+s, "$JS.API.CONSUMER.CREATE."+s+".>", "$JS.API.CONSUMER.MSG.NEXT."+s+".>", "$JS.API.CONSUMER.INFO."+s+".>", "$JS.API.CONSUMER.DELETE."+s+".>")
 	}
