@@ -97,7 +97,13 @@ type commands struct {
 	Join      joinCmd      `cmd:"" help:"Join a practice with a new folder on this device."`
 	Admit     admitCmd     `cmd:"" help:"Let a device in whose check words are the same."`
 	Remove    removeCmd    `cmd:"" help:"Take a device out of the practice."`
-	Apart     struct {
+	Cluster   clusterCmd   `cmd:"" help:"Prepare a NATS cluster that a group of clinics runs, as a hub for all of them."`
+	Extract   struct {
+		Fetch extractFetchCmd `cmd:"" help:"Ask for one patient of a site whose records are not kept here, by a hub."`
+		Make  extractMakeCmd  `cmd:"" help:"Write one patient to a file that only devices of the practice can read."`
+		Show  extractShowCmd  `cmd:"" help:"Show what such a file holds; nothing of it is kept."`
+	} `cmd:"" help:"One patient for another site of the practice: signed, sealed, to be read only."`
+	Apart struct {
 		List  apartListCmd  `cmd:"" help:"List what removed devices made beyond what counts of them."`
 		Admit apartAdmitCmd `cmd:"" help:"Let some of it count."`
 	} `cmd:"" help:"Entries of removed devices, which are kept apart."`

@@ -99,7 +99,7 @@ func readSheet(name string) (*age.X25519Identity, error) {
 // syncCmd exchanges with a folder.
 type syncCmd struct {
 	Folder string `arg:"" optional:"" help:"A stick, a network share or a folder that some other program synchronises."`
-	Hub    string `help:"Address of a hub instead, as the hub prints it." placeholder:"HOST:PORT#CERTIFICATE"`
+	Hub    string `help:"Address of a hub instead, as the hub prints it; of a cluster those of its nodes with commas between." placeholder:"HOST:PORT#CERTIFICATE"`
 	Stay   bool   `help:"With --hub: go on exchanging until stopped."`
 	sheetFlag
 }
@@ -112,6 +112,7 @@ type syncJSON struct {
 	Waiting  int      `json:"waiting"`
 	Problems []string `json:"problems"`
 	Blocked  string   `json:"blocked,omitempty"`
+	Hub      *hubJSON `json:"hub,omitempty"` // where it went by a hub
 }
 
 func (c *syncCmd) Run(e *env) error {
@@ -164,6 +165,9 @@ func (e *env) synced(out syncJSON, wrong bool) error {
 		}
 		if out.Forks > 0 {
 			e.say("%s", words.N(out.Forks, "%d device was copied and both copies were used; both branches are kept", "%d devices were copied and both copies were used; both branches are kept", out.Forks))
+		}
+		if h := out.Hub; h != nil && h.MaxBytes > 0 {
+			e.say("%s", words.T("The hub keeps entries for %[1]d days and at most %[2]d MB; it holds %[3]d kB.", int(h.KeptDays), h.MaxBytes/1e6, h.Bytes/1e3))
 		}
 		if out.Blocked != "" {
 			e.say("%s", words.T("Nothing could be left there: %s", out.Blocked))

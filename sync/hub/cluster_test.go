@@ -15,6 +15,7 @@ import (
 	"github.com/nats-io/nats-server/v2/server"
 	"github.com/nats-io/nats.go"
 	"github.com/nats-io/nats.go/jetstream"
+	"github.com/nats-io/nkeys"
 	"github.com/stretchr/testify/require"
 
 	"cordwalk.example/cordwalk/sync/hub"
@@ -433,4 +434,63 @@ func TestClusterIsPartitioned(t *testing.T) {
 	cl.ensure()
 	p.record()
 	p.same("everything lost")
+}
+
+// A cluster whose configuration is the one that is made of the list of devices lets members in, under their own names, and
+// nobody else; who may make streams prepares it.
+func TestClusterLetsMembersIn(t *testing.T) {
+	t.Parallel()
+	a := sharetest.Found(t)
+	b := sharetest.Join(t, a, "b")
+	users, err := hub.Users(a.List)
+	require.NoError(t, err)
+	admin, err := nkeys.CreateUser()
+	require.NoError(t, err)
+	name, err := admin.PublicKey()
+	require.NoError(t, err)
+	seed, err := admin.Seed()
+	require.NoError(t, err)
+	dir := t.TempDir()
+	box := start(t, dir, "127.0.0.1:0", a) // for its certificate
+	print := box.Address().Fingerprint
+	box.Close()
+	file := filepath.Join(dir, "server.conf")
+	config := fmt.Sprintf("listen: 127.0.0.1:-1\njetstream { store_dir: %q }\ntls { cert_file: %q, key_file: %q }\n%s", filepath.Join(dir, "group"), filepath.Join(dir, "hub-cert.pem"), filepath.Join(dir, "hub-key.pem"),
+		strings.Replace(users, "users = [", fmt.Sprintf("users = [\n    { nkey: %s }", name), 1))
+	require.NoError(t, os.WriteFile(file, []byte(config), 0o600))
+	o, err := server.ProcessConfigFile(file)
+	require.NoError(t, err)
+	o.NoSigs, o.NoLog = true, true
+	s, err := server.NewServer(o)
+	require.NoError(t, err)
+	go s.Start()
+	require.True(t, s.ReadyForConnections(20*time.Second))
+	defer s.WaitForShutdown()
+	defer s.Shutdown()
+	at := hub.Address{Host: s.Addr().String(), Fingerprint: print}
+	require.NoError(t, hub.Prepare(context.Background(), at, seed, hub.Limits{}))
+	ca, cb := run(t, a, at, nil), run(t, b, at, nil)
+	sharetest.Add(t, a, "Bramble")
+	sharetest.Add(t, b, "Tansy")
+	eventually(t, "both know the same", func() bool { return len(sharetest.Names(t, a)) == 2 && len(sharetest.Names(t, b)) == 2 })
+	require.NoError(t, ca.Status().Refused)
+	require.NoError(t, cb.Status().Refused)
+	x := sharetest.Found(t)
+	_, err = nats.Connect("tls://"+at.Host, nats.Secure(hub.TLS(at)), asDevice(t, x))
+	require.ErrorIs(t, err, nats.ErrAuthorization)
+	kp, err := nkeys.FromRawSeed(nkeys.PrefixByteUser, b.Bag().Device.Signer().Seed())
+	require.NoError(t, err)
+	raw, err := kp.Seed()
+	require.NoError(t, err)
+	require.Error(t, hub.Prepare(context.Background(), at, raw, hub.Limits{}), "a device may not change the streams")
+	require.Error(t, hub.Prepare(context.Background(), at, []byte("no seed"), hub.Limits{}))
+}
+
+// asDevice signs in with a device's key.
+func asDevice(t testing.TB, sh *share.Share) nats.Option {
+	kp, err := nkeys.FromRawSeed(nkeys.PrefixByteUser, sh.Bag().Device.Signer().Seed())
+	require.NoError(t, err)
+	pub, err := kp.PublicKey()
+	require.NoError(t, err)
+	return nats.Nkey(pub, kp.Sign)
 }
