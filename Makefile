@@ -10,7 +10,7 @@ STATICCHECK := go run honnef.co/go/tools/cmd/staticcheck@v0.8.2
 export LANG := en_US.UTF-8
 
 # Loops over every failing operation and the three-node cluster: alike with and without the race detector, and slow with it.
-UNRACED := TestEveryOperation|TestPower|TestFolderHistories|TestCluster|TestManyDevices|TestPapersSpeak|TestNoFlippedBit|TestDamage|TestKill|TestFail
+UNRACED := TestEveryOperation|TestPower|TestFolderHistories|TestCluster|TestManyDevices|TestBacklogBetweenProcesses|TestPapersSpeak|TestNoFlippedBit|TestDamage|TestKill|TestFail
 
 .PHONY: run build cli demo test soak bench fuzz cross lint clean
 

@@ -29,9 +29,9 @@ import (
 const (
 	parts       = 256
 	spillFile   = "index.spill"
-	spillAt     = 48 << 20 // bytes of changes kept in memory
-	commitAt    = 24 << 20 // bytes put in one transaction
-	fillPercent = 0.95     // the pages are filled in order; little is put between later
+	spillAt     = 128 << 20 // bytes of changes kept in memory: a million of them
+	commitAt    = 24 << 20  // bytes put in one transaction
+	fillPercent = 0.95      // the pages are filled in order; little is put between later
 )
 
 // Rebuild makes the index of a store anew from its journals and puts it in the place of the
@@ -130,6 +130,9 @@ func (b *builder) deal() error {
 		total += s.size
 	}
 	b.total = total
+	for i := range b.heap { // a change takes about two fifths of its frame
+		b.heap[i] = make([]byte, 0, min(total*2/5, spillAt)/parts)
+	}
 	fl := follower{ctx: b.ctx, fs: b.fs, keys: b.bag.Ring, state: &b.st, each: b.dealBatch, parallel: true, limits: b.limits,
 		problem: func(p Problem) { b.problems = append(b.problems, p) },
 		read: func(n int64) {

@@ -204,6 +204,15 @@ func makeKeyFile(fsys disk.FS, name string) error {
 	return disk.Replace(fsys, name, key.FormatKeyFile(key.NewSecret()))
 }
 
+// KeyFile returns what opens a practice with a key file, which it makes if it is not there.
+func KeyFile(name string) (key.Opener, error) {
+	fsys := disk.OS()
+	if err := makeKeyFile(fsys, name); err != nil {
+		return key.Opener{}, explain("making the key file "+name, err)
+	}
+	return readKeyFile(fsys, name)
+}
+
 func readKeyFile(fsys disk.FS, name string) (key.Opener, error) {
 	b, err := disk.ReadFile(fsys, name, 4096)
 	if err != nil {

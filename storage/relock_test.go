@@ -17,6 +17,12 @@ func TestRelock(t *testing.T) {
 	ring := key.NewSecret()
 	require.NoError(t, s.Relock(key.Passphrase([]byte("new")), key.Keyring(ring)))
 	require.True(t, s.Protected())
+	in, err := storage.Peek(dir, storage.Options{})
+	require.NoError(t, err)
+	require.True(t, in.Protected && in.Passphrase && in.Keyring)
+	require.Equal(t, s.Bag().Practice, in.Practice)
+	require.NoError(t, storage.Fits(dir, storage.Options{Unlock: storage.Unlock{Passphrase: []byte("new")}}), "also while it is open")
+	require.ErrorIs(t, storage.Fits(dir, storage.Options{Unlock: storage.Unlock{Passphrase: []byte("old")}}), storage.ErrLocked)
 	require.NoError(t, s.Close())
 	other := key.NewSecret()
 	for name, u := range map[string]storage.Unlock{"the old passphrase": {Passphrase: []byte("old")}, "nothing": {}, "another keyring": {Keyring: &other}} {

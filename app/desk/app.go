@@ -8,10 +8,13 @@ import (
 	"context"
 	"errors"
 	"fmt"
+	"runtime/debug"
 	"sync"
+	"sync/atomic"
 	"time"
 
 	"fyne.io/fyne/v2"
+	"fyne.io/fyne/v2/theme"
 
 	"cordwalk.example/cordwalk/app/desk/look"
 	"cordwalk.example/cordwalk/app/desk/mark"
@@ -33,19 +36,23 @@ type App struct {
 	practice exam.Practice
 	saver    *view.Saver
 	examiner string
+	draws    bool      // Run was called: the garbage collector is the program's own
 	shared   time.Time // of the last exchange since the program was started
 
 	windows     []*window
 	lastPatient exam.ID
 	caseload    *view.Caseload // the newest, shown at once while a newer one is read
-	first       *readAhead     // the caseload that is read while the window is still being made; nil once it was shown
+	fresh       bool           // the caseload was read with the store and not shown yet
 
 	drafts map[exam.ID]*view.PatientForm // pages of animals that were left with something typed on them
 
-	album   album       // the photos and clips beside the store
-	engines engines     // of all exams: each would hold much scratch memory
-	resting *time.Timer // see rest
-	heavy   sync.Mutex  // long work on one course or paper at a time: each needs much memory
+	album   album          // the photos and clips beside the store
+	keep    keeping        // backups made by themselves
+	idle    idling         // the lock of a screen that nobody uses
+	engines engines        // of all exams: each would hold much scratch memory
+	resting *time.Timer    // see rest
+	fonts   sync.WaitGroup // the reading of the fonts at the start
+	heavy   sync.Mutex     // long work on one course or paper at a time: each needs much memory
 
 	onUI   view.OnUI // runs on the drawing goroutine; tests pass their own
 	ctx    context.Context
@@ -92,8 +99,7 @@ func (a *App) theme() {
 
 // Start opens the first window: the store named, the one opened last, or the first start.
 func (a *App) Start(dir string) {
-	w := newWindow(a)
-	a.windows = append(a.windows, w)
+	a.readFonts()
 	if dir == "" {
 		dir = a.settings.Store
 	}
@@ -101,27 +107,57 @@ func (a *App) Start(dir string) {
 		dir = a.opener.DefaultDir()
 	}
 	exists, locked := a.opener.Exists(dir)
+	if locked && a.inSession(dir) {
+		locked = false
+	}
+	var x *reading
+	if exists && !locked {
+		x = a.begin(dir, nil) // while the window is made
+	}
+	w := newWindow(a)
+	a.windows = append(a.windows, w)
 	switch {
 	case !exists:
 		w.bare(newFirstRunPage(w, dir))
 	case locked:
 		w.bare(newUnlockPage(w, dir))
 	default:
-		a.open(w, dir, nil)
+		select { // nearly always: no other page is drawn for the moment that is left
+		case <-x.done:
+			if x.err == nil {
+				a.caseload, a.fresh = x.cases, x.cases != nil
+				a.use(w, x.records, x.practice, dir)
+				return
+			}
+		case <-time.After(glance):
+		}
+		a.follow(w, dir, x)
 	}
-	w.win.Show()
 }
+
+// glance is how long a page may stay without an answer before it says what it waits for.
+const glance = 100 * time.Millisecond
 
 // StartDemo opens the first window on the demo practice, made in the folder if it is not there;
 // the empty folder is the usual place of the demo.
 func (a *App) StartDemo(dir string) {
+	a.readFonts()
 	if dir == "" {
 		dir = a.opener.DemoDir()
 	}
 	w := newWindow(a)
 	a.windows = append(a.windows, w)
 	a.demo(w, dir, func(err error) { w.bare(newFailedPage(w, dir, err)) })
-	w.win.Show()
+}
+
+// readFonts has the toolkit read the fonts of the usual text on a goroutine of its own. Nothing
+// else may measure text until it is done.
+func (a *App) readFonts() {
+	a.fonts.Go(func() {
+		for _, bold := range []bool{false, true} {
+			fyne.MeasureText("Cordwalk", theme.TextSize(), fyne.TextStyle{Bold: bold})
+		}
+	})
 }
 
 // demo makes or opens the demo practice off the drawing goroutine.
@@ -137,29 +173,77 @@ func (a *App) demo(w *window, dir string, failed func(error)) {
 		if err != nil {
 			return nil, errors.Join(err, r.Close())
 		}
-		first := a.readAhead(r)
-		return func() { a.first = first; a.use(w, r, practice, dir) }, nil
+		cases, _ := readCaseload(a.ctx, r, a.now()) // what fails is read again, and told, by the page
+		return func() {
+			a.caseload, a.fresh = cases, cases != nil
+			a.use(w, r, practice, dir)
+		}, nil
 	}, failed)
 }
 
 // Run draws until the last window is closed.
-func (a *App) Run() { a.fyne.Run() }
+func (a *App) Run() {
+	a.draws = true
+	debug.SetGCPercent(starting)
+	a.fyne.Run()
+}
+
+// reading is a store that is being opened off the drawing goroutine.
+type reading struct {
+	done chan struct{}
+	page atomic.Pointer[openingPage] // that shows how far it is, nil while there is none
+
+	records  Records
+	practice exam.Practice
+	cases    *view.Caseload // nil where it could not be read
+	err      error
+}
+
+// begin begins to open a store.
+func (a *App) begin(dir string, passphrase []byte) *reading {
+	x := &reading{done: make(chan struct{})}
+	a.busy.Go(func() {
+		defer close(x.done)
+		progress := func(what string, done, total int64) {
+			if p := x.page.Load(); p != nil {
+				p.progress(what, done, total)
+			}
+		}
+		say := func(s string) {
+			a.onUI(func() {
+				if len(a.windows) > 0 {
+					a.windows[0].foot.say(s)
+				}
+			})
+		}
+		if x.records, x.err = a.opener.Open(dir, passphrase, progress, say); x.err != nil {
+			return
+		}
+		if x.practice, x.err = x.records.Practice(); x.err != nil {
+			x.err = errors.Join(x.err, x.records.Close())
+			return
+		}
+		x.cases, _ = readCaseload(a.ctx, x.records, a.now()) // what fails is read again, and told, by the page
+	})
+	return x
+}
 
 // open opens a store off the drawing goroutine and shows the caseload.
 func (a *App) open(w *window, dir string, passphrase []byte) {
+	a.follow(w, dir, a.begin(dir, passphrase))
+}
+
+// follow shows a store's caseload once the store is open, and until then how far it is.
+func (a *App) follow(w *window, dir string, x *reading) {
 	p := newOpeningPage(a, words.T("Opening the practice in %s", dir))
+	x.page.Store(p)
 	w.bare(p)
 	a.work(func(context.Context) (func(), error) {
-		r, err := a.opener.Open(dir, passphrase, p.progress, func(s string) { a.onUI(func() { w.foot.say(s) }) })
-		if err != nil {
-			return nil, err
-		}
-		practice, err := r.Practice()
-		if err != nil {
-			return nil, errors.Join(err, r.Close())
-		}
-		first := a.readAhead(r)
-		return func() { a.first = first; a.use(w, r, practice, dir) }, nil
+		<-x.done
+		return func() {
+			a.caseload, a.fresh = x.cases, x.cases != nil
+			a.use(w, x.records, x.practice, dir)
+		}, x.err
 	}, func(err error) {
 		_, locked := a.opener.Exists(dir)
 		if locked {
@@ -196,6 +280,14 @@ func (a *App) use(w *window, r Records, p exam.Practice, dir string) {
 		a.lastPatient = route.Patient
 	}
 	w.goTo(view.Route{Screen: view.ScreenCaseload})
+	a.keepSafe()
+	a.watch()
+}
+
+// inSession reports whether a practice opens by itself in its user's unlocked session.
+func (a *App) inSession(dir string) bool {
+	o, ok := a.opener.(interface{ InSession(dir string) bool })
+	return ok && o.InSession(dir)
 }
 
 // work runs something slow on its own goroutine and hands what it returns back to the
@@ -232,7 +324,6 @@ func (a *App) another(r view.Route) {
 	w := newWindow(a)
 	a.windows = append(a.windows, w)
 	w.dressed()
-	w.win.Show()
 	w.goTo(r)
 }
 
@@ -264,7 +355,11 @@ func (a *App) Done() error {
 	if a.resting != nil {
 		a.resting.Stop()
 	}
+	if a.idle.timer != nil {
+		a.idle.timer.Stop()
+	}
 	a.busy.Wait()
+	a.endKeeping()
 	if a.records == nil {
 		return nil
 	}

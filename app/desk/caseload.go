@@ -39,45 +39,12 @@ func newCaseloadPage(w *window) *caseloadPage {
 	if p.cases == nil {
 		p.cases = view.NewCaseload(nil, w.app.now())
 	}
-	first := w.app.first
-	w.app.first = nil
-	if first != nil && first.there() {
-		p.cases, w.app.caseload = first.cases, first.cases
-		p.build()
-		return p
-	}
 	p.build()
-	p.load(first)
-	return p
-}
-
-// readAhead is a caseload that is read while the window is still being made.
-type readAhead struct {
-	done  chan struct{}
-	cases *view.Caseload
-	err   error
-}
-
-// readAhead begins to read the caseload of a store that was opened a moment ago.
-func (a *App) readAhead(r Records) *readAhead {
-	f := &readAhead{done: make(chan struct{})}
-	a.busy.Add(1)
-	go func() {
-		defer a.busy.Done()
-		defer close(f.done)
-		f.cases, f.err = readCaseload(a.ctx, r, a.now())
-	}()
-	return f
-}
-
-// there reports whether the caseload was read, without waiting for it.
-func (f *readAhead) there() bool {
-	select {
-	case <-f.done:
-		return f.err == nil
-	default:
-		return false
+	if !w.app.fresh { // else it was read a moment ago, with the store
+		p.load()
 	}
+	w.app.fresh = false
+	return p
 }
 
 func readCaseload(ctx context.Context, r Records, now time.Time) (*view.Caseload, error) {
@@ -155,22 +122,15 @@ func (p *caseloadPage) help() []view.KeyHelp {
 	}
 }
 
-// load reads the caseload off the drawing goroutine, or waits for the one that is being read.
-func (p *caseloadPage) load(first *readAhead) {
+// load reads the caseload off the drawing goroutine.
+func (p *caseloadPage) load() {
 	a := p.win.app
 	p.busy = true
 	a.work(func(ctx context.Context) (func(), error) {
 		if err := a.saver.Flush(ctx); err != nil {
 			return nil, err
 		}
-		var c *view.Caseload
-		var err error
-		if first != nil {
-			<-first.done
-			c, err = first.cases, first.err
-		} else {
-			c, err = readCaseload(ctx, a.records, a.now())
-		}
+		c, err := readCaseload(ctx, a.records, a.now())
 		if err != nil {
 			return nil, err
 		}
@@ -202,8 +162,8 @@ func (p *caseloadPage) filter(only bool) {
 
 // at returns the row of the chosen animal, -1 where none is chosen.
 func (p *caseloadPage) at() int {
-	for i, r := range p.cases.Rows() {
-		if r.Summary.ID == p.chosen {
+	for i := range p.cases.Len() {
+		if p.cases.ID(i) == p.chosen {
 			return i
 		}
 	}
@@ -212,7 +172,7 @@ func (p *caseloadPage) at() int {
 
 func (p *caseloadPage) choose(i int) {
 	if i >= 0 && i < p.cases.Len() {
-		p.chosen = p.cases.Row(i).Summary.ID
+		p.chosen = p.cases.ID(i)
 		p.win.app.lastPatient = p.chosen
 		p.win.rail.update()
 	}
@@ -237,13 +197,13 @@ func (p *caseloadPage) start() {
 		p.choose(0)
 		i = 0
 	}
-	p.win.goTo(view.Route{Screen: view.ScreenExam, Patient: p.cases.Row(i).Summary.ID})
+	p.win.goTo(view.Route{Screen: view.ScreenExam, Patient: p.cases.ID(i)})
 }
 
 // refresh draws list, count and detail anew.
 func (p *caseloadPage) refresh() {
 	if p.at() < 0 && p.cases.Len() > 0 {
-		p.chosen = p.cases.Row(0).Summary.ID
+		p.chosen = p.cases.ID(0)
 	}
 	if p.win.app.lastPatient != p.chosen {
 		p.win.app.lastPatient = p.chosen

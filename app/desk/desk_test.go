@@ -621,7 +621,7 @@ func TestSharingBeginsWithARecoveryKeyAndExchangesByAFolder(t *testing.T) {
 		}
 	}
 	press("Begin to share and back up")
-	s.until("the practice founded", func() bool { return p.share != nil && !p.busy })
+	s.until("the practice founded", func() bool { return p.share != nil && p.work == nil })
 	home, _ := os.UserHomeDir()
 	sheet, err := os.ReadFile(filepath.Join(home, "cordwalk-recovery.txt"))
 	if err != nil || !strings.Contains(string(sheet), "AGE-SECRET-KEY-") {
@@ -638,9 +638,9 @@ func TestSharingBeginsWithARecoveryKeyAndExchangesByAFolder(t *testing.T) {
 		t.Error("the strip does not say that the practice is shared")
 	}
 	press("Invite a device")
-	s.until("the code", func() bool { return p.code != "" && !p.busy })
+	s.until("the code", func() bool { return p.code != "" && p.work == nil })
 	press("Back up now")
-	s.until("the backup", func() bool { return !p.busy && len(p.report) > 0 && strings.Contains(p.report[0], "read back") })
+	s.until("the backup", func() bool { return strings.Contains(s.app.keep.said, "read back") })
 	if es, err := os.ReadDir(s.app.settings.Backups); err != nil || len(es) == 0 {
 		t.Errorf("the backup folder holds %d entries, %v", len(es), err)
 	}

@@ -23,12 +23,7 @@ type unchosen struct {
 
 // openShare opens the list of devices, so that photos and clips are exchanged with the records.
 func (p *devicesPage) openShare(ctx context.Context) (*share.Share, *age.X25519Identity, error) {
-	sh, recovery, err := share.Open(ctx, p.store, share.Options{})
-	if err != nil {
-		return nil, nil, err
-	}
-	sh.Files, err = p.win.app.album.files(ctx, p.store)
-	return sh, recovery, err
+	return p.win.app.album.share(ctx, p.store)
 }
 
 // findChoices looks for animals with values to choose between. It takes as long as reading every

@@ -9,16 +9,14 @@ import (
 	"strings"
 	"time"
 
-	"filippo.io/age"
 	"fyne.io/fyne/v2"
+	"fyne.io/fyne/v2/widget"
 
 	"cordwalk.example/cordwalk/app/desk/look"
 	"cordwalk.example/cordwalk/app/desk/mark"
 	"cordwalk.example/cordwalk/app/view"
 	"cordwalk.example/cordwalk/assets/words"
 	"cordwalk.example/cordwalk/storage"
-	"cordwalk.example/cordwalk/sync/audit"
-	"cordwalk.example/cordwalk/sync/backup"
 	"cordwalk.example/cordwalk/sync/member"
 	"cordwalk.example/cordwalk/sync/share"
 )
@@ -35,11 +33,24 @@ type devicesPage struct {
 	share  *share.Share
 	store  *storage.Store
 	asked  []share.Asked
-	report []string // what the last exchange or backup did
+	report []string // what the last exchange did
+	wrong  string   // why the last thing asked for was not done, and what to do
+	held   []string // backups that still hold what was erased
 	code   string   // of an invitation just made; shown once
-	busy   bool
+	work   *working // nil where nothing is under way
 	gone   bool
-	open   []unchosen // animals with values to choose between
+	open   []unchosen   // animals with values to choose between
+	seen   []share.Seen // the devices, as this one knows them
+	apart  []setApart   // what removed devices made beyond what counts
+}
+
+// working is something slow under way: it says how far it is, and can be stopped.
+type working struct {
+	what *mark.Para
+	bar  *widget.ProgressBar
+	stop context.CancelFunc
+	root fyne.CanvasObject
+	last time.Time // the bar was moved; only touched where progress is told
 }
 
 func newDevicesPage(w *window) *devicesPage {
@@ -53,7 +64,7 @@ func newDevicesPage(w *window) *devicesPage {
 		p.findChoices()
 	}
 	if p.store != nil && p.founded() {
-		p.do(func(ctx context.Context) (func(), error) {
+		p.do(words.T("Looking at the devices…"), func(ctx context.Context, _ told) (func(), error) {
 			sh, _, err := p.openShare(ctx)
 			return func() { p.share = sh }, err
 		})
@@ -66,21 +77,51 @@ func (p *devicesPage) shown()                     { p.win.win.Canvas().Unfocus()
 func (p *devicesPage) left()                      { p.gone = true; p.win.app.keepSettings() }
 
 // founded reports whether the practice has a list of devices.
-func (p *devicesPage) founded() bool {
-	_, err := os.Stat(filepath.Join(p.store.Dir(), "members"))
-	return err == nil
-}
+func (p *devicesPage) founded() bool { return founded(p.store) }
 
-// do runs something slow, one at a time, and draws the page anew.
-func (p *devicesPage) do(what func(ctx context.Context) (func(), error)) {
-	if p.busy {
+// told is called with how far something is.
+type told = func(what string, done, total int64)
+
+// do runs something slow, one at a time, shows how far it is, and draws the page anew.
+func (p *devicesPage) do(what string, f func(ctx context.Context, progress told) (func(), error)) {
+	if p.work != nil {
 		return
 	}
-	p.busy = true
-	p.win.app.work(func(ctx context.Context) (func(), error) {
-		then, err := what(ctx)
+	a := p.win.app
+	ctx, stop := context.WithCancel(a.ctx)
+	k := &working{what: mark.NewPara(what), bar: widget.NewProgressBar(), stop: stop}
+	k.bar.Hide()
+	k.root = mark.On(look.FocusBed, false, mark.Pad(look.Unit, look.Unit, mark.Row(look.Unit*2, []float32{2, 1, 0}, k.what, k.bar, mark.NewButton(words.T("Stop"), "close", stop))))
+	p.work, p.wrong = k, ""
+	progress := func(say string, done, total int64) {
+		if now := time.Now(); done < total && now.Sub(k.last) < 100*time.Millisecond {
+			return
+		} else {
+			k.last = now
+		}
+		a.onUI(func() {
+			k.what.Set(sentence(say))
+			if total > 0 {
+				k.bar.Show()
+				k.bar.SetValue(float64(done) / float64(total))
+			}
+		})
+	}
+	if p.root != nil {
+		p.build()
+	}
+	a.work(func(context.Context) (func(), error) {
+		then, err := f(ctx, progress)
+		stop()
+		if err != nil {
+			return nil, err
+		}
+		sh, seen, apart, err := p.look(a.ctx)
 		return func() {
-			p.busy = false
+			p.work = nil
+			if sh != nil {
+				p.seen, p.apart = seen, apart
+			}
 			if then != nil {
 				then()
 			}
@@ -89,11 +130,33 @@ func (p *devicesPage) do(what func(ctx context.Context) (func(), error)) {
 			}
 		}, err
 	}, func(err error) {
-		p.busy = false
-		if !p.gone {
-			p.win.fail(sentence(err.Error()), err)
+		p.work = nil
+		if p.gone {
+			return
 		}
+		if errors.Is(err, context.Canceled) {
+			p.wrong = words.T("Stopped. What was done until then stays done; begin again when it suits.")
+		} else {
+			p.wrong = sentence(err.Error())
+			p.win.fail(p.wrong, err)
+		}
+		p.build()
 	})
+}
+
+// look gathers what is known of the devices; not on the drawing goroutine.
+func (p *devicesPage) look(ctx context.Context) (sh *share.Share, seen []share.Seen, apart []setApart, err error) {
+	if !founded(p.store) {
+		return nil, nil, nil, nil
+	}
+	if sh, _, err = p.openShare(ctx); err != nil {
+		return nil, nil, nil, err
+	}
+	if seen, err = sh.Overview(ctx); err != nil {
+		return nil, nil, nil, err
+	}
+	apart, err = p.lookApart(ctx, sh)
+	return sh, seen, apart, err
 }
 
 func (p *devicesPage) build() {
@@ -105,11 +168,24 @@ func (p *devicesPage) build() {
 	if !r.Protected() {
 		protected = row("open-lock", words.T("Protection"), words.T("Not protected: the key lies beside the data, so whoever has the folder can read it."))
 	}
-	parts := []fyne.CanvasObject{section(words.T("This device"),
+	var parts []fyne.CanvasObject
+	if p.work != nil {
+		parts = append(parts, p.work.root)
+	}
+	if p.wrong != "" {
+		parts = append(parts, mark.NewPara(p.wrong).In(look.Worse))
+	}
+	for _, line := range p.report {
+		parts = append(parts, mark.NewPara(line))
+	}
+	this := []fyne.CanvasObject{
 		row("window", words.T("Name"), r.Device()),
 		row("save", words.T("Where the data lie"), r.Place()),
-		protected,
-		row("tick", words.T("Saved"), p.win.app.saver.State().Words()))}
+		protected}
+	if x := p.locking(); x != nil {
+		this = append(this, x)
+	}
+	parts = append(parts, section(words.T("This device"), append(this, row("tick", words.T("Saved"), p.win.app.saver.State().Words()))...))
 	switch {
 	case p.win.app.practice.Demo:
 		parts = append(parts, section(words.T("Other devices"), mark.NewPara(words.T("The demo practice stays on this device: its animals are invented."))))
@@ -117,13 +193,14 @@ func (p *devicesPage) build() {
 	case p.share == nil && !p.founded():
 		parts = append(parts, p.found())
 	case p.share != nil:
-		parts = append(parts, p.exchange(), p.hub(), p.devices(), p.backups())
+		parts = append(parts, p.exchange(), p.hub(), p.devices())
+		if x := p.setApart(); x != nil {
+			parts = append(parts, x)
+		}
+		parts = append(parts, p.backups())
 	}
 	if x := p.choices(); x != nil {
 		parts = append(parts, x)
-	}
-	for _, line := range p.report {
-		parts = append(parts, mark.NewPara(line))
 	}
 	p.body.SetContent(mark.AtMost(860, mark.Column(look.Unit*3, parts...)))
 }
@@ -134,7 +211,7 @@ func (p *devicesPage) found() fyne.CanvasObject {
 	file := mark.NewField(filepath.Join(home, "cordwalk-recovery.txt"), nil)
 	begin := mark.NewButton(words.T("Begin to share and back up"), "devices", func() {
 		name := strings.TrimSpace(file.Text)
-		p.do(func(ctx context.Context) (func(), error) {
+		p.do(words.T("Making the recovery key…"), func(ctx context.Context, _ told) (func(), error) {
 			if _, err := os.Stat(name); err == nil {
 				return nil, errors.New(words.T("%s is there already; name a new file for the recovery key", name))
 			}
@@ -143,14 +220,18 @@ func (p *devicesPage) found() fyne.CanvasObject {
 				return nil, fmt.Errorf("%s: %w", words.T("making the recovery sheet"), err)
 			}
 			sh, recovery, err := p.openShare(ctx)
-			if err == nil && recovery != nil {
-				_, err = fmt.Fprintf(f, "%s\n%s\n", words.T("Recovery sheet of the practice %s. Whoever holds this key can open its data.", p.store.Bag().Practice), recovery)
+			if recovery == nil { // nothing was founded: the file would stand in the way of the next try
+				err = errors.Join(err, f.Close(), os.Remove(name))
+				return func() { p.share = sh }, err
 			}
-			if err == nil {
-				err = f.Sync()
+			// Also beside an error: the key is known nowhere else.
+			text := words.T("Recovery sheet of the practice %s. Whoever holds this key can open its data.", p.store.Bag().Practice) + "\n" + recovery.String() + "\n"
+			_, werr := f.WriteString(text)
+			if werr == nil {
+				werr = f.Sync()
 			}
-			if cerr := f.Close(); err == nil {
-				err = cerr
+			if werr = errors.Join(werr, f.Close()); werr != nil {
+				return nil, fmt.Errorf("%s %s: %w", words.T("write this key down now, it is kept nowhere else:"), recovery, errors.Join(werr, err))
 			}
 			return func() {
 				p.share = sh
@@ -173,25 +254,16 @@ func (p *devicesPage) exchange() fyne.CanvasObject {
 			p.win.foot.fail(words.T("Name the folder first."), nil)
 			return
 		}
-		p.do(func(ctx context.Context) (func(), error) {
+		p.do(words.T("Exchanging…"), func(ctx context.Context, progress told) (func(), error) {
 			if err := a.saver.Flush(ctx); err != nil {
 				return nil, err
 			}
-			r, err := p.share.Folder(ctx, place, nil)
+			r, err := p.share.Folder(ctx, place, progress)
 			if err != nil {
 				return nil, err
 			}
 			at := a.now()
 			lines := []string{words.T("%d taken in, %d handed over", r.Received, r.Sent)}
-			for _, peer := range r.Peers {
-				name := p.share.List.NameOf(peer.Device)
-				switch {
-				case peer.Differs:
-					lines = append(lines, words.T("%s: its records differ from ours although it has the same entries", name))
-				case peer.Ahead:
-					lines = append(lines, words.T("%s: its clock runs more than a day ahead", name))
-				}
-			}
 			for _, x := range r.Waiting {
 				lines = append(lines, words.T("entries %d to %d of %s are not here yet: %s", x.First, x.Last, p.share.List.NameOf(x.Stream.Device), x.Why))
 			}
@@ -230,22 +302,17 @@ func (p *devicesPage) exchange() fyne.CanvasObject {
 func (p *devicesPage) devices() fyne.CanvasObject {
 	a := p.win.app
 	var lines []fyne.CanvasObject
-	for _, x := range p.share.List.Devices() {
-		d := x
-		note := words.T("belongs to the practice")
-		switch {
-		case d.Verifier == p.store.Bag().Device.Verifier():
-			note = words.T("this device")
-		case len(d.Removals) > 0:
-			note = words.T("removed: %s", d.Removals[0].Reason)
-		case d.Disputed:
-			note = words.T("let in by a device that was removed at the same time")
-		}
-		row := []fyne.CanvasObject{mark.NewPara(d.Name).Strong(), mark.NewPara(note).In(look.InkSoft)}
-		if d.Member() && d.Verifier != p.store.Bag().Device.Verifier() {
+	for _, x := range p.seen {
+		d := x.Device
+		row := []fyne.CanvasObject{mark.NewPara(d.Name).Strong(), mark.Column(2, p.known(x)...)}
+		if d.Member() && !x.This {
 			row = append(row, mark.NewButton(words.T("Remove"), "close", func() { p.askRemove(d) }).As(mark.Quiet))
 		}
-		lines = append(lines, mark.Row(look.Unit, []float32{1, 2, 0}, row...), mark.Rule())
+		lines = append(lines, mark.RowTop(look.Unit, []float32{1, 2.4, 0}, row...), mark.Rule())
+	}
+	lines = append(lines, p.contested()...)
+	if n := len(p.share.Damaged()); n > 0 {
+		lines = append(lines, mark.NewPara(words.N(n, "%d entry of this list is damaged; an exchange brings it back.", "%d entries of this list are damaged; an exchange brings them back.", n)).In(look.Worse))
 	}
 	for _, x := range p.asked {
 		r := x
@@ -262,7 +329,7 @@ func (p *devicesPage) devices() fyne.CanvasObject {
 			return
 		}
 		who := a.examiner
-		p.do(func(ctx context.Context) (func(), error) {
+		p.do(words.T("Inviting…"), func(ctx context.Context, _ told) (func(), error) {
 			code, err := p.share.Invite(ctx, who, place, 24*time.Hour)
 			return func() { p.code = code }, err
 		})
@@ -278,11 +345,11 @@ func (p *devicesPage) devices() fyne.CanvasObject {
 func (p *devicesPage) answer(r share.Asked, yes bool) {
 	a := p.win.app
 	place, who := a.settings.Exchange, a.examiner
-	p.do(func(ctx context.Context) (func(), error) {
+	p.do(words.T("Answering…"), func(ctx context.Context, progress told) (func(), error) {
 		var err error
 		if yes {
 			if err = p.share.Admit(ctx, who, place, r); err == nil {
-				_, err = p.share.Folder(ctx, place, nil)
+				_, err = p.share.Folder(ctx, place, progress)
 			}
 		} else {
 			err = p.share.Refuse(ctx, who, place, r)
@@ -302,7 +369,9 @@ func (p *devicesPage) askRemove(d member.Device) {
 		}
 		p.win.hideSheet()
 		who := p.win.app.examiner
-		p.do(func(ctx context.Context) (func(), error) { return nil, p.share.Remove(ctx, who, d.Verifier, why) })
+		p.do(words.T("Removing…"), func(ctx context.Context, _ told) (func(), error) {
+			return nil, p.share.Remove(ctx, who, d.Verifier, why)
+		})
 	}
 	reason.OnSubmitted = func(string) { do() }
 	p.win.showSheet(words.T("Remove %s", d.Name), mark.Column(look.Unit,
@@ -311,50 +380,42 @@ func (p *devicesPage) askRemove(d member.Device) {
 	p.win.win.Canvas().Focus(reason)
 }
 
-// backups makes a backup that is read back before it counts.
+// backups makes a backup that is read back before it counts, once a day by itself or now.
 func (p *devicesPage) backups() fyne.CanvasObject {
 	a := p.win.app
 	folder := mark.NewField(a.settings.Backups, func(s string) { a.settings.Backups = strings.TrimSpace(s) }).Hint(words.T("A folder on another disk"))
+	daily := mark.Tick(words.T("Once a day by itself, while the program runs"), !a.settings.ByHand, func(on bool) {
+		a.settings.ByHand = !on
+		a.keepSettings()
+	})
 	now := mark.NewButton(words.T("Back up now"), "save", func() {
-		place, who := a.settings.Backups, a.examiner
-		if place == "" {
+		if a.settings.Backups == "" {
 			p.win.foot.fail(words.T("Name the folder first."), nil)
 			return
 		}
-		p.do(func(ctx context.Context) (func(), error) {
-			if err := a.saver.Flush(ctx); err != nil {
-				return nil, err
-			}
-			to, check, err := openers(p.share)
-			if err != nil {
-				return nil, err
-			}
-			file, err := backup.Make(ctx, p.share.Store, place, to, check, backup.Options{})
-			if err != nil {
-				return nil, err
-			}
-			err = audit.Write(ctx, p.share.Store, who, audit.BackedUp, filepath.Base(file))
-			return func() { p.report = []string{words.T("Backup written and read back: %s", file)} }, err
-		})
+		a.keepSettings()
+		if a.backUp(true) {
+			p.build()
+		}
 	})
-	return section(words.T("Backup"), mark.NewLabelled(words.T("Folder"), folder),
-		mark.Row(look.Unit*2, []float32{0, 1}, now, mark.NewPara(words.T("This device and the recovery key can open it. It is read back before it counts.")).In(look.InkSoft)))
-}
-
-// openers returns to whom backups are sealed: this device and the recovery sheet.
-func openers(sh *share.Share) (to []age.Recipient, check []age.Identity, err error) {
-	list := []string{sh.Bag().Device.Recipient()}
-	for _, raw := range sh.List.Statements() {
-		if st, err := member.Parse(raw); err == nil && st.Kind == member.Found && st.Recovery != "" {
-			list = append(list, st.Recovery)
-		}
+	k := &a.keep
+	k.mu.Lock()
+	running, since, said, failed := k.running, k.since, k.said, k.failed
+	k.mu.Unlock()
+	state := mark.NewPara(words.T("This device and the recovery key can open it. It is read back before it counts.")).In(look.InkSoft)
+	switch {
+	case running:
+		state = mark.NewPara(words.T("A backup is being made since %s.", since.Format("15:04")))
+		now.Disable()
+	case failed:
+		state = mark.NewPara(said).In(look.Worse)
+	case said != "":
+		state = mark.NewPara(said)
 	}
-	for _, r := range list {
-		x, err := age.ParseX25519Recipient(r)
-		if err != nil {
-			return nil, nil, err
-		}
-		to = append(to, x)
+	lines := []fyne.CanvasObject{mark.NewLabelled(words.T("Folder"), folder), daily, mark.Row(look.Unit*2, []float32{0, 1}, now, state),
+		mark.NewPara(words.T("The newest of 7 days, 5 weeks and 12 months are kept there; older ones are removed once the newest reads back.")).In(look.InkSoft)}
+	for _, h := range p.held {
+		lines = append(lines, mark.NewPara(h).In(look.Worse))
 	}
-	return to, []age.Identity{sh.Bag().Device.Identity()}, nil
+	return section(words.T("Backup"), lines...)
 }

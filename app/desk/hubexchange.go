@@ -14,7 +14,9 @@ import (
 
 	"cordwalk.example/cordwalk/app/desk/mark"
 	"cordwalk.example/cordwalk/assets/words"
+	"cordwalk.example/cordwalk/exam"
 	"cordwalk.example/cordwalk/storage/disk"
+	"cordwalk.example/cordwalk/sync/extract"
 	"cordwalk.example/cordwalk/sync/hub"
 	"cordwalk.example/cordwalk/sync/key"
 	"cordwalk.example/cordwalk/sync/share"
@@ -54,7 +56,10 @@ func throughHub(ctx context.Context, sh *share.Share, address string, notice fun
 	ctx, cancel := context.WithCancel(ctx)
 	defer cancel()
 	client := hub.New(hub.Options{Address: at, Bag: func() key.Bag { return sh.Bag() }, Incarnation: sh.Incarnation, Journal: sh, Members: sh,
-		Files: sh.Files, Place: hubPlace{filepath.Join(sh.Dir(), "hub.place")}, Notice: notice})
+		Files: sh.Files, Place: hubPlace{filepath.Join(sh.Dir(), "hub.place")}, Notice: notice,
+		Extract: func(ctx context.Context, patient exam.ID, who string) ([]byte, error) {
+			return extract.Give(ctx, sh.Store, patient, who, time.Now())
+		}})
 	done := make(chan error, 1)
 	go func() { done <- client.Run(ctx) }()
 	started, still := time.Now(), time.Now()
@@ -97,8 +102,7 @@ func (p *devicesPage) hub() fyne.CanvasObject {
 			p.win.foot.fail(words.T("Name the hub first."), nil)
 			return
 		}
-		p.win.foot.say(words.T("Exchanging…"))
-		p.do(func(ctx context.Context) (func(), error) {
+		p.do(words.T("Exchanging…"), func(ctx context.Context, _ told) (func(), error) {
 			if err := a.saver.Flush(ctx); err != nil {
 				return nil, err
 			}
@@ -108,6 +112,12 @@ func (p *devicesPage) hub() fyne.CanvasObject {
 			}
 			at := a.now()
 			lines := []string{words.T("%d taken in, %d handed over", s.Received, s.Sent)}
+			if s.Limits.Bytes > 0 {
+				lines = append(lines, words.T("The hub keeps entries for %[1]d days and at most %[2]d MB; it holds %[3]d kB.", int(s.Limits.Age.Hours()/24), s.Limits.Bytes/1e6, s.Bytes/1e3))
+			}
+			if s.Unsent > 0 {
+				lines = append(lines, words.N(int(s.Unsent), "%[1]d entry waits for the hub since %[2]s", "%[1]d entries wait for the hub since %[2]s", s.Unsent, s.Since.Local().Format("2006-01-02 15:04")))
+			}
 			if s.Refused != nil {
 				lines = append(lines, words.T("A message was left alone: %s", s.Refused.Error()))
 			}

@@ -15,6 +15,7 @@ import (
 	"cordwalk.example/cordwalk/assets/words"
 	"cordwalk.example/cordwalk/exam"
 	"cordwalk.example/cordwalk/storage"
+	"cordwalk.example/cordwalk/sync/keyring"
 	"cordwalk.example/cordwalk/sync/share"
 )
 
@@ -75,9 +76,39 @@ func (k *Keeper) options(pass []byte, progress func(string, int64, int64), notic
 	return storage.Options{Unlock: storage.Unlock{KeyFile: k.KeyFile, Passphrase: pass}, Program: "cordwalk", Now: k.Now, Progress: progress, Notice: notice}
 }
 
-// Open opens the practice in a folder.
+// Fits reports, by a nil error, whether a passphrase opens the practice in a folder, which may be open.
+func (k *Keeper) Fits(dir string, pass []byte) error {
+	return storage.Fits(dir, storage.Options{Unlock: storage.Unlock{Passphrase: pass}})
+}
+
+// ByPassphrase reports whether a passphrase opens the practice in a folder.
+func (k *Keeper) ByPassphrase(dir string) bool {
+	in, err := storage.Peek(dir, storage.Options{})
+	return err == nil && in.Passphrase
+}
+
+// InSession reports whether the system keyring of this user may open the practice in a folder without a passphrase.
+func (k *Keeper) InSession(dir string) bool {
+	in, err := storage.Peek(dir, storage.Options{})
+	return err == nil && in.Keyring && k.KeyFile == ""
+}
+
+// Open opens the practice in a folder: with the passphrase or, without one, with what the system keyring holds where
+// that was chosen.
 func (k *Keeper) Open(dir string, pass []byte, progress func(string, int64, int64), notice func(string)) (Records, error) {
-	s, err := storage.Open(dir, k.options(pass, progress, notice))
+	o := k.options(pass, progress, notice)
+	if len(pass) == 0 && k.InSession(dir) {
+		in, err := storage.Peek(dir, storage.Options{})
+		if err != nil {
+			return nil, err
+		}
+		held, err := keyring.Get(context.Background(), in.Practice)
+		if err != nil {
+			return nil, err
+		}
+		o.Unlock.Keyring = &held
+	}
+	s, err := storage.Open(dir, o)
 	if err != nil {
 		return nil, err
 	}

@@ -17,6 +17,14 @@ import (
 // textures at once (the toolkit would keep them for a minute), the scratch of the engines, the
 // tables of a species that no window shows, and at the next pause the memory itself.
 
+// Garbage is collected rarely until the first pause, so that the program starts without waiting for it, and
+// often from then on: pictures and the engines' scratch come and go in large pieces, and collecting
+// them early costs little. Percentages as debug.SetGCPercent takes them; a choice, measured.
+const (
+	starting = 400
+	running  = 50
+)
+
 // pause is how long nobody changes the page before memory is handed back to the system.
 const pause = 2 * time.Second
 
@@ -91,7 +99,11 @@ func (a *App) rest() {
 	if a.resting != nil {
 		a.resting.Stop()
 	}
+	collect := a.draws
 	a.resting = time.AfterFunc(pause, func() {
+		if collect {
+			debug.SetGCPercent(running)
+		}
 		a.onUI(a.prune)
 		handBack(a.ctx)
 	})

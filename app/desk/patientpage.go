@@ -133,6 +133,9 @@ func (p *patientPage) build() {
 		mark.RowTop(look.Unit*2, []float32{1, 1, 1}, p.field("referred-by", words.T("Referred by"), f.ReferredBy, "", func(s string) { f.ReferredBy = s }),
 			p.field("referred-until", words.T("Referral holds until"), f.ReferredUntil, "2026-12-31", func(s string) { f.ReferredUntil = s }),
 			p.field("referral-limits", words.T("Limits of the referral"), f.ReferralLimits, "", func(s string) { f.ReferralLimits = s })))
+	if !f.New() && !p.before.Owner.Empty() {
+		people.(*fyne.Container).Add(mark.Left(mark.NewButton(words.T("The owner asks to be erased"), "close", func() { p.win.askErase(p.before) }).As(mark.Quiet)))
+	}
 	note := mark.NewArea(f.Note, 3, func(s string) { f.Note = s })
 	rest := section(words.T("Status and note"),
 		mark.RowTop(look.Unit*2, []float32{1, 1, 1},

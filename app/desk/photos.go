@@ -12,6 +12,7 @@ import (
 	"strings"
 	"sync"
 
+	"filippo.io/age"
 	"fyne.io/fyne/v2"
 	"fyne.io/fyne/v2/canvas"
 	"fyne.io/fyne/v2/dialog"
@@ -25,13 +26,35 @@ import (
 	"cordwalk.example/cordwalk/exam"
 	store "cordwalk.example/cordwalk/storage"
 	"cordwalk.example/cordwalk/sync/attach"
+	"cordwalk.example/cordwalk/sync/share"
 )
 
-// album holds the sealed files beside a store, opened when they are first needed.
+// album holds what lies beside a store and is opened when it is first needed: the sealed files, and the list of devices.
 type album struct {
-	mu   sync.Mutex
-	of   *store.Store
-	open *attach.Files
+	mu      sync.Mutex
+	of      *store.Store
+	open    *attach.Files
+	devices *share.Share
+}
+
+// share opens the list of the practice's devices; not on the drawing goroutine. The first time it founds the practice:
+// then it returns what belongs on the recovery sheet, perhaps beside an error.
+func (a *album) share(ctx context.Context, s *store.Store) (*share.Share, *age.X25519Identity, error) {
+	files, err := a.files(ctx, s)
+	if err != nil {
+		return nil, nil, err
+	}
+	a.mu.Lock()
+	defer a.mu.Unlock()
+	if a.devices != nil {
+		return a.devices, nil, nil
+	}
+	sh, recovery, err := share.Open(ctx, s, share.Options{})
+	if err != nil {
+		return nil, recovery, err
+	}
+	sh.Files, a.devices = files, sh
+	return sh, recovery, nil
 }
 
 // files opens the sealed files of a store; not on the drawing goroutine.
@@ -45,7 +68,7 @@ func (a *album) files(ctx context.Context, s *store.Store) (*attach.Files, error
 	if err != nil {
 		return nil, err
 	}
-	a.of, a.open = s, f
+	a.of, a.open, a.devices = s, f, nil
 	return f, nil
 }
 

@@ -68,8 +68,11 @@ func newWindow(a *App) *window {
 	w.layer = container.NewStack()
 	tips, tipLayer := mark.NewTips(w.win.Canvas())
 	w.tips = tips
-	w.win.SetContent(container.NewStack(mark.NewGround(look.Paper), &fyne.Container{Layout: windowLayout{w}, Objects: []fyne.CanvasObject{w.rail, w.strip, w.center, w.foot}}, w.layer, tipLayer))
+	// The system makes the window while the fonts are read; nothing is measured before both are there.
 	w.win.Resize(a.windowSize())
+	w.win.Show()
+	a.fonts.Wait()
+	w.win.SetContent(container.NewStack(mark.NewGround(look.Paper), &fyne.Container{Layout: windowLayout{w}, Objects: []fyne.CanvasObject{w.rail, w.strip, w.center, w.foot}}, w.layer, tipLayer))
 	w.win.SetCloseIntercept(w.close)
 	w.keys()
 	w.win.SetOnDropped(func(_ fyne.Position, files []fyne.URI) {

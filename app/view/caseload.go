@@ -75,33 +75,46 @@ var caseFields = [...]struct {
 	{FieldBreed, 0, func(s Summary) string { return s.Breed }},
 }
 
-// Caseload is the list of all patients: who needs me, and why.
+// Caseload is the list of all patients: who needs me, and why. A row is put into words when it is
+// asked for: a practice has thousands, a screen shows twenty.
 type Caseload struct {
-	all    []CaseRow
-	folded [len(caseFields)][]string
-	shown  []CaseRow
+	list   []Summary
+	all    []place // by what needs attention
+	now    time.Time
+	folded [len(caseFields)][]string // in the order of all; made by the first search
+	shown  []hit
 	query  string
 	hide   bool // hide patients who are never due
 	today  bool // show only those who need something today
 }
 
+// place is a patient's place in the order of the caseload.
+type place struct {
+	attention Attention
+	days      int
+	name      string // in lower case
+	at        int    // in Caseload.list
+}
+
+// hit is a patient shown: its index in Caseload.all, and where the search was found.
+type hit struct {
+	row, score int
+	found      [len(caseFields)]int // one more than the place in the folded field, 0 for nowhere
+	spelled    []Match              // where spelling was forgiven
+}
+
 // NewCaseload makes the rows, sorted by what needs attention at the time now, in its zone.
 func NewCaseload(list []Summary, now time.Time) *Caseload {
 	list = Present(list)
-	c := &Caseload{all: make([]CaseRow, len(list))}
-	for i, s := range list {
-		c.all[i] = caseRow(s, now)
+	c := &Caseload{list: list, all: make([]place, len(list)), now: now}
+	for i := range list {
+		x := place{name: strings.ToLower(list[i].Name), at: i}
+		x.attention, x.days = attention(&list[i], now)
+		c.all[i] = x
 	}
-	slices.SortStableFunc(c.all, func(a, b CaseRow) int {
-		return cmp.Or(cmp.Compare(a.Attention, b.Attention), cmp.Compare(a.Days, b.Days),
-			cmp.Compare(strings.ToLower(a.Summary.Name), strings.ToLower(b.Summary.Name)))
+	slices.SortFunc(c.all, func(a, b place) int {
+		return cmp.Or(cmp.Compare(a.attention, b.attention), cmp.Compare(a.days, b.days), cmp.Compare(a.name, b.name), cmp.Compare(a.at, b.at))
 	})
-	for f := range caseFields {
-		c.folded[f] = make([]string, len(c.all))
-		for i := range c.all {
-			c.folded[f][i] = fold(caseFields[f].text(c.all[i].Summary))
-		}
-	}
 	c.apply()
 	return c
 }
@@ -116,8 +129,42 @@ func Present(list []Summary) []Summary {
 	return slices.DeleteFunc(slices.Clone(list), gone)
 }
 
+// attention says why a patient needs somebody, and in how many days it is due.
+func attention(s *Summary, now time.Time) (why Attention, days int) {
+	if s.Status != exam.Active {
+		return NeverDue, 0
+	}
+	days = dueIn(s, now)
+	switch {
+	case days < 0:
+		why = Overdue
+	case days == 0:
+		why = DueToday
+	default:
+		why = DueLater
+	}
+	if !s.OpenVisit.IsZero() {
+		why = Unfinished
+	}
+	for _, a := range s.Alerts {
+		if a.Answered {
+			continue
+		}
+		switch a.Urgency {
+		case "now":
+			why = min(why, AlertNow)
+		case "today":
+			why = min(why, AlertToday)
+		default:
+			why = min(why, AlertSoon)
+		}
+	}
+	return why, days
+}
+
 func caseRow(s Summary, now time.Time) CaseRow {
-	r := CaseRow{Summary: s, Cross: CrossFrom(s.Motor, s.Lameness, s.TailTone), Change: MarkOf(s.Direction), Attention: NeverDue}
+	r := CaseRow{Summary: s, Cross: CrossFrom(s.Motor, s.Lameness, s.TailTone), Change: MarkOf(s.Direction)}
+	r.Attention, r.Days = attention(&s, now)
 	if s.Visits == 0 {
 		r.LastWords = words.T("no visit yet")
 	} else {
@@ -132,49 +179,28 @@ func caseRow(s Summary, now time.Time) CaseRow {
 		}
 	}
 	for _, a := range s.Alerts {
-		if a.Answered {
-			continue
+		if !a.Answered {
+			r.Alerts = append(r.Alerts, words.Of(a.Urgency))
 		}
-		r.Alerts = append(r.Alerts, words.Of(a.Urgency))
 	}
-	if s.Status != exam.Active {
-		r.DueWords = words.Of(s.Status.String())
-		return r
-	}
-	r.Attention, r.Days = DueLater, dueIn(s, now)
 	switch {
+	case s.Status != exam.Active:
+		r.DueWords = words.Of(s.Status.String())
+	case !s.OpenVisit.IsZero():
+		r.DueWords = words.T("exam not closed")
 	case r.Days < 0:
-		r.Attention = Overdue
 		r.DueWords = words.N(-r.Days, "%d day overdue", "%d days overdue", -r.Days)
 	case r.Days == 0:
-		r.Attention = DueToday
 		r.DueWords = words.T("due today")
 	default:
 		r.DueWords = words.N(r.Days, "due in %d day", "due in %d days", r.Days)
-	}
-	if !s.OpenVisit.IsZero() {
-		r.Attention = Unfinished
-		r.DueWords = words.T("exam not closed")
-	}
-	for _, a := range s.Alerts {
-		if a.Answered {
-			continue
-		}
-		switch a.Urgency {
-		case "now":
-			r.Attention = min(r.Attention, AlertNow)
-		case "today":
-			r.Attention = min(r.Attention, AlertToday)
-		default:
-			r.Attention = min(r.Attention, AlertSoon)
-		}
 	}
 	return r
 }
 
 // dueIn returns the days from today until the next visit: the date agreed, or so many days
 // after the last visit; today for a patient without one.
-func dueIn(s Summary, now time.Time) int {
+func dueIn(s *Summary, now time.Time) int {
 	if at, ok := s.NextVisit.Time(); ok && (s.Visits == 0 || at.After(s.Last)) {
 		return DaysBetween(now, time.Date(at.Year(), at.Month(), at.Day(), 12, 0, 0, 0, now.Location()))
 	}
@@ -199,18 +225,30 @@ func DaysBetween(from, to time.Time) int {
 // Search shows only the patients whose name, owner, breed or problem fits the query, best
 // first. The empty query shows all, by attention.
 func (c *Caseload) Search(query string) {
-	c.query = strings.TrimSpace(query)
-	c.apply()
+	if query = strings.TrimSpace(query); query != c.query {
+		c.query = query
+		c.apply()
+	}
 }
 
 // Query returns the search as given.
 func (c *Caseload) Query() string { return c.query }
 
 // HideInactive leaves discharged and dead patients out.
-func (c *Caseload) HideInactive(hide bool) { c.hide = hide; c.apply() }
+func (c *Caseload) HideInactive(hide bool) {
+	if hide != c.hide {
+		c.hide = hide
+		c.apply()
+	}
+}
 
 // OnlyToday shows only those with an alert, an unfinished exam, overdue or due today.
-func (c *Caseload) OnlyToday(only bool) { c.today = only; c.apply() }
+func (c *Caseload) OnlyToday(only bool) {
+	if only != c.today {
+		c.today = only
+		c.apply()
+	}
+}
 
 // Len returns how many patients are shown.
 func (c *Caseload) Len() int { return len(c.shown) }
@@ -219,20 +257,45 @@ func (c *Caseload) Len() int { return len(c.shown) }
 func (c *Caseload) Total() int { return len(c.all) }
 
 // Row returns the i-th patient shown.
-func (c *Caseload) Row(i int) CaseRow { return c.shown[i] }
+func (c *Caseload) Row(i int) CaseRow {
+	h := c.shown[i]
+	r := caseRow(c.list[c.all[h.row].at], c.now)
+	r.Matches = h.spelled
+	for f, at := range h.found {
+		if at == 0 {
+			continue
+		}
+		first := utf8.RuneCountInString(c.folded[f][h.row][:at-1])
+		m := Match{Field: caseFields[f].field}
+		for k := range utf8.RuneCountInString(fold(c.query)) {
+			m.At = append(m.At, first+k)
+		}
+		r.Matches = append(r.Matches, m)
+	}
+	return r
+}
 
-// Rows returns the patients shown. Shared: do not change.
-func (c *Caseload) Rows() []CaseRow { return c.shown }
+// ID returns the i-th patient shown.
+func (c *Caseload) ID(i int) exam.ID { return c.list[c.all[c.shown[i].row].at].ID }
+
+// Rows returns the patients shown.
+func (c *Caseload) Rows() []CaseRow {
+	out := make([]CaseRow, len(c.shown))
+	for i := range out {
+		out[i] = c.Row(i)
+	}
+	return out
+}
 
 // Counts says how many active patients stand in each state, for the line above the list.
 func (c *Caseload) Counts() (alerts, overdue, today int) {
-	for _, r := range c.all {
+	for _, x := range c.all {
 		switch {
-		case len(r.Alerts) > 0 && r.Attention != NeverDue:
+		case x.attention <= AlertSoon:
 			alerts++
-		case r.Attention == Overdue:
+		case x.attention == Overdue:
 			overdue++
-		case r.Attention == DueToday || r.Attention == Unfinished:
+		case x.attention == DueToday || x.attention == Unfinished:
 			today++
 		}
 	}
@@ -250,8 +313,8 @@ func (c *Caseload) Words() string {
 		words.T("%d overdue", o) + " · " + words.T("%d today", t)
 }
 
-func (c *Caseload) keep(r CaseRow) bool {
-	return (!c.hide || r.Attention != NeverDue) && (!c.today || r.Attention <= DueToday)
+func (c *Caseload) keep(x place) bool {
+	return (!c.hide || x.attention != NeverDue) && (!c.today || x.attention <= DueToday)
 }
 
 // texts lets the fuzzy matcher read one field of all rows.
@@ -262,48 +325,49 @@ func (t texts) Len() int            { return len(t) }
 
 // apply fills shown from the query and the filters.
 func (c *Caseload) apply() {
-	c.shown = c.shown[:0:0]
+	c.shown = c.shown[:0]
 	if c.query == "" {
-		for _, r := range c.all {
-			if c.keep(r) {
-				c.shown = append(c.shown, r)
+		c.shown = slices.Grow(c.shown, len(c.all))
+		for i, x := range c.all {
+			if c.keep(x) {
+				c.shown = append(c.shown, hit{row: i})
 			}
 		}
 		return
 	}
-	q := fold(c.query)
-	type hit struct {
-		row     int
-		score   int
-		matches []Match
-	}
-	hits := map[int]*hit{}
-	add := func(row, score int, m Match) {
-		h := hits[row]
-		if h == nil {
-			h = &hit{row: row, score: score}
-			hits[row] = h
+	if c.folded[0] == nil {
+		for f := range caseFields {
+			c.folded[f] = make([]string, len(c.all))
+			for i, x := range c.all {
+				c.folded[f][i] = fold(caseFields[f].text(c.list[x.at]))
+			}
 		}
+	}
+	q := fold(c.query)
+	place := make([]int, len(c.all)) // one more than the row's place in hits
+	var hits []hit
+	add := func(row, score int) *hit {
+		if place[row] == 0 {
+			hits = append(hits, hit{row: row, score: score})
+			place[row] = len(hits)
+		}
+		h := &hits[place[row]-1]
 		h.score = max(h.score, score)
-		h.matches = append(h.matches, m)
+		return h
 	}
 	for f := range caseFields {
-		weight := caseFields[f].weight
 		for i, text := range c.folded[f] {
-			if at := strings.Index(text, q); at >= 0 {
-				n := utf8.RuneCountInString(text[:at])
-				pos := make([]int, utf8.RuneCountInString(q))
-				for k := range pos {
-					pos[k] = n + k
-				}
-				score := 1000 + weight
-				if at == 0 {
-					score += 200
-				} else if text[at-1] == ' ' {
-					score += 100
-				}
-				add(i, score, Match{caseFields[f].field, pos})
+			at := strings.Index(text, q)
+			if at < 0 {
+				continue
 			}
+			score := 1000 + caseFields[f].weight
+			if at == 0 {
+				score += 200
+			} else if text[at-1] == ' ' {
+				score += 100
+			}
+			add(i, score).found[f] = at + 1
 		}
 	}
 	// Spelling is forgiven only where nothing was found as typed: letters in order, not far apart.
@@ -313,22 +377,17 @@ func (c *Caseload) apply() {
 				if m.Score <= 0 {
 					continue
 				}
-				add(m.Index, m.Score+caseFields[f].weight, Match{caseFields[f].field, runePositions(c.folded[f][m.Index], m.MatchedIndexes)})
+				h := add(m.Index, m.Score+caseFields[f].weight)
+				h.spelled = append(h.spelled, Match{caseFields[f].field, runePositions(c.folded[f][m.Index], m.MatchedIndexes)})
 			}
 		}
 	}
-	list := make([]*hit, 0, len(hits))
 	for _, h := range hits {
 		if c.keep(c.all[h.row]) {
-			list = append(list, h)
+			c.shown = append(c.shown, h)
 		}
 	}
-	slices.SortFunc(list, func(a, b *hit) int { return cmp.Or(cmp.Compare(b.score, a.score), cmp.Compare(a.row, b.row)) })
-	for _, h := range list {
-		r := c.all[h.row]
-		r.Matches = h.matches
-		c.shown = append(c.shown, r)
-	}
+	slices.SortFunc(c.shown, func(a, b hit) int { return cmp.Or(cmp.Compare(b.score, a.score), cmp.Compare(a.row, b.row)) })
 }
 
 // runePositions turns byte offsets into rune positions.

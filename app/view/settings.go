@@ -9,6 +9,7 @@ import (
 	"maps"
 	"os"
 	"path/filepath"
+	"time"
 
 	"cordwalk.example/cordwalk/exam"
 )
@@ -23,15 +24,32 @@ type Settings struct {
 	TextScale int               `json:"textScale,omitempty"` // percent, 80 to 200; 0 is 100
 	Width     int               `json:"width,omitempty"`     // of the window, in points
 	Height    int               `json:"height,omitempty"`
-	Route     string            `json:"route,omitempty"`    // what was shown last
-	Resume    map[string]string `json:"resume,omitempty"`   // visit id → cell in focus
-	Posture   map[string]string `json:"posture,omitempty"`  // patient id → how it is held
-	OneByOne  bool              `json:"oneByOne,omitempty"` // the exam shows a single test
-	Protocol  string            `json:"protocol,omitempty"` // used last
-	Exchange  string            `json:"exchange,omitempty"` // folder by which devices exchange
-	Hub       string            `json:"hub,omitempty"`      // address of the hub in the network
-	Backups   string            `json:"backups,omitempty"`  // folder of the backups
-	Token     map[string]string `json:"token,omitempty"`    // store id → proof that the store was not copied
+	Route     string            `json:"route,omitempty"`     // what was shown last
+	Resume    map[string]string `json:"resume,omitempty"`    // visit id → cell in focus
+	Posture   map[string]string `json:"posture,omitempty"`   // patient id → how it is held
+	OneByOne  bool              `json:"oneByOne,omitempty"`  // the exam shows a single test
+	Protocol  string            `json:"protocol,omitempty"`  // used last
+	Exchange  string            `json:"exchange,omitempty"`  // folder by which devices exchange
+	Hub       string            `json:"hub,omitempty"`       // address of the hub in the network
+	Backups   string            `json:"backups,omitempty"`   // folder of the backups
+	ByHand    bool              `json:"byHand,omitempty"`    // backups are made when asked for, not once a day by themselves
+	LockAfter int               `json:"lockAfter,omitempty"` // minutes without use until a protected practice is locked; 0 is LockUsual, below 0 never
+	Token     map[string]string `json:"token,omitempty"`     // store id → proof that the store was not copied
+}
+
+// LockUsual is after how many minutes without use a protected practice is locked unless somebody chose otherwise
+// (common practice).
+const LockUsual = 15
+
+// Idle returns after how long without use a protected practice is locked, 0 for never.
+func (s Settings) Idle() time.Duration {
+	switch {
+	case s.LockAfter < 0:
+		return 0
+	case s.LockAfter == 0:
+		return LockUsual * time.Minute
+	}
+	return time.Duration(s.LockAfter) * time.Minute
 }
 
 // resumeMax bounds how many half-done exams are remembered.

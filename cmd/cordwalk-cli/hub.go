@@ -1,6 +1,7 @@
 package main
 
 import (
+	"bytes"
 	"context"
 	"encoding/json"
 	"errors"
@@ -16,6 +17,7 @@ import (
 	"cordwalk.example/cordwalk/exam"
 	"cordwalk.example/cordwalk/exam/stim"
 	"cordwalk.example/cordwalk/storage/disk"
+	"cordwalk.example/cordwalk/sync/extract"
 	"cordwalk.example/cordwalk/sync/hub"
 	"cordwalk.example/cordwalk/sync/hub/mailbox"
 	"cordwalk.example/cordwalk/sync/key"
@@ -58,6 +60,50 @@ func (c *hubCmd) Run(e *env) error {
 	return nil
 }
 
+// clusterCmd prepares a NATS cluster that a group of clinics runs.
+type clusterCmd struct {
+	Nodes    string        `arg:"" optional:"" help:"Addresses of its nodes with commas between; without them only the list of users is printed." placeholder:"HOST:PORT,…"`
+	Seed     string        `help:"File with the NATS seed of a user who may make streams there." placeholder:"FILE"`
+	Replicas int           `help:"On how many nodes each entry lies." default:"3"`
+	Keep     time.Duration `help:"How long entries are kept for devices that were away." default:"2160h"`
+	Bytes    int64         `help:"Most bytes kept." default:"8589934592"`
+	sheetFlag
+}
+
+func (c *clusterCmd) Run(e *env) error {
+	var users string
+	if err := e.shared(c.sheetFlag, func(sh *share.Share) (err error) {
+		users, err = hub.Users(sh.List)
+		return err
+	}); err != nil {
+		return err
+	}
+	if c.Nodes == "" {
+		_, err := fmt.Fprint(e.out, users)
+		return err
+	}
+	if c.Seed == "" {
+		return usage("%s", words.T("name the file with the seed of a user who may make streams on the cluster: --seed FILE"))
+	}
+	at, err := hub.ParseAddress(c.Nodes)
+	if err != nil {
+		return usageError{err}
+	}
+	seed, err := e.readInput(c.Seed, 1<<10)
+	if err != nil {
+		return err
+	}
+	if err := hub.Prepare(e.ctx, at, bytes.TrimSpace(seed), hub.Limits{Age: c.Keep, Bytes: c.Bytes, Replicas: c.Replicas}); err != nil {
+		return err
+	}
+	if e.c.JSON {
+		return e.printJSON(map[string]any{"address": at.String(), "users": users})
+	}
+	e.say("%s", words.T("The cluster is ready. Devices reach it at: %s", at.String()))
+	e.say("%s", words.T("It lets in whom its configuration names; run cluster without an address to print that part of it."))
+	return nil
+}
+
 // hubPlace remembers beside the store how far a hub was read.
 type hubPlace struct{ file string }
 
@@ -81,20 +127,64 @@ func (p hubPlace) Save(hub string, seq uint64) error {
 // quiet is how long nothing must move until an exchange with a hub is done.
 const quiet = 1500 * time.Millisecond
 
+// hubClient makes a client of a hub.
+func (e *env) hubClient(sh *share.Share, address string) (*hub.Client, hub.Address, error) {
+	a, err := hub.ParseAddress(address)
+	if err != nil {
+		return nil, a, err
+	}
+	return hub.New(hub.Options{Address: a, Bag: func() key.Bag { return sh.Bag() }, Incarnation: sh.Incarnation, Journal: sh, Members: sh, Files: sh.Files,
+		Place: hubPlace{filepath.Join(sh.Dir(), "hub.place")}, Notice: func(w string) { e.warn(w) },
+		Extract: func(ctx context.Context, patient exam.ID, who string) ([]byte, error) {
+			return extract.Give(ctx, sh.Store, patient, who, time.Now())
+		}}), a, nil
+}
+
+// hubJSON says what a hub keeps, and what waits to go there.
+type hubJSON struct {
+	Unsent   uint64     `json:"unsent"`
+	Since    *time.Time `json:"unsent_since,omitempty"`
+	Rate     float64    `json:"entries_per_second"`
+	KeptDays float64    `json:"kept_days"`
+	MaxBytes int64      `json:"max_bytes"`
+	Bytes    uint64     `json:"bytes"`
+	Oldest   *time.Time `json:"oldest,omitempty"`
+	Replicas int        `json:"replicas"`
+}
+
+func hubJSONOf(s hub.Status) *hubJSON {
+	at := func(t time.Time) *time.Time {
+		if t.IsZero() {
+			return nil
+		}
+		t = t.UTC().Truncate(time.Second)
+		return &t
+	}
+	return &hubJSON{Unsent: s.Unsent, Since: at(s.Since), Rate: s.Rate, KeptDays: s.Limits.Age.Hours() / 24, MaxBytes: s.Limits.Bytes, Bytes: s.Bytes, Oldest: at(s.Oldest), Replicas: s.Limits.Replicas}
+}
+
+// sayStatus says now and then what waits and how fast it goes, while an exchange goes on for ever.
+func (e *env) sayStatus(s hub.Status) {
+	switch {
+	case s.Unsent > 0 && !s.Since.IsZero():
+		e.say("%s", words.N(int(s.Unsent), "%[1]d entry waits for the hub since %[2]s", "%[1]d entries wait for the hub since %[2]s", s.Unsent, s.Since.Local().Format("2006-01-02 15:04")))
+	case s.Rate > 0 || s.Behind > 0:
+		e.say("%s", words.N(int(s.Rate+0.5), "%d entry a second", "%d entries a second", int(s.Rate+0.5)))
+	}
+}
+
 // byHub exchanges with a hub until nothing moves any more, or for ever.
 func (e *env) byHub(sh *share.Share, address string, stay bool) (syncJSON, error) {
 	out := syncJSON{Peers: []string{}, Problems: []string{}}
-	a, err := hub.ParseAddress(address)
+	client, a, err := e.hubClient(sh, address)
 	if err != nil {
 		return out, err
 	}
 	ctx, cancel := context.WithCancel(e.ctx)
 	defer cancel()
-	client := hub.New(hub.Options{Address: a, Bag: func() key.Bag { return sh.Bag() }, Incarnation: sh.Incarnation, Journal: sh, Members: sh, Files: sh.Files,
-		Place: hubPlace{filepath.Join(sh.Dir(), "hub.place")}, Notice: func(w string) { e.warn(w) }})
 	done := make(chan error, 1)
 	go func() { done <- client.Run(ctx) }()
-	started, still := time.Now(), time.Now()
+	started, still, said := time.Now(), time.Now(), time.Now()
 	var last hub.Status
 	for {
 		select {
@@ -106,7 +196,11 @@ func (e *env) byHub(sh *share.Share, address string, stay bool) (syncJSON, error
 		case <-time.After(100 * time.Millisecond):
 		}
 		s := client.Status()
-		out.Sent, out.Received = int(s.Sent), int(s.Received)
+		out.Sent, out.Received, out.Hub = int(s.Sent), int(s.Received), hubJSONOf(s)
+		if stay && !e.c.JSON && time.Since(said) > time.Minute {
+			e.sayStatus(s)
+			said = time.Now()
+		}
 		if s.Sent != last.Sent || s.Received != last.Received || s.Unsent > 0 || s.Behind > 0 || !s.Connected {
 			still = time.Now()
 		}

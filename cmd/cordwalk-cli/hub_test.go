@@ -93,26 +93,75 @@ func TestTwoDevicesMeetThroughAHub(t *testing.T) {
 			t.Fatal("the hub did not start: " + out.String())
 		}
 	}
-	cli(t, 0, "--store", a, "patient", "add", "Ash")
+	cli(t, 0, "--store", a, "patient", "add", "Ashbourne")
 	cli(t, 0, "--store", b, "patient", "add", "Elm")
 	cli(t, 0, "--store", a, "sync", "--hub", running.Address)
 	cli(t, 0, "--store", b, "sync", "--hub", running.Address)
 	cli(t, 0, "--store", a, "sync", "--hub", running.Address)
 	for _, s := range []string{a, b} {
 		list := cli(t, 0, "--store", s, "--json", "patients")
-		for _, name := range []string{"Fig", "Ash", "Elm"} {
+		for _, name := range []string{"Fig", "Ashbourne", "Elm"} {
 			if !strings.Contains(list, `"`+name+`"`) {
 				t.Errorf("%s lacks %s", filepath.Base(s), name)
 			}
 		}
 	}
+	var meeting struct {
+		Hub struct {
+			Unsent   int
+			KeptDays float64 `json:"kept_days"`
+			MaxBytes int64   `json:"max_bytes"`
+		}
+	}
+	if err := json.Unmarshal([]byte(cli(t, 0, "--store", b, "--json", "sync", "--hub", running.Address)), &meeting); err != nil {
+		t.Fatal(err)
+	}
+	if h := meeting.Hub; h.KeptDays != 90 || h.MaxBytes != 8<<30 || h.Unsent != 0 {
+		t.Errorf("of the hub it is said that %+v", h)
+	}
+	if said := cli(t, 0, "--store", b, "sync", "--hub", running.Address); !strings.Contains(said, "The hub keeps entries for 90 days") {
+		t.Error(said)
+	}
+
+	// One patient to be read only: in a file, and asked for over the hub while the other device exchanges.
+	cli(t, 0, "--store", a, "extract", "make", "Ashbourne", at("ash.extract"))
+	cli(t, 1, "--store", a, "extract", "make", "Ashbourne", at("ash.extract"))
+	if said := cli(t, 0, "--store", b, "extract", "show", at("ash.extract")); !strings.Contains(said, "Ashbourne") || !strings.Contains(said, "read only") {
+		t.Error(said)
+	}
+	var elm struct{ ID string }
+	if err := json.Unmarshal([]byte(cli(t, 0, "--store", b, "--json", "patient", "show", "Elm")), &elm); err != nil {
+		t.Fatal(err)
+	}
+	cli(t, 1, "--store", a, "extract", "fetch", elm.ID, "--hub", running.Address, "--wait", "100ms")
+	cli(t, 2, "--store", a, "extract", "fetch", "Elm", "--hub", running.Address)
+	staying, leave := context.WithCancel(context.Background())
+	left := make(chan int, 1)
+	var stayed buffer
+	go func() {
+		left <- run(staying, []string{"--store", b, "sync", "--hub", running.Address, "--stay"}, strings.NewReader(""), &stayed, &stayed)
+	}()
+	var shown struct{ Name string }
+	if err := json.Unmarshal([]byte(cli(t, 0, "--store", a, "--json", "extract", "fetch", elm.ID, "--hub", running.Address, "--wait", "60s", "--keep", at("elm.extract"))), &shown); err != nil || shown.Name != "Elm" {
+		t.Errorf("%v: %+v; %s", err, shown, stayed.String())
+	}
+	leave()
+	if code := <-left; code != 0 {
+		t.Errorf("staying ended with %d: %s", code, stayed.String())
+	}
+	cli(t, 0, "--store", a, "extract", "show", at("elm.extract"))
+	if said := cli(t, 0, "--store", a, "cluster"); strings.Count(said, "nkey: U") != 2 {
+		t.Error(said)
+	}
+	cli(t, 2, "--store", a, "cluster", "10.0.0.1,10.0.0.2")
+
 	// The hub's folder tells nobody what the practice holds.
 	err := filepath.Walk(at("hub"), func(name string, info os.FileInfo, err error) error {
 		if err != nil || info.IsDir() {
 			return err
 		}
 		data, err := os.ReadFile(name)
-		if err == nil && (bytes.Contains(data, []byte("Ash")) || bytes.Contains(data, []byte("A. Moor"))) {
+		if err == nil && (bytes.Contains(data, []byte("Ashbourne")) || bytes.Contains(data, []byte("A. Moor"))) {
 			t.Errorf("%s can be read", name)
 		}
 		return err

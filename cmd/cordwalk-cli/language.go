@@ -129,6 +129,9 @@ func auditWords(x audit.Entry) string {
 		n, _ := strconv.Atoi(m[1])
 		note = words.N(n, "%[1]d animal as %[2]s", "%[1]d animals as %[2]s", n, words.Of(m[2]))
 	}
+	if name, ok := strings.CutPrefix(note, "an extract of "); ok {
+		note = words.T("an extract of %s", name)
+	}
 	switch x.Did {
 	case audit.Made:
 		note = words.Of(note)

@@ -37,7 +37,7 @@ var unspoken = set(
 	"Davis2002, abstract: within 3 months, mean days", "Khan2024: by 12 weeks, median days", "Langerhuus2017, abstract: mean of case series",
 	"Martins2021: within 3 months, uncontrolled", "Feb2023: median days", "Khan2024: median days",
 	// what is compared or kept, and said by other texts
-	"not the examiner's PIN", "a longer pulse needed more current (", "%d animals as records", "%d animals as FHIR",
+	"not the examiner's PIN", "a longer pulse needed more current (", "%d animals as records", "%d animals as FHIR", "an extract of ",
 	// what only a fault of the program can show
 	"%q names no screen", "this window is closing; nothing more can be entered",
 	"chart: the embedded regular font cannot be read: ", "chart: the embedded bold font cannot be read: ",

@@ -39,6 +39,7 @@ type commands struct {
 	JSON         bool             `name:"json" help:"Print JSON for programs instead of text for people."`
 	KeyFile      string           `help:"File with the key that opens the practice." placeholder:"FILE"`
 	PassphraseFd int              `name:"passphrase-fd" help:"Read the passphrase from this file descriptor." default:"-1" placeholder:"N"`
+	Keyring      bool             `help:"Open the practice with the key in this user's system keyring, where that was chosen; see lock."`
 	NoPassphrase bool             `help:"A new practice is made without protection: its key lies beside the data."`
 	As           string           `help:"Who is at work: an examiner of the practice, by name or initials; the first where not said." env:"CORDWALK_AS" placeholder:"NAME"`
 	PINFd        int              `name:"pin-fd" help:"Read the examiner's PIN from this file descriptor." default:"-1" placeholder:"N"`
@@ -49,11 +50,12 @@ type commands struct {
 	Demo     demoCmd     `cmd:"" help:"Fill a new practice with invented animals, to try things out."`
 	Patients patientsCmd `cmd:"" help:"List all patients, those who need attention first."`
 	Patient  struct {
-		Show patientShowCmd `cmd:"" help:"Show one patient."`
-		Add  patientAddCmd  `cmd:"" help:"Add a patient."`
-		Set  patientSetCmd  `cmd:"" help:"Change what is on file of a patient."`
-		Join patientJoinCmd `cmd:"" help:"Say that two records are one animal."`
-		Part patientPartCmd `cmd:"" help:"Take back that two records are one animal."`
+		Show  patientShowCmd  `cmd:"" help:"Show one patient."`
+		Add   patientAddCmd   `cmd:"" help:"Add a patient."`
+		Set   patientSetCmd   `cmd:"" help:"Change what is on file of a patient."`
+		Join  patientJoinCmd  `cmd:"" help:"Say that two records are one animal."`
+		Part  patientPartCmd  `cmd:"" help:"Take back that two records are one animal."`
+		Erase patientEraseCmd `cmd:"" help:"Erase the owner's data of a patient because the owner asked for it."`
 	} `cmd:"" help:"One patient."`
 	Exam struct {
 		Add         examAddCmd         `cmd:"" help:"Record an exam from a file."`
@@ -95,8 +97,19 @@ type commands struct {
 	Join      joinCmd      `cmd:"" help:"Join a practice with a new folder on this device."`
 	Admit     admitCmd     `cmd:"" help:"Let a device in whose check words are the same."`
 	Remove    removeCmd    `cmd:"" help:"Take a device out of the practice."`
-	Check     checkCmd     `cmd:"" help:"Read every byte of the practice and report what is wrong; repairs nothing."`
-	Rebuild   rebuildCmd   `cmd:"" help:"Make the index anew from the journal."`
+	Cluster   clusterCmd   `cmd:"" help:"Prepare a NATS cluster that a group of clinics runs, as a hub for all of them."`
+	Extract   struct {
+		Fetch extractFetchCmd `cmd:"" help:"Ask for one patient of a site whose records are not kept here, by a hub."`
+		Make  extractMakeCmd  `cmd:"" help:"Write one patient to a file that only devices of the practice can read."`
+		Show  extractShowCmd  `cmd:"" help:"Show what such a file holds; nothing of it is kept."`
+	} `cmd:"" help:"One patient for another site of the practice: signed, sealed, to be read only."`
+	Apart struct {
+		List  apartListCmd  `cmd:"" help:"List what removed devices made beyond what counts of them."`
+		Admit apartAdmitCmd `cmd:"" help:"Let some of it count."`
+	} `cmd:"" help:"Entries of removed devices, which are kept apart."`
+	Lock    lockCmd    `cmd:"" help:"Change what opens the practice."`
+	Check   checkCmd   `cmd:"" help:"Read every byte of the practice and report what is wrong; repairs nothing."`
+	Rebuild rebuildCmd `cmd:"" help:"Make the index anew from the journal."`
 }
 
 // env is what a command runs in.

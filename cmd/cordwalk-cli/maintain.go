@@ -9,6 +9,7 @@ import (
 	"cordwalk.example/cordwalk/exam"
 	"cordwalk.example/cordwalk/storage"
 	"cordwalk.example/cordwalk/sync/change"
+	"cordwalk.example/cordwalk/sync/share"
 )
 
 // historyCmd prints every change of a patient.
@@ -119,7 +120,7 @@ func (c *checkCmd) Run(e *env) error {
 	if err != nil {
 		return err
 	}
-	problems, err := storage.Check(e.ctx, dir, e.options(u))
+	problems, err := storage.Check(e.ctx, dir, e.options(u), share.Check)
 	if err != nil {
 		return err
 	}

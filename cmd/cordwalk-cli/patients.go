@@ -445,70 +445,75 @@ func (c *patientShowCmd) Run(e *env) error {
 			return err
 		}
 		e.looked(s, r.Patient.ID)
-		p := r.Patient
-		if e.c.JSON {
-			out := patientJSON{ID: p.ID, Name: p.Name, Species: p.Species.String(), Breed: p.Breed, Sex: p.Sex.String(), Neutered: p.Neutered,
-				Born: p.Born, Owner: p.Owner, Veterinarian: p.Veterinarian, OutOfHours: p.OutOfHours, Referral: p.Referral,
-				Status: p.Status.String(), StatusSince: p.StatusSince, RecheckDays: p.RecheckDays, Problems: some(p.Problems),
-				Precautions: some(p.Precautions), Goals: some(p.Goals), Medicines: some(p.Medicines), Weights: some(p.Weights), Note: p.Note,
-				Demo: p.Demo, Visits: []visitLine{}, Conflicts: len(r.Conflicts), Missing: gaps(r), Sent: sentLines(p)}
-			if len(r.Joined) > 1 {
-				out.Joined = r.Joined
-			}
-			for _, v := range r.Visits {
-				out.Visits = append(out.Visits, visitLineOf(v))
-			}
-			return e.printJSON(out)
-		}
-		e.protection(s)
-		st := view.StripOf(p, time.Now(), e.units(s))
-		e.say("%s · %s · %s", p.Name, st.Species, st.Signalment)
-		if st.Problem != "" {
-			e.say("%s", words.T("Problem: %s", st.Problem))
-		}
-		for _, w := range st.Precautions {
-			e.say("%s", words.T("Precaution: %s", w))
-		}
-		if p.Owner.Name != "" {
-			e.say("%s", words.T("Owner: %s", contact(p.Owner)))
-		}
-		if !p.Veterinarian.Empty() {
-			e.say("%s", words.T("Veterinarian: %s", contact(p.Veterinarian)))
-		}
-		if !p.OutOfHours.Empty() {
-			e.say("%s", words.T("At night: %s", contact(p.OutOfHours)))
-		}
-		for _, g := range p.Goals {
-			e.say("%s", words.T("Goal: %s, by %s", g.Words, view.DateWords(g.By)))
-		}
-		for _, x := range p.Sent {
-			e.say("%s", words.T("Handed over: %[1]s, %[2]s, %[3]s", words.Of(x.Kind), x.At.Format("2006-01-02 15:04"), x.Examiner))
-		}
-		for _, w := range gaps(r) {
-			e.say("%s", w)
-		}
-		if n := len(r.Conflicts); n > 0 {
-			e.say("%s", words.N(n, "%d field has several values that nobody has chosen between", "%d fields have several values that nobody has chosen between", n))
-		}
-		w := tabwriter.NewWriter(e.out, 0, 4, 2, ' ', 0)
-		fmt.Fprintln(w, strings.Join([]string{words.T("Visit"), words.T("Examiner"), words.T("Limbs"), words.T("Tested"), words.T("Abnormal"), words.T("State"), words.T("Id")}, "\t"))
-		for _, v := range r.Visits {
-			l := visitLineOf(v)
-			state := words.T("open")
-			if l.Closed {
-				state = words.T("closed")
-			}
-			var motor [4]int8
-			for i, site := range exam.Limbs() {
-				motor[i] = -1
-				if g, ok := v.Grade(exam.VoluntaryMotor, site); ok {
-					motor[i] = g
-				}
-			}
-			fmt.Fprintf(w, "%s\t%s\t%s\t%d\t%d\t%s\t%s\n", shortDay(v.Examined), v.Examiner, limbWords(motor), l.Tested, l.Abnormal, state, v.ID)
-		}
-		return w.Flush()
+		return e.show(s, r)
 	})
+}
+
+// show prints a patient with its visits.
+func (e *env) show(s *storage.Store, r storage.Record) error {
+	p := r.Patient
+	if e.c.JSON {
+		out := patientJSON{ID: p.ID, Name: p.Name, Species: p.Species.String(), Breed: p.Breed, Sex: p.Sex.String(), Neutered: p.Neutered,
+			Born: p.Born, Owner: p.Owner, Veterinarian: p.Veterinarian, OutOfHours: p.OutOfHours, Referral: p.Referral,
+			Status: p.Status.String(), StatusSince: p.StatusSince, RecheckDays: p.RecheckDays, Problems: some(p.Problems),
+			Precautions: some(p.Precautions), Goals: some(p.Goals), Medicines: some(p.Medicines), Weights: some(p.Weights), Note: p.Note,
+			Demo: p.Demo, Visits: []visitLine{}, Conflicts: len(r.Conflicts), Missing: gaps(r), Sent: sentLines(p)}
+		if len(r.Joined) > 1 {
+			out.Joined = r.Joined
+		}
+		for _, v := range r.Visits {
+			out.Visits = append(out.Visits, visitLineOf(v))
+		}
+		return e.printJSON(out)
+	}
+	e.protection(s)
+	st := view.StripOf(p, time.Now(), e.units(s))
+	e.say("%s · %s · %s", p.Name, st.Species, st.Signalment)
+	if st.Problem != "" {
+		e.say("%s", words.T("Problem: %s", st.Problem))
+	}
+	for _, w := range st.Precautions {
+		e.say("%s", words.T("Precaution: %s", w))
+	}
+	if p.Owner.Name != "" {
+		e.say("%s", words.T("Owner: %s", contact(p.Owner)))
+	}
+	if !p.Veterinarian.Empty() {
+		e.say("%s", words.T("Veterinarian: %s", contact(p.Veterinarian)))
+	}
+	if !p.OutOfHours.Empty() {
+		e.say("%s", words.T("At night: %s", contact(p.OutOfHours)))
+	}
+	for _, g := range p.Goals {
+		e.say("%s", words.T("Goal: %s, by %s", g.Words, view.DateWords(g.By)))
+	}
+	for _, x := range p.Sent {
+		e.say("%s", words.T("Handed over: %[1]s, %[2]s, %[3]s", words.Of(x.Kind), x.At.Format("2006-01-02 15:04"), x.Examiner))
+	}
+	for _, w := range gaps(r) {
+		e.say("%s", w)
+	}
+	if n := len(r.Conflicts); n > 0 {
+		e.say("%s", words.N(n, "%d field has several values that nobody has chosen between", "%d fields have several values that nobody has chosen between", n))
+	}
+	w := tabwriter.NewWriter(e.out, 0, 4, 2, ' ', 0)
+	fmt.Fprintln(w, strings.Join([]string{words.T("Visit"), words.T("Examiner"), words.T("Limbs"), words.T("Tested"), words.T("Abnormal"), words.T("State"), words.T("Id")}, "\t"))
+	for _, v := range r.Visits {
+		l := visitLineOf(v)
+		state := words.T("open")
+		if l.Closed {
+			state = words.T("closed")
+		}
+		var motor [4]int8
+		for i, site := range exam.Limbs() {
+			motor[i] = -1
+			if g, ok := v.Grade(exam.VoluntaryMotor, site); ok {
+				motor[i] = g
+			}
+		}
+		fmt.Fprintf(w, "%s\t%s\t%s\t%d\t%d\t%s\t%s\n", shortDay(v.Examined), v.Examiner, limbWords(motor), l.Tested, l.Abnormal, state, v.ID)
+	}
+	return w.Flush()
 }
 
 // some is the slice, never null in JSON.

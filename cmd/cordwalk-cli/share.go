@@ -46,18 +46,22 @@ func (e *env) shared(c sheetFlag, f func(sh *share.Share) error) error {
 			}
 		}
 		sh, recovery, err := share.Open(e.ctx, s, share.Options{})
+		if recovery != nil { // also beside an error: it is known nowhere else
+			text := words.T("Recovery sheet of the practice %s. Whoever holds this key can open its data.", s.Bag().Practice) + "\n" + recovery.String() + "\n"
+			if werr := writeSecret(c.RecoverySheet, text); werr != nil {
+				e.warn(text)
+				return errors.Join(err, werr)
+			}
+			e.warn(words.T("Recovery key written to %s: print it, keep it in a safe place, remove the file.", c.RecoverySheet))
+		}
 		if err != nil {
 			return err
 		}
+		if bad := sh.Damaged(); len(bad) > 0 {
+			e.warn(words.N(len(bad), "Note: %d entry of the list of devices is damaged; an exchange brings it back", "Note: %d entries of the list of devices are damaged; an exchange brings them back", len(bad)))
+		}
 		if sh.Files, err = attach.Open(e.ctx, s, nil); err != nil {
 			return err
-		}
-		if recovery != nil {
-			text := words.T("Recovery sheet of the practice %s. Whoever holds this key can open its data.", s.Bag().Practice) + "\n" + recovery.String() + "\n"
-			if err := writeSecret(c.RecoverySheet, text); err != nil {
-				return err
-			}
-			e.warn(words.T("Recovery key written to %s: print it, keep it in a safe place, remove the file.", c.RecoverySheet))
 		}
 		return f(sh)
 	})
@@ -95,7 +99,7 @@ func readSheet(name string) (*age.X25519Identity, error) {
 // syncCmd exchanges with a folder.
 type syncCmd struct {
 	Folder string `arg:"" optional:"" help:"A stick, a network share or a folder that some other program synchronises."`
-	Hub    string `help:"Address of a hub instead, as the hub prints it." placeholder:"HOST:PORT#CERTIFICATE"`
+	Hub    string `help:"Address of a hub instead, as the hub prints it; of a cluster those of its nodes with commas between." placeholder:"HOST:PORT#CERTIFICATE"`
 	Stay   bool   `help:"With --hub: go on exchanging until stopped."`
 	sheetFlag
 }
@@ -108,6 +112,7 @@ type syncJSON struct {
 	Waiting  int      `json:"waiting"`
 	Problems []string `json:"problems"`
 	Blocked  string   `json:"blocked,omitempty"`
+	Hub      *hubJSON `json:"hub,omitempty"` // where it went by a hub
 }
 
 func (c *syncCmd) Run(e *env) error {
@@ -160,6 +165,9 @@ func (e *env) synced(out syncJSON, wrong bool) error {
 		}
 		if out.Forks > 0 {
 			e.say("%s", words.N(out.Forks, "%d device was copied and both copies were used; both branches are kept", "%d devices were copied and both copies were used; both branches are kept", out.Forks))
+		}
+		if h := out.Hub; h != nil && h.MaxBytes > 0 {
+			e.say("%s", words.T("The hub keeps entries for %[1]d days and at most %[2]d MB; it holds %[3]d kB.", int(h.KeptDays), h.MaxBytes/1e6, h.Bytes/1e3))
 		}
 		if out.Blocked != "" {
 			e.say("%s", words.T("Nothing could be left there: %s", out.Blocked))
@@ -459,32 +467,15 @@ func (c *auditCmd) Run(e *env) error {
 // backupCmd makes a backup.
 type backupCmd struct {
 	Folder   string `arg:"" help:"Folder for the backup file."`
+	Daily    bool   `help:"For a timer: make one only where none of today is there, and let old ones go as --tidy does."`
 	Tidy     bool   `help:"Remove old backups there: 7 daily, 5 weekly and 12 monthly ones stay."`
 	Examiner string `help:"Who makes it."`
 	sheetFlag
 }
 
-// openers returns to whom backups are sealed: this device and the recovery sheet.
-func openers(sh *share.Share) (to []age.Recipient, check []age.Identity, err error) {
-	list := []string{sh.Bag().Device.Recipient()}
-	for _, raw := range sh.List.Statements() {
-		if st, err := member.Parse(raw); err == nil && st.Kind == member.Found && st.Recovery != "" {
-			list = append(list, st.Recovery)
-		}
-	}
-	for _, r := range list {
-		x, err := age.ParseX25519Recipient(r)
-		if err != nil {
-			return nil, nil, err
-		}
-		to = append(to, x)
-	}
-	return to, []age.Identity{sh.Bag().Device.Identity()}, nil
-}
-
 func (c *backupCmd) Run(e *env) error {
 	return e.shared(c.sheetFlag, func(sh *share.Share) error {
-		to, check, err := openers(sh)
+		to, check, err := sh.BackupKeys()
 		if err != nil {
 			return err
 		}
@@ -493,24 +484,71 @@ func (c *backupCmd) Run(e *env) error {
 			return err
 		}
 		o := backup.Options{Progress: e.progress()}
-		file, err := backup.Make(e.ctx, sh.Store, c.Folder, to, check, o)
+		var file string
+		if c.Daily {
+			file, err = backup.Scheduled(e.ctx, sh.Store, c.Folder, to, check, o)
+		} else {
+			file, err = backup.Make(e.ctx, sh.Store, c.Folder, to, check, o)
+		}
+		if file != "" {
+			err = errors.Join(err, audit.Write(e.ctx, sh.Store, who, audit.BackedUp, filepath.Base(file)))
+		}
+		if err == nil && c.Tidy && !c.Daily {
+			err = backup.Tidy(e.ctx, c.Folder, check, o)
+		}
 		if err != nil {
 			return err
 		}
-		if err := audit.Write(e.ctx, sh.Store, who, audit.BackedUp, filepath.Base(file)); err != nil {
+		held, err := e.holding(sh, c.Folder)
+		if err != nil {
 			return err
 		}
-		if c.Tidy {
-			if err := backup.Tidy(e.ctx, c.Folder, check, o); err != nil {
-				return err
-			}
-		}
 		if e.c.JSON {
-			return e.printJSON(map[string]any{"file": file})
+			return e.printJSON(map[string]any{"file": file, "still_holding": held})
 		}
-		e.say("%s", words.T("Backup written and read back: %s", file))
+		if file == "" {
+			e.say("%s", words.T("Today's backup is there already."))
+		} else {
+			e.say("%s", words.T("Backup written and read back: %s", file))
+		}
+		e.sayHolding(held)
 		return nil
 	})
+}
+
+// holdingJSON is a backup that still holds what owners asked to be erased.
+type holdingJSON struct {
+	File   string    `json:"file"`
+	Made   time.Time `json:"made"`
+	Owners []exam.ID `json:"owners"`
+}
+
+// holding says which backups of a folder can still show an owner's data that were erased on request. Backups that this
+// device cannot open are told beside it.
+func (e *env) holding(sh *share.Share, folder string) ([]holdingJSON, error) {
+	_, check, err := sh.BackupKeys()
+	if err != nil {
+		return nil, err
+	}
+	held, err := backup.Erased(e.ctx, sh.Store, folder, check, backup.Options{})
+	if e.ctx.Err() != nil {
+		return nil, e.ctx.Err()
+	}
+	if err != nil {
+		e.warn(words.T("Note: %s", err.Error()))
+	}
+	out := []holdingJSON{}
+	for _, h := range held {
+		out = append(out, holdingJSON(h))
+	}
+	return out, nil
+}
+
+func (e *env) sayHolding(held []holdingJSON) {
+	for _, h := range held {
+		n := len(h.Owners)
+		e.say("%s", words.N(n, "%[2]s still holds the data of %[1]d owner that were erased on request; remove it once a newer backup serves", "%[2]s still holds the data of %[1]d owners that were erased on request; remove it once a newer backup serves", n, h.File))
+	}
 }
 
 // restoreCmd makes a practice out of a backup.

@@ -20,6 +20,7 @@ import (
 	"cordwalk.example/cordwalk/exam"
 	"cordwalk.example/cordwalk/storage"
 	"cordwalk.example/cordwalk/sync/audit"
+	"cordwalk.example/cordwalk/sync/keyring"
 	"cordwalk.example/cordwalk/sync/share"
 )
 
@@ -57,8 +58,20 @@ func (e *env) unlock(ask bool) (storage.Unlock, error) {
 		}
 		u.Passphrase = p
 	}
+	if e.c.Keyring {
+		given++
+		in, err := storage.Peek(e.c.Store, storage.Options{})
+		if err != nil {
+			return u, err
+		}
+		k, err := keyring.Get(e.ctx, in.Practice)
+		if err != nil {
+			return u, err
+		}
+		u.Keyring = &k
+	}
 	if given > 1 {
-		return u, usage("%s", words.T("give one of --key-file, --passphrase-fd and --no-passphrase"))
+		return u, usage("%s", words.T("give one of --key-file, --passphrase-fd, --keyring and --no-passphrase"))
 	}
 	if name := os.Getenv(passphraseFile); name != "" && given == 0 {
 		f, err := os.Open(name)

@@ -8,13 +8,13 @@ import (
 	"os"
 	"path/filepath"
 	"runtime"
-	"runtime/debug"
 
 	"fyne.io/fyne/v2/app"
 	"fyne.io/fyne/v2/lang"
 	"github.com/alecthomas/kong"
 
 	"cordwalk.example/cordwalk/app/desk"
+	"cordwalk.example/cordwalk/app/desk/still"
 	"cordwalk.example/cordwalk/app/view"
 	"cordwalk.example/cordwalk/assets/words"
 	"cordwalk.example/cordwalk/storage"
@@ -33,9 +33,6 @@ type options struct {
 func main() {
 	// A store that was not closed cleanly tries its index in a child of this program first.
 	storage.ChildMain()
-	// Pictures and the engines' scratch come and go in large pieces: collecting them earlier
-	// costs little and keeps the program small beside others on a practice's computer.
-	debug.SetGCPercent(50)
 	os.Exit(run())
 }
 
@@ -71,7 +68,7 @@ func run() int {
 	if path != "" {
 		keeper.Config = filepath.Dir(path)
 	}
-	program := desk.New(desk.Still(app.NewWithID("example.cordwalk")), keeper, settings, path, nil)
+	program := desk.New(still.App(app.NewWithID("example.cordwalk")), keeper, settings, path, nil)
 	if o.Demo {
 		program.StartDemo(o.Store)
 	} else {

@@ -73,10 +73,11 @@ type space struct {
 	variants [2][3]float64
 	arcs     [3][arcCount]arc
 	sites    []*site
+	steps    []float64 // the severities that every lesion is tried at: Severities, or CourseSeverities
 }
 
 func newSpace(s exam.Species, p *Params) *space {
-	sp := &space{species: s, p: p, segments: len(anatomy.Segments(s))}
+	sp := &space{species: s, p: p, segments: len(anatomy.Segments(s)), steps: Severities[:]}
 	sp.vertebra = make([]int, sp.segments)
 	for i := range sp.vertebra {
 		sp.vertebra[i] = vertebraOver(s, i)
@@ -490,7 +491,8 @@ func (sp *space) each(yield func(h *hypothesis)) {
 			}
 			continue
 		}
-		for s := range severities {
+		for s, severity := range sp.steps {
+			like := likeSeverity(severity)
 			for bal, wb := range balances {
 				for c, wc := range centrals {
 					for ac, wa := range acutes {
@@ -498,14 +500,14 @@ func (sp *space) each(yield func(h *hypothesis)) {
 							for co, wco := range companies {
 								if t.kind == Cord && companies[1] > 0 { // spinal shock: acute and severe only
 									switch {
-									case ac == 1 && Severities[s] >= 0.8:
+									case ac == 1 && severity >= 0.8:
 									case co == 0:
 										wco = 1
 									default:
 										continue
 									}
 								}
-								w := float64(float64(float64(severityOf(ac)[s]*wb)*float64(wc*wa)) * float64(wv*wco))
+								w := float64(float64(float64(severityOf(ac)[like]*wb)*float64(wc*wa)) * float64(wv*wco))
 								if w == 0 {
 									continue
 								}
@@ -519,6 +521,17 @@ func (sp *space) each(yield func(h *hypothesis)) {
 			}
 		}
 	}
+}
+
+// likeSeverity returns the step of Severities that says how likely a severity is: the first that is
+// not below it.
+func likeSeverity(severity float64) int {
+	for k, s := range Severities {
+		if severity <= s {
+			return k
+		}
+	}
+	return severities - 1
 }
 
 // rootSignatureShare: how often a source of pain alone carries a root signature. C2–C5 discs
@@ -541,10 +554,10 @@ func rootSignatureShare(t *site) float64 {
 func (sp *space) build(h *hypothesis, b *body, other *body) {
 	b.reset()
 	b.acute = h.acute
-	sp.put(b, h.site, h, Severities[h.severity])
+	sp.put(b, h.site, h, sp.steps[h.severity])
 	if h.site.second != nil {
 		other.reset()
-		sp.put(other, h.site.second, h, Severities[h.second])
+		sp.put(other, h.site.second, h, sp.steps[h.second])
 		b.join(other)
 	}
 }

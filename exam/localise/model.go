@@ -117,7 +117,14 @@ func newModel(s exam.Species, p *Params) (*Model, error) {
 	if p == nil {
 		p = defaults(s)
 	}
-	m := &Model{species: s, p: p, lay: newLayout(), sp: newSpace(s, p)}
+	m := plainModel(s, p, newSpace(s, p))
+	m.tabulate()
+	return m, nil
+}
+
+// plainModel is a model over a space without its tables.
+func plainModel(s exam.Species, p *Params, sp *space) *Model {
+	m := &Model{species: s, p: p, lay: newLayout(), sp: sp}
 	for _, seg := range anatomy.Segments(s) {
 		m.segmentName = append(m.segmentName, seg.String())
 	}
@@ -125,8 +132,7 @@ func newModel(s exam.Species, p *Params) (*Model, error) {
 		m.vertebraName = append(m.vertebraName, v.String())
 	}
 	m.classify()
-	m.tabulate()
-	return m, nil
+	return m
 }
 
 // Hypotheses returns how many hypotheses the model holds.
@@ -522,9 +528,9 @@ func (m *Model) damageOf(h *hypothesis) damage {
 			}
 		}
 	}
-	put(h.site, Severities[h.severity])
+	put(h.site, m.sp.steps[h.severity])
 	if h.site.second != nil {
-		put(h.site.second, Severities[h.second])
+		put(h.site.second, m.sp.steps[h.second])
 	}
 	d := damage{site: uint16(h.index)}
 	for s := range m.sp.segments {

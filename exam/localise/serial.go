@@ -21,11 +21,54 @@ type Site struct {
 	Prior    float64 // sums to 1 over Sites and the sound animal
 }
 
-// Grid returns the severities at which sites are weighed, from 0 (sound) to 1 (complete).
-func Grid() []float64 { return append([]float64{0}, Severities[:]...) }
+// courseSeverities are the severities that the sites of a course are weighed at. A course moves in small steps, and weeks
+// of exams of one steady animal add up: what is read between two steps must be as right as at them. With the five of
+// Severities, 90 % bands held in 87 %.
+var courseSeverities = []float64{0.1, 0.2, 0.3, 0.4, 0.5, 0.6, 0.7, 0.8, 0.9, 1}
 
-// GridSize is the length of Grid.
-const GridSize = severities + 1
+// CourseGrid returns the severities at which a model made by ForCourses weighs its sites, from 0
+// (sound) to 1 (complete).
+func CourseGrid() []float64 { return append([]float64{0}, courseSeverities...) }
+
+// SitesOf lists the single sites of a species, in a fixed order, without making its tables. The error is an
+// *Unsupported for other species than dog and cat.
+func SitesOf(s exam.Species) ([]Site, error) {
+	if s != exam.Dog && s != exam.Cat {
+		return nil, &Unsupported{s}
+	}
+	p := defaults(s)
+	return plainModel(s, p, newSpace(s, p)).Sites(), nil
+}
+
+// ForCourses returns a model of some of the sites of SitesOf, in their order, on the finer grid that courses
+// need. It holds no pairs, answers through Weigher and Drawer, and is not kept. It takes some tenths of a second.
+func ForCourses(s exam.Species, sites []int) (*Model, error) {
+	if s != exam.Dog && s != exam.Cat {
+		return nil, &Unsupported{s}
+	}
+	p := defaults(s)
+	m := plainModel(s, p, newSpace(s, p))
+	all := m.Sites()
+	var keep []*site
+	for _, i := range sites {
+		if i >= 0 && i < len(all) {
+			keep = append(keep, m.sp.sites[m.serialOf[i]])
+		}
+	}
+	for _, t := range m.sp.sites {
+		if t.kind == NoLesion {
+			keep = append(keep, t)
+		}
+	}
+	m.sp.sites, m.sp.steps = keep, courseSeverities
+	out := &Model{species: s, p: p, lay: m.lay, sp: m.sp, classes: m.classes, segmentName: m.segmentName, vertebraName: m.vertebraName}
+	out.tabulate()
+	return out, nil
+}
+
+// steps is how many severities a lesion is tried at, gridSize those and none.
+func (m *Model) steps() int    { return len(m.sp.steps) }
+func (m *Model) gridSize() int { return len(m.sp.steps) + 1 }
 
 // Sites lists the single sites, in a fixed order. Pairs and the sound animal are not among
 // them: the sound animal is every site at severity 0.
@@ -48,7 +91,7 @@ func (m *Model) Sites() []Site {
 }
 
 // SiteDamage returns the damage of each half segment (cranial to caudal; left, right) by a
-// site of Sites at a step of Grid: cord damage, or the loss of the segment's root.
+// site of Sites at a step of its grid: cord damage, or the loss of the segment's root.
 func (m *Model) SiteDamage(site, step int) [][2]float64 {
 	out := make([][2]float64, m.sp.segments)
 	m.Sites()
@@ -59,18 +102,19 @@ func (m *Model) SiteDamage(site, step int) [][2]float64 {
 	if t.from < 0 || t.kind == PainOnly {
 		return out
 	}
-	share := t.side.shares(Severities[step-1])
+	severity := m.sp.steps[step-1]
+	share := t.side.shares(severity)
 	for s := t.from; s <= t.to; s++ {
 		for side := range 2 {
-			out[s][side] = float64(Severities[step-1] * share[side])
+			out[s][side] = float64(severity * share[side])
 		}
 	}
 	return out
 }
 
-// SiteLogLikelihoods writes into dst, for each site of Model.Sites and each step of Grid, the
+// SiteLogLikelihoods writes into dst, for each site of Model.Sites and each step of severity, 0 first, the
 // natural logarithm of the probability of the exam's findings, everything else summed out:
-// dst[site*GridSize+step]. It grows dst where it is too short and returns it. What the file
+// dst[site*(steps+1)+step]. It grows dst where it is too short and returns it. What the file
 // says of diagnosis and level plays no part; days since the onset, age and sedation do.
 func (e *Engine) SiteLogLikelihoods(x Exam, dst []float64) ([]float64, error) {
 	if x.Species != e.m.species {
@@ -78,7 +122,8 @@ func (e *Engine) SiteLogLikelihoods(x Exam, dst []float64) ([]float64, error) {
 	}
 	m := e.m
 	sites := m.Sites()
-	if need := len(sites) * GridSize; cap(dst) < need {
+	size := m.gridSize()
+	if need := len(sites) * size; cap(dst) < need {
 		dst = make([]float64, need)
 	} else {
 		dst = dst[:need]
@@ -135,9 +180,9 @@ func (e *Engine) SiteLogLikelihoods(x Exam, dst []float64) ([]float64, error) {
 	}
 	sound := likely(n - 1)
 	for s := range sites {
-		dst[s*GridSize] = sound
-		for k := 1; k < GridSize; k++ {
-			dst[s*GridSize+k] = likely(s*severities + k - 1)
+		dst[s*size] = sound
+		for k := 1; k < size; k++ {
+			dst[s*size+k] = likely(s*m.steps() + k - 1)
 		}
 	}
 	return dst, nil
@@ -146,7 +191,7 @@ func (e *Engine) SiteLogLikelihoods(x Exam, dst []float64) ([]float64, error) {
 // prepareSerial maps hypotheses to site and severity once.
 func (e *Engine) prepareSerial() {
 	m := e.m
-	n := len(m.Sites())*severities + 1
+	n := len(m.Sites())*m.steps() + 1
 	m.slotOnce.Do(func() {
 		of := make([]int, len(m.sp.sites))
 		for i := range of {
@@ -164,7 +209,7 @@ func (e *Engine) prepareSerial() {
 			case of[site] < 0:
 				m.slot[h] = -1
 			default:
-				m.slot[h] = int32(of[site]*severities + int(m.severity[h]))
+				m.slot[h] = int32(of[site]*m.steps() + int(m.severity[h]))
 			}
 		}
 	})

@@ -10,10 +10,15 @@ import (
 
 // A course of hundreds of visits weighs the same sites again and again, and from one week to
 // the next most findings stay as they were. A Weigher keeps its sums from exam to exam and
-// changes only what changed. What it computes is what Engine.SiteLogLikelihoods computes.
+// changes only what changed. What it computes is what Engine.SiteLogLikelihoods computes, but that
+// a share of the first week below leastShare is left out.
 
 // keepPatterns is how many patterns of findings a group remembers its answers for.
-const keepPatterns = 24
+const keepPatterns = 12
+
+// leastShare is the share below which the first week is left out: from ten days after the onset it is one
+// in a thousand (see timing), and would take half the time.
+const leastShare = 0.002
 
 // Weigher weighs the exams of a course at chosen sites. It is for one goroutine at a time.
 type Weigher struct {
@@ -21,11 +26,10 @@ type Weigher struct {
 	e      *Engine // its own, for entering findings only
 	groups []weighed
 
-	full     []int64 // sums by hypothesis
-	extra    []int64 // what a sum gains without the cells filled in a block
-	lateAt   []int   // by site: the exam that the sums of later weeks stand at
-	acuteAt  []int   // by site: the same for the first week
-	exam     int     // exams entered so far that differ from the one before
+	full     []int64  // sums by hypothesis
+	extra    []int64  // what a sum gains without the cells filled in a block
+	at       [4][]int // by part and site: the exam that its sums stand at
+	exam     int      // exams entered so far that differ from the one before
 	blocks   bool
 	changed  []int // groups that the last exam changed
 	occupied []int // groups with a tested cell
@@ -36,9 +40,13 @@ type Weigher struct {
 // chosen is the part of a model's tables that concerns some sites. It is only read.
 //
 // Hypotheses of the chosen sites lie site by site, the sound animal last; within a site those
-// of later weeks come first, by severity, then those of the first week, by severity.
+// of later weeks come first, then those of the first week, each by severity: first the few that Best looks at,
+// then the others. So a site has four parts: later weeks at the few and at the other severities, and the same for the first week.
 type chosen struct {
 	sites []int     // of Model.Sites
+	steps int       // of severity
+	few   int       // of them that Best looks at
+	place []int     // of each severity among a site's slots
 	prior []int64   // by hypothesis
 	from  []int32   // by site and slot: hypotheses from[s*slots+k] … from[s*slots+k+1]−1
 	mass  []float64 // by site and slot: their prior
@@ -53,7 +61,7 @@ type told struct {
 }
 
 // slots of a site: the severities in later weeks, then those in the first.
-const slots = 2 * severities
+func (c *chosen) slots() int { return 2 * c.steps }
 
 // weighed is one group of cells, as an exam and the one before answered it.
 type weighed struct {
@@ -94,7 +102,8 @@ type testedCell struct {
 
 // Weigher returns a weigher for some of Model.Sites.
 func (m *Model) Weigher(sites []int) *Weigher {
-	w := &chosen{sites: slices.Clone(sites), told: make([]told, len(m.groups))}
+	w := &chosen{sites: slices.Clone(sites), steps: m.steps(), told: make([]told, len(m.groups))}
+	w.place, w.few = fewFirst(w.steps)
 	all := m.Sites()
 	index := make([]int, len(m.sp.sites)) // of a site among the chosen, −1 where it is not wanted
 	for i := range index {
@@ -105,7 +114,7 @@ func (m *Model) Weigher(sites []int) *Weigher {
 			index[m.serialOf[s]] = i
 		}
 	}
-	n := len(sites) + 1
+	n, slots := len(sites)+1, w.slots()
 	w.mass, w.timed = make([]float64, n*slots), make([]bool, n)
 	type entry struct {
 		h    int32
@@ -120,11 +129,14 @@ func (m *Model) Weigher(sites []int) *Weigher {
 		} else if at < 0 {
 			continue
 		}
-		slot := at*slots + severity
+		slot := at * slots
+		if m.sp.sites[site].kind != NoLesion {
+			slot += w.place[severity]
+		}
 		if m.timed[h] {
 			w.timed[at] = true
 			if m.acute[h] {
-				slot += severities
+				slot += w.steps
 			}
 		}
 		list = append(list, entry{int32(h), slot})
@@ -159,6 +171,26 @@ func (m *Model) Weigher(sites []int) *Weigher {
 	return w.weigher(m.reader())
 }
 
+// fewFirst orders severities: first four that are spread evenly, the whole loss among them, then the others.
+func fewFirst(steps int) (place []int, few int) {
+	place = make([]int, steps)
+	every := max(1, steps*3/10)
+	chosen := func(k int) bool { below := steps - 1 - k; return below%every == 0 && below/every < 4 }
+	for k := range place {
+		if chosen(k) {
+			place[k] = few
+			few++
+		}
+	}
+	for n, k := few, 0; k < steps; k++ {
+		if !chosen(k) {
+			place[k] = n
+			n++
+		}
+	}
+	return place, few
+}
+
 // Another returns a weigher for the same sites, which shares the tables of this one.
 func (w *Weigher) Another() *Weigher { return w.weigher(w.e.m.reader()) }
 
@@ -167,7 +199,9 @@ func (c *chosen) weigher(e *Engine) *Weigher {
 	_, w.weights = e.m.p.quadrature()
 	n := len(c.timed)
 	w.full, w.extra = make([]int64, len(c.prior)), make([]int64, len(c.prior))
-	w.lateAt, w.acuteAt = make([]int, n), make([]int, n)
+	for part := range w.at {
+		w.at[part] = make([]int, n)
+	}
 	w.groups = make([]weighed, len(c.told))
 	for gi := range w.groups {
 		x := &w.groups[gi]
@@ -192,7 +226,7 @@ func (m *Model) reader() *Engine {
 	return e
 }
 
-// LogLikelihoods is Engine.SiteLogLikelihoods for the weigher's sites: dst[i*GridSize+step]
+// LogLikelihoods is Engine.SiteLogLikelihoods for the weigher's sites: dst[i*(steps+1)+step]
 // belongs to the i-th of them.
 func (w *Weigher) LogLikelihoods(x Exam, dst []float64) ([]float64, error) {
 	all := make([]int, len(w.sites))
@@ -203,17 +237,129 @@ func (w *Weigher) LogLikelihoods(x Exam, dst []float64) ([]float64, error) {
 }
 
 // Some is LogLikelihoods for some of the weigher's sites, named by their position among them:
-// dst[i*GridSize+step] belongs to which[i].
+// dst[i*(steps+1)+step] belongs to which[i].
 func (w *Weigher) Some(x Exam, which []int, dst []float64) ([]float64, error) {
-	e := w.e
-	if x.Species != e.m.species {
-		return nil, &exam.Invalid{Field: "species", Value: x.Species.String(), Allowed: e.m.species.String() + " for this engine"}
+	if err := w.take(x); err != nil {
+		return nil, err
 	}
-	m := e.m
-	if need := len(which) * GridSize; cap(dst) < need {
+	size, slots := w.steps+1, w.slots()
+	if need := len(which) * size; cap(dst) < need {
 		dst = make([]float64, need)
 	} else {
 		dst = dst[:need]
+	}
+	t := w.terms(&x)
+	w.bring(len(w.sites), true, t.withAcute)
+	if w.blocks { // a fill that was not looked at shows what a sound animal shows
+		t.careless -= w.extra[w.from[len(w.sites)*slots]]
+	}
+	sound := w.value(len(w.sites)*slots, len(w.sites), &t)
+	for i, s := range which {
+		w.bring(s, true, t.withAcute)
+		dst[i*size] = sound
+		for k := range w.steps {
+			dst[i*size+k+1] = w.value(s*slots+w.place[k], s, &t)
+		}
+	}
+	return dst, nil
+}
+
+// Best returns for some of the weigher's sites how well each explains an exam at the best of a few severities: the
+// largest log-likelihood, dst[i] for which[i].
+func (w *Weigher) Best(x Exam, which []int, dst []float64) ([]float64, error) {
+	if err := w.take(x); err != nil {
+		return dst, err
+	}
+	slots := w.slots()
+	t := w.terms(&x)
+	if w.blocks {
+		w.bring(len(w.sites), true, t.withAcute)
+		t.careless -= w.extra[w.from[len(w.sites)*slots]]
+	}
+	dst = dst[:0]
+	for _, s := range which {
+		w.bring(s, false, t.withAcute)
+		best := w.value(s*slots, s, &t)
+		for k := 1; k < w.few; k++ {
+			best = max(best, w.value(s*slots+k, s, &t))
+		}
+		dst = append(dst, best)
+	}
+	return dst, nil
+}
+
+// terms are what an exam adds to the sums of later weeks and of the first one.
+type terms struct {
+	late, early        float64 // the exam's share of each, in units of the model's own
+	lateLog, earlyLog  int64
+	lookedAt, careless int64
+	withAcute          bool
+}
+
+func (w *Weigher) terms(x *Exam) terms {
+	m := w.e.m
+	acute := m.p.Acute
+	if x.OnsetDays > 0 {
+		acute = x.timing(m.p.Acute)
+	}
+	t := terms{late: (1 - acute) / (1 - m.p.Acute), early: acute / m.p.Acute, withAcute: acute > leastShare,
+		lookedAt: toLog(logOf(1 - m.p.Careless)), careless: toLog(logOf(m.p.Careless))}
+	t.lateLog, t.earlyLog = toLog(logOf(t.late)), toLog(logOf(t.early))
+	return t
+}
+
+// value returns the log-likelihood of a slot of later weeks with its slot of the first.
+func (w *Weigher) value(slot, site int, t *terms) float64 {
+	const none = -1 << 62
+	mass, shift := w.mass[slot], int64(0)
+	if w.timed[site] {
+		mass *= t.late
+		shift = t.lateLog
+	}
+	if t.withAcute {
+		mass += float64(w.mass[slot+w.steps] * t.early)
+	}
+	best, total := int64(none), uint64(0)
+	for pass := range 2 {
+		for part := range 2 {
+			s, shift := slot, shift
+			if part == 1 {
+				if !t.withAcute {
+					break
+				}
+				s, shift = slot+w.steps, t.earlyLog
+			}
+			for i := w.from[s]; i < w.from[s+1]; i++ {
+				l := w.prior[i] + w.full[i] + shift
+				if !w.blocks {
+					if pass == 0 {
+						best = max(best, l)
+					} else {
+						total += weight(l - best)
+					}
+					continue
+				}
+				looked, not := l+t.lookedAt, l+w.extra[i]+t.careless
+				if pass == 0 {
+					best = max(best, looked, not)
+				} else {
+					total += weight(looked-best) + weight(not-best)
+				}
+			}
+		}
+	}
+	if total == 0 || mass <= 0 {
+		return -700
+	}
+	const unit = float64(1 << weightBits)
+	return fromLog(best) + logOf(float64(total)/unit) - logOf(mass)
+}
+
+// take takes an exam in.
+func (w *Weigher) take(x Exam) error {
+	e := w.e
+	if x.Species != e.m.species {
+		return &exam.Invalid{Field: "species", Value: x.Species.String(), Allowed: e.m.species.String() + " for this engine"}
 	}
 	for i := range e.obs {
 		e.clear(i)
@@ -223,74 +369,7 @@ func (w *Weigher) Some(x Exam, which []int, dst []float64) ([]float64, error) {
 	}
 	e.bendFor(&x)
 	w.enter()
-
-	acute := m.p.Acute
-	if x.OnsetDays > 0 {
-		acute = x.timing(m.p.Acute)
-	}
-	withAcute := acute > 1e-4
-	late, early := (1-acute)/(1-m.p.Acute), acute/m.p.Acute
-	lateLog, earlyLog := toLog(logOf(late)), toLog(logOf(early))
-	lookedAt, careless := toLog(logOf(1-m.p.Careless)), toLog(logOf(m.p.Careless))
-	value := func(site, severity int) float64 {
-		const none = -1 << 62
-		slot := site*slots + severity
-		mass, shift := w.mass[slot], int64(0)
-		if w.timed[site] {
-			mass *= late
-			shift = lateLog
-		}
-		if withAcute {
-			mass += float64(w.mass[slot+severities] * early)
-		}
-		best, total := int64(none), uint64(0)
-		for pass := range 2 {
-			for part := range 2 {
-				s, shift := slot, shift
-				if part == 1 {
-					if !withAcute {
-						break
-					}
-					s, shift = slot+severities, earlyLog
-				}
-				for i := w.from[s]; i < w.from[s+1]; i++ {
-					l := w.prior[i] + w.full[i] + shift
-					if !w.blocks {
-						if pass == 0 {
-							best = max(best, l)
-						} else {
-							total += weight(l - best)
-						}
-						continue
-					}
-					looked, not := l+lookedAt, l+w.extra[i]+careless
-					if pass == 0 {
-						best = max(best, looked, not)
-					} else {
-						total += weight(looked-best) + weight(not-best)
-					}
-				}
-			}
-		}
-		if total == 0 || mass <= 0 {
-			return -700
-		}
-		const unit = float64(1 << weightBits)
-		return fromLog(best) + logOf(float64(total)/unit) - logOf(mass)
-	}
-	w.bring(len(w.sites), withAcute)
-	if w.blocks { // a fill that was not looked at shows what a sound animal shows
-		careless -= w.extra[w.from[len(w.sites)*slots]]
-	}
-	sound := value(len(w.sites), 0)
-	for i, s := range which {
-		w.bring(s, withAcute)
-		dst[i*GridSize] = sound
-		for k := range severities {
-			dst[i*GridSize+k+1] = value(s, k)
-		}
-	}
-	return dst, nil
+	return nil
 }
 
 // enter takes the engine's findings in, group by group.
@@ -349,8 +428,8 @@ func (w *Weigher) enter() {
 }
 
 // bring brings a site's sums up to this exam: by what changed where they stood at the exam
-// before, afresh where they did not.
-func (w *Weigher) bring(site int, withAcute bool) {
+// before, afresh where they did not. all asks for every severity, else for the few.
+func (w *Weigher) bring(site int, all, withAcute bool) {
 	one := func(at *int, from, to int32) {
 		switch *at {
 		case w.exam:
@@ -402,10 +481,15 @@ func (w *Weigher) bring(site int, withAcute bool) {
 		}
 		*at = w.exam
 	}
-	f := w.from[site*slots:]
-	one(&w.lateAt[site], f[0], f[severities])
-	if withAcute {
-		one(&w.acuteAt[site], f[severities], f[slots])
+	f := w.from[site*w.slots():]
+	for part, from := range [...]int{0, w.few, w.steps, w.steps + w.few} {
+		to := from + w.few
+		if part%2 == 1 {
+			to += w.steps - 2*w.few
+		}
+		if (all || part%2 == 0) && (withAcute || part < 2) {
+			one(&w.at[part][site], f[from], f[to])
+		}
 	}
 }
 
@@ -490,8 +574,8 @@ func (a *answers) learn(w *Weigher, gi int, k uint16) {
 }
 
 // Marginal returns the probability of each category of one cell by itself, at each of the
-// weigher's sites and steps of Grid, in later weeks and without what age and sedation do:
-// out[(i*GridSize+step)*categories+category]. It is nil for a cell that the model does not hold.
+// weigher's sites and steps of its grid, in later weeks and without what age and sedation do:
+// out[(i*(steps+1)+step)*categories+category]. It is nil for a cell that the model does not hold.
 func (w *Weigher) Marginal(k exam.Key) (out []float64, categories int) {
 	m := w.e.m
 	ci, ok := m.lay.find(k)
@@ -502,7 +586,7 @@ func (w *Weigher) Marginal(k exam.Key) (out []float64, categories int) {
 	g, x := &m.groups[c.group], &w.groups[c.group]
 	pos := slices.Index(g.cells, ci)
 	set := &m.sets[m.setOf[ci]]
-	cats := set.cats
+	cats, size, slots := set.cats, w.steps+1, w.slots()
 	slot := func(s int, p []float64) {
 		total := 0.0
 		for i := w.from[s]; i < w.from[s+1]; i++ {
@@ -523,12 +607,12 @@ func (w *Weigher) Marginal(k exam.Key) (out []float64, categories int) {
 	}
 	sound := make([]float64, cats)
 	slot(len(w.sites)*slots, sound)
-	out = make([]float64, len(w.sites)*GridSize*cats)
+	out = make([]float64, len(w.sites)*size*cats)
 	for i := range w.sites {
-		copy(out[i*GridSize*cats:], sound)
-		for v := range severities {
-			at := (i*GridSize + v + 1) * cats
-			slot(i*slots+v, out[at:at+cats])
+		copy(out[i*size*cats:], sound)
+		for v := range w.steps {
+			at := (i*size + v + 1) * cats
+			slot(i*slots+w.place[v], out[at:at+cats])
 		}
 	}
 	return out, cats

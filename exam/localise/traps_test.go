@@ -129,7 +129,7 @@ func TestOldProtrusionOfFrenchBulldogs(t *testing.T) {
 			}
 			for i, s := range e.m.Sites() {
 				if s.Kind == Cord && s.From.String() == "T13" && s.To.String() == "L1" && s.Side == Even {
-					sum += exp(ll[i*GridSize+GridSize-1])
+					sum += exp(ll[i*(severities+1)+(severities+1)-1])
 				}
 			}
 		}

@@ -9,16 +9,10 @@ import (
 	"cordwalk.example/cordwalk/exam/localise"
 )
 
-// animal draws exams from the localisation model's own predictions: a dog with a lesion at one
-// place. Findings are drawn one after the other, each given those before, so that what tests of
-// one arc share and what is summed out hang together as the model says.
-type animal struct {
-	weigher *localise.Weigher
-	cells   []exam.Key
-	ll      []float64
-}
-
-var flat [Levels]float64
+// animal is a dog with a lesion at one place, whose exams are drawn from the localisation model
+// itself, at any severity: what is summed out there (balance, plexus variant, what tests of one arc
+// share) is drawn anew for each exam.
+type animal struct{ drawer *localise.Drawer }
 
 func newAnimal(site func(localise.Site) bool, cells []exam.Key) *animal {
 	m, err := localise.ModelOf(exam.Dog)
@@ -27,53 +21,14 @@ func newAnimal(site func(localise.Site) bool, cells []exam.Key) *animal {
 	}
 	for i, s := range m.Sites() {
 		if site(s) {
-			return &animal{weigher: m.Weigher([]int{i}), cells: cells}
+			return &animal{m.Drawer(i, cells)}
 		}
 	}
 	panic("no such place")
 }
 
-// at returns the log-likelihood of an exam at a severity.
-func (a *animal) at(x localise.Exam, severity float64) float64 {
-	var err error
-	if a.ll, err = a.weigher.LogLikelihoods(x, a.ll); err != nil {
-		panic(err)
-	}
-	var out [Levels]float64
-	interpolate(a.ll, flat[:], out[:], math.Inf(-1))
-	l := severity / spacing
-	k := min(int(l), Levels-2)
-	return out[k] + (l-float64(k))*(out[k+1]-out[k])
-}
-
 func (a *animal) draw(r *rand.Rand, severity float64, at time.Time) exam.Visit {
-	x := localise.OfVisit(dog, exam.Visit{Examined: at})
-	for _, i := range r.Perm(len(a.cells)) {
-		c := a.cells[i]
-		in := c.Item.Info()
-		x.Findings = append(x.Findings, exam.Finding{Item: c.Item, Site: c.Site})
-		f := &x.Findings[len(x.Findings)-1]
-		p, top := make([]float64, len(in.Grades)), math.Inf(-1)
-		for g := range p {
-			f.Result = exam.Graded(in.First + int8(g))
-			p[g] = a.at(x, severity)
-			top = math.Max(top, p[g])
-		}
-		total := 0.0
-		for g := range p {
-			p[g] = math.Exp(p[g] - top)
-			total += p[g]
-		}
-		u, g := r.Float64()*total, 0
-		for ; g < len(p)-1; g++ {
-			if u -= p[g]; u < 0 {
-				break
-			}
-		}
-		f.Result = exam.Graded(in.First + int8(g))
-	}
-	exam.SortFindings(x.Findings)
-	return exam.Visit{Examined: at, Examiner: "A. Brook", Findings: x.Findings}
+	return exam.Visit{Examined: at, Examiner: "A. Brook", Findings: a.drawer.Draw(r, severity)}
 }
 
 // allCells is every cell of the vocabulary whose grades are steps, up to n of them.

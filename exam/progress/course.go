@@ -19,7 +19,7 @@ const (
 	leastMass  = 1e-5
 	wideVisits = 3
 	wideMass   = 1e-7
-	lookAround = 16 // every so many visits every place is weighed again
+	lookAround = 32 // every so many visits every place is weighed again
 )
 
 // backMost is how many of its last visits a course can take back.
@@ -54,7 +54,7 @@ type Model struct {
 // NewModel returns a model over the places of space.
 func NewModel(space Space, rates Rates) *Model {
 	m := newModel(space, rates)
-	m.clock, m.reader = newClock(rates), newReader(space, quarterStep)
+	m.clock, m.reader = newClock(rates), newReader(space)
 	return m
 }
 

@@ -14,9 +14,8 @@ import (
 // once and only read.
 type body struct {
 	species exam.Species
-	m       *localise.Model
+	m       *localise.Model // of those sites only
 	sites   []localise.Site // those that a course is weighed at
-	index   []int           // of each, in localise.Model.Sites
 	prior   []float64
 	targets []Target
 	region  []int
@@ -79,13 +78,18 @@ func For(p exam.Patient) (*Model, error) {
 }
 
 func newBody(s exam.Species) (*body, error) {
-	m, err := localise.ModelOf(s)
+	all, err := localise.SitesOf(s)
 	if err != nil {
 		return nil, err
 	}
-	b := &body{species: s, m: m, clock: newClock(DefaultRates())}
-	b.choose()
-	b.maker = m.Weigher(b.index)
+	b := &body{species: s, clock: newClock(DefaultRates())}
+	if b.m, err = localise.ForCourses(s, b.choose(all)); err != nil {
+		return nil, err
+	}
+	for i := range b.sites {
+		b.all = append(b.all, i)
+	}
+	b.maker = b.m.Weigher(b.all)
 	segments := anatomy.Segments(s)
 	for _, seg := range segments {
 		for _, side := range []exam.Site{exam.Left, exam.Right} {
@@ -110,14 +114,13 @@ func newBody(s exam.Species) (*body, error) {
 	}
 	total := 0.0
 	for i, site := range b.sites {
-		b.all = append(b.all, i)
 		total += b.prior[i]
 		r, ok := regions[site.Region]
 		if !ok {
 			r = -1
 		}
 		b.region = append(b.region, r)
-		b.shares = append(b.shares, b.segmentShares(b.index[i], len(segments)))
+		b.shares = append(b.shares, b.segmentShares(i, len(segments)))
 		if r >= 0 {
 			sh := Share{Target: limbs + len(exam.Limbs()) + r}
 			for k := range Levels {
@@ -134,14 +137,14 @@ func newBody(s exam.Species) (*body, error) {
 	}
 	b.neighbours()
 	b.watched()
-	b.reader = newReader(&localised{body: b}, halfStep)
+	b.reader = newReader(&localised{body: b})
 	return b, nil
 }
 
 // segmentShares spreads the damage of the grid's steps evenly onto the levels.
 func (b *body) segmentShares(site, segments int) []Share {
 	var out []Share
-	grid := localise.Grid()
+	grid := localise.CourseGrid()
 	steps := make([][][2]float64, len(grid))
 	for k := range grid {
 		steps[k] = b.m.SiteDamage(site, k)
@@ -183,7 +186,7 @@ func spread(grid, at []float64) (out [Levels]float64) {
 // least that any place causes (1).
 func (b *body) limbShares(s exam.Species, first int) error {
 	w := b.maker.Another()
-	n := localise.GridSize
+	n := len(knotSteps)
 	in := exam.VoluntaryMotor.Info()
 	expected := make([][]float64, 4)
 	least := math.Inf(1)
@@ -208,7 +211,7 @@ func (b *body) limbShares(s exam.Species, first int) error {
 			least = math.Min(least, expected[l][i])
 		}
 	}
-	grid := localise.Grid()
+	grid := localise.CourseGrid()
 	for i := range b.sites {
 		for l := range expected {
 			at := expected[l][i*n : (i+1)*n]
@@ -294,10 +297,10 @@ var cordLengths = [...]int{2, 8}
 // choose picks the places that a course is weighed at: for lesions of the cord two lengths, and
 // else whatever the exams of weeks can tell apart. What is left out gives its prior to
 // what is kept of its class.
-func (b *body) choose() {
+func (b *body) choose(sites []localise.Site) (chosen []int) {
 	species := b.species
 	kept, all := map[int]float64{}, map[int]float64{}
-	for i, s := range b.m.Sites() {
+	for i, s := range sites {
 		all[s.Class] += s.Prior
 		keep := true
 		switch s.Kind {
@@ -312,12 +315,13 @@ func (b *body) choose() {
 		}
 		if keep {
 			kept[s.Class] += s.Prior
-			b.sites, b.index = append(b.sites, s), append(b.index, i)
+			b.sites, chosen = append(b.sites, s), append(chosen, i)
 		}
 	}
 	for _, s := range b.sites {
 		b.prior = append(b.prior, s.Prior*all[s.Class]/kept[s.Class])
 	}
+	return chosen
 }
 
 func (s *localised) Targets() []Target         { return s.targets }
@@ -335,8 +339,7 @@ func (s *localised) Candidates(v exam.Visit, carried []int, wide bool) []int {
 		return s.all
 	}
 	const clearly = 1.0 // e = 2.7 : 1
-	n := localise.GridSize
-	ll, err := s.weigher.Some(localise.OfVisit(s.patient, v), s.watch, s.steps)
+	ll, err := s.weigher.Best(localise.OfVisit(s.patient, v), s.watch, s.steps)
 	s.steps = ll
 	if err != nil {
 		return s.watch
@@ -345,16 +348,15 @@ func (s *localised) Candidates(v exam.Visit, carried []int, wide bool) []int {
 	for _, c := range carried {
 		open[s.sites[c].Class] = true
 	}
-	// Step 0, the sound animal, is the same everywhere.
 	explained := math.Inf(-1)
 	for i, w := range s.watch {
 		if open[s.sites[w].Class] {
-			explained = math.Max(explained, slices.Max(ll[i*n+1:(i+1)*n]))
+			explained = math.Max(explained, ll[i])
 		}
 	}
 	out := slices.Clone(s.watch)
 	for i, w := range s.watch {
-		if !open[s.sites[w].Class] && slices.Max(ll[i*n+1:(i+1)*n]) > explained+clearly {
+		if !open[s.sites[w].Class] && ll[i] > explained+clearly {
 			out = append(out, s.class[s.sites[w].Class]...)
 		}
 	}
@@ -364,7 +366,7 @@ func (s *localised) Candidates(v exam.Visit, carried []int, wide bool) []int {
 
 // LogLikelihoods asks the localisation model at its own steps of severity and interpolates.
 func (s *localised) LogLikelihoods(v exam.Visit, sites []int, dst []float64) {
-	n := localise.GridSize
+	n := len(knotSteps)
 	ll, err := s.weigher.Some(localise.OfVisit(s.patient, v), sites, s.steps)
 	s.steps = ll
 	if err != nil {
@@ -379,20 +381,14 @@ func (s *localised) LogLikelihoods(v exam.Visit, sites []int, dst []float64) {
 	for i, site := range sites {
 		out := dst[i*Levels : (i+1)*Levels]
 		interpolate(ll[i*n:(i+1)*n], whole[site*Levels:(site+1)*Levels], out, best-hopeless)
-		for l := range out {
-			out[l] *= caution
-		}
 	}
 }
 
-// caution is how much of an exam's log-likelihood counts. An examiner's habits and an animal's
-// ways come back week after week, which a chain of independent exams does not know; and
-// the steps of severity are interpolated. Judgement; on dogs drawn from the localisation model it
-// makes 90 % bands hold in 91 % (as known then) and 88 % (as known now).
-const caution = 0.85
-
 // hopeless is how far below the best place, in nats, a place need not be worked out: e⁻⁶⁰.
 const hopeless = 60
+
+// knotSteps are the severities at which the localisation model is asked.
+var knotSteps = localise.CourseGrid()
 
 // knot is where a level lies between two steps of the localisation's grid.
 type knot struct {
@@ -401,14 +397,15 @@ type knot struct {
 }
 
 var knots = func() (out [Levels]knot) {
-	grid := localise.Grid()
+	grid := knotSteps
 	k := 0
 	for l := range Levels {
 		x := math.Min(1, float64(l)*spacing)
 		for k+2 < len(grid) && x > grid[k+1]+1e-9 {
 			k++
 		}
-		out[l] = knot{k, math.Max(0, math.Min(1, (x-grid[k])/(grid[k+1]-grid[k])))}
+		weight := (x - grid[k]) / (grid[k+1] - grid[k])
+		out[l] = knot{k, math.Max(0, math.Min(1, math.Round(weight*1e9)/1e9))}
 	}
 	return out
 }()
@@ -461,8 +458,8 @@ func (s *localised) wholeness(v exam.Visit) []float64 {
 }
 
 // hangTogether: tests of one arc err together, so that all of them fall less short of 1 than
-// the cells by themselves do. Half fits exams drawn from the localisation model best: the mean
-// severity read is then within 0.02 of the true one, with errors as large as stated.
+// the cells by themselves do. Half is a mean; between steps of a tenth it decides little, where it decided how
+// bands held between steps of a quarter.
 const hangTogether = 0.5
 
 // wholeness works one cell out, once for every animal.
@@ -474,7 +471,7 @@ func (b *body) wholeness(key exam.Key) []float64 {
 	p, cats := b.maker.Marginal(key)
 	b.marginal.Unlock()
 	out := make([]float64, 0, len(b.sites)*Levels)
-	n := localise.GridSize
+	n := len(knotSteps)
 	if p != nil {
 		ln := make([]float64, len(p))
 		for i, v := range p {
@@ -516,7 +513,7 @@ func (s *localised) AtLeast(item exam.Item, at exam.Site, target int8, sites []i
 }
 
 func (b *body) atLeast(key goalKey) []float64 {
-	n := localise.GridSize
+	n := len(knotSteps)
 	in := key.item.Info()
 	near := func(g int8) int8 { return max(g-in.Normal, in.Normal-g) }
 	good, all := make([]float64, len(b.sites)*n), make([]float64, len(b.sites)*n)
@@ -536,7 +533,7 @@ func (b *body) atLeast(key goalKey) []float64 {
 		}
 	}
 	out := make([]float64, len(b.sites)*Levels)
-	grid := localise.Grid()
+	grid := localise.CourseGrid()
 	for i := range b.sites {
 		share := make([]float64, n)
 		for k := range share {

@@ -28,28 +28,53 @@ const bins = 200
 type profile struct {
 	target int
 	damage [Levels]float64
-	lo, hi [Levels]float64 // a level stands for a part of a step to either side; the ends are points
+	edge   [Levels][parts + 1]float64 // between the parts of each level's step; the ends of the grid are points
 }
 
-// How much of a step of the grid a level stands for, to either side. A quarter where the
-// likelihood is exact at every level: the masses of neighbouring levels say the rest, and whole
-// steps would make bands too wide (93 % held on simulated courses, 91 % with quarters). Half, the whole
-// step, where it is interpolated between the localisation's steps: long steady courses come to rest on one
-// level, and its quarter held the truth too seldom (on the same courses 3 points less than halves).
-const (
-	quarterStep = 0.25
-	halfStep    = 0.5
-)
+// parts are the pieces of a level's step of the grid that its belief is spread over.
+const parts = 4
 
-func newProfile(target int, damage [Levels]float64, step float64) profile {
+func newProfile(target int, damage [Levels]float64) profile {
 	p := profile{target: target, damage: damage}
 	for k := range Levels {
-		p.lo[k], p.hi[k] = damage[k], damage[k]
-		if k > 0 && k < Levels-1 {
-			p.lo[k], p.hi[k] = damage[k]-float64(step*(damage[k]-damage[k-1])), damage[k]+float64(step*(damage[k+1]-damage[k]))
+		for j := range p.edge[k] {
+			x := float64(j)/parts - 0.5 // in steps from the level
+			d := damage[k]
+			switch {
+			case k == 0 || k == Levels-1:
+			case x < 0:
+				d += float64(x * (damage[k] - damage[k-1]))
+			default:
+				d += float64(x * (damage[k+1] - damage[k]))
+			}
+			p.edge[k][j] = d
 		}
 	}
 	return p
+}
+
+// spreadIn spreads the belief in each level over its step of the grid. A parabola through the logarithms of the belief
+// in the level and in its two neighbours says how: so a belief like a normal distribution that is narrower
+// than the grid is read as narrow as it is, and at its place between two levels.
+func spreadIn(level []float64) (w [Levels][parts]float64) {
+	for k, mass := range level {
+		if mass == 0 || k == 0 || k == Levels-1 {
+			continue
+		}
+		const least = 1e-12
+		lower, upper := math.Log(math.Max(level[k-1]/mass, least)), math.Log(math.Max(level[k+1]/mass, least))
+		lean, bend := (upper-lower)/2, (upper+lower)/2
+		sum := 0.0
+		for j := range parts {
+			x := (float64(j)+0.5)/parts - 0.5
+			w[k][j] = exp(math.Round(float64(lean*x+bend*x*x)*(1<<30)) / (1 << 30))
+			sum += w[k][j]
+		}
+		for j := range parts {
+			w[k][j] *= mass / sum
+		}
+	}
+	return w
 }
 
 // map of damage onto readings.
@@ -67,7 +92,7 @@ type reader struct {
 	sum   []float64
 }
 
-func newReader(s Space, step float64) *reader {
+func newReader(s Space) *reader {
 	r := &reader{}
 	targets := s.Targets()
 	r.targets = len(targets)
@@ -80,13 +105,13 @@ func newReader(s Space, step float64) *reader {
 		var worst [Levels]float64
 		var list []profile
 		for _, share := range s.Shares(i) {
-			list = append(list, newProfile(share.Target, share.Damage, step))
+			list = append(list, newProfile(share.Target, share.Damage))
 			for k, d := range share.Damage {
 				worst[k] = math.Max(worst[k], d)
 			}
 		}
 		r.sites = append(r.sites, list)
-		r.whole = append(r.whole, newProfile(r.targets, worst, step))
+		r.whole = append(r.whole, newProfile(r.targets, worst))
 		r.region = append(r.region, s.Region(i))
 	}
 	return r.share()
@@ -100,38 +125,49 @@ func (r *reader) share() *reader {
 	return &c
 }
 
-func (r *reader) add(p *profile, level []float64) {
+func (r *reader) add(p *profile, level []float64, spread *[Levels][parts]float64) {
 	t := p.target
 	if !r.used[t] {
 		r.used[t] = true
 		r.bins[t] = [bins]float64{}
 		r.point[t], r.touch[t], r.sum[t] = 0, 0, 0
 	}
-	b := &r.bins[t]
 	for k, mass := range level {
 		if mass == 0 {
 			continue
 		}
 		r.touch[t] += mass
-		lo, hi := p.lo[k], p.hi[k]
-		r.sum[t] += float64(mass * (lo + hi) / 2)
-		if hi <= 0 {
-			r.point[t] += mass
+		edge := &p.edge[k]
+		if k == 0 || k == Levels-1 {
+			r.put(t, mass, edge[0], edge[0])
 			continue
 		}
-		from, to := lo*bins, hi*bins
-		first, last := min(int(from), bins-1), min(int(to), bins-1)
-		if first == last || to-from < 1e-9 {
-			b[first] += mass
-			continue
+		for j, m := range spread[k] {
+			r.put(t, m, edge[j], edge[j+1])
 		}
-		density := mass / (to - from)
-		b[first] += float64(density * (float64(first+1) - from))
-		for i := first + 1; i < last; i++ {
-			b[i] += density
-		}
-		b[last] += float64(density * (to - float64(last)))
 	}
+}
+
+// put adds belief in a range of damage.
+func (r *reader) put(t int, mass, lo, hi float64) {
+	r.sum[t] += float64(mass * (lo + hi) / 2)
+	if hi <= 0 {
+		r.point[t] += mass
+		return
+	}
+	b := &r.bins[t]
+	from, to := lo*bins, hi*bins
+	first, last := min(int(from), bins-1), min(int(to), bins-1)
+	if first == last || to-from < 1e-9 {
+		b[first] += mass
+		return
+	}
+	density := mass / (to - from)
+	b[first] += float64(density * (float64(first+1) - from))
+	for i := first + 1; i < last; i++ {
+		b[i] += density
+	}
+	b[last] += float64(density * (to - float64(last)))
 }
 
 // band reads the band of a target off its bins.
@@ -173,10 +209,11 @@ func (r *reader) read(b belief) *reading {
 		if mass < leastRead {
 			continue
 		}
+		spread := spreadIn(level)
 		for k := range r.sites[s] {
-			r.add(&r.sites[s][k], level)
+			r.add(&r.sites[s][k], level, &spread)
 		}
-		r.add(&r.whole[s], level)
+		r.add(&r.whole[s], level, &spread)
 	}
 	for t := range out.targets {
 		out.targets[t] = r.band(t)

@@ -211,6 +211,7 @@ func Analyse(s Series, o Options) (Result, error) {
 	if err != nil {
 		r := plainResult(visits, o)
 		r.Scales = scalesOf(visits, o.Practice, func(i int) []scale.Value { return scale.All(visits[i]) })
+		r.Goals = goalsOf(s.Patient, nil, r.Plain, time.Time{})
 		r.Notes = append(r.Notes, err.Error())
 		return r, nil
 	}
@@ -413,7 +414,7 @@ func (c *Course) Result(p exam.Patient, o Options) Result {
 		r.Relapse = c.relapse(shown)
 	}
 	r.Plateau = c.plateau(shown)
-	r.Goals = c.goals(p)
+	r.Goals = goalsOf(p, c, r.Plain, c.nodes[len(c.nodes)-1].visit.Examined)
 	if len(shown) < 3 {
 		r.Notes = append(r.Notes, "fewer than three visits: forecasts rest mostly on what is usual")
 	}

@@ -328,7 +328,7 @@ func dogs(t *testing.T, r *rand.Rand) func() subject {
 				}
 			}
 		}
-		a := &animal{weigher: space.m.Weigher([]int{space.index[site]}), cells: cells}
+		a := &animal{space.m.Drawer(site, cells)}
 		x := subject{model: m, draw: a.draw, worst: space.reader.whole[site].damage}
 		for _, s := range space.shares[site] {
 			if space.targets[s.Target].Kind != RegionTarget {

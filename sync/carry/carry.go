@@ -70,7 +70,7 @@ type Members interface {
 
 // Options of an exchange.
 type Options struct {
-	Bag         func() key.Bag                           // the keys as they are now: an exchange may bring new ones
+	Bag         func() key.Bag            // the keys as they are now: an exchange may bring new ones
 	Incarnation func() change.Incarnation // the one that this device writes under now
 	Journal     Journal
 	Members     Members

@@ -5,6 +5,7 @@ package extract
 
 import (
 	"bytes"
+	"context"
 	"encoding/binary"
 	"errors"
 	"fmt"
@@ -16,6 +17,7 @@ import (
 
 	"cordwalk.example/cordwalk/exam"
 	"cordwalk.example/cordwalk/storage"
+	"cordwalk.example/cordwalk/sync/audit"
 	"cordwalk.example/cordwalk/sync/change"
 	"cordwalk.example/cordwalk/sync/key"
 	"cordwalk.example/cordwalk/sync/segment"
@@ -141,4 +143,17 @@ func Read(data []byte, bag key.Bag, member func(key.Verifier) bool) (Extract, er
 	}
 	x.Signer = signer
 	return x, nil
+}
+
+// Give is Make for a device that asked, and writes down in the audit for whom; to is its name. It returns nothing for a
+// patient that is not here.
+func Give(ctx context.Context, s *storage.Store, patient exam.ID, to string, now time.Time) ([]byte, error) {
+	data, err := Make(s, patient, now)
+	if errors.Is(err, storage.ErrNotFound) {
+		return nil, nil
+	}
+	if err != nil {
+		return nil, err
+	}
+	return data, audit.Write(ctx, s, s.Device(), audit.Exported, fmt.Sprintf("an extract of %s for %s", patient, to))
 }

@@ -15,6 +15,7 @@ import (
 	"github.com/nats-io/nats.go"
 	"github.com/nats-io/nats.go/jetstream"
 
+	"cordwalk.example/cordwalk/exam"
 	"cordwalk.example/cordwalk/sync/carry"
 	"cordwalk.example/cordwalk/sync/change"
 	"cordwalk.example/cordwalk/sync/key"
@@ -29,13 +30,16 @@ type Options struct {
 	Incarnation func() change.Incarnation
 	Journal     carry.Journal
 	Members     carry.Members
-	Files       carry.Attachments                        // may be nil
-	Sites       []change.Site                            // whose records are taken in; none: all
-	Place       Place                                    // remembers how far the hub was read; may be nil
-	Now         func() time.Time                         // nil: time.Now
-	Notice      func(words string)                       // messages for people; may be nil
-	Poll        time.Duration                            // how often the journal is looked at for new entries, and the measure of all other waits; 0: 100 ms
-	Connect     func(...nats.Option) (*nats.Conn, error) // for tests and other ways in; nil: by Address
+	Files       carry.Attachments // may be nil
+	Sites       []change.Site     // whose records are taken in; none: all
+	// Extract makes an extract of a patient for the device named who, for a site that does not keep it; none for a
+	// patient that is not here. May be nil: then asks are left to others.
+	Extract func(ctx context.Context, patient exam.ID, who string) ([]byte, error)
+	Place   Place                                    // remembers how far the hub was read; may be nil
+	Now     func() time.Time                         // nil: time.Now
+	Notice  func(words string)                       // messages for people; may be nil
+	Poll    time.Duration                            // how often the journal is looked at for new entries, and the measure of all other waits; 0: 100 ms
+	Connect func(...nats.Option) (*nats.Conn, error) // for tests and other ways in; nil: by Address
 }
 
 // Place remembers how far a hub was read, so that the next start goes on there.
@@ -56,6 +60,8 @@ type Status struct {
 	Peers     []carry.Peer
 	Forks     []carry.Fork
 	Oldest    time.Time // of the messages that the hub still keeps
+	Bytes     uint64    // of them
+	Limits    Limits    // how long and how much the hub keeps
 	Err       error     // why nothing goes on at the moment
 	Refused   error     // the last message that was left alone, and why
 }
@@ -67,23 +73,20 @@ type Client struct {
 	js   jetstream.JetStream
 	kick chan struct{}
 
-	take  sync.Mutex  // one segment at a time, and what follows
-	taken carry.Taken // received and not durable yet
-	upTo  uint64      // the last message that it came in
-	since time.Time   // when the first of it came
-
-	mu     sync.Mutex
-	status Status
-	acked  map[change.Stream]uint64    // what the hub has of our own streams
-	peers  map[key.Verifier]carry.Head // the newest head of each
-	wanted map[change.Stream]time.Time // when we asked last
-	moving map[change.Stream]time.Time // when something of it came last, or we noticed that we lack something
-	filled map[string]time.Time        // what was sent again of late, by us or others
-	known  map[string]bool             // statements on the hub
-	read   uint64                      // up to where they were read
-	moved  []moved                     // for the rate
-	seq    uint64                      // of the last message read
-	hub    string                      // which hub that was: when its stream was made
+	mu      sync.Mutex
+	status  Status
+	acked   map[change.Stream]uint64    // what the hub has of our own streams
+	peers   map[key.Verifier]carry.Head // the newest head of each
+	wanted  map[change.Stream]time.Time // when we asked last
+	lacking map[change.Stream]lack      // what of it is missing
+	moving  map[change.Stream]time.Time // when something of it came last, or we noticed that we lack something
+	filled  map[start]time.Time         // what was sent or came of late
+	sent    map[[32]byte]bool           // what we sent and did not see again yet, by its trailing hash
+	known   map[string]bool             // statements on the hub
+	read    uint64                      // up to where they were read
+	moved   []moved                     // for the rate
+	seq     uint64                      // of the last message read
+	hub     string                      // which hub that was: when its stream was made
 }
 
 type moved struct {
@@ -108,7 +111,7 @@ func New(o Options) *Client {
 		}
 	}
 	return &Client{o: o, kick: make(chan struct{}, 1), acked: map[change.Stream]uint64{}, peers: map[key.Verifier]carry.Head{},
-		wanted: map[change.Stream]time.Time{}, moving: map[change.Stream]time.Time{}, filled: map[string]time.Time{}, known: map[string]bool{}}
+		wanted: map[change.Stream]time.Time{}, moving: map[change.Stream]time.Time{}, filled: map[start]time.Time{}, known: map[string]bool{}, sent: map[[32]byte]bool{}}
 }
 
 // Kick tells the client that there are new entries, so that it need not look.
@@ -159,6 +162,9 @@ func (c *Client) fail(err error) {
 	c.status.Err = err
 }
 
+// giveUp is after how many sessions that got nowhere another node of a cluster is tried.
+const giveUp = 2
+
 // Run exchanges until ctx ends. It keeps trying: a hub that is away is no error. It returns what
 // makes going on senseless: that this device may not use the hub, or that its own journal fails.
 func (c *Client) Run(ctx context.Context) error {
@@ -208,13 +214,24 @@ func (c *Client) Run(ctx context.Context) error {
 			}
 		}
 	}()
+	failed := 0 // sessions one after the other that got nowhere
 	for ctx.Err() == nil {
+		before := c.Status()
 		err := c.session(ctx)
 		if carry.OwnSide(err) {
 			return err
 		}
 		if err != nil && ctx.Err() == nil {
 			c.fail(err)
+		}
+		failed++
+		if now := c.Status(); now.Sent != before.Sent || now.Received != before.Received {
+			failed = 0
+		}
+		if failed >= giveUp && nc.IsConnected() {
+			// Its node may be cut off from the others of its cluster: another one may be better.
+			_ = nc.ForceReconnect()
+			failed = 0
 		}
 		select {
 		case <-ctx.Done():
@@ -246,9 +263,10 @@ func (c *Client) session(ctx context.Context) error {
 	c.mu.Lock()
 	clear(c.acked)
 	clear(c.known)
+	clear(c.lacking)
 	c.read = 0
 	c.seq, c.hub = from-1, hub
-	c.status.Oldest = info.State.FirstTime
+	c.keeps(info)
 	c.mu.Unlock()
 
 	if err := c.exchangeMembers(ctx); err != nil {
@@ -281,57 +299,31 @@ func (c *Client) session(ctx context.Context) error {
 	if err != nil {
 		return err
 	}
-	over := false
-	sc, err := segs.Consume(func(m jetstream.Msg) {
-		c.take.Lock()
-		defer c.take.Unlock()
-		if over {
-			return
-		}
-		if err := c.receive(ctx, m); err != nil {
-			cancel(err)
-		}
-	}, jetstream.PullMaxMessages(256), jetstream.ConsumeErrHandler(func(jetstream.ConsumeContext, error) {}))
-	if err != nil {
-		return err
-	}
-	// What was received before the session ends is kept, and then no more is taken in.
+	in := c.newIntake(ctx, cancel)
+	// What was taken in before the session ends is kept.
 	defer func() {
-		sc.Stop()
-		c.take.Lock()
-		defer c.take.Unlock()
-		over = true
-		if err := c.settle(context.WithoutCancel(ctx)); err != nil {
+		cancel(nil)
+		if err := in.stop(); err != nil {
 			c.fail(err)
 		}
 		c.savePlace()
-		c.upTo = 0
 	}()
-
-	// In a goroutine of its own: what came in must not wait for what goes out.
-	settling := make(chan struct{})
-	go func() {
-		defer close(settling)
-		t := time.NewTicker(c.o.Poll)
-		defer t.Stop()
-		for {
-			select {
-			case <-ctx.Done():
-				return
-			case <-t.C:
-				if err := c.settleLate(ctx); err != nil {
-					cancel(err)
-				}
-			}
-		}
-	}()
-	defer func() { cancel(nil); <-settling }()
+	sc, err := segs.Consume(in.add, jetstream.PullMaxMessagesWithBytesLimit(256, 16<<20), jetstream.ConsumeErrHandler(func(jetstream.ConsumeContext, error) {}))
+	if err != nil {
+		return err
+	}
+	defer sc.Stop()
 
 	stopFiles, err := c.exchangeFiles(ctx)
 	if err != nil {
 		return err
 	}
 	defer stopFiles()
+	stopExtracts, err := c.giveExtracts(ctx)
+	if err != nil {
+		return err
+	}
+	defer stopExtracts()
 
 	tick := time.NewTicker(c.o.Poll)
 	defer tick.Stop()
@@ -356,7 +348,7 @@ func (c *Client) session(ctx context.Context) error {
 			}
 			c.mu.Lock()
 			seq := c.seq
-			c.status.Oldest = info.State.FirstTime
+			c.keeps(info)
 			c.mu.Unlock()
 			if info.Created.UTC().Format(time.RFC3339Nano) != hub || info.State.LastSeq < seq {
 				c.o.Notice("the hub has lost what it held; it is filled again")
@@ -380,6 +372,12 @@ func (c *Client) session(ctx context.Context) error {
 			return err
 		}
 	}
+}
+
+// keeps notes what the hub holds and keeps. mu must be held.
+func (c *Client) keeps(i *jetstream.StreamInfo) {
+	c.status.Oldest, c.status.Bytes = i.State.FirstTime, i.State.Bytes
+	c.status.Limits = Limits{Age: i.Config.MaxAge, Bytes: i.Config.MaxBytes, Replicas: i.Config.Replicas}
 }
 
 func (c *Client) savePlace() {
@@ -415,11 +413,16 @@ func (c *Client) exchangeMembers(ctx context.Context) error {
 			}
 			found = append(found, m.Data)
 		}
+		ours := map[string]bool{}
+		for _, raw := range c.o.Members.Statements() {
+			ours[string(raw)] = true
+		}
 		c.mu.Lock()
 		for _, f := range found {
 			c.known[string(f)] = true
 		}
 		c.mu.Unlock()
+		found = slices.DeleteFunc(found, func(f []byte) bool { return ours[string(f)] })
 		if _, err := c.o.Members.Learn(found); err != nil {
 			return err
 		}
@@ -590,7 +593,7 @@ func (c *Client) publish(ctx context.Context, h carry.Held, first, last uint64, 
 	}
 	err := carry.BuildSegments(ctx, c.o.Journal, bag, c.ours(h.Of), h, first, last, targetRaw, func(b *segment.Builder, s segment.Signed) error {
 		var w bytes.Buffer
-		sh, _, err := b.Finish(&w, s)
+		sh, tail, err := b.Finish(&w, s)
 		if err != nil {
 			return err
 		}
@@ -601,6 +604,9 @@ func (c *Client) publish(ctx context.Context, h carry.Held, first, last uint64, 
 		if fill {
 			id = fmt.Sprintf("%s-%d", id, c.o.Now().Unix()/30) // it may be sent again if it got lost again
 		}
+		c.mu.Lock()
+		c.sending(tail, sh.Stream, sh.First)
+		c.mu.Unlock()
 		f, err := c.js.PublishAsync(subject, w.Bytes(), jetstream.WithMsgID(id), jetstream.WithExpectStream(Segments))
 		if err != nil {
 			return fmt.Errorf("the hub did not take what was sent: %w", err)
@@ -612,126 +618,6 @@ func (c *Client) publish(ctx context.Context, h carry.Held, first, last uint64, 
 		return err
 	}
 	return settle(0)
-}
-
-// What comes in one stretch is made durable together: at its end, or when it is this many frames, or
-// after some polls.
-const (
-	mostTaken = 8192
-	latest    = 5
-)
-
-// receive takes a message in. take must be held.
-func (c *Client) receive(ctx context.Context, m jetstream.Msg) error {
-	meta, err := m.Metadata()
-	if err != nil {
-		return nil // no message of a stream
-	}
-	if c.taken.Frames == 0 {
-		c.since = c.o.Now()
-	}
-	err = c.segment(ctx, m.Data())
-	if carry.OwnSide(err) || ctx.Err() != nil {
-		return err
-	}
-	if err != nil {
-		c.mu.Lock()
-		c.status.Refused = fmt.Errorf("a message on the hub was left alone: %w", err)
-		c.mu.Unlock()
-	}
-	c.upTo = meta.Sequence.Stream
-	c.mu.Lock()
-	c.status.Behind = meta.NumPending
-	c.mu.Unlock()
-	if meta.NumPending == 0 || c.taken.Frames >= mostTaken {
-		return c.settle(ctx)
-	}
-	return nil
-}
-
-// settle makes durable what was received. take must be held.
-func (c *Client) settle(ctx context.Context) error {
-	if err := c.taken.Commit(ctx, c.o.Journal); err != nil {
-		c.taken, c.upTo = carry.Taken{}, 0 // it is read again from the hub
-		return err
-	}
-	c.mu.Lock()
-	defer c.mu.Unlock()
-	c.status.Received += uint64(c.taken.Frames)
-	c.status.Forks = append(c.status.Forks, c.taken.Forks...)
-	c.note(c.taken.Frames)
-	c.seq = max(c.seq, c.upTo)
-	c.taken = carry.Taken{}
-	return nil
-}
-
-// settleLate makes durable what has waited for long.
-func (c *Client) settleLate(ctx context.Context) error {
-	if !c.take.TryLock() {
-		return nil // it is being seen to
-	}
-	defer c.take.Unlock()
-	if c.taken.Frames == 0 && c.upTo == 0 || c.o.Now().Sub(c.since) < latest*c.o.Poll {
-		return nil
-	}
-	return c.settle(ctx)
-}
-
-func (c *Client) segment(ctx context.Context, data []byte) error {
-	rd, err := segment.NewReader(bytes.NewReader(data), c.o.Bag().Ring)
-	if err != nil {
-		return err
-	}
-	want, ok := c.o.Members.Signer(rd.Stream.Device)
-	if !ok || want != rd.Verifier {
-		return fmt.Errorf("a segment of stream %s: %w", rd.Stream, segment.ErrUnsigned)
-	}
-	c.mu.Lock()
-	c.filled[fillKey(rd.Stream, rd.First)] = c.o.Now()
-	c.moving[rd.Stream] = c.o.Now()
-	c.mu.Unlock()
-	held, err := c.o.Journal.Streams(ctx)
-	if err != nil {
-		return err
-	}
-	var main *carry.Held
-	for i, h := range held {
-		if h.Of != rd.Stream {
-			continue
-		}
-		if h.Last == rd.Last && h.Hash == rd.Hash {
-			return nil
-		}
-		if h.Stream == h.Of {
-			main = &held[i]
-		}
-	}
-	if main != nil && covers(main.Spans, rd.First, rd.Last) {
-		// A repeat, unless it is another branch.
-		hash, ok, err := c.o.Journal.At(ctx, main.Stream, rd.Last)
-		if err != nil {
-			return err
-		}
-		if ok && hash == rd.Hash {
-			return nil
-		}
-	}
-	if rd.Stream.Device == c.o.Incarnation() {
-		c.o.Notice("this device's records were also continued elsewhere (a copied or restored store); both are kept, and this device goes on under a new name")
-		if err := c.o.Journal.Renew(ctx); err != nil {
-			return err
-		}
-	}
-	return c.taken.Take(ctx, c.o.Journal, rd, held)
-}
-
-func covers(spans []merge.Span, first, last uint64) bool {
-	for _, sp := range spans {
-		if sp.First <= first && last <= sp.Last {
-			return true
-		}
-	}
-	return false
 }
 
 // head notes what another device holds.
@@ -752,12 +638,16 @@ func (c *Client) head(data []byte) {
 
 // told remembers what this device has told the others that it holds.
 type told struct {
-	sent, seen string // digests of what was held when a head was sent, and at the last look
+	sent, seen carry.Head // what was held when a head was sent, and at the last look
 	at         time.Time
 }
 
-// busyHead is how often a device tells what it holds while that goes on changing, in polls.
-const busyHead = 100
+// How often a device tells what it holds while that goes on changing, in polls: the more others there are,
+// the more they would hear.
+const (
+	busyHead = 100
+	eachHead = 10 // for each other device
+)
 
 // leaveHead tells the others what we hold, if that has changed: when it has come to rest, or now and then.
 func (c *Client) leaveHead(ctx context.Context, t *told) error {
@@ -774,23 +664,35 @@ func (c *Client) leaveHead(ctx context.Context, t *told) error {
 		return err
 	}
 	now := c.o.Now()
-	digest := fmt.Sprint(h)
-	quiet := digest == t.seen
-	t.seen = digest
-	if digest == t.sent || !quiet && now.Sub(t.at) < busyHead*c.o.Poll {
+	quiet := sameHead(h, t.seen)
+	t.seen = h
+	c.mu.Lock()
+	often := time.Duration(busyHead + eachHead*len(c.peers))
+	c.mu.Unlock()
+	if sameHead(h, t.sent) || !quiet && now.Sub(t.at) < often*c.o.Poll {
 		return nil
 	}
+	t.sent = h
 	h.Time = change.HLCAt(now)
 	data, err := h.Encode(bag.Device)
-	if err != nil {
-		return err
+	if err == nil {
+		_, err = c.js.Publish(ctx, "cw.head."+Who(bag.Device.Verifier()), data)
 	}
-	if _, err := c.js.Publish(ctx, "cw.head."+Who(bag.Device.Verifier()), data); err != nil {
+	if err != nil {
+		t.sent = carry.Head{}
 		return fmt.Errorf("telling the others what this device holds: %w", err)
 	}
-	t.sent, t.at = digest, now
+	t.at = now
 	return nil
 }
+
+// sameHead reports whether two heads say the same but for their time.
+func sameHead(a, b carry.Head) bool {
+	return a.Device == b.Device && slices.Equal(a.Streams, b.Streams) && slices.Equal(a.Sums, b.Sums)
+}
+
+// lack is a hole in a stream: the first number missing, and how far the hub's messages went when it was noticed.
+type lack struct{ first, seq uint64 }
 
 // want says which numbers of a stream somebody lacks.
 type want struct{ First, Last uint64 }
@@ -806,20 +708,37 @@ func (c *Client) ask(ctx context.Context, lastSeq uint64) error {
 		have[h.Stream] = h
 	}
 	c.mu.Lock()
-	if c.status.Behind > 0 || c.seq+256 < lastSeq && len(c.o.Sites) == 0 {
+	if c.status.Behind > 0 {
 		c.mu.Unlock()
 		return nil
 	}
 	now := c.o.Now()
+	all := len(c.o.Sites) == 0 // or else some messages on the hub are not for us
+	lacking := map[change.Stream]lack{}
 	wants := map[change.Stream]want{}
 	for _, p := range c.peers {
 		for _, r := range p.Streams {
 			s := r.Stream()
-			if s.Device == c.o.Incarnation() || !c.wantsSite(s.Site) || now.Sub(c.wanted[s]) < 30*c.o.Poll {
+			if s.Device == c.o.Incarnation() || !c.wantsSite(s.Site) {
+				continue
+			}
+			if now.Sub(c.wanted[s]) < 30*c.o.Poll {
+				if l, ok := c.lacking[s]; ok {
+					lacking[s] = l
+				}
 				continue
 			}
 			h := have[s]
 			if gaps := merge.Gaps(s, h.Spans, r.Last); len(gaps) > 0 {
+				// What lay on the hub when we noticed may hold it, and is read first.
+				l, noticed := c.lacking[s]
+				if !noticed || l.first != gaps[0].First {
+					l = lack{gaps[0].First, lastSeq}
+				}
+				lacking[s] = l
+				if !noticed || all && c.seq < l.seq {
+					continue
+				}
 				// What somebody holds may be on its way: a backlog travels for a while.
 				if last, ok := c.moving[s]; !ok || now.Sub(last) < 10*c.o.Poll {
 					if !ok {
@@ -834,6 +753,7 @@ func (c *Client) ask(ctx context.Context, lastSeq uint64) error {
 	for s := range wants {
 		c.wanted[s] = now
 	}
+	c.lacking = lacking
 	c.mu.Unlock()
 	for s, w := range wants {
 		b := binary.BigEndian.AppendUint64(nil, w.First)
@@ -849,7 +769,11 @@ func (c *Client) wantsSite(s change.Site) bool {
 	return len(c.o.Sites) == 0 || slices.Contains(c.o.Sites, s)
 }
 
-func fillKey(s change.Stream, first uint64) string { return fmt.Sprint(s.Name(), first) }
+// start is where a segment begins.
+type start struct {
+	stream change.Stream
+	first  uint64
+}
 
 // answer sends again what somebody lacks: at once what this device wrote, and after a while, if nobody
 // else did, what it holds of others.
@@ -877,15 +801,16 @@ func (c *Client) answer(ctx context.Context, subject string, data []byte) {
 		}
 	}
 	c.mu.Lock()
-	recent := c.filled[fillKey(s, w.First)]
+	recent := c.filled[start{s, w.First}]
+	if there, known := c.acked[s]; c.ours(s) && (!known || w.First > there) {
+		c.mu.Unlock()
+		return // it is on its way
+	}
 	if !recent.Before(asked) || asked.Sub(recent) < 20*c.o.Poll {
 		c.mu.Unlock()
 		return
 	}
-	c.filled[fillKey(s, w.First)] = c.o.Now()
-	if len(c.filled) > 10_000 {
-		clear(c.filled)
-	}
+	c.filled[start{s, w.First}] = c.o.Now()
 	c.mu.Unlock()
 	held, err := c.o.Journal.Streams(ctx)
 	if err != nil {

@@ -126,7 +126,7 @@ func parseEntry(e *mdns.ServiceEntry) (Found, bool) {
 		}
 	}
 	a, err := ParseAddress(text)
-	if err != nil {
+	if err != nil || strings.Contains(a.Host, ",") { // one hub announces itself only
 		return Found{}, false
 	}
 	name = strings.ReplaceAll(name, `\`, "")

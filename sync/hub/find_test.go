@@ -19,11 +19,12 @@ func TestParseEntry(t *testing.T) {
 	require.True(t, ok)
 	require.Equal(t, Found{"front desk", Address{"10.0.0.7:4222", print}}, f)
 	for name, spoil := range map[string]func(*mdns.ServiceEntry){
-		"another service": func(e *mdns.ServiceEntry) { e.Name = "x._http._tcp.local." },
-		"no port":         func(e *mdns.ServiceEntry) { e.Port = 0 },
-		"port too high":   func(e *mdns.ServiceEntry) { e.Port = 70000 },
-		"no address":      func(e *mdns.ServiceEntry) { e.AddrV4 = nil },
-		"bad fingerprint": func(e *mdns.ServiceEntry) { e.InfoFields = []string{"fp=zz"} },
+		"another service":       func(e *mdns.ServiceEntry) { e.Name = "x._http._tcp.local." },
+		"no port":               func(e *mdns.ServiceEntry) { e.Port = 0 },
+		"port too high":         func(e *mdns.ServiceEntry) { e.Port = 70000 },
+		"no address":            func(e *mdns.ServiceEntry) { e.AddrV4 = nil },
+		"another hub behind it": func(e *mdns.ServiceEntry) { e.InfoFields = []string{"fp=" + print + ",10.0.0.8#" + print} },
+		"bad fingerprint":       func(e *mdns.ServiceEntry) { e.InfoFields = []string{"fp=zz"} },
 	} {
 		e := good
 		spoil(&e)

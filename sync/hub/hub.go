@@ -6,13 +6,14 @@
 // journal of its sites, drops repeats itself, compares what it holds with what the others say they
 // hold, asks for what it lacks, and fills the hub again.
 //
-// Subjects, in two streams of messages:
+// Subjects, in streams of messages:
 //
 //	cw.seg.SITE.DEVICE          segments of a device's own stream (stream CW)
 //	cw.fill.WHO.SITE.DEVICE     segments that somebody sends again (stream CW)
 //	cw.head.WHO                 the newest head of a device (stream CWH, one message for each)
 //	cw.member                   statements of the member list (stream CWM, kept)
 //	cw.att.WHO.NAME.…           pieces of attachments (stream CWA)
+//	cw.ask.…, cw.extract.…      one patient for a site that does not keep it (stream CWX)
 //	cw.want.SITE.DEVICE         somebody lacks numbers of a stream (not stored)
 //
 // SITE, DEVICE and WHO are hexadecimal; WHO is the first half of a device's public key.
@@ -27,6 +28,7 @@ import (
 	"errors"
 	"fmt"
 	"net"
+	"slices"
 	"strings"
 	"time"
 
@@ -70,6 +72,7 @@ func (l Limits) Configs() []jetstream.StreamConfig {
 		{Name: Segments, Subjects: []string{"cw.seg.>", "cw.fill.>"}, MaxAge: l.Age, MaxBytes: l.Bytes, MaxMsgSize: MaxMessage, Storage: jetstream.FileStorage, Replicas: l.Replicas, Discard: jetstream.DiscardOld, AllowDirect: true, Duplicates: 2 * time.Minute},
 		{Name: Heads, Subjects: []string{"cw.head.*"}, MaxAge: l.Age, MaxMsgsPerSubject: 1, MaxBytes: 256 << 20, MaxMsgSize: MaxMessage, Storage: jetstream.FileStorage, Replicas: l.Replicas, AllowDirect: true},
 		{Name: Attached, Subjects: []string{"cw.att.*.*.*.*.*"}, MaxAge: l.Age, MaxBytes: l.Bytes, MaxMsgSize: MaxMessage, Storage: jetstream.FileStorage, Replicas: l.Replicas, Discard: jetstream.DiscardOld, AllowDirect: true, Duplicates: 2 * time.Minute},
+		{Name: Extracts, Subjects: []string{"cw.ask.*.*", "cw.extract.*.*.*.*"}, MaxAge: l.Age, MaxMsgsPerSubject: 1, MaxBytes: min(l.Bytes, 1<<30), MaxMsgSize: MaxMessage, Storage: jetstream.FileStorage, Replicas: l.Replicas, Discard: jetstream.DiscardOld, AllowDirect: true},
 		{Name: Members, Subjects: []string{"cw.member"}, MaxMsgs: 1 << 15, MaxBytes: 1 << 30, MaxMsgSize: 64<<10 + 1024, Storage: jetstream.FileStorage, Replicas: l.Replicas, AllowDirect: true},
 	}
 }
@@ -109,28 +112,43 @@ func keyPair(d key.Device) (nkeys.KeyPair, error) {
 }
 
 // Address is where a hub is found: "host:port", and behind a "#" the SHA-256 of its certificate in
-// hexadecimal digits. Without it the certificate must be one that this computer trusts.
+// hexadecimal digits. Without it the certificate must be one that this computer trusts. The nodes of a cluster stand
+// one behind the other with commas between: any of them will do.
 type Address struct {
-	Host        string // host:port
-	Fingerprint string
+	Host        string // host:port; of a cluster several, with commas between
+	Fingerprint string // of a cluster as many, or none
 }
+
+// maxNodes is how many nodes of a cluster an address names at most.
+const maxNodes = 16
 
 // ParseAddress reads an address; a missing port is 4222.
 func ParseAddress(text string) (Address, error) {
-	host, print, _ := strings.Cut(strings.TrimSpace(text), "#")
-	if _, _, err := net.SplitHostPort(host); err != nil {
-		host = net.JoinHostPort(strings.Trim(host, "[]"), "4222")
-	}
-	h, port, err := net.SplitHostPort(host)
-	if err != nil || h == "" || port == "" {
-		return Address{}, fmt.Errorf("%q is no address of a hub: want a host, or host:port", text)
-	}
-	if print != "" {
-		if b, err := hex.DecodeString(print); err != nil || len(b) != sha256.Size {
-			return Address{}, fmt.Errorf("the fingerprint behind # in %q should have 64 hexadecimal digits", text)
+	var hosts, prints []string
+	for node := range strings.SplitSeq(text, ",") {
+		host, print, _ := strings.Cut(strings.TrimSpace(node), "#")
+		if _, _, err := net.SplitHostPort(host); err != nil {
+			host = net.JoinHostPort(strings.Trim(host, "[]"), "4222")
 		}
+		h, port, err := net.SplitHostPort(host)
+		if err != nil || h == "" || port == "" || strings.ContainsAny(h, "/@ ") {
+			return Address{}, fmt.Errorf("%q is no address of a hub: want a host, or host:port, and of a cluster several with commas between", text)
+		}
+		if print != "" {
+			if b, err := hex.DecodeString(print); err != nil || len(b) != sha256.Size {
+				return Address{}, fmt.Errorf("the fingerprint behind # in %q should have 64 hexadecimal digits", text)
+			}
+			prints = append(prints, strings.ToLower(print))
+		}
+		hosts = append(hosts, host)
 	}
-	return Address{host, strings.ToLower(print)}, nil
+	switch {
+	case len(hosts) > maxNodes:
+		return Address{}, fmt.Errorf("an address of a hub with %d nodes: at most %d are used", len(hosts), maxNodes)
+	case len(prints) > 0 && len(prints) < len(hosts):
+		return Address{}, fmt.Errorf("in %q some nodes have a fingerprint behind # and some have none: give all of them one, or none", text)
+	}
+	return Address{strings.Join(hosts, ","), strings.Join(prints, ",")}, nil
 }
 
 // String is the inverse of ParseAddress.
@@ -138,10 +156,19 @@ func (a Address) String() string {
 	if a.Fingerprint == "" {
 		return a.Host
 	}
-	return a.Host + "#" + a.Fingerprint
+	hosts, prints := strings.Split(a.Host, ","), strings.Split(a.Fingerprint, ",")
+	for i := range min(len(hosts), len(prints)) {
+		hosts[i] += "#" + prints[i]
+	}
+	return strings.Join(hosts, ",")
 }
 
-// tls returns TLS 1.3 with the pinned certificate.
+// urls returns where a NATS client connects to.
+func (a Address) urls() string {
+	return "tls://" + strings.ReplaceAll(a.Host, ",", ",tls://")
+}
+
+// tls returns TLS 1.3 with the pinned certificates.
 func (a Address) tls() *tls.Config {
 	c := &tls.Config{MinVersion: tls.VersionTLS13}
 	if a.Fingerprint == "" {
@@ -154,7 +181,7 @@ func (a Address) tls() *tls.Config {
 			return errors.New("the hub showed no certificate")
 		}
 		sum := sha256.Sum256(raw[0])
-		if hex.EncodeToString(sum[:]) != a.Fingerprint {
+		if !slices.Contains(strings.Split(a.Fingerprint, ","), hex.EncodeToString(sum[:])) {
 			return errors.New("this is not the hub that was set up: its certificate is another one; ask whoever runs it before going on")
 		}
 		return nil
@@ -177,5 +204,5 @@ func connect(a Address, d key.Device, name string, more ...nats.Option) (*nats.C
 		nats.Timeout(5 * time.Second), nats.PingInterval(20 * time.Second), nats.NoEcho(),
 		nats.ReconnectBufSize(-1), // nothing is called sent that is not
 	}, more...)
-	return nats.Connect("tls://"+a.Host, o...)
+	return nats.Connect(a.urls(), o...)
 }

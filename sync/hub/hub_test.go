@@ -3,11 +3,13 @@ package hub_test
 import (
 	"bytes"
 	"context"
+	"crypto/tls"
 	"fmt"
 	"io"
 	"net"
 	"os"
 	"path/filepath"
+	"strings"
 	"sync"
 	"testing"
 	"time"
@@ -59,10 +61,15 @@ func run(t testing.TB, sh *share.Share, a hub.Address, place hub.Place) *client 
 
 func eventually(t testing.TB, what string, f func() bool) {
 	t.Helper()
-	end := time.Now().Add(30 * time.Second)
+	within(t, 30*time.Second, what, f)
+}
+
+func within(t testing.TB, d time.Duration, what string, f func() bool) {
+	t.Helper()
+	end := time.Now().Add(d)
 	for !f() {
 		if time.Now().After(end) {
-			t.Fatalf("still not so after 30 s: %s", what)
+			t.Fatalf("still not so after %s: %s", d, what)
 		}
 		time.Sleep(20 * time.Millisecond)
 	}
@@ -109,6 +116,9 @@ func TestThreeDevicesMeetAtTheHub(t *testing.T) {
 	require.Equal(t, 3, st.Devices)
 	require.Equal(t, 90*24*time.Hour, st.Limits.Age)
 	eventually(t, "the others are seen", func() bool { return len(ca.Status().Peers) == 2 })
+	// What the hub keeps is told on the devices too.
+	eventually(t, "a knows what the hub keeps", func() bool { return ca.Status().Bytes > 0 && !ca.Status().Oldest.IsZero() })
+	require.Equal(t, hub.Limits{Age: 90 * 24 * time.Hour, Bytes: 8 << 30, Replicas: 1}, ca.Status().Limits)
 }
 
 // The hub's process is stopped, started, and loses its whole folder: nothing that was recorded is lost,
@@ -187,6 +197,32 @@ func TestStrangersAreRefused(t *testing.T) {
 		_, err := nats.Connect("tls://"+addr.Host, nats.Secure(hub.TLS(addr)))
 		require.ErrorIs(t, err, nats.ErrAuthorization)
 	})
+	t.Run("the key of a member and no proof of it", func(t *testing.T) {
+		pub, err := hub.PublicKey(b.Bag().Device.Verifier())
+		require.NoError(t, err)
+		other, err := nkeys.CreateUser()
+		require.NoError(t, err)
+		_, err = nats.Connect("tls://"+addr.Host, nats.Secure(hub.TLS(addr)), nats.Nkey(pub, other.Sign))
+		require.ErrorIs(t, err, nats.ErrAuthorization)
+	})
+	t.Run("a key that is no member's", func(t *testing.T) {
+		other, err := nkeys.CreateUser()
+		require.NoError(t, err)
+		pub, err := other.PublicKey()
+		require.NoError(t, err)
+		_, err = nats.Connect("tls://"+addr.Host, nats.Secure(hub.TLS(addr)), nats.Nkey(pub, other.Sign))
+		require.ErrorIs(t, err, nats.ErrAuthorization)
+	})
+	t.Run("no certificate that is the hub's", func(t *testing.T) {
+		_, err := nats.Connect("tls://" + addr.Host)
+		require.Error(t, err)
+	})
+	t.Run("an older TLS", func(t *testing.T) {
+		c := hub.TLS(addr)
+		c.MinVersion, c.MaxVersion = tls.VersionTLS12, tls.VersionTLS12
+		_, err := nats.Connect("tls://"+addr.Host, nats.Secure(c))
+		require.Error(t, err)
+	})
 	t.Run("no TLS", func(t *testing.T) {
 		conn, err := net.Dial("tcp", addr.Host)
 		require.NoError(t, err)
@@ -210,7 +246,8 @@ func TestStrangersAreRefused(t *testing.T) {
 		nc, err := nats.Connect("tls://"+addr.Host, nats.Secure(hub.TLS(addr)), nats.Nkey(pub, kp.Sign), nats.ErrorHandler(func(_ *nats.Conn, _ *nats.Subscription, err error) { denied <- err }))
 		require.NoError(t, err)
 		defer nc.Close()
-		for _, subject := range []string{"cw.seg." + a.Site().String() + "." + a.Incarnation().String(), "cw.head." + hub.Who(a.Bag().Device.Verifier()), "$JS.API.STREAM.DELETE.CW", "$JS.API.STREAM.PURGE.CW", "$JS.API.STREAM.MSG.DELETE.CW", "$SYS.REQ.SERVER.PING"} {
+		for _, subject := range []string{"cw.seg." + a.Site().String() + "." + a.Incarnation().String(), "cw.head." + hub.Who(a.Bag().Device.Verifier()),
+			"cw.fill." + hub.Who(a.Bag().Device.Verifier()) + "." + a.Site().String() + "." + a.Incarnation().String(), "cw.att." + hub.Who(a.Bag().Device.Verifier()) + ".n.k.0.1", "$JS.API.STREAM.DELETE.CW", "$JS.API.STREAM.PURGE.CW", "$JS.API.STREAM.MSG.DELETE.CW", "$SYS.REQ.SERVER.PING"} {
 			require.NoError(t, nc.Publish(subject, []byte("x")))
 			require.NoError(t, nc.Flush())
 			select {
@@ -236,6 +273,13 @@ func TestStrangersAreRefused(t *testing.T) {
 		sharetest.Add(t, a, "after the removal")
 		time.Sleep(500 * time.Millisecond)
 		require.Len(t, sharetest.Names(t, b), n)
+		// Nor does it get in again, whatever program it uses.
+		kp, err := nkeys.FromRawSeed(nkeys.PrefixByteUser, b.Bag().Device.Signer().Seed())
+		require.NoError(t, err)
+		pub, err := kp.PublicKey()
+		require.NoError(t, err)
+		_, err = nats.Connect("tls://"+addr.Host, nats.Secure(hub.TLS(addr)), nats.Nkey(pub, kp.Sign))
+		require.ErrorIs(t, err, nats.ErrAuthorization)
 	})
 }
 
@@ -314,10 +358,11 @@ func TestAttachmentsTravelByHub(t *testing.T) {
 
 func TestParseAddress(t *testing.T) {
 	t.Parallel()
-	print := fmt.Sprintf("%064x", 5)
+	print, other := fmt.Sprintf("%064x", 5), fmt.Sprintf("%064x", 6)
 	for in, want := range map[string]hub.Address{
 		"hub": {Host: "hub:4222"}, "10.0.0.5:99": {Host: "10.0.0.5:99"}, "[::1]:7": {Host: "[::1]:7"}, "::1": {Host: "[::1]:4222"},
-		"hub#" + print: {Host: "hub:4222", Fingerprint: print},
+		"hub#" + print:   {Host: "hub:4222", Fingerprint: print},
+		"a, b:7,[::1]:8": {Host: "a:4222,b:7,[::1]:8"}, "a#" + print + ",b#" + other: {Host: "a:4222,b:4222", Fingerprint: print + "," + other},
 	} {
 		got, err := hub.ParseAddress(in)
 		require.NoError(t, err, in)
@@ -326,10 +371,8 @@ func TestParseAddress(t *testing.T) {
 		require.NoError(t, err)
 		require.Equal(t, got, again)
 	}
-	for _, bad := range []string{"", "hub#12", "hub#zz", ":5", "a:b:c:"} {
+	for _, bad := range []string{"", "hub#12", "hub#zz", ":5", "a,", "a,,b", "a#" + print + ",b", "nats://a:5", strings.Repeat("a,", 20) + "a"} {
 		_, err := hub.ParseAddress(bad)
-		if bad != "a:b:c:" {
-			require.Error(t, err, bad)
-		}
+		require.Error(t, err, bad)
 	}
 }

@@ -222,18 +222,38 @@ func parseBag(data []byte) (bagFile, error) {
 	return f, nil
 }
 
-// Protected reports whether a bag file needs something from outside the store to be opened.
-func Protected(data []byte) (bool, error) {
+// Locks says whose keys a bag file holds and what opens it.
+type Locks struct {
+	Practice                           exam.ID
+	InStore, Passphrase, File, Keyring bool
+}
+
+// LocksOf reads what a bag file says of its locks, without opening any.
+func LocksOf(data []byte) (Locks, error) {
 	f, err := parseBag(data)
 	if err != nil {
-		return false, err
+		return Locks{}, err
 	}
+	out := Locks{Practice: f.Practice}
 	for _, l := range f.Locks {
-		if l.Kind == kindStore {
-			return false, nil
+		switch l.Kind {
+		case kindStore:
+			out.InStore = true
+		case kindPassphrase:
+			out.Passphrase = true
+		case kindSecret:
+			out.File = true
+		case kindKeyring:
+			out.Keyring = true
 		}
 	}
-	return true, nil
+	return out, nil
+}
+
+// Protected reports whether a bag file needs something from outside the store to be opened.
+func Protected(data []byte) (bool, error) {
+	l, err := LocksOf(data)
+	return err == nil && !l.InStore, err
 }
 
 // Unlock opens a bag file. The error is ErrLocked for a wrong passphrase or key, ErrNoLock

@@ -345,6 +345,9 @@ func (sh *Share) Folder(ctx context.Context, place string, progress func(what st
 	if err == nil && r.Received > 0 {
 		err = sh.refresh(ctx) // streams that are new to us may be limited
 	}
+	if err == nil {
+		err = sh.remember(r)
+	}
 	return r, err
 }
 

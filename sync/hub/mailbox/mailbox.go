@@ -335,24 +335,10 @@ func (m *Mailbox) Check(c server.ClientAuthentication) bool {
 	return true
 }
 
-// permissions says what a device may do: read all, write under its own names.
+// permissions says what a device may do.
 func permissions(d member.Device) *server.Permissions {
-	who := hub.Who(d.Verifier)
-	pub := []string{
-		"cw.fill." + who + ".*.*", "cw.att." + who + ".>", "cw.head." + who, "cw.member", "cw.want.*.*",
-		"$JS.API.INFO", "$JS.ACK.>", "_INBOX.>",
-	}
-	for _, i := range d.Incarnations {
-		pub = append(pub, "cw.seg.*."+i.String())
-	}
-	for _, s := range []string{hub.Segments, hub.Heads, hub.Members, hub.Attached} {
-		pub = append(pub, "$JS.API.STREAM.INFO."+s, "$JS.API.STREAM.MSG.GET."+s, "$JS.API.DIRECT.GET."+s, "$JS.API.DIRECT.GET."+s+".>",
-			"$JS.API.CONSUMER.CREATE."+s, "$JS.API.CONSUMER.CREATE."+s+".>", "$JS.API.CONSUMER.MSG.NEXT."+s+".>", "$JS.API.CONSUMER.INFO."+s+".>", "$JS.API.CONSUMER.DELETE."+s+".>")
-	}
-	return &server.Permissions{
-		Publish:   &server.SubjectPermission{Allow: pub},
-		Subscribe: &server.SubjectPermission{Allow: []string{"cw.>", "_INBOX.>"}},
-	}
+	publish, subscribe := hub.May(d)
+	return &server.Permissions{Publish: &server.SubjectPermission{Allow: publish}, Subscribe: &server.SubjectPermission{Allow: subscribe}}
 }
 
 // expel closes the connections of devices that are no members any more, and of those that have new names, which

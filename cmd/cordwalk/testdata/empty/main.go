@@ -6,12 +6,12 @@ import (
 	"fyne.io/fyne/v2/app"
 	"fyne.io/fyne/v2/canvas"
 
-	"cordwalk.example/cordwalk/app/desk"
 	"cordwalk.example/cordwalk/app/desk/look"
+	"cordwalk.example/cordwalk/app/desk/still"
 )
 
 func main() {
-	a := desk.Still(app.NewWithID("example.cordwalk.empty"))
+	a := still.App(app.NewWithID("example.cordwalk.empty"))
 	a.Settings().SetTheme(look.New(look.Light, 1))
 	w := a.NewWindow("Starting")
 	// Like the caseload, it has its name once the drawing loop runs, not when the frame is mapped.

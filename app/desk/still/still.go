@@ -1,4 +1,5 @@
-package desk
+// Package still keeps the toolkit from moving anything by itself.
+package still
 
 import (
 	"runtime"
@@ -6,10 +7,10 @@ import (
 	"fyne.io/fyne/v2"
 )
 
-// Still makes a Fyne app that moves nothing by itself: no blinking caret, no fading button. An
+// App makes a Fyne app that moves nothing by itself: no blinking caret, no fading button. An
 // idle window then draws nothing, where the caret alone would draw the whole of it many times a
 // second. On macOS the toolkit needs its own app behind this, and it is returned as it is.
-func Still(a fyne.App) fyne.App {
+func App(a fyne.App) fyne.App {
 	if runtime.GOOS == "darwin" {
 		return a
 	}
