@@ -36,6 +36,8 @@ func screenTitle(s view.Screen) string {
 		return words.T("Devices")
 	case view.ScreenSettings:
 		return words.T("Settings")
+	case view.ScreenPhrases:
+		return words.T("Words and logo of the sheets")
 	case view.ScreenOutcomes:
 		return words.T("Outcomes")
 	case view.ScreenChoices:

@@ -576,8 +576,12 @@ func (p *coursePage) halt() {
 // askSave asks where a picture of the course goes: PNG, SVG or PDF by its ending.
 func (p *coursePage) askSave() {
 	name := fileWord(p.file.Patient.Name) + "-course.png"
+	told := p.win.exported(name)
 	p.win.askFile(words.T("Save the picture of the course"), name, words.T("The ending says how: .png, .svg or .pdf"), func(path string) error {
-		return saveCourse(path, p.course.Strip, p.course.Limbs)
+		if err := saveCourse(path, p.course.Strip, p.course.Limbs); err != nil {
+			return err
+		}
+		return told(context.Background())
 	})
 }
 

@@ -203,6 +203,7 @@ func (w *window) saveCopy(v exam.Visit, at int) {
 			}
 			return
 		}
+		told := w.exported(view.AttachmentFile(v, at))
 		w.app.work(func(ctx context.Context) (func(), error) {
 			r, err := w.app.attachment(ctx, v.Patient, x)
 			if err != nil {
@@ -211,6 +212,9 @@ func (w *window) saveCopy(v exam.Visit, at int) {
 			defer r.Close()
 			_, err = io.Copy(out, r)
 			if err = errors.Join(err, out.Close()); err != nil {
+				return nil, err
+			}
+			if err := told(ctx); err != nil {
 				return nil, err
 			}
 			return func() { w.foot.say(words.T("A copy lies in %s. It is not sealed there.", out.URI().Path())) }, nil

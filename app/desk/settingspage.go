@@ -97,7 +97,8 @@ func (p *settingsPage) build() {
 	p.said = mark.NewPara("").In(look.Worse)
 	keep := mark.NewButton(words.T("Keep the practice's settings"), "tick", p.keep).As(mark.Main)
 	p.body = mark.NewScroll(mark.AtMost(900, mark.Column(look.Unit*3, here, practice, p.lists, p.said, mark.Left(keep), mark.Space(1, look.Unit))))
-	p.root = mark.Pad(look.Unit*1.5, look.Unit*2, mark.ColumnGrow(look.Unit, 1, mark.Title(words.T("Settings")).AtLeast(100), p.body))
+	p.root = mark.Pad(look.Unit*1.5, look.Unit*2, mark.ColumnGrow(look.Unit, 1, mark.Bar(look.Unit, mark.Title(words.T("Settings")).AtLeast(100),
+		mark.NewButton(words.T("Words and logo of the sheets"), "sheet", func() { p.win.goTo(view.Route{Screen: view.ScreenPhrases}) })), p.body))
 }
 
 // repaint shows the new colours and sizes on every window.

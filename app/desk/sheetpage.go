@@ -22,6 +22,8 @@ import (
 	"cordwalk.example/cordwalk/app/sheet"
 	"cordwalk.example/cordwalk/app/view"
 	"cordwalk.example/cordwalk/assets/words"
+	"cordwalk.example/cordwalk/storage/disk"
+	"cordwalk.example/cordwalk/sync/audit"
 )
 
 // sheetPage answers: what do I hand over?
@@ -40,6 +42,10 @@ type sheetPage struct {
 	refused error        // why there is no sheet
 
 	root     fyne.CanvasObject
+	summary  *mark.Field // the therapist's own sentences
+	reword   *mark.Button
+	reads    *mark.Para // how easily they read
+	ours     string     // the program's own sentences
 	preview  *mark.Scroll
 	pictures []*canvas.Image
 	notes    *fyne.Container
@@ -65,25 +71,89 @@ func newSheetPage(w *window) *sheetPage {
 	p.save = mark.NewButton(words.T("Save as PDF"), "save", p.askSave).As(mark.Main)
 	p.print = mark.NewButton(words.T("Open and print"), "print", p.open)
 	p.mail = mark.NewButton(words.T("Write an e-mail"), "", p.write)
-	summary := mark.NewArea("", 4, nil).Hint(words.T("Instead of the sentences on the sheet"))
-	summary.OnLeave = func() {
-		if p.options.Summary != summary.Text {
-			p.options.Summary = summary.Text
-			p.make()
-		}
-	}
+	p.options.Summary = p.lastWords()
+	p.summary = mark.NewArea(p.options.Summary, 5, func(string) { p.judge() }).Hint(words.T("Instead of the sentences on the sheet"))
+	p.summary.OnLeave = p.reworded
+	p.reads = mark.NewPara("").As(look.Small).In(look.InkSoft)
+	p.reword = mark.NewButton("", "", p.turned)
+	p.judge()
 	side := mark.Column(look.Unit,
 		mark.Wrapped(4, choose.Objects...), p.title, p.about,
 		p.save, p.print, p.mail, mark.Space(1, look.Unit),
 		tick(words.T("Large print"), func(on bool) { p.options.Large = on }),
 		tick(words.T("For a printer without colours"), func(on bool) { p.options.Grey = on }),
 		tick(words.T("Leave the course chart out"), func(on bool) { p.options.NoChart = on }),
-		mark.NewLabelled(words.T("Paper"), mark.Choice([]string{"A4", "Letter"}, []string{"A4", "Letter"}, w.app.practice.Paper, func(s string) { p.options.Paper = s; p.make() })),
-		mark.NewLabelled(words.T("How it is doing, in your words"), summary),
+		pair(mark.NewLabelled(words.T("Paper"), mark.Choice([]string{"A4", "Letter"}, []string{"A4", "Letter"}, w.app.practice.Paper, func(s string) { p.options.Paper = s; p.make() })),
+			mark.NewLabelled(words.T("Language"), mark.Choice(languageNames(words.Tags()), words.Tags(), p.language(), p.speak))),
+		mark.NewLabelled(words.T("How it is doing, in your words"), mark.Column(4, p.summary, p.reads, mark.Left(p.reword))),
 		p.notes)
 	p.root = mark.Pad(look.Unit*1.5, look.Unit*2, mark.RowTop(look.Unit*2, []float32{1, 0}, mark.On(look.Sunk, false, p.preview), mark.Sized(320, 10, mark.NewScroll(side))))
 	p.make()
 	return p
+}
+
+// judge says how easily the therapist's own sentences read.
+func (p *sheetPage) judge() {
+	own := strings.TrimSpace(p.summary.Text)
+	p.reword.SetWords(words.T("Reword the sheet's sentences"))
+	said := ""
+	if own != "" {
+		p.reword.SetWords(words.T("Back to the sheet's sentences"))
+		if ease := sheet.EaseWords(p.language(), strings.Split(own, "\n")); ease != "" {
+			said = sentence(ease)
+		}
+	}
+	if p.reads.Words != said {
+		p.reads.Set(said)
+	}
+}
+
+// language is that of the paper.
+func (p *sheetPage) language() string {
+	for _, l := range []string{p.options.Lang, p.win.app.practice.Language} {
+		if l != "" {
+			return l
+		}
+	}
+	return "en"
+}
+
+// lastWords are the therapist's own sentences that were sent about this visit, to be sent again
+// or reworded.
+func (p *sheetPage) lastWords() string {
+	n := len(p.file.Visits)
+	if n == 0 {
+		return ""
+	}
+	return sheet.LastWords(p.file.Patient, p.file.Visits[n-1].ID, p.language())
+}
+
+// speak writes the paper in another language; own sentences of the first are no use in it.
+func (p *sheetPage) speak(tag string) {
+	p.options.Lang, p.ours = tag, ""
+	p.options.Summary = p.lastWords()
+	p.summary.SetText(p.options.Summary)
+	p.judge()
+	p.make()
+}
+
+// reworded makes the paper anew with the therapist's own sentences.
+func (p *sheetPage) reworded() {
+	if p.options.Summary != p.summary.Text {
+		p.options.Summary = p.summary.Text
+		p.make()
+	}
+}
+
+// turned goes back to the sheet's own sentences, or offers them to be reworded.
+func (p *sheetPage) turned() {
+	if strings.TrimSpace(p.summary.Text) != "" {
+		p.summary.SetText("")
+		p.reworded()
+		return
+	}
+	p.summary.SetText(p.ours)
+	p.win.win.Canvas().Focus(p.summary)
 }
 
 func (p *sheetPage) content() fyne.CanvasObject { return p.root }
@@ -228,6 +298,9 @@ func (p *sheetPage) make() {
 
 func (p *sheetPage) show(doc sheet.Document, pages []image.Image) {
 	p.doc, p.refused = doc, nil
+	if doc.Kind == sheet.KindSheet && !doc.Reworded {
+		p.ours = doc.Summary
+	}
 	p.save.Enable()
 	p.print.Enable()
 	p.mail.Enable()
@@ -264,7 +337,7 @@ func (p *sheetPage) askSave() {
 	doc, keep := p.doc, p.sent()
 	title, _ := p.kind.words()
 	p.win.askFile(words.T("Save as PDF: %s", title), doc.Name, words.T("The sheet is not protected once it has left the practice's store."), func(path string) error {
-		if err := os.WriteFile(path, doc.PDF, 0o600); err != nil {
+		if err := disk.Replace(disk.OS(), path, doc.PDF); err != nil {
 			return err
 		}
 		return keep(context.Background())
@@ -276,7 +349,24 @@ func (p *sheetPage) sent() func(context.Context) error {
 	a, doc, in, at := p.win.app, p.doc, p.in, p.win.app.now()
 	records, who := a.records, a.examiner
 	return func(ctx context.Context) error {
-		_, err := records.Apply(ctx, who, sheet.SentEdits(in.Patient, in.Visits[len(in.Visits)-1].ID, doc, who, at)...)
+		done, err := audit.Edit(audit.Printed, in.Patient.Name+": "+doc.Name)
+		if err != nil {
+			return err
+		}
+		_, err = records.Apply(ctx, who, append(sheet.SentEdits(in.Patient, in.Visits[len(in.Visits)-1].ID, doc, who, at), done)...)
+		return err
+	}
+}
+
+// exported returns what writes into the audit that something left the store.
+func (w *window) exported(what string) func(context.Context) error {
+	records, who := w.app.records, w.app.examiner
+	return func(ctx context.Context) error {
+		done, err := audit.Edit(audit.Exported, what)
+		if err != nil {
+			return err
+		}
+		_, err = records.Apply(ctx, who, done)
 		return err
 	}
 }
@@ -286,13 +376,24 @@ func (p *sheetPage) write() {
 	if len(p.doc.PDF) == 0 {
 		return
 	}
-	draft, err := sheet.Mail(p.in, p.doc, "")
-	if err != nil {
-		p.win.fail(words.T("The sheet could not be handed over."), err)
-		return
-	}
-	p.hand(draft, strings.TrimSuffix(p.doc.Name, ".pdf")+".eml", words.T("Opened as a draft in the system's mail program; nothing was sent."),
-		words.T("This system has no program that opens drafts of e-mails; save the sheet and attach it."))
+	a, in, doc, keep := p.win.app, p.in, p.doc, p.sent()
+	a.work(func(ctx context.Context) (func(), error) {
+		m, err := newDraft(in, doc)
+		if err != nil {
+			return nil, err
+		}
+		how, err := m.open(ctx, a.fyne.OpenURL)
+		return func() { p.handed(keep, how) }, err
+	}, func(err error) {
+		p.win.fail(words.T("This system has no program that opens drafts of e-mails; save the sheet and attach it."), err)
+	})
+}
+
+// handed keeps that a paper was handed over.
+func (p *sheetPage) handed(keep func(context.Context) error, done string) {
+	p.win.app.work(func(ctx context.Context) (func(), error) { return nil, keep(ctx) },
+		func(err error) { p.win.fail(words.T("That the paper was handed over could not be kept."), err) })
+	p.win.foot.say(done)
 }
 
 // open hands the sheet to the system's own program, which prints it.
@@ -322,9 +423,7 @@ func (p *sheetPage) hand(data []byte, name, done, none string) {
 				p.win.fail(none, err)
 				return
 			}
-			p.win.app.work(func(ctx context.Context) (func(), error) { return nil, keep(ctx) },
-				func(err error) { p.win.fail(words.T("That the paper was handed over could not be kept."), err) })
-			p.win.foot.say(done)
+			p.handed(keep, done)
 		}, nil
 	}, func(err error) { p.win.fail(words.T("The sheet could not be handed over."), err) })
 }

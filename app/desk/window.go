@@ -181,6 +181,10 @@ func (w *window) open(r view.Route) {
 		w.file = File{}
 		w.show(newSettingsPage(w))
 		return
+	case view.ScreenPhrases:
+		w.file = File{}
+		w.show(newPhrasePage(w))
+		return
 	case view.ScreenDevices:
 		w.file = File{}
 		w.show(newDevicesPage(w))

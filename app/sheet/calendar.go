@@ -5,7 +5,6 @@ import (
 	"fmt"
 	"io"
 	"iter"
-	"net/url"
 	"strings"
 	"time"
 	"unicode/utf8"
@@ -93,44 +92,4 @@ func foldLine(w *bufio.Writer, s string) {
 	}
 	w.WriteString(s)
 	w.WriteString("\r\n")
-}
-
-// Message is a short text that goes with a paper. Nothing is sent: the system's own mail
-// program is opened, or the text is saved beside the PDF.
-type Message struct {
-	To, Subject, Body string
-}
-
-// OwnerMessage returns the text that goes with an owner's sheet. It holds no findings: those
-// stand on the sheet.
-func OwnerMessage(in Input, d Document) Message {
-	lang := in.lang()
-	var b strings.Builder
-	if n := in.Patient.Owner.Name; n != "" {
-		b.WriteString(words.In(lang, "Dear %s,", n) + "\n\n")
-	}
-	b.WriteString(words.In(lang, "the progress sheet of %s is attached.", in.Patient.Name) + "\n")
-	if next := in.last().NextVisit; next != "" {
-		b.WriteString(words.In(lang, "The next visit is on %s.", dateWords(lang, next)) + "\n")
-	}
-	if len(in.urgent()) > 0 {
-		b.WriteString("\n" + in.text(textTodayBox) + ": " + in.Patient.Veterinarian.Phone + "\n" + in.text(textUntilAgrees) + "\n")
-	}
-	b.WriteString("\n" + in.text(textSupport) + "\n\n" + in.Practice.Name + "\n")
-	if p := in.Practice.Contact.Phone; p != "" {
-		b.WriteString(p + "\n")
-	}
-	return Message{To: in.Patient.Owner.Email, Subject: d.Subject, Body: b.String()}
-}
-
-// Text returns the message as a text file, with the name of the paper to attach.
-func (m Message) Text(attach string) string {
-	return "To: " + m.To + "\nSubject: " + m.Subject + "\nAttach: " + attach + "\n\n" + m.Body
-}
-
-// Mailto returns the message as an address that opens the system's mail program (RFC 6068).
-// Attachments cannot be named in it.
-func (m Message) Mailto() string {
-	q := strings.ReplaceAll(url.Values{"subject": {m.Subject}, "body": {strings.ReplaceAll(m.Body, "\n", "\r\n")}}.Encode(), "+", "%20")
-	return "mailto:" + url.PathEscape(m.To) + "?" + q
 }

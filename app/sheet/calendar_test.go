@@ -2,7 +2,6 @@ package sheet
 
 import (
 	"bytes"
-	"net/url"
 	"strings"
 	"testing"
 	"time"
@@ -33,27 +32,4 @@ func TestCalendar(t *testing.T) {
 	}
 	_, err = Calendar(fullDisk{}, animalsOf(list...), time.Now(), "en")
 	assert.ErrorContains(t, err, "no space")
-}
-
-func TestOwnerMessage(t *testing.T) {
-	in := patients()["recovery"]
-	in.Patient.Owner.Email = "mara@example.org"
-	doc, err := Owner(in)
-	require.NoError(t, err)
-	m := OwnerMessage(in, doc)
-	assert.Contains(t, m.Body, "Dear Mara Lindqvist,")
-	assert.Contains(t, m.Body, "The next visit is on 11 May 2026.")
-	assert.NotContains(t, m.Body, "leg", "no findings in a mail")
-	u, err := url.Parse(m.Mailto())
-	require.NoError(t, err)
-	assert.Equal(t, "mailto", u.Scheme)
-	q, err := url.ParseQuery(u.RawQuery)
-	require.NoError(t, err)
-	assert.Equal(t, m.Subject, q.Get("subject"))
-	assert.Equal(t, m.Body, strings.ReplaceAll(q.Get("body"), "\r\n", "\n"))
-	assert.Contains(t, m.Text(doc.Name), "Attach: bruno-2026-05-04-owner.pdf")
-
-	m = OwnerMessage(patients()["relapse"], doc)
-	assert.Contains(t, m.Body, "No exercises until your veterinarian agrees.")
-	assert.Contains(t, m.Body, "+43 1 555 0123")
 }

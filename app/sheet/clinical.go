@@ -196,6 +196,7 @@ func Clinical(in Input, course *CourseCharts) (Document, error) {
 	if in.Options.Grey {
 		p.pal = chart.Grey()
 	}
+	full := false
 	for _, part := range []func(*page, float64){c.pageOne, c.pageTwo} {
 		doc.AddPage()
 		// Text shrinks until the page holds it; pages cut their own lists at the smallest size.
@@ -209,14 +210,23 @@ func Clinical(in Input, course *CourseCharts) (Document, error) {
 		}
 		p.dry, p.size, p.y = false, size, p.margin*0.8
 		part(p, h)
+		full = full || p.y > h-p.margin*0.8
 		c.footer(p, doc.PageNo())
 	}
 	out := Document{Pages: doc.PageCount(), Name: fileName(in.Patient.Name, c.now.Examined, "summary", "pdf"), Subject: title + ", " + day, Kind: KindSummary, Lang: lang, Prose: prose, Summary: c.inShort(), Noted: check(in, c.now.Home).noted}
+	if full {
+		out.Warnings = append(out.Warnings, tooLong())
+	}
 	if len(p.lost) > 0 {
 		out.Warnings = append(out.Warnings, lostLetters(p.lost))
 	}
 	out.PDF, err = output(doc)
 	return out, err
+}
+
+// tooLong says that a page holds more than it should even in the smallest letters.
+func tooLong() string {
+	return words.T("the end of a page did not fit: shorten problems, precautions, medicines or notes, and print it again")
 }
 
 // inShort is what the record of a paper that was sent says of it: what is urgent, the likely
@@ -444,7 +454,7 @@ func (c *clinical) alerts(p *page, x, w float64) {
 			break
 		}
 		s := upperFirst(urgencyWord(p.lang, n.Urgency)) + colon(p.lang) + n.Words
-		if !n.Since.IsZero() {
+		if !n.Since.IsZero() && n.Since.Before(c.now.Examined) {
 			s += " (" + words.In(p.lang, "since %s", dayWords(p.lang, n.Since)) + ")"
 		}
 		if n.Told != "" {
@@ -453,7 +463,7 @@ func (c *clinical) alerts(p *page, x, w float64) {
 			s += " – " + words.In(p.lang, "nobody told yet")
 		}
 		p.note(s)
-		p.para(x, w, s, p.size, n.Told == "", p.pal.Call, 4)
+		p.para(x, w, s, p.size, n.Told == "", p.pal.Call, 6)
 	}
 }
 
@@ -1042,7 +1052,11 @@ func Letter(in Input) (Document, error) {
 	}
 	p.dry, p.size = false, size
 	c.letter(p)
+	full := p.y > h-p.margin*0.8
 	out := Document{Pages: doc.PageCount(), Name: fileName(in.Patient.Name, c.now.Examined, "letter", "pdf"), Subject: title + ", " + day, Kind: KindLetter, Lang: lang, Prose: prose, Summary: c.inShort()}
+	if full {
+		out.Warnings = append(out.Warnings, tooLong())
+	}
 	if len(p.lost) > 0 {
 		out.Warnings = append(out.Warnings, lostLetters(p.lost))
 	}
@@ -1082,7 +1096,7 @@ func (c *clinical) letter(p *page) {
 			break
 		}
 		s := n.Words
-		if !n.Since.IsZero() {
+		if !n.Since.IsZero() && n.Since.Before(c.now.Examined) {
 			s = words.In(lang, "%[1]s Compared with %[2]s.", s, dayWords(lang, n.Since))
 		}
 		s += " " + words.In(lang, "Urgency: %s.", urgencyWord(lang, n.Urgency))
@@ -1090,10 +1104,15 @@ func (c *clinical) letter(p *page) {
 			s += " " + words.In(lang, "Told: %s.", n.Told)
 		}
 		p.note(s)
-		p.para(x, w, "• "+s, p.size, false, p.pal.Ink, 6)
+		p.para(x, w, "• "+s, p.size, false, p.pal.Ink, 10)
 		p.y += p.size * 0.2
 	}
-	p.heading(x, w, words.In(lang, "Main findings, last visit %[1]s › today %[2]s", c.prev.Examined.Format("2006-01-02"), c.now.Examined.Format("2006-01-02")))
+	again := len(in.Visits) > 1
+	if again {
+		p.heading(x, w, words.In(lang, "Main findings, last visit %[1]s › today %[2]s", c.prev.Examined.Format("2006-01-02"), c.now.Examined.Format("2006-01-02")))
+	} else {
+		p.heading(x, w, words.In(lang, "Findings of the first visit, %s", c.now.Examined.Format("2006-01-02")))
+	}
 	rows := grid(lang, c.first, c.prev, c.now)
 	shown := 0
 	for _, r := range rows {
@@ -1102,7 +1121,11 @@ func (c *clinical) letter(p *page) {
 		}
 		var cells []string
 		for _, g := range r.cells {
-			cells = append(cells, strings.TrimSpace(g.site+" "+g.last+step+g.now))
+			grade := g.now
+			if again {
+				grade = g.last + step + g.now
+			}
+			cells = append(cells, strings.TrimSpace(g.site+" "+grade))
 		}
 		p.line(x, w, r.label, strings.Join(cells, ", "), 4)
 		shown++

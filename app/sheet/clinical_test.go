@@ -9,51 +9,8 @@ import (
 	"github.com/stretchr/testify/assert"
 	"github.com/stretchr/testify/require"
 
-	"cordwalk.example/cordwalk/assets/words"
 	"cordwalk.example/cordwalk/exam"
 )
-
-// TestOwnerSheetOfTheDemoPractice: every demo patient under treatment, in every look, has a
-// one-page sheet at a reading ease of 60 or more, with nothing of a likely site on it.
-func TestOwnerSheetOfTheDemoPractice(t *testing.T) {
-	for name, in := range demoInputs() {
-		for look, opt := range looks() {
-			if opt.Grey || opt.NoChart {
-				continue // the invented animals of this package's tests show these
-			}
-			for _, tag := range words.Tags() {
-				ownerSheetOfTheDemo(t, name, look, tag, in, opt)
-			}
-		}
-	}
-}
-
-func ownerSheetOfTheDemo(t *testing.T, name, look, tag string, in Input, opt Options) {
-	t.Run(name+"/"+look+"/"+tag, func(t *testing.T) {
-		in.Options = opt
-		in.Options.Lang = tag
-		doc, err := Owner(in)
-		if in.Patient.Status != exam.Active {
-			assert.ErrorIs(t, err, ErrInactive)
-			return
-		}
-		require.NoError(t, err)
-		keepPaper(t, "demo-"+name+"-"+look+"-"+tag, doc.PDF)
-		assert.Equal(t, 1, doc.Pages)
-		assert.Regexp(t, `Pages: +1\n`, run(t, doc.PDF, "pdfinfo", "FILE"))
-		text := textOf(t, doc.PDF)
-		assert.Contains(t, text, in.Patient.Veterinarian.Phone)
-		assert.NotContains(t, text, "%")
-		if tag == "en" {
-			assert.Contains(t, text, "Demo")
-			assert.NotRegexp(t, forbidden, text)
-		}
-		insidePage(t, name, doc.PDF, opt.Paper == "Letter")
-		if ease, ok := Reading(tag, doc.Prose); ok {
-			assert.GreaterOrEqual(t, ease.Score, 60.0, "%s: %d words, %d sentences, %d syllables\n%s", ease.Measure, ease.Words, ease.Sentences, ease.Syllables, strings.Join(doc.Prose, "\n"))
-		}
-	})
-}
 
 // TestTheSheetClaimsNoMoreThanTheModel: with the model's trends the sheet says what is sure,
 // and where a better grade may be noise it says so and hollows the mark.
@@ -132,6 +89,19 @@ func TestReferralLetter(t *testing.T) {
 		}
 		insidePage(t, name, doc.PDF, false)
 	}
+}
+
+// TestLetterOfAFirstVisit: an animal without an earlier visit is compared with nothing.
+func TestLetterOfAFirstVisit(t *testing.T) {
+	in := patients()["first-visit"]
+	in.Notices = []Notice{{Urgency: Today, Words: "No urine for 14 h.", Plain: "p", Since: in.Visits[0].Examined}}
+	doc, err := Letter(in)
+	require.NoError(t, err)
+	text := textOf(t, doc.PDF)
+	assert.Contains(t, text, "Findings of the first visit, 2026-03-02")
+	assert.Contains(t, text, "Voluntary urination: 0")
+	assert.NotContains(t, text, "›")
+	assert.NotContains(t, text, "Compared with")
 }
 
 // TestClinicalWithoutAModel: for a species whose cord is not on record the paper says so.

@@ -14,26 +14,56 @@ import (
 	"time"
 
 	"cordwalk.example/cordwalk/assets/words"
+	"cordwalk.example/cordwalk/exam"
 )
 
 // recipient is to whom a paper goes: the owner, or for the clinical papers the treating
 // veterinarian.
-func recipient(in Input, d Document) string {
+func recipient(in Input, d Document) exam.Contact {
 	if d.Kind == KindSheet {
-		return in.Patient.Owner.Email
+		return in.Patient.Owner
 	}
-	return in.Patient.Veterinarian.Email
+	return in.Patient.Veterinarian
 }
 
-// MailText is the short text that goes with a paper, in the paper's language.
+// MailAddress is the e-mail address a paper goes to, empty where none is on file that can be
+// written to.
+func MailAddress(in Input, d Document) string {
+	a, err := mail.ParseAddress(strings.TrimSpace(recipient(in, d).Email))
+	if err != nil {
+		return ""
+	}
+	return a.Address
+}
+
+// MailText is the short text that goes with a paper, in the paper's language. It holds no
+// findings, those stand on the paper, but says to an owner what cannot wait.
 func MailText(in Input, d Document) string {
 	lang := in.lang()
 	day := dayWords(lang, in.last().Examined)
-	text := words.In(lang, "Attached is the sheet about %[1]s from the visit on %[2]s. Please call us with any question.", in.Patient.Name, day)
-	if d.Kind != KindSheet {
-		text = words.In(lang, "Attached are the findings of %[1]s from the visit on %[2]s. Please call us with any question.", in.Patient.Name, day)
+	var parts []string
+	if n := strings.TrimSpace(recipient(in, d).Name); n != "" {
+		parts = append(parts, words.In(lang, "Dear %s,", n))
 	}
-	return text + "\n\n" + strings.Join(nonEmpty(in.Practice.Name, in.Practice.Contact.Phone), "\n") + "\n"
+	if d.Kind != KindSheet {
+		parts = append(parts, words.In(lang, "Attached are the findings of %[1]s from the visit on %[2]s. Please call us with any question.", in.Patient.Name, day))
+	} else {
+		text := words.In(lang, "Attached is the sheet about %[1]s from the visit on %[2]s. Please call us with any question.", in.Patient.Name, day)
+		if next := in.last().NextVisit; next != "" {
+			text += " " + words.In(lang, "The next visit is on %s.", dateWords(lang, next))
+		}
+		parts = append(parts, text)
+		if list := in.urgent(); len(list) > 0 {
+			head := in.text(textTodayBox)
+			if list[0].Urgency == Now {
+				head = in.text(textNowBox)
+			}
+			parts = append(parts, head+colon(lang)+unbroken(in.Patient.Veterinarian.Phone)+"\n"+in.text(textUntilAgrees))
+		}
+		parts = append(parts, in.text(textSupport))
+	}
+	parts = append(parts, strings.Join(nonEmpty(in.Practice.Name, in.Practice.Contact.Phone), "\n"))
+	return strings.Join(parts, "\n\n") + "\n"
 }
 
 func nonEmpty(parts ...string) []string {
@@ -53,7 +83,7 @@ func nonEmpty(parts ...string) []string {
 // no recipient. The same input gives the same bytes.
 func Mail(in Input, d Document, to string) ([]byte, error) {
 	if to = strings.TrimSpace(to); to == "" {
-		to = strings.TrimSpace(recipient(in, d))
+		to = strings.TrimSpace(recipient(in, d).Email)
 	}
 	var address string
 	if to != "" {
@@ -123,11 +153,7 @@ func oneLine(s string) string { return strings.Join(strings.Fields(s), " ") }
 // paper. It cannot carry the paper: that is attached by hand, or taken from Mail.
 func MailURL(in Input, d Document) string {
 	q := "subject=" + mailEscape(oneLine(d.Subject)) + "&body=" + mailEscape(strings.ReplaceAll(MailText(in, d), "\n", "\r\n"))
-	to := ""
-	if a, err := mail.ParseAddress(recipient(in, d)); err == nil {
-		to = mailEscape(a.Address)
-	}
-	return "mailto:" + to + "?" + q
+	return "mailto:" + mailEscape(MailAddress(in, d)) + "?" + q
 }
 
 // mailEscape escapes as RFC 6068 asks: a space is %20, never +.

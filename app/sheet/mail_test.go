@@ -81,5 +81,15 @@ func TestMailURL(t *testing.T) {
 	require.NoError(t, err)
 	assert.Equal(t, "mara+dogs@example.org", to)
 	assert.Equal(t, doc.Subject, u.Query().Get("subject"))
-	assert.Contains(t, u.Query().Get("body"), "Attached is the sheet about Bruno")
+	body := u.Query().Get("body")
+	for _, want := range []string{"Dear Mara Lindqvist,\r\n", "Attached is the sheet about Bruno", "The next visit is on 11 May 2026.", "does not take the place of your veterinarian"} {
+		assert.Contains(t, body, want)
+	}
+	assert.NotContains(t, body, "leg", "no findings in a mail")
+
+	in = patients()["relapse"]
+	text := MailText(in, Document{Kind: KindSheet})
+	assert.Contains(t, text, "Call your vet now: +43\u00a01\u00a0555\u00a00123\nNo exercises until your veterinarian agrees.")
+	assert.NotContains(t, MailText(in, Document{Kind: KindLetter}), "No exercises")
+	assert.Contains(t, MailText(in, Document{Kind: KindLetter}), "Dear Dr Anselm Brook")
 }

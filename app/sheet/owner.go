@@ -2,6 +2,7 @@ package sheet
 
 import (
 	"bytes"
+	"errors"
 	"fmt"
 	"image"
 	_ "image/jpeg" // logos
@@ -27,6 +28,7 @@ type fit struct {
 	chart, body float64 // heights, points
 	exercises   int     // most lines of the home plan, 0: all
 	terse       bool    // the home plan without how and when to stop
+	dense       bool    // goals on one line, how an exercise is done below its boxes, a smaller margin below
 	how         int     // most lines of text of each exercise, 0: all
 	goals       int     // most goals, 0: all
 	summary     int     // most lines of the summary, 0: all
@@ -65,6 +67,10 @@ func fits(large bool, exercises int) []fit {
 		f.size = small
 		out = append(out, f)
 	}
+	for _, f := range tight[3:] {
+		f.size, f.dense, f.goals, f.how = small, true, 0, 0
+		out = append(out, f)
+	}
 	for _, s := range sizes { // names and boxes alone, as large as they go
 		out = append(out, fit{size: s, how: 1, goals: 1, summary: 3, noticeLines: 2, mostNotices: 2, body: 96, terse: true})
 	}
@@ -101,7 +107,7 @@ func Owner(in Input) (Document, error) {
 	chosen := ways[len(ways)-1]
 	for _, f := range ways {
 		p.dry = true
-		if o.write(p, f) <= h-p.margin*0.8 {
+		if o.write(p, f) <= f.end(h, p.margin) {
 			chosen = f
 			break
 		}
@@ -331,6 +337,14 @@ func (o *owner) write(p *page, f fit) float64 {
 	return p.y
 }
 
+// end is how far down the page a way may write.
+func (f fit) end(h, margin float64) float64 {
+	if f.dense {
+		return h - margin*0.55
+	}
+	return h - margin*0.8
+}
+
 func (o *owner) inner(p *page) (x, w float64) { return p.margin, p.w - 2*p.margin }
 
 // head writes the practice, the animal and the day.
@@ -394,17 +408,17 @@ func unbroken(s string) string { return strings.Join(strings.Fields(s), "\u00a0"
 // CheckLogo returns an error if a picture cannot stand in the heading of a paper.
 func CheckLogo(data []byte) error {
 	if len(data) > exam.MaxLogo {
-		return fmt.Errorf("the logo has %d KiB; at most %d are kept: save it smaller", len(data)>>10, exam.MaxLogo>>10)
+		return errors.New(words.T("the logo has %d KiB; at most %d are kept: save it smaller", len(data)>>10, exam.MaxLogo>>10))
 	}
 	cfg, _, err := image.DecodeConfig(bytes.NewReader(data))
 	if err != nil {
-		return fmt.Errorf("the logo is neither a PNG nor a JPEG picture: %w", err)
+		return errors.New(words.T("the logo is neither a PNG nor a JPEG picture"))
 	}
 	if cfg.Width < 1 || cfg.Height < 1 || cfg.Width > 4000 || cfg.Height > 4000 {
-		return fmt.Errorf("the logo is %d by %d dots; up to 4000 by 4000 are taken", cfg.Width, cfg.Height)
+		return errors.New(words.T("the logo is %d by %d dots; up to 4000 by 4000 are taken", cfg.Width, cfg.Height))
 	}
 	if _, _, err := image.Decode(bytes.NewReader(data)); err != nil {
-		return fmt.Errorf("the logo cannot be read to its end: %w", err)
+		return errors.New(words.T("the logo cannot be read to its end: save it again as PNG"))
 	}
 	return nil
 }
@@ -539,8 +553,25 @@ func (o *owner) picture(p *page, f fit) {
 		}
 		p.para(rx, rw, strings.Join(o.summary, " "), p.size*1.05, false, p.pal.Ink, o.mostSummary(f))
 	}
-	p.heading(rx, rw, in.text(textChanges))
-	o.seen(p, rx, rw, f)
+	seen := func(x, w float64) {
+		p.heading(x, w, in.text(textChanges))
+		o.seen(p, x, w, f)
+	}
+	// What was seen stands under the summary, or below the drawing where that takes less of the page.
+	short, dry := p.y, p.dry
+	p.dry = true
+	seen(rx, rw)
+	beside := math.Max(p.y, bottom)
+	p.y = math.Max(short, bottom)
+	seen(x, w)
+	below := p.y
+	p.dry, p.y = dry, short
+	if below < beside {
+		p.y = math.Max(short, bottom)
+		seen(x, w)
+		return
+	}
+	seen(rx, rw)
 	p.y = math.Max(p.y, bottom)
 }
 
@@ -729,6 +760,11 @@ func (o *owner) goals(p *page, f fit) {
 		return
 	}
 	p.y = top
+	if f.dense {
+		p.y += p.size * 0.3
+		p.line(x, w, in.text(textGoals), strings.Join(lines, "; "), 0)
+		return
+	}
 	p.heading(x, w, in.text(textGoals))
 	shown := lines
 	if f.goals > 0 && len(shown) > f.goals {
@@ -818,12 +854,12 @@ func (o *owner) homePlan(p *page, f fit) {
 			most = max(f.how, 2)
 		}
 		p.para(x, textW, head, p.size, true, p.pal.Ink, most)
-		if e.how != "" && !f.terse {
+		if e.how != "" && !f.terse && !f.dense {
 			how := wholeSentences(e.how, e.own, f.how, func(s string) int { return len(wrap(p.clean(s), textW, p.size*0.93, false, 0)) })
 			p.note(how)
 			p.para(x, textW, how, p.size*0.93, false, p.pal.Ink, f.how)
 		}
-		if e.stop != "" && !f.terse {
+		if e.stop != "" && !f.terse && !f.dense {
 			p.note(e.stop)
 			p.para(x, textW, e.stop, p.size*0.93, false, p.pal.Ink, 0)
 		}
@@ -841,6 +877,10 @@ func (o *owner) homePlan(p *page, f fit) {
 			}
 		}
 		p.y = math.Max(p.y, row+p.size*0.35+float64((e.times+perRow-1)/perRow)*side*1.25)
+		if below := strings.Join(nonEmpty(e.how, e.stop), " "); below != "" && f.dense {
+			p.note(below)
+			p.para(x, w, below, p.size*0.93, false, p.pal.Ink, 0)
+		}
 		p.y += p.size * 0.15
 		if i < len(shown)-1 && !p.dry {
 			p.colour(p.pal.Line)
@@ -905,8 +945,13 @@ func (o *owner) callBox(p *page) {
 			pw := width(phone, size, true)
 			p.put(tx, y, phone, size, true, p.pal.Ink)
 			if name := c.who.Name; name != "" {
+				// The name stands behind the number, or below it where it is long.
 				room := x + w - pad - (tx + pw + size)
-				p.put(tx+pw+size*0.7, y, chart.Fit(name, vg.Length(room), vg.Length(p.size), false), p.size, false, p.pal.Soft)
+				if width(p.clean(name), p.size, false) <= room {
+					p.put(tx+pw+size*0.7, y, name, p.size, false, p.pal.Soft)
+				} else {
+					p.para(x+pad+size, w-2*pad-size, name, p.size, false, p.pal.Soft, 2)
+				}
 			}
 		}
 		p.y += pad * 0.5

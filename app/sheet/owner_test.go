@@ -574,3 +574,29 @@ func TestAlwaysOnePage(t *testing.T) {
 		}
 	})
 }
+
+// TestPhrasesAsPeopleRewordThem: places stand as words, and come back as they were.
+func TestPhrasesAsPeopleRewordThem(t *testing.T) {
+	for _, lang := range words.Tags() {
+		for _, p := range Phrases(practice(), lang) {
+			shown := Marked(p.Key, p.Standard)
+			assert.NotContains(t, shown, "%")
+			back, err := Unmarked(p.Key, shown)
+			require.NoError(t, err, p.Key)
+			assert.Equal(t, places(p.Standard), places(back))
+			assert.Equal(t, Example(lang, p.Key, p.Standard), Example(lang, p.Key, back))
+			assert.NotContains(t, Example(lang, p.Key, back), "‹")
+			assert.Equal(t, EaseWords(lang, []string{Example(lang, p.Key, back)}), "reads easily", "%s %s", lang, Example(lang, p.Key, back))
+		}
+	}
+	for own, want := range map[string]string{
+		"Better since ‹day›.":                              "‹parts›",
+		"Better since ‹day› or ‹day›: ‹parts›.":            "‹day›",
+		"Better by 50 % since ‹day›: ‹parts›.":             "percent",
+		"Since ‹day›: ‹parts›." + strings.Repeat("!", 300): "letters",
+	} {
+		_, err := Unmarked("better", own)
+		assert.ErrorContains(t, err, want)
+	}
+	assert.Equal(t, "hard to read: use shorter words and sentences", EaseWords("en", []string{"Rehabilitation necessitates extraordinary perseverance considering neurological deterioration."}))
+}

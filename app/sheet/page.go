@@ -4,6 +4,7 @@ import (
 	"bytes"
 	"fmt"
 	"image/color"
+	"math"
 	"strings"
 	"sync"
 	"time"
@@ -189,11 +190,16 @@ func (p *page) rule(x, w float64) {
 	p.y += 3
 }
 
-// heading writes a section's heading with a rule under it.
+// heading writes a section's heading with a rule under it: what is too long for one line a little
+// smaller, or else on two.
 func (p *page) heading(x, w float64, s string) {
 	size := p.size * 1.15
-	p.y += lead(size) * 1.12
-	p.put(x, p.y-size*0.35, s, size, true, p.pal.Ink)
+	size *= math.Min(1, math.Max(0.85, w/math.Max(width(p.clean(s), size, true), 1)))
+	p.y += lead(size) * 0.12
+	for _, line := range wrap(p.clean(s), w+0.1, size, true, 2) {
+		p.y += lead(size)
+		p.put(x, p.y-size*0.35, line, size, true, p.pal.Ink)
+	}
 	if !p.dry {
 		p.colour(p.pal.Line)
 		p.doc.SetLineWidth(0.6)

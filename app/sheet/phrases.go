@@ -1,11 +1,13 @@
 package sheet
 
 import (
+	"errors"
 	"fmt"
 	"regexp"
 	"slices"
 	"strconv"
 	"strings"
+	"time"
 	"unicode/utf8"
 
 	"cordwalk.example/cordwalk/assets/words"
@@ -118,10 +120,101 @@ var callSigns = []string{
 
 // bank lists the phrases that a practice may reword, by the short names under which its
 // wording is kept. Names stay when an English text is mended.
-var bank = []struct{ key, text string }{
-	{"walks-alone", phraseWalksAlone}, {"walks-held", phraseWalksHeld}, {"no-steps", phraseNoSteps}, {"better", phraseBetter}, {"weaker", phraseWeaker},
-	{"same", phraseSame}, {"first", phraseFirst}, {"missed", phraseMissed}, {"unlike", phraseUnlike}, {"maybe", phraseMaybe}, {"gained", phraseGained},
-	{"lost", phraseLost}, {"kept", phraseKept}, {"unsure", phraseUnsure}, {"keep-on", phraseKeepOn}, {"no-home", phraseNoHome},
+var bank = []banked{
+	{"walks-alone", phraseWalksAlone, placeAnimal}, {"walks-held", phraseWalksHeld, placeAnimal}, {"no-steps", phraseNoSteps, placeAnimal},
+	{"better", phraseBetter, placeDay + placeParts}, {"weaker", phraseWeaker, placeDay + placeParts}, {"same", phraseSame, placeDay}, {"first", phraseFirst, ""},
+	{"missed", phraseMissed, placeParts}, {"unlike", phraseUnlike, ""}, {"maybe", phraseMaybe, placeDay + placeParts}, {"gained", phraseGained, placeDay + placeAnimal},
+	{"lost", phraseLost, placeDay + placeAnimal}, {"kept", phraseKept, placeDay + placeAnimal}, {"unsure", phraseUnsure, ""}, {"keep-on", phraseKeepOn, ""}, {"no-home", phraseNoHome, ""},
+}
+
+// banked is a phrase of the bank: its short name, its English text, and what its places are for, in
+// their order.
+type banked struct{ key, text, places string }
+
+// What is filled into a phrase.
+const (
+	placeAnimal = "a" // the animal's name
+	placeDay    = "d" // the day it is compared with
+	placeParts  = "p" // legs and other topics
+)
+
+// placeName is how a place is shown to people who reword a phrase, in the language in use.
+func placeName(place rune) string {
+	switch string(place) {
+	case placeAnimal:
+		return "‹" + words.T("animal") + "›"
+	case placeDay:
+		return "‹" + words.T("day") + "›"
+	}
+	return "‹" + words.T("parts") + "›"
+}
+
+// inBank finds a phrase by its short name.
+func inBank(key string) (banked, bool) {
+	i := slices.IndexFunc(bank, func(b banked) bool { return b.key == key })
+	if i < 0 {
+		return banked{}, false
+	}
+	return bank[i], true
+}
+
+// Marked writes a phrase for people to reword: its places as words in angle quotes, in the
+// language in use, such as «Today ‹animal› took steps only when held up.»
+func Marked(key, text string) string {
+	b, ok := inBank(key)
+	if !ok {
+		return text
+	}
+	n := 0
+	return placeMark.ReplaceAllStringFunc(text, func(m string) string {
+		n++
+		if x := placeMark.FindStringSubmatch(m)[2]; x != "" {
+			n, _ = strconv.Atoi(x)
+		}
+		if n < 1 || n > len(b.places) {
+			return m
+		}
+		return placeName(rune(b.places[n-1]))
+	})
+}
+
+// Unmarked is the inverse of Marked. The error says which places are missing or stand twice.
+func Unmarked(key, text string) (string, error) {
+	b, ok := inBank(key)
+	if !ok {
+		return "", noPhrase(key)
+	}
+	if strings.Contains(text, "%") {
+		return "", errors.New(words.T("leave the percent sign out: an owner's sheet holds no shares"))
+	}
+	for i, place := range b.places {
+		name := placeName(place)
+		if n := strings.Count(text, name); n != 1 {
+			return "", errors.New(words.T("keep %s, once: it is filled in on each sheet", name))
+		}
+		text = strings.Replace(text, name, fmt.Sprintf("%%[%d]s", i+1), 1)
+	}
+	return text, CheckPhrase(key, text)
+}
+
+// Example fills a phrase in with an invented animal, as it would stand on a sheet in a language.
+func Example(lang, key, text string) string {
+	b, ok := inBank(key)
+	if !ok || CheckPhrase(key, text) != nil {
+		return ""
+	}
+	args := make([]any, len(b.places))
+	for i, place := range b.places {
+		switch string(place) {
+		case placeAnimal:
+			args[i] = "Bruno"
+		case placeDay:
+			args[i] = dayWords(lang, time.Date(2026, time.March, 2, 0, 0, 0, 0, time.UTC))
+		default:
+			args[i] = words.OfIn(lang, wordHindLegs)
+		}
+	}
+	return fmt.Sprintf(text, args...)
 }
 
 // editable lists the phrases of the bank.
@@ -173,7 +266,7 @@ func SetPhrase(pr exam.Practice, key, lang, own string) (exam.Practice, error) {
 		if err := CheckPhrase(key, own); err != nil {
 			return pr, err
 		}
-	} else if !slices.ContainsFunc(bank, func(b struct{ key, text string }) bool { return b.key == key }) {
+	} else if _, ok := inBank(key); !ok {
 		return pr, noPhrase(key)
 	}
 	lang = baseTag(lang)
@@ -236,19 +329,17 @@ const maxPhrase = 300
 // CheckPhrase returns an error if a practice's own wording cannot stand for the phrase of a
 // short name: the places for names, days and lists must be the same.
 func CheckPhrase(key, own string) error {
-	for _, b := range bank {
-		if b.key != key {
-			continue
-		}
-		if !slices.Equal(places(own), places(b.text)) {
-			return fmt.Errorf("the wording %.80q does not keep the places of %q: use the same marks that begin with %%", own, b.text)
-		}
-		if n := utf8.RuneCountInString(own); n > maxPhrase {
-			return fmt.Errorf("the wording has %d letters; at most %d fit on a sheet", n, maxPhrase)
-		}
-		return nil
+	b, ok := inBank(key)
+	if !ok {
+		return noPhrase(key)
 	}
-	return noPhrase(key)
+	if !slices.Equal(places(own), places(b.text)) {
+		return fmt.Errorf("the wording %.80q does not keep the places of %q: use the same marks that begin with %%", own, b.text)
+	}
+	if n := utf8.RuneCountInString(own); n > maxPhrase {
+		return errors.New(words.T("the wording has %d letters; at most %d fit on a sheet", n, maxPhrase))
+	}
+	return nil
 }
 
 func noPhrase(key string) error {

@@ -3,6 +3,8 @@ package sheet
 import (
 	"strings"
 	"unicode"
+
+	"cordwalk.example/cordwalk/assets/words"
 )
 
 // Ease is how easily a text reads.
@@ -18,9 +20,15 @@ type Ease struct {
 // published measure is known for it. A line without an end mark is a sentence of its own;
 // figures and lone marks are no words.
 //
-// Measures: English, Flesch (J Appl Psychol 1948;32:221–33); German, Amstad (thesis,
-// Zürich 1978); French, Kandel & Moles (1958); Spanish, Fernández Huerta (1959); Dutch,
-// Douma (1960). The constants of all but the English one are from memory.
+// Measures: English, Flesch (J Appl Psychol 1948;32:221–33); German, Amstad (Wie verständlich
+// sind unsere Zeitungen?, thesis, Zürich 1978): 180 − words a sentence − 58.5 × syllables a word;
+// French, Kandel & Moles (Cahiers Études Radio-Télévision 1958;19:253–74): 207, 1.015 and 73.6;
+// Spanish, Fernández Huerta (Consigna 1959;214:29–32): 206.84, 1.02 and 60, with the mean number of
+// words a sentence as Law corrected it in 2011 (legible.es/blog/lecturabilidad-fernandez-huerta);
+// Dutch, Douma (De leesbaarheid van landbouwbladen, Wageningen 1960): 206.84, 0.93 and 77. The
+// constants agree with leichtlesbar.ch (German), legible.es (Spanish), the R package koRpus and the
+// table in github.com/Yoast/YoastSEO.js/issues/267 (all); titles and pages of the French and the
+// Dutch source are from memory.
 func Reading(lang string, lines []string) (Ease, bool) {
 	base, _, _ := strings.Cut(strings.ToLower(lang), "-")
 	var e Ease
@@ -64,11 +72,27 @@ func Reading(lang string, lines []string) (Ease, bool) {
 	case "es":
 		e.Measure, e.Score = "Fernández Huerta", 206.84-1.02*wordsEach-60*syllablesEach
 	case "nl":
-		e.Measure, e.Score = "Douma", 206.835-0.93*wordsEach-77*syllablesEach
+		e.Measure, e.Score = "Douma", 206.84-0.93*wordsEach-77*syllablesEach
 	default:
 		e.Measure, e.Score = "Flesch", 206.835-1.015*wordsEach-84.6*syllablesEach
 	}
 	return e, true
+}
+
+// EaseWords says how easily lines of text read, in the language in use; empty where no published
+// measure is known for their language. The steps are those of Flesch's table: 60 and more is plain
+// language, below 50 is difficult.
+func EaseWords(lang string, lines []string) string {
+	e, ok := Reading(lang, lines)
+	switch {
+	case !ok:
+		return ""
+	case e.Score >= 60:
+		return words.T("reads easily")
+	case e.Score >= 50:
+		return words.T("a little hard to read: try shorter words")
+	}
+	return words.T("hard to read: use shorter words and sentences")
 }
 
 // endings that add no syllable of their own in English.

@@ -5,6 +5,7 @@ import (
 	"regexp"
 	"slices"
 	"strings"
+	"sync"
 	"time"
 
 	"cordwalk.example/cordwalk/assets/words"
@@ -19,14 +20,14 @@ import (
 // form is one form of sentence. Its pattern finds the parts, the text puts them together
 // again and stands in the catalogue.
 type form struct {
-	pattern *regexp.Regexp
+	pattern func() *regexp.Regexp // made when first asked for: the program starts without them
 	text    string
 }
 
 func forms(list ...[2]string) []form {
 	out := make([]form, len(list))
 	for i, f := range list {
-		out[i] = form{regexp.MustCompile("^" + f[0] + "$"), f[1]}
+		out[i] = form{sync.OnceValue(func() *regexp.Regexp { return regexp.MustCompile("^" + f[0] + "$") }), f[1]}
 	}
 	return out
 }
@@ -110,11 +111,11 @@ func sayKeys() []string {
 	return out
 }
 
-// Say puts what an engine says in English into a language; the empty tag is the language in
-// use. Grades, items and places are said as everywhere else.
+// Say puts what an engine says in English into a language, and the keys of items and places into
+// words in English too; the empty tag is the language in use.
 func Say(lang, english string) string {
-	if english == "" || lang == "" && words.Language() == "en" || lang != "" && baseTag(lang) == "en" {
-		return english
+	if english == "" {
+		return ""
 	}
 	return decimalPoint.ReplaceAllStringFunc(say(lang, english, 0), func(s string) string { return words.Decimal(lang, s) })
 }
@@ -129,7 +130,7 @@ func say(lang, s string, depth int) string {
 		return t
 	}
 	fill := func(f form) (string, bool) {
-		m := f.pattern.FindStringSubmatch(s)
+		m := f.pattern().FindStringSubmatch(s)
 		if m == nil {
 			return "", false
 		}
@@ -178,7 +179,7 @@ func say(lang, s string, depth int) string {
 }
 
 func pieceAt(lang, s string, depth int) (string, bool) {
-	m := pieces[0].pattern.FindStringSubmatch(s)
+	m := pieces[0].pattern().FindStringSubmatch(s)
 	if m == nil {
 		return "", false
 	}

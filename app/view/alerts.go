@@ -17,6 +17,7 @@ type Alert struct {
 	Urgency  string    `json:"urgency"` // "now", "today" or "soon"
 	Title    string    `json:"title"`
 	Words    string    `json:"words"` // what was seen, why it matters, what to do
+	Brief    string    `json:"-"`     // what was seen and why it matters, for a paper that says days, urgency and who was told itself
 	Plain    string    `json:"plain"` // for the owner
 	Source   string    `json:"source"`
 	Visit    exam.ID   `json:"visit"` // the visit that raised it
@@ -54,7 +55,7 @@ func AlertsIn(lang string, p exam.Patient, visits []exam.Visit) []Alert {
 	var out []Alert
 	for _, f := range alert.Scan(p, visits, last) {
 		a := Alert{Rule: f.Rule, Seen: sheet.Say(lang, f.Seen), Urgency: f.Urgency.String(), Title: alertTitle(lang, f.Rule), Words: alertWords(lang, f),
-			Plain: plainAlert(lang, f), Source: f.Source, Visit: f.Visit, Since: f.From, Answered: !f.Open()}
+			Brief: alertBrief(lang, f), Plain: plainAlert(lang, f), Source: f.Source, Visit: f.Visit, Since: f.From, Answered: !f.Open()}
 		if a.Since.IsZero() {
 			a.Since = f.To
 		}
@@ -111,10 +112,7 @@ var plainAlerts = map[string]string{
 // alertWords says a flag in one short paragraph: what was seen, between which days and by
 // whom, why it matters and what to do.
 func alertWords(lang string, f alert.Flag) string {
-	seen := sheet.Say(lang, f.Seen)
-	if f.CannotRuleOut {
-		seen = words.In(lang, "Cannot rule out: %s", seen)
-	}
+	seen := alertSeen(lang, f)
 	to := string(exam.DayOf(f.To))
 	if f.From.IsZero() || f.From.Equal(f.To) {
 		seen = words.In(lang, "%[1]s, seen %[2]s", seen, to)
@@ -125,6 +123,19 @@ func alertWords(lang string, f alert.Flag) string {
 		seen += " (" + f.ToExaminer + ")"
 	}
 	return seen + ". " + words.OfIn(lang, f.Why) + " " + words.OfIn(lang, f.Do)
+}
+
+func alertSeen(lang string, f alert.Flag) string {
+	seen := sheet.Say(lang, f.Seen)
+	if f.CannotRuleOut {
+		return words.In(lang, "Cannot rule out: %s", seen)
+	}
+	return seen
+}
+
+// alertBrief is alertWords without the days and what to do.
+func alertBrief(lang string, f alert.Flag) string {
+	return capital(alertSeen(lang, f)) + ". " + words.OfIn(lang, f.Why)
 }
 
 func plainAlert(lang string, f alert.Flag) string {

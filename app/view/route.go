@@ -24,10 +24,11 @@ const (
 	ScreenChoices
 	ScreenHistory
 	ScreenFirstRun
+	ScreenPhrases
 	screenCount
 )
 
-var screenWords = [screenCount]string{"caseload", "exam", "compare", "course", "sheet", "devices", "patient", "settings", "outcomes", "choices", "history", "first-run"}
+var screenWords = [screenCount]string{"caseload", "exam", "compare", "course", "sheet", "devices", "patient", "settings", "outcomes", "choices", "history", "first-run", "phrases"}
 
 // String returns the screen's stable word.
 func (s Screen) String() string {

@@ -28,7 +28,7 @@ func SheetInput(pr exam.Practice, p exam.Patient, visits []exam.Visit, at time.T
 	}
 	in := sheet.Input{Practice: pr, Patient: p, Visits: slices.Clone(visits), At: at, Options: o}
 	for _, a := range AlertsIn(o.Lang, p, visits) {
-		n := sheet.Notice{Urgency: sheet.NextWorkingDay, Plain: a.Plain, Words: a.Words, Since: a.Since, Told: a.Told}
+		n := sheet.Notice{Urgency: sheet.NextWorkingDay, Plain: a.Plain, Words: a.Brief, Since: a.Since, Told: a.Told}
 		switch a.Urgency {
 		case "now":
 			n.Urgency = sheet.Now

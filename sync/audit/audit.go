@@ -62,14 +62,19 @@ type entry struct {
 
 const field = "did"
 
+// Edit is an entry as an edit, to be written in one action with what it tells of.
+func Edit(did Did, what string) (storage.Edit, error) {
+	v, err := cbor.Marshal(entry{did, what})
+	return storage.Edit{Kind: storage.Kind(change.KindAudit), Record: storage.NewID(), Field: field, Value: v}, err
+}
+
 // Write writes an entry. It is durable when it returns.
 func Write(ctx context.Context, s *storage.Store, examiner string, did Did, what string) error {
-	v, err := cbor.Marshal(entry{did, what})
+	e, err := Edit(did, what)
 	if err != nil {
 		return err
 	}
-	_, err = s.Apply(ctx, examiner, storage.Edit{Kind: storage.Kind(change.KindAudit), Record: storage.NewID(), Field: field, Value: v})
-	if err != nil {
+	if _, err = s.Apply(ctx, examiner, e); err != nil {
 		return fmt.Errorf("writing the audit entry: %w", err)
 	}
 	return nil
