@@ -26,10 +26,11 @@ type Weigher struct {
 	e      *Engine // its own, for entering findings only
 	groups []weighed
 
-	full     []int64  // sums by hypothesis
-	extra    []int64  // what a sum gains without the cells filled in a block
-	at       [4][]int // by part and site: the exam that its sums stand at
-	exam     int      // exams entered so far that differ from the one before
+	full     []int64 // sums by hypothesis
+	extra    []int64 // what a sum gains without the cells filled in a block
+	lateAt   []int   // by site: the exam that the sums of later weeks stand at
+	acuteAt  []int   // by site: the same for the first week
+	exam     int     // exams entered so far that differ from the one before
 	blocks   bool
 	changed  []int // groups that the last exam changed
 	occupied []int // groups with a tested cell
@@ -40,13 +41,10 @@ type Weigher struct {
 // chosen is the part of a model's tables that concerns some sites. It is only read.
 //
 // Hypotheses of the chosen sites lie site by site, the sound animal last; within a site those
-// of later weeks come first, then those of the first week, each by severity: first the few that Best looks at,
-// then the others. So a site has four parts: later weeks at the few and at the other severities, and the same for the first week.
+// of later weeks come first, by severity, then those of the first week, by severity.
 type chosen struct {
 	sites []int     // of Model.Sites
 	steps int       // of severity
-	few   int       // of them that Best looks at
-	place []int     // of each severity among a site's slots
 	prior []int64   // by hypothesis
 	from  []int32   // by site and slot: hypotheses from[s*slots+k] … from[s*slots+k+1]−1
 	mass  []float64 // by site and slot: their prior
@@ -103,7 +101,6 @@ type testedCell struct {
 // Weigher returns a weigher for some of Model.Sites.
 func (m *Model) Weigher(sites []int) *Weigher {
 	w := &chosen{sites: slices.Clone(sites), steps: m.steps(), told: make([]told, len(m.groups))}
-	w.place, w.few = fewFirst(w.steps)
 	all := m.Sites()
 	index := make([]int, len(m.sp.sites)) // of a site among the chosen, −1 where it is not wanted
 	for i := range index {
@@ -129,10 +126,7 @@ func (m *Model) Weigher(sites []int) *Weigher {
 		} else if at < 0 {
 			continue
 		}
-		slot := at * slots
-		if m.sp.sites[site].kind != NoLesion {
-			slot += w.place[severity]
-		}
+		slot := at*slots + severity
 		if m.timed[h] {
 			w.timed[at] = true
 			if m.acute[h] {
@@ -171,26 +165,6 @@ func (m *Model) Weigher(sites []int) *Weigher {
 	return w.weigher(m.reader())
 }
 
-// fewFirst orders severities: first four that are spread evenly, the whole loss among them, then the others.
-func fewFirst(steps int) (place []int, few int) {
-	place = make([]int, steps)
-	every := max(1, steps*3/10)
-	chosen := func(k int) bool { below := steps - 1 - k; return below%every == 0 && below/every < 4 }
-	for k := range place {
-		if chosen(k) {
-			place[k] = few
-			few++
-		}
-	}
-	for n, k := few, 0; k < steps; k++ {
-		if !chosen(k) {
-			place[k] = n
-			n++
-		}
-	}
-	return place, few
-}
-
 // Another returns a weigher for the same sites, which shares the tables of this one.
 func (w *Weigher) Another() *Weigher { return w.weigher(w.e.m.reader()) }
 
@@ -199,9 +173,7 @@ func (c *chosen) weigher(e *Engine) *Weigher {
 	_, w.weights = e.m.p.quadrature()
 	n := len(c.timed)
 	w.full, w.extra = make([]int64, len(c.prior)), make([]int64, len(c.prior))
-	for part := range w.at {
-		w.at[part] = make([]int, n)
-	}
+	w.lateAt, w.acuteAt = make([]int, n), make([]int, n)
 	w.groups = make([]weighed, len(c.told))
 	for gi := range w.groups {
 		x := &w.groups[gi]
@@ -239,127 +211,16 @@ func (w *Weigher) LogLikelihoods(x Exam, dst []float64) ([]float64, error) {
 // Some is LogLikelihoods for some of the weigher's sites, named by their position among them:
 // dst[i*(steps+1)+step] belongs to which[i].
 func (w *Weigher) Some(x Exam, which []int, dst []float64) ([]float64, error) {
-	if err := w.take(x); err != nil {
-		return nil, err
+	e := w.e
+	if x.Species != e.m.species {
+		return nil, &exam.Invalid{Field: "species", Value: x.Species.String(), Allowed: e.m.species.String() + " for this engine"}
 	}
+	m := e.m
 	size, slots := w.steps+1, w.slots()
 	if need := len(which) * size; cap(dst) < need {
 		dst = make([]float64, need)
 	} else {
 		dst = dst[:need]
-	}
-	t := w.terms(&x)
-	w.bring(len(w.sites), true, t.withAcute)
-	if w.blocks { // a fill that was not looked at shows what a sound animal shows
-		t.careless -= w.extra[w.from[len(w.sites)*slots]]
-	}
-	sound := w.value(len(w.sites)*slots, len(w.sites), &t)
-	for i, s := range which {
-		w.bring(s, true, t.withAcute)
-		dst[i*size] = sound
-		for k := range w.steps {
-			dst[i*size+k+1] = w.value(s*slots+w.place[k], s, &t)
-		}
-	}
-	return dst, nil
-}
-
-// Best returns for some of the weigher's sites how well each explains an exam at the best of a few severities: the
-// largest log-likelihood, dst[i] for which[i].
-func (w *Weigher) Best(x Exam, which []int, dst []float64) ([]float64, error) {
-	if err := w.take(x); err != nil {
-		return dst, err
-	}
-	slots := w.slots()
-	t := w.terms(&x)
-	if w.blocks {
-		w.bring(len(w.sites), true, t.withAcute)
-		t.careless -= w.extra[w.from[len(w.sites)*slots]]
-	}
-	dst = dst[:0]
-	for _, s := range which {
-		w.bring(s, false, t.withAcute)
-		best := w.value(s*slots, s, &t)
-		for k := 1; k < w.few; k++ {
-			best = max(best, w.value(s*slots+k, s, &t))
-		}
-		dst = append(dst, best)
-	}
-	return dst, nil
-}
-
-// terms are what an exam adds to the sums of later weeks and of the first one.
-type terms struct {
-	late, early        float64 // the exam's share of each, in units of the model's own
-	lateLog, earlyLog  int64
-	lookedAt, careless int64
-	withAcute          bool
-}
-
-func (w *Weigher) terms(x *Exam) terms {
-	m := w.e.m
-	acute := m.p.Acute
-	if x.OnsetDays > 0 {
-		acute = x.timing(m.p.Acute)
-	}
-	t := terms{late: (1 - acute) / (1 - m.p.Acute), early: acute / m.p.Acute, withAcute: acute > leastShare,
-		lookedAt: toLog(logOf(1 - m.p.Careless)), careless: toLog(logOf(m.p.Careless))}
-	t.lateLog, t.earlyLog = toLog(logOf(t.late)), toLog(logOf(t.early))
-	return t
-}
-
-// value returns the log-likelihood of a slot of later weeks with its slot of the first.
-func (w *Weigher) value(slot, site int, t *terms) float64 {
-	const none = -1 << 62
-	mass, shift := w.mass[slot], int64(0)
-	if w.timed[site] {
-		mass *= t.late
-		shift = t.lateLog
-	}
-	if t.withAcute {
-		mass += float64(w.mass[slot+w.steps] * t.early)
-	}
-	best, total := int64(none), uint64(0)
-	for pass := range 2 {
-		for part := range 2 {
-			s, shift := slot, shift
-			if part == 1 {
-				if !t.withAcute {
-					break
-				}
-				s, shift = slot+w.steps, t.earlyLog
-			}
-			for i := w.from[s]; i < w.from[s+1]; i++ {
-				l := w.prior[i] + w.full[i] + shift
-				if !w.blocks {
-					if pass == 0 {
-						best = max(best, l)
-					} else {
-						total += weight(l - best)
-					}
-					continue
-				}
-				looked, not := l+t.lookedAt, l+w.extra[i]+t.careless
-				if pass == 0 {
-					best = max(best, looked, not)
-				} else {
-					total += weight(looked-best) + weight(not-best)
-				}
-			}
-		}
-	}
-	if total == 0 || mass <= 0 {
-		return -700
-	}
-	const unit = float64(1 << weightBits)
-	return fromLog(best) + logOf(float64(total)/unit) - logOf(mass)
-}
-
-// take takes an exam in.
-func (w *Weigher) take(x Exam) error {
-	e := w.e
-	if x.Species != e.m.species {
-		return &exam.Invalid{Field: "species", Value: x.Species.String(), Allowed: e.m.species.String() + " for this engine"}
 	}
 	for i := range e.obs {
 		e.clear(i)
@@ -369,7 +230,74 @@ func (w *Weigher) take(x Exam) error {
 	}
 	e.bendFor(&x)
 	w.enter()
-	return nil
+
+	acute := m.p.Acute
+	if x.OnsetDays > 0 {
+		acute = x.timing(m.p.Acute)
+	}
+	withAcute := acute > leastShare
+	late, early := (1-acute)/(1-m.p.Acute), acute/m.p.Acute
+	lateLog, earlyLog := toLog(logOf(late)), toLog(logOf(early))
+	lookedAt, careless := toLog(logOf(1-m.p.Careless)), toLog(logOf(m.p.Careless))
+	value := func(site, severity int) float64 {
+		const none = -1 << 62
+		slot := site*slots + severity
+		mass, shift := w.mass[slot], int64(0)
+		if w.timed[site] {
+			mass *= late
+			shift = lateLog
+		}
+		if withAcute {
+			mass += float64(w.mass[slot+w.steps] * early)
+		}
+		best, total := int64(none), uint64(0)
+		for pass := range 2 {
+			for part := range 2 {
+				s, shift := slot, shift
+				if part == 1 {
+					if !withAcute {
+						break
+					}
+					s, shift = slot+w.steps, earlyLog
+				}
+				for i := w.from[s]; i < w.from[s+1]; i++ {
+					l := w.prior[i] + w.full[i] + shift
+					if !w.blocks {
+						if pass == 0 {
+							best = max(best, l)
+						} else {
+							total += weight(l - best)
+						}
+						continue
+					}
+					looked, not := l+lookedAt, l+w.extra[i]+careless
+					if pass == 0 {
+						best = max(best, looked, not)
+					} else {
+						total += weight(looked-best) + weight(not-best)
+					}
+				}
+			}
+		}
+		if total == 0 || mass <= 0 {
+			return -700
+		}
+		const unit = float64(1 << weightBits)
+		return fromLog(best) + logOf(float64(total)/unit) - logOf(mass)
+	}
+	w.bring(len(w.sites), withAcute)
+	if w.blocks { // a fill that was not looked at shows what a sound animal shows
+		careless -= w.extra[w.from[len(w.sites)*slots]]
+	}
+	sound := value(len(w.sites), 0)
+	for i, s := range which {
+		w.bring(s, withAcute)
+		dst[i*size] = sound
+		for k := range w.steps {
+			dst[i*size+k+1] = value(s, k)
+		}
+	}
+	return dst, nil
 }
 
 // enter takes the engine's findings in, group by group.
@@ -428,8 +356,8 @@ func (w *Weigher) enter() {
 }
 
 // bring brings a site's sums up to this exam: by what changed where they stood at the exam
-// before, afresh where they did not. all asks for every severity, else for the few.
-func (w *Weigher) bring(site int, all, withAcute bool) {
+// before, afresh where they did not.
+func (w *Weigher) bring(site int, withAcute bool) {
 	one := func(at *int, from, to int32) {
 		switch *at {
 		case w.exam:
@@ -481,15 +409,10 @@ func (w *Weigher) bring(site int, all, withAcute bool) {
 		}
 		*at = w.exam
 	}
-	f := w.from[site*w.slots():]
-	for part, from := range [...]int{0, w.few, w.steps, w.steps + w.few} {
-		to := from + w.few
-		if part%2 == 1 {
-			to += w.steps - 2*w.few
-		}
-		if (all || part%2 == 0) && (withAcute || part < 2) {
-			one(&w.at[part][site], f[from], f[to])
-		}
+	f, slots := w.from[site*w.slots():], w.slots()
+	one(&w.lateAt[site], f[0], f[w.steps])
+	if withAcute {
+		one(&w.acuteAt[site], f[w.steps], f[slots])
 	}
 }
 
@@ -612,7 +535,7 @@ func (w *Weigher) Marginal(k exam.Key) (out []float64, categories int) {
 		copy(out[i*size*cats:], sound)
 		for v := range w.steps {
 			at := (i*size + v + 1) * cats
-			slot(i*slots+w.place[v], out[at:at+cats])
+			slot(i*slots+v, out[at:at+cats])
 		}
 	}
 	return out, cats

@@ -339,7 +339,8 @@ func (s *localised) Candidates(v exam.Visit, carried []int, wide bool) []int {
 		return s.all
 	}
 	const clearly = 1.0 // e = 2.7 : 1
-	ll, err := s.weigher.Best(localise.OfVisit(s.patient, v), s.watch, s.steps)
+	n := len(knotSteps)
+	ll, err := s.weigher.Some(localise.OfVisit(s.patient, v), s.watch, s.steps)
 	s.steps = ll
 	if err != nil {
 		return s.watch
@@ -348,15 +349,16 @@ func (s *localised) Candidates(v exam.Visit, carried []int, wide bool) []int {
 	for _, c := range carried {
 		open[s.sites[c].Class] = true
 	}
+	// Step 0, the sound animal, is the same everywhere.
 	explained := math.Inf(-1)
 	for i, w := range s.watch {
 		if open[s.sites[w].Class] {
-			explained = math.Max(explained, ll[i])
+			explained = math.Max(explained, slices.Max(ll[i*n+1:(i+1)*n]))
 		}
 	}
 	out := slices.Clone(s.watch)
 	for i, w := range s.watch {
-		if !open[s.sites[w].Class] && ll[i] > explained+clearly {
+		if !open[s.sites[w].Class] && slices.Max(ll[i*n+1:(i+1)*n]) > explained+clearly {
 			out = append(out, s.class[s.sites[w].Class]...)
 		}
 	}
