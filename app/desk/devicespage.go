@@ -193,14 +193,16 @@ func (p *devicesPage) build() {
 	case p.share == nil && !p.founded():
 		parts = append(parts, p.found())
 	case p.share != nil:
-		parts = append(parts, p.exchange(), p.hub(), p.devices())
+		parts = append(parts, p.exchange(), p.devices())
 		if x := p.setApart(); x != nil {
 			parts = append(parts, x)
 		}
-		parts = append(parts, p.backups())
 	}
 	if x := p.choices(); x != nil {
 		parts = append(parts, x)
+	}
+	if p.share != nil && !p.win.app.practice.Demo {
+		parts = append(parts, p.hub(), p.backups())
 	}
 	p.body.SetContent(mark.AtMost(860, mark.Column(look.Unit*3, parts...)))
 }
@@ -305,10 +307,11 @@ func (p *devicesPage) devices() fyne.CanvasObject {
 	for _, x := range p.seen {
 		d := x.Device
 		row := []fyne.CanvasObject{mark.NewPara(d.Name).Strong(), mark.Column(2, p.known(x)...)}
+		last := fyne.CanvasObject(mark.Space(1, 1))
 		if d.Member() && !x.This {
-			row = append(row, mark.NewButton(words.T("Remove"), "close", func() { p.askRemove(d) }).As(mark.Quiet))
+			last = mark.NewButton(words.T("Remove"), "close", func() { p.askRemove(d) }).As(mark.Quiet)
 		}
-		lines = append(lines, mark.RowTop(look.Unit, []float32{1, 2.4, 0}, row...), mark.Rule())
+		lines = append(lines, mark.RowTop(look.Unit, []float32{1, 2, 0.6}, append(row, last)...), mark.Rule())
 	}
 	lines = append(lines, p.contested()...)
 	if n := len(p.share.Damaged()); n > 0 {

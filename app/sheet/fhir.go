@@ -22,9 +22,11 @@ import (
 // back without loss. Mapped: the animal (with the patient-animal extension), its people as
 // contacts, problems as Condition, precautions as Flag, goals as Goal, medicines as
 // MedicationStatement; each visit as Encounter with Provenance, findings and measures as
-// Observation (UCUM units), treatments as Procedure, the home programme as CarePlan, papers
-// as DiagnosticReport. Not mapped: the weight series, which the measures hold, and the
-// history of changes, which only the records format carries.
+// Observation (UCUM units; the weights of all visits are the weight series, in kg), treatments
+// and sessions of stimulation as Procedure, its tests and answers as Observation, photos and
+// clips as Media without their bytes, the home programme as CarePlan, papers as
+// DiagnosticReport. Not mapped: the record of what was sent, and the history of changes, which
+// only the records format carries.
 const fhirBase = "https://cordwalk.example/fhir/"
 
 // The code systems in use that are HL7's own.
@@ -154,6 +156,7 @@ type fhirResource struct {
 	Dosage         []fhirName     `json:"dosage,omitempty"`
 	ValueConcept   *fhirConcept   `json:"valueCodeableConcept,omitempty"`
 	ValueQuantity  *fhirQuantity  `json:"valueQuantity,omitempty"`
+	ValueText      string         `json:"valueString,omitempty"`
 	Absent         *fhirConcept   `json:"dataAbsentReason,omitempty"`
 	Interpretation []fhirConcept  `json:"interpretation,omitempty"`
 	Note           []fhirNote     `json:"note,omitempty"`
@@ -163,7 +166,19 @@ type fhirResource struct {
 	Recorded       string         `json:"recorded,omitempty"`
 	Agent          []fhirAgent    `json:"agent,omitempty"`
 	Presented      []fhirFile     `json:"presentedForm,omitempty"`
+	Created        string         `json:"createdDateTime,omitempty"`
+	Content        *fhirMedia     `json:"content,omitempty"`
 }
+
+// fhirMedia says what a photo or clip is; its bytes stay sealed in the practice.
+type fhirMedia struct {
+	ContentType string `json:"contentType,omitempty"`
+	Size        int64  `json:"size,omitempty"`
+	Title       string `json:"title,omitempty"`
+}
+
+// mediaTypes are the media types of the formats of attachments (IANA; QuickTime from memory).
+var mediaTypes = map[string]string{"jpeg": "image/jpeg", "png": "image/png", "mp4": "video/mp4", "mov": "video/quicktime", "webm": "video/webm"}
 
 type fhirIdent struct {
 	System string `json:"system,omitempty"`
@@ -529,6 +544,22 @@ func (w *fhirWriter) visit(p exam.Patient, v exam.Visit) {
 		}
 		w.add(derived(v.ID, "treatment "+strconv.Itoa(i)), r)
 	}
+	for i, x := range v.Stim {
+		r := shared
+		r.Code = code("stimulation", x.Kind, "")
+		r.Extension = original(x.ID)
+		if x.Kind == stimSession {
+			r = fhirResource{ResourceType: "Procedure", Status: "completed", Code: r.Code, Subject: ref(p.ID), Encounter: ref(v.ID), Performed: stamp(v.Examined),
+				Extension: slices.Concat(str("data", x.Data), original(x.ID))}
+		} else {
+			r.Category, r.ValueText = category("procedure"), x.Data
+		}
+		w.add(derived(v.ID, "stimulation "+strconv.Itoa(i)), r)
+	}
+	for i, x := range v.Attachments {
+		w.add(derived(v.ID, "attachment "+strconv.Itoa(i)), fhirResource{ResourceType: "Media", Status: "completed", Subject: ref(p.ID), Encounter: ref(v.ID), Created: stamp(v.Examined), Note: note(x.Note),
+			Content: &fhirMedia{ContentType: mediaTypes[x.Format], Size: x.Size, Title: x.Name}, Extension: slices.Concat(str("format", x.Format), original(x.ID))})
+	}
 	if len(v.Home) > 0 {
 		plan := fhirResource{ResourceType: "CarePlan", Status: "active", Intent: "plan", Subject: ref(p.ID), Encounter: ref(v.ID)}
 		for _, h := range v.Home {
@@ -543,6 +574,9 @@ func (w *fhirWriter) visit(p exam.Patient, v exam.Visit) {
 	}
 	w.add(derived(v.ID, "provenance"), fhirResource{ResourceType: "Provenance", GoalTarget: []fhirTarget{{Reference: "urn:uuid:" + v.ID.String()}}, Recorded: stamp(recorded), Agent: []fhirAgent{{fhirRef{Display: v.Examiner}}}})
 }
+
+// stimSession is the kind of a stimulation record that was a treatment.
+const stimSession = "session"
 
 func original2(name string, id exam.ID) []fhirExt {
 	if id.IsZero() {
@@ -743,7 +777,7 @@ func (r *fhirReader) take(pass int, url string, x *fhirIn) error {
 			}
 			r.about(a, x)
 		}
-	case "Observation", "Procedure", "CarePlan":
+	case "Observation", "Procedure", "Media", "CarePlan":
 		if pass == 2 {
 			v := r.visits[deref(x.Encounter).Reference]
 			if v == nil {
@@ -934,8 +968,23 @@ func (r *fhirReader) during(v *exam.Visit, x *fhirIn) error {
 		if m := x.Code.codeOf("measure"); m != "" {
 			return r.measured(v, x, m)
 		}
+		if k := x.Code.codeOf("stimulation"); k != "" {
+			v.Stim = append(v.Stim, exam.StimRecord{ID: x.ext("id").id(), Kind: k, Data: x.ValueText})
+			return nil
+		}
 		r.leave("Observation that is no item or measure of this program")
+	case "Media":
+		m := deref(x.Content)
+		if x.ext("format").text() == "" {
+			r.leave("Media that is no photo or clip of this program")
+			return nil
+		}
+		v.Attachments = append(v.Attachments, exam.Attachment{ID: x.ext("id").id(), Name: m.Title, Format: x.ext("format").text(), Size: m.Size, Note: noteText(x.Note)})
 	case "Procedure":
+		if k := x.Code.codeOf("stimulation"); k != "" {
+			v.Stim = append(v.Stim, exam.StimRecord{ID: x.ext("id").id(), Kind: k, Data: x.ext("data").text()})
+			return nil
+		}
 		t := exam.Treatment{ID: x.ext("id").id(), Kind: x.Code.codeOf("treatment"), Params: x.ext("params").text(), Minutes: x.ext("minutes").number(), Override: x.ext("override").text()}
 		if t.Kind == "" {
 			r.leave("Procedure that is no treatment of this program")

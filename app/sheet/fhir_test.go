@@ -64,13 +64,10 @@ func validFHIR(data []byte) error {
 	return whole
 }
 
-// mapped is what of an animal a bundle carries: all but the weight series, the record of
-// what was sent, and the photos, clips and stimulation of its visits.
+// mapped is what of an animal a bundle carries: all but the record of what was sent. The weights of
+// a patient are derived from those of the visits, which a bundle holds.
 func mapped(a Animal) Animal {
 	a.Patient.Weights, a.Patient.Sent = nil, nil
-	for i := range a.Visits {
-		a.Visits[i].Attachments, a.Visits[i].Stim = nil, nil
-	}
 	return a
 }
 

@@ -130,7 +130,7 @@ func anyVisit(t *rapid.T, s exam.Species, patient exam.ID) exam.Visit {
 		v.Home = []exam.HomeExercise{{ID: anyID(t), Kind: "walk", How: anyText(t, "how"), Times: 3, DaysWeek: 5, Amount: anyText(t, "amount"), StopFor: anyText(t, "stop"), Override: anyText(t, "o")}}
 		v.Report = exam.OwnerReport{Falls: anyText(t, "falls"), Urine: anyText(t, "urine"), Appetite: anyText(t, "appetite"), ExercisesDone: 3, ExercisesSet: 5, Words: anyText(t, "words")}
 		v.Attachments = []exam.Attachment{{ID: anyID(t), Name: "00ff.att", Format: "jpeg", Size: rapid.Int64Range(1, 1<<27).Draw(t, "size"), Note: anyText(t, "shows")}}
-		v.Stim = []exam.StimRecord{{ID: anyID(t), Kind: "test", Data: `{"muscle":"quadriceps"}`}}
+		v.Stim = []exam.StimRecord{{ID: anyID(t), Kind: "test", Data: `{"muscle":"quadriceps"}`}, {ID: anyID(t), Kind: "session", Data: `{"minutes":12}`}}
 		v.Answers = []exam.Acknowledgement{{Rule: "r", Told: anyText(t, "told"), Note: anyText(t, "n"), Examiner: "e", At: anyTime(t)}}
 	}
 	return v

@@ -98,6 +98,8 @@ var sayTerms = []string{
 	"junction", "reflexes kept", "reflexes lost", "muscle", "stifle", "joints of the pelvic limb", "joints of the thoracic limb", "calcanean tendon", "carpal support",
 	"trigeminal", "facial", "oculomotor", "optic", "vagus or recurrent laryngeal", "hypoglossal", "sympathetic trunk", "below the elbow's extensors",
 	"whole animal", "ranks 0–5 for 0", "all limbs", "one limb", "four limbs", "stronger", "weaker", "better", "worse", "about the same", "no plateau can be named", "no relapse seen",
+	"fewer than three visits: forecasts rest mostly on what is usual", "the model cannot tell this item", "the goal names no item and site of the exam", "this has not been measured yet",
+	"too few values to look ahead: four over at least two weeks are needed", "its date lies further ahead than the values so far reach back",
 	"not tested", "not known before", "absent throughout", "not scored", "a seizure since last visit",
 	"Test it today, or tell the veterinarian that it was not tested.", "Call the veterinarian before the animal leaves the room.", "Call the veterinarian today.", "Tell the veterinarian on the next working day.",
 }

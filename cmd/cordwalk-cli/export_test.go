@@ -7,6 +7,8 @@ import (
 	"io"
 	"os"
 	"path/filepath"
+	"regexp"
+	"strings"
 	"testing"
 
 	"cordwalk.example/cordwalk/app/sheet"
@@ -49,5 +51,41 @@ func TestCancelledExportLeavesNothing(t *testing.T) {
 	}
 	if data, err := os.ReadFile(name); err != nil || !bytes.Equal(data, []byte("before")) {
 		t.Errorf("the file that was there is %q, %v", data, err)
+	}
+}
+
+// TestRecordsGoRoundByTheCommand: what one practice exports and another imports is exported again as
+// the same bytes, with ids, history and times, but for the moment it was made.
+func TestRecordsGoRoundByTheCommand(t *testing.T) {
+	dir := t.TempDir()
+	do := func(args ...string) {
+		t.Helper()
+		var said bytes.Buffer
+		if code := run(context.Background(), args, strings.NewReader(""), io.Discard, &said); code != 0 {
+			t.Fatalf("%q ends with %d: %s", args, code, said.String())
+		}
+	}
+	file := func(name string) string { return filepath.Join(dir, name) }
+	do("--store", file("s"), "demo")
+	do("--store", file("s"), "export", "json", "-o", file("first.json"))
+	do("--store", file("t"), "--no-passphrase", "import", file("first.json"))
+	do("--store", file("t"), "export", "json", "-o", file("second.json"))
+	read := func(name string) string {
+		data, err := os.ReadFile(file(name))
+		if err != nil {
+			t.Fatal(err)
+		}
+		return regexp.MustCompile(`(?m)^ "made": .*$`).ReplaceAllString(string(data), "")
+	}
+	first, second := read("first.json"), read("second.json")
+	if first != second {
+		at := 0
+		for at < min(len(first), len(second)) && first[at] == second[at] {
+			at++
+		}
+		t.Errorf("the files differ at byte %d: …%.80s…, …%.80s…", at, first[at:], second[at:])
+	}
+	if !strings.Contains(first, `"changes": [`) {
+		t.Error("the history is missing")
 	}
 }

@@ -9,8 +9,6 @@ import (
 	"cordwalk.example/cordwalk/app/view"
 	"cordwalk.example/cordwalk/assets/words"
 	"cordwalk.example/cordwalk/exam"
-	"cordwalk.example/cordwalk/exam/progress/repeat"
-	"cordwalk.example/cordwalk/exam/scale"
 	"cordwalk.example/cordwalk/storage"
 )
 
@@ -180,56 +178,32 @@ type repeatJSON struct {
 	Needed       int      `json:"pairs_needed"`
 }
 
-// Repeatability is what the practice's own repeat exams say.
-func repeatability(cases []view.CaseHistory) repeat.Practice {
-	var pairs []repeat.Pair
-	for _, c := range cases {
-		pairs = append(pairs, repeat.RepeatPairs(c.Visits)...)
-	}
-	return repeat.Learn(pairs, func(v exam.Visit) map[string]float64 {
-		out := map[string]float64{}
-		for _, x := range scale.All(v) {
-			if level, ok := x.Known(); ok {
-				out[x.Scale.String()+x.Site.String()] = level
-			}
-		}
-		return out
-	})
-}
-
 func (c *repeatCmd) Run(e *env) error {
 	return e.with(func(s *storage.Store) error {
 		cases, err := e.histories(s)
 		if err != nil {
 			return err
 		}
-		rows := repeatability(cases).Rows()
+		own := view.Repeatability(cases)
 		if e.c.JSON {
 			out := struct {
 				Rows []repeatJSON `json:"rows"`
 			}{[]repeatJSON{}}
-			for _, r := range rows {
+			for _, r := range own.Rows() {
 				out.Rows = append(out.Rows, repeatJSON{r.Quantity.String(), r.SameExaminer, r.Pairs, r.Animals, known(r.Exact), known(r.Kappa.Kappa),
 					known(r.ICC), known(r.Repeats.SEM), known(r.Repeats.MDC95), r.Used, r.Needed})
 			}
 			return e.printJSON(out)
 		}
 		e.protection(s)
+		rows := view.RepeatRows(own)
 		if len(rows) == 0 {
 			e.say("%s", words.T("No repeat exam yet: the same animal, the same day, a second time or a second examiner. Published figures are used."))
 			return nil
 		}
 		w := tabwriter.NewWriter(e.out, 0, 4, 2, ' ', 0)
 		for _, r := range rows {
-			who := words.T("two examiners")
-			if r.SameExaminer {
-				who = words.T("one examiner")
-			}
-			used := words.N(r.Needed, "%d more pair until it is used", "%d more pairs until it is used", r.Needed)
-			if r.Used {
-				used = words.T("in use")
-			}
-			fmt.Fprintf(w, "%s\t%s\t%s\t%s\n", r.Quantity.String(), who, words.N(r.Pairs, "%d pair", "%d pairs", r.Pairs), used)
+			fmt.Fprintf(w, "%s\t%s\t%s\t%s\t%s\t%s\n", r.Quantity, r.Who, r.Pairs, r.Agree, r.Noise, r.Used)
 		}
 		return w.Flush()
 	})

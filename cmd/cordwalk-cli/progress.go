@@ -2,10 +2,12 @@ package main
 
 import (
 	"fmt"
+	"math"
 	"strconv"
 	"strings"
 	"time"
 
+	"cordwalk.example/cordwalk/app/sheet"
 	"cordwalk.example/cordwalk/app/view"
 	"cordwalk.example/cordwalk/assets/words"
 	"cordwalk.example/cordwalk/exam"
@@ -48,7 +50,7 @@ func (c *progressCmd) Run(e *env) error {
 			return fmt.Errorf("%s", words.T("%s holds no exam", c.Series))
 		}
 		p, visits := view.OfSeries(files)
-		return e.progressOf(p, visits, since, warnings)
+		return e.progressOf(p, visits, progress.Options{}, since, warnings)
 	}
 	return e.with(func(s *storage.Store) error {
 		r, err := e.patient(s, c.Patient)
@@ -61,7 +63,11 @@ func (c *progressCmd) Run(e *env) error {
 		if !e.c.JSON {
 			e.protection(s)
 		}
-		return e.progressOf(r.Patient, r.Visits, since, gaps(r))
+		cases, err := e.histories(s)
+		if err != nil {
+			return err
+		}
+		return e.progressOf(r.Patient, r.Visits, progress.Options{Practice: view.Repeatability(cases)}, since, gaps(r))
 	})
 }
 
@@ -123,8 +129,7 @@ func (e *env) scoreTable(p exam.Patient, visits []exam.Visit) {
 }
 
 // progressOf prints the course of an animal.
-func (e *env) progressOf(p exam.Patient, visits []exam.Visit, since exam.Date, warnings []string) error {
-	var o progress.Options
+func (e *env) progressOf(p exam.Patient, visits []exam.Visit, o progress.Options, since exam.Date, warnings []string) error {
 	if t, ok := since.Time(); ok {
 		o.Since = time.Date(t.Year(), t.Month(), t.Day(), 0, 0, 0, 0, visits[len(visits)-1].Examined.Location())
 	}
@@ -154,29 +159,32 @@ func (e *env) progressOf(p exam.Patient, visits []exam.Visit, since exam.Date, w
 		return e.printLarge(res)
 	}
 	for _, n := range res.Notes {
-		e.say("%s", words.T("Note: %s", n))
+		e.say("%s", words.T("Note: %s", sheet.Say("", n)))
 	}
 	for _, a := range res.Alerts {
-		e.say("%s %s", view.UrgencyWords(a.Urgency), a.Words)
+		e.say("%s %s", view.UrgencyWords(a.Urgency), sheet.Say("", a.Words))
 	}
-	if res.Change != nil {
-		e.say("%s", res.Change.Words)
+	if s := view.Sentence(res); s != "" {
+		e.say("%s", s)
 	}
 	for _, l := range res.Limbs {
 		if l.Change != nil {
-			e.say("  %s", l.Change.Words)
+			e.say("  %s", sheet.Say("", l.Change.Words))
 		}
 	}
 	if res.Plateau != nil && res.Plateau.Named {
-		e.say("%s", res.Plateau.Words)
+		e.say("%s", sheet.Say("", res.Plateau.Words))
 	}
 	if res.Relapse != nil && res.Relapse.Probability > 0.5 {
-		e.say("%s", res.Relapse.Words)
+		e.say("%s", sheet.Say("", res.Relapse.Words))
 	}
 	for _, g := range res.Goals {
-		chance := g.Why
+		chance := sheet.Say("", g.Why)
 		if g.Probability != nil {
 			chance = percent(*g.Probability)
+		}
+		if r := g.Reading; r != nil {
+			chance = words.T("%[1]s (a straight line through the values says %[2]s to %[3]s)", chance, figure(r.Low), figure(r.High))
 		}
 		e.say("  %s", words.T("Goal %q, by %s: %s", g.Words, view.DateWords(exam.Date(g.By)), chance))
 	}
@@ -192,16 +200,28 @@ func (e *env) progressOf(p exam.Patient, visits []exam.Visit, since exam.Date, w
 		if len(s.Points) == 0 {
 			continue
 		}
-		last := s.Points[len(s.Points)-1]
+		last, name := s.Points[len(s.Points)-1], words.Of(s.Name)
+		if site, err := exam.ParseSite(s.Site); err == nil && site != exam.NoSite {
+			name += ", " + view.SiteName(site)
+		}
+		missing := make([]string, len(last.Missing))
+		for i, m := range last.Missing {
+			missing[i] = sheet.Say("", m)
+		}
 		switch {
 		case last.Value != nil:
-			e.say("%s", words.T("%s: %s", s.Name, strconv.FormatFloat(*last.Value, 'g', -1, 64)))
+			e.say("%s", words.T("%s: %s", name, figure(*last.Value)))
 		case last.Low != nil && last.High != nil:
-			e.say("%s", words.T("%s: %s to %s, missing: %s", s.Name, strconv.FormatFloat(*last.Low, 'g', -1, 64), strconv.FormatFloat(*last.High, 'g', -1, 64), strings.Join(last.Missing, ", ")))
+			e.say("%s", words.T("%s: %s to %s, missing: %s", name, figure(*last.Low), figure(*last.High), strings.Join(missing, ", ")))
 		}
 	}
 	e.say("%s", words.T("This supports and never replaces the veterinarian."))
 	return nil
+}
+
+// figure writes a number with at most two decimals, in the language in use.
+func figure(x float64) string {
+	return words.Decimal("", strconv.FormatFloat(math.Round(100*x)/100, 'f', -1, 64))
 }
 
 // functionTable prints the model's function of the limbs over the visits, with today's band.
@@ -211,11 +231,15 @@ func (e *env) functionTable(r progress.Result) {
 	}
 	e.say("%s", words.T("Function of the limbs by the model in percent, today's with its 90-percent band:"))
 	for _, l := range r.Limbs {
+		name := l.Limb
+		if site, err := exam.ParseSite(l.Limb); err == nil {
+			name = view.SiteName(site)
+		}
 		var b strings.Builder
 		for _, pt := range l.Points {
 			b.WriteString(bars(pt.Function))
 		}
 		last := l.Points[len(l.Points)-1]
-		e.say("  %-15s %s  %3.0f (%.0f–%.0f)", l.Limb, b.String(), last.Function, last.Low, last.High)
+		e.say("  %-15s %s  %3.0f (%.0f–%.0f)", name, b.String(), last.Function, last.Low, last.High)
 	}
 }

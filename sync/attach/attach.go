@@ -306,7 +306,10 @@ func (f *Files) take(ctx context.Context, tmp string, write func(io.Writer) erro
 	if err = f.fs.Rename(path, f.file(name)); err != nil {
 		return "", err
 	}
-	return name, f.fs.SyncDir(filepath.Join(f.s.Dir(), filesDir))
+	if err = f.fs.SyncDir(filepath.Join(f.s.Dir(), filesDir)); err != nil {
+		return "", err
+	}
+	return name, nil
 }
 
 type writer struct {
@@ -444,6 +447,9 @@ func (f *Files) obey(ctx context.Context) error {
 		}
 	}
 	if len(tags) > 0 {
+		if err := f.finishDestroying(); err != nil {
+			return fmt.Errorf("destroying what an owner asked to be erased: %w", err)
+		}
 		es, err := f.fs.List(filepath.Join(f.s.Dir(), filesDir))
 		if err != nil {
 			return fmt.Errorf("looking for files of owners whose data were erased: %w", err)
@@ -465,9 +471,22 @@ func (f *Files) obey(ctx context.Context) error {
 	return f.meet(ctx)
 }
 
+// goneExt marks a file that is being destroyed: its beginning may be overwritten already, so that nothing in it tells
+// any more whose it was.
+const goneExt = ".gone"
+
 // destroy overwrites the beginning of a file and removes it. On many disks the old bytes may still be found
 // by somebody who takes the disk apart; the key is what they would need.
 func (f *Files) destroy(path string) error {
+	if !strings.HasSuffix(path, goneExt) {
+		switch err := f.fs.Rename(path, path+goneExt); {
+		case errors.Is(err, fs.ErrNotExist):
+			return nil
+		case err != nil:
+			return err
+		}
+		path += goneExt
+	}
 	if e, err := f.fs.Edit(path); err == nil {
 		size, _ := e.Size()
 		_, werr := e.WriteAt(make([]byte, min(size, 4096)), 0)
@@ -480,6 +499,24 @@ func (f *Files) destroy(path string) error {
 		return err
 	}
 	return f.fs.SyncDir(filepath.Dir(path))
+}
+
+// finishDestroying goes on where an earlier destroying was interrupted.
+func (f *Files) finishDestroying() error {
+	for _, dir := range []string{filesDir, ownersDir} {
+		es, err := f.fs.List(filepath.Join(f.s.Dir(), dir))
+		if err != nil {
+			return err
+		}
+		for _, e := range es {
+			if strings.HasSuffix(e.Name, goneExt) && !e.Dir {
+				if err := f.destroy(filepath.Join(f.s.Dir(), dir, e.Name)); err != nil {
+					return err
+				}
+			}
+		}
+	}
+	return nil
 }
 
 // tagOf reads the owner's tag from a file's header, "" if there is none.

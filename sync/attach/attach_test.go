@@ -8,6 +8,7 @@ import (
 	"math/rand/v2"
 	"os"
 	"path/filepath"
+	"syscall"
 	"testing"
 
 	"github.com/stretchr/testify/require"
@@ -15,6 +16,7 @@ import (
 	"cordwalk.example/cordwalk/exam"
 	"cordwalk.example/cordwalk/storage"
 	"cordwalk.example/cordwalk/storage/disk"
+	"cordwalk.example/cordwalk/storage/disk/disktest"
 	"cordwalk.example/cordwalk/sync/attach"
 	"cordwalk.example/cordwalk/sync/change"
 	"cordwalk.example/cordwalk/sync/share"
@@ -242,5 +244,68 @@ func TestRandomDamage(t *testing.T) {
 	_, err = read(again, owner, name)
 	if err != nil { // the store has the key as well
 		require.ErrorIs(t, err, attach.ErrNoKey)
+	}
+}
+
+// The n-th file operation fails while an attachment is added, or an owner erased, for every n, once and for good: an error is
+// told, no file that has its name is not whole, and what failed succeeds afterwards.
+func TestEveryOperationOfAFileFails(t *testing.T) {
+	a := sharetest.Found(t)
+	photo := content(70_000)
+	for _, forever := range []bool{false, true} {
+		for n := 1; ; n++ {
+			d := disktest.New()
+			f, err := attach.Open(ctx, a.Store, d)
+			require.NoError(t, err)
+			owner := storage.NewID()
+			d.FailAt(n, syscall.EIO, forever)
+			name, err := f.Add(ctx, owner, bytes.NewReader(photo))
+			failed := d.Failures() > 0
+			d.FailAt(0, nil, false)
+			if err != nil {
+				require.ErrorIs(t, err, syscall.EIO, "operation %d", n)
+				require.Empty(t, name)
+			}
+			ps, cerr := f.Check(ctx)
+			require.NoError(t, cerr)
+			require.Empty(t, ps, "operation %d", n)
+			if name == "" {
+				name, err = f.Add(ctx, owner, bytes.NewReader(photo))
+				require.NoError(t, err, "operation %d", n)
+			}
+			again, err := attach.Open(ctx, a.Store, nil)
+			require.NoError(t, err)
+			got, err := read(again, owner, name)
+			require.NoError(t, err, "operation %d", n)
+			require.True(t, bytes.Equal(photo, got))
+			if !failed {
+				require.Greater(t, n, 5)
+				break
+			}
+		}
+		for n := 1; ; n++ {
+			d := disktest.New()
+			f, err := attach.Open(ctx, a.Store, d)
+			require.NoError(t, err)
+			owner := storage.NewID()
+			name, err := f.Add(ctx, owner, bytes.NewReader(photo))
+			require.NoError(t, err)
+			d.FailAt(n, syscall.EIO, forever)
+			err = f.Erase(ctx, "R. Okafor", owner, "asked")
+			failed := d.Failures() > 0
+			d.FailAt(0, nil, false)
+			if err != nil {
+				require.ErrorIs(t, err, syscall.EIO, "operation %d", n)
+			}
+			again, err := attach.Open(ctx, a.Store, nil) // goes on where it stopped
+			require.NoError(t, err)
+			_, err = read(again, owner, name)
+			require.ErrorIs(t, err, attach.ErrErased, "operation %d", n)
+			require.NoFileExists(t, filepath.Join(a.Dir(), "files", name), "operation %d", n)
+			if !failed {
+				require.Greater(t, n, 3)
+				break
+			}
+		}
 	}
 }

@@ -65,23 +65,26 @@ func TestRandomDamageInTheFolder(t *testing.T) {
 				require.NotEmpty(t, append(r.Problems, waiting(r)...), "%d of %d values came and nothing says why", len(got), len(want))
 				told++
 			}
-			if i%20 == 10 { // a device that lacks it says so, and whoever has it whole leaves it again
+			if i%100 == 10 { // a device that lacks it says so, and whoever has it whole leaves it again
 				again := newDevices(t, 1)[0]
 				again.bag.Ring, again.members = a.bag.Ring, a.members
 				again.members.signers[again.current] = again.bag.Device.Verifier()
+				copied := t.TempDir()
+				require.NoError(t, os.CopyFS(copied, os.DirFS(stick)))
+				a2, b2 := a.copied(), b.copied()
 				for range 2 {
-					again.sync(stick)
-					a.sync(stick)
-					b.sync(stick)
+					again.sync(copied)
+					a2.sync(copied)
+					b2.sync(copied)
 				}
-				again.sync(stick)
+				again.sync(copied)
+				require.NoError(t, os.RemoveAll(copied))
 				if len(again.values()) != len(want) {
 					t.Fatalf("%d of %d values came after damage to %s", len(again.values()), len(want), p)
 				}
 				mended++
-			} else {
-				require.NoError(t, os.WriteFile(p, data, 0o600))
 			}
+			require.NoError(t, os.WriteFile(p, data, 0o600))
 		}
 		t.Logf("%s: damaged %d times, %d times something was missing and told, mended %d times", kind, n, told, mended)
 	}

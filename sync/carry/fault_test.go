@@ -14,6 +14,7 @@ import (
 
 	"cordwalk.example/cordwalk/storage/disk/disktest"
 	"cordwalk.example/cordwalk/sync/carry"
+	"cordwalk.example/cordwalk/sync/change"
 )
 
 // The n-th operation on the folder fails, for every n, once and for good: what was done is true, and when
@@ -143,13 +144,16 @@ func TestStickIsPulledOut(t *testing.T) {
 	}
 }
 
-// Random histories of 2 to 5 devices and 1 to 3 folders: entries, exchanges, interrupted copies, files lost,
+// sites of the histories.
+var sites = [2]change.Site{{0x51}, {0x52}}
+
+// Random histories of 2 to 5 devices at two sites and 1 to 3 folders: entries, exchanges, interrupted copies, files lost,
 // renamed and damaged, stores copied and put back, folders emptied. In the end every device has every
 // value that any device had, and the state of all is the same, whichever branch of a fork each met first.
 func TestFolderHistories(t *testing.T) {
 	rounds := 40
 	if os.Getenv("CORDWALK_SOAK") == "1" {
-		rounds = 800
+		rounds = 10_000
 	}
 	seed := rand.Uint64()
 	t.Logf("seed %d, %d histories", seed, rounds)
@@ -157,6 +161,9 @@ func TestFolderHistories(t *testing.T) {
 	for i := range rounds {
 		rng := rand.New(rand.NewPCG(seed, uint64(i)))
 		ds := newDevices(t, 2+rng.IntN(4))
+		for _, d := range ds {
+			d.site = sites[rng.IntN(len(sites))]
+		}
 		var sticks []string
 		for range 1 + rng.IntN(3) {
 			sticks = append(sticks, t.TempDir())
@@ -221,7 +228,9 @@ func TestFolderHistories(t *testing.T) {
 			}
 		}
 		for k, d := range ds[1:] {
-			require.Equal(t, ds[0].state().Hash(), d.state().Hash(), "history %d of seed %d: device %d shows something else than device 0", i, seed, k+1)
+			for i := range sites {
+				require.Equal(t, ds[0].stateOf(&sites[i]).Hash(), d.stateOf(&sites[i]).Hash(), "history %d of seed %d: device %d shows something else than device 0", i, seed, k+1)
+			}
 		}
 		// Idle now: nothing is sent or received any more.
 		for _, d := range ds {

@@ -114,9 +114,15 @@ func (m *memory) copied() *memory {
 	return &c
 }
 
-func (m *memory) state() *merge.State {
+func (m *memory) state() *merge.State { return m.stateOf(nil) }
+
+// stateOf returns the state of one site, or of all.
+func (m *memory) stateOf(site *change.Site) *merge.State {
 	st := &merge.State{}
 	for as, fs := range m.streams {
+		if site != nil && as.Site != *site {
+			continue
+		}
 		for _, f := range fs {
 			b, err := change.Open(f, m.bag.Ring)
 			require.NoError(m.t, err)
@@ -225,7 +231,7 @@ func (m *memory) Signed(_ context.Context, s change.Stream) ([]segment.Signed, e
 
 func (m *memory) Sums(ctx context.Context) ([]segment.Sum, error) {
 	held, err := m.Streams(ctx)
-	return []segment.Sum{{Site: m.site, Rules: merge.Rules, At: segment.HashOfHeld(m.site, held), Sum: m.state().Hash()}}, err
+	return []segment.Sum{{Site: m.site, Rules: merge.Rules, At: segment.HashOfHeld(m.site, held), Sum: m.stateOf(&m.site).Hash()}}, err
 }
 
 func (m *memory) options() carry.Options {

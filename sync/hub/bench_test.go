@@ -31,7 +31,7 @@ const inFlight = 32
 // the same server, with as many messages in flight. Both have met before the clock runs: what is measured is
 // the steady rate. CORDWALK_CHANGES changes how many.
 func BenchmarkBacklog(b *testing.B) {
-	changes := 100_000
+	changes := 300_000
 	if n, err := strconv.Atoi(os.Getenv("CORDWALK_CHANGES")); err == nil {
 		changes = n
 	}
