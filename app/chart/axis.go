@@ -221,6 +221,9 @@ func placeEvents(events []Event, s scaleX, st Style) (placed []placedEvent, rows
 			left = x - size*0.25 - w
 		}
 		for r := range ends {
+			if r == 0 && left < s.x0 && st.Lang != "" {
+				continue // on paper, where rows are low, the first line beside the axis belongs to their labels
+			}
 			if word != "" && left >= ends[r]+size*0.5 && left >= s.x0-w {
 				pe.row, pe.left, pe.word = r, left, word
 				ends[r] = left + w
