@@ -91,14 +91,27 @@ func seenWords(seen string) string {
 // alertBox shows one alert: how soon, what was seen, and what can be done.
 func alertBox(a alertLine, answer, why func()) fyne.CanvasObject {
 	lines := mark.Column(2, mark.NewPara(a.Title).Strong().In(look.Call), mark.NewPara(inShort(a.Seen)))
-	buttons := []fyne.CanvasObject{mark.NewButton(words.T("Why, and what to do"), "", why).As(mark.Quiet)}
 	if a.Answered != "" {
 		lines.Add(mark.NewPara(a.Answered).In(look.InkSoft))
-	} else {
+	}
+	if look.Scale() > 1.3 { // a button's words stand on one line; these take as many as they need
+		if a.Answered == "" {
+			lines.Add(framed(words.T("Who was told?"), answer))
+		}
+		lines.Add(framed(words.T("Why, and what to do"), why))
+		return mark.On(look.CallBed, false, mark.Pad(look.Unit, look.Unit, lines))
+	}
+	buttons := []fyne.CanvasObject{mark.NewButton(words.T("Why, and what to do"), "", why).As(mark.Quiet)}
+	if a.Answered == "" {
 		buttons = append([]fyne.CanvasObject{mark.NewButton(words.T("Who was told?"), "phone", answer)}, buttons...)
 	}
 	lines.Add(mark.Wrapped(look.Unit/2, buttons...))
 	return mark.On(look.CallBed, false, mark.Pad(look.Unit, look.Unit, mark.RowTop(look.Unit, []float32{0, 1}, mark.Column(0, iconImage("phone", look.Call, 22)), lines)))
+}
+
+// framed is a button whose words may take several lines.
+func framed(text string, tap func()) fyne.CanvasObject {
+	return newPressable(mark.On(look.Raised, true, mark.Pad(look.Unit/2, look.Unit, mark.NewPara(text))), "", tap)
 }
 
 // inShort keeps the first things that were seen; the rest is one press away.

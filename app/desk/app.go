@@ -46,13 +46,14 @@ type App struct {
 
 	drafts map[exam.ID]*view.PatientForm // pages of animals that were left with something typed on them
 
-	album   album          // the photos and clips beside the store
-	keep    keeping        // backups made by themselves
-	idle    idling         // the lock of a screen that nobody uses
-	engines engines        // of all exams: each would hold much scratch memory
-	resting *time.Timer    // see rest
-	fonts   sync.WaitGroup // the reading of the fonts at the start
-	heavy   sync.Mutex     // long work on one course or paper at a time: each needs much memory
+	album    album          // the photos and clips beside the store
+	keep     keeping        // backups made by themselves
+	idle     idling         // the lock of a screen that nobody uses
+	engines  engines        // of all exams: each would hold much scratch memory
+	resting  *time.Timer    // see rest
+	unsealed unsealed       // copies of clips for the system's player
+	fonts    sync.WaitGroup // the reading of the fonts at the start
+	heavy    sync.Mutex     // long work on one course or paper at a time: each needs much memory
 
 	onUI   view.OnUI // runs on the drawing goroutine; tests pass their own
 	ctx    context.Context
@@ -360,6 +361,9 @@ func (a *App) Done() error {
 	}
 	a.busy.Wait()
 	a.endKeeping()
+	if err := a.unsealed.remove(); err != nil {
+		return err
+	}
 	if a.records == nil {
 		return nil
 	}

@@ -83,6 +83,7 @@ func (p *coursePage) analyse() {
 		}
 		return func() {
 			if p.gone.Load() {
+				a.rest() // what it loaded came after the page had let go of it
 				return
 			}
 			p.result = &r
@@ -135,6 +136,8 @@ func (p *coursePage) help() []view.KeyHelp {
 		{Keys: "0", Does: words.T("the whole course")},
 		{Keys: "m", Does: words.T("the whole series, or each visit by itself")},
 		{Keys: "f", Does: words.T("published scales and plain statistics")},
+		{Keys: "c", Does: words.T("copy the picture of the course")},
+		{Keys: "s", Does: words.T("save the picture of the course")},
 		{Keys: words.T("space"), Does: words.T("play the visits on the drawing")},
 		{Keys: "[ ]", Does: words.T("the visit before, the visit after")},
 	}
@@ -166,7 +169,8 @@ func (p *coursePage) build() {
 		mark.NewButton("", "left", func() { p.pan(1) }).WithTip(words.T("Earlier")),
 		mark.NewButton("", "right", func() { p.pan(-1) }).WithTip(words.T("Later")),
 		mark.NewButton(words.T("Figures"), "grid", p.figures).WithTip(words.T("Published scales and plain statistics. Key f")),
-		mark.NewButton(words.T("Save picture"), "save", p.askSave))...)
+		mark.NewButton(words.T("Copy picture"), "", p.copyCourse).WithTip(words.T("Key c")),
+		mark.NewButton(words.T("Save picture"), "save", p.askSave).WithTip(words.T("Key s")))...)
 	choose := p.regions()
 	p.strip = newChartHost(p.course.Strip, fyne.NewSize(400, p.stripHeight()))
 	p.strip.hover = func(x, y, w, h vg.Length, st chart.Style) string {
@@ -442,6 +446,10 @@ func (p *coursePage) typedRune(r rune) bool {
 		p.play()
 	case 'f':
 		p.figures()
+	case 'c':
+		p.copyCourse()
+	case 's':
+		p.askSave()
 	case 'm':
 		if p.course == p.model {
 			p.switchTo(p.plain)
@@ -587,26 +595,42 @@ func (p *coursePage) askSave() {
 
 // saveCourse writes the strip and the limbs, one above the other, as ink on white paper.
 func saveCourse(path string, strip chart.Strip, limbs chart.Limbs) error {
-	st := chart.Screen(chart.Print())
-	const w, h1, h2 = 1000, 560, 380
-	both := stackedCharts{strip, limbs, h2}
-	switch strings.ToLower(filepath.Ext(path)) {
-	case ".svg":
-		c := vgsvg.New(w, h1+h2)
-		both.Draw(vgdraw.New(c), st)
-		var b bytes.Buffer
-		if _, err := c.WriteTo(&b); err != nil {
-			return err
-		}
-		return os.WriteFile(path, b.Bytes(), 0o600)
-	case ".pdf":
-		return savePDF(path, w, h1+h2, both, st)
+	ext := strings.ToLower(filepath.Ext(path))
+	if ext == ".pdf" {
+		return savePDF(path, courseWide, courseHigh, courseChart(strip, limbs), chart.Screen(chart.Print()))
 	}
-	var b bytes.Buffer
-	if err := png.Encode(&b, renderChart(both, st, w*2, (h1+h2)*2, 2)); err != nil {
+	b, err := coursePicture(strip, limbs, ext == ".svg")
+	if err != nil {
 		return err
 	}
-	return os.WriteFile(path, b.Bytes(), 0o600)
+	return os.WriteFile(path, b, 0o600)
+}
+
+// courseWide and courseHigh are the size of a picture of the course, in points.
+const courseWide, courseHigh = 1000, 940
+
+func courseChart(strip chart.Strip, limbs chart.Limbs) stackedCharts {
+	return stackedCharts{strip, limbs, 380}
+}
+
+// coursePicture is the picture of a course as SVG or PNG.
+func coursePicture(strip chart.Strip, limbs chart.Limbs, svg bool) ([]byte, error) {
+	st, both := chart.Screen(chart.Print()), courseChart(strip, limbs)
+	var b bytes.Buffer
+	if svg {
+		c := vgsvg.New(courseWide, courseHigh)
+		both.Draw(vgdraw.New(c), st)
+		_, err := c.WriteTo(&b)
+		return b.Bytes(), err
+	}
+	err := png.Encode(&b, renderChart(both, st, courseWide*2, courseHigh*2, 2))
+	return b.Bytes(), err
+}
+
+// copyCourse puts the picture of the course on the clipboard.
+func (p *coursePage) copyCourse() {
+	strip, limbs := p.course.Strip, p.course.Limbs
+	p.win.copyPicture(func(svg bool) ([]byte, error) { return coursePicture(strip, limbs, svg) })
 }
 
 // stackedCharts draws one chart above another.

@@ -5,6 +5,7 @@ import (
 	"errors"
 	"os"
 	"path/filepath"
+	"slices"
 	"strings"
 	"sync/atomic"
 	"testing"
@@ -158,7 +159,7 @@ func TestThreeActionsToTheFirstGrade(t *testing.T) {
 func TestKeysNeverWaitForASlowDisk(t *testing.T) {
 	s := newStage(t, view.Settings{Protocol: exam.FullSpinal})
 	s.demo()
-	disk := &slow{Records: s.app.records, wait: 50 * time.Millisecond}
+	disk := &slow{Records: s.app.records, wait: 300 * time.Millisecond}
 	s.app.records = disk
 	s.show(view.ScreenExam, s.id("Bramble"))
 	keyed := len(s.exam().sheet.Visit().Findings)
@@ -319,6 +320,27 @@ func TestAVisitWithAnUnansweredAlertStaysOpenUntilSomebodyWasTold(t *testing.T) 
 	if !strings.Contains(s.win().foot.text.Words, "closed") {
 		t.Errorf("a key after closing says %q", s.win().foot.text.Words)
 	}
+}
+
+// Closing looks for alerts itself, however soon after the key that raises one it comes, and an alert does not wait for
+// the likely site to be worked out.
+func TestClosingAtOnceDoesNotSlipPastAnAlert(t *testing.T) {
+	s := newStage(t, view.Settings{Protocol: exam.FullSpinal})
+	s.demo()
+	s.show(view.ScreenExam, s.id("Bramble"))
+	p := s.exam()
+	s.app.engines.mu.Lock() // an engine that takes long
+	if err := p.sheet.FocusKey(exam.Key{Item: exam.Breathing, Site: exam.Midline}); err != nil {
+		t.Fatal(err)
+	}
+	p.sheet.Press(view.Rune('0'))
+	p.close()
+	if p.sheet.Closed() {
+		t.Error("the visit was closed before its alert had been looked for")
+	}
+	s.until("the alert", func() bool { return slices.ContainsFunc(p.side.found, func(a alertLine) bool { return a.Must }) })
+	s.app.engines.mu.Unlock()
+	s.settle()
 }
 
 func TestAnExamThatWasOnlyOpenedLeavesNoVisit(t *testing.T) {

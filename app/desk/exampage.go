@@ -2,6 +2,7 @@ package desk
 
 import (
 	"context"
+	"slices"
 	"strconv"
 	"strings"
 
@@ -29,7 +30,8 @@ type examPage struct {
 	side    *examSide
 	left1   *fyne.Container // grid, card or one of the forms of the visit
 	tabs    []*mark.Button
-	parts   *mark.Pick // instead of the tabs where text is large
+	parts   *mark.Pick        // instead of the tabs where text is large
+	how     fyne.CanvasObject // then the form for protocol and position
 	one     *mark.Button
 	tab     int
 	bar     *fyne.Container
@@ -51,6 +53,7 @@ const (
 	tabHome
 	tabPhotos
 	tabStim
+	tabHow // protocol and position, where text is too large for them to stand beside the others
 )
 
 func newExamPage(w *window, visit exam.ID) *examPage {
@@ -129,18 +132,25 @@ func (p *examPage) build(v exam.Visit) {
 	p.bar = mark.Row(4, []float32{1}, mark.Wrapped(0, tabs...), one)
 	p.parts = nil
 	if look.Scale() > 1.3 { // the buttons would take three lines from the grid
-		keys := make([]string, len(names))
-		for i := range names {
+		shown := append(slices.Clone(names), words.T("Protocol and position"))
+		keys := make([]string, len(shown))
+		for i := range shown {
 			keys[i] = strconv.Itoa(i)
 		}
-		p.parts = mark.Choice(names, keys, "0", func(s string) {
+		p.parts = mark.Choice(shown, keys, "0", func(s string) {
 			if k, err := strconv.Atoi(s); err == nil && k != p.tab {
 				p.choose(k)
 			}
 		})
 		p.bar = mark.Row(look.Unit, []float32{1, 0}, p.parts, one)
 	}
-	second := mark.Row(look.Unit, []float32{1, 1, 1}, p.visitPick(v), proSel, posSel)
+	var second fyne.CanvasObject = mark.Row(look.Unit, []float32{1, 1, 1}, p.visitPick(v), proSel, posSel)
+	p.how = nil
+	if p.parts != nil {
+		second = p.visitPick(v)
+		p.how = mark.Pad(look.Unit, look.Unit, mark.Column(look.Unit*2,
+			mark.NewLabelled(words.T("Protocol"), proSel), mark.NewLabelled(words.T("Position"), posSel)))
+	}
 	p.where = mark.Line("")
 	p.walk = newWalkBar()
 	p.undoB = mark.NewButton(words.T("Undo"), "undo", func() { p.undo(false) }).As(mark.Quiet).WithTip("u, Ctrl+Z")
@@ -228,6 +238,10 @@ func (p *examPage) content() fyne.CanvasObject { return p.root }
 func (p *examPage) shown() {
 	if p.sheet == nil {
 		return
+	}
+	c := p.win.win.Canvas()
+	if f := c.Focused(); p.tab != tabExam && (f == fyne.Focusable(p.grid) || f == fyne.Focusable(p.card)) {
+		c.Unfocus() // no key may grade a cell that is not on the screen
 	}
 	if p.tab == tabExam {
 		if p.win.app.settings.OneByOne {
@@ -420,6 +434,8 @@ func (p *examPage) choose(tab int) {
 		o = newPhotosForm(p)
 	case tabStim:
 		o = newStimForm(p)
+	case tabHow:
+		o = mark.NewScroll(p.how)
 	default:
 		if p.win.app.settings.OneByOne {
 			p.card.update()

@@ -24,9 +24,8 @@ import (
 // sideQuestion is today's visit as entered so far.
 type sideQuestion struct{ visit exam.Visit }
 
-// sideAnswer is what it means: alerts, and the likely site or why there is none.
+// sideAnswer is what it means: the likely site, or why there is none.
 type sideAnswer struct {
-	alerts []alertLine
 	result *localise.Result
 	err    error
 }
@@ -51,6 +50,7 @@ type examSide struct {
 	scroll *mark.Scroll
 
 	ask    *view.Newest[sideQuestion, sideAnswer]
+	flags  *view.Newest[sideQuestion, []alertLine] // beside it: a red flag waits for nothing
 	result *localise.Result
 	found  []alertLine
 	failed error
@@ -81,10 +81,17 @@ func newExamSide(p *examPage) *examSide {
 	patient, others, engines := p.file.Patient, p.file.Visits, &p.win.app.engines
 	engines.hold()
 	s.ask = view.NewNewest(p.win.app.onUI, func(_ context.Context, q sideQuestion) (sideAnswer, error) {
-		out := sideAnswer{alerts: alertsOf(patient, others, q.visit)}
+		var out sideAnswer
 		out.result, out.err = engines.compute(localise.OfVisit(patient, q.visit))
 		return out, nil
 	}, s.answered)
+	s.flags = view.NewNewest(p.win.app.onUI, func(_ context.Context, q sideQuestion) ([]alertLine, error) {
+		return alertsOf(patient, others, q.visit), nil
+	}, func(found []alertLine, _ error) {
+		s.found = found
+		s.showAlerts()
+		s.scroll.Reflow()
+	})
 	s.ExtendBaseWidget(s)
 	return s
 }
@@ -102,6 +109,7 @@ func (s *examSide) close() {
 	s.ended = true
 	engines := &s.page.win.app.engines
 	go func() {
+		s.flags.Close()
 		s.ask.Close()
 		engines.letGo()
 	}()
@@ -126,12 +134,14 @@ func (s *examSide) toggle() {
 // update asks for the likely site of what is entered now.
 func (s *examSide) update() {
 	sheet := s.page.sheet
-	s.ask.Ask(sideQuestion{sheet.Visit()})
+	q := sideQuestion{sheet.Visit()}
+	s.flags.Ask(q)
+	s.ask.Ask(q)
 	s.show()
 }
 
 func (s *examSide) answered(a sideAnswer, _ error) {
-	s.found, s.result, s.failed = a.alerts, a.result, a.err
+	s.result, s.failed = a.result, a.err
 	s.show()
 }
 
@@ -256,7 +266,7 @@ func (s *examSide) showAlerts() {
 		out = append(out, alertBox(alert, func() { s.page.answer(alert) }, func() { s.page.explain(alert) }))
 	}
 	if len(still) > 0 {
-		out = append(out, newTapped(cautionLine(words.T("Still to rule out: %s", strings.Join(still, ", "))), s.explainStill))
+		out = append(out, newPressable(cautionLine(words.T("Still to rule out: %s", strings.Join(still, ", "))), "", s.explainStill))
 	}
 	s.alerts.Objects = out
 	if len(out) == 0 {
@@ -279,10 +289,11 @@ func (s *examSide) explainStill() {
 	s.page.win.showSheet(words.T("Still to rule out"), mark.Column(look.Unit, lines...), 700)
 }
 
-// unanswered lists the alerts that must be answered before the visit can be closed.
+// unanswered lists the alerts that must be answered before the visit can be closed. They are looked for anew: the
+// visit may be closed sooner after a key than the answer to that key comes.
 func (s *examSide) unanswered() []string {
 	var out []string
-	for _, a := range s.found {
+	for _, a := range alertsOf(s.page.file.Patient, s.page.file.Visits, s.page.sheet.Visit()) {
 		if a.Must && a.Answered == "" {
 			out = append(out, a.Title)
 		}

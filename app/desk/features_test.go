@@ -3,9 +3,13 @@ package desk
 import (
 	"bytes"
 	"context"
+	"encoding/xml"
+	"errors"
 	"image"
 	"image/color"
 	"image/jpeg"
+	"image/png"
+	"io/fs"
 	"os"
 	"path/filepath"
 	"slices"
@@ -393,3 +397,103 @@ func shows(o fyne.CanvasObject, text string) bool {
 	}
 	return false
 }
+
+// The picture of the course goes to the session's clipboard program, and without one to the clipboard as text.
+func TestThePictureOfTheCourseIsCopied(t *testing.T) {
+	s := newStage(t, view.Settings{})
+	w := s.demo()
+	s.show(view.ScreenCourse, s.id("Bramble"))
+	bin := t.TempDir()
+	t.Setenv("PATH", bin)
+	t.Setenv("WAYLAND_DISPLAY", "")
+	t.Setenv("DISPLAY", ":7")
+	s.keys("c")
+	s.until("the text on the clipboard", func() bool { return strings.Contains(w.foot.text.Words, "SVG") })
+	var top struct{ XMLName xml.Name }
+	if err := xml.Unmarshal([]byte(s.app.fyne.Clipboard().Content()), &top); err != nil || top.XMLName.Local != "svg" {
+		t.Errorf("the clipboard holds <%s>, %v", top.XMLName.Local, err)
+	}
+	out := filepath.Join(bin, "got")
+	script := "#!/bin/sh\necho \"$@\" > " + out + ".args\n/bin/cat > " + out + "\n"
+	if err := os.WriteFile(filepath.Join(bin, "xclip"), []byte(script), 0o700); err != nil {
+		t.Fatal(err)
+	}
+	s.keys("c")
+	s.until("the picture on the clipboard", func() bool { return w.foot.text.Words == "The picture is on the clipboard." })
+	b, err := os.ReadFile(out)
+	if err != nil {
+		t.Fatal(err)
+	}
+	if img, err := png.Decode(bytes.NewReader(b)); err != nil || img.Bounds().Dx() != 2*courseWide {
+		t.Errorf("no picture was handed on: %v", err)
+	}
+	if args, err := os.ReadFile(out + ".args"); err != nil || !strings.Contains(string(args), "image/png") {
+		t.Errorf("it was called with %s, %v", args, err)
+	}
+	if err := os.WriteFile(filepath.Join(bin, "xclip"), []byte("#!/bin/sh\nexit 1\n"), 0o700); err != nil {
+		t.Fatal(err)
+	}
+	s.keys("c")
+	s.until("the failure said", func() bool { return w.foot.err != nil })
+}
+
+// After an import was looked at, photos are still taken when they are dropped; what the other pages cannot use is left.
+func TestDropsGoToThePageThatIsShown(t *testing.T) {
+	s := newStage(t, view.Settings{Protocol: exam.FullSpinal})
+	w := s.demo()
+	screens(s)["import"]()
+	if _, ok := w.page.(dropTaker); !ok {
+		t.Error("the import takes no table that is dropped")
+	}
+	id := s.id("Juno")
+	s.show(view.ScreenExam, id)
+	name := filepath.Join(t.TempDir(), "gait.jpg")
+	jpegFile(t, name)
+	w.dropped([]fyne.URI{storage.NewFileURI(name)})
+	s.until("the photo in the visit", func() bool { return len(s.exam().sheet.Visit().Attachments) == 1 })
+	s.show(view.ScreenCourse, id)
+	w.dropped([]fyne.URI{storage.NewFileURI(name)})
+	s.settle()
+}
+
+// A clip is drawn by what is known of it, and a copy for the player lies in a folder of this user's alone until the
+// program ends.
+func TestClipsAreDescribedAndPlayed(t *testing.T) {
+	s := newStage(t, view.Settings{Protocol: exam.FullSpinal})
+	w := s.demo()
+	t.Setenv("TMPDIR", t.TempDir())
+	id := s.id("Juno")
+	s.show(view.ScreenExam, id)
+	p := s.exam()
+	name := filepath.Join(t.TempDir(), "gait.mp4")
+	if err := os.WriteFile(name, []byte(mp4), 0o600); err != nil {
+		t.Fatal(err)
+	}
+	p.addPhotos([]string{name})
+	s.until("the clip in the visit", func() bool { return len(p.sheet.Visit().Attachments) == 1 })
+	s.idle()
+	v := p.sheet.Visit()
+	if img, words := s.app.thumb(context.Background(), id, v.Attachments[0]); img != nil || !strings.HasSuffix(words, ", 0:18") {
+		t.Errorf("the clip is %q", words)
+	}
+	w.play(v, 0)
+	s.idle()
+	if len(s.app.unsealed.dirs) != 1 {
+		t.Fatalf("%d folders with copies", len(s.app.unsealed.dirs))
+	}
+	dir := s.app.unsealed.dirs[0]
+	if info, err := os.Stat(dir); err != nil || info.Mode().Perm() != 0o700 {
+		t.Errorf("the folder is %v, %v", info, err)
+	}
+	if err := s.app.unsealed.remove(); err != nil {
+		t.Fatal(err)
+	}
+	if _, err := os.Stat(dir); !errors.Is(err, fs.ErrNotExist) {
+		t.Errorf("the copy stays: %v", err)
+	}
+}
+
+// mp4 is a clip of 18 s without pictures, as ISO/IEC 14496-12 lays it out: a file type box, and a movie box with a
+// movie header of version 0 that counts 600 to a second.
+var mp4 = "\x00\x00\x00\x10ftypisom\x00\x00\x00\x00" + "\x00\x00\x00\x74moov" + "\x00\x00\x00\x6cmvhd" +
+	strings.Repeat("\x00", 12) + "\x00\x00\x02\x58" + "\x00\x00\x2a\x30" + strings.Repeat("\x00", 80)

@@ -41,6 +41,7 @@ func newExamGrid(sheet *view.ExamSheet) *examGrid {
 	g.editor = newGridEditor(g)
 	g.body = &fyne.Container{Layout: &gridLayout{g}}
 	g.scroll = mark.NewScroll(g.body)
+	g.scroll.OnSwipe = func(dir int) { g.typed(view.Key{Name: "Tab", Shift: dir < 0}) }
 	g.build()
 	g.ExtendBaseWidget(g)
 	return g
@@ -174,6 +175,7 @@ var (
 	_ desktop.Hoverable  = (*gridCell)(nil)
 	_ fyne.Tappable      = (*gridCell)(nil)
 	_ desktop.Cursorable = (*gridCell)(nil)
+	_ desktop.Mouseable  = (*gridCell)(nil)
 )
 
 // FocusGained shows that keys go to the grid.
@@ -684,8 +686,22 @@ func (r *cellRenderer) Refresh() {
 	}
 }
 
-// Tapped moves the focus to the cell.
-func (c *gridCell) Tapped(*fyne.PointEvent) {
+// MouseDown begins a press.
+func (c *gridCell) MouseDown(e *desktop.MouseEvent) { mark.Press(c, e.AbsolutePosition) }
+
+// MouseUp does nothing: Tapped follows.
+func (c *gridCell) MouseUp(*desktop.MouseEvent) {}
+
+// TappedSecondary explains the cell, as a long press does.
+func (c *gridCell) TappedSecondary(e *fyne.PointEvent) {
+	mark.ExplainAt(c, c.explain(), e.AbsolutePosition)
+}
+
+// Tapped moves the focus to the cell; a long press explains it.
+func (c *gridCell) Tapped(e *fyne.PointEvent) {
+	if mark.Held(c, c.explain(), e) {
+		return
+	}
 	if w := c.grid.Focus; w != nil {
 		w()
 	}

@@ -78,7 +78,7 @@ func (s *stage) run() {
 // until waits for something to become true, doing what is queued.
 func (s *stage) until(what string, ok func() bool) {
 	s.t.Helper()
-	for end := time.Now().Add(30 * time.Second); time.Now().Before(end); time.Sleep(2 * time.Millisecond) {
+	for end := time.Now().Add(2 * time.Minute); time.Now().Before(end); time.Sleep(2 * time.Millisecond) {
 		s.run()
 		if ok() {
 			s.run()
@@ -132,11 +132,27 @@ func (s *stage) settle() {
 	s.until("nothing under way", func() bool {
 		if p, ok := s.win().page.(*examPage); ok && p.side != nil {
 			p.side.ask.Wait()
+			p.side.flags.Wait()
 		}
 		if p, ok := s.win().page.(*sheetPage); ok && len(p.doc.PDF) == 0 && p.refused == nil {
 			return false
 		}
 		return s.app.saver == nil || s.app.saver.State().Waiting() == 0
+	})
+}
+
+// idle waits for everything that was given to the background.
+func (s *stage) idle() {
+	s.t.Helper()
+	done := make(chan struct{})
+	go func() { s.app.busy.Wait(); close(done) }()
+	s.until("the background idle", func() bool {
+		select {
+		case <-done:
+			return true
+		default:
+			return false
+		}
 	})
 }
 

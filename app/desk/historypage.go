@@ -110,7 +110,7 @@ func historyLine(l view.HistoryLine) fyne.CanvasObject {
 		how = words.T("%s; %s", how, l.State)
 	}
 	return mark.Pad(look.Unit, look.Unit/2, mark.RowTop(look.Unit*1.5, []float32{0, 1.5, 2, 1.6},
-		mark.Line(l.Clock),
+		mark.Column(0, mark.Line(l.Clock)),
 		mark.Column(0, mark.NewPara(l.Field), mark.NewPara(l.Where).In(look.InkSoft).As(look.Small)),
 		mark.Column(0, what...),
 		mark.Column(0, mark.NewPara(l.Who), mark.NewPara(how).In(look.InkSoft).As(look.Small))))

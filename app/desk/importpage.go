@@ -19,18 +19,19 @@ import (
 // importPage takes animals over from a table: the columns are matched, every row is looked at,
 // nothing is written until it is confirmed, and one undo takes all of it back.
 type importPage struct {
-	win   *window
-	file  *mark.Field
-	plan  *view.ImportPlan
-	done  *view.Imported
-	root  fyne.CanvasObject
-	said  *mark.Para
-	cols  *fyne.Container
-	list  *widget.List
-	parts *fyne.Container
-	start *mark.Button
-	back  *mark.Button
-	busy  bool
+	win    *window
+	file   *mark.Field
+	plan   *view.ImportPlan
+	done   *view.Imported
+	root   fyne.CanvasObject
+	said   *mark.Para
+	cols   *fyne.Container
+	list   *widget.List
+	parts  *fyne.Container
+	scroll *mark.Scroll // where text is large; nil otherwise
+	start  *mark.Button
+	back   *mark.Button
+	busy   bool
 }
 
 func newImportPage(w *window) *importPage {
@@ -52,11 +53,20 @@ func newImportPage(w *window) *importPage {
 		}
 	})
 	p.list.HideSeparators = true
+	list := fyne.CanvasObject(p.list)
+	large := look.Scale() > 1.3
+	if large { // then the columns alone may fill the window
+		list = mark.Sized(1, 480, p.list)
+	}
 	p.parts = mark.ColumnGrow(look.Unit, 4,
 		mark.Bar(look.Unit, mark.Title(words.T("Import patients")).AtLeast(100), p.back, p.start),
 		mark.Row(look.Unit, []float32{1, 0, 0}, p.file, browse, read),
-		p.said, p.cols, p.list)
+		p.said, p.cols, list)
 	p.root = mark.Pad(look.Unit*1.5, look.Unit*2, p.parts)
+	if large {
+		p.scroll = mark.NewScroll(p.root)
+		p.root = p.scroll
+	}
 	p.draw()
 	return p
 }
@@ -168,6 +178,9 @@ func (p *importPage) draw() {
 	p.cols.Refresh()
 	p.list.Refresh()
 	p.parts.Refresh()
+	if p.scroll != nil {
+		p.scroll.Reflow()
+	}
 }
 
 func (p *importPage) apply() {

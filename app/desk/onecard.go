@@ -23,12 +23,12 @@ type oneCard struct {
 	scroll  *mark.Scroll
 	focused bool
 	rim     *mark.Ground
-	dragged float32
 }
 
 func newOneCard(p *examPage) *oneCard {
 	c := &oneCard{page: p, box: mark.Column(look.Unit * 2), rim: mark.NewGround(look.Paper)}
 	c.scroll = mark.NewScroll(mark.Pad(look.Unit*2, look.Unit*2, c.box))
+	c.scroll.OnSwipe = func(dir int) { p.pressed(p.sheet.Press(view.Key{Name: "Tab", Shift: dir < 0})) }
 	c.ExtendBaseWidget(c)
 	return c
 }
@@ -124,7 +124,6 @@ var (
 	_ fyne.Focusable    = (*oneCard)(nil)
 	_ fyne.Tabbable     = (*oneCard)(nil)
 	_ fyne.Shortcutable = (*oneCard)(nil)
-	_ fyne.Draggable    = (*oneCard)(nil)
 )
 
 // FocusGained draws the ring.
@@ -157,18 +156,3 @@ func (c *oneCard) TypedKey(e *fyne.KeyEvent) {
 
 // TypedShortcut takes undo and redo.
 func (c *oneCard) TypedShortcut(s fyne.Shortcut) { c.page.shortcut(c, s) }
-
-// Dragged and DragEnd go on or back with a swipe.
-func (c *oneCard) Dragged(e *fyne.DragEvent) { c.dragged += e.Dragged.DX }
-
-// DragEnd moves on where the swipe was long enough.
-func (c *oneCard) DragEnd() {
-	d := c.dragged
-	c.dragged = 0
-	switch {
-	case d < -80:
-		c.page.pressed(c.page.sheet.Press(view.Named("Tab")))
-	case d > 80:
-		c.page.pressed(c.page.sheet.Press(view.Key{Name: "Tab", Shift: true}))
-	}
-}

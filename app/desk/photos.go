@@ -7,6 +7,7 @@ import (
 	"image"
 	"io"
 	"io/fs"
+	"net/url"
 	"os"
 	"path/filepath"
 	"strings"
@@ -133,12 +134,25 @@ func newPhoto(w *window, v exam.Visit, at int, wide, high float32) fyne.CanvasOb
 	if x.Note != "" {
 		tip += " · " + x.Note
 	}
+	play := iconImage("play", look.Ink, 44)
+	play.Hide()
+	if !x.Photo() {
+		inner = mark.On(look.Sunk, true, mark.Sized(wide, high, &fyne.Container{Layout: stackFill{}, Objects: []fyne.CanvasObject{img, center(play), mark.Pad(look.Unit, look.Unit, say)}}))
+	}
 	var shown image.Image
 	o := newPressable(inner, tip, func() { showLarge(w, v, at, shown) })
 	w.app.work(func(ctx context.Context) (func(), error) {
 		small, note := w.app.thumb(ctx, v.Patient, x)
 		return func() {
 			shown = small
+			if note != "" && !x.Photo() {
+				// A clip whose first frame cannot be decoded is drawn by what is known of it.
+				say.Set(view.Day(v.Examined) + "\n" + note)
+				play.Show()
+				img.Image = small
+				img.Refresh()
+				return
+			}
 			if small != nil {
 				img.Image = small
 				say.Set("")
@@ -164,7 +178,7 @@ func (a *App) thumb(ctx context.Context, patient exam.ID, x exam.Attachment) (im
 	}
 	defer r.Close()
 	if !x.Photo() {
-		return nil, view.AttachmentWords(x)
+		return a.poster(patient, x)
 	}
 	data, err := io.ReadAll(io.LimitReader(r, exam.MaxPhoto+1))
 	if err == nil {
@@ -174,6 +188,86 @@ func (a *App) thumb(ctx context.Context, patient exam.ID, x exam.Attachment) (im
 		}
 	}
 	return nil, words.T("cannot be read: %s", err.Error())
+}
+
+// poster is the first frame of a clip where it can be decoded, and what is known of the clip.
+func (a *App) poster(patient exam.ID, x exam.Attachment) (image.Image, string) {
+	s, ok := a.records.(stored)
+	if !ok {
+		return nil, view.AttachmentWords(x)
+	}
+	f, err := a.album.files(a.ctx, s.Store())
+	if err != nil {
+		return nil, words.T("cannot be read: %s", err.Error())
+	}
+	r, size, in, err := f.At(patient, x.Name)
+	if err != nil {
+		return nil, words.T("cannot be read: %s", err.Error())
+	}
+	defer in.Close()
+	c, err := picture.Describe(r, size, thumbMost, thumbMost)
+	if err != nil {
+		return nil, view.AttachmentWords(x)
+	}
+	return c.First, view.ClipWords(x, c.Length)
+}
+
+// play opens a clip in the system's player. The player needs a file that is not sealed: it lies in a folder
+// that only this user can open, until the program ends.
+func (w *window) play(v exam.Visit, at int) {
+	x := v.Attachments[at]
+	w.app.work(func(ctx context.Context) (func(), error) {
+		r, err := w.app.attachment(ctx, v.Patient, x)
+		if err != nil {
+			return nil, err
+		}
+		defer r.Close()
+		dir, err := os.MkdirTemp("", "cordwalk-play-")
+		if err != nil {
+			return nil, err
+		}
+		w.app.unsealed.add(dir)
+		name := filepath.Join(dir, view.AttachmentFile(v, at))
+		out, err := os.OpenFile(name, os.O_WRONLY|os.O_CREATE|os.O_EXCL, 0o600)
+		if err != nil {
+			return nil, err
+		}
+		_, err = io.Copy(out, r)
+		if err = errors.Join(err, out.Close()); err != nil {
+			return nil, err
+		}
+		return func() {
+			if err := w.app.fyne.OpenURL(&url.URL{Scheme: "file", Path: name}); err != nil {
+				w.fail(words.T("No player could be opened. “Save a copy” writes the clip to a file."), err)
+				return
+			}
+			w.foot.say(words.T("Opened in the player. The copy it plays is not sealed; it goes when Cordwalk ends."))
+		}, nil
+	}, func(err error) { w.fail(words.T("The clip could not be opened."), err) })
+}
+
+// unsealed are the folders with copies for other programs.
+type unsealed struct {
+	mu   sync.Mutex
+	dirs []string
+}
+
+func (u *unsealed) add(dir string) {
+	u.mu.Lock()
+	defer u.mu.Unlock()
+	u.dirs = append(u.dirs, dir)
+}
+
+// remove takes the copies away.
+func (u *unsealed) remove() error {
+	u.mu.Lock()
+	defer u.mu.Unlock()
+	var err error
+	for _, d := range u.dirs {
+		err = errors.Join(err, os.RemoveAll(d))
+	}
+	u.dirs = nil
+	return err
 }
 
 // showLarge shows an attachment over the page, with what it is and a way to keep a copy outside.
@@ -190,7 +284,11 @@ func showLarge(w *window, v exam.Visit, at int, shown image.Image) {
 	}
 	lines = append(lines, mark.NewPara(words.T("%s: %s", view.Day(v.Examined), view.AttachmentWords(x))).In(look.InkSoft))
 	save := mark.NewButton(words.T("Save a copy"), "save", func() { w.hideSheet(); w.saveCopy(v, at) })
-	w.showSheet(words.T("Photo or clip"), mark.Column(look.Unit, lines...), 820, save)
+	buttons := []fyne.CanvasObject{save}
+	if !x.Photo() {
+		buttons = []fyne.CanvasObject{save, mark.NewButton(words.T("Play"), "play", func() { w.hideSheet(); w.play(v, at) }).As(mark.Main)}
+	}
+	w.showSheet(words.T("Photo or clip"), mark.Column(look.Unit, lines...), 820, buttons...)
 }
 
 // saveCopy writes an attachment unsealed to a file that the person names.
@@ -239,7 +337,7 @@ func (stackFill) Layout(o []fyne.CanvasObject, s fyne.Size) {
 func newPhotosForm(p *examPage) fyne.CanvasObject {
 	v := p.sheet.Visit()
 	add := mark.NewButton(words.T("Add a photo or clip"), "camera", p.pickPhoto).As(mark.Main)
-	parts := []fyne.CanvasObject{mark.Heading(words.T("Photos and clips of this visit")).AtLeast(80), mark.Rule(),
+	parts := []fyne.CanvasObject{mark.NewPara(words.T("Photos and clips of this visit")).As(look.Head).Strong(), mark.Rule(),
 		mark.NewPara(words.T("Drop files here, or choose them. JPEG and PNG photos of up to 25 MB, MP4, MOV and WebM clips of up to 200 MB. What tells where they were taken is removed; the files are kept sealed.")).In(look.InkSoft),
 		mark.Left(add)}
 	if len(v.Attachments) == 0 {

@@ -28,8 +28,10 @@ func newPressable(inner fyne.CanvasObject, tip string, tap func()) *pressable {
 
 func (p *pressable) CreateRenderer() fyne.WidgetRenderer { return &pressableRenderer{p} }
 
-// HeightFor returns the height at a width.
-func (p *pressable) HeightFor(width float32) float32 { return mark.HeightFor(p.inner, width) }
+// HeightFor returns the height at a width, a finger's at least.
+func (p *pressable) HeightFor(width float32) float32 {
+	return max(look.Target, mark.HeightFor(p.inner, width))
+}
 
 func (p *pressable) focus(on bool) {
 	p.rim.FillColor, p.rim.StrokeColor, p.rim.StrokeWidth, p.rim.CornerRadius = nil, look.C(look.Focus), 3, 4
@@ -37,7 +39,17 @@ func (p *pressable) focus(on bool) {
 	p.rim.Refresh()
 }
 
-func (p *pressable) Tapped(*fyne.PointEvent) {
+// MouseDown begins a press.
+func (p *pressable) MouseDown(e *desktop.MouseEvent) { mark.Press(p, e.AbsolutePosition) }
+
+// MouseUp does nothing: Tapped follows.
+func (p *pressable) MouseUp(*desktop.MouseEvent) {}
+
+// Tapped runs the callback; a long press explains what it is.
+func (p *pressable) Tapped(e *fyne.PointEvent) {
+	if mark.Held(p, p.tip, e) {
+		return
+	}
 	mark.HideTip(p)
 	p.tap()
 }
@@ -74,13 +86,19 @@ type pressableRenderer struct{ p *pressable }
 
 func (r *pressableRenderer) Destroy() {}
 func (r *pressableRenderer) MinSize() fyne.Size {
-	return r.p.inner.MinSize()
+	return r.p.inner.MinSize().Max(fyne.NewSize(look.Target, look.Target))
 }
 func (r *pressableRenderer) Objects() []fyne.CanvasObject {
 	return []fyne.CanvasObject{r.p.inner, r.p.rim}
 }
 func (r *pressableRenderer) Layout(s fyne.Size) {
-	r.p.inner.Resize(s)
+	// What is lower than a finger stands in the middle of a target that is not.
+	h := s.Height
+	if low := mark.HeightFor(r.p.inner, s.Width); low < look.Target {
+		h = min(h, low)
+	}
+	r.p.inner.Move(fyne.NewPos(0, (s.Height-h)/2))
+	r.p.inner.Resize(fyne.NewSize(s.Width, h))
 	r.p.rim.Resize(s)
 }
 func (r *pressableRenderer) Refresh() {

@@ -8,7 +8,6 @@ import (
 	"strings"
 
 	"fyne.io/fyne/v2"
-	"fyne.io/fyne/v2/widget"
 
 	"cordwalk.example/cordwalk/app/desk/look"
 	"cordwalk.example/cordwalk/app/desk/mark"
@@ -49,7 +48,7 @@ func (p *settingsPage) build() {
 		scale = 100
 	}
 	shown := mark.Line(words.T("%d %%", scale))
-	slider := widget.NewSlider(80, 200)
+	slider := mark.NewSlide(80, 200)
 	slider.Step = 10
 	slider.Value = float64(scale)
 	slider.OnChanged = func(x float64) { shown.Set(words.T("%d %%", int(x))) }

@@ -106,6 +106,9 @@ func globalKeys() []view.KeyHelp {
 		{Keys: "Ctrl+T", Does: words.T("this screen again in a second window")},
 		{Keys: "Ctrl+,", Does: words.T("settings")},
 		{Keys: words.T("Alt+Left, Alt+Right"), Does: words.T("back and forward")},
+		{Keys: words.T("Up, Down, Page Up, Page Down, space"), Does: words.T("move the page, where these keys do nothing else")},
+		{Keys: words.T("Tab, then arrows"), Does: words.T("to a chart, and from mark to mark on it: each explains itself")},
+		{Keys: words.T("a long press"), Does: words.T("explains a cell or a button")},
 		{Keys: "Ctrl+Q", Does: words.T("close the window")},
 	}
 }

@@ -75,12 +75,15 @@ func newWindow(a *App) *window {
 	w.win.SetContent(container.NewStack(mark.NewGround(look.Paper), &fyne.Container{Layout: windowLayout{w}, Objects: []fyne.CanvasObject{w.rail, w.strip, w.center, w.foot}}, w.layer, tipLayer))
 	w.win.SetCloseIntercept(w.close)
 	w.keys()
-	w.win.SetOnDropped(func(_ fyne.Position, files []fyne.URI) {
-		if p, ok := w.page.(dropTaker); ok {
-			p.dropped(files)
-		}
-	})
+	w.win.SetOnDropped(func(_ fyne.Position, files []fyne.URI) { w.dropped(files) })
 	return w
+}
+
+// dropped hands files that were dragged into the window to the page shown.
+func (w *window) dropped(files []fyne.URI) {
+	if p, ok := w.page.(dropTaker); ok {
+		p.dropped(files)
+	}
 }
 
 // windowLayout sets the rail at the left, the strip above, the foot below, the page between.

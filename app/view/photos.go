@@ -2,6 +2,7 @@ package view
 
 import (
 	"strings"
+	"time"
 
 	"cordwalk.example/cordwalk/assets/words"
 	"cordwalk.example/cordwalk/exam"
@@ -17,6 +18,15 @@ func AttachmentWords(a exam.Attachment) string {
 		return words.T("photo, %s, %s", strings.ToUpper(a.Format), size)
 	}
 	return words.T("clip, %s, %s", strings.ToUpper(a.Format), size)
+}
+
+// ClipWords says what a clip is, with how long it lasts: "clip, MOV, 12.4 MB, 0:18".
+func ClipWords(a exam.Attachment, length time.Duration) string {
+	s := AttachmentWords(a)
+	if n := int(length.Round(time.Second).Seconds()); n > 0 {
+		s = words.T("%s, %d:%02d", s, n/60, n%60)
+	}
+	return s
 }
 
 // AttachmentFile is a name for a copy of an attachment outside the program: the day, a number, what

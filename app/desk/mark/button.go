@@ -36,6 +36,7 @@ type Button struct {
 	hover, focus bool
 	bed, rim     *canvas.Rectangle
 	text         *canvas.Text
+	more         []*canvas.Text // the further lines of words that are wider than the button
 	icon         *canvas.Image
 }
 
@@ -90,6 +91,28 @@ func (b *Button) MinSize() fyne.Size {
 	return fyne.NewSize(max(w, max(b.Least, look.Target)), max(h, b.High))
 }
 
+// lines are the words as they stand in a button of a width: broken only where they must be.
+func (b *Button) lines(width float32) []string {
+	if need := b.MinSize().Width; b.Words == "" || width <= 0 || width >= need-0.5 {
+		return []string{b.Words}
+	}
+	room := width - 2*b.pad()
+	if b.IconName != "" {
+		room -= b.iconSide() + look.Unit
+	}
+	return Wrap(b.Words, room, look.Px(look.Body), fyne.TextStyle{Bold: b.Weight == Main})
+}
+
+// HeightFor returns the height at a width: words that are wider take more lines.
+func (b *Button) HeightFor(width float32) float32 {
+	h := b.MinSize().Height
+	if n := len(b.lines(width)); n > 1 {
+		m := fyne.MeasureText(b.Words, look.Px(look.Body), fyne.TextStyle{Bold: b.Weight == Main})
+		h = max(h, float32(n)*m.Height+look.Unit*1.5)
+	}
+	return h
+}
+
 func (b *Button) iconSide() float32 { return 20 * look.Scale() }
 
 // CreateRenderer draws the button.
@@ -108,14 +131,29 @@ type buttonRenderer struct{ b *Button }
 func (r *buttonRenderer) Destroy()           {}
 func (r *buttonRenderer) MinSize() fyne.Size { return r.b.MinSize() }
 func (r *buttonRenderer) Objects() []fyne.CanvasObject {
-	return []fyne.CanvasObject{r.b.bed, r.b.rim, r.b.icon, r.b.text}
+	out := []fyne.CanvasObject{r.b.bed, r.b.rim, r.b.icon, r.b.text}
+	for _, t := range r.b.more {
+		out = append(out, t)
+	}
+	return out
 }
 
 func (r *buttonRenderer) Layout(s fyne.Size) {
 	b := r.b
 	b.bed.Resize(s)
 	b.rim.Resize(s)
+	lines := b.lines(s.Width)
+	b.text.Text = lines[0]
+	b.more = nil
+	for _, l := range lines[1:] {
+		t := canvas.NewText(l, b.text.Color)
+		t.TextSize, t.TextStyle = b.text.TextSize, b.text.TextStyle
+		b.more = append(b.more, t)
+	}
 	m := b.text.MinSize()
+	for _, t := range b.more {
+		m.Width = max(m.Width, t.MinSize().Width)
+	}
 	content := float32(0)
 	if b.Words != "" {
 		content = m.Width
@@ -136,8 +174,12 @@ func (r *buttonRenderer) Layout(s fyne.Size) {
 		b.icon.Resize(fyne.NewSize(side, side))
 		x += side + look.Unit
 	}
-	b.text.Move(fyne.NewPos(x, (s.Height-m.Height)/2))
-	b.text.Resize(m)
+	y := (s.Height - m.Height*float32(len(lines))) / 2
+	for _, t := range append([]*canvas.Text{b.text}, b.more...) {
+		t.Move(fyne.NewPos(x, y))
+		t.Resize(t.MinSize())
+		y += m.Height
+	}
 }
 
 func (r *buttonRenderer) Refresh() {
@@ -190,8 +232,17 @@ func (r *buttonRenderer) Refresh() {
 // BaseWidgetSize is the size the button was given.
 func (b *Button) BaseWidgetSize() fyne.Size { return b.DisableableWidget.Size() }
 
-// Tapped runs the callback.
-func (b *Button) Tapped(*fyne.PointEvent) {
+// MouseDown begins a press.
+func (b *Button) MouseDown(e *desktop.MouseEvent) { Press(b, e.AbsolutePosition) }
+
+// MouseUp does nothing: Tapped follows.
+func (b *Button) MouseUp(*desktop.MouseEvent) {}
+
+// Tapped runs the callback; a long press explains the button.
+func (b *Button) Tapped(e *fyne.PointEvent) {
+	if Held(b, b.Tip, e) {
+		return
+	}
 	HideTip(b)
 	if !b.Disabled() && b.OnTap != nil {
 		b.OnTap()
@@ -202,6 +253,7 @@ var (
 	_ fyne.Focusable     = (*Button)(nil)
 	_ desktop.Hoverable  = (*Button)(nil)
 	_ desktop.Cursorable = (*Button)(nil)
+	_ desktop.Mouseable  = (*Button)(nil)
 )
 
 // Cursor shows that the button can be pressed.

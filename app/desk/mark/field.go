@@ -140,6 +140,28 @@ func (c *Check) MinSize() fyne.Size {
 	return c.Check.MinSize().Max(fyne.NewSize(look.Target, look.Target))
 }
 
+// MouseDown begins a press.
+func (c *Check) MouseDown(e *desktop.MouseEvent) { Press(c, e.AbsolutePosition) }
+
+// MouseUp does nothing: Tapped follows.
+func (c *Check) MouseUp(*desktop.MouseEvent) {}
+
+// Slide is a slider as high as a target.
+type Slide struct{ widget.Slider }
+
+// NewSlide returns a slider between two values.
+func NewSlide(least, most float64) *Slide {
+	s := &Slide{}
+	s.Min, s.Max, s.Step = least, most, 1
+	s.ExtendBaseWidget(s)
+	return s
+}
+
+// MinSize is at least the target's height.
+func (s *Slide) MinSize() fyne.Size {
+	return s.Slider.MinSize().Max(fyne.NewSize(look.Target, look.Target))
+}
+
 // Pick is a list to choose one word from, with the outline of a field.
 type Pick struct {
 	widget.Select
@@ -170,6 +192,12 @@ func (s *Pick) MinSize() fyne.Size {
 	m := s.Select.MinSize()
 	return fyne.NewSize(min(m.Width, 160), max(m.Height, look.Target))
 }
+
+// MouseDown begins a press.
+func (s *Pick) MouseDown(e *desktop.MouseEvent) { Press(s, e.AbsolutePosition) }
+
+// MouseUp does nothing: Tapped follows.
+func (s *Pick) MouseUp(*desktop.MouseEvent) {}
 
 // CreateRenderer draws the outline over the list's own drawing.
 func (s *Pick) CreateRenderer() fyne.WidgetRenderer {

@@ -128,6 +128,12 @@ func (r *gradeRenderer) Refresh() {
 	}
 }
 
+// MouseDown begins a press.
+func (g *Grade) MouseDown(e *desktop.MouseEvent) { Press(g, e.AbsolutePosition) }
+
+// MouseUp does nothing: Tapped follows.
+func (g *Grade) MouseUp(*desktop.MouseEvent) {}
+
 // Tapped gives the grade.
 func (g *Grade) Tapped(*fyne.PointEvent) {
 	if g.OnTap != nil {

@@ -635,6 +635,13 @@ type Scroll struct {
 	inner   *fyne.Container
 	scroll  *container.Scroll
 	width   float32
+
+	OnSwipe func(dir int) // a finger went sideways: 1 to the left, for what comes next; -1 to the right
+
+	dragging bool
+	drag     fyne.Delta    // how far the finger has gone
+	began    fyne.Position // where on the window
+	stood    float32       // the offset then
 }
 
 // NewScroll returns a scrolled object.

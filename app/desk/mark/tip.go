@@ -75,6 +75,17 @@ func ShowTip(owner fyne.CanvasObject, words string, at fyne.Position) {
 	})
 }
 
+// ExplainAt shows words at once: a long press, or a key, asked for them.
+func ExplainAt(owner fyne.CanvasObject, words string, at fyne.Position) {
+	t := tipsOf(owner)
+	if t == nil || words == "" {
+		return
+	}
+	t.hide()
+	t.owner, t.words = owner, words
+	t.draw(at)
+}
+
 // HideTip hides the tip of its owner.
 func HideTip(owner fyne.CanvasObject) {
 	if t := tipsOf(owner); t != nil && t.owner == owner {

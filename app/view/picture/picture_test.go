@@ -9,8 +9,10 @@ import (
 	"image/jpeg"
 	"image/png"
 	"io"
+	"math"
 	"strings"
 	"testing"
+	"time"
 
 	"github.com/stretchr/testify/require"
 
@@ -166,6 +168,55 @@ func TestWebMLosesItsTags(t *testing.T) {
 	require.Len(t, out, len(movie))
 }
 
+// A clip of JPEG pictures, as ISO/IEC 14496-12 and the QuickTime File Format lay it out, gives its first frame and its
+// length; one of another codec gives its length alone.
+func TestClipsAreDescribed(t *testing.T) {
+	var frame bytes.Buffer
+	require.NoError(t, jpeg.Encode(&frame, sample(), nil))
+	head := box("ftyp", "qt  ", numbers(0), "qt  ")
+	movie := func(codec string) string {
+		at := uint32(len(head) + 8)
+		return head + box("mdat", frame.String(), "the frames after it") + box("moov", box("mvhd", numbers(0, 0, 0, 600, 7500)),
+			box("trak", box("mdia", box("hdlr", numbers(0, 0), "soun", numbers(0, 0, 0)))),
+			box("trak", box("mdia", box("hdlr", numbers(0, 0), "vide", numbers(0, 0, 0)), box("minf", box("stbl",
+				box("stsd", numbers(0, 1), box(codec, numbers(0, 0))),
+				box("stsz", numbers(0, 0, 2, uint32(frame.Len()), 19)), box("stsc", numbers(0, 1, 1, 2, 1)), box("stco", numbers(0, 1, at)))))))
+	}
+	whole := movie("jpeg")
+	c, err := picture.Describe(strings.NewReader(whole), int64(len(whole)), 400, 400)
+	require.NoError(t, err)
+	require.Equal(t, 12500*time.Millisecond, c.Length)
+	require.Equal(t, "jpeg", c.Codec)
+	require.NotNil(t, c.First)
+	want, err := jpeg.Decode(bytes.NewReader(frame.Bytes()))
+	require.NoError(t, err)
+	require.Equal(t, want.Bounds().Size(), c.First.Bounds().Size())
+	for _, p := range []image.Point{{0, 0}, {7, 3}} {
+		r1, g1, b1, _ := want.At(p.X, p.Y).RGBA()
+		r2, g2, b2, _ := c.First.At(p.X, p.Y).RGBA()
+		require.InDelta(t, r1>>8, r2>>8, 6)
+		require.InDelta(t, g1>>8, g2>>8, 6)
+		require.InDelta(t, b1>>8, b2>>8, 6)
+	}
+	whole = movie("avc1")
+	c, err = picture.Describe(strings.NewReader(whole), int64(len(whole)), 400, 400)
+	require.NoError(t, err)
+	require.Nil(t, c.First)
+	require.Equal(t, "avc1", c.Codec)
+	_, err = picture.Describe(strings.NewReader(whole[:len(whole)-40]), int64(len(whole)-40), 400, 400)
+	require.ErrorIs(t, err, picture.ErrBroken)
+
+	// RFC 9559: Duration counts in steps of TimestampScale, a million nanoseconds unless it is said.
+	element := func(id string, body string) string { return id + string([]byte{0x40, byte(len(body))}) + body }
+	length := string(binary.BigEndian.AppendUint64(nil, math.Float64bits(18250)))
+	webm := element("\x1a\x45\xdf\xa3", element("\x42\x82", "webm")) + "\x18\x53\x80\x67\x01\xff\xff\xff\xff\xff\xff\xff" +
+		element("\x15\x49\xa9\x66", element("\x2a\xd7\xb1", "\x0f\x42\x40")+element("\x44\x89", length)) +
+		element("\x16\x54\xae\x6b", element("\xae", element("\x86", "V_VP9")))
+	c, err = picture.Describe(strings.NewReader(webm), int64(len(webm)), 400, 400)
+	require.NoError(t, err)
+	require.Equal(t, picture.Clip{Length: 18250 * time.Millisecond, Codec: "V_VP9"}, c)
+}
+
 func TestWhatIsNotTaken(t *testing.T) {
 	for name, tt := range map[string]struct {
 		data string
@@ -189,6 +240,9 @@ func FuzzClean(f *testing.F) {
 	f.Add([]byte(box("ftyp", "isom", numbers(0)) + box("moov", box("trak"))))
 	f.Add([]byte("\x1a\x45\xdf\xa3\x84webm\x18\x53\x80\x67\xff"))
 	f.Fuzz(func(t *testing.T, b []byte) {
+		if d, err := picture.Describe(bytes.NewReader(b), int64(len(b)), 8, 8); err == nil && d.Length < 0 {
+			t.Fatalf("a clip lasts %v", d.Length)
+		}
 		c, err := picture.Clean(bytes.NewReader(b), int64(len(b)))
 		if err != nil {
 			return
