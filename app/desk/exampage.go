@@ -345,6 +345,7 @@ func (p *examPage) pressed(o view.Outcome) {
 
 // typed hands a key to the sheet; what the sheet does not know is the page's own.
 func (p *examPage) typed(k view.Key) {
+	mark.Used()
 	mode, _ := p.sheet.Mode()
 	if mode == view.Grading && k.Name == "" && p.typedRune(k.Rune) {
 		return

@@ -334,6 +334,7 @@ func (w *window) undo(redo bool) {
 }
 
 func (w *window) typedKey(e *fyne.KeyEvent) {
+	mark.Used()
 	if len(w.layer.Objects) > 0 {
 		if e.Name == fyne.KeyEscape || e.Name == fyne.KeyF1 || e.Name == fyne.KeyReturn {
 			w.hideSheet()
@@ -350,6 +351,7 @@ func (w *window) typedKey(e *fyne.KeyEvent) {
 }
 
 func (w *window) typedRune(r rune) {
+	mark.Used()
 	if len(w.layer.Objects) > 0 {
 		if w.layerRune != nil {
 			w.layerRune(r)

@@ -29,6 +29,7 @@ var pressed struct {
 
 // Press is told by a control that it is pressed; Tapped follows if it is let go there.
 func Press(o fyne.Tappable, at fyne.Position) {
+	Used()
 	pressed.on, pressed.at, pressed.up = o, time.Now(), at
 }
 
