@@ -288,6 +288,7 @@ func TestScrollFollowsItsWidth(t *testing.T) {
 
 // The wheel over a line of text moves the form that the line lies in.
 func TestTheWheelOverAFieldScrollsTheForm(t *testing.T) {
+	panes = nil // of windows of other tests, which the driver for tests does not tell apart
 	test.NewTempApp(t).Settings().SetTheme(look.New(look.Light, 1))
 	field := NewField("Bramble", nil)
 	s := NewScroll(Column(look.Unit, field, Space(1, 2000)))
