@@ -1,8 +1,6 @@
 package localise
 
 import (
-	"math/rand/v2"
-
 	"cordwalk.example/cordwalk/exam"
 )
 
@@ -44,8 +42,11 @@ func (m *Model) Drawer(place int, keys []exam.Key) *Drawer {
 	return d
 }
 
+// Chance gives numbers from 0 up to 1, each as likely; *rand.Rand does.
+type Chance interface{ Float64() float64 }
+
 // Draw returns the findings of one exam at a severity from 0, sound, to 1, complete.
-func (d *Drawer) Draw(r *rand.Rand, severity float64) []exam.Finding {
+func (d *Drawer) Draw(r Chance, severity float64) []exam.Finding {
 	u, k := r.Float64()*d.total, 0
 	for ; k < len(d.choices)-1; k++ {
 		if u -= d.choices[k].prior; u < 0 {
