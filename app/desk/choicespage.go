@@ -2,7 +2,6 @@ package desk
 
 import (
 	"context"
-	"strings"
 
 	"fyne.io/fyne/v2"
 
@@ -123,21 +122,13 @@ func (p *choicesPage) pick(c view.Choice, k int) {
 		p.resolve(c, k, "")
 		return
 	}
-	reason := mark.NewField("", nil).Hint(words.T("Why the visit is changed after closing"))
-	wrong := mark.NewPara("").In(look.Worse)
-	do := func() {
-		why := strings.TrimSpace(reason.Text)
-		if why == "" {
-			wrong.Set(words.T("An amendment needs a reason."))
-			return
-		}
-		p.win.hideSheet()
-		p.resolve(c, k, why)
-	}
-	reason.OnSubmitted = func(string) { do() }
-	p.win.showSheet(words.T("Choose in a closed visit"), mark.Column(look.Unit,
-		mark.NewPara(words.T("%s: %s", c.Field, c.Options[k].Words)).Strong(), reason, wrong), 560, mark.NewButton(words.T("Keep"), "tick", do).As(mark.Main))
-	p.win.win.Canvas().Focus(reason)
+	p.win.ask(asking{
+		title: words.T("Choose in a closed visit"),
+		about: mark.NewPara(words.T("%s: %s", c.Field, c.Options[k].Words)).Strong(),
+		hint:  words.T("Why the visit is changed after closing"), missing: words.T("An amendment needs a reason."),
+		width: 560, does: words.T("Keep"), icon: "tick",
+		then: func(why string) { p.resolve(c, k, why) },
+	})
 }
 
 func (p *choicesPage) resolve(c view.Choice, k int, why string) {

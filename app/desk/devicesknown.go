@@ -3,7 +3,6 @@ package desk
 import (
 	"context"
 	"errors"
-	"strings"
 
 	"fyne.io/fyne/v2"
 
@@ -159,29 +158,22 @@ func (p *devicesPage) setApart() fyne.CanvasObject {
 
 // askAdmit asks why entries may count, and admits them in the order in which they were made.
 func (p *devicesPage) askAdmit(list []setApart) {
-	reason := mark.NewField("", nil).Hint(words.T("Why, such as: asked the colleague"))
-	wrong := mark.NewPara("").In(look.Worse)
-	do := func() {
-		why := strings.TrimSpace(reason.Text)
-		if why == "" {
-			wrong.Set(words.T("Say why; it is kept."))
-			return
-		}
-		p.win.hideSheet()
-		who := p.win.app.examiner
-		p.do(words.T("Taking the entries in…"), func(ctx context.Context, progress told) (func(), error) {
-			for i, x := range list {
-				if _, err := p.share.Apply(ctx, who, storage.Admit(x.change, why)); err != nil {
-					return nil, err
+	p.win.ask(asking{
+		title: words.N(len(list), "Let %d entry count", "Let %d entries count", len(list)),
+		about: mark.NewPara(words.T("It replaces what stands there now; that stays in the history.")),
+		hint:  words.T("Why, such as: asked the colleague"), missing: words.T("Say why; it is kept."),
+		width: 600, does: words.T("Let it count"), icon: "tick",
+		then: func(why string) {
+			who := p.win.app.examiner
+			p.do(words.T("Taking the entries in…"), func(ctx context.Context, progress told) (func(), error) {
+				for i, x := range list {
+					if _, err := p.share.Apply(ctx, who, storage.Admit(x.change, why)); err != nil {
+						return nil, err
+					}
+					progress(words.T("Taking the entries in…"), int64(i+1), int64(len(list)))
 				}
-				progress(words.T("Taking the entries in…"), int64(i+1), int64(len(list)))
-			}
-			return p.findChoices, nil
-		})
-	}
-	reason.OnSubmitted = func(string) { do() }
-	p.win.showSheet(words.N(len(list), "Let %d entry count", "Let %d entries count", len(list)), mark.Column(look.Unit,
-		mark.NewPara(words.T("It replaces what stands there now; that stays in the history.")), reason, wrong), 600,
-		mark.NewButton(words.T("Let it count"), "tick", do).As(mark.Main))
-	p.win.win.Canvas().Focus(reason)
+				return p.findChoices, nil
+			})
+		},
+	})
 }

@@ -362,25 +362,18 @@ func (p *devicesPage) answer(r share.Asked, yes bool) {
 }
 
 func (p *devicesPage) askRemove(d member.Device) {
-	reason := mark.NewField("", nil).Hint(words.T("Why, such as: lost, stolen, sold"))
-	wrong := mark.NewPara("").In(look.Worse)
-	do := func() {
-		why := strings.TrimSpace(reason.Text)
-		if why == "" {
-			wrong.Set(words.T("Say why; it is kept."))
-			return
-		}
-		p.win.hideSheet()
-		who := p.win.app.examiner
-		p.do(words.T("Removing…"), func(ctx context.Context, _ told) (func(), error) {
-			return nil, p.share.Remove(ctx, who, d.Verifier, why)
-		})
-	}
-	reason.OnSubmitted = func(string) { do() }
-	p.win.showSheet(words.T("Remove %s", d.Name), mark.Column(look.Unit,
-		mark.NewPara(words.T("What it wrote until now still counts; what it writes later is kept apart, and from now on the practice uses a new key. What lies on that device stays readable there.")),
-		reason, wrong), 600, mark.NewButton(words.T("Remove"), "close", do).As(mark.Main))
-	p.win.win.Canvas().Focus(reason)
+	p.win.ask(asking{
+		title: words.T("Remove %s", d.Name),
+		about: mark.NewPara(words.T("What it wrote until now still counts; what it writes later is kept apart, and from now on the practice uses a new key. What lies on that device stays readable there.")),
+		hint:  words.T("Why, such as: lost, stolen, sold"), missing: words.T("Say why; it is kept."),
+		width: 600, does: words.T("Remove"), icon: "close",
+		then: func(why string) {
+			who := p.win.app.examiner
+			p.do(words.T("Removing…"), func(ctx context.Context, _ told) (func(), error) {
+				return nil, p.share.Remove(ctx, who, d.Verifier, why)
+			})
+		},
+	})
 }
 
 // backups makes a backup that is read back before it counts, once a day by itself or now.

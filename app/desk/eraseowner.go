@@ -2,9 +2,7 @@ package desk
 
 import (
 	"context"
-	"strings"
 
-	"cordwalk.example/cordwalk/app/desk/look"
 	"cordwalk.example/cordwalk/app/desk/mark"
 	"cordwalk.example/cordwalk/app/view"
 	"cordwalk.example/cordwalk/assets/words"
@@ -17,33 +15,26 @@ func (w *window) askErase(patient exam.Patient) {
 	if !ok {
 		return
 	}
-	reason := mark.NewField("", nil).Hint(words.T("Who asked, and how, such as: the owner, by letter"))
-	wrong := mark.NewPara("").In(look.Worse)
-	do := func() {
-		why := strings.TrimSpace(reason.Text)
-		if why == "" {
-			wrong.Set(words.T("Say why; it is kept."))
-			return
-		}
-		w.hideSheet()
-		who := w.app.examiner
-		w.app.work(func(ctx context.Context) (func(), error) {
-			if err := w.app.saver.Flush(ctx); err != nil {
-				return nil, err
-			}
-			f, err := w.app.album.files(ctx, r.Store())
-			if err != nil {
-				return nil, err
-			}
-			return func() {
-				w.goTo(view.Route{Screen: view.ScreenPatient, Patient: patient.ID})
-				w.foot.say(words.T("The owner's data are erased here, and on each other device at its next exchange."))
-			}, f.Erase(ctx, who, patient.ID, why)
-		}, func(err error) { w.fail(words.T("The owner's data could not be erased."), err) })
-	}
-	reason.OnSubmitted = func(string) { do() }
-	w.showSheet(words.T("Erase the owner's data of %s", patient.Name), mark.Column(look.Unit,
-		mark.NewPara(words.T("Name, telephone and e-mail of the owner, and all photos and clips of this animal, are destroyed here and on each other device at its next exchange. Nobody can bring them back. The exams stay. Backups made before still hold them; the Devices page names those.")),
-		reason, wrong), 640, mark.NewButton(words.T("Erase for good"), "close", do).As(mark.Main))
-	w.win.Canvas().Focus(reason)
+	w.ask(asking{
+		title: words.T("Erase the owner's data of %s", patient.Name),
+		about: mark.NewPara(words.T("Name, telephone and e-mail of the owner, and all photos and clips of this animal, are destroyed here and on each other device at its next exchange. Nobody can bring them back. The exams stay. Backups made before still hold them; the Devices page names those.")),
+		hint:  words.T("Who asked, and how, such as: the owner, by letter"), missing: words.T("Say why; it is kept."),
+		width: 640, does: words.T("Erase for good"), icon: "close",
+		then: func(why string) {
+			who := w.app.examiner
+			w.app.work(func(ctx context.Context) (func(), error) {
+				if err := w.app.saver.Flush(ctx); err != nil {
+					return nil, err
+				}
+				f, err := w.app.album.files(ctx, r.Store())
+				if err != nil {
+					return nil, err
+				}
+				return func() {
+					w.goTo(view.Route{Screen: view.ScreenPatient, Patient: patient.ID})
+					w.foot.say(words.T("The owner's data are erased here, and on each other device at its next exchange."))
+				}, f.Erase(ctx, who, patient.ID, why)
+			}, func(err error) { w.fail(words.T("The owner's data could not be erased."), err) })
+		},
+	})
 }

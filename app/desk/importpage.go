@@ -6,8 +6,6 @@ import (
 	"strings"
 
 	"fyne.io/fyne/v2"
-	"fyne.io/fyne/v2/dialog"
-	"fyne.io/fyne/v2/storage"
 	"fyne.io/fyne/v2/widget"
 
 	"cordwalk.example/cordwalk/app/desk/look"
@@ -86,23 +84,13 @@ func (p *importPage) dropped(files []fyne.URI) {
 
 // choose asks for the file.
 func (p *importPage) choose() {
-	d := dialog.NewFileOpen(func(in fyne.URIReadCloser, err error) {
-		if err != nil {
-			p.win.fail(words.T("This file cannot be read as a table of patients."), err)
-			return
-		}
-		if in == nil {
-			return
-		}
-		path := in.URI().Path()
-		in.Close()
+	d := p.win.pickFile(words.T("This file cannot be read as a table of patients."), []string{".csv", ".tsv", ".txt", ".xlsx", ".CSV", ".XLSX"}, func(path string) {
 		p.file.SetText(path)
 		p.read()
-	}, p.win.win)
+	})
 	d.SetTitleText(words.T("Import patients"))
 	d.SetConfirmText(words.T("Look at it"))
 	d.SetDismissText(words.T("back"))
-	d.SetFilter(storage.NewExtensionFileFilter([]string{".csv", ".tsv", ".txt", ".xlsx", ".CSV", ".XLSX"}))
 	s := p.win.win.Canvas().Size()
 	d.Resize(fyne.NewSize(s.Width-64, s.Height-64))
 	d.Show()

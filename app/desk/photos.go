@@ -17,7 +17,6 @@ import (
 	"fyne.io/fyne/v2"
 	"fyne.io/fyne/v2/canvas"
 	"fyne.io/fyne/v2/dialog"
-	"fyne.io/fyne/v2/storage"
 
 	"cordwalk.example/cordwalk/app/desk/look"
 	"cordwalk.example/cordwalk/app/desk/mark"
@@ -371,22 +370,8 @@ func newPhotosForm(p *examPage) fyne.CanvasObject {
 }
 
 func (p *examPage) pickPhoto() {
-	d := dialog.NewFileOpen(func(in fyne.URIReadCloser, err error) {
-		if in == nil {
-			if err != nil {
-				p.win.fail(words.T("The file cannot be opened."), err)
-			}
-			return
-		}
-		name := in.URI().Path()
-		if err := in.Close(); err != nil {
-			p.win.fail(words.T("The file cannot be opened."), err)
-			return
-		}
-		p.addPhotos([]string{name})
-	}, p.win.win)
-	d.SetFilter(storage.NewExtensionFileFilter([]string{".jpg", ".jpeg", ".JPG", ".JPEG", ".png", ".PNG", ".mp4", ".MP4", ".mov", ".MOV", ".m4v", ".webm"}))
-	d.Show()
+	p.win.pickFile(words.T("The file cannot be opened."), []string{".jpg", ".jpeg", ".JPG", ".JPEG", ".png", ".PNG", ".mp4", ".MP4", ".mov", ".MOV", ".m4v", ".webm"},
+		func(path string) { p.addPhotos([]string{path}) }).Show()
 }
 
 // dropped takes files that were dragged into the window.

@@ -12,8 +12,6 @@ import (
 
 	"fyne.io/fyne/v2"
 	"fyne.io/fyne/v2/canvas"
-	"fyne.io/fyne/v2/dialog"
-	filter "fyne.io/fyne/v2/storage"
 
 	"cordwalk.example/cordwalk/app/desk/look"
 	"cordwalk.example/cordwalk/app/desk/mark"
@@ -141,22 +139,7 @@ func (p *phrasePage) drawLogo() {
 }
 
 func (p *phrasePage) pickLogo() {
-	d := dialog.NewFileOpen(func(in fyne.URIReadCloser, err error) {
-		if in == nil {
-			if err != nil {
-				p.win.fail(words.T("The file cannot be opened."), err)
-			}
-			return
-		}
-		name := in.URI().Path()
-		if err := in.Close(); err != nil {
-			p.win.fail(words.T("The file cannot be opened."), err)
-			return
-		}
-		p.takeLogo(name)
-	}, p.win.win)
-	d.SetFilter(filter.NewExtensionFileFilter([]string{".png", ".PNG", ".jpg", ".jpeg", ".JPG", ".JPEG"}))
-	d.Show()
+	p.win.pickFile(words.T("The file cannot be opened."), []string{".png", ".PNG", ".jpg", ".jpeg", ".JPG", ".JPEG"}, p.takeLogo).Show()
 }
 
 // dropped takes a picture that was dragged into the window.

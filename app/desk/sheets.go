@@ -2,9 +2,12 @@ package desk
 
 import (
 	"errors"
+	"strings"
 
 	"fyne.io/fyne/v2"
 	"fyne.io/fyne/v2/canvas"
+	"fyne.io/fyne/v2/dialog"
+	"fyne.io/fyne/v2/storage"
 
 	"cordwalk.example/cordwalk/app/desk/look"
 	"cordwalk.example/cordwalk/app/desk/mark"
@@ -173,4 +176,56 @@ func (centred) Layout(o []fyne.CanvasObject, s fyne.Size) {
 	m = fyne.NewSize(min(m.Width, s.Width), min(m.Height, s.Height))
 	o[0].Move(fyne.NewPos((s.Width-m.Width)/2, (s.Height-m.Height)/2))
 	o[0].Resize(m)
+}
+
+// asking is a question for a reason, without which nothing is done.
+type asking struct {
+	title   string
+	about   fyne.CanvasObject // what would be done, and what follows from it
+	hint    string            // an example of a reason
+	missing string            // said where none is given
+	width   float32
+	does    string // words and icon of the button that does it
+	icon    string
+	then    func(why string)
+}
+
+// ask shows the question, with the reason under the caret.
+func (w *window) ask(q asking) {
+	reason := mark.NewField("", nil).Hint(q.hint)
+	wrong := mark.NewPara("").In(look.Worse)
+	do := func() {
+		why := strings.TrimSpace(reason.Text)
+		if why == "" {
+			wrong.Set(q.missing)
+			return
+		}
+		w.hideSheet()
+		q.then(why)
+	}
+	reason.OnSubmitted = func(string) { do() }
+	w.showSheet(q.title, mark.Column(look.Unit, q.about, reason, wrong), q.width, mark.NewButton(q.does, q.icon, do).As(mark.Main))
+	w.win.Canvas().Focus(reason)
+}
+
+// pickFile returns the toolkit's dialog for a file of some kinds, named by the ends of their names. failed
+// is said where the file cannot be opened.
+func (w *window) pickFile(failed string, kinds []string, take func(path string)) *dialog.FileDialog {
+	d := dialog.NewFileOpen(func(in fyne.URIReadCloser, err error) {
+		if err == nil && in == nil {
+			return // nothing was chosen
+		}
+		path := ""
+		if err == nil {
+			path = in.URI().Path()
+			err = in.Close()
+		}
+		if err != nil {
+			w.fail(failed, err)
+			return
+		}
+		take(path)
+	}, w.win)
+	d.SetFilter(storage.NewExtensionFileFilter(kinds))
+	return d
 }
