@@ -113,7 +113,7 @@ func (a *App) Start(dir string) {
 	}
 	var x *reading
 	if exists && !locked {
-		x = a.begin(dir, nil) // while the window is made
+		x = a.begin(a.opening(dir, nil)) // while the window is made
 	}
 	w := newWindow(a)
 	a.windows = append(a.windows, w)
@@ -126,13 +126,12 @@ func (a *App) Start(dir string) {
 		select { // nearly always: no other page is drawn for the moment that is left
 		case <-x.done:
 			if x.err == nil {
-				a.caseload, a.fresh = x.cases, x.cases != nil
-				a.use(w, x.records, x.practice, dir)
+				a.useRead(w, x, dir)
 				return
 			}
 		case <-time.After(glance):
 		}
-		a.follow(w, dir, x)
+		a.followOpening(w, dir, x)
 	}
 }
 
@@ -163,23 +162,9 @@ func (a *App) readFonts() {
 
 // demo makes or opens the demo practice off the drawing goroutine.
 func (a *App) demo(w *window, dir string, failed func(error)) {
-	o := newOpeningPage(a, words.T("Making the demo practice"))
-	w.bare(o)
-	a.work(func(context.Context) (func(), error) {
-		r, err := a.opener.Demo(dir, o.progress)
-		if err != nil {
-			return nil, err
-		}
-		practice, err := r.Practice()
-		if err != nil {
-			return nil, errors.Join(err, r.Close())
-		}
-		cases, _ := readCaseload(a.ctx, r, a.now()) // what fails is read again, and told, by the page
-		return func() {
-			a.caseload, a.fresh = cases, cases != nil
-			a.use(w, r, practice, dir)
-		}, nil
-	}, failed)
+	a.follow(w, dir, words.T("Making the demo practice"), a.begin(func(progress told, _ func(string)) (Records, error) {
+		return a.opener.Demo(dir, progress)
+	}), failed)
 }
 
 // Run draws until the last window is closed.
@@ -200,8 +185,9 @@ type reading struct {
 	err      error
 }
 
-// begin begins to open a store.
-func (a *App) begin(dir string, passphrase []byte) *reading {
+// begin begins to open a store off the drawing goroutine. open is told where to say how far it is, and what people
+// should know.
+func (a *App) begin(open func(progress told, say func(string)) (Records, error)) *reading {
 	x := &reading{done: make(chan struct{})}
 	a.busy.Go(func() {
 		defer close(x.done)
@@ -217,7 +203,7 @@ func (a *App) begin(dir string, passphrase []byte) *reading {
 				}
 			})
 		}
-		if x.records, x.err = a.opener.Open(dir, passphrase, progress, say); x.err != nil {
+		if x.records, x.err = open(progress, say); x.err != nil {
 			return
 		}
 		if x.practice, x.err = x.records.Practice(); x.err != nil {
@@ -229,23 +215,31 @@ func (a *App) begin(dir string, passphrase []byte) *reading {
 	return x
 }
 
-// open opens a store off the drawing goroutine and shows the caseload.
-func (a *App) open(w *window, dir string, passphrase []byte) {
-	a.follow(w, dir, a.begin(dir, passphrase))
-}
-
 // follow shows a store's caseload once the store is open, and until then how far it is.
-func (a *App) follow(w *window, dir string, x *reading) {
-	p := newOpeningPage(a, words.T("Opening the practice in %s", dir))
+func (a *App) follow(w *window, dir, title string, x *reading, failed func(error)) {
+	p := newOpeningPage(a, title)
 	x.page.Store(p)
 	w.bare(p)
 	a.work(func(context.Context) (func(), error) {
 		<-x.done
-		return func() {
-			a.caseload, a.fresh = x.cases, x.cases != nil
-			a.use(w, x.records, x.practice, dir)
-		}, x.err
-	}, func(err error) {
+		return func() { a.useRead(w, x, dir) }, x.err
+	}, failed)
+}
+
+// opening opens a store that exists.
+func (a *App) opening(dir string, passphrase []byte) func(told, func(string)) (Records, error) {
+	return func(progress told, say func(string)) (Records, error) {
+		return a.opener.Open(dir, passphrase, progress, say)
+	}
+}
+
+// open opens a store that exists and shows the caseload.
+func (a *App) open(w *window, dir string, passphrase []byte) {
+	a.followOpening(w, dir, a.begin(a.opening(dir, passphrase)))
+}
+
+func (a *App) followOpening(w *window, dir string, x *reading) {
+	a.follow(w, dir, words.T("Opening the practice in %s", dir), x, func(err error) {
 		_, locked := a.opener.Exists(dir)
 		if locked {
 			u := newUnlockPage(w, dir)
@@ -255,6 +249,12 @@ func (a *App) follow(w *window, dir string, x *reading) {
 		}
 		w.bare(newFailedPage(w, dir, err))
 	})
+}
+
+// useRead goes on with a store whose caseload was read with it.
+func (a *App) useRead(w *window, x *reading, dir string) {
+	a.caseload, a.fresh = x.cases, x.cases != nil
+	a.use(w, x.records, x.practice, dir)
 }
 
 // use goes on with an open store.
